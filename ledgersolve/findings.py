@@ -1,0 +1,77 @@
+"""What audits and explanations give: plain values that every floor above may hold.
+
+The audits share these values with the rest of the house, and no code.
+"""
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True)
+class Check:
+    """One rule of the workbook, recomputed: what was required, what the plan does.
+
+    ``rule`` is a short name in the analyst's words (``"Capacity"``), ``subject`` what it was checked on
+    (``"site HAM"`` or ``"all 214 customers"``), ``required`` and ``got`` figures or words, ``worst`` by how
+    much the rule is broken at most (0 where it holds).
+    """
+
+    rule: str
+    subject: str
+    required: str
+    got: str
+    worst: float
+    ok: bool
+
+
+@dataclass(frozen=True)
+class CostPart:
+    """A part of the plan's cost under its own name (``"Fixed cost of open sites"``)."""
+
+    name: str
+    amount: float
+
+
+@dataclass(frozen=True)
+class Audit:
+    """A plan recomputed from the case alone: cost by parts, and every rule checked."""
+
+    parts: tuple[CostPart, ...]
+    checks: tuple[Check, ...]
+
+    @property
+    def total(self) -> float:
+        """Cost of the plan."""
+        return sum(part.amount for part in self.parts)
+
+    @property
+    def ok(self) -> bool:
+        """Whether every rule holds."""
+        return all(check.ok for check in self.checks)
+
+    def broken(self) -> tuple[Check, ...]:
+        """The rules that do not hold."""
+        return tuple(check for check in self.checks if not check.ok)
+
+
+@dataclass(frozen=True)
+class Subject:
+    """A cell in the contract's own words: sheet, the codes that name the row, and the column title."""
+
+    sheet: str
+    key: tuple[str, ...]
+    title: str
+
+
+@dataclass(frozen=True)
+class Conflict:
+    """Rows and rules that cannot hold together, in one sentence, with what would mend it.
+
+    ``words`` says what cannot hold (``"Capacity 400 short in week 7: needs 132 h, has 120 h"``),
+    ``remedy`` the smallest change that helps, ``amount`` its size in the unit of the rule, ``subjects``
+    the cells at stake, the first one the cell to mark.
+    """
+
+    words: str
+    remedy: str
+    amount: float
+    subjects: tuple[Subject, ...]

@@ -1,0 +1,1 @@
+"""When to make how much of what: case, engine, plan and audit."""

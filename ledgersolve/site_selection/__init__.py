@@ -1,0 +1,1 @@
+"""Which sites to run and whom each one serves: case, engine, plan and audit."""

@@ -1,0 +1,1 @@
+"""Workbooks in and out; knows no job."""
