@@ -221,8 +221,8 @@ def book_of_site_case(path: Path, case: SiteCase, settings: Row | None = None) -
         {
             "Variant": v.name, "Demand factor": v.demand_factor, "Lane cost factor": v.lane_cost_factor,
             "Fixed cost factor": v.fixed_cost_factor, "Fewest sites": v.fewest_sites,
-            "Most sites": v.most_sites, "Longest distance": v.longest_distance, "Open": ", ".join(v.open) or None,
-            "Closed": ", ".join(v.closed) or None,
+            "Most sites": v.most_sites, "Longest distance": v.longest_distance,
+            "Open": ", ".join(v.open) or None, "Closed": ", ".join(v.closed) or None,
         }
         for v in case.variants
     ]

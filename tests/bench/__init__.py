@@ -1,0 +1,1 @@
+"""Ratios and figures, measured."""

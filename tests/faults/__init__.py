@@ -1,0 +1,1 @@
+"""Files that must be refused or sent back."""
