@@ -23,7 +23,8 @@ class LinearResult:
     """The end of one wrapper run.
 
     ``status`` is ``optimal`` (within the gap asked for), ``feasible`` (stopped with a plan),
-    ``infeasible``, ``unbounded`` or ``unknown`` (stopped without a plan). ``values`` has one figure a
+    ``infeasible``, ``unbounded`` (or infeasible, but a cost can run away) or ``unknown`` (stopped without
+    a plan). ``values`` has one figure a
     variable (None without a plan); ``bound`` is -inf where none is proven. ``duals`` (one a row) and
     ``reduced_costs`` exist for models without whole-number variables only.
     """
@@ -159,6 +160,11 @@ class LinearModel:
             raise ValueError("a lower bound of the model exceeds its upper bound")
         return lower, upper, cost, whole
 
+    def surely_bounded(self) -> bool:
+        """Whether no variable can lower the cost without end, whatever the rows say."""
+        lower, upper, cost, _ = self.columns()
+        return not bool(((cost < 0) & np.isinf(upper) | (cost > 0) & np.isinf(lower)).any())
+
     def _sorted_blocks(self) -> list[tuple[Floats, Floats, Ints, Ints, Floats]]:
         blocks = []
         for lower, upper, rows, variables, values in self._blocks:
@@ -233,6 +239,8 @@ class _Run:
 
     def _read(self, solver: pywraplp.Solver, code: int) -> LinearResult:
         status = _STATUS.get(code, "unknown")
+        if status == "infeasible" and not self.model.surely_bounded():
+            status = "unbounded"  # presolve calls a model that can run away infeasible
         if status in ("infeasible", "unbounded"):
             return LinearResult(status, None, math.inf, math.inf if status == "infeasible" else -math.inf)
         nodes = int(solver.nodes()) if self.whole else 0
