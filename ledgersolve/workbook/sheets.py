@@ -33,7 +33,7 @@ class Style:
 PLAIN = Style()
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, slots=True)
 class Written:
     """One written cell: a value, or a formula (starting with ``=``) with its cached ``value``.
 
