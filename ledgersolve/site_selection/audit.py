@@ -57,7 +57,7 @@ def _parts(case: Case, plan: Plan) -> tuple[CostPart, ...]:
     ended = case.today & ~plan.open
     units = plan.share * case.demand[plan.customer]
     rate = case.lane_cost[plan.site, plan.customer]
-    rate = np.where(np.isfinite(rate), rate, 0.0)  # a lane that does not exist fails its check, and costs nothing
+    rate = np.where(np.isfinite(rate), rate, 0.0)  # a lane that does not exist fails its check instead
     lanes = float((rate * (plan.share if case.cost_is_whole else units)).sum())
     unmet = 0.0 if case.unmet_cost is None else case.unmet_cost * float((plan.unmet * case.demand).sum())
     return (

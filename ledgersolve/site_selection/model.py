@@ -46,7 +46,7 @@ class SiteModel:
         return values[self.y] > 0.5
 
     def read_sources(self, values: Floats, single: Flags) -> Ints:
-        """Shape (n,): the one site of each single-source customer, -1 for none and for all other customers."""
+        """Shape (n,): the one site of each single-source customer; -1 for none, and for everybody else."""
         source = np.full(single.size, -1, dtype=np.int64)
         weight = values[self.x].copy()
         weight[self.chosen] = values[self.z]
