@@ -1,7 +1,7 @@
 """Cells with their true addresses, as the streaming reader yields them."""
 
-from dataclasses import dataclass
 from enum import Enum
+from typing import NamedTuple
 
 
 class Kind(Enum):
@@ -15,9 +15,8 @@ class Kind(Enum):
     UNCALCULATED = "formula never calculated"
 
 
-@dataclass(frozen=True, slots=True)
-class Cell:
-    """One filled cell.
+class Cell(NamedTuple):
+    """One filled cell (a named tuple: a large workbook makes a million of them).
 
     ``row`` and ``column`` count from 1. ``value`` is a float (NUMBER; DATE as its serial number), a str
     (TEXT; ERROR, e.g. ``#N/A``), a bool (BOOLEAN), or the formula's text (UNCALCULATED). A number keeps

@@ -1,0 +1,47 @@
+"""Which cell styles show a number as a date."""
+
+from collections.abc import Iterable
+
+from openpyxl.styles.numbers import BUILTIN_FORMATS, is_date_format
+
+from ledgersolve.workbook.markup import MAIN, Attributes, walk
+
+# Codes 27-36 and 50-58 are dates in the East Asian editions; a file names them without a format text.
+_EAST_ASIAN_DATES = frozenset((*range(27, 37), *range(50, 59)))
+
+
+def date_styles(part: str, pieces: Iterable[bytes]) -> frozenset[int]:
+    """Indices of the cell formats (``cellXfs``) whose number format is a date or a time."""
+    formats: dict[int, str] = {}
+    used: list[int] = []
+    inside = False
+
+    def start(name: str, attributes: Attributes) -> None:
+        nonlocal inside
+        if name == f"{MAIN} numFmt":
+            formats[_number(attributes.get("numFmtId"))] = attributes.get("formatCode", "")
+        elif name == f"{MAIN} cellXfs":
+            inside = True
+        elif inside and name == f"{MAIN} xf":
+            used.append(_number(attributes.get("numFmtId")))
+
+    def end(name: str) -> None:
+        nonlocal inside
+        if name == f"{MAIN} cellXfs":
+            inside = False
+
+    walk(part, pieces, start, end=end)
+    dates = {code: _is_date(code, formats.get(code)) for code in set(used)}
+    return frozenset(index for index, code in enumerate(used) if dates[code])
+
+
+def _number(text: str | None) -> int:
+    return int(text) if text is not None and text.strip().isdecimal() else 0
+
+
+def _is_date(code: int, text: str | None) -> bool:
+    if text is None:
+        if code in _EAST_ASIAN_DATES:
+            return True
+        text = BUILTIN_FORMATS.get(code)
+    return bool(is_date_format(text))
