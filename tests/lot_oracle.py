@@ -41,6 +41,10 @@ def whole_big_m(case: Case, seconds: float = 60.0, gap: float = 0.0) -> LinearRe
                 columns += [stock[i, s - 1], late[i, s - 1]]
                 values += [1.0, -1.0]
             model.add_row(columns, values, lower=left, upper=left)
+            columns, values = [late[i, s], lost[i, s]], [1.0, 1.0]
+            if s:
+                columns, values = [*columns, late[i, s - 1]], [1.0, 1.0, -1.0]
+            model.add_row(columns, values, upper=case.demand[i, s])
             model.add_row([made[i, s], setup[i, s]], [1.0, -most[i, s]], upper=0.0)
             if case.least_lot[i] > 0:
                 model.add_row([made[i, s], setup[i, s]], [1.0, -case.least_lot[i]], lower=0.0)

@@ -14,9 +14,10 @@ def shared_case() -> Case:
     case = plain_case(np.arange(24.0).reshape(6, 4), np.arange(6.0), 1.0)
     return replace(
         case, resources=("A", "B", "C"), capacity=np.arange(12.0).reshape(3, 4),
-        overtime_limit=np.arange(3.0), overtime_cost=np.ones(3), use_cost=np.arange(3.0), item_resource=np.array([1, -1, 1, -1, -1, 2]),
+        overtime_limit=np.arange(3.0), overtime_cost=np.ones(3), use_cost=np.arange(3.0),
+        item_resource=np.array([1, -1, 1, -1, -1, 2]), item_family=np.array([-1, 1, -1, -1, -1, -1]),
         families=("F", "G"), family_cost=np.array([5.0, 6.0]), family_time=np.ones(2),
-        family_resource=np.array([-1, 2]), item_family=np.array([-1, 1, -1, -1, -1, -1]),
+        family_resource=np.array([-1, 2]),
     )
 
 

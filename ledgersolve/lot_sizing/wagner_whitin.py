@@ -11,10 +11,11 @@ Opening stock, safety stock, closing stock and receipts enter by netting: the le
 made by each period's end is a rising stair of cumulative needs, and the stock the stair itself leaves
 is paid whatever is made.
 
-What leaves this path is told by ``carries``: a binding most stock, least lot or lot multiple, and
-receipts larger than what is needed when the item may be late, go to the programme over stock levels
-(``levels``); a binding most lot, and lost sales together with any of those, are beyond every programme of
-one item and go to the wrapper.
+What leaves this path is told by ``carries``: limits that bind (least lot, most lot, lot multiple, most
+stock), and, for an item that may be late, receipts larger than need or an opening stock below the safety
+stock (only ordered demand can be late). These go to the programme over cumulative quantities (``levels``).
+Beyond both are lost sales together with any of those, and a least lot with a most lot: for these the
+recursion gives a lower bound, and the wrapper the plan.
 
 Time grows with T squared an item, in numpy's inner loop: 1000 items x 104 periods and 1 item x 5000
 periods stay far below a second, so that the O(T log T) forms (Federgruen & Tzur 1991; Wagelmans, van
@@ -73,14 +74,14 @@ def carries(case: Case) -> Flags:
     total = need.stair[:, -1]
     fullest = (case.least_stock() + total[:, None] - need.raw).max(axis=1)
     steady = (np.maximum(need.raw, 0.0) == need.stair).all(axis=1)
-    losable = (steps <= case.demand * (1 + 1e-12)).all(axis=1)
+    ordered = steps <= case.demand * (1 + 1e-12)
     return np.asarray(
         (case.lot_multiple == 0)
         & (np.where(may_lose, case.least_lot == 0, case.least_lot <= smallest))
         & (case.most_lot >= total)
         & (case.most_stock >= fullest)
-        & (steady | ~may_be_late)
-        & (losable | ~may_lose)
+        & ((steady & ordered[:, 0]) | ~may_be_late)
+        & (ordered.all(axis=1) | ~may_lose)
     )
 
 

@@ -1,0 +1,82 @@
+"""The best schedule of every item under given prices, each item by the programme that carries it.
+
+``ItemProgrammes`` puts the two programmes together: the Wagner-Whitin recursion for what it carries; for
+the rest first that recursion as a relaxation (a schedule that keeps the limits anyway is the best one),
+then the programme over cumulative quantities for the items whose schedule breaks a limit; and for what
+neither carries the recursion as a lower bound, named in ``relaxed``.
+"""
+
+import numpy as np
+
+from ledgersolve.lot_sizing import levels, wagner_whitin
+from ledgersolve.lot_sizing.case import Case, Flags, Floats
+from ledgersolve.lot_sizing.levels import LevelProgramme
+from ledgersolve.lot_sizing.wagner_whitin import Schedules, WagnerWhitin, needs
+
+
+class ItemProgrammes:
+    """The programmes of all items of a case, ready to be run again and again under other prices.
+
+    Attributes
+    ----------
+    exact
+        Shape (N,): the cost of the item's schedule is the least of all its schedules; elsewhere it is a lower
+        bound and the schedule may break a limit.
+    """
+
+    def __init__(self, case: Case) -> None:
+        self.case = case
+        everything = np.arange(case.n)
+        carried, by_level = wagner_whitin.carries(case), levels.carries(case)
+        self.exact: Flags = np.asarray(carried | by_level)
+        self.whitin = WagnerWhitin(case, everything)
+        beyond_recursion = np.flatnonzero(by_level & ~carried)
+        self.level = LevelProgramme(case, beyond_recursion)
+        self.always = self._recursion_relaxes()[beyond_recursion]
+
+    def schedule(self, setup_cost: Floats, unit_cost: Floats) -> Schedules:
+        """Give the best schedule of every item; ``setup_cost`` and ``unit_cost`` have shape (N, T)."""
+        first = self.whitin.schedule(setup_cost, unit_cost)
+        hard = self.level.items
+        wanted = self.always | ~keeps_limits(self.case, first)[hard]
+        if wanted.any():
+            second = self.level.schedule(setup_cost[hard], unit_cost[hard], wanted)
+            which = hard[wanted]
+            first.made[which], first.lost[which] = second.made[wanted], 0.0
+            first.cost[which] = second.cost[wanted]
+        return first
+
+    def best(self) -> Schedules:
+        """Give the best schedule of every item under the case's own costs."""
+        return self.schedule(self.case.setup_cost, self.case.unit_cost)
+
+    def relaxed(self) -> tuple[str, ...]:
+        """Features that the figures of items beyond both programmes leave out, in the workbook's words."""
+        case, out = self.case, ~self.exact
+        named = (
+            ("least lot", case.least_lot > 0), ("most lot", np.isfinite(case.most_lot)),
+            ("lot multiple", case.lot_multiple > 0), ("most stock", np.isfinite(case.most_stock)),
+            ("lost sales beside other limits", ~np.isnan(case.lost_cost)),
+        )
+        return tuple(name for name, has in named if (has & out).any())
+
+    def _recursion_relaxes(self) -> Flags:
+        """Items whose recursion charges less than their schedule costs, even if no limit is broken."""
+        case, need = self.case, needs(self.case)
+        falls = (np.maximum(need.raw, 0.0) != need.stair).any(axis=1)
+        short = need.raw[:, 0] > case.demand[:, 0]
+        return np.asarray(~np.isnan(case.backlog_cost) & (falls | short))
+
+
+def keeps_limits(case: Case, schedules: Schedules) -> Flags:
+    """Whether each item's schedule keeps its lot limits and its most stock, shape (N,)."""
+    made = schedules.made
+    tiny = 1e-9 * (1.0 + made.max(axis=1, initial=0.0))[:, None]
+    least = (made >= case.least_lot[:, None] - tiny) | (made <= 0)
+    most = made <= case.most_lot[:, None] + tiny
+    multiple = np.where(case.lot_multiple > 0, case.lot_multiple, 1.0)[:, None]
+    whole = (np.abs(made - multiple * np.round(made / multiple)) <= tiny) | (case.lot_multiple == 0)[:, None]
+    flows = case.receipts + made + schedules.lost - case.demand
+    net = case.opening_stock[:, None] + np.cumsum(flows, axis=1)
+    room = np.maximum(net, case.least_stock()) <= case.most_stock[:, None] + tiny
+    return np.asarray((least & most & whole & room).all(axis=1))
