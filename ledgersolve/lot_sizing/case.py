@@ -97,6 +97,10 @@ class Case:
     compare_today: bool = False
     period_starts: tuple[str, ...] = ()
 
+    def __post_init__(self) -> None:
+        if not self.resources and self.capacity.shape != (0, self.t):
+            object.__setattr__(self, "capacity", np.zeros((0, self.t)))
+
     @property
     def n(self) -> int:
         """Number of items."""
