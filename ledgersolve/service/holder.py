@@ -1,0 +1,45 @@
+"""Who holds a lease, in words this machine can check: a holder known to be dead is not waited for."""
+
+import os
+import socket
+from pathlib import Path
+from typing import Any
+
+_BOOT = Path("/proc/sys/kernel/random/boot_id")
+
+
+def describe() -> dict[str, Any]:
+    """Words on this process for its leases and its sign of life."""
+    words: dict[str, Any] = {"host": socket.gethostname(), "pid": os.getpid()}
+    place = _place()
+    if place is not None:
+        words |= {"place": place, "started": _started(os.getpid())}
+    return words
+
+
+def is_gone(words: dict[str, Any]) -> bool:
+    """Whether the holder certainly runs no more; False where this cannot be told from here.
+
+    A process number means something only in the same boot and the same process namespace.
+    """
+    place, pid = words.get("place"), words.get("pid")
+    if place is None or place != _place() or not isinstance(pid, int):
+        return False
+    return _started(pid) != words.get("started")
+
+
+def _place() -> str | None:
+    """Boot and process namespace; None where the system does not tell."""
+    try:
+        return f"{_BOOT.read_text('ascii').strip()} {Path('/proc/self/ns/pid').readlink()}"
+    except OSError:
+        return None
+
+
+def _started(pid: int) -> str | None:
+    """When a process started, in clock ticks since the boot; None where there is no such process."""
+    try:
+        stat = Path(f"/proc/{pid}/stat").read_text("utf-8", "replace")
+    except OSError:
+        return None
+    return stat.rpartition(")")[2].split()[19]

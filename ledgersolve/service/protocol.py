@@ -1,0 +1,476 @@
+"""One rename in, one answer, one rename out: how no drop is lost and none is answered twice.
+
+The state of a drop is what is on the disk; the folder is the journal. ``J`` is a job's id.
+
+=========  ==================================  =====================================================
+state      on the disk                         entered by
+=========  ==================================  =====================================================
+dropped    ``Inbox/NAME``                      the analyst
+claimed    ``jobs/J/in/NAME``                  step 1: rename(``Inbox/NAME``, ``jobs/J/in/NAME``)
+leased     ``jobs/J/lease.G`` and ``beat.G``   put-if-absent of ``lease.G``, G = 1, 2, 3 ...
+answered   ``jobs/J/payload.G`` (the complete  step 2: put-if-absent of ``answer.json``; a loser throws
+           returned workbook), then            its payload away and publishes the winner's
+           ``jobs/J/answer.json``
+published  ``Returned/NAME [id] ...``, and     step 3: rename(``payload.G``, ``Returned/...``);
+           ``payload.G`` gone                  "answer there, its payload gone" is the mark itself
+done       ``done/J/``                         rename(``jobs/J``, ``done/J``)
+=========  ==================================  =====================================================
+
+Safety rests on the three atomic steps alone. Leases only save work: with every lease ignored two
+processes may solve the same workbook, and one answer is thrown away. No step looks at a wall clock.
+
+Invariants
+----------
+I1  Every dropped file is at all times in exactly one of ``Inbox``, ``jobs/*/in`` and ``done/*/in``.
+I2  A job has at most one ``answer.json``, and it is never replaced.
+I3  A returned file's bytes have the SHA-256 named in ``answer.json``.
+I4  For each job exactly one file is ever published.
+I5  No state changes because of wall time, or because something is absent.
+I6  Every name under ``jobs`` that two processes could write is put-if-absent or holds the generation.
+
+Rules that follow
+-----------------
+- An error from a rename or a link is not believed: its answer may have been lost on the way. The unique
+  destination is looked at by a fresh listing. Nothing is ever undone.
+- Folders are collected by ``rmdir`` only, which fails where an input is inside after all.
+- A file is brought to the disk before it is linked or renamed, its folder after it.
+"""
+
+import errno
+import hashlib
+import json
+import os
+import secrets
+import time
+from collections.abc import Callable
+from dataclasses import asdict, dataclass, field
+from enum import StrEnum
+from pathlib import Path
+from typing import Any
+
+from ledgersolve.service.disk import Disk
+from ledgersolve.service.holder import is_gone
+from ledgersolve.service.layout import Layout, discard, put_if_absent
+from ledgersolve.service.names import ending, returned_name
+
+_ALPHABET = "0123456789ABCDEFGHJKMNPQRSTVWXYZ"
+_SHORT = 8
+ANSWER = "answer.json"
+
+
+class State(StrEnum):
+    """Where a job stands, read from its folder alone."""
+
+    EMPTY = "empty"  # claimed by nobody yet, or the claim did not come through
+    CLAIMED = "claimed"
+    LEASED = "leased"
+    ANSWERED = "answered"
+    PUBLISHED = "published"
+    BROKEN = "broken"  # the answer cannot be read, or more than one input: for the administrator
+
+
+@dataclass(frozen=True)
+class Reply:
+    """What ``answer.json`` holds: which payload is the answer, and how it is called when published."""
+
+    generation: int
+    sha256: str
+    name: str
+    outcome: str
+    input_sha256: str = ""
+    report: dict[str, Any] = field(default_factory=dict)
+
+    def as_bytes(self) -> bytes:
+        """The content of the file."""
+        return json.dumps(asdict(self), indent=1, sort_keys=True).encode("ascii")
+
+
+@dataclass(frozen=True)
+class JobView:
+    """A job's folder as one listing shows it."""
+
+    job: str
+    home: Path
+    state: State
+    input: Path | None
+    leases: frozenset[int]
+    released: frozenset[int]
+    failed: frozenset[int]
+    payloads: frozenset[int]
+    reply: Reply | None
+
+    @property
+    def generation(self) -> int:
+        """The newest lease, 0 where there is none."""
+        return max(self.leases, default=0)
+
+    @property
+    def lease_ended(self) -> bool:
+        """Whether the newest lease was given back or ended in a failed attempt."""
+        return self.generation in self.released | self.failed
+
+    @property
+    def lost_leases(self) -> int:
+        """Earlier leases whose holder vanished without a word."""
+        return len(self.leases - self.released - self.failed - {self.generation})
+
+
+def new_job() -> str:
+    """A job's id: a readable label of time and 64 random bits, of which people see the first eight signs."""
+    bits = secrets.randbits(64)
+    random = "".join(_ALPHABET[(bits >> shift) & 31] for shift in range(60, -1, -5))
+    return f"{time.strftime('%Y%m%dT%H%M%SZ', time.gmtime())}-{random}"
+
+
+def short_id(job: str) -> str:
+    """The part of the id that stands in the returned file's name."""
+    return job.rpartition("-")[2][:_SHORT]
+
+
+class Protocol:
+    """The steps, as one process takes them. Every method may raise OSError: then try again later.
+
+    Parameters
+    ----------
+    layout, disk
+        The served folder.
+    holder
+        Words that name this process and no other; they stand in its leases.
+    """
+
+    def __init__(self, layout: Layout, disk: Disk, holder: dict[str, Any]) -> None:
+        self.layout = layout
+        self.disk = disk
+        self.holder = {**holder, "nonce": secrets.token_hex(16)}
+
+    def home(self, job: str) -> Path:
+        """The folder of a job that is not done."""
+        return self.layout.jobs / job
+
+    # ---- step 1 ------------------------------------------------------------------------------------
+
+    def claim(self, drop: Path) -> str | None:
+        """Move a drop into a new job; None where it is not there any more (another process was faster).
+
+        Raises
+        ------
+        OSError
+            The drop could not be moved (it is open in another program, or protected), or it was moved and
+        could not be brought to the disk: then the job is there and found by the next scan.
+        """
+        job = new_job()
+        home = self.home(job)
+        inside = home / "in"
+        self._make(home)
+        self._make(inside)
+        target = inside / drop.name
+        try:
+            self.disk.rename(drop, target)
+        except OSError as error:
+            if not self._arrived(target):
+                self.collect(job)
+                if isinstance(error, FileNotFoundError):
+                    return None
+                raise
+        for folder in (inside, drop.parent):
+            self.disk.sync_folder(folder)
+        self.disk.sync_file(target)
+        return job
+
+    def _arrived(self, target: Path) -> bool:
+        try:
+            return target.name in self.disk.names(target.parent)
+        except FileNotFoundError:
+            return False
+
+    def _make(self, folder: Path) -> None:
+        try:
+            self.disk.make_folder(folder)
+        except OSError:
+            if folder.name not in self.disk.names(folder.parent):
+                raise
+        self.disk.sync_folder(folder.parent)
+
+    # ---- what stands there -------------------------------------------------------------------------
+
+    def view(self, job: str, home: Path | None = None) -> JobView | None:
+        """A job by a fresh listing; None where its folder is gone (another process finished it)."""
+        home = home or self.home(job)
+        try:
+            names = self.disk.names(home)
+            inputs = self.disk.names(home / "in") if "in" in names else []
+        except FileNotFoundError:
+            return None
+        numbers = {
+            kind: frozenset(int(name[len(kind) + 1 :]) for name in names if _numbered(name, kind))
+            for kind in ("lease", "released", "failed", "payload")
+        }
+        reply = self._reply(home) if ANSWER in names else None
+        return JobView(
+            job=job,
+            home=home,
+            state=_state(ANSWER in names, reply, inputs, numbers),
+            input=home / "in" / inputs[0] if len(inputs) == 1 else None,
+            leases=numbers["lease"],
+            released=numbers["released"],
+            failed=numbers["failed"],
+            payloads=numbers["payload"],
+            reply=reply,
+        )
+
+    def _reply(self, home: Path) -> Reply | None:
+        try:
+            found = json.loads(self.disk.read(home / ANSWER))
+            reply = Reply(**found)
+        except (ValueError, TypeError):
+            return None
+        sound = isinstance(reply.generation, int) and reply.name == Path(reply.name).name
+        return reply if sound and len(reply.sha256) == 64 else None
+
+    # ---- leases: they save work, nothing rests on them ---------------------------------------------
+
+    def lease(self, view: JobView, words: dict[str, Any] | None = None) -> int | None:
+        """Take the next generation of a job; None where another process has it."""
+        generation = view.generation + 1
+        content = json.dumps({**self.holder, **(words or {})}, sort_keys=True).encode("ascii")
+        target = view.home / f"lease.{generation}"
+        try:
+            ours = put_if_absent(self.disk, self.layout, target, content)
+        except FileNotFoundError:
+            return None
+        if not ours:
+            return None
+        self.disk.sync_folder(view.home)
+        self.beat(view.job, generation)
+        return generation
+
+    def beat(self, job: str, generation: int) -> None:
+        """Show that the holder lives; others watch the content change on their own clock."""
+        self.disk.refresh(self.home(job) / f"beat.{generation}", secrets.token_hex(8).encode("ascii"))
+
+    def release(self, job: str, generation: int) -> None:
+        """Give a job back in good order; the attempt does not count."""
+        self._note(self.home(job) / f"released.{generation}", {})
+
+    def fail(self, job: str, generation: int, reason: str) -> None:
+        """Note that an attempt failed: the child crashed, was killed or gave no sound result."""
+        self._note(self.home(job) / f"failed.{generation}", {"reason": reason})
+
+    def _note(self, target: Path, words: dict[str, Any]) -> None:
+        try:
+            put_if_absent(self.disk, self.layout, target, json.dumps(words).encode("ascii"))
+            self.disk.sync_folder(target.parent)
+        except FileNotFoundError:
+            return  # another process finished the job meanwhile
+
+    def reasons(self, view: JobView) -> list[str]:
+        """Why the attempts so far failed, oldest first."""
+        found = []
+        for generation in sorted(view.failed):
+            try:
+                words = json.loads(self.disk.read(view.home / f"failed.{generation}"))
+                found.append(str(words.get("reason", "")))
+            except (OSError, ValueError, AttributeError):
+                found.append("")
+        return found
+
+    # ---- step 2 ------------------------------------------------------------------------------------
+
+    def answer(self, job: str, handover: "Handover") -> Reply | None:
+        """Make the finished workbook the answer, unless there is one; returns the answer that counts.
+
+        None where the job is done already. Only the holder of the generation may call this. Once
+        ``answer.json`` was tried the payload is never put in place again: it may be published by then.
+        """
+        home = self.home(job)
+        reply = handover.reply
+        payload = home / f"payload.{reply.generation}"
+        try:
+            if not handover.delivered:
+                self._deliver(handover.finished, payload, reply.sha256)
+                handover.delivered = True
+            put_if_absent(self.disk, self.layout, home / ANSWER, reply.as_bytes())
+            self.disk.sync_folder(home)
+        except FileNotFoundError:
+            if self.view(job) is not None:
+                raise
+        discard(self.disk, handover.finished)
+        view = self.view(job)
+        if view is None:
+            return None
+        if view.reply is None:
+            raise OSError(errno.EIO, f"the answer of job {job} cannot be read")
+        if view.reply.generation != reply.generation:
+            discard(self.disk, payload)
+        return view.reply
+
+    def _deliver(self, finished: Path, payload: Path, sha256: str) -> None:
+        """Put the payload in place; it may be there already from a try whose end was not seen."""
+        self.disk.open_up(finished, self.layout.returned)
+        self.disk.sync_file(finished)
+        try:
+            self.disk.link(finished, payload)
+        except OSError:
+            if payload.name not in self.disk.names(payload.parent):
+                raise
+        self.disk.sync_folder(payload.parent)
+        if sha256_of(self.disk, payload) != sha256:
+            discard(self.disk, payload)
+            raise OSError(errno.EIO, f"{payload.name} did not arrive whole")
+
+    # ---- step 3 ------------------------------------------------------------------------------------
+
+    def publish(self, view: JobView) -> Path | None:
+        """Move the answer's payload to Returned; its path there, or None where it was moved before.
+
+        Raises
+        ------
+        OSError
+            The payload is still here: Returned is full, protected or out of reach.
+        """
+        reply = view.reply
+        if reply is None or reply.generation not in view.payloads:
+            return None
+        payload = view.home / f"payload.{reply.generation}"
+        target = self.layout.returned / reply.name
+        if _is_there(self.disk, target):
+            target = target.with_name(_name_with_whole_id(view, reply))
+        try:
+            self.disk.rename(payload, target)
+        except OSError:
+            if payload.name in self.disk.names(view.home):
+                raise
+            return None
+        self.disk.sync_folder(self.layout.returned)
+        self.disk.sync_folder(view.home)
+        return target
+
+    def finish(self, view: JobView) -> bool:
+        """Move a published job to ``done``; False where it is not published or gone already."""
+        now = self.view(view.job)
+        if now is None or now.state is not State.PUBLISHED or now.reply is None:
+            return False
+        for loser in now.payloads - {now.reply.generation}:
+            discard(self.disk, now.home / f"payload.{loser}")
+        target = self.layout.done / view.job
+        try:
+            self.disk.rename(now.home, target)
+        except OSError:
+            if not _is_there(self.disk, target):
+                raise
+        self.disk.sync_folder(self.layout.done)
+        self.disk.sync_folder(self.layout.jobs)
+        return True
+
+    # ---- collecting --------------------------------------------------------------------------------
+
+    def collect(self, job: str) -> bool:
+        """Remove a job without an input, by ``rmdir`` only; False where something is in it after all."""
+        home = self.home(job)
+        for folder in (home / "in", home):
+            try:
+                self.disk.remove_folder(folder)
+            except FileNotFoundError:
+                continue
+            except OSError:
+                return False
+        return True
+
+
+@dataclass
+class Handover:
+    """A finished workbook on its way to become an answer: ``finished`` is a complete file in ``tmp``."""
+
+    reply: Reply
+    finished: Path
+    delivered: bool = False
+
+
+class LeaseWatch:
+    """Whether a holder of a lease still lives, judged on this process's monotonic clock alone.
+
+    A lease counts as left behind once its beat has not changed for ``patience`` seconds since *we* first
+    looked, or its holder is a process of this machine that runs no more. ``forget`` starts all over, as
+    after a share outage.
+    """
+
+    def __init__(
+        self, protocol: Protocol, patience: float, clock: Callable[[], float] = time.monotonic
+    ) -> None:
+        self._protocol = protocol
+        self._patience = patience
+        self._clock = clock
+        self._seen: dict[str, tuple[int, bytes, float]] = {}
+
+    def left_behind(self, view: JobView) -> bool:
+        """Whether the job's newest lease may be taken over."""
+        if view.generation == 0 or view.lease_ended:
+            return True
+        try:
+            beat = self._protocol.disk.read(view.home / f"beat.{view.generation}")
+        except FileNotFoundError:
+            beat = b""
+        generation, known, since = self._seen.get(view.job, (0, b"", 0.0))
+        if (generation, known) != (view.generation, beat):
+            self._seen[view.job] = (view.generation, beat, self._clock())
+            return self._patience <= 0 or (generation != view.generation and self._holder_is_gone(view))
+        return self._clock() - since >= self._patience
+
+    def _holder_is_gone(self, view: JobView) -> bool:
+        try:
+            words = json.loads(self._protocol.disk.read(view.home / f"lease.{view.generation}"))
+        except (OSError, ValueError):
+            return False
+        return isinstance(words, dict) and is_gone(words)
+
+    def forget(self) -> None:
+        """Start all observations over."""
+        self._seen.clear()
+
+    def drop(self, job: str) -> None:
+        """Forget one job."""
+        self._seen.pop(job, None)
+
+
+def sha256_of(disk: Disk, path: Path) -> str:
+    """SHA-256 of a file as it stands on the disk, in hexadecimal."""
+    digest = hashlib.sha256()
+    with os.fdopen(disk.open_to_read(path), "rb") as stream:
+        while block := stream.read(1 << 20):
+            digest.update(block)
+    return digest.hexdigest()
+
+
+def reply_name(drop: str, job: str, outcome: str, suffix: str) -> str:
+    """How the returned file of a job is called."""
+    return returned_name(drop, short_id(job), outcome, suffix)
+
+
+def _name_with_whole_id(view: JobView, reply: Reply) -> str:
+    drop = reply.name if view.input is None else view.input.name
+    return returned_name(drop, view.job.rpartition("-")[2], reply.outcome, ending(reply.name))
+
+
+def _is_there(disk: Disk, path: Path) -> bool:
+    try:
+        disk.status(path)
+    except FileNotFoundError:
+        return False
+    return True
+
+
+def _numbered(name: str, kind: str) -> bool:
+    number = name.removeprefix(f"{kind}.")
+    return number != name and number.isascii() and number.isdigit()
+
+
+def _state(
+    answered: bool, reply: Reply | None, inputs: list[str], numbers: dict[str, frozenset[int]]
+) -> State:
+    if (answered and reply is None) or len(inputs) > 1:
+        return State.BROKEN
+    if reply is not None:
+        return State.ANSWERED if reply.generation in numbers["payload"] else State.PUBLISHED
+    if not inputs:
+        return State.BROKEN if numbers["lease"] else State.EMPTY
+    return State.LEASED if numbers["lease"] else State.CLAIMED
