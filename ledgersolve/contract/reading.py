@@ -33,7 +33,7 @@ class RunSettings:
     time_limit: float = 300.0
     accepted_gap: float = 1e-4
     questions: bool = True
-    questions_share: float = 0.5
+    questions_share: float = 0.2
 
 
 @dataclass(frozen=True)

@@ -77,13 +77,17 @@ class Origins:
         ref = self.cell(sheet, key, title)
         return None if ref is None or not _usable(self.tables[sheet], ref) else ref
 
-    def matrix_number(self, sheet: str, row: str, column: str) -> CellRef | None:
-        """Cell of a matrix that a formula can use as a number; None where absent, blank or text."""
+    def matrix_cell(self, sheet: str, row: str, column: str) -> CellRef | None:
+        """Cell of a matrix, filled or not; None where row or column is absent."""
         matrix = self.matrices.get(sheet)
         if matrix is None or row not in matrix.rows or column not in matrix.columns:
             return None
-        ref = CellRef(matrix.sheet, matrix.rows[row], matrix.columns[column])
-        return ref if _usable(matrix, ref) else None
+        return CellRef(matrix.sheet, matrix.rows[row], matrix.columns[column])
+
+    def matrix_number(self, sheet: str, row: str, column: str) -> CellRef | None:
+        """Cell of a matrix that a formula can use as a number; None where absent, blank or text."""
+        ref = self.matrix_cell(sheet, row, column)
+        return None if ref is None or not _usable(self.matrices[sheet], ref) else ref
 
     def setting(self, name: str) -> CellRef | None:
         """Value cell of a setting that a formula can use as a number."""
