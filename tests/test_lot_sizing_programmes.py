@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from ledgersolve.lot_sizing.parts import take
+from ledgersolve.lot_sizing.groups import part
 from ledgersolve.lot_sizing.programmes import ItemProgrammes, keeps_limits
 from tests.lot_oracle import random_items, whole_big_m
 from tests.test_lot_sizing_wagner_whitin import cost_of
@@ -26,13 +26,13 @@ def test_exact_items_against_whole_model(features: tuple[str, ...]) -> None:
     answer = programmes.best()
     assert programmes.exact.all()
     for i in range(case.n):
-        whole = whole_big_m(take(case, np.array([i])))
+        whole = whole_big_m(part(case, np.array([i])).case)
         if whole.status == "infeasible":
             assert np.isinf(answer.cost[i])
         else:
             assert answer.cost[i] == pytest.approx(whole.objective, rel=1e-6, abs=1e-5)
     served = np.flatnonzero(np.isfinite(answer.cost))
-    shown = cost_of(take(case, served), answer.made[served], answer.lost[served])
+    shown = cost_of(part(case, served).case, answer.made[served], answer.lost[served])
     assert shown == pytest.approx(answer.cost[served])
     assert keeps_limits(case, answer)[served].all()
 
@@ -51,5 +51,5 @@ def test_relaxed_items_are_bounded(features: tuple[str, ...]) -> None:
     assert outside.size
     assert programmes.relaxed()
     for i in outside:
-        whole = whole_big_m(take(case, np.array([i])))
+        whole = whole_big_m(part(case, np.array([i])).case)
         assert answer.cost[i] <= whole.objective + 1e-5

@@ -6,7 +6,7 @@ import numpy as np
 import pytest
 
 from ledgersolve.lot_sizing.case import Case, plain_case
-from ledgersolve.lot_sizing.parts import take
+from ledgersolve.lot_sizing.groups import part
 from ledgersolve.lot_sizing.wagner_whitin import Schedules, WagnerWhitin, carries, needs
 from tests.lot_oracle import random_items, whole_big_m
 
@@ -84,14 +84,14 @@ def test_random_items_against_whole_model(features: tuple[str, ...]) -> None:
     assert carried.size
     answer = best(case)
     for i in carried:
-        single = take(case, np.array([i]))
+        single = part(case, np.array([i])).case
         whole = whole_big_m(single)
         if whole.status == "infeasible":
             assert np.isinf(answer.cost[i])
         else:
             assert answer.cost[i] == pytest.approx(whole.objective, rel=1e-6, abs=1e-5)
     served = carried[np.isfinite(answer.cost[carried])]
-    shown = cost_of(take(case, served), answer.made[served], answer.lost[served])
+    shown = cost_of(part(case, served).case, answer.made[served], answer.lost[served])
     assert shown == pytest.approx(answer.cost[served])
 
 
@@ -103,7 +103,7 @@ def test_relaxation_where_not_carried(features: tuple[str, ...]) -> None:
     outside = np.flatnonzero(~carries(case))
     assert outside.size
     for i in outside:
-        whole = whole_big_m(take(case, np.array([i])))
+        whole = whole_big_m(part(case, np.array([i])).case)
         assert answer.cost[i] <= whole.objective + 1e-5
 
 
