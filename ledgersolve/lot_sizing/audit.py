@@ -42,7 +42,7 @@ def _check_shapes(case: Case, plan: Plan) -> None:
 
 
 def _finite(plan: Plan) -> Iterator[Check]:
-    """A failed check for every array that holds a figure which is no number: nothing else can be checked then."""
+    """A failed check for every array with a figure that is no number: nothing else can be checked then."""
     for name in ("made", "stock", "late", "lost", "overtime"):
         if not np.isfinite(getattr(plan, name)).all():
             yield Check("Figures", name, "numbers", "a figure that is not a number", np.inf, ok=False)
@@ -119,7 +119,8 @@ class _Book:
         balance = plan.stock - plan.late - self._balance()
         yield self._items("Stock balance", np.abs(balance), "stock follows from what comes and goes", balance)
         yield self._items(
-            "Setups", 1.0 * (plan.setup != (plan.made > 0)), "a setup exactly where something is made", plan.setup
+            "Setups", 1.0 * (plan.setup != (plan.made > 0)), "a setup exactly where something is made",
+            plan.setup,
         )
 
     def _balance(self) -> Floats:
@@ -172,36 +173,37 @@ class _Book:
         for r, name in enumerate(case.resources):
             finite = case.capacity[r][np.isfinite(case.capacity[r])]
             size = max(1e-3, float(np.max(finite, initial=0.0)))
-            yield _resource(case, f"resource {name}", "Capacity", need[r], case.capacity[r] + overtime[r], size)
+            yield _resource(case, name, "Capacity", need[r], case.capacity[r] + overtime[r], size)
             limit = np.full(case.t, case.overtime_limit[r])
-            yield _resource(case, f"resource {name}", "Overtime limit", overtime[r], limit, size)
-            yield _resource(case, f"resource {name}", "No negative overtime", -overtime[r], np.zeros(case.t), size)
+            yield _resource(case, name, "Overtime limit", overtime[r], limit, size)
+            yield _resource(case, name, "No negative overtime", -overtime[r], np.zeros(case.t), size)
 
     def _items(self, rule: str, excess: Floats, required: Floats | str, got: Floats | Flags) -> Check:
-        """Check an (N, T) rule: broken where ``excess`` is above the item's tolerance; the worst cell is named."""
+        """Check an (N, T) rule, broken where ``excess`` is above the tolerance; names the worst cell."""
         case = self.case
         if not excess.size:
             return Check(rule, "no items", "-", "-", 0.0, ok=True)
         relative = excess / self.size()
         i, t = np.unravel_index(int(np.argmax(relative)), relative.shape)
         if relative[i, t] <= TOLERANCE:
-            return Check(rule, f"all {case.n} items", _words(required, None), "holds in every period", 0.0, ok=True)
+            wanted = _words(required, None)
+            return Check(rule, f"all {case.n} items", wanted, "holds in every period", 0.0, ok=True)
         where = f"item {case.items[i]}, {case.period_unit} {case.periods[t]}"
-        return Check(rule, where, _words(required, (i, t)), f"{float(got[i, t]):.10g}", float(excess[i, t]), ok=False)
+        wanted, found = _words(required, (i, t)), f"{float(got[i, t]):.10g}"
+        return Check(rule, where, wanted, found, float(excess[i, t]), ok=False)
 
 
-def _resource(case: Case, subject: str, rule: str, need: Floats, limit: Floats, size: float) -> Check:
-    """Check need <= limit over the periods of one resource; names the fullest period, or the worst one."""
+def _resource(case: Case, name: str, rule: str, need: Floats, limit: Floats, size: float) -> Check:
+    """Check need <= limit in all periods of one resource; names the fullest period, or the worst."""
+    subject = f"resource {name}"
     if not case.t:
         return Check(rule, subject, "-", "-", 0.0, ok=True)
     with np.errstate(invalid="ignore"):
         excess = need - limit
     t = int(np.argmax(excess))
     ok = bool(excess[t] <= TOLERANCE * size)
-    place = f"{case.period_unit} {case.periods[t]}"
-    return Check(
-        rule, subject, f"at most {limit[t]:.10g}", f"{need[t]:.10g} in {place}", 0.0 if ok else float(excess[t]), ok=ok
-    )
+    found = f"{need[t]:.10g} in {case.period_unit} {case.periods[t]}"
+    return Check(rule, subject, f"at most {limit[t]:.10g}", found, 0.0 if ok else float(excess[t]), ok=ok)
 
 
 def _words(required: Floats | str, place: tuple[np.intp, np.intp] | None) -> str:
@@ -211,5 +213,5 @@ def _words(required: Floats | str, place: tuple[np.intp, np.intp] | None) -> str
 
 
 def _priced(price: Floats, quantity: Floats) -> float:
-    """Sum of price x quantity; a quantity without a price (a broken rule, checked apart) costs nothing here."""
+    """Sum of price x quantity; a quantity without a price (a broken rule, checked apart) counts nothing."""
     return float((np.where(np.isfinite(price), price, 0.0)[:, None] * quantity).sum())

@@ -1,6 +1,8 @@
 """Groups of items that share nothing with the rest: each is a case of its own."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from scipy.sparse import coo_matrix
@@ -13,11 +15,15 @@ from ledgersolve.lot_sizing.tight import tight_limits
 
 @dataclass(frozen=True)
 class Group:
-    """A group: its own case, and the numbers of its items and resources in the whole one."""
+    """A group: its own case, and the numbers of its items and resources in the whole one.
+
+    ``shared`` is False for the one group that gathers the items without any tie.
+    """
 
     case: Case
     items: Ints
     resources: Ints
+    shared: bool = True
 
 
 def binding(case: Case) -> Flags:
@@ -32,7 +38,8 @@ def binding(case: Case) -> Flags:
     time = case.time_per_unit[on, None] * most[on] + case.setup_time[on, None] * (most[on] > 0)
     np.add.at(need, case.item_resource[on], time)
     placed = np.flatnonzero(case.family_resource >= 0)
-    np.add.at(need, case.family_resource[placed], np.repeat(case.family_time[placed, None], case.t, axis=1))
+    need_of_families = np.repeat(case.family_time[placed, None], case.t, axis=1)
+    np.add.at(need, case.family_resource[placed], need_of_families)
     return np.asarray((case.use_cost > 0) | (need > case.capacity).any(axis=1))
 
 
@@ -50,27 +57,35 @@ def without_slack(case: Case) -> Case:
 
 
 def groups(case: Case) -> list[Group]:
-    """Split a case; two items belong together when they share a resource or a family."""
+    """Split a case, in the order of first items.
+
+    Two items belong together when they share a resource or a family; items without any tie are gathered in
+    one group.
+    """
     slim = without_slack(case)
     n, r, f = slim.n, len(slim.resources), len(slim.families)
     on, kin = np.flatnonzero(slim.item_resource >= 0), np.flatnonzero(slim.item_family >= 0)
     placed = np.flatnonzero(slim.family_resource >= 0)
     starts = np.concatenate([on, kin, n + r + placed])
-    ends = np.concatenate([n + slim.item_resource[on], n + r + slim.item_family[kin], n + slim.family_resource[placed]])
+    ends = np.concatenate(
+        [n + slim.item_resource[on], n + r + slim.item_family[kin], n + slim.family_resource[placed]]
+    )
     size = n + r + f
-    _, labels = connected_components(coo_matrix((np.ones(starts.size), (starts, ends)), (size, size)), directed=False)
-    order = np.argsort(labels[:n], kind="stable")
-    cuts = np.flatnonzero(np.diff(labels[:n][order])) + 1
-    return [part(slim, np.sort(items)) for items in np.split(order, cuts)] if n else []
+    ties = coo_matrix((np.ones(starts.size), (starts, ends)), (size, size))
+    label = connected_components(ties, directed=False)[1][:n]
+    alone = (slim.item_resource < 0) & (slim.item_family < 0)
+    label[alone] = size
+    marks = dict.fromkeys(label.tolist())
+    return [part(slim, np.flatnonzero(label == mark), shared=mark != size) for mark in marks]
 
 
-def part(case: Case, items: Ints) -> Group:
+def part(case: Case, items: Ints, *, shared: bool = True) -> Group:
     """Give the case of some items alone, with the resources and families that they and their families use."""
     families = np.unique(case.item_family[items])
     families = families[families >= 0]
     resources = np.unique(np.concatenate([case.item_resource[items], case.family_resource[families]]))
     resources = resources[resources >= 0]
-    fields: dict[str, object] = {
+    fields: dict[str, Any] = {
         name: getattr(case, name)[items]
         for name in (
             "demand", "receipts", "setup_cost", "unit_cost", "holding_cost", "setup_allowed", "opening_stock",
@@ -80,25 +95,27 @@ def part(case: Case, items: Ints) -> Group:
     }
     for name in ("items", "item_names", "units"):
         fields[name] = tuple(getattr(case, name)[i] for i in items)
-    fields |= {name: getattr(case, name)[resources] for name in ("overtime_limit", "overtime_cost", "use_cost")}
-    fields |= {name: getattr(case, name)[families] for name in ("family_cost", "family_time")}
+    for name in ("overtime_limit", "overtime_cost", "use_cost"):
+        fields[name] = getattr(case, name)[resources]
+    for name in ("family_cost", "family_time"):
+        fields[name] = getattr(case, name)[families]
     own = replace(
         case, resources=tuple(case.resources[r] for r in resources),
         families=tuple(case.families[f] for f in families), today=None, compare_today=False,
         capacity=case.capacity[resources] if resources.size else np.zeros((0, case.t)),
         item_resource=_renumbered(case.item_resource[items], resources),
         item_family=_renumbered(case.item_family[items], families),
-        family_resource=_renumbered(case.family_resource[families], resources), **fields,  # type: ignore[arg-type]
+        family_resource=_renumbered(case.family_resource[families], resources), **fields,
     )
-    return Group(own, items, resources)
+    return Group(own, items, resources, shared)
 
 
-def joined(case: Case, groups_: list[Group], plans: list[Plan]) -> Plan:
+def joined(case: Case, parts: Sequence[Group], plans: Sequence[Plan]) -> Plan:
     """Put the plans of the groups together again."""
     shape = (case.n, case.t)
     whole = {name: np.zeros(shape) for name in ("made", "stock", "late", "lost")}
     overtime: Floats = np.zeros((len(case.resources), case.t))
-    for group, plan in zip(groups_, plans, strict=True):
+    for group, plan in zip(parts, plans, strict=True):
         for name, figures in whole.items():
             figures[group.items] = getattr(plan, name)
         overtime[group.resources] = plan.overtime

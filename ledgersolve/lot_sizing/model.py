@@ -68,9 +68,9 @@ class WholeModel:
         with np.errstate(divide="ignore", invalid="ignore"):
             counts = np.round(plan.made / self.case.lot_multiple[:, None])
         for numbers, figures in (
-            (self.made, plan.made), (self.setup, plan.setup), (self.stock, plan.stock), (self.late, plan.late),
-            (self.lost, plan.lost), (self.multiples, counts), (self.family, families), (self.used, used),
-            (self.overtime, plan.overtime),
+            (self.made, plan.made), (self.setup, plan.setup), (self.stock, plan.stock),
+            (self.late, plan.late), (self.lost, plan.lost), (self.multiples, counts),
+            (self.family, families), (self.used, used), (self.overtime, plan.overtime),
         ):
             there = numbers >= 0
             values[numbers[there]] = figures[there]
@@ -120,7 +120,8 @@ def _variables(case: Case, tight: Tight, model: LinearModel) -> WholeModel:
         cost=case.holding_cost.ravel(),
     )
     ends = np.arange(t) == t - 1
-    late = _some(model, np.isfinite(case.backlog_cost), case.backlog_cost, np.where(ends, 0.0, np.inf)[None, :])
+    late_at_most = np.where(ends, 0.0, np.inf)[None, :]
+    late = _some(model, np.isfinite(case.backlog_cost), case.backlog_cost, late_at_most)
     lost = _some(model, np.isfinite(case.lost_cost), case.lost_cost, strong.most_lost(case, tight))
     counts = np.full((n, t), np.inf)
     multiples = _some(model, case.lot_multiple > 0, np.zeros(n), counts, whole=True)
@@ -129,9 +130,9 @@ def _variables(case: Case, tight: Tight, model: LinearModel) -> WholeModel:
     used = _some(model, case.use_cost > 0, case.use_cost, np.ones((len(case.resources), t)), whole=True)
     over = np.repeat(case.overtime_limit[:, None], t, axis=1)
     overtime = _some(model, case.overtime_limit > 0, case.overtime_cost, over)
+    made, setup, stock = made.reshape(n, t), setup.reshape(n, t), stock.reshape(n, t)
     return WholeModel(
-        case, tight, model, made.reshape(n, t), setup.reshape(n, t), stock.reshape(n, t), late, lost, multiples,
-        family, used, overtime,
+        case, tight, model, made, setup, stock, late, lost, multiples, family, used, overtime
     )
 
 
@@ -157,17 +158,18 @@ def _family_matters(case: Case) -> Flags:
 
 
 def _stock_limits(whole: WholeModel) -> None:
-    """Rows for what the bounds of the variables do not say: limits that leave no plan stay the solver's to find."""
+    """Rows for what the bounds of the variables leave out: that no plan exists is the solver's to find."""
     case = whole.case
-    too_much = whole.stock[case.least_stock() > case.most_stock[:, None]]
-    room = np.repeat(case.most_stock[:, None], case.t, axis=1)[case.least_stock() > case.most_stock[:, None]]
+    crossed = case.least_stock() > case.most_stock[:, None]
+    too_much = whole.stock[crossed]
+    room = np.repeat(case.most_stock[:, None], case.t, axis=1)[crossed]
     whole.model.add_rows(too_much.size, np.arange(too_much.size), too_much, 1.0, upper=room)
     due = np.flatnonzero(np.isfinite(case.backlog_cost) & (whole.tight.must > 0))
     whole.model.add_rows(due.size, np.arange(due.size), whole.made[due, 0], 1.0, lower=whole.tight.must[due])
 
 
 def _balance(whole: WholeModel) -> None:
-    """stock - late = stock before - late before + receipts + made - demand + lost."""
+    """Balance: stock - late = stock before - late before + receipts + made - demand + lost."""
     case = whole.case
     cells = np.arange(case.n * case.t).reshape(case.n, case.t)
     rest = case.receipts - case.demand

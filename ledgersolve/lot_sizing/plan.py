@@ -59,10 +59,10 @@ def plan_from_made(case: Case, made: ArrayLike, overtime: ArrayLike | None = Non
         lost[both] = _lost_or_late(case, quantities, both)
     stock, late = _stock_and_late(case, quantities, lost)
     if overtime is None:
-        over = np.maximum(resource_need(case, quantities) - case.capacity, 0.0) if case.resources else _no_time(case)
+        over = np.maximum(resource_need(case, quantities) - case.capacity, 0.0)
         extra = np.minimum(over, case.overtime_limit[:, None])
     else:
-        extra = np.array(np.broadcast_to(np.asarray(overtime, dtype=np.float64), (len(case.resources), case.t)))
+        extra = np.array(np.broadcast_to(np.asarray(overtime, dtype=np.float64), case.capacity.shape))
     return Plan(quantities, stock, late, lost, quantities > 0, extra)
 
 
@@ -76,18 +76,15 @@ def family_setups(case: Case, setup: Flags) -> Flags:
 
 def resource_need(case: Case, made: Floats) -> Floats:
     """Shape (R, T): time that the quantities with their setups, and family setups, need."""
-    need = _no_time(case)
+    need = np.zeros((len(case.resources), case.t))
     setup = made > 0
     on = np.flatnonzero(case.item_resource >= 0)
     time = case.time_per_unit[on, None] * made[on] + case.setup_time[on, None] * setup[on]
     np.add.at(need, case.item_resource[on], time)
     placed = np.flatnonzero(case.family_resource >= 0)
-    np.add.at(need, case.family_resource[placed], case.family_time[placed, None] * family_setups(case, setup)[placed])
+    by_family = case.family_time[placed, None] * family_setups(case, setup)[placed]
+    np.add.at(need, case.family_resource[placed], by_family)
     return need
-
-
-def _no_time(case: Case) -> Floats:
-    return np.zeros((len(case.resources), case.t))
 
 
 def _net(case: Case, made: Floats) -> Floats:
@@ -147,7 +144,8 @@ def _cheapest_service(case: Case, made: Floats, items: Ints) -> Floats:
     """
     t, cells = case.t, items.size * case.t
     least = case.least_stock()[items].ravel()
-    dear = 1.0 + 2.0 * t * (case.holding_cost[items].sum() + case.backlog_cost[items].sum()) + case.lost_cost[items].sum()
+    waiting = case.holding_cost[items].sum() + case.backlog_cost[items].sum()
+    dear = 1.0 + 2.0 * t * waiting + case.lost_cost[items].sum()
     model = LinearModel()
     ends = np.tile(np.arange(t) == t - 1, items.size)
     before = np.flatnonzero(~np.tile(np.arange(t) == 0, items.size))
@@ -156,14 +154,15 @@ def _cheapest_service(case: Case, made: Floats, items: Ints) -> Floats:
     late = model.add_variables(
         cells, upper=np.where(ends, 0.0, np.inf), cost=np.repeat(case.backlog_cost[items], t)
     )
-    lost = model.add_variables(cells, upper=case.demand[items].ravel(), cost=np.repeat(case.lost_cost[items], t))
+    price = np.repeat(case.lost_cost[items], t)
+    lost = model.add_variables(cells, upper=case.demand[items].ravel(), cost=price)
     rest = (case.receipts + made - case.demand)[items].copy()
     rest[:, 0] += case.opening_stock[items]
     rows = np.arange(cells)
     steps = rest.ravel() - np.where(np.isin(rows, before), least - np.roll(least, 1), least)
     model.add_rows(
         cells, np.concatenate([rows] * 4 + [before] * 3),
-        np.concatenate([surplus, short, late, lost, surplus[before - 1], short[before - 1], late[before - 1]]),
+        np.concatenate([surplus, short, late, lost, *(v[before - 1] for v in (surplus, short, late))]),
         np.repeat([1.0, -1.0, -1.0, -1.0, -1.0, 1.0, 1.0], [cells] * 4 + [before.size] * 3),
         lower=steps, upper=steps,
     )

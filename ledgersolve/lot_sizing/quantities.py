@@ -54,7 +54,8 @@ def _quantity_model(
     made = model.add_variables(n * t, lower=low.ravel(), upper=high.ravel(), cost=case.unit_cost.ravel())
     least = case.least_stock()
     most = np.maximum(np.repeat(case.most_stock[:, None], t, axis=1), least)
-    stock = model.add_variables(n * t, lower=least.ravel(), upper=most.ravel(), cost=case.holding_cost.ravel())
+    held = case.holding_cost.ravel()
+    stock = model.add_variables(n * t, lower=least.ravel(), upper=most.ravel(), cost=held)
     rows = np.arange(n * t)
     later = np.flatnonzero(rows % max(t, 1))
     entries = [(rows, stock, 1.0), (later, stock[later - 1], -1.0), (rows, made, -1.0)]
@@ -101,13 +102,11 @@ def _time(case: Case, model: LinearModel, setup: Flags, made: Ints) -> None:
     overtime = model.add_variables(cells.size, upper=over, cost=np.repeat(case.overtime_cost, case.t))
     limited = np.isfinite(case.capacity)
     there = limited[case.item_resource[on]]
+    unit_time = np.broadcast_to(case.time_per_unit[on, None], there.shape)[there]
     model.add_rows(
         cells.size, np.concatenate([cells[case.item_resource[on]][there], cells[limited]]),
         np.concatenate([made[on][there], overtime[limited.ravel()]]),
-        np.concatenate([
-            np.broadcast_to(case.time_per_unit[on, None], there.shape)[there], np.full(int(limited.sum()), -1.0)
-        ]),
-        upper=(case.capacity - taken).ravel(),
+        np.concatenate([unit_time, np.full(int(limited.sum()), -1.0)]), upper=(case.capacity - taken).ravel(),
     )
 
 

@@ -1,9 +1,9 @@
 """What makes the stock form strong: plant location, or (l,S) inequalities.
 
-Plant location (Krarup & Bilde 1977) splits each lot into the needs that it serves. Units are matched first in,
-first out, so that opening stock serves the first needs. An item that may be late, or may lose demand while
-stock must rise at the end, keeps its later receipts as sources beside its lots: which need they serve is then
-not known beforehand.
+Plant location (Krarup & Bilde 1977) splits each lot into the needs that it serves. Units are matched first
+in, first out, so that opening stock serves the first needs. An item that may be late, or may lose demand
+while stock must rise at the end, keeps its later receipts as sources beside its lots: which need they serve
+is then not known beforehand.
 """
 
 from dataclasses import dataclass
@@ -166,10 +166,10 @@ def add_inequalities(
 ) -> None:
     """Add (l,S) inequalities of consecutive periods k..l for every item.
 
-    Netted items (Pochet & Wolsey 1994): stock above ``base`` before k, plus what each setup in k..l can add to
-    the needs from its period to l, plus what is lost, covers the needs of k..l. Items that may be late: one
-    setup in k..l, what is late after l or lost, receipts, or stock before k. The horizon l - k is cut so that
-    the model keeps within ``INEQUALITY_ENTRIES``.
+    Netted items (Pochet & Wolsey 1994): stock above ``base`` before k, plus what each setup in k..l can add
+    to the needs from its period to l, plus what is lost, covers the needs of k..l. Items that may be late:
+    one setup in k..l, what is late after l or lost, receipts, or stock before k. The horizon l - k is cut so
+    that the model keeps within ``INEQUALITY_ENTRIES``.
     """
     reach = _reach(case)
     simple = netted(case)
@@ -177,7 +177,7 @@ def add_inequalities(
         for k in range(case.t):
             last = min(case.t, k + reach)
             if simple[item]:
-                _on_time_rows(case, tight, model, item, k, last, setup, stock, lost)
+                _on_time_rows(tight, model, item, k, last, setup, stock, lost)
             else:
                 _late_rows(case, tight, model, item, k, last, setup, stock, late, lost)
 
@@ -191,7 +191,7 @@ def _reach(case: Case) -> int:
 
 
 def _on_time_rows(
-    case: Case, tight: Tight, model: LinearModel, item: int, k: int, last: int, setup: Ints, stock: Ints, lost: Ints
+    tight: Tight, model: LinearModel, item: int, k: int, last: int, setup: Ints, stock: Ints, lost: Ints
 ) -> None:
     step, span = tight.step[item, k:last], last - k
     need = np.cumsum(step)
@@ -229,8 +229,8 @@ def _late_rows(
         return
     start, end = np.nonzero(np.arange(last - k)[:, None] <= ends[None, :])
     need = rest[ends] - (least[k - 1] if k else 0.0)
-    rows = [end]
-    variables, factors = [setup[item, k + start]], [np.minimum(need[end], tight.most_made[item, k + start])]
+    cover = np.minimum(need[end], tight.most_made[item, k + start])
+    rows, variables, factors = [end], [setup[item, k + start]], [cover]
     lower = rest[ends].copy()
     if k:
         rows.append(np.arange(ends.size))

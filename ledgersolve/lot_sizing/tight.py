@@ -80,13 +80,13 @@ def _remaining(case: Case, stair: Floats, surplus: Floats) -> Floats:
     """What is still needed when a period starts: all of it for items that may be late."""
     before = np.concatenate([np.zeros((case.n, 1)), stair[:, :-1]], axis=1)
     before[np.isfinite(case.backlog_cost)] = 0.0
-    return np.maximum(stair[:, -1:] - before, 0.0) + surplus[:, None]
+    return np.asarray(np.maximum(stair[:, -1:] - before, 0.0) + surplus[:, None])
 
 
 def _room(case: Case, stair: Floats, base: Floats) -> Floats:
     """What fits into stock after the needs of the period (items that may be late: no limit from here)."""
     before = np.concatenate([np.zeros((case.n, 1)), stair[:, :-1]], axis=1)
-    room = np.maximum(stair - before + case.most_stock[:, None] - base, 0.0)
+    room = np.asarray(np.maximum(stair - before + case.most_stock[:, None] - base, 0.0))
     room[np.isfinite(case.backlog_cost)] = np.inf
     return room
 
