@@ -48,7 +48,7 @@ class ServiceSettings(BaseSettings):
     beat_seconds: float = Field(5.0, gt=0)
     """Time between two signs of life of a lease; it is taken over after six without one."""
 
-    longest_job_seconds: float = Field(14400.0, gt=0, le=1e6)
+    longest_job_seconds: float = Field(90000.0, gt=0, le=1e6)
     """Most wall time for a workbook, whatever its own limit says."""
     reading_seconds: float = Field(120.0, gt=0)
     """Most wall time for reading and checking, before the workbook's own limit is known."""

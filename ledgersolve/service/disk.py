@@ -4,7 +4,9 @@ import errno
 import os
 import shutil
 import stat
+from collections.abc import Callable
 from dataclasses import dataclass
+from io import BytesIO
 from pathlib import Path
 
 _NO_FOLLOW = getattr(os, "O_NOFOLLOW", 0)
@@ -91,11 +93,16 @@ class Disk:
 
     def write_new(self, path: Path, content: bytes, mode: int = 0o600) -> None:
         """Write a file that must not exist yet, and bring it to the disk."""
+        self.write_stream(path, BytesIO(content).read, mode)
+
+    def write_stream(self, path: Path, read: Callable[[int], bytes], mode: int = 0o600) -> None:
+        """The same from a source that gives blocks."""
         descriptor = os.open(path, _CREATE, mode)
         try:
-            view = memoryview(content)
-            while view:
-                view = view[os.write(descriptor, view) :]
+            while block := read(1 << 20):
+                view = memoryview(block)
+                while view:
+                    view = view[os.write(descriptor, view) :]
             os.fsync(descriptor)
         finally:
             os.close(descriptor)

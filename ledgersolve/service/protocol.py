@@ -37,94 +37,16 @@ Rules that follow
 """
 
 import errno
-import hashlib
 import json
-import os
 import secrets
-import time
-from collections.abc import Callable
-from dataclasses import asdict, dataclass, field
-from enum import StrEnum
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.holder import is_gone
 from ledgersolve.service.layout import Layout, discard, put_if_absent
 from ledgersolve.service.names import ending, returned_name
-
-_ALPHABET = "0123456789ABCDEFGHJKMNPQRSTVWXYZ"
-_SHORT = 8
-ANSWER = "answer.json"
-
-
-class State(StrEnum):
-    """Where a job stands, read from its folder alone."""
-
-    EMPTY = "empty"  # claimed by nobody yet, or the claim did not come through
-    CLAIMED = "claimed"
-    LEASED = "leased"
-    ANSWERED = "answered"
-    PUBLISHED = "published"
-    BROKEN = "broken"  # the answer cannot be read, or more than one input: for the administrator
-
-
-@dataclass(frozen=True)
-class Reply:
-    """What ``answer.json`` holds: which payload is the answer, and how it is called when published."""
-
-    generation: int
-    sha256: str
-    name: str
-    outcome: str
-    input_sha256: str = ""
-    report: dict[str, Any] = field(default_factory=dict)
-
-    def as_bytes(self) -> bytes:
-        """The content of the file."""
-        return json.dumps(asdict(self), indent=1, sort_keys=True).encode("ascii")
-
-
-@dataclass(frozen=True)
-class JobView:
-    """A job's folder as one listing shows it."""
-
-    job: str
-    home: Path
-    state: State
-    input: Path | None
-    leases: frozenset[int]
-    released: frozenset[int]
-    failed: frozenset[int]
-    payloads: frozenset[int]
-    reply: Reply | None
-
-    @property
-    def generation(self) -> int:
-        """The newest lease, 0 where there is none."""
-        return max(self.leases, default=0)
-
-    @property
-    def lease_ended(self) -> bool:
-        """Whether the newest lease was given back or ended in a failed attempt."""
-        return self.generation in self.released | self.failed
-
-    @property
-    def lost_leases(self) -> int:
-        """Earlier leases whose holder vanished without a word."""
-        return len(self.leases - self.released - self.failed - {self.generation})
-
-
-def new_job() -> str:
-    """A job's id: a readable label of time and 64 random bits, of which people see the first eight signs."""
-    bits = secrets.randbits(64)
-    random = "".join(_ALPHABET[(bits >> shift) & 31] for shift in range(60, -1, -5))
-    return f"{time.strftime('%Y%m%dT%H%M%SZ', time.gmtime())}-{random}"
-
-
-def short_id(job: str) -> str:
-    """The part of the id that stands in the returned file's name."""
-    return job.rpartition("-")[2][:_SHORT]
+from ledgersolve.service.states import ANSWER, JobView, Reply, State, new_job, read_job, sha256_of
 
 
 class Protocol:
@@ -191,41 +113,9 @@ class Protocol:
                 raise
         self.disk.sync_folder(folder.parent)
 
-    # ---- what stands there -------------------------------------------------------------------------
-
-    def view(self, job: str, home: Path | None = None) -> JobView | None:
+    def view(self, job: str) -> JobView | None:
         """A job by a fresh listing; None where its folder is gone (another process finished it)."""
-        home = home or self.home(job)
-        try:
-            names = self.disk.names(home)
-            inputs = self.disk.names(home / "in") if "in" in names else []
-        except FileNotFoundError:
-            return None
-        numbers = {
-            kind: frozenset(int(name[len(kind) + 1 :]) for name in names if _numbered(name, kind))
-            for kind in ("lease", "released", "failed", "payload")
-        }
-        reply = self._reply(home) if ANSWER in names else None
-        return JobView(
-            job=job,
-            home=home,
-            state=_state(ANSWER in names, reply, inputs, numbers),
-            input=home / "in" / inputs[0] if len(inputs) == 1 else None,
-            leases=numbers["lease"],
-            released=numbers["released"],
-            failed=numbers["failed"],
-            payloads=numbers["payload"],
-            reply=reply,
-        )
-
-    def _reply(self, home: Path) -> Reply | None:
-        try:
-            found = json.loads(self.disk.read(home / ANSWER))
-            reply = Reply(**found)
-        except (ValueError, TypeError):
-            return None
-        sound = isinstance(reply.generation, int) and reply.name == Path(reply.name).name
-        return reply if sound and len(reply.sha256) == 64 else None
+        return read_job(self.disk, job, self.home(job))
 
     # ---- leases: they save work, nothing rests on them ---------------------------------------------
 
@@ -386,66 +276,6 @@ class Handover:
     delivered: bool = False
 
 
-class LeaseWatch:
-    """Whether a holder of a lease still lives, judged on this process's monotonic clock alone.
-
-    A lease counts as left behind once its beat has not changed for ``patience`` seconds since *we* first
-    looked, or its holder is a process of this machine that runs no more. ``forget`` starts all over, as
-    after a share outage.
-    """
-
-    def __init__(
-        self, protocol: Protocol, patience: float, clock: Callable[[], float] = time.monotonic
-    ) -> None:
-        self._protocol = protocol
-        self._patience = patience
-        self._clock = clock
-        self._seen: dict[str, tuple[int, bytes, float]] = {}
-
-    def left_behind(self, view: JobView) -> bool:
-        """Whether the job's newest lease may be taken over."""
-        if view.generation == 0 or view.lease_ended:
-            return True
-        try:
-            beat = self._protocol.disk.read(view.home / f"beat.{view.generation}")
-        except FileNotFoundError:
-            beat = b""
-        generation, known, since = self._seen.get(view.job, (0, b"", 0.0))
-        if (generation, known) != (view.generation, beat):
-            self._seen[view.job] = (view.generation, beat, self._clock())
-            return self._patience <= 0 or (generation != view.generation and self._holder_is_gone(view))
-        return self._clock() - since >= self._patience
-
-    def _holder_is_gone(self, view: JobView) -> bool:
-        try:
-            words = json.loads(self._protocol.disk.read(view.home / f"lease.{view.generation}"))
-        except (OSError, ValueError):
-            return False
-        return isinstance(words, dict) and is_gone(words)
-
-    def forget(self) -> None:
-        """Start all observations over."""
-        self._seen.clear()
-
-    def drop(self, job: str) -> None:
-        """Forget one job."""
-        self._seen.pop(job, None)
-
-
-def sha256_of(disk: Disk, path: Path) -> str:
-    """SHA-256 of a file as it stands on the disk, in hexadecimal."""
-    digest = hashlib.sha256()
-    with os.fdopen(disk.open_to_read(path), "rb") as stream:
-        while block := stream.read(1 << 20):
-            digest.update(block)
-    return digest.hexdigest()
-
-
-def reply_name(drop: str, job: str, outcome: str, suffix: str) -> str:
-    """How the returned file of a job is called."""
-    return returned_name(drop, short_id(job), outcome, suffix)
-
-
 def _name_with_whole_id(view: JobView, reply: Reply) -> str:
     drop = reply.name if view.input is None else view.input.name
     return returned_name(drop, view.job.rpartition("-")[2], reply.outcome, ending(reply.name))
@@ -457,20 +287,3 @@ def _is_there(disk: Disk, path: Path) -> bool:
     except FileNotFoundError:
         return False
     return True
-
-
-def _numbered(name: str, kind: str) -> bool:
-    number = name.removeprefix(f"{kind}.")
-    return number != name and number.isascii() and number.isdigit()
-
-
-def _state(
-    answered: bool, reply: Reply | None, inputs: list[str], numbers: dict[str, frozenset[int]]
-) -> State:
-    if (answered and reply is None) or len(inputs) > 1:
-        return State.BROKEN
-    if reply is not None:
-        return State.ANSWERED if reply.generation in numbers["payload"] else State.PUBLISHED
-    if not inputs:
-        return State.BROKEN if numbers["lease"] else State.EMPTY
-    return State.LEASED if numbers["lease"] else State.CLAIMED

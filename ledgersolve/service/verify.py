@@ -6,7 +6,7 @@ from pathlib import Path
 
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.layout import Layout
-from ledgersolve.service.protocol import ANSWER, JobView, Protocol, State, sha256_of, short_id
+from ledgersolve.service.states import ANSWER, JobView, State, read_job, sha256_of, short_id
 
 _ALLOWED = re.compile(r"in|answer\.json|(lease|beat|released|failed|payload|progress|stop)\.[1-9][0-9]*")
 
@@ -24,9 +24,8 @@ def verify(folder: Path, *, settled: bool = False) -> list[str]:
     """
     disk = Disk()
     layout = Layout(folder)
-    protocol = Protocol(layout, disk, {})
-    at_work = [protocol.view(job) for job in disk.names(layout.jobs)]
-    done = [protocol.view(job, layout.done / job) for job in disk.names(layout.done)]
+    at_work = [read_job(disk, job, layout.jobs / job) for job in disk.names(layout.jobs)]
+    done = [read_job(disk, job, layout.done / job) for job in disk.names(layout.done)]
     faults = []
     for view in filter(None, at_work):
         faults += _of_any_job(disk, view)

@@ -1,0 +1,204 @@
+"""When a drop may be taken: complete, quiet, and not open elsewhere.
+
+Judged on this process's monotonic clock and by looking again, never by a file's own dates: copies keep
+the date of their original. There is no last try: what is not ready now is looked at again.
+"""
+
+import errno
+import stat
+import time
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from ledgersolve.service.disk import Disk, Entry
+from ledgersolve.service.names import is_temporary, owner_marks
+from ledgersolve.service.whole import Shape, nobody_writes, shape
+
+DEEPEST = 8
+"""Levels of sub-folders below Inbox that are served."""
+_FIRST_WAIT, _LONGEST_WAIT = 2.0, 300.0
+Signature = tuple[int, int, int, int, int]
+
+
+@dataclass(frozen=True)
+class Patience:
+    """How long to wait, in seconds; see ``ServiceSettings``."""
+
+    quiet: float = 2.0
+    sure_quiet: float = 0.3
+    long_quiet: float = 120.0
+    open_elsewhere: float = 900.0
+
+
+@dataclass(frozen=True)
+class Drop:
+    """A file in Inbox as one look found it. ``why`` says, in the analyst's words, what it waits for."""
+
+    path: Path
+    owner: str
+    size: int
+    since: float
+    ready: bool
+    why: str = ""
+    alert: bool = False
+    blocked: bool = False
+
+    @property
+    def name(self) -> str:
+        """The name as it stands on the disk."""
+        return self.path.name
+
+
+@dataclass
+class _Watched:
+    """What this process knows of one file."""
+
+    signature: Signature
+    unchanged_since: float
+    first_seen: float
+    shape: Shape | None = None
+    trouble: str = ""
+    refusals: int = 0
+    next_try: float = 0.0
+
+
+@dataclass
+class Settler:
+    """Looks at Inbox again and again and says which drops may be claimed."""
+
+    disk: Disk
+    inbox: Path
+    patience: Patience = field(default_factory=Patience)
+    clock: Callable[[], float] = time.monotonic
+    _watched: dict[Path, _Watched] = field(default_factory=dict)
+    _marks: dict[Path, tuple[Signature, float]] = field(default_factory=dict)
+
+    def look(self) -> list[Drop]:
+        """One look at the whole Inbox. Temporary names are passed over in silence."""
+        drops = []
+        seen: set[Path] = set()
+        for folder, owner, entries in self._folders(self.inbox, "", 0):
+            marks = self._marks_in(folder, entries)
+            for entry in entries:
+                if is_temporary(entry.name) or (entry.is_folder and not _too_deep(self.inbox, entry.path)):
+                    continue
+                seen.add(entry.path)
+                drops.append(self._judge(entry, owner or f"account {entry.status.st_uid}", marks))
+        for gone in self._watched.keys() - seen:
+            del self._watched[gone]
+        return drops
+
+    def _folders(self, folder: Path, owner: str, depth: int) -> Iterator[tuple[Path, str, list[Entry]]]:
+        entries = self.disk.entries(folder)
+        yield folder, owner, entries
+        for entry in entries:
+            if entry.is_folder and not is_temporary(entry.name) and depth < DEEPEST:
+                try:
+                    yield from self._folders(entry.path, owner or entry.name, depth + 1)
+                except (FileNotFoundError, NotADirectoryError, PermissionError):
+                    continue  # gone again, or not ours to read: the next look tells
+
+    def refused(self, path: Path, error: OSError) -> None:
+        """Note that a drop could not be moved; it is tried again after 2 s, 4 s, ... up to 5 minutes."""
+        watched = self._watched.get(path)
+        if watched is None:
+            return
+        wait = min(_LONGEST_WAIT, _FIRST_WAIT * 2.0 ** min(watched.refusals, 20))
+        watched.refusals += 1
+        watched.next_try = self.clock() + wait
+        watched.trouble = _refusal_words(error)
+
+    def forget(self) -> None:
+        """Start all observations over, as after a share outage."""
+        self._watched.clear()
+        self._marks.clear()
+
+    def _marks_in(self, folder: Path, entries: list[Entry]) -> dict[str, float]:
+        """Names that a spreadsheet program marks as open, with the time since the mark last changed."""
+        marks = {}
+        now = self.clock()
+        for entry in entries:
+            if not entry.name.startswith(("~$", ".~lock.")):
+                continue
+            signature = _signature(entry)
+            known, since = self._marks.get(entry.path, (None, now))
+            if known != signature:
+                since = now
+                self._marks[entry.path] = (signature, now)
+            marks[entry.name] = now - since
+        for path in [path for path in self._marks if path.parent == folder and path.name not in marks]:
+            del self._marks[path]
+        return marks
+
+    def _judge(self, entry: Entry, owner: str, marks: dict[str, float]) -> Drop:
+        now = self.clock()
+        signature = _signature(entry)
+        watched = self._watched.get(entry.path)
+        if watched is None or watched.signature != signature:
+            first = now if watched is None else watched.first_seen
+            watched = _Watched(signature, now, first)
+            self._watched[entry.path] = watched
+
+        def found(why: str = "", *, ready: bool = False, alert: bool = False, blocked: bool = False) -> Drop:
+            size = entry.status.st_size
+            return Drop(entry.path, owner, size, watched.first_seen, ready, why, alert, blocked)
+
+        if not entry.is_file:
+            return found(f"{_kind_words(entry)}; it is never read", alert=True, blocked=True)
+        if now < watched.next_try:
+            return found(watched.trouble, alert=watched.refusals >= 3, blocked=True)
+        for mark in owner_marks(entry.name):
+            if marks.get(mark, self.patience.open_elsewhere) < self.patience.open_elsewhere:
+                return found("open in a spreadsheet program")
+        quiet = now - watched.unchanged_since
+        if quiet < min(self.patience.quiet, self.patience.sure_quiet):
+            return found("still being copied")
+        try:
+            return self._judge_content(entry, watched, quiet, found)
+        except OSError as error:
+            self.refused(entry.path, error)
+            return found(watched.trouble, alert=watched.refusals >= 3, blocked=True)
+
+    def _judge_content(
+        self, entry: Entry, watched: _Watched, quiet: float, found: Callable[..., Drop]
+    ) -> Drop:
+        if watched.shape is None:
+            watched.shape = shape(self.disk, entry.path, entry.status.st_size)
+        if watched.shape is Shape.PARTIAL:
+            if quiet >= self.patience.long_quiet:
+                return found(ready=True)
+            left = self.patience.long_quiet - quiet
+            what = "empty so far" if entry.status.st_size == 0 else "not complete yet"
+            return found(f"{what}; returned as damaged if nothing comes within {left:.0f} s")
+        if quiet >= self.patience.quiet or nobody_writes(self.disk, entry.path):
+            return found(ready=True)
+        return found("still being copied")
+
+
+def _signature(entry: Entry) -> Signature:
+    status = entry.status
+    return (status.st_size, status.st_mtime_ns, status.st_ctime_ns, status.st_ino, status.st_dev)
+
+
+def _too_deep(inbox: Path, path: Path) -> bool:
+    return len(path.relative_to(inbox).parts) > DEEPEST
+
+
+def _kind_words(entry: Entry) -> str:
+    mode = entry.status.st_mode
+    if stat.S_ISLNK(mode):
+        return "a link, not a file"
+    if stat.S_ISDIR(mode):
+        return "a folder too deep inside other folders"
+    return "a device or pipe, not a file"
+
+
+def _refusal_words(error: OSError) -> str:
+    if error.errno in (errno.EACCES, errno.EPERM, errno.EROFS):
+        return "cannot be read or moved by the service: its rights do not allow it, or it is open elsewhere"
+    if error.errno in (errno.EBUSY, errno.ETXTBSY):
+        return "open in another program"
+    if error.errno in (errno.ENOSPC, errno.EDQUOT):
+        return "the disk is full"
+    return f"cannot be taken now ({error.strerror or error})"
