@@ -4,6 +4,9 @@ The audits share these values with the rest of the house, and no code.
 """
 
 from dataclasses import dataclass
+from typing import Generic, TypeVar
+
+PlanT = TypeVar("PlanT")
 
 
 @dataclass(frozen=True)
@@ -75,3 +78,16 @@ class Conflict:
     remedy: str
     amount: float
     subjects: tuple[Subject, ...]
+
+
+@dataclass(frozen=True)
+class Explanation(Generic[PlanT]):
+    """Why no plan exists: what cannot hold together, smallest change first, and the closest plan.
+
+    ``closest`` breaks as few rules as can be, or is None where nothing sensible comes close;
+    ``closest_words`` says what it leaves open (``"leaves 400 pallets unmet at 3 customers"``).
+    """
+
+    conflicts: tuple[Conflict, ...]
+    closest: PlanT | None = None
+    closest_words: str = ""

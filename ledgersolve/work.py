@@ -5,7 +5,7 @@ recomputed by its audit before anyone sees it.
 """
 
 import time
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from datetime import datetime
 from typing import Any
@@ -13,7 +13,7 @@ from typing import Any
 from ledgersolve import report
 from ledgersolve.answer import VariantAnswer
 from ledgersolve.contract.reading import Job, Reading
-from ledgersolve.findings import Audit, Conflict
+from ledgersolve.findings import Audit, Conflict, Explanation
 from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.lot_sizing.case import Case as LotCase
 from ledgersolve.lot_sizing.explain import explain as explain_lots
@@ -185,16 +185,17 @@ def _today_plan(case: LotCase) -> Today[Any] | None:
 
 def _without_plan(
     reading: Reading, case: Any, solved: Solved[Any], budget: Budget,
-    explain: Callable[[Any, Limits], Sequence[Conflict]],
+    explain: Callable[[Any, Limits], Explanation[Any]],
 ) -> Worked:
-    conflicts: tuple[Conflict, ...] = ()
+    why: Explanation[Any] = Explanation(())
     if solved.verdict is Verdict.NO_PLAN_EXISTS:
-        conflicts = tuple(explain(case, budget.part("why no plan exists", budget.left())))
+        why = explain(case, budget.part("why no plan exists", budget.left()))
+    words = f"The plan that comes closest {why.closest_words}." if why.closest_words else ""
     given = NoPlan(
-        reading, solved.verdict.value, _NO_FACTS, " ".join(solved.notes), conflicts, solved.bound,
+        reading, solved.verdict.value, _NO_FACTS, words, why.conflicts, solved.bound,
         tuple((stage.name, stage.seconds) for stage in solved.stages),
     )
     return Worked(
         solved, None, report.wanted_names("no plan"),
-        lambda facts, names: report.no_plan_sheets(replace(given, run=facts), names), conflicts=conflicts,
+        lambda facts, names: report.no_plan_sheets(replace(given, run=facts), names), conflicts=why.conflicts,
     )

@@ -3,8 +3,8 @@
 Each case names its source. Not expressible in the workbook's contract, and why:
 
 - LS-07 (Taha 13.4-1): the overtime limit differs by period; the contract has one figure a resource.
-- ML-01 (Pochet & Wolsey 2006, 1.2): each item runs on two machines; the contract has one resource an item. Its
-  mixing machine alone, a relaxation of the case, is held against the published value below.
+- ML-01 (Pochet & Wolsey 2006, 1.2): each item runs on two machines; the contract has one resource an item.
+  The mixing machine alone, a relaxation, is held against the published value in the engine tests.
 - ML-02 (LOTSIZELIB), ML-03 (Gueret, Prins & Sevaux 2002): bills of material.
 """
 

@@ -2,7 +2,7 @@
 
 Each case names its source. Not expressible in the workbook's contract, and why:
 
-- FL-08 (Williams, *Model Building in Mathematical Programming*, "Distribution"): two echelons, factories and depots.
+- FL-08 (Williams, *Model Building in Mathematical Programming*, "Distribution"): two echelons.
 - FL-12 (Chopra & Meindl, centre of gravity): a free point in the plane, not a choice among sites.
 - ML-03 (Gueret, Prins & Sevaux 2002): a bill of material.
 """

@@ -1,0 +1,262 @@
+"""Why no plan exists: rows and rules of the workbook that cannot hold together, with what would mend it.
+
+First what counting shows (a customer without a lane, capacity below demand, sites forced into one group).
+Where that shows nothing, an elastic model: one rule after the other gets slack at a price, everything else
+stays, and the least slack with which a plan exists is the smallest change of that kind. What no rule mends
+alone is loosened together.
+"""
+
+from collections.abc import Iterator
+from dataclasses import replace
+
+import numpy as np
+
+from ledgersolve.findings import Conflict, Explanation, Subject
+from ledgersolve.mip import Clock, Limits
+from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
+from ledgersolve.site_selection.deliveries import tidy
+from ledgersolve.site_selection.elastic import Loosened, least_unmet, loosen, loosen_all
+from ledgersolve.site_selection.lanes import Lanes
+from ledgersolve.site_selection.plan import Plan
+
+MOST_LISTED = 25
+"""Customers listed one by one; the rest is counted."""
+
+
+def explain(case: Case, limits: Limits) -> Explanation[Plan]:
+    """Say what stands in the way of every plan; for a case that has none."""
+    clock = limits.start()
+    conflicts = list(_counted(case))
+    if not conflicts:
+        found = loosen(case, clock) or loosen_all(case, clock)
+        conflicts = sorted((_words(case, part) for part in found), key=lambda conflict: conflict.amount)
+    plan, words = _closest(case, clock)
+    return Explanation(tuple(conflicts), plan, words)
+
+
+def figure(value: float) -> str:
+    """A quantity in words: at most two decimals, thousands apart."""
+    return f"{value:,.2f}".rstrip("0").rstrip(".")
+
+
+def _setting(name: str) -> Subject:
+    return Subject("Settings", (name,), "Value")
+
+
+def _codes(codes: list[str]) -> str:
+    return ", ".join(codes[:5]) + (f" and {len(codes) - 5} more" if len(codes) > 5 else "")
+
+
+# What counting shows
+
+
+def _counted(case: Case) -> Iterator[Conflict]:
+    yield from _forced_sites(case)
+    yield from _stranded(case)
+    yield from _volume(case)
+
+
+def _forced_sites(case: Case) -> Iterator[Conflict]:
+    forced = np.flatnonzero(case.rule == OPEN)
+    for number, name in enumerate(case.group_names):
+        both = [case.sites[j] for j in forced if case.group[j] == number]
+        if len(both) > 1:
+            yield Conflict(
+                f"Of group {name} at most one site may open, and {_codes(both)} must be open.",
+                "Set the rule of all but one of them to free or closed.", float(len(both) - 1),
+                tuple(Subject("Sites", (code,), "Rule") for code in both[1:]),
+            )
+    if case.most_sites is not None and forced.size > case.most_sites:
+        yield Conflict(
+            f"{forced.size} sites must be open, and at most {case.most_sites} may be.",
+            f"Raise Most sites to {forced.size}, or set the rule of a site to free.",
+            float(forced.size - case.most_sites), (_setting("Most sites"),),
+        )
+    can_open = Lanes.of(replace(case, most_sites=None)).most_choosable()
+    if case.fewest_sites and can_open < case.fewest_sites:
+        yield Conflict(
+            f"At least {case.fewest_sites} sites are to open, and only {can_open} can.",
+            f"Lower Fewest sites to {can_open}, or set the rule of a closed site to free.",
+            float(case.fewest_sites - can_open), (_setting("Fewest sites"),),
+        )
+
+
+def _stranded(case: Case) -> Iterator[Conflict]:
+    """Customers that must be served and have no lane they may be served on."""
+    needs = case.needs_service() & ((case.unmet_cost is None) | (case.demand == 0))
+    usable = np.isfinite(Lanes.of(case).cost).any(axis=0)
+    stranded = np.flatnonzero(needs & ~usable)
+    for i in stranded[:MOST_LISTED]:
+        yield _stranded_words(case, int(i))
+    if stranded.size > MOST_LISTED:
+        rest = [case.customers[i] for i in stranded[MOST_LISTED:]]
+        yield Conflict(
+            f"{len(rest)} more customers have no lane they may be served on: {_codes(rest)}.",
+            "See the customers above.", float(len(rest)),
+            (Subject("Customers", (rest[0],), "Customer"),),
+        )
+
+
+def _stranded_words(case: Case, i: int) -> Conflict:
+    code = case.customers[i]
+    listed = np.isfinite(case.lane_cost[:, i])
+    promise = float(case.promised()[i])
+    within = listed.copy()
+    if case.distance is not None and np.isfinite(promise):
+        within &= case.distance[:, i] <= promise
+    own = Subject("Customers", (code,), "Customer")
+    if not listed.any():
+        return Conflict(f"Customer {code} has no lane from any site.",
+                        "Add a lane to this customer, or its costs.", float(case.demand[i]), (own,))
+    if within.any():
+        closed = [case.sites[j] for j in np.flatnonzero(within & (case.rule == CLOSED))]
+        if closed:
+            return Conflict(
+                f"Customer {code} could be served from {_codes(closed)} only, set to closed.",
+                f"Set the rule of {closed[0]} to free, or add a lane to this customer.",
+                float(case.demand[i]), (Subject("Sites", (closed[0],), "Rule"), own),
+            )
+        return Conflict(
+            f"Customer {code} has lanes, but none that may carry its deliveries.",
+            "Look at Most in the lanes to this customer and at the groups of their sites.",
+            float(case.demand[i]), (own,),
+        )
+    return _beyond_promise(case, i, listed & (case.rule != CLOSED), promise, own)
+
+
+def _beyond_promise(case: Case, i: int, listed: Flags, promise: float, own: Subject) -> Conflict:
+    code, unit = case.customers[i], case.distance_unit
+    title = _setting("Longest distance")
+    if not np.isnan(case.customer_longest[i]):
+        title = Subject("Customers", (code,), "Longest distance")
+    distance = np.full(case.m, np.inf) if case.distance is None else np.where(
+        listed, case.distance[:, i], np.inf)
+    j = int(np.argmin(distance))
+    nearest = f"the nearest, {case.sites[j]}, is {figure(float(distance[j]))} {unit} away"
+    return Conflict(
+        f"Customer {code} has no allowed site within {figure(promise)} {unit}; {nearest}.",
+        f"Allow {figure(float(distance[j]))} {unit} for this customer, or add a site nearer to it.",
+        float(distance[j] - promise), (title, own),
+    )
+
+
+def _volume(case: Case) -> Iterator[Conflict]:
+    """All that can be carried against all that must be."""
+    if case.unmet_cost is not None:
+        return
+    wanted, unit = float(case.demand.sum()), case.demand_unit
+    room = _room(case, case.rule != CLOSED)
+    if room < wanted * (1 - 1e-9):
+        short = wanted - room
+        with_closed = _room(case, np.ones(case.m, dtype=bool))
+        closed = [case.sites[j] for j in np.flatnonzero(case.rule == CLOSED)]
+        first = Subject("Sites", (case.sites[int(np.argmax(case.capacity))],), "Capacity")
+        if closed and with_closed >= wanted * (1 - 1e-9):
+            yield Conflict(
+                f"Sites set to closed leave {figure(short)} {unit} without capacity: wanted are "
+                f"{figure(wanted)}, the other sites hold {figure(room)}.",
+                f"Set the rule of {_codes(closed)} to free, or raise a capacity by {figure(short)}.",
+                short, (Subject("Sites", (closed[0],), "Rule"), first),
+            )
+            return
+        limit = case.most_sites is not None and np.isfinite(room)
+        words = f"{case.most_sites} sites hold {figure(room)} {unit} at most" if limit else (
+            f"all sites that may open hold {figure(room)} {unit}")
+        yield Conflict(
+            f"Capacity is {figure(short)} {unit} short: wanted are {figure(wanted)}, and {words}.",
+            f"Raise capacities by {figure(short)} {unit} in all, or give Unmet demand cost a value.",
+            short, (_setting("Most sites"), first) if limit else (first,),
+        )
+    forced_least = float(case.least_volume[case.rule == OPEN].sum())
+    if forced_least > wanted * (1 + 1e-9):
+        sites = [case.sites[j] for j in np.flatnonzero((case.rule == OPEN) & (case.least_volume > 0))]
+        yield Conflict(
+            f"Sites that must be open need {figure(forced_least)} {unit} at least, and all demand is "
+            f"{figure(wanted)}.", "Lower a least volume, or set the rule of a site to free.",
+            forced_least - wanted, tuple(Subject("Sites", (code,), "Least volume") for code in sites),
+        )
+
+
+def _room(case: Case, may_open: Flags) -> float:
+    """Most that sites can hold at once under groups and the most count."""
+    capacity: Floats = np.where(may_open, case.capacity, 0.0)
+    alone = capacity[case.group < 0].tolist()
+    grouped = [float(capacity[case.group == g].max()) for g in np.unique(case.group[case.group >= 0])]
+    best = sorted([*alone, *grouped], reverse=True)
+    return float(sum(best[: case.most_sites] if case.most_sites is not None else best))
+
+
+# What loosening shows
+
+
+def _words(case: Case, found: Loosened) -> Conflict:
+    at_least = "" if found.exact else "at least "
+    amount = f"{at_least}{figure(found.total)}"
+    sites = [case.sites[j] for j in found.where] if found.kind in _OF_SITES else []
+    customers = [case.customers[i] for i in found.where] if found.kind == "promise" else []
+    unit = case.demand_unit
+    shares = ", ".join(f"{figure(float(part))} at {code}" for part, code in zip(
+        found.amounts[:5], [*sites, *customers][:5], strict=False))
+    texts = {
+        "capacity": (f"Capacity is {amount} {unit} short: {shares}.",
+                     f"Raise Capacity by that much ({shares})."),
+        "least volume": (f"Least volumes ask for {amount} {unit} more than there is: {shares}.",
+                         f"Lower Least volume by that much ({shares})."),
+        "most sites": (f"{case.most_sites} sites cannot serve all customers under the other rules.",
+                       f"Raise Most sites by {amount}."),
+        "fewest sites": (f"{case.fewest_sites} sites cannot all be open under the other rules.",
+                         f"Lower Fewest sites by {amount}."),
+        "closed": (f"With {_codes(sites)} closed, not all customers can be served.",
+                   f"Set the rule of {_codes(sites)} to free."),
+        "open": (f"With {_codes(sites)} open, the other rules cannot hold.",
+                 f"Set the rule of {_codes(sites)} to free."),
+        "promise": (f"The longest distance cannot be kept for {_codes(customers)}: {shares} "
+                    f"{case.distance_unit} too far.",
+                    f"Loosen Longest distance for {_codes(customers)} ({shares} {case.distance_unit})."),
+        "share within": (f"{amount} {unit} too little can be served within "
+                         f"{figure(case.share_distance or 0.0)} {case.distance_unit}.",
+                         "Lower Share within distance, or raise Distance for share."),
+        "single source": ("Not every customer can be served whole from one site.",
+                          "Let some customers be served from two sites, or raise a capacity."),
+        "lane most": ("The most that lanes may carry leaves customers unserved.",
+                      "Raise Most in the sheet Lanes, or add lanes."),
+    }
+    words, remedy = texts[found.kind]
+    return Conflict(words, remedy, found.total, _subjects(case, found))
+
+
+_OF_SITES = ("capacity", "least volume", "closed", "open")
+_TITLES = {"capacity": "Capacity", "least volume": "Least volume", "closed": "Rule", "open": "Rule"}
+_SETTINGS = {
+    "most sites": "Most sites", "fewest sites": "Fewest sites", "share within": "Share within distance (%)",
+    "single source": "Single sourcing",
+}
+
+
+def _subjects(case: Case, found: Loosened) -> tuple[Subject, ...]:
+    if found.kind in _OF_SITES:
+        return tuple(Subject("Sites", (case.sites[j],), _TITLES[found.kind]) for j in found.where)
+    if found.kind in _SETTINGS:
+        return (_setting(_SETTINGS[found.kind]),)
+    if found.kind == "promise":
+        own = [Subject("Customers", (case.customers[i],), "Longest distance") for i in found.where]
+        return (*own, _setting("Longest distance"))
+    return (Subject("Lanes", (), "Most"),)
+
+
+def _closest(case: Case, clock: Clock) -> tuple[Plan | None, str]:
+    """Give the plan that leaves the least demand unmet and keeps every other rule, if there is one."""
+    found = least_unmet(case, max(clock.left(), 1.0), clock)
+    if found is None:
+        return None, ""
+    built, lanes, result = found
+    values = result.values
+    if values is None:
+        return None, ""
+    unmet = np.zeros(case.n)
+    unmet[built.unmet] = values[built.u]
+    plan = tidy(lanes, built.read_open(values), built.site, built.customer, values[built.x], unmet)
+    left = plan.unmet * case.demand
+    short = [case.customers[i] for i in np.flatnonzero(left > 1e-9 * max(1.0, float(case.demand.sum())))]
+    words = f"leaves {figure(float(left.sum()))} {case.demand_unit} unmet at {_codes(short)}" if short else ""
+    return plan, words
