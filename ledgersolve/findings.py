@@ -91,3 +91,39 @@ class Explanation(Generic[PlanT]):
     conflicts: tuple[Conflict, ...]
     closest: PlanT | None = None
     closest_words: str = ""
+
+
+@dataclass(frozen=True)
+class Column:
+    """A column of an answer's table. ``kind``: ``text``, ``money``, ``number``, ``percent`` (a fraction)."""
+
+    title: str
+    kind: str = "text"
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A chart over an answer's table, by column numbers: ``kind`` is ``line`` or ``stacked column``."""
+
+    kind: str
+    title: str
+    category: int
+    values: tuple[int, ...]
+
+
+@dataclass(frozen=True)
+class Answered:
+    """A question a manager asks, answered ahead by solving.
+
+    ``words`` is the answer in one to three sentences and says whether it is exact or an interval; ``rows``
+    are the figures behind it (None = no figure exists, with the reason in a text column). ``headline``
+    answers belong on the Decision page too. ``seconds`` is the time the answer took.
+    """
+
+    question: str
+    words: str
+    columns: tuple[Column, ...] = ()
+    rows: tuple[tuple[str | float | None, ...], ...] = ()
+    picture: Picture | None = None
+    headline: bool = False
+    seconds: float = 0.0
