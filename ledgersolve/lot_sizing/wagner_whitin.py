@@ -187,10 +187,10 @@ class WagnerWhitin:
         steps = np.where(possible, self.steps[:, which], 0.0)
         periods, n = steps.shape
         loss = np.where(np.isnan(self.lost_cost[which]), np.inf, self.lost_cost[which])
-        late = np.where(np.isnan(self.late_cost[which]), 0.0, self.late_cost[which])
+        late = np.where(np.isnan(self.late_cost[which]), np.inf, self.late_cost[which])
         now, item = np.arange(periods)[:, None], np.arange(n)
         lot = np.maximum(source, 0)
-        wait = np.where(lot > now, late * (lot - now), carried[now, item] - carried[lot, item])
+        wait = np.where(lot > now, late * np.maximum(lot - now, 1), carried[now, item] - carried[lot, item])
         serve = (source >= 0) & (units[lot, item] + wait <= loss)
         made = np.zeros((periods, n))
         np.add.at(made, (lot[serve], np.broadcast_to(item, serve.shape)[serve]), steps[serve])
