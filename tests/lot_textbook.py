@@ -122,7 +122,7 @@ class _Rows:
         )
         answer = milp(
             self.cost, integrality=self.whole, bounds=(self.low, self.high), constraints=rows,
-            options={"mip_rel_gap": 0.0},
+            options={"mip_rel_gap": 0.0, "presolve": False},
         )
         if answer.status == 2:
             return None

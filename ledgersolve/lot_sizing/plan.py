@@ -140,7 +140,7 @@ def _lost_or_late(case: Case, made: Floats, items: Ints) -> Floats:
 def _cheapest_service(case: Case, made: Floats, items: Ints) -> Floats:
     """One linear programme: stock, late and lost of ``items`` for given quantities.
 
-    Stock below its least is allowed at a price above every other one, so that a shortage is kept least first.
+    Stock outside its limits is allowed at a price above every other one, so that this is kept least first.
     """
     t, cells = case.t, items.size * case.t
     least = case.least_stock()[items].ravel()
@@ -149,7 +149,9 @@ def _cheapest_service(case: Case, made: Floats, items: Ints) -> Floats:
     model = LinearModel()
     ends = np.tile(np.arange(t) == t - 1, items.size)
     before = np.flatnonzero(~np.tile(np.arange(t) == 0, items.size))
-    surplus = model.add_variables(cells, cost=case.holding_cost[items].ravel())
+    room = np.maximum(np.repeat(case.most_stock[items], t) - least, 0.0)
+    surplus = model.add_variables(cells, upper=room, cost=case.holding_cost[items].ravel())
+    over = model.add_variables(cells, cost=dear)
     short = model.add_variables(cells, cost=dear)
     late = model.add_variables(
         cells, upper=np.where(ends, 0.0, np.inf), cost=np.repeat(case.backlog_cost[items], t)
@@ -161,9 +163,9 @@ def _cheapest_service(case: Case, made: Floats, items: Ints) -> Floats:
     rows = np.arange(cells)
     steps = rest.ravel() - np.where(np.isin(rows, before), least - np.roll(least, 1), least)
     model.add_rows(
-        cells, np.concatenate([rows] * 4 + [before] * 3),
-        np.concatenate([surplus, short, late, lost, *(v[before - 1] for v in (surplus, short, late))]),
-        np.repeat([1.0, -1.0, -1.0, -1.0, -1.0, 1.0, 1.0], [cells] * 4 + [before.size] * 3),
+        cells, np.concatenate([rows] * 5 + [before] * 4),
+        np.concatenate([surplus, over, short, late, lost, *(v[before - 1] for v in (surplus, over, short, late))]),
+        np.repeat([1.0, 1.0, -1.0, -1.0, -1.0, -1.0, -1.0, 1.0, 1.0], [cells] * 5 + [before.size] * 4),
         lower=steps, upper=steps,
     )
     model.add_rows(
