@@ -157,9 +157,9 @@ def open_container(path: Path, limits: Limits | None = None) -> Container:
 
 
 def open_plain_file(path: Path) -> BinaryIO:
-    """Open a regular file for reading; a link, pipe, device or folder is refused without blocking."""
+    """Open a regular file for reading; a pipe, device or folder is refused without blocking."""
     flags = os.O_RDONLY
-    for name in ("O_NOFOLLOW", "O_NONBLOCK", "O_BINARY"):  # each exists on some systems only
+    for name in ("O_NONBLOCK", "O_BINARY"):  # each exists on some systems only
         flags |= getattr(os, name, 0)
     try:
         descriptor = os.open(path, flags)
@@ -167,8 +167,8 @@ def open_plain_file(path: Path) -> BinaryIO:
         raise refusal("cannot be read", error.strerror or "not allowed") from None
     except FileNotFoundError:
         raise refusal("cannot be read", "it is no longer there") from None
-    except OSError:
-        raise refusal("not a file") from None
+    except OSError as error:
+        raise refusal("cannot be read", error.strerror or "unknown reason") from None
     if not stat.S_ISREG(os.fstat(descriptor).st_mode):
         os.close(descriptor)
         raise refusal("not a file")

@@ -10,7 +10,7 @@ from ledgersolve.workbook.cells import Cell
 from ledgersolve.workbook.container import Container, Limits, Member
 from ledgersolve.workbook.gate import pass_gate
 from ledgersolve.workbook.markup import MAIN, RELATIONS, STRICT, Attributes, walk
-from ledgersolve.workbook.ownership import own_sheet_names
+from ledgersolve.workbook.ownership import OWN_SHEET, sheets_named
 from ledgersolve.workbook.parts import Relation, relations, small_pieces, workbook_part
 from ledgersolve.workbook.refusals import refusal
 from ledgersolve.workbook.stream import Area, Surroundings, Texts, area_of, stream_cells
@@ -171,7 +171,7 @@ def _package(container: Container, limits: Limits) -> Package:
     outline = read_outline(container, part, limits)
     links = relations(container, part, limits)
     worksheets = {link.id: link.target for link in links if link.kind == "worksheet" and not link.external}
-    own = own_sheet_names(outline.names)
+    own = sheets_named(OWN_SHEET, outline.names)
     sheets: dict[bool, list[SheetInfo]] = {False: [], True: []}
     members: dict[str, Member] = {}
     for name, state, key in outline.sheets:

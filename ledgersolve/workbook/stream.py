@@ -220,7 +220,7 @@ class _Scan:
         """Refuse a sheet of too many cells, and a text that grows without end."""
         if self.elements > self.limits.cell_elements:
             raise refusal("too many cells",
-                          f"“{self.sheet}” has more than {self.limits.cell_elements:,} cells, empty ones included")
+                          f"“{self.sheet}” has more than {self.limits.cell_elements:,} cells, empty or not")
         if len(self.text) > _MANY and sum(map(len, self.text)) > self.limits.cell_length:
             raise refusal("damaged", f"a cell in row {self.row} of the sheet “{self.sheet}” holds more than "
                           f"{self.limits.cell_length:,} characters")
