@@ -1,0 +1,226 @@
+"""Why no plan exists: what cannot hold together by item, resource and period, and the closest plan.
+
+Three looks: items that no amount of time could serve (their own rules stand in the way); running totals of
+the time that must have been spent on a resource by some period, which anyone can check; and the plan with
+the least time missing, by resource and period.
+"""
+
+from collections.abc import Iterator
+from dataclasses import replace
+
+import numpy as np
+
+from ledgersolve.findings import Conflict, Explanation, Subject
+from ledgersolve.lot_sizing.case import Case, Floats
+from ledgersolve.lot_sizing.elastic import (
+    Slack,
+    item_slack,
+    mended,
+    short_of_time,
+    shortfall,
+    stranded,
+    with_time,
+)
+from ledgersolve.lot_sizing.groups import part
+from ledgersolve.lot_sizing.plan import Plan, plan_from_made, resource_need
+from ledgersolve.lot_sizing.solve import solve
+from ledgersolve.lot_sizing.tight import tight_limits
+from ledgersolve.mip import Clock, Limits
+
+MOST_LISTED = 40
+"""Conflicts listed; the smallest ones come first."""
+TRIED_REMEDIES = 12
+"""Items for which each rule is tried for whether lifting it alone would help."""
+SHORTFALL_SHARE = 0.6
+"""Share of the time for the least shortfall; the rest is for the cheapest plan that has it."""
+
+
+def explain(case: Case, limits: Limits) -> Explanation[Plan]:
+    """Say what stands in the way of every plan; for a case that has none.
+
+    Conflicts come smallest change first. The closest plan keeps every rule apart from the time that the
+    conflicts name; demand that cannot be met counts as lost in it.
+    """
+    clock = limits.start()
+    slacks = stranded(case, clock)
+    conflicts = [words for rank, item in enumerate(slacks)
+                 for words in _item_conflicts(case, item, slacks[item], clock, rank < TRIED_REMEDIES)]
+    possible = mended(case, slacks)
+    conflicts += _running_totals(possible)
+    plan, short = _closest(case, possible, slacks, clock)
+    if plan is not None:
+        conflicts += _time_conflicts(case, plan, short)
+    conflicts.sort(key=lambda conflict: conflict.amount)
+    return Explanation(tuple(conflicts[:MOST_LISTED]), plan, _closest_words(case, plan, short, slacks))
+
+
+def figure(value: float) -> str:
+    """A quantity in words: at most two decimals, thousands apart."""
+    return f"{value:,.2f}".rstrip("0").rstrip(".")
+
+
+# ------------------------------------------------------------------ items
+
+
+def _item_conflicts(
+    case: Case, item: int, slack: Slack, clock: Clock, try_remedies: bool
+) -> Iterator[Conflict]:
+    code = case.items[item]
+    helps = _what_helps(case, item, clock) if try_remedies else []
+    names = [name for name, _ in helps]
+    lift = f" Lifting {' or '.join(names)} would be enough." if names else ""
+    cells = tuple(subject for _, subject in helps)
+    if slack.unmet.any():
+        yield _unmet(case, item, slack, lift, cells)
+    for name, amount, way in (
+        ("Safety stock", slack.safety, "low"), ("Closing stock", slack.closing, "low"),
+        ("Most stock", slack.room, "high"),
+    ):
+        if amount > 0:
+            yield Conflict(
+                f"{name} of item {code} cannot be kept: the stock comes out {figure(amount)} too {way} at best.",
+                f"{'Raise' if way == 'high' else 'Lower'} {name} of {code} by {figure(amount)}.{lift}", amount,
+                (Subject("Items", (code,), name), *cells),
+            )
+
+
+def _unmet(case: Case, item: int, slack: Slack, lift: str, cells: tuple[Subject, ...]) -> Conflict:
+    """Name the last period in which demand is short, with running totals up to it."""
+    code, last = case.items[item], int(np.flatnonzero(slack.unmet)[-1])
+    total, period = float(slack.unmet.sum()), f"{case.period_unit} {case.periods[last]}"
+    need = float(case.demand[item, : last + 1].sum() + case.least_stock()[item, last])
+    return Conflict(
+        f"Item {code} is {figure(total)} short by {period}: {figure(need)} are needed up to then, "
+        f"{figure(need - total)} can be there at most.",
+        f"Have {figure(total)} more of {code} by {period} (opening stock, receipts), or ask for less.{lift}",
+        total, (Subject("Demand", (code, case.periods[last]), ""), *cells),
+    )
+
+
+def _what_helps(case: Case, item: int, clock: Clock) -> list[tuple[str, Subject]]:
+    """Rules of the item that would leave no shortage if they were lifted one at a time."""
+    own, code = part(without_ties(case), np.array([item])).case, case.items[item]
+    lifted: list[tuple[str, str, dict[str, object]]] = []
+    if not own.setup_allowed.all():
+        lifted.append(("Setup allowed", "Period costs", {"setup_allowed": np.ones((1, own.t), dtype=bool)}))
+    for name, field, none, active in (
+        ("Most lot", "most_lot", np.inf, np.isfinite(own.most_lot[0])),
+        ("Least lot", "least_lot", 0.0, own.least_lot[0] > 0),
+        ("Lot multiple", "lot_multiple", 0.0, own.lot_multiple[0] > 0),
+        ("Most stock", "most_stock", np.inf, np.isfinite(own.most_stock[0])),
+    ):
+        if active:
+            lifted.append((name, "Items", {field: np.full(1, none)}))
+    helps = []
+    for name, sheet, changes in lifted:
+        slack = item_slack(replace(own, **changes), min(2.0, clock.left()))  # type: ignore[arg-type]
+        if slack is not None and slack.total == 0:
+            key = (code,) if sheet == "Items" else (code, case.periods[int(np.argmin(own.setup_allowed[0]))])
+            helps.append((name, Subject(sheet, key, name)))
+    return helps
+
+
+# ------------------------------------------------------------------ time
+
+
+def _least_time(case: Case) -> Floats:
+    """Shape (R, T): time that every plan must have spent on each resource by each period's end.
+
+    Counted from the net needs of items that can neither be late nor lose demand (items that may be late: at
+    the end only), with the fewest setups that the largest lots allow.
+    """
+    tight = tight_limits(case)
+    due = np.where(np.isfinite(case.lost_cost)[:, None], 0.0, tight.stair)
+    due[np.isfinite(case.backlog_cost), :-1] = 0.0
+    due = np.maximum(due, 0.0)
+    lot = np.where(np.isfinite(tight.most_lot), np.maximum(tight.most_lot, 1e-12), np.inf)[:, None]
+    setups = np.where(due > 0, np.maximum(np.ceil(due / lot - 1e-9), 1.0), 0.0)
+    need = np.zeros(case.capacity.shape)
+    on = np.flatnonzero(case.item_resource >= 0)
+    time = case.time_per_unit[on, None] * due[on] + case.setup_time[on, None] * setups[on]
+    np.add.at(need, case.item_resource[on], time)
+    for family in np.flatnonzero(case.family_resource >= 0):
+        once = (due[case.item_family == family] > 0).any(axis=0)
+        need[case.family_resource[family]] += case.family_time[family] * once
+    return need
+
+
+def _running_totals(case: Case) -> Iterator[Conflict]:
+    """Resources whose time up to some period does not even suffice when every setup is shared best."""
+    need = _least_time(case)
+    have = np.cumsum(case.capacity + case.overtime_limit[:, None], axis=1)
+    for r, name in enumerate(case.resources):
+        excess = need[r] - have[r]
+        t = int(np.argmax(excess))
+        if excess[t] <= 1e-6 * max(1e-3, need[r, t]):
+            continue
+        code = case.periods[t]
+        extra = " with all overtime" if case.overtime_limit[r] > 0 else ""
+        yield Conflict(
+            f"{name} is {figure(excess[t])} short up to {case.period_unit} {code}: the demand until then "
+            f"needs at least {figure(need[r, t])} of its time, there are {figure(have[r, t])}{extra}.",
+            f"Give {name} {figure(excess[t])} more up to {case.period_unit} {code}, or move or drop demand.",
+            float(excess[t]), _capacity_cells(case, r, t),
+        )
+
+
+def _time_conflicts(case: Case, plan: Plan, short: Floats) -> Iterator[Conflict]:
+    need = resource_need(case, plan.made)
+    for r, t in zip(*np.nonzero(short > 0), strict=True):
+        name, period = case.resources[r], f"{case.period_unit} {case.periods[t]}"
+        have = case.capacity[r, t] + case.overtime_limit[r]
+        extra = " with all overtime" if case.overtime_limit[r] > 0 else ""
+        missing = figure(short[r, t])
+        yield Conflict(
+            f"Capacity of {name} is {missing} short in {period}: needs {figure(need[r, t])}, "
+            f"has {figure(have)}{extra}.",
+            f"Give {name} {missing} more in {period}; the plan with the least shortfall needs it there.",
+            float(short[r, t]), _capacity_cells(case, int(r), int(t)),
+        )
+
+
+def _capacity_cells(case: Case, resource: int, period: int) -> tuple[Subject, ...]:
+    name = case.resources[resource]
+    return Subject("Capacity", (name, case.periods[period]), ""), Subject("Resources", (name,), "Capacity")
+
+
+# ------------------------------------------------------------------ the closest plan
+
+
+def _closest(
+    case: Case, possible: Case, slacks: dict[int, Slack], clock: Clock
+) -> tuple[Plan | None, Floats]:
+    """Plan with the least shortfall of time, as cheap as time allows; unmet demand stands as lost in it."""
+    none = np.zeros(case.capacity.shape)
+    limits = replace(clock.limits, seconds=max(0.5, SHORTFALL_SHARE * clock.left()))
+    least = solve(short_of_time(possible), limits).plan if case.resources else None
+    if case.resources and least is None:
+        return None, none
+    short = none if least is None else shortfall(possible, least.made)
+    given = with_time(possible, short)
+    cheap = solve(given, replace(clock.limits, seconds=max(0.5, clock.left()))).plan
+    plan = cheap or least
+    if plan is None:
+        return None, none
+    done = plan_from_made(possible, plan.made)
+    lost = done.lost.copy()
+    for item, slack in slacks.items():
+        lost[item] += np.minimum(slack.unmet, case.demand[item])
+    return replace(done, lost=lost), shortfall(possible, plan.made)
+
+
+def _closest_words(case: Case, plan: Plan | None, short: Floats, slacks: dict[int, Slack]) -> str:
+    if plan is None:
+        return ""
+    parts = []
+    if short.any():
+        names = [case.resources[r] for r in np.flatnonzero(short.any(axis=1))]
+        count = int(np.count_nonzero(short))
+        cells = "1 period" if count == 1 else f"{count} resource periods"
+        parts.append(f"needs {figure(float(short.sum()))} more time in {cells} ({', '.join(names[:5])})")
+    unmet = sum(float(slack.unmet.sum()) for slack in slacks.values())
+    if unmet > 0:
+        parts.append(f"leaves {figure(unmet)} of demand unmet")
+    if any(slack.safety + slack.closing + slack.room > 0 for slack in slacks.values()):
+        parts.append("breaks limits of stock as listed")
+    return " and ".join(parts)
