@@ -20,6 +20,7 @@ from ledgersolve.lot_sizing.elastic import (
     shortfall,
     stranded,
     with_time,
+    without_ties,
 )
 from ledgersolve.lot_sizing.groups import part
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made, resource_need
@@ -77,10 +78,10 @@ def _item_conflicts(
         ("Most stock", slack.room, "high"),
     ):
         if amount > 0:
+            change = f"{'Raise' if way == 'high' else 'Lower'} {name} of {code} by {figure(amount)}"
             yield Conflict(
-                f"{name} of item {code} cannot be kept: the stock comes out {figure(amount)} too {way} at best.",
-                f"{'Raise' if way == 'high' else 'Lower'} {name} of {code} by {figure(amount)}.{lift}", amount,
-                (Subject("Items", (code,), name), *cells),
+                f"{name} of item {code} cannot be kept: at best stock comes out {figure(amount)} too {way}.",
+                f"{change}.{lift}", amount, (Subject("Items", (code,), name), *cells),
             )
 
 
