@@ -93,7 +93,8 @@ class LinearModel:
         return numbers
 
     def add_row(
-        self, variable: ArrayLike, coefficient: ArrayLike, *, lower: float = -math.inf, upper: float = math.inf
+        self, variable: ArrayLike, coefficient: ArrayLike, *, lower: float = -math.inf,
+        upper: float = math.inf,
     ) -> int:
         """Add one row; returns its number."""
         columns = np.asarray(variable, dtype=np.int64).ravel()
