@@ -4,7 +4,7 @@ It travels beside the case, so that the arrays carry no addresses. The ledger as
 rate; marks ask it for the cell of a rule that cannot hold.
 """
 
-from collections.abc import Mapping
+from collections.abc import Container, Mapping
 from dataclasses import dataclass, field
 
 from ledgersolve.workbook.cells import address
@@ -43,8 +43,8 @@ class TableMap:
     sheet: str
     columns: Mapping[str, int]
     rows: Mapping[tuple[str, ...], int]
-    blanks: frozenset[tuple[int, int]] = frozenset()
-    not_numbers: frozenset[tuple[int, int]] = frozenset()
+    blanks: Container[tuple[int, int]] = frozenset()
+    not_numbers: Container[tuple[int, int]] = frozenset()
 
 
 @dataclass(frozen=True)
@@ -54,8 +54,8 @@ class MatrixMap:
     sheet: str
     rows: Mapping[str, int]
     columns: Mapping[str, int]
-    blanks: frozenset[tuple[int, int]] = frozenset()
-    not_numbers: frozenset[tuple[int, int]] = frozenset()
+    blanks: Container[tuple[int, int]] = frozenset()
+    not_numbers: Container[tuple[int, int]] = frozenset()
 
 
 @dataclass(frozen=True)

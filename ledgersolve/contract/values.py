@@ -1,0 +1,215 @@
+"""What a cell means under its column: numbers, texts that are numbers, yes and no, words, dates."""
+
+import datetime
+import math
+import re
+
+from ledgersolve.contract.columns import LARGEST, Entry, Holds, shown
+from ledgersolve.contract.faults import Fault
+from ledgersolve.workbook.cells import Cell, Kind
+from ledgersolve.workbook.problems import Recheck
+from ledgersolve.workbook.text import alike, cell_text, clean, nearest, serial_date
+
+_PLAIN = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
+_SPACED = re.compile(r"[+-]?\d{1,3}(?:[ \u00a0\u2009\u202f'’]\d{3})+(?:\.\d+)?", re.ASCII)
+_THOUSANDS = re.compile(r"[+-]?[1-9]\d{0,2}\.\d{3}", re.ASCII)
+_SEPARATED = re.compile(r"[+-]?[\d.,]*\d[\d.,]*", re.ASCII)
+_LEADING = re.compile(r"\D{0,4}[\d.,]*\d[\d.,]*\s*\D{1,12}|\D{1,4}[\d.,]*\d[\d.,]*", re.ASCII)
+_DAY_TEXT = re.compile(r"\d{1,4}[./-]\d{1,2}[./-]\d{1,4}", re.ASCII)
+
+YES = frozenset({"yes", "y", "true", "1"})
+NO = frozenset({"no", "n", "false", "0"})
+_NOTHING = frozenset({"-", "–", "—", "n/a", "na", "none", "nil", "unlimited", "null", "nan", "inf", "."})
+
+
+def readings(text: str) -> tuple[float, ...]:
+    """The numbers a text can mean: none, one, or several where the separators leave it open.
+
+    A comma is a decimal sign in some countries and a thousands separator in others, a point likewise where
+    three digits follow one to three; so ``1,200`` has two readings and ``12.5`` has one. A comma never
+    leaves only one reading: ``12,5`` is shown as 12.5 or 125.
+    """
+    text = text.replace("\u2212", "-")
+    if _THOUSANDS.fullmatch(text):
+        return (float(text.replace(".", "")), float(text))
+    if _PLAIN.fullmatch(text):
+        return (float(text),)
+    if _SPACED.fullmatch(text):
+        return (float(re.sub(r"[^\d.+-]", "", text)),)
+    if not _SEPARATED.fullmatch(text):
+        return ()
+    found: list[float] = []
+    for decimal, thousands in ((",", "."), (".", ",")):
+        candidate = text.replace(thousands, "").replace(decimal, ".")
+        if _PLAIN.fullmatch(candidate) and float(candidate) not in found:
+            found.append(float(candidate))
+    return tuple(sorted(found, reverse=True))
+
+
+def number_recheck(entry: Entry) -> tuple[Recheck, float | None, float | None]:
+    """How a number cell of this column can show that it is mended."""
+    if entry.low == 0 and not entry.above and entry.high >= LARGEST:
+        return "not negative", None, None
+    return "number", entry.low, entry.high
+
+
+def _number_fault(entry: Entry, kind: str, found: str, remedy: str) -> Fault:
+    recheck, low, high = number_recheck(entry)
+    return Fault(kind, found, entry.expected(), remedy, recheck, low, high)
+
+
+def or_empty(entry: Entry) -> str:
+    """The way out for a cell that need not be filled."""
+    return "" if entry.required else f", or leave the cell empty ({entry.default_text()})"
+
+
+def cell_fault(cell: Cell, entry: Entry) -> Fault | None:
+    """The fault of a cell that holds an error value or a formula without a value; None for others."""
+    recheck: tuple[Recheck, float | None, float | None] = (
+        number_recheck(entry) if entry.numeric else ("no error", None, None)
+    )
+    if cell.kind is Kind.ERROR:
+        return Fault("error value", f"the error value {cell.value}", entry.expected(),
+                     f"Mend the formula, or type the value{or_empty(entry)}.", *recheck)
+    if cell.kind is Kind.UNCALCULATED:
+        return Fault(
+            "formula never calculated", f"a formula without a result: {_cut(str(cell.value))}",
+            entry.expected(),
+            "Open the workbook in a spreadsheet program, let it calculate, save, and drop it again.",
+            *recheck)
+    return None
+
+
+def number(cell: Cell, entry: Entry) -> float | Fault:
+    """The number a cell means (limits are not checked here), or what is wrong with it."""
+    if cell.kind is Kind.NUMBER:
+        return float(cell.value)
+    if cell.kind is Kind.TEXT:
+        return text_number(clean(str(cell.value)), entry)
+    if cell.kind is Kind.DATE:
+        day = serial_date(float(cell.value)) or "a date"
+        return _number_fault(entry, "date instead of number", f"the date {day} (number {shown(cell.value)})",
+                             "Type the number and give the cell a number format.")
+    if cell.kind is Kind.BOOLEAN:
+        return _number_fault(entry, "number expected", "TRUE" if cell.value else "FALSE", "Type a number.")
+    fault = cell_fault(cell, entry)
+    return fault or _number_fault(entry, "number expected", str(cell.value), "Type a number.")
+
+
+def text_number(words: str, entry: Entry) -> float | Fault:
+    """The one number a text can mean in this column, or what is wrong with it."""
+    meanings = readings(words)
+    fitting = [value for value in meanings if entry.low <= value <= entry.high]
+    if len(meanings) == 1 and "," not in words:
+        return meanings[0]
+    if len(fitting) == 1 and "," not in words:
+        return fitting[0]
+    found = f"the text “{_cut(words)}”"
+    if meanings:
+        both = " or ".join(shown(value) for value in meanings)
+        return _number_fault(entry, "ambiguous number", f"{found}, which can be read as {both}",
+                             "Type the number into a number cell, without a thousands separator.")
+    if _DAY_TEXT.fullmatch(words):
+        return _number_fault(entry, "date instead of number", found, "Type the number.")
+    if words.casefold() in _NOTHING:
+        remedy = "Type a number." if entry.required else f"Leave the cell empty for {entry.default_text()}."
+    elif _LEADING.fullmatch(words):
+        remedy = "Type the number alone; units, currency and % signs belong into the title."
+    else:
+        remedy = f"Type a number{or_empty(entry)}."
+    return _number_fault(entry, "number expected", found, remedy)
+
+
+def text(cell: Cell, entry: Entry, date1904: bool) -> str | Fault:
+    """The text or code of a cell, or what is wrong with it; "" for a blank one."""
+    fault = cell_fault(cell, entry)
+    if fault is not None:
+        return fault
+    words = cell_text(cell, date1904)
+    if words is None:
+        return Fault("text expected", found_in(cell), entry.expected(), "Type the text.", "filled")
+    return words
+
+
+def yes_no(word: str, entry: Entry) -> bool | Fault:
+    """Yes or no of a word, or what is wrong with it."""
+    if word.casefold() in YES:
+        return True
+    if word.casefold() in NO:
+        return False
+    return Fault("yes or no expected", f"“{_cut(word)}”", entry.expected(), f"Type yes or no{or_empty(entry)}.")
+
+
+def choice(words: str, entry: Entry) -> str | Fault:
+    """The word of a CHOICE that a text means, or what is wrong with it."""
+    wanted = alike(words)
+    for word in entry.choices:
+        if alike(word) == wanted:
+            return word
+    near = nearest(words, entry.choices)
+    remedy = f"Did you mean `{near}`?" if near else f"Type one of these words{or_empty(entry)}."
+    return Fault("unknown word", f"“{_cut(words)}”", entry.expected(), remedy)
+
+
+def date(cell: Cell, entry: Entry, date1904: bool) -> str | Fault:
+    """ISO date of a cell, or what is wrong with it."""
+    if cell.kind is Kind.DATE:
+        day = serial_date(float(cell.value), date1904)
+        if day:
+            return day[:10]
+    if cell.kind is Kind.TEXT:
+        try:
+            return datetime.date.fromisoformat(clean(str(cell.value))).isoformat()
+        except ValueError:
+            pass
+    remedy = f"Type a date, or its text as year-month-day such as {entry.example}{or_empty(entry)}."
+    return cell_fault(cell, entry) or Fault("date expected", found_in(cell), entry.expected(), remedy, "date")
+
+
+def bare_serial(serial: float, entry: Entry, date1904: bool = False) -> Fault:
+    """The fault of a number where a date belongs; it may be a date without its format."""
+    day = serial_date(serial, date1904)
+    meant = f"Give the cell a date format if {day[:10]} is meant." if day and day > "1950" else ""
+    remedy = meant or "Type a date."
+    return Fault("date expected", f"the number {shown(serial)}", entry.expected(), remedy, "date")
+
+
+def found_in(cell: Cell) -> str:
+    """What stands in a cell, in words."""
+    if cell.kind is Kind.TEXT:
+        return f"the text “{_cut(str(cell.value))}”"
+    if cell.kind is Kind.BOOLEAN:
+        return "TRUE" if cell.value else "FALSE"
+    if cell.kind is Kind.DATE:
+        return f"the date {serial_date(float(cell.value)) or shown(cell.value)}"
+    if cell.kind is Kind.NUMBER:
+        return f"the number {shown(cell.value)}"
+    return f"the error value {cell.value}" if cell.kind is Kind.ERROR else "a formula without a result"
+
+
+def _cut(words: str, most: int = 60) -> str:
+    """Text short enough for a sentence, on one line."""
+    line = " ".join(words.split())
+    return line if len(line) <= most else line[: most - 1] + "…"
+
+
+def limit_fault(entry: Entry, value: float) -> Fault | None:
+    """What is wrong with a number under the column's limits; None where nothing is.
+
+    The same limits are in the row models; this gives the words.
+    """
+    found = f"the number {shown(value)}"
+    if not math.isfinite(value):
+        return _number_fault(entry, "number expected", "a value that is no finite number", "Type a number.")
+    if abs(value) > LARGEST:
+        return _number_fault(entry, "number too large", found,
+                             f"No figure may exceed {LARGEST:.0e}; check it.")
+    if value < 0 <= entry.low:
+        return _number_fault(entry, "negative number", found, "Type the figure without a minus sign.")
+    if value < entry.low or (entry.above and value == entry.low):
+        return _number_fault(entry, "number too small", found, f"Type {entry.expected()}.")
+    if value > entry.high:
+        return _number_fault(entry, "number too large", found, f"Type {entry.expected()}.")
+    if entry.holds is Holds.WHOLE and value != int(value):
+        return _number_fault(entry, "whole number expected", found, "Round it up or down.")
+    return None
