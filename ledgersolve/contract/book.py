@@ -17,7 +17,7 @@ from ledgersolve.workbook.text import cell_text, nearest, plain, unit_in
 
 @dataclass
 class Book:
-    """What was read of a workbook. ``tables``, ``codes`` and ``matrices`` go by the contract's sheet names."""
+    """What was read of a workbook; ``tables``, ``codes`` and ``matrices`` by the contract's sheet names."""
 
     contract: JobContract
     faults: Faults
@@ -53,7 +53,8 @@ def find_sheets(package: Package, names: Sequence[str], faults: Faults) -> dict[
                               "It was not used; rename it if it should stand for something else.")
             else:
                 faults.add(other.name, None, "", Fault(
-                    "sheet twice", f"the sheet “{other.name}” beside “{fitting[0].name}”", f"one sheet {name}",
+                    "sheet twice", f"the sheet “{other.name}” beside “{fitting[0].name}”",
+                    f"one sheet {name}",
                     "Rename or take out one of the two sheets."))
     return found
 
@@ -71,7 +72,8 @@ def report_sheets(package: Package, contract: JobContract, other: JobContract, f
             missing_sheet(sheet.name, slip, faults)
         elif slip is not None:
             faults.notice(slip, None, "", "sheet like a known one", f"the sheet “{slip}”; it was not used",
-                          f"`{sheet.name}`, if that is what it means", "Rename the sheet if it should be used.")
+                          f"`{sheet.name}`, if that is what it means",
+                          "Rename the sheet if it should be used.")
     foreign = {plain(sheet.name) for sheet in other.sheets}
     theirs = [name for name in spare if plain(name) in foreign]
     if theirs:
@@ -147,7 +149,8 @@ def _read_list(package: Package, info: SheetInfo, sheet: ListSheet, book: Book) 
             book.broken.add(sheet.name)
             place = (raw.titles.row + 1, min(raw.titles.headings))
             book.faults.add(info.name, place, sheet.key[0], Fault(
-                "empty list", "no row below the titles", "at least one row", f"Fill in {sheet.name}.", "filled"))
+                "empty list", "no row below the titles", "at least one row", f"Fill in {sheet.name}.",
+                "filled"))
         return
     report_titles(info.name, sheet, raw, book.faults)
     table = check_list(info.name, sheet, raw, book.faults, package.date1904)
@@ -190,7 +193,7 @@ def _own_codes(sheet: str, cells: Sequence[Cell], date1904: bool) -> Codes:
 
 def _no_matrix(package: Package, name: str, sheet: MatrixSheet, raw: RawMatrix | None, down: Codes | None,
                across: Codes | None, faults: Faults) -> None:
-    """Report a matrix without title row or without figures; a matrix the wrong way round has its own words."""
+    """Report a matrix without title row or figures, or one that stands the wrong way round."""
     expected = (f"codes of {sheet.rows_of} down the first column, codes of {sheet.columns_of} "
                 "along the title row, figures between them")
     if raw is not None:

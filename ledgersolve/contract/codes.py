@@ -49,7 +49,8 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
             where = address(*table.place(rows[first], title))
             faults.add(table.sheet, table.place(row, title), title, Fault(
                 "codes alike", f"“{code}”, which differs from “{first}” in {where} in case or spacing only",
-                "codes that differ clearly", f"Write “{first}” in both cells if they are one, or rename one."))
+                "codes that differ clearly",
+                f"Write “{first}” in both cells if they are one, or rename one."))
             rows[code] = row
         else:
             rows[code] = row
@@ -94,7 +95,8 @@ def _report_unknown(sheet: str, title: str, lost: Mapping[str, Sequence[Place]],
         if near is None and not known.whole:
             continue
         if one_by_one:
-            faults.many(sheet, places, title, partial(_same, unknown_code(code, near, known.sheet)), group=code)
+            faults.many(sheet, places, title, partial(_same, unknown_code(code, near, known.sheet)),
+                        group=code)
         else:
             gathered.extend((place, code) for place in places)
     if gathered:

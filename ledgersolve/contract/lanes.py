@@ -92,7 +92,8 @@ def assemble(book: Book, rows: LaneRows | None, demand: Floats, places: tuple[Fl
     cost[np.isnan(cost)] = np.inf
     if closed is not None:
         cost[closed] = np.inf
-    return Lanes(cost, distance, _limits(rows, shape), _unclear(book, rows, shape), by_distance, by_coordinates)
+    return Lanes(cost, distance, _limits(rows, shape), _unclear(book, rows, shape), by_distance,
+                 by_coordinates)
 
 
 def is_whole(book: Book) -> bool:
@@ -100,8 +101,10 @@ def is_whole(book: Book) -> bool:
     return book.settings.text(c.BASIS) == "whole demand"
 
 
-def _own_costs(book: Book, rows: LaneRows | None, shape: tuple[int, int]) -> tuple[Floats | None, Flags | None]:
-    """Costs that lanes have of their own (NaN where none), and pairs said to be no lane; None where no source."""
+def _own_costs(
+    book: Book, rows: LaneRows | None, shape: tuple[int, int],
+) -> tuple[Floats | None, Flags | None]:
+    """Costs that lanes have of their own (NaN where none), and pairs said to be no lane."""
     matrix = book.matrix(c.LANE_COSTS)
     own: Floats | None = None
     closed: Flags | None = None
@@ -211,7 +214,8 @@ def check_rows(book: Book, rows: LaneRows | None) -> None:
         "Fill in one of the two, or write no under Allowed.", "filled"))
     if book.settings.number(c.RATE) is None and c.RATE not in book.settings.bad and book.settings.readable:
         unpriced = rows.row[asked & measured]
-        faults.many(table.sheet, [table.place(row, title) for row in unpriced.tolist()], title, lambda _: Fault(
+        places = [table.place(row, title) for row in unpriced.tolist()]
+        faults.many(table.sheet, places, title, lambda _: Fault(
             "cost not known", "a lane with a distance, but without a cost", "a cost for the lane",
             f"Give Unit cost, or {c.RATE} in Settings."))
 
@@ -221,11 +225,12 @@ def _in_matrix(book: Book, name: str, rows: LaneRows) -> Flags:
     matrix = book.matrix(name)
     if matrix is None:
         return np.zeros(len(rows.row), dtype=bool)
-    return np.asarray(~np.isnan(matrix.figures[rows.site, rows.customer]) | matrix.bad[rows.site, rows.customer])
+    pairs = (rows.site, rows.customer)
+    return np.asarray(~np.isnan(matrix.figures[pairs]) | matrix.bad[pairs])
 
 
-def check_distances(book: Book, rows: LaneRows | None, lanes: Lanes, promised: Flags, names: tuple[Codes, Codes],
-                    rule: str) -> None:
+def check_distances(book: Book, rows: LaneRows | None, lanes: Lanes, promised: Flags,
+                    names: tuple[Codes, Codes], rule: str) -> None:
     """Report lanes without a distance where a distance rule applies.
 
     ``promised`` has shape (n,): customers for whom a rule applies; ``rule`` names it.
@@ -244,8 +249,8 @@ def check_distances(book: Book, rows: LaneRows | None, lanes: Lanes, promised: F
         title = "Distance" if "Distance" in rows.table.columns else "Site"
         book.faults.many(
             rows.table.sheet, [rows.table.place(int(rows.row[k]), title) for k in listed], "Distance",
-            lambda i: _no_distance(sites.codes[rows.site[listed[i]]], customers.codes[rows.customer[listed[i]]],
-                                   rule))
+            lambda i: _no_distance(sites.codes[rows.site[listed[i]]],
+                                   customers.codes[rows.customer[listed[i]]], rule))
         unknown[rows.site, rows.customer] = False
     matrix = book.matrix(c.LANE_COSTS)
     if matrix is not None:

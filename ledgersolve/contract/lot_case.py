@@ -47,7 +47,8 @@ def build(book: Book, title: str) -> Case | None:
         _check_times(book, items)
         _check_holding(book, items, costs)
     references = {(name, column): _reference(book, name, column, target) for name, column, target in (
-        (c.ITEMS, "Resource", c.RESOURCES), (c.ITEMS, "Family", c.FAMILIES), (c.FAMILIES, "Resource", c.RESOURCES))}
+        (c.ITEMS, "Resource", c.RESOURCES), (c.ITEMS, "Family", c.FAMILIES),
+        (c.FAMILIES, "Resource", c.RESOURCES))}
     _check_today(book)
     if book.faults.any_errors or items is None or periods is None:
         return None
@@ -76,7 +77,7 @@ def _pair_rows(book: Book, name: str) -> PairRows | None:
 
 
 def _reference(book: Book, name: str, column: str, target: str) -> Ints:
-    """Numbers of the codes a column names, -1 where empty; a column that names a missing sheet is reported."""
+    """Numbers of the codes a column names, -1 where empty; a missing sheet of codes is reported."""
     table = book.table(name)
     if table is None:
         return np.zeros(0, dtype=np.int64)
@@ -121,7 +122,8 @@ def _check_times(book: Book, items: CheckedList) -> None:
     title = _first(items, "Resource", "Time per unit", "Setup time", "Item")
     rows = np.flatnonzero(lost).tolist()
     book.faults.many(items.sheet, [items.place(row, title) for row in rows], title, lambda _: Fault(
-        "time without resource", "time per unit or setup time, but no Resource", "the Resource that the time loads",
+        "time without resource", "time per unit or setup time, but no Resource",
+        "the Resource that the time loads",
         "Name the Resource, or clear the times.", "filled" if title == "Resource" else "static"))
 
 
@@ -185,11 +187,13 @@ def _check_holding(book: Book, items: CheckedList, costs: PairRows | None) -> No
         faults.many(items.sheet, [items.place(row, title) for row in rows], "Holding cost", lambda _: Fault(
             "holding cost not known", f"neither a Holding cost nor a {c.HOLDING_RATE}",
             "a cost of holding a unit for a period",
-            f"Fill in Holding cost (0 if it costs nothing), or {c.HOLDING_RATE}, {c.PERIODS_A_YEAR} and Unit value.",
+            f"Fill in Holding cost (0 if it costs nothing), or {c.HOLDING_RATE}, {c.PERIODS_A_YEAR} "
+            "and Unit value.",
             "not negative" if title == "Holding cost" else "static"))
         return
     if values.number(c.PERIODS_A_YEAR) is None and c.PERIODS_A_YEAR not in values.bad:
-        faults.add(values.sheet, values.place(c.PERIODS_A_YEAR) or values.place(c.HOLDING_RATE), c.PERIODS_A_YEAR,
+        faults.add(values.sheet, values.place(c.PERIODS_A_YEAR) or values.place(c.HOLDING_RATE),
+                   c.PERIODS_A_YEAR,
                    Fault("half a rule", f"{c.HOLDING_RATE} without {c.PERIODS_A_YEAR}",
                          "the number of periods in a year", f"Give {c.PERIODS_A_YEAR} too (12 for months)."))
     unvalued = missing & ~items.good("Unit value") & ~items.bad("Unit value")
@@ -214,9 +218,10 @@ def _costed(book: Book, items: CheckedList, costs: PairRows | None) -> Flags:
 
 def _check_today(book: Book) -> None:
     values = book.settings
-    if values.values.get(settings.COMPARE) is True and not {c.TODAY_PLAN} & (set(book.matrices) | book.broken):
+    absent = c.TODAY_PLAN not in book.matrices and c.TODAY_PLAN not in book.broken
+    if values.values.get(settings.COMPARE) is True and absent:
         book.faults.add(values.sheet, values.place(settings.COMPARE), settings.COMPARE, Fault(
-            "nothing to compare", "yes, but no filled sheet Today plan", "today's plan in the sheet Today plan",
+            "nothing to compare", "yes, but no filled sheet Today plan", "today's plan in Today plan",
             "Fill in Today plan, or set this to no."))
 
 
@@ -238,11 +243,13 @@ def _case(book: Book, title: str, costs: PairRows | None, receipts: PairRows | N
         arrived[receipts.item, receipts.period] = receipts.table.numbers("Quantity", 0.0)[receipts.row]
     today = book.matrix(c.TODAY_PLAN)
     compare = values.values.get(settings.COMPARE)
+    shared = _shared(book, horizon)
     return Case(
         title=title, currency=values.text("Currency"), period_unit=values.text("Period unit"), items=codes,
         item_names=tuple(name or code for name, code in zip(items.texts("Name"), codes, strict=True)),
         units=tuple(word or "unit" for word in items.texts("Unit")), periods=periods,
-        demand=np.nan_to_num(book.matrices[c.DEMAND].figures), receipts=arrived, setup_cost=setup, unit_cost=unit,
+        demand=np.nan_to_num(book.matrices[c.DEMAND].figures), receipts=arrived,
+        setup_cost=setup, unit_cost=unit,
         holding_cost=holding, setup_allowed=allowed, opening_stock=items.numbers("Opening stock", 0.0),
         safety_stock=safety, closing_stock=np.where(np.isnan(closing), safety, closing),
         most_stock=items.numbers("Most stock", np.inf), least_lot=items.numbers("Least lot", 0.0),
@@ -250,7 +257,11 @@ def _case(book: Book, title: str, costs: PairRows | None, receipts: PairRows | N
         backlog_cost=items.numbers("Backlog cost") if late else np.full(len(codes), np.nan),
         lost_cost=items.numbers("Lost sale cost"), item_resource=references[c.ITEMS, "Resource"],
         time_per_unit=items.numbers("Time per unit", 0.0), setup_time=items.numbers("Setup time", 0.0),
-        item_family=references[c.ITEMS, "Family"], **_shared(book, horizon, references),  # type: ignore[arg-type]
+        item_family=references[c.ITEMS, "Family"],
+        resources=shared.resources, capacity=shared.capacity, overtime_limit=shared.overtime_limit,
+        overtime_cost=shared.overtime_cost, use_cost=shared.use_cost, families=shared.families,
+        family_cost=shared.family_cost, family_time=shared.family_time,
+        family_resource=references[c.FAMILIES, "Resource"],
         today=None if today is None else np.nan_to_num(today.figures),
         compare_today=today is not None if compare is None else bool(compare),
         period_starts=tuple(book.tables[c.PERIODS].texts("Start")),
@@ -279,27 +290,33 @@ def _costs(book: Book, items: CheckedList, costs: PairRows | None, horizon: int,
     return figures["Setup cost"], figures["Unit cost"], figures["Holding cost"], allowed
 
 
-def _shared(book: Book, horizon: int, references: dict[tuple[str, str], Ints]) -> dict[str, object]:
-    """Fields of the case for resources and families, where there are any."""
-    shared: dict[str, object] = {}
-    resources, families = book.table(c.RESOURCES), book.table(c.FAMILIES)
-    if resources is not None:
-        capacity = _spread(resources.numbers("Capacity"), horizon)
-        matrix = book.matrix(c.CAPACITY)
-        if matrix is not None:
-            capacity = np.where(np.isnan(matrix.figures), capacity, matrix.figures)
-        shared |= {
-            "resources": book.codes[c.RESOURCES].codes, "capacity": capacity,
-            "overtime_limit": resources.numbers("Overtime limit", 0.0),
-            "overtime_cost": resources.numbers("Overtime cost", 0.0),
-            "use_cost": resources.numbers("Use cost", 0.0),
-        }
-    else:
-        shared["capacity"] = np.zeros((0, horizon))
-    if families is not None:
-        shared |= {
-            "families": book.codes[c.FAMILIES].codes, "family_cost": families.numbers("Setup cost"),
-            "family_time": families.numbers("Setup time", 0.0),
-            "family_resource": references[c.FAMILIES, "Resource"],
-        }
-    return shared
+@dataclass(frozen=True)
+class Shared:
+    """Resources (R) and families (F) of a workbook, under the names of the case."""
+
+    resources: tuple[str, ...]
+    capacity: Floats
+    overtime_limit: Floats
+    overtime_cost: Floats
+    use_cost: Floats
+    families: tuple[str, ...]
+    family_cost: Floats
+    family_time: Floats
+
+
+def _shared(book: Book, horizon: int) -> Shared:
+    """Take what items share, nothing where the sheets are not there."""
+    resources, families, matrix = book.table(c.RESOURCES), book.table(c.FAMILIES), book.matrix(c.CAPACITY)
+
+    def column(table: CheckedList | None, title: str, default: float = 0.0) -> Floats:
+        return np.zeros(0) if table is None else table.numbers(title, default)
+
+    capacity = _spread(column(resources, "Capacity", np.nan), horizon)
+    if resources is not None and matrix is not None:
+        capacity = np.where(np.isnan(matrix.figures), capacity, matrix.figures)
+    return Shared(
+        () if resources is None else book.codes[c.RESOURCES].codes, capacity,
+        column(resources, "Overtime limit"), column(resources, "Overtime cost"),
+        column(resources, "Use cost"),
+        () if families is None else book.codes[c.FAMILIES].codes, column(families, "Setup cost"),
+        column(families, "Setup time"))

@@ -102,7 +102,8 @@ RESOURCES_SHEET = ListSheet(
 )
 
 CAPACITY_SHEET = MatrixSheet(
-    CAPACITY, "Capacity by period, in place of the one figure in Resources: a row a resource, a column a period.",
+    CAPACITY,
+    "Capacity by period, in place of the one figure in Resources: a row a resource, a column a period.",
     RESOURCES, PERIODS, "Resource", Entry("Capacity", "Time available in the period.", example=76, unit=_TIME,
                                           default_words="Capacity in Resources"),
 )

@@ -60,13 +60,13 @@ class _Side:
         self.at_fault = at_fault
 
 
-def check_matrix(sheet: str, contract: MatrixSheet, raw: RawMatrix, down: Codes, across: Codes, faults: Faults,
-                 date1904: bool) -> CheckedMatrix:
+def check_matrix(sheet: str, contract: MatrixSheet, raw: RawMatrix, down: Codes, across: Codes,
+                 faults: Faults, date1904: bool) -> CheckedMatrix:
     """Check the codes along both sides and every figure, and report what is wrong."""
     filled_rows = set(raw.rows.tolist()) | {cell.row for cell in raw.others}
     filled_columns = set(np.unique(raw.columns).tolist()) | {cell.column for cell in raw.others}
-    rows = _side(sheet, contract.corner, raw.row_codes, [c.row for c in raw.row_codes], filled_rows, down, faults,
-                 date1904)
+    rows = _side(sheet, contract.corner, raw.row_codes, [c.row for c in raw.row_codes], filled_rows, down,
+                 faults, date1904)
     columns = _side(sheet, contract.columns_of, raw.column_codes, [c.column for c in raw.column_codes],
                     filled_columns, across, faults, date1904)
     _report_without_code(sheet, raw, filled_rows, faults, contract)
@@ -77,7 +77,8 @@ def check_matrix(sheet: str, contract: MatrixSheet, raw: RawMatrix, down: Codes,
     inside = (row_number >= 0) & (column_number >= 0)
     figures[row_number[inside], column_number[inside]] = raw.values[inside]
     _check_limits(sheet, contract.figure, raw, inside, row_number, column_number, figures, bad, faults)
-    as_text = _take_others(sheet, contract.figure, raw.others, rows.lines, columns.lines, figures, bad, faults)
+    as_text = _take_others(sheet, contract.figure, raw.others, rows.lines, columns.lines, figures, bad,
+                           faults)
     return CheckedMatrix(sheet, contract, figures, bad, frozenset(as_text),
                          {number: line for line, number in rows.lines.items()},
                          {number: line for line, number in columns.lines.items()}, raw.title_row)
@@ -141,13 +142,14 @@ def _report_without_code(sheet: str, raw: RawMatrix, filled_rows: set[int], faul
     last = max(cell.column for cell in raw.column_codes)
     lost_columns = sorted({cell.column for cell in raw.strays if cell.kind is Kind.NUMBER
                            and cell.column <= last + 1})
-    faults.many(sheet, [(raw.title_row, column) for column in lost_columns], contract.columns_of, lambda _: Fault(
+    places = [(raw.title_row, column) for column in lost_columns]
+    faults.many(sheet, places, contract.columns_of, lambda _: Fault(
         "required cell empty", "an empty cell above figures", f"a code of the sheet {contract.columns_of}",
         "Type the code, or clear the column.", "filled"))
 
 
-def _check_limits(sheet: str, entry: Entry, raw: RawMatrix, inside: Flags, row_number: Ints, column_number: Ints,
-                  figures: Floats, bad: Flags, faults: Faults) -> None:
+def _check_limits(sheet: str, entry: Entry, raw: RawMatrix, inside: Flags, row_number: Ints,
+                  column_number: Ints, figures: Floats, bad: Flags, faults: Faults) -> None:
     asked = np.flatnonzero(inside)
     refused = asked[outside(entry, raw.values[asked].tolist())]
     by_kind: dict[str, list[int]] = {}

@@ -49,9 +49,11 @@ def read_workbook(package: Package, file_name: str) -> Reading:
     contract = CONTRACTS[job]
     other = CONTRACTS[Job.LOT_SIZING if job is Job.SITE_SELECTION else Job.SITE_SELECTION]
     if titles is None:
-        values = SettingValues(values={entry.title: entry.default for entry in contract.settings}, readable=False)
+        values = SettingValues(values={entry.title: entry.default for entry in contract.settings},
+                               readable=False)
     else:
-        values = read_settings(sheet, titles, rows, contract.settings, other.settings, faults, package.date1904)
+        values = read_settings(sheet, titles, rows, contract.settings, other.settings, faults,
+                               package.date1904)
     found = find_sheets(package, [each.name for each in contract.sheets], faults)
     book = Book(contract, faults, values, found)
     report_sheets(package, contract, other, found, faults)
@@ -97,14 +99,16 @@ def _settings_rows(package: Package, faults: Faults) -> tuple[TitleRow | None, l
     """Title row and rows of the Settings sheet; a sheet that is missing or has no titles is reported."""
     info = find_sheets(package, [settings.SHEET], faults).get(settings.SHEET)
     if info is None:
-        slip = next((each.name for each in package.sheets if nearest(plain(each.name), [settings.SHEET])), None)
+        slip = next((each.name for each in package.sheets if nearest(plain(each.name), [settings.SHEET])),
+                    None)
         missing_sheet(settings.SHEET, slip, faults)
         return None, [], settings.SHEET
     read = read_rows(package.cells(info.name), ("Setting", "Value"), settings.LIST.required_titles())
     if read is None or read[0].missing:
         faults.add(info.name, None, "", Fault(
             "no title row", "no row with the titles Setting and Value within the first 30 rows",
-            "a title row with `Setting` and `Value`", "Put the titles Setting and Value above the two columns."))
+            "a title row with `Setting` and `Value`",
+            "Put the titles Setting and Value above the two columns."))
         return None, [], info.name
     return read[0], read[1], info.name
 

@@ -88,8 +88,10 @@ def origins_of(book: Book) -> Origins:
     values = book.settings
     if "Value" in values.columns:
         tables["Settings"] = TableMap(
-            values.sheet, {"Value": values.columns["Value"]}, {(name,): row for name, row in values.rows.items()},
-            frozenset(place for name in values.rows if name not in values.given and (place := values.place(name))),
+            values.sheet, {"Value": values.columns["Value"]},
+            {(name,): row for name, row in values.rows.items()},
+            frozenset(place for name in values.rows
+                      if name not in values.given and (place := values.place(name))),
             frozenset(values.given[name] for name in values.as_text))
     matrices = {}
     for name, matrix in book.matrices.items():
@@ -115,7 +117,7 @@ def _list_map(table: CheckedList) -> TableMap:
 
 
 def defaults_of(book: Book) -> tuple[Default, ...]:
-    """Defaults taken: settings that were not given, and empty cells of optional columns, in contract order."""
+    """Defaults taken: settings not given and empty cells of optional columns, in contract order."""
     taken = [
         Default("Settings", entry.title, entry.default_text(), 1)
         for entry in book.contract.settings if not entry.required and entry.title not in book.settings.given

@@ -14,8 +14,10 @@ from ledgersolve.workbook.currencies import MINOR_UNITS
 from ledgersolve.workbook.tables import TitleRow
 from ledgersolve.workbook.text import nearest, plain, unit_in
 
-_OTHER_UNITS = frozenset(
-    "min mins minute minutes m h hr hrs hour hours ms day days fraction share ratio 0-1 0..1 permille ‰ bp".split())
+_OTHER_UNITS = frozenset((
+    "min", "mins", "minute", "minutes", "m", "h", "hr", "hrs", "hour", "hours", "ms", "day", "days",
+    "fraction", "share", "ratio", "0-1", "0..1", "permille", "‰", "bp",
+))
 _SIGNS = {"€": "EUR", "$": "USD", "£": "GBP", "¥": "JPY", "euro": "EUR", "euros": "EUR", "dollar": "USD",
           "us$": "USD", "pound": "GBP", "chf.": "CHF", "sfr": "CHF"}
 
@@ -121,7 +123,8 @@ def read_settings(sheet: str, titles: TitleRow, rows: Sequence[Mapping[str, Cell
     return result
 
 
-def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: Faults, date1904: bool) -> None:
+def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: Faults,
+          date1904: bool) -> None:
     name, cell = row["Setting"], row.get("Value")
     result.rows[entry.title] = name.row
     unit = unit_in(str(name.value))
@@ -170,8 +173,9 @@ def _currency(words: str, entry: Entry) -> str | Fault:
     return Fault("currency expected", f"“{words[:40]}”", entry.expected(), remedy)
 
 
-def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[Entry], found: Mapping[str, object],
-                      other_job: Sequence[Entry], faults: Faults) -> dict[str, Cell]:
+def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[Entry],
+                      found: Mapping[str, object], other_job: Sequence[Entry],
+                      faults: Faults) -> dict[str, Cell]:
     """Notices for names close to a setting; gives the near misses of required settings by name."""
     absent = [entry.title for entry in entries if entry.title not in found]
     required = {entry.title for entry in entries if entry.required}
@@ -189,7 +193,8 @@ def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[E
             near[name] = cell
         elif name:
             faults.notice(sheet, where, name, "setting like a known one",
-                          f"the setting “{cell.value}”; it was not used", f"`{name}`, if that is what it means",
+                          f"the setting “{cell.value}”; it was not used",
+                          f"`{name}`, if that is what it means",
                           "Change the name if the setting should be used.")
     return near
 

@@ -105,8 +105,10 @@ def _check_sites(book: Book, sites: CheckedList) -> None:
     """Report sites whose own figures, or whose group's rules, cannot hold together."""
     capacity, least = sites.numbers("Capacity", np.inf), sites.numbers("Least volume", 0.0)
     over = np.flatnonzero(least > capacity).tolist()
-    book.faults.many(sites.sheet, [sites.place(row, "Least volume") for row in over], "Least volume", lambda i: Fault(
-        "rules conflict", f"a Least volume of {shown(least[over[i]])} above the Capacity {shown(capacity[over[i]])}",
+    places = [sites.place(row, "Least volume") for row in over]
+    book.faults.many(sites.sheet, places, "Least volume", lambda i: Fault(
+        "rules conflict",
+        f"a Least volume of {shown(least[over[i]])} above the Capacity {shown(capacity[over[i]])}",
         "a Least volume of at most the Capacity", "Change one of the two."))
     first_open: dict[str, int] = {}
     for row, (group, rule) in enumerate(zip(sites.texts("Group"), sites.texts("Rule"), strict=True)):
@@ -198,7 +200,8 @@ def _check_distance_rules(book: Book, lanes: Lanes, rows: LaneRows | None, varia
                           customers: CheckedList, codes: tuple[Codes, Codes]) -> None:
     values = book.settings
     general = [name for name in (c.LONGEST, c.SHARE_DISTANCE) if values.number(name) is not None]
-    general += [f"{c.LONGEST} in Variants" for variant in variants if variant.longest_distance is not None][:1]
+    general += [f"{c.LONGEST} in Variants" for variant in variants
+                if variant.longest_distance is not None][:1]
     own = np.isfinite(_column(customers, codes[1], c.LONGEST))
     if general:
         lane_sources.check_distances(book, rows, lanes, np.ones(len(own), dtype=bool), codes, general[0])

@@ -115,7 +115,8 @@ LANES_SHEET = ListSheet(
 )
 
 LANE_COSTS_SHEET = MatrixSheet(
-    LANE_COSTS, "Lane costs by the Lane cost basis: a row a site, a column a customer; an empty cell = no lane.",
+    LANE_COSTS,
+    "Lane costs by the Lane cost basis: a row a site, a column a customer; an empty cell = no lane.",
     SITES, CUSTOMERS, "Site", Entry("Lane cost", "Cost of the lane.", example=6.4, unit="money by the basis",
                                     default_words="no lane"),
 )

@@ -137,7 +137,8 @@ def yes_no(word: str, entry: Entry) -> bool | Fault:
         return True
     if word.casefold() in NO:
         return False
-    return Fault("yes or no expected", f"“{_cut(word)}”", entry.expected(), f"Type yes or no{or_empty(entry)}.")
+    return Fault("yes or no expected", f"“{_cut(word)}”", entry.expected(),
+                 f"Type yes or no{or_empty(entry)}.")
 
 
 def choice(words: str, entry: Entry) -> str | Fault:
