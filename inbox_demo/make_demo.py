@@ -74,7 +74,7 @@ def depots_from_coordinates() -> None:
                     "Opening cost", "Closing cost", "Latitude", "Longitude"]]
     for (code, name, latitude, longitude), cost in zip(TOWNS[:12], fixed, strict=True):
         today = code in ("HAM", "BER", "MUC", "CGN")
-        sites.append([code, f"Depot {name}", cost * 1000, 42000, 3.2, "yes" if today else "no",
+        sites.append([code, f"Depot {name}", cost * 1000, 56000, 3.2, "yes" if today else "no",
                       0 if today else 60000, 90000 if today else 0, latitude, longitude])
     customers: Rows = [["Customer", "Name", "Demand (pallets/year)", "Latitude", "Longitude"]]
     for number, (_, name, latitude, longitude) in enumerate(TOWNS, start=1):
@@ -85,7 +85,7 @@ def depots_from_coordinates() -> None:
         ["Demand a tenth higher", 1.1, None, None, None],
         ["Freight a fifth dearer", None, 1.2, None, None],
         ["At most three depots", None, None, 3, None],
-        ["Without Hamburg", None, None, None, "HAM"],
+        ["Without Leipzig", None, None, None, "LEJ"],
     ]
     plan = settings("site selection", "Depots for the coming year", Demand_unit="pallet", Period_covered="year",
                     Cost_per_unit_and_distance=0.11, Road_factor=1.3, Compare_with_today="yes")
@@ -106,15 +106,15 @@ def depots_from_a_lane_list() -> None:
     lanes: Rows = [["Site", "Customer", "Unit cost (EUR/pallet)", "Distance (km)"]]
     for number, (_, name, latitude, longitude) in enumerate(TOWNS[20:], start=1):
         code = f"K{number:02d}"
-        customers.append([code, name, draw.randrange(200, 1400, 20), 250 if number % 9 == 0 else None])
+        customers.append([code, name, draw.randrange(200, 1400, 20), 330 if number % 9 == 0 else None])
         for site, _, site_latitude, site_longitude in places:
             distance = round(1.3 * 111 * ((latitude - site_latitude) ** 2
                              + (0.63 * (longitude - site_longitude)) ** 2) ** 0.5)
-            if distance <= 420:
+            if distance <= 560:
                 rate = round(4 + 0.085 * distance * draw.uniform(0.9, 1.1), 2)
                 lanes += [[f"{site}-S", code, rate, distance], [f"{site}-L", code, rate, distance]]
     plan = settings("site selection", "Regional halls, one supplier each", Demand_unit="pallet",
-                    Period_covered="year", Single_sourcing="yes", Longest_distance=420)
+                    Period_covered="year", Single_sourcing="yes", Longest_distance=560)
     plan += [["Share within distance (%)", 60], ["Distance for share", 200], ["Time limit (seconds)", 60]]
     write("2 halls from a lane list",
           {"Settings": plan, "Sites": sites, "Customers": customers, "Lanes": lanes})
