@@ -84,5 +84,5 @@ class PrologCheck:
         """Look at the next piece."""
         try:
             self._reader.Parse(piece, False)
-        except (_RootSeenError, expat.ExpatError, LookupError):
+        except (_RootSeenError, expat.ExpatError, LookupError, ValueError):
             self.done = True
