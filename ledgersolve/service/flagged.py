@@ -1,19 +1,20 @@
 """The workbook that goes back where the program itself could not make one."""
 
-from pathlib import Path
+from io import BytesIO
 
 import xlsxwriter
 
 _DARK, _ACCENT, _GREY = "#1F2933", "#8A3B12", "#52606D"
 
 
-def write_flagged(target: Path, drop_name: str, headline: str, sentences: list[str], job: str) -> None:
-    """Write a workbook of one sheet that says in plain words what happened.
+def flagged_workbook(drop_name: str, headline: str, sentences: list[str], job: str) -> bytes:
+    """Make a workbook of one sheet that says in plain words what happened.
 
     It needs nothing of the dropped file: that file may be what stops the program.
     """
-    options = {"strings_to_formulas": False, "strings_to_urls": False, "strings_to_numbers": False}
-    with xlsxwriter.Workbook(str(target), options) as workbook:
+    made = BytesIO()
+    options = {"in_memory": True, "strings_to_formulas": False, "strings_to_urls": False}
+    with xlsxwriter.Workbook(made, options) as workbook:
         sheet = workbook.add_worksheet("Not solved")
         sheet.hide_gridlines(2)
         sheet.set_column(0, 0, 3)
@@ -30,3 +31,4 @@ def write_flagged(target: Path, drop_name: str, headline: str, sentences: list[s
         sheet.write_string(row + 1, 1, f"Job {job}. The original workbook is kept by the service.", small)
         sheet.set_landscape()
         sheet.fit_to_pages(1, 0)
+    return made.getvalue()

@@ -19,7 +19,7 @@ from pathlib import Path
 from ledgersolve.service.disk import Disk
 
 PRIVATE_NAME = ".ledgersolve"
-_LABEL = ".ledgersolve-selftest-"
+SELFTEST = ".ledgersolve-selftest-"
 
 
 class ShareError(OSError):
@@ -191,7 +191,7 @@ def self_test(layout: Layout, disk: Disk) -> None:
         raise UnfitFolderError(apart)
     first, second = layout.new_tmp("test"), layout.new_tmp("test")
     disk.write_new(first, b"")
-    label = f"{_LABEL}{first.name}"
+    label = f"{SELFTEST}{first.name}"
     places = [first, second, layout.inbox / label, layout.returned / label]
     try:
         _try_links(disk, first, second)

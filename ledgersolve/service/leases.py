@@ -50,6 +50,6 @@ class LeaseWatch:
         """Start all observations over."""
         self._seen.clear()
 
-    def drop(self, job: str) -> None:
-        """Forget one job."""
-        self._seen.pop(job, None)
+    def forget_others(self, jobs: set[str]) -> None:
+        """Keep in mind only the jobs that are still there."""
+        self._seen = {job: seen for job, seen in self._seen.items() if job in jobs}

@@ -5,10 +5,12 @@ the date of their original. There is no last try: what is not ready now is looke
 """
 
 import errno
+import math
 import stat
 import time
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
+from functools import partial
 from pathlib import Path
 
 from ledgersolve.service.disk import Disk, Entry
@@ -18,6 +20,7 @@ from ledgersolve.service.whole import Shape, nobody_writes, shape
 DEEPEST = 8
 """Levels of sub-folders below Inbox that are served."""
 _FIRST_WAIT, _LONGEST_WAIT = 2.0, 300.0
+_ALERT_AFTER = 3
 Signature = tuple[int, int, int, int, int]
 
 
@@ -43,6 +46,8 @@ class Drop:
     why: str = ""
     alert: bool = False
     blocked: bool = False
+    look_in: float = math.inf
+    """Seconds after which another look may find it ready; inf where only a change can tell."""
 
     @property
     def name(self) -> str:
@@ -71,6 +76,8 @@ class Settler:
     inbox: Path
     patience: Patience = field(default_factory=Patience)
     clock: Callable[[], float] = time.monotonic
+    sure: bool = True
+    """Whether the system's word that nobody writes to a file may be taken (never on network folders)."""
     _watched: dict[Path, _Watched] = field(default_factory=dict)
     _marks: dict[Path, tuple[Signature, float]] = field(default_factory=dict)
 
@@ -140,25 +147,25 @@ class Settler:
             watched = _Watched(signature, now, first)
             self._watched[entry.path] = watched
 
-        def found(why: str = "", *, ready: bool = False, alert: bool = False, blocked: bool = False) -> Drop:
-            size = entry.status.st_size
-            return Drop(entry.path, owner, size, watched.first_seen, ready, why, alert, blocked)
-
+        found = partial(Drop, entry.path, owner, entry.status.st_size, watched.first_seen)
         if not entry.is_file:
-            return found(f"{_kind_words(entry)}; it is never read", alert=True, blocked=True)
+            return found(False, f"{_kind_words(entry)}; it is never read", alert=True, blocked=True)
         if now < watched.next_try:
-            return found(watched.trouble, alert=watched.refusals >= 3, blocked=True)
+            return _held_back(found, watched, now)
         for mark in owner_marks(entry.name):
             if marks.get(mark, self.patience.open_elsewhere) < self.patience.open_elsewhere:
-                return found("open in a spreadsheet program")
+                return found(False, "open in a spreadsheet program")
         quiet = now - watched.unchanged_since
-        if quiet < min(self.patience.quiet, self.patience.sure_quiet):
-            return found("still being copied")
+        shortest = min(self.patience.quiet, self.patience.sure_quiet)
+        if quiet < shortest:
+            return found(False, "still being copied", look_in=shortest - quiet)
         try:
             return self._judge_content(entry, watched, quiet, found)
+        except FileNotFoundError:
+            return found(False, "gone again")
         except OSError as error:
             self.refused(entry.path, error)
-            return found(watched.trouble, alert=watched.refusals >= 3, blocked=True)
+            return _held_back(found, watched, now)
 
     def _judge_content(
         self, entry: Entry, watched: _Watched, quiet: float, found: Callable[..., Drop]
@@ -166,14 +173,21 @@ class Settler:
         if watched.shape is None:
             watched.shape = shape(self.disk, entry.path, entry.status.st_size)
         if watched.shape is Shape.PARTIAL:
-            if quiet >= self.patience.long_quiet:
-                return found(ready=True)
             left = self.patience.long_quiet - quiet
+            if left <= 0:
+                return found(True)
             what = "empty so far" if entry.status.st_size == 0 else "not complete yet"
-            return found(f"{what}; returned as damaged if nothing comes within {left:.0f} s")
-        if quiet >= self.patience.quiet or nobody_writes(self.disk, entry.path):
-            return found(ready=True)
-        return found("still being copied")
+            return found(False, f"{what}; returned as damaged if nothing comes in {left:.0f} s", look_in=left)
+        left = self.patience.quiet - quiet
+        if left <= 0 or (self.sure and nobody_writes(self.disk, entry.path)):
+            return found(True)
+        return found(False, "still being copied", look_in=left)
+
+
+def _held_back(found: Callable[..., Drop], watched: _Watched, now: float) -> Drop:
+    """A drop that could not be read or moved, until its next try."""
+    alert = watched.refusals >= _ALERT_AFTER
+    return found(False, watched.trouble, alert=alert, blocked=alert, look_in=watched.next_try - now)
 
 
 def _signature(entry: Entry) -> Signature:

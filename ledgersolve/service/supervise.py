@@ -11,6 +11,7 @@ import logging
 import os
 import shutil
 import tempfile
+import threading
 import time
 import zipfile
 from collections.abc import Callable
@@ -21,7 +22,7 @@ from typing import Any
 from ledgersolve.service import answers
 from ledgersolve.service.answers import Former
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.flagged import write_flagged
+from ledgersolve.service.flagged import flagged_workbook
 from ledgersolve.service.layout import Layout, guard
 from ledgersolve.service.names import private_name, show
 from ledgersolve.service.order import Order, Report
@@ -41,13 +42,17 @@ _DELIVERY_TRIES = 40
 _SHOWN = ("job", "title", "outcome", "verdict", "total_cost", "lower_bound", "gap_pct", "seconds", "reason")
 
 
-def supervise(order: Order, disk: Disk | None = None) -> Report:
-    """Do one order; whatever happens comes back as a report."""
+def supervise(order: Order, halt: threading.Event | None = None, disk: Disk | None = None) -> Report:
+    """Do one order; whatever happens comes back as a report.
+
+    ``halt`` ends it at once where supervisor and service are one process; from elsewhere a file
+    ``stop.G`` in the job's folder does.
+    """
     started = time.monotonic()
     root = order.private_root or None
     private = Path(tempfile.mkdtemp(prefix=f"{PRIVATE_PREFIX}{os.getpid()}-", dir=root))
     try:
-        report = _Supervisor(order, disk or Disk(), private).run()
+        report = _Supervisor(order, disk or Disk(), private, halt or threading.Event()).run()
     finally:
         shutil.rmtree(private, ignore_errors=True)
     return replace(report, seconds=time.monotonic() - started)
@@ -60,6 +65,7 @@ class _Supervisor:
     order: Order
     disk: Disk
     private: Path
+    halt: threading.Event
     _told: float = -1e9
     _asked: float = -1e9
     _layout: Layout = field(init=False)
@@ -171,7 +177,8 @@ class _Supervisor:
 
     def _flag(self, outcome: str, headline: str, sentences: list[str]) -> Path:
         target = self.private / f"flagged {outcome}.xlsx"
-        write_flagged(target, show(self.order.input.name), headline, sentences, self.order.job)
+        name = show(self.order.input.name)
+        target.write_bytes(flagged_workbook(name, headline, sentences, self.order.job))
         return target
 
     # ---- asking and telling through the job's folder: works from any machine -----------------------
@@ -179,6 +186,8 @@ class _Supervisor:
     def _must_stop(self) -> bool:
         """Whether somebody asked to stop, took the job over or finished it; a share out of reach does not."""
         now = time.monotonic()
+        if self.halt.is_set():
+            return True
         if now - self._asked < _STOP_SECONDS:
             return False
         self._asked = now
@@ -245,7 +254,7 @@ class _Supervisor:
     def _waited_in_vain(self, attempt: int) -> bool:
         until = time.monotonic() + _DELIVERY_WAITS[min(attempt, len(_DELIVERY_WAITS) - 1)]
         while time.monotonic() < until:
-            time.sleep(0.2)
+            self.halt.wait(0.2)
             if self._must_stop():
                 return True
         return False

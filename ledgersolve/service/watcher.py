@@ -1,0 +1,330 @@
+"""One watch process: looks, takes, starts, hands on, and tells; each step may fail and is taken again."""
+
+import logging
+import math
+import secrets
+import time
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from typing import Any
+
+from ledgersolve import __version__
+from ledgersolve.service.board import boot, now_words, stale_after, write_board
+from ledgersolve.service.desk import Desk
+from ledgersolve.service.disk import Disk
+from ledgersolve.service.doorbell import Doorbell
+from ledgersolve.service.fair import Line, Turns, Waiting
+from ledgersolve.service.holder import describe
+from ledgersolve.service.hours import is_paused, local_now, quiet_until
+from ledgersolve.service.keeper import Keeper
+from ledgersolve.service.layout import Layout, discard, guard
+from ledgersolve.service.leases import LeaseWatch
+from ledgersolve.service.names import is_conflict_copy, show
+from ledgersolve.service.settle import Drop, Settler
+from ledgersolve.service.states import JobView, State
+
+logger = logging.getLogger(__name__)
+_SCAN_SHARE = 5.0
+"""After a scan of s seconds there is none for five times s: scanning stays a sixth of the time."""
+_LONG_LINE = 50
+"""With so many in the queue nothing is gained by looking before the next scan is due."""
+_PROBE_SECONDS = 60.0
+_BOARD_SECONDS = 15.0
+_SHORTEST_WAIT, _BUSY_WAIT = 0.02, 2.0
+_MOST_SHOWN = 200
+
+
+@dataclass(frozen=True)
+class Pace:
+    """How often things are done, in seconds, and what must be free; see ``ServiceSettings``."""
+
+    workers: int = 2
+    scan: float = 5.0
+    beat: float = 5.0
+    board: float = 2.0
+    free_bytes: int = 500 << 20
+    quiet_hours: tuple[str, ...] = ()
+    time_zone: str = ""
+
+
+@dataclass
+class Watcher:
+    """The parts of one watch process, and their state between steps."""
+
+    layout: Layout
+    disk: Disk
+    mark: str
+    pace: Pace
+    settler: Settler
+    leases: LeaseWatch
+    turns: Turns
+    desk: Desk
+    keeper: Keeper
+    bell: Doorbell
+    clock: Callable[[], float] = time.monotonic
+    stopping: bool = False
+    state: str = "starting"
+    why: str = ""
+    drops: list[Drop] = field(default_factory=list)
+    line: Line | None = None
+    scans: int = 0
+    left_in_jobs: int = 0
+    _beacon: str = field(default_factory=lambda: secrets.token_hex(8))
+    _last_scan: tuple[str, float, float] | None = None
+    _scan_took: float = 0.0
+    _next_scan: float = -math.inf
+    _next_beat: float = -math.inf
+    _told: float = -math.inf
+    _told_state: str = ""
+    _news: bool = False
+    _next_probe: float = -math.inf
+    _probe_trouble: str = ""
+
+    # ---- one step ----------------------------------------------------------------------------------
+
+    def step(self) -> None:
+        """Do what is due now. A share that is away or not the same one suspends everything."""
+        try:
+            guard(self.layout, self.disk, self.mark)
+            self._step_on_the_share()
+        except OSError as error:
+            self._suspend(error)
+
+    def _step_on_the_share(self) -> None:
+        if self.state == "suspended":
+            logger.info("the share is back")
+            self._next_scan = -math.inf
+        self.bell.keep_alive()
+        now = self.clock()
+        if now >= self._next_beat:
+            self._next_beat = now + self.pace.beat
+            self.desk.beat()
+        changed = self.desk.conclude()
+        if now >= self._next_scan:
+            self._scan()
+        self._start_more()
+        self.keeper.step()
+        self._tell(changed)
+
+    def _suspend(self, error: OSError) -> None:
+        if self.state != "suspended":
+            logger.error("suspended: %s", error)
+        self.state, self.why = "suspended", str(error)
+        self.line = None
+        self.settler.forget()
+        self.leases.forget()
+        self.keeper.forget()
+        self.bell.silence()
+        self._next_scan = self._next_beat = self.clock() + self.pace.scan
+
+    def wait(self) -> None:
+        """Sleep until something is due, somebody rings, or a job ends."""
+        due = min(self._next_scan, self._next_beat)
+        if self.desk.trays:
+            due = min(due, self.clock() + _BUSY_WAIT)
+        news = self.bell.wait(min(self.pace.scan, max(_SHORTEST_WAIT, due - self.clock())))
+        if news and self.state != "suspended" and (self.line is None or len(self.line) < _LONG_LINE):
+            earliest = -math.inf if self._last_scan is None else self._last_scan[1]
+            self._next_scan = min(self._next_scan, earliest + _SCAN_SHARE * self._scan_took)
+            time.sleep(_SHORTEST_WAIT)  # one burst of events is one piece of news
+
+    # ---- looking -----------------------------------------------------------------------------------
+
+    def _scan(self) -> None:
+        started = self.clock()
+        self.drops = self.settler.look()
+        waiting = [Waiting(drop.owner, drop.size, drop.since, drop) for drop in self.drops if drop.ready]
+        waiting += self._look_at_jobs()
+        guard(self.layout, self.disk, self.mark)
+        self.line = self.turns.line_up(waiting)
+        self.state, self.why = self._intake()
+        ended = self.clock()
+        self.scans += 1
+        self._scan_took = ended - started
+        self._last_scan = (now_words(), ended, time.time())
+        soonest = min((drop.look_in for drop in self.drops if not drop.ready), default=math.inf)
+        pause = max(_SHORTEST_WAIT, _SCAN_SHARE * self._scan_took, min(self.pace.scan, soonest))
+        self._next_scan = ended + pause
+
+    def _look_at_jobs(self) -> list[Waiting]:
+        """Jobs that no process has in hand: claimed and left, answered and not handed on."""
+        waiting = []
+        self.left_in_jobs = 0
+        jobs = self.disk.names(self.layout.jobs)
+        self.leases.forget_others(set(jobs))
+        self.desk.forget_others(set(jobs))
+        for job in jobs:
+            if job in self.desk.trays:
+                continue
+            view = self.desk.protocol.view(job)
+            if view is None:
+                continue
+            self.left_in_jobs += view.state not in (State.BROKEN, State.EMPTY)
+            if view.state is State.EMPTY:
+                self.keeper.empty(job)
+            elif view.state is State.BROKEN:
+                self._alert_broken(view)
+            elif view.reply is not None:
+                if self.desk.may_try(job):
+                    self.desk.hand_on(view)
+            elif view.input is not None and self.leases.left_behind(view) and self.desk.may_try(job):
+                status = self.disk.status(view.input)
+                owner = f"account {status.st_uid}"
+                waiting.append(Waiting(owner, status.st_size, -math.inf, view))
+        return waiting
+
+    def _alert_broken(self, view: JobView) -> None:
+        name = "" if view.input is None else show(view.input.name)
+        if view.job not in self.desk.alerts:
+            logger.critical("job %s: its folder is damaged and is left alone", view.job)
+        why = f"the folder of job {view.job} is damaged (answer or input unreadable); it is left alone"
+        self.desk.alerts[view.job] = {"name": name or view.job, "why": why}
+
+    # ---- taking ------------------------------------------------------------------------------------
+
+    def _intake(self) -> tuple[str, str]:
+        """Whether new work may be started now, and why not."""
+        if is_paused(self.disk, self.layout.folder):
+            return "paused", "There is a file PAUSE in the folder; remove it to go on."
+        until = quiet_until(self.pace.quiet_hours, local_now(self.pace.time_zone))
+        if until is not None:
+            return "quiet hours", f"Nothing new is started before {until:%Y-%m-%d %H:%M}."
+        if self.disk.free_bytes(self.layout.private) < self.pace.free_bytes:
+            need = self.pace.free_bytes / (1 << 20)
+            return "held", f"The disk has less than {need:,.0f} MB free; nothing new is taken in."
+        trouble = self._probe()
+        return ("held", trouble) if trouble else ("at work", "")
+
+    def _probe(self) -> str:
+        """Whether Returned takes files, tried at most once a minute."""
+        now = self.clock()
+        if now >= self._next_probe or self._probe_trouble:
+            self._next_probe = now + _PROBE_SECONDS
+            probe = self.layout.returned / f".{self.layout.new_tmp('probe').name}.tmp"
+            try:
+                self.disk.write_new(probe, b"")
+                self._probe_trouble = ""
+            except OSError as error:
+                self._probe_trouble = f"Returned takes no files ({error.strerror}); nothing new is taken in."
+            discard(self.disk, probe)
+        return self._probe_trouble
+
+    def _start_more(self) -> None:
+        """Fill the free places from the line."""
+        while self.line is not None and self.state == "at work" and not self.stopping:
+            running = self.desk.running()
+            places = self.turns.places(running, self.pace.workers)
+            if places == "none":
+                return
+            chosen = self.line.take(running, small_only=places == "small")
+            if chosen is None:
+                return
+            self._start(chosen)
+
+    def _start(self, chosen: Waiting) -> None:
+        view: JobView | None
+        if isinstance(chosen.item, Drop):
+            if self.disk.free_bytes(self.layout.private) < 5 * chosen.size:
+                self.settler.refused(chosen.item.path, OSError(28, "the disk has too little space for it"))
+                return
+            view = self._claim(chosen.item)
+        else:
+            view = self.desk.protocol.view(chosen.item.job)
+        if view is None or view.reply is not None:
+            return
+        try:
+            self.desk.start(view, chosen.owner)
+        except OSError as error:
+            self.desk.wait_for(view.job, self.desk.settings.retry_seconds)
+            logger.warning("job %s: not started yet (%s)", view.job, error)
+
+    def _claim(self, drop: Drop) -> JobView | None:
+        try:
+            job = self.desk.protocol.claim(drop.path)
+            return None if job is None else self.desk.protocol.view(job)
+        except OSError as error:
+            self.settler.refused(drop.path, error)
+            logger.info("%s is not taken yet (%s)", show(drop.name), error)
+            return None
+
+    # ---- telling -----------------------------------------------------------------------------------
+
+    def _tell(self, changed: bool) -> None:
+        """Write page and sign of life: soon after a change, else now and then."""
+        self._news |= changed or self.state != self._told_state
+        busy = self._news or bool(self.desk.trays)
+        if self.clock() - self._told >= (self.pace.board if busy else _BOARD_SECONDS):
+            self._told, self._told_state, self._news = self.clock(), self.state, False
+            self.write_board()
+
+    def write_board(self) -> None:
+        """Write page and sign of life now; that it fails stops nothing."""
+        beacon = self.layout.hosts / f"{self._beacon}.json"
+        try:
+            write_board(self.layout, self.disk, beacon, self.picture())
+        except OSError as error:
+            logger.info("the status page is not written (%s)", error)
+
+    def picture(self) -> dict[str, Any]:
+        """What this process knows, as plain values."""
+        words, monotonic, unix = self._last_scan or (None, None, None)
+        holder = describe()
+        waiting, count = self._waiting()
+        alerts = [{"name": show(drop.name), "why": drop.why} for drop in self.drops if drop.alert]
+        return {
+            "id": self._beacon,
+            "host": holder["host"],
+            "pid": holder["pid"],
+            "boot": boot(),
+            "version": __version__,
+            "workers": self.pace.workers,
+            "state": self.state,
+            "why": self.why,
+            "last_scan": words,
+            "last_scan_unix": unix,
+            "monotonic": monotonic,
+            "scan_took": round(self._scan_took, 4),
+            "scans": self.scans,
+            "stale_after_seconds": stale_after(self.pace.scan),
+            "waiting": waiting,
+            "waiting_count": count,
+            "running": [{**one, "host": holder["host"]} for one in self.desk.progress()],
+            "returned": self.desk.returned,
+            "alerts": [*alerts[:100], *list(self.desk.alerts.values())[-100:]],
+        }
+
+    def _waiting(self) -> tuple[list[dict[str, str]], int]:
+        """The first of what waits, with the reason, and how many there are."""
+        line = self.line.in_order() if self.line is not None else []
+        position = {id(one.item): number for number, one in enumerate(line, 1)}
+        waits = [drop for drop in self.drops if not drop.alert and (not drop.ready or id(drop) in position)]
+        waits.sort(key=lambda drop: position.get(id(drop), 0))
+        shown = [
+            {"name": show(drop.name), "owner": show(drop.owner), "why": _why(drop, position.get(id(drop)))}
+            for drop in waits[:_MOST_SHOWN]
+        ]
+        return shown, len(waits)
+
+    # ---- ending ------------------------------------------------------------------------------------
+
+    def is_empty(self) -> bool:
+        """Whether nothing is left that this process could still answer."""
+        return (
+            self._last_scan is not None
+            and not self.desk.trays
+            and not self.left_in_jobs
+            and all(drop.blocked for drop in self.drops)
+        )
+
+    def leave(self, seconds: float = 10.0) -> None:
+        """Stop what runs, give leases back, and say so on the page."""
+        self.stopping = True
+        self.desk.stop(seconds)
+        self.bell.silence()
+        self.state, self.why = "stopped", "The service was stopped in good order."
+        self.write_board()
+
+
+def _why(drop: Drop, position: int | None) -> str:
+    words = drop.why if position is None else f"number {position} in the queue"
+    return f"{words}; looks like a sync program's conflict copy" if is_conflict_copy(drop.name) else words
