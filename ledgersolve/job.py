@@ -70,6 +70,7 @@ def _handle_path(
 def handle(
     source: Path, into: Path, *, solve: bool = True, progress: ProgressSink | None = None,
     cancelled: Callable[[], bool] | None = None, shown_name: str | None = None,
+    limit_known: Callable[[float], None] | None = None,
 ) -> Answer:
     """Answer one workbook; trouble of any kind becomes an answer, never an exception.
 
@@ -85,10 +86,12 @@ def handle(
         See ``Limits``.
     shown_name
         The name that the analyst knows the file by, where ``source`` is a claimed copy.
+    limit_known
+        Told the workbook's own time limit in seconds before solving starts.
     """
     run = _Run(source, into, shown_name or source.name)
     try:
-        return run.answered(solve, progress, cancelled)
+        return run.answered(solve, progress, cancelled, limit_known)
     except Exception as trouble:
         logger.exception("%s failed", run.shown_name)
         return run.failed(trouble)
@@ -107,7 +110,8 @@ class _Run:
     sha256: str = ""
 
     def answered(
-        self, solve: bool, progress: ProgressSink | None, cancelled: Callable[[], bool] | None
+        self, solve: bool, progress: ProgressSink | None, cancelled: Callable[[], bool] | None,
+        limit_known: Callable[[float], None] | None = None,
     ) -> Answer:
         try:
             with self.step("read"):
@@ -129,6 +133,8 @@ class _Run:
             limits = replace(limits, progress=progress)
         if cancelled is not None:
             limits = replace(limits, cancelled=cancelled)
+        if limit_known is not None:
+            limit_known(limits.seconds)
         with self.step("solve"):
             worked = work(self.reading, limits)
         return self.solved(self.reading, worked)
@@ -163,10 +169,9 @@ class _Run:
 
     def failed(self, trouble: Exception) -> Answer:
         """Say so in a copy where that is possible; the original is never touched."""
-        reason = str(trouble) if isinstance(trouble, AuditError) else (
-            "The program met a fault of its own. Nothing in the workbook needs to be mended for it; "
-            "please hand the workbook to whoever looks after LedgerSolve."
-        )
+        reason = str(trouble) if isinstance(trouble, AuditError) else _FAULT
+        if isinstance(trouble, MemoryError):
+            reason = _TOO_BIG
         returned = None
         try:
             returned = self.write_failure(reason)
@@ -222,6 +227,14 @@ class _Run:
             self.seconds[name] = self.seconds.get(name, 0.0) + time.monotonic() - began
 
 
+_FAULT = (
+    "The program met a fault of its own. Nothing in the workbook needs to be mended for it; "
+    "please hand the workbook to whoever looks after LedgerSolve."
+)
+_TOO_BIG = (
+    "The workbook is too big for this machine: it needs more memory than one job may use. Leave out lanes, "
+    "customers or periods that cannot matter, or ask the administrator for more memory."
+)
 _RECORDED = (
     ("OR-Tools", "ortools"), ("NumPy", "numpy"), ("pydantic", "pydantic"), ("XlsxWriter", "xlsxwriter"),
 )
