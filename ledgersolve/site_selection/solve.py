@@ -8,6 +8,7 @@ from ledgersolve.site_selection.audit import audit
 from ledgersolve.site_selection.case import Case
 from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.plan import Plan
+from ledgersolve.site_selection.uncapacitated import solve_uncapacitated
 from ledgersolve.site_selection.whole import solve_whole
 
 
@@ -27,6 +28,9 @@ def solve(case: Case, limits: Limits) -> Solved[Plan]:
 
 
 def _run(lanes: Lanes, clock: Clock) -> Answer:
+    """Hand the case to the engine for it."""
+    if not lanes.capacitated and lanes.near is None:
+        return solve_uncapacitated(lanes, clock)
     answer = solve_whole(lanes, clock)
     clock.end_stage("whole model")
     return answer
