@@ -116,7 +116,8 @@ def _work_sites(reading: Reading, case: SiteCase, budget: Budget) -> Worked:
     variants = _variants(case, budget, reading.run.questions_share if reading.run.questions else 0.0)
     answers = ()
     if reading.run.questions:
-        answers = answer_site_questions(case, solved, budget.part("questions", budget.left()))
+        answers = answer_site_questions(
+            case, solved, budget.part("questions", budget.left()), None if today is None else today.solved)
     given = SiteReport(reading, case, solved, audit, _NO_FACTS, today, variants, answers)
     return Worked(
         solved,
