@@ -132,12 +132,10 @@ class _Book:
     def _stock_checks(self) -> Iterator[Check]:
         case, stock = self.case, self.plan.stock
         safety = np.repeat(case.safety_stock[:, None], case.t, axis=1)
-        if case.t:
-            safety[:, -1] = 0.0
+        safety[:, -1:] = -np.inf
         yield self._items("Safety stock", safety - stock, safety, stock)
-        closing = np.zeros_like(stock)
-        if case.t:
-            closing[:, -1] = case.closing_stock
+        closing = np.full_like(stock, -np.inf)
+        closing[:, -1:] = case.closing_stock[:, None]
         yield self._items("Closing stock", closing - stock, closing, stock)
         most = np.repeat(case.most_stock[:, None], case.t, axis=1)
         yield self._items("Most stock", stock - most, most, stock)
