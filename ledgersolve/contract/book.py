@@ -196,7 +196,7 @@ def _no_matrix(package: Package, name: str, sheet: MatrixSheet, raw: RawMatrix |
     """Report a matrix without title row or figures, or one that stands the wrong way round."""
     expected = (f"codes of {sheet.rows_of} down the first column, codes of {sheet.columns_of} "
                 "along the title row, figures between them")
-    if raw is not None:
+    if raw is not None or not any(cell.kind is Kind.NUMBER for cell in package.cells(name)):
         faults.add(name, None, "", Fault("empty matrix", "no figures", expected, f"Fill in {sheet.name}."))
         return
     turned = down and across and read_matrix(

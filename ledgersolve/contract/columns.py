@@ -65,6 +65,8 @@ class Entry:
         The words of a CHOICE.
     refers
         Sheet in whose code column the code has to stand.
+    hint
+        A likely slip where a number is outside the limits, as a question.
     instead
         Matrix sheet that can give the figure in place of a required column.
     """
@@ -82,6 +84,7 @@ class Entry:
     above: bool = False
     choices: tuple[str, ...] = ()
     refers: str = ""
+    hint: str = ""
     instead: str = ""
 
     @property

@@ -2,7 +2,15 @@
 
 from pathlib import PurePath
 
-from ledgersolve.contract import lot_case, lot_sizing, settings, site_case, site_selection
+from ledgersolve.contract import (
+    lot_case,
+    lot_judgement,
+    lot_sizing,
+    settings,
+    site_case,
+    site_judgement,
+    site_selection,
+)
 from ledgersolve.contract.book import Book, find_sheets, missing_sheet, read_sheets, report_sheets
 from ledgersolve.contract.columns import JobContract
 from ledgersolve.contract.faults import Fault, Faults
@@ -72,11 +80,15 @@ def _reading(book: Book, named: Job | None, file_name: str, order: list[str]) ->
     if book.contract.job is Job.SITE_SELECTION:
         data = site_case.build(book, title)
         case = data.case
+        if data.case is not None and data.lanes is not None:
+            site_judgement.judge(book, data.case, data.lanes, data.rows)
         if data.lanes is not None and data.lanes.by_distance:
             road_cost = values.number(site_selection.RATE)
             road_factor = values.number(site_selection.ROAD_FACTOR) or 1.0
     else:
-        case = lot_case.build(book, title)
+        case = lot = lot_case.build(book, title)
+        if lot is not None:
+            lot_judgement.judge(book, lot)
     if case is not None:
         values.values[settings.COMPARE] = case.compare_today
     return Reading(

@@ -31,7 +31,7 @@ SETTINGS = (
     Entry(ROAD_FACTOR, "Road distance over great-circle distance; used for distances from coordinates only.",
           example=1.3, default=1.0, low=1.0, high=100.0),
     Entry("Fewest sites", "Least number of open sites.", Holds.WHOLE, 2),
-    Entry("Most sites", "Largest number of open sites.", Holds.WHOLE, 6, low=1),
+    Entry("Most sites", "Largest number of open sites.", Holds.WHOLE, 6),
     Entry(LONGEST, "Service promise for every customer: no delivery over a longer distance.", example=250,
           unit="distance unit"),
     Entry(SHARE, "At least this share of all demand is served within Distance for share.", example=90,
@@ -46,6 +46,7 @@ SETTINGS = (
           default_words="yes if any Today is yes"),
 )
 
+_SWAPPED = "Are latitude and longitude swapped?"
 _MONEY, _UNITS, _PER_UNIT, _DISTANCE = "money", "units", "money per unit", "distance unit"
 
 SITES_SHEET = ListSheet(
@@ -72,9 +73,9 @@ SITES_SHEET = ListSheet(
         Entry("Group", "Name shared by the sizes of one site, of which at most one opens.", Holds.CODE,
               "Hamburg sizes"),
         Entry("Latitude", "Decimal degrees (WGS 84), north positive.", example=53.55, unit="degrees", low=-90,
-              high=90),
+              high=90, hint=_SWAPPED),
         Entry("Longitude", "Decimal degrees (WGS 84), east positive.", example=9.99, unit="degrees", low=-180,
-              high=180),
+              high=180, hint=_SWAPPED),
     ),
     key=("Site",), required=True,
 )
@@ -91,9 +92,9 @@ CUSTOMERS_SHEET = ListSheet(
         Entry("Single source", "yes: served from one site only.", Holds.YES_NO, "no",
               default_words="the setting"),
         Entry("Latitude", "Decimal degrees (WGS 84), north positive.", example=53.08, unit="degrees", low=-90,
-              high=90),
+              high=90, hint=_SWAPPED),
         Entry("Longitude", "Decimal degrees (WGS 84), east positive.", example=8.8, unit="degrees", low=-180,
-              high=180),
+              high=180, hint=_SWAPPED),
     ),
     key=("Customer",), required=True,
 )
@@ -135,7 +136,7 @@ VARIANTS_SHEET = ListSheet(
         Entry("Lane cost factor", "All lane costs times this.", example=1.15, default=1.0, high=1e6),
         Entry("Fixed cost factor", "All fixed costs times this.", example=1, default=1.0, high=1e6),
         Entry("Fewest sites", "Least number of open sites.", Holds.WHOLE, 2, default_words="as in Settings"),
-        Entry("Most sites", "Largest number of open sites.", Holds.WHOLE, 4, low=1,
+        Entry("Most sites", "Largest number of open sites.", Holds.WHOLE, 4,
               default_words="as in Settings"),
         Entry(LONGEST, "Service promise for every customer without one of its own.", example=200,
               unit=_DISTANCE,

@@ -208,9 +208,9 @@ def limit_fault(entry: Entry, value: float) -> Fault | None:
     if value < 0 <= entry.low:
         return _number_fault(entry, "negative number", found, "Type the figure without a minus sign.")
     if value < entry.low or (entry.above and value == entry.low):
-        return _number_fault(entry, "number too small", found, f"Type {entry.expected()}.")
+        return _number_fault(entry, "number too small", found, entry.hint or f"Type {entry.expected()}.")
     if value > entry.high:
-        return _number_fault(entry, "number too large", found, f"Type {entry.expected()}.")
+        return _number_fault(entry, "number too large", found, entry.hint or f"Type {entry.expected()}.")
     if entry.holds is Holds.WHOLE and value != int(value):
         return _number_fault(entry, "whole number expected", found, "Round it up or down.")
     return None
