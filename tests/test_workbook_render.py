@@ -8,7 +8,8 @@ from pathlib import Path
 import openpyxl
 import pytest
 
-from ledgersolve.workbook.render import CUT_MARK, MOST_TEXT, clean_text, render
+from ledgersolve.workbook.cleaning import CUT_MARK, MOST_TEXT, clean_text
+from ledgersolve.workbook.render import render
 from ledgersolve.workbook.sheets import Area, Chart, LiveFormat, ResultSheet, RowGroup, Series, Style
 
 

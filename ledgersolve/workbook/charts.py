@@ -5,6 +5,7 @@ from typing import Any
 import xlsxwriter
 from xlsxwriter.worksheet import Worksheet
 
+from ledgersolve.workbook.cleaning import clean_text
 from ledgersolve.workbook.sheets import Area, Chart, Series
 
 _KINDS: dict[str, dict[str, str]] = {
@@ -45,11 +46,14 @@ def _place(area: Area) -> list[object]:
 
 def _base(series: Series) -> dict[str, Any]:
     given: dict[str, Any] = {
-        "name": series.name, "categories": _place(series.categories), "values": _place(series.values),
+        "name": clean_text(series.name), "categories": _place(series.categories), "values": _place(series.values),
     }
     if series.secondary:
         given["y2_axis"] = True
-    if series.labels:
+    if series.point_labels:
+        words = [{"value": clean_text(label)} for label in series.point_labels]
+        given["data_labels"] = {"value": True, "custom": words, "position": "right", "font": _FONT | {"bold": True}}
+    elif series.labels:
         given["data_labels"] = {"value": True, "font": _FONT}
     return given
 
@@ -102,7 +106,7 @@ def _marker(series: Series) -> dict[str, Any]:
 
 def _dress(drawn: Any, chart: Chart) -> None:
     drawn.set_title({
-        "name": chart.title, "overlay": False, "layout": None,
+        "name": clean_text(chart.title), "overlay": False, "layout": None,
         "name_font": {"name": "Arial", "size": 11, "bold": True, "color": _INK},
     })
     categories = _axis(chart.x_title, chart.x_limits, "", chart)

@@ -5,7 +5,6 @@ returned workbook itself.
 """
 
 import math
-import re
 from collections.abc import Sequence
 from datetime import datetime
 from pathlib import Path
@@ -16,16 +15,12 @@ from xlsxwriter.format import Format
 from xlsxwriter.worksheet import CellFormulaTuple, Worksheet
 
 from ledgersolve.workbook.charts import insert_chart
+from ledgersolve.workbook.cleaning import clean_text
 from ledgersolve.workbook.sheets import ResultSheet, Style, Written
 
 FONT = "Arial"
 MOST_ROWS, MOST_COLUMNS = 1_048_576, 16_384
-MOST_TEXT = 32_767
 MOST_LINKS = 65_000
-CUT_MARK = " [... cut here: longer than a cell can hold]"
-
-_NOT_IN_XML = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f-\x84\x86-\x9f\ufffe\uffff]")
-_LONE_SURROGATE = re.compile("[\ud800-\udfff]")
 _LIKE_A_FORMULA = ("=", "+", "-", "@", "\t")
 
 
@@ -121,22 +116,6 @@ def render(sheets: Sequence[ResultSheet], target: Path | BinaryIO, created: date
         for chart in sheet.charts:
             insert_chart(book, worksheet, chart)
     book.close()
-
-
-def clean_text(text: str) -> str:
-    """Text that a cell can hold: no control characters, no half characters, at most 32,767 long.
-
-    Length counts UTF-16 units, as the file format does; longer text ends in a visible mark.
-    """
-    plain = text.replace("\r\n", "\n").replace("\r", "\n")
-    plain = _LONE_SURROGATE.sub("�", _NOT_IN_XML.sub("", plain))
-    if len(plain) * 2 <= MOST_TEXT:
-        return plain
-    units = plain.encode("utf-16-le")
-    if len(units) // 2 <= MOST_TEXT:
-        return plain
-    kept = units[: 2 * (MOST_TEXT - len(CUT_MARK))].decode("utf-16-le", errors="ignore")
-    return kept + CUT_MARK
 
 
 def _check_names(sheets: Sequence[ResultSheet]) -> None:

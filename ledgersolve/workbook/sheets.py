@@ -74,6 +74,7 @@ class Series:
     dash: str = ""
     labels: bool = False
     kind: str = ""  # "line" over a column chart; "" = the chart's own kind
+    point_labels: tuple[str, ...] = ()  # own words at the points, in place of their values
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,157 @@
+"""A lower bound a reader can check in a sheet: prices per customer, one gain a site, a few charges, one sum.
+
+For any price v_i a customer's demand (at most its unmet cost) every plan costs at least
+
+    sum_i v_i + sum_j term_j + constants,
+    term_j = fixed_j + charge_j - capacity_j w_j - gain_j   (at most 0 unless the site must open),
+    gain_j = sum_i max(0, v_i - cost_ij - w_j demand_i),
+
+by weak duality of the problem whose assignment rows are relaxed (Cornuejols, Fisher & Nemhauser 1977); the
+price w_j of a site's capacity makes its knapsack a sum of single terms without loss (the knapsack's own dual),
+and charges stand for rules that tie sites together: counts, groups, capacity for all demand. Any non-negative
+charges keep the bound valid; the ones chosen here make it as high as these rules alone allow.
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
+from ledgersolve.site_selection.lanes import Lanes
+
+
+@dataclass(frozen=True)
+class Certificate:
+    """The checkable bound of a case with m sites and n customers.
+
+    Parameters
+    ----------
+    price
+        Shape (n,): money for the customer's whole demand; 0 where nothing is needed.
+    usable
+        Shape (m, n): lanes that count.
+    volume_price
+        Shape (m,): money per unit of the site's capacity.
+    fixed
+        Shape (m,): fixed cost with opening cost, less closing cost saved.
+    gain, charge, term
+        Shape (m,): as in the module's formula; a closed site has 0 everywhere.
+    rules
+        Constants: (what it stands for, amount), closing costs and charges handed back.
+    supply_price, count_charge
+        Money per unit of capacity for the row "capacities cover all demand" (0 = not used), and money per
+        open site for the count of sites (positive: at most, negative: at least).
+    group_charge
+        Shape (m,): charge of the site's group.
+    """
+
+    price: Floats
+    usable: Flags
+    volume_price: Floats
+    fixed: Floats
+    gain: Floats
+    charge: Floats
+    term: Floats
+    rules: tuple[tuple[str, float], ...]
+    supply_price: float
+    count_charge: float
+    group_charge: Floats
+
+    @property
+    def bound(self) -> float:
+        """No plan costs less."""
+        return float(self.price.sum() + self.term.sum() + sum(amount for _, amount in self.rules))
+
+
+def certify(case: Case, lanes: Lanes, prices: Floats) -> Certificate:
+    """Make the certificate of any prices, shape (n,), money for each customer's whole demand."""
+    price = np.where(lanes.needs, np.minimum(prices, lanes.unmet_cost), 0.0)
+    closed = lanes.rule == CLOSED
+    usable = np.isfinite(lanes.cost) & lanes.needs & ~closed[:, None]
+    capacity = np.where(np.isfinite(lanes.capacity), lanes.capacity, 0.0)
+    volume_price, gain = np.zeros(case.m), np.zeros(case.m)
+    for j in np.flatnonzero(~closed).tolist():
+        own = usable[j]
+        surplus = price[own] - lanes.cost[j, own]
+        demand = case.demand[own]
+        if np.isfinite(lanes.capacity[j]):
+            volume_price[j] = _volume_price(surplus, demand, lanes.capacity[j])
+        gain[j] = np.maximum(surplus - volume_price[j] * demand, 0.0).sum()
+    reduced = lanes.site_cost - capacity * volume_price - gain
+    supply, count, group = _charges(case, lanes, reduced)
+    every = np.where(np.isfinite(case.capacity), case.capacity, 0.0)
+    charge = np.where(closed, 0.0, group + count - supply * every)
+    balance = reduced + charge
+    term = np.where(closed, 0.0, np.where(lanes.rule == OPEN, balance, np.minimum(balance, 0.0)))
+    rules = _rules(case, lanes, supply, count, group)
+    return Certificate(price, usable, volume_price, lanes.site_cost, gain, charge, term, rules, supply, count, group)
+
+
+def _volume_price(surplus: Floats, demand: Floats, capacity: float) -> float:
+    """Best price of a unit of capacity: surplus per unit of the first delivery that no longer fits whole."""
+    worth = (surplus > 0) & (demand > 0)
+    ratio = surplus[worth] / demand[worth]
+    order = np.argsort(-ratio)
+    filled = np.cumsum(demand[worth][order])
+    beyond = int(np.searchsorted(filled, capacity * (1 + 1e-12), side="right"))
+    return float(ratio[order[beyond]]) if beyond < order.size else 0.0
+
+
+def _charges(case: Case, lanes: Lanes, reduced: Floats) -> tuple[float, float, Floats]:
+    """Supply price, count charge and group charges, found one after the other."""
+    supply = _supply_price(case, lanes, reduced)
+    balance = reduced - supply * np.where(np.isfinite(case.capacity), case.capacity, 0.0)
+    group = _group_charge(lanes, balance)
+    return supply, _count_charge(lanes, balance + group), group
+
+
+def _supply_price(case: Case, lanes: Lanes, reduced: Floats) -> float:
+    """Price at which the best sites' capacities just cover all demand (a knapsack's own dual)."""
+    needed = float(case.demand[lanes.needs].sum())
+    if not np.isfinite(case.capacity).all() or np.isfinite(lanes.unmet_cost).any() or needed <= 0:
+        return 0.0
+    needed -= float(case.capacity[lanes.rule == OPEN].sum())
+    free = (lanes.rule != OPEN) & (lanes.rule != CLOSED) & (case.capacity > 0)
+    ratio = reduced[free] / case.capacity[free]
+    order = np.argsort(ratio)
+    covered = np.cumsum(case.capacity[free][order])
+    place = int(np.searchsorted(covered, needed * (1 - 1e-12), side="left"))
+    return max(0.0, float(ratio[order[place]])) if needed > 0 and place < order.size else 0.0
+
+
+def _group_charge(lanes: Lanes, balance: Floats) -> Floats:
+    """Charge of each group: what makes all but its best site not worth opening."""
+    charge = np.zeros(balance.size)
+    for number in np.unique(lanes.group[lanes.group >= 0]).tolist():
+        members = np.flatnonzero((lanes.group == number) & (lanes.rule != CLOSED))
+        if members.size > 1 and not (lanes.rule[members] == OPEN).any():
+            charge[members] = max(0.0, -float(np.partition(balance[members], 1)[1]))
+    return charge
+
+
+def _count_charge(lanes: Lanes, balance: Floats) -> float:
+    """Charge per open site at which the allowed number of sites is worth opening."""
+    forced = int((lanes.rule == OPEN).sum())
+    ranked = np.sort(balance[(lanes.rule != OPEN) & (lanes.rule != CLOSED)])
+    most, fewest = lanes.most - forced, lanes.fewest - forced
+    if 0 <= most < ranked.size and ranked[most] < 0:
+        return float(-ranked[most])
+    if 0 < fewest <= ranked.size and ranked[fewest - 1] > 0:
+        return float(-ranked[fewest - 1])
+    return 0.0
+
+
+def _rules(case: Case, lanes: Lanes, supply: float, count: float, group: Floats) -> tuple[tuple[str, float], ...]:
+    rows = []
+    if lanes.offset:
+        rows.append(("Closing costs of all sites in use today (a site kept open gives its own back)", lanes.offset))
+    if supply:
+        rows.append(("All demand x price per unit of capacity", supply * float(case.demand[lanes.needs].sum())))
+    if count > 0:
+        rows.append(("Charge per site x most sites, handed back", -count * lanes.most))
+    if count < 0:
+        rows.append(("Charge per site x fewest sites", -count * lanes.fewest))
+    if group.any():
+        total = sum(float(group[lanes.group == number].max()) for number in np.unique(lanes.group[lanes.group >= 0]))
+        rows.append(("Charges of groups, handed back", -total))
+    return tuple(rows)

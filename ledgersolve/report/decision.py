@@ -1,0 +1,257 @@
+"""The Decision page: one printed page that a manager reads; what both jobs share of it."""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+from ledgersolve.mip import Verdict
+from ledgersolve.mip.run import Solved
+from ledgersolve.report import style
+from ledgersolve.report.inputs import RunFacts, Workbook
+from ledgersolve.report.ledger import Ledger
+from ledgersolve.report.run_record import RECORDED_COST
+from ledgersolve.report.tables import FOOTER, Figure, paragraph, quoted, text_height
+from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series, Style
+
+LEFT, RIGHT, LAST = 0, 4, 6
+WIDTHS = (31.0, 15.0, 15.0, 2.0, 31.0, 18.0, 10.0)
+LINE = 15.0
+CHART_ROWS = 15
+
+KICKER = Style(size=9.0, bold=True, colour=style.RUST)
+HEADLINE = Style(size=15.0, bold=True, colour=style.INK, wrap=True, valign="top")
+TILE_LABEL = Style(size=9.0, colour=style.QUIET, fill=style.PALE, top=2, border_colour=style.PETROL, indent=1)
+TILE_NUMBER = Style(size=16.0, bold=True, colour=style.PETROL, fill=style.PALE, align="left", indent=1)
+TILE_NOTE = Style(size=8.0, colour=style.QUIET, fill=style.PALE, wrap=True, valign="top", indent=1)
+WARNING = Style(bold=True, colour=style.ALARM, wrap=True)
+
+Tile = tuple[str, Scalar, str, str]
+"""Label, value, formula (with equals sign, or ""), note."""
+
+
+@dataclass(frozen=True)
+class Today:
+    """A row of the table against today: label, today's figure, the plan's, number format, formula of the plan's."""
+
+    label: str
+    today: Scalar
+    plan: Scalar
+    number_format: str
+    formula: str = ""
+
+
+@dataclass(frozen=True)
+class Decision:
+    """What stands on the page. Sentences are whole; lists are one point each."""
+
+    kicker: str
+    title: str
+    headline: str
+    second: str
+    tiles: Sequence[Tile]
+    changed: str
+    comparison: Sequence[Today]
+    comparison_title: str
+    parts: Sequence[tuple[str, Figure]]
+    total: Figure
+    changes: Sequence[str]
+    sure: Sequence[str]
+    binding: Sequence[str]
+    check: Sequence[str]
+    glossary: Sequence[tuple[str, str]]
+    provenance: str
+    currency: str
+    per: str
+
+
+def write_decision(name: str, page: Decision, picture: Chart | None) -> ResultSheet:
+    """Write the page, left and right columns beside each other, everything on one sheet of paper.
+
+    ``picture`` stands on the left, the chart of the cost parts on the right; alone, the chart takes both.
+    """
+    sheet = ResultSheet(name, tab_colour=style.RUST, pages_wide=1, pages_tall=1)
+    sheet.widths = dict(enumerate(WIDTHS))
+    row = _head(sheet, page)
+    row = _tiles(sheet, page, row)
+    parts_row = row + 1
+    row = _tables(sheet, page, row)
+    bars = parts_chart(name, parts_row, len(page.parts), page.currency, page.per)
+    row = _charts(sheet, [bars] if picture is None else [picture, bars], row)
+    for left, right in ((("What changes", page.changes), ("How sure this is", page.sure)),
+                        (("What limits the plan", page.binding), ("Check before you act", page.check))):
+        row = _points(sheet, row, left, right)
+    row = _foot(sheet, page, row)
+    sheet.print_area = (0, 0, row - 1, LAST)
+    sheet.footer = FOOTER
+    return sheet
+
+
+def _head(sheet: ResultSheet, page: Decision) -> int:
+    sheet.put(0, LEFT, page.kicker.upper(), KICKER)
+    sheet.put(1, LEFT, page.title, replace(style.TITLE, size=13.0, colour=style.QUIET))
+    sheet.heights |= {0: 14.0, 1: 20.0}
+    paragraph(sheet, 2, LEFT, LAST, page.headline, HEADLINE)
+    row = 3
+    if page.second:
+        paragraph(sheet, row, LEFT, LAST, page.second, replace(style.WRAPPED, size=11.0))
+        row += 1
+    return row
+
+
+def _tiles(sheet: ResultSheet, page: Decision, row: int) -> int:
+    sheet.heights[row] = 6.0
+    places = ((0, 0), (1, 2), (4, 4), (5, 6))
+    for (first, last), (label, value, formula, note) in zip(places, page.tiles, strict=True):
+        number = isinstance(value, int | float)
+        look = replace(TILE_NUMBER, number_format=style.money_format(page.currency) if number else "",
+                       size=16.0 if number else 12.0, wrap=not number)
+        for line, (what, shown, how) in enumerate(((label, TILE_LABEL, ""), (value, look, formula), (note, TILE_NOTE, ""))):
+            sheet.put(row + 1 + line, first, what, shown, formula=how)
+            if last > first:
+                sheet.put(row + 1 + line, last, None, shown)
+                sheet.merges.append((row + 1 + line, first, row + 1 + line, last))
+    sheet.heights |= {row + 1: 15.0, row + 2: 26.0, row + 3: 24.0}
+    formula = page.changed
+    sheet.put(row + 4, LEFT, "", WARNING, formula=formula)
+    sheet.merges.append((row + 4, LEFT, row + 4, LAST))
+    sheet.heights[row + 4] = 12.0
+    return row + 5
+
+
+def _tables(sheet: ResultSheet, page: Decision, row: int) -> int:
+    """Against today on the left, cost parts on the right."""
+    left, right = _comparison(sheet, page, row), _parts(sheet, page, row)
+    return max(left, right) + 1
+
+
+def _comparison(sheet: ResultSheet, page: Decision, row: int) -> int:
+    for column, title in enumerate((page.comparison_title, "Today", "This plan")):
+        sheet.put(row, column, title, style.HEADER if column == 0 else style.HEADER_RIGHT)
+    for line in page.comparison:
+        row += 1
+        look = Style(bottom=1, border_colour="D5DBE1")
+        figures = replace(look, align="right", number_format=line.number_format)
+        sheet.put(row, 0, line.label, look)
+        sheet.put(row, 1, line.today, figures)
+        sheet.put(row, 2, line.plan, replace(figures, bold=True), formula=line.formula)
+    return row + 1
+
+
+def _parts(sheet: ResultSheet, page: Decision, row: int) -> int:
+    titles = ("Cost by part", f"{page.currency}{page.per}", "Part (%)")
+    for column, title in enumerate(titles, start=RIGHT):
+        sheet.put(row, column, title, style.HEADER if column == RIGHT else style.HEADER_RIGHT)
+    total_row = row + 1 + len(page.parts)
+    money = style.money_format(page.currency)
+    total = page.total.value
+    for place, (label, figure) in enumerate(page.parts, start=row + 1):
+        look = Style(bottom=1, border_colour="D5DBE1")
+        _part_row(sheet, place, total_row, label, figure, total, (look, money))
+    _part_row(sheet, total_row, total_row, "Cost of the plan", page.total, total, (style.TOTAL, money))
+    return total_row + 1
+
+
+def _part_row(sheet: ResultSheet, row: int, total_row: int, label: str, figure: Figure, total: float,
+              looks: tuple[Style, str]) -> None:
+    look, money = looks
+    sheet.put(row, RIGHT, label, look)
+    sheet.put(row, RIGHT + 1, figure.value, replace(look, align="right", number_format=money), formula=figure.written)
+    share = figure.value / total if total else None
+    formula = f"=F{row + 1}/F${total_row + 1}" if total else ""
+    sheet.put(row, RIGHT + 2, share, replace(look, align="right", number_format=style.PERCENT), formula=formula)
+
+
+def parts_chart(name: str, row: int, count: int, currency: str, per: str) -> Chart:
+    """Bar chart of the cost parts; ``row`` is the first part's row (from 0)."""
+    series = Series("Cost", Area(name, row, RIGHT, row + count - 1, RIGHT),
+                    Area(name, row, RIGHT + 1, row + count - 1, RIGHT + 1), style.PETROL)
+    return Chart("bar", "Cost by part", (series,), 0, RIGHT, y_title=f"{currency}{per}", number_format="#,##0", legend="",
+                 description="Bars of the cost parts that stand in the table above")
+
+
+def _charts(sheet: ResultSheet, charts: Sequence[Chart], row: int) -> int:
+    """Two charts beside each other, or one over the whole width."""
+    widths = [_pixels(LEFT, 3), _pixels(RIGHT, LAST)] if len(charts) > 1 else [_pixels(LEFT, LAST)]
+    for chart, column, width in zip(charts, (LEFT, RIGHT), widths, strict=False):
+        sheet.charts.append(replace(chart, row=row, column=column, width=width - 8, height=CHART_ROWS * 20 - 8))
+    for place in range(row, row + CHART_ROWS):
+        sheet.heights[place] = LINE
+    return row + CHART_ROWS
+
+
+def _pixels(first: int, last: int) -> int:
+    return int(sum(7 * WIDTHS[column] + 5 for column in range(first, last + 1)))
+
+
+def _points(sheet: ResultSheet, row: int, left: tuple[str, Sequence[str]], right: tuple[str, Sequence[str]]) -> int:
+    """Two lists beside each other, each one block of text of the same height."""
+    blocks = ((LEFT, 2, left), (RIGHT, LAST, right))
+    texts = [("\n".join(f"\u2022 {point}" for point in points)) for _, _, (_, points) in blocks]
+    tallest = 0.0
+    for (first, last, (title, _)), words in zip(blocks, texts, strict=True):
+        for column in range(first, last + 1):
+            sheet.put(row, column, title if column == first else None, style.SECTION)
+        wide = sum(WIDTHS[first:last + 1])
+        tallest = max(tallest, text_height(words, wide, 9.0))
+        sheet.put(row + 1, first, words, replace(style.WRAPPED, size=9.0))
+        sheet.merges.append((row + 1, first, row + 1, last))
+    sheet.heights |= {row: 20.0, row + 1: tallest + 4.0}
+    return row + 2
+
+
+def _foot(sheet: ResultSheet, page: Decision, row: int) -> int:
+    for column in range(LAST + 1):
+        sheet.put(row, column, None, replace(style.SMALL, top=1, border_colour=style.PETROL))
+    sheet.heights[row] = 4.0
+    words = "Words used here. " + " ".join(f"{word}: {meaning}." for word, meaning in page.glossary)
+    paragraph(sheet, row + 1, LEFT, LAST, words, style.SMALL_WRAPPED)
+    paragraph(sheet, row + 2, LEFT, LAST, page.provenance, style.SMALL_WRAPPED)
+    return row + 3
+
+
+def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[str]:
+    """Say in words how good the plan is, and the most that could still be saved; never in our favour."""
+    cost, bound = solved.cost, solved.bound
+    if cost is None or bound is None:
+        return ["This is the best plan found. How much a better one could save is not known."]
+    rest = max(0.0, cost - bound)
+    most = style.money_words(rest, currency, "up")
+    if rest <= 1e-9 * max(1.0, abs(cost)):
+        return ["Proven: no plan that keeps the rules of the workbook costs less."]
+    gap = f" ({style.percent_words(rest / cost, 'up')})" if cost > 0 else ""
+    if solved.verdict is Verdict.PROVEN_BEST:
+        return [f"Proven best as far as matters: no other plan that keeps the rules can be cheaper by more than {most}"
+                f"{gap}."]
+    if solved.verdict is Verdict.WITHIN_GAP:
+        return [f"Good enough by your own setting: the search stopped once no plan could be cheaper by more than "
+                f"{style.percent_words(accepted_gap)}. At most {most}{gap} could still be saved."]
+    return [f"The time limit ended the search. This is the best plan found; a better one could save at most {most}{gap}. "
+            "Whether there is one is not known: a higher time limit may tell."]
+
+
+def saving_note(solved: Solved[Any]) -> str:
+    """Small print under the most that could still be saved."""
+    return {
+        Verdict.PROVEN_BEST: "proven: no plan costs less than this amount below the cost",
+        Verdict.WITHIN_GAP: "within the gap that the workbook accepts",
+        Verdict.BEST_FOUND: "the time limit ended the search",
+    }.get(solved.verdict, "")
+
+
+def changed_since(ledger: Ledger, record: str, proof: str) -> str:
+    """Formula that warns when the ledger's total is no longer the cost the plan was solved with.
+
+    ``record`` and ``proof`` are the settled names of the run record and the proof.
+    """
+    solved, tolerance = f"{quoted(record)}!{RECORDED_COST}", f"{quoted(proof)}!$C$4"
+    same = f"ABS({ledger.total}-{solved})<={tolerance}*(1+ABS({solved}))"
+    words = "Inputs or plan cells were changed after the run: costs follow, the decision and its proof do not."
+    return f'=IF({same},"","{words}")'
+
+
+def provenance(workbook: Workbook, run: RunFacts) -> str:
+    """One line that says where the page comes from."""
+    versions = ", ".join(f"{program} {version}" for program, version in run.versions[:1])
+    notices = sum(1 for problem in workbook.problems if not problem.is_error)
+    more = f" {style.counted(notices, 'notice')} and {style.counted(len(workbook.defaults), 'default')} in the run record."
+    return f"Made {run.when:%Y-%m-%d %H:%M} from {run.file_name} by {versions or 'LedgerSolve'}.{more}"

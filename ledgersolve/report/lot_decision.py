@@ -1,0 +1,235 @@
+"""The Decision page of a lot-sizing plan, in words."""
+
+import numpy as np
+
+from ledgersolve.report import names, style
+from ledgersolve.report.checks import ChecksAt
+from ledgersolve.report.decision import (
+    Decision,
+    Tile,
+    Today,
+    changed_since,
+    how_sure,
+    provenance,
+    saving_note,
+    write_decision,
+)
+from ledgersolve.report.ledger import Ledger
+from ledgersolve.report.lot_details import lots_row
+from ledgersolve.report.lot_places import FIRST_PERIOD, LotPlaces
+from ledgersolve.report.tables import Figure
+from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Series
+
+FULL = 0.9995
+GLOSSARY = (
+    ("Cost of the plan", "everything in the ledger, over all periods"),
+    ("Lot", "the quantity of an item made in one period, with one setup"),
+    ("Stock", "what is there at the end of a period"),
+    ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less that "
+     "amount"),
+    ("Load", "time that lots and setups need on a resource"),
+)
+
+
+def lot_decision(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> ResultSheet:
+    """Write the page."""
+    report = at.report
+    amounts = {part.name: part.amount for part in report.audit.parts}
+    page = Decision(
+        kicker="Lot sizing", title=report.workbook.title, headline=_headline(at), second=_against_today(at),
+        tiles=_tiles(at, ledger, checks),
+        changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
+        comparison=_comparison(at, ledger), comparison_title="Against today",
+        parts=[(name, Figure(amounts[name], ledger.part(name))) for name in ledger.parts],
+        total=Figure(report.audit.total, ledger.total), changes=_changes(at), sure=_sure(at), binding=_binding(at),
+        check=_check(at), glossary=GLOSSARY, provenance=provenance(report.workbook, report.run),
+        currency=report.case.currency, per="",
+    )
+    return write_decision(at.name(names.DECISION), page, picture(at))
+
+
+def _money(at: LotPlaces, amount: float, rounding: style.Rounding = "nearest") -> str:
+    return style.money_words(amount, at.report.case.currency, rounding)
+
+
+def _headline(at: LotPlaces) -> str:
+    case, plan = at.report.case, at.report.plan
+    cost = _money(at, at.report.audit.total)
+    span = f"{case.period_unit} {case.periods[0]} to {case.periods[-1]}"
+    items = style.counted(case.n, "item")
+    return f"Make {style.counted(plan.setups, 'lot')} of {items}, {span}. All together that costs {cost}."
+
+
+def _against_today(at: LotPlaces) -> str:
+    today = at.report.today
+    if today is None or today.solved.cost is None or today.audit is None:
+        return ""
+    saved = today.solved.cost - at.report.audit.total
+    part = f" ({style.percent_words(abs(saved) / today.solved.cost, 'down')})" if today.solved.cost else ""
+    lots = "" if today.solved.plan is None else f" with {style.counted(today.solved.plan.setups, 'lot')}"
+    words = f"That is {_money(at, saved, 'down')}{part} less than today's plan{lots} costs." if saved >= 0 else (
+        f"That is {_money(at, -saved, 'up')}{part} more than today's plan{lots} costs on paper.")
+    broken = today.audit.broken()
+    if broken:
+        words += (f" Today's plan breaks {style.counted(len(broken), 'rule')} of this workbook, first of all: "
+                  f"{broken[0].rule.lower()} ({broken[0].subject}).")
+    return words
+
+
+def _tiles(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
+    report, currency = at.report, at.report.case.currency
+    cost, today = report.audit.total, report.today
+    if today is None or today.solved.cost is None:
+        against: Tile = ("Against today", "not asked for", "", "the sheet Today plan is not filled, or not compared")
+    else:
+        saved = today.solved.cost - cost
+        against = ("Saved against today" if saved >= 0 else "Dearer than today", abs(saved), "", currency)
+    if report.solved.bound is None:
+        still: Tile = ("Could still be saved", "not known", "", "no bound is known")
+    else:
+        still = ("Could still be saved, at most", max(0.0, cost - report.solved.bound), "",
+                 f"{currency}; {saving_note(report.solved)}")
+    return [
+        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"over {report.case.t} {report.case.period_unit}s; line "
+         "by line in the ledger"),
+        against, still,
+        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in Proof"),
+    ]
+
+
+def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
+    case, report = at.report.case, at.report
+    before = report.today.solved.plan if report.today is not None else None
+    cost = report.today.solved.cost if report.today is not None else None
+    missing = "not asked for"
+    value = _average_stock_value
+    rows = [
+        Today(f"Cost ({case.currency})", missing if cost is None else cost, report.audit.total,
+              style.money_format(case.currency), f"={ledger.total}"),
+        Today("Lots (number)", missing if before is None else before.setups, report.plan.setups, style.WHOLE,
+              f'=COUNTIF({at.made.whole()},">0")'),
+        Today(f"Stock on average ({_one_unit(at)})", missing if before is None else value(before.stock),
+              value(report.plan.stock), "#,##0.0", f"=SUM({at.stock.whole()})/COLUMNS({at.stock.line(0)})"),
+    ]
+    if at.may_wait:
+        rows.append(Today(f"Late units x {case.period_unit}s", missing if before is None else float(before.late.sum()),
+                          float(report.plan.late.sum()), "#,##0.##"))
+    if at.may_lose:
+        rows.append(Today("Units never delivered", missing if before is None else float(before.lost.sum()),
+                          float(report.plan.lost.sum()), "#,##0.##"))
+    if case.resources:
+        rows.append(Today("Overtime (time units)", missing if before is None else float(before.overtime.sum()),
+                          float(report.plan.overtime.sum()), "#,##0.##"))
+    return rows
+
+
+def _one_unit(at: LotPlaces) -> str:
+    units = set(at.report.case.units)
+    return units.pop() if len(units) == 1 else "units of all items"
+
+
+def _average_stock_value(stock: np.ndarray) -> float:
+    return float(stock.sum()) / max(1, int(stock.shape[1]))
+
+
+def _changes(at: LotPlaces) -> list[str]:
+    case, plan, today = at.report.case, at.report.plan, at.report.today
+    first = [case.item_names[i] for i in np.flatnonzero(plan.setup[:, 0]).tolist()]
+    points = [f"Start now ({case.period_unit} {case.periods[0]}): {style.listed(first, 6)}."]
+    if today is None or today.solved.plan is None:
+        points.append("Today's plan is not given, so the plan is not set against anything.")
+        return points
+    before = today.solved.plan
+    changed = np.flatnonzero((np.abs(before.made - plan.made) > 1e-6).any(axis=1))
+    saved = _saved_by_item(at)
+    if changed.size:
+        top = sorted(changed.tolist(), key=lambda i: -abs(saved[i]))[:4]
+        words = style.listed([case.item_names[i] for i in top])
+        points.append(f"{style.counted(int(changed.size), 'item')} of {case.n} are made in other lots than today; most of "
+                      f"the money moves with {words}.")
+    fewer = before.setups - plan.setups
+    if fewer:
+        points.append(f"{style.counted(abs(fewer), 'setup')} {'fewer' if fewer > 0 else 'more'} than today.")
+    late = int(np.count_nonzero(plan.late.sum(axis=1) > 1e-9))
+    if late:
+        points.append(f"{style.counted(late, 'item')} are late at some time: see {at.name(names.PLAN_LATE)}.")
+    return points
+
+
+def _saved_by_item(at: LotPlaces) -> list[float]:
+    """Setup, production and holding cost of each item, today's less the plan's."""
+    case, today = at.report.case, at.report.today
+    if today is None or today.solved.plan is None:
+        return [0.0] * case.n
+    costs = [(case.setup_cost * p.setup + case.unit_cost * p.made + case.holding_cost * p.stock).sum(axis=1)
+             for p in (today.solved.plan, at.report.plan)]
+    return [float(x) for x in costs[0] - costs[1]]
+
+
+def _sure(at: LotPlaces) -> list[str]:
+    report = at.report
+    return [
+        *how_sure(report.solved, report.case.currency, report.workbook.run.accepted_gap),
+        "The plan was recomputed by a second, separate part of the program: every rule holds, and the costs agree.",
+        f"Stock, load and cost are formulas over the lots and your own cells: {at.name(names.PROOF)} watches every rule.",
+    ]
+
+
+def _binding(at: LotPlaces) -> list[str]:
+    case, plan, points = at.report.case, at.report.plan, []
+    hours = case.capacity + plan.overtime
+    for r, code in enumerate(case.resources):
+        full = np.flatnonzero(at.need[r] >= FULL * hours[r])
+        if full.size:
+            when = style.listed([case.periods[t] for t in full.tolist()], 8)
+            points.append(f"{code} is full in {case.period_unit} {when}.")
+        over = np.flatnonzero(plan.overtime[r] > 1e-9)
+        if over.size:
+            points.append(f"{code} needs overtime in {style.counted(int(over.size), case.period_unit)}.")
+    for label, which in (
+        ("Most stock reached", (plan.stock >= FULL * case.most_stock[:, None]) & np.isfinite(case.most_stock)[:, None]),
+        ("Least lot reached", plan.setup & (case.least_lot[:, None] > 0) & (plan.made <= case.least_lot[:, None] / FULL)),
+        ("Most lot reached", plan.setup & (plan.made >= FULL * case.most_lot[:, None])),
+    ):
+        items = np.flatnonzero(which.any(axis=1)).tolist()
+        if items:
+            points.append(f"{label}: {style.listed([case.item_names[i] for i in items], 6)}.")
+    return points[:8] or ["No capacity, stock or lot rule holds the plan back: costs alone decide."]
+
+
+def _check(at: LotPlaces) -> list[str]:
+    case = at.report.case
+    points = ["Inputs: are demand, opening stock, setup costs and times still right?"]
+    if case.resources:
+        points.append("Capacity: holidays, maintenance and staff in the full periods; whether overtime may be asked for.")
+    points.append("Order of lots within a period, shelf life, tools, quality holds and suppliers are not in this workbook.")
+    if at.may_lose and at.report.plan.lost.any():
+        points.append("Lost sales: who tells the customers, and what was promised to them.")
+    points.append("Labour rules and contracts, and matters that only licensed professionals may decide, are not in this "
+                  "workbook.")
+    return points
+
+
+def picture(at: LotPlaces) -> Chart:
+    """Load against time available of the fullest resource; without resources, lots by period."""
+    case = at.report.case
+    last = FIRST_PERIOD + case.t - 1
+    if not case.resources:
+        row = lots_row(at)
+        series = (Series("Lots", Area(at.made.sheet, row - 1, FIRST_PERIOD, row - 1, last),
+                         Area(at.made.sheet, row, FIRST_PERIOD, row, last), style.PETROL),)
+        return Chart("column", f"Lots by {case.period_unit}", series, 0, 0, x_title=case.period_unit, y_title="lots",
+                     legend="", number_format="0", description="Number of lots in each period")
+    hours = case.capacity + at.report.plan.overtime
+    r = int(np.argmax((at.need / np.where(hours > 0, hours, np.inf)).mean(axis=1)))
+    load, available = at.load_block(0), at.load_block(1)
+    titles = Area(load.sheet, load.first_row - 1, FIRST_PERIOD, load.first_row - 1, last)
+    both = (
+        Series("Load", titles, Area(load.sheet, load.first_row + r, FIRST_PERIOD, load.first_row + r, last), style.PETROL),
+        Series("Time available", titles,
+               Area(load.sheet, available.first_row + r, FIRST_PERIOD, available.first_row + r, last), style.RUST,
+               kind="line", marker="square", marker_size=5),
+    )
+    return Chart("column", f"Load of {case.resources[r]} by {case.period_unit}", both, 0, 0, x_title=case.period_unit,
+                 y_title="time units", number_format="#,##0",
+                 description="Columns of the load and a line of the time available in each period")

@@ -1,0 +1,177 @@
+"""The sheet of prices per customer, with lane costs beside them where the workbook's own matrix cannot serve."""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from ledgersolve.report import names, style
+from ledgersolve.report.certificate import Certificate
+from ledgersolve.report.site_places import SitePlaces, lane_cell
+from ledgersolve.report.tables import FIRST_ROW, FOOTER, heading, quoted
+from ledgersolve.site_selection.case import Flags
+from ledgersolve.site_selection.lanes import Lanes
+from ledgersolve.workbook.cells import column_letters
+from ledgersolve.workbook.origins import MatrixMap
+from ledgersolve.workbook.sheets import ResultSheet
+
+COPIED_LANES = 400_000
+"""Sites x customers up to which lane costs are laid out beside the prices."""
+LINKED_LANES = 40_000
+"""Sites x customers up to which each laid-out cost is a formula into its own cell."""
+MOST_CUSTOMERS = 16_000
+CODE_ROW, DEMAND_ROW, PRICE_ROW, WHOLE_ROW, COST_ROW = range(FIRST_ROW, FIRST_ROW + 5)
+FIRST_COLUMN = 2
+
+
+@dataclass(frozen=True)
+class PriceSheet:
+    """The sheet, the formula for the sum of prices, and where a site's lane costs stand.
+
+    ``costs`` is None where there are too many lanes to lay out: gains are then figures.
+    """
+
+    sheet: ResultSheet
+    total: str
+    words: str
+    at: SitePlaces
+    costs: tuple[str, ...] | None
+
+    def gain(self, site: int, price_cell: str) -> str:
+        """Formula of a site's gain; ``price_cell`` holds the price of a unit of its capacity."""
+        if self.costs is None or not self.costs[site]:
+            return ""
+        case = self.at.report.case
+        cost = self.costs[site]
+        price = self._row(WHOLE_ROW if case.cost_is_whole else PRICE_ROW)
+        demand = self._row(DEMAND_ROW)
+        charge = self._charge(site, price_cell)
+        left = f"{price}-{cost}-{charge}*{demand}" if case.cost_is_whole else f"{price}-{cost}-{charge}"
+        tail = "" if case.cost_is_whole else f"*{demand}"
+        return f'SUMPRODUCT(({cost}<>"")*({left}>0)*({left}){tail})'
+
+    def _charge(self, site: int, price_cell: str) -> str:
+        case, origins = self.at.report.case, self.at.report.workbook.origins
+        if not case.handling_cost.any():
+            return price_cell
+        ref = origins.cell("Sites", (case.sites[site],), "Handling cost")
+        return price_cell if ref is None else f"({price_cell}+{ref.formula})"
+
+    def _row(self, row: int) -> str:
+        last = column_letters(FIRST_COLUMN + self.at.report.case.n)
+        return f"{quoted(self.sheet.name)}!${column_letters(FIRST_COLUMN + 1)}${row + 1}:${last}${row + 1}"
+
+
+def price_sheet(at: SitePlaces, lanes: Lanes, certificate: Certificate) -> tuple[Certificate, PriceSheet | None]:
+    """Lay out prices; gives the certificate as the sheet shows it (None for the sheet: too many customers)."""
+    case = at.report.case
+    if case.n > MOST_CUSTOMERS:
+        return certificate, None
+    sheet = ResultSheet(at.name(names.PROOF_PRICES), tab_colour=style.RUST, landscape=True)
+    matrix = _own_matrix(at, certificate)
+    costs: tuple[str, ...] | None
+    if matrix is not None:
+        order = sorted(range(case.n), key=lambda i: matrix.columns[case.customers[i]])
+        costs = tuple(_matrix_row(matrix, code, [case.customers[order[0]], case.customers[order[-1]]])
+                      for code in case.sites)
+        words = f"Lane costs are read straight from your sheet {matrix.sheet}."
+    else:
+        order = list(range(case.n))
+        costs = _laid_out(at, sheet, certificate)
+        words = _words(at, costs is not None)
+    _write_prices(at, sheet, certificate, order)
+    first, last = column_letters(FIRST_COLUMN + 1), column_letters(FIRST_COLUMN + case.n)
+    total = f"SUM({quoted(sheet.name)}!${first}${WHOLE_ROW + 1}:${last}${WHOLE_ROW + 1})"
+    return certificate, PriceSheet(sheet, total, words, at, costs)
+
+
+def _words(at: SitePlaces, laid_out: bool) -> str:
+    if not laid_out:
+        return (f"With {at.report.case.m:,} x {at.report.case.n:,} lanes the costs are too many to lay out; the gains are "
+                "figures of the program, all else is formulas.")
+    if at.report.case.m * at.report.case.n <= LINKED_LANES:
+        return ("Lane costs stand under the prices, each a formula into its own cell where it has one (costs from "
+                "distances and lanes forbidden by a rule: figures).")
+    return "Lane costs stand under the prices as figures (too many to link one by one)."
+
+
+def _own_matrix(at: SitePlaces, certificate: Certificate) -> MatrixMap | None:
+    """The analyst's matrix of lane costs, if a formula can use it as it stands."""
+    case, origins = at.report.case, at.report.workbook.origins
+    matrix = origins.matrices.get("Lane costs")
+    if matrix is None or "Lanes" in origins.tables or matrix.not_numbers:
+        return None
+    if any(code not in matrix.rows for code in case.sites):
+        return None
+    places = sorted(matrix.columns.get(code, -1) for code in case.customers)
+    if places[0] < 1 or places[-1] - places[0] + 1 != case.n:
+        return None
+    numbers = np.array([[origins.matrix_number("Lane costs", s, c) is not None for c in case.customers]
+                        for s in case.sites])
+    listed = np.isfinite(case.lane_cost) & certificate_customers(certificate)
+    live = np.asarray(certificate.usable.any(axis=1)).reshape(-1, 1)
+    same = (numbers & certificate_customers(certificate) & live) == (certificate.usable & listed)
+    return matrix if bool(same.all()) else None
+
+
+def certificate_customers(certificate: Certificate) -> Flags:
+    """Shape (1, n): customers with a usable lane."""
+    return np.asarray(certificate.usable.any(axis=0)).reshape(1, -1)
+
+
+def _matrix_row(matrix: MatrixMap, site: str, ends: list[str]) -> str:
+    first, last = (column_letters(matrix.columns[code]) for code in ends)
+    row = matrix.rows[site]
+    return f"{quoted(matrix.sheet)}!${first}${row}:${last}${row}"
+
+
+def _laid_out(at: SitePlaces, sheet: ResultSheet, certificate: Certificate) -> tuple[str, ...] | None:
+    """Write usable lane costs under the prices, sites downwards; None where they are too many."""
+    case = at.report.case
+    if case.m * case.n > COPIED_LANES:
+        return None
+    linked = case.m * case.n <= LINKED_LANES
+    look = style.number(style.rate_format(case.currency))
+    first, last = column_letters(FIRST_COLUMN + 1), column_letters(FIRST_COLUMN + case.n)
+    spans = []
+    for j, code in enumerate(case.sites):
+        row = COST_ROW + 1 + j
+        sheet.put(row, 0, code)
+        unit = "for the whole demand" if case.cost_is_whole else f"per {case.demand_unit}"
+        sheet.put(row, 1, f"Lane cost ({case.currency} {unit})", style.SMALL)
+        for i in np.flatnonzero(certificate.usable[j]).tolist():
+            ref = lane_cell(at, j, i) if linked else None
+            sheet.put(row, FIRST_COLUMN + i, float(case.lane_cost[j, i]), look,
+                      formula="" if ref is None else f"={ref.formula}")
+        spans.append(f"{quoted(sheet.name)}!${first}${row + 1}:${last}${row + 1}")
+    return tuple(spans)
+
+
+def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, order: list[int]) -> None:
+    case = at.report.case
+    unit, money = case.demand_unit, case.currency
+    rows = ((CODE_ROW, "Customer", ""), (DEMAND_ROW, "Demand", f"{unit}{at.per}"),
+            (PRICE_ROW, f"Price per {unit}", f"{money} per {unit}"), (WHOLE_ROW, "Price of the whole demand", at.money_unit))
+    for row, label, words in rows:
+        sheet.put(row, 0, label, style.HEADER if row == CODE_ROW else style.BOLD)
+        sheet.put(row, 1, words, style.HEADER if row == CODE_ROW else style.NOTE)
+    amounts, rates = style.number(style.money_format(money)), style.number(style.rate_format(money))
+    header = replace(style.HEADER_RIGHT, wrap=False)
+    for place, i in enumerate(order):
+        column = FIRST_COLUMN + place
+        letter = column_letters(column + 1)
+        demand, price = float(case.demand[i]), float(certificate.price[i])
+        sheet.put(CODE_ROW, column, case.customers[i], header)
+        sheet.put(DEMAND_ROW, column, demand, style.number(at.demand_format), formula=f"={at.customers_at.cell('demand', i)}")
+        if demand > 0 and not case.cost_is_whole:
+            formula = f"={letter}{DEMAND_ROW + 1}*{letter}{PRICE_ROW + 1}"
+            sheet.put(PRICE_ROW, column, price / demand, rates)
+            sheet.put(WHOLE_ROW, column, price, amounts, formula=formula)
+        else:
+            sheet.put(WHOLE_ROW, column, price, amounts)
+        sheet.widths[column] = 14.0
+    sheet.widths |= {0: 24.0, 1: 26.0}
+    heading(sheet, "Prices behind the proof", "One price a customer, and what serving it costs from each site. The sheet "
+            "Proof adds them up to a bound that no plan can undercut.", 8)
+    sheet.frozen = (CODE_ROW + 1, 2)
+    sheet.pages_wide = 0
+    sheet.footer = FOOTER

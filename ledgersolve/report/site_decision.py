@@ -1,0 +1,253 @@
+"""The Decision page of a site-selection plan, in words."""
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from ledgersolve.report import names, style
+from ledgersolve.report.checks import ChecksAt
+from ledgersolve.report.decision import (
+    Decision,
+    Tile,
+    Today,
+    changed_since,
+    how_sure,
+    provenance,
+    saving_note,
+    write_decision,
+)
+from ledgersolve.report.ledger import Ledger
+from ledgersolve.report.site_details import main_sites
+from ledgersolve.report.site_places import SitePlaces
+from ledgersolve.report.tables import Figure
+from ledgersolve.site_selection.case import CLOSED, OPEN
+from ledgersolve.site_selection.plan import Plan
+from ledgersolve.workbook.sheets import Chart, ResultSheet
+
+FULL = 0.9995
+GLOSSARY = (
+    ("Cost of the plan", "everything in the ledger, for the period covered; one-off opening and closing costs in full"),
+    ("Today", "the sites in use today, with deliveries at their best"),
+    ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less that "
+     "amount"),
+    ("Lane", "deliveries from one site to one customer"),
+    ("Main site", "the site that delivers the largest share of a customer's demand"),
+)
+
+
+def site_decision(at: SitePlaces, ledger: Ledger, checks: ChecksAt, picture: Chart | None) -> ResultSheet:
+    """Write the page."""
+    report, case = at.report, at.report.case
+    name = at.name(names.DECISION)
+    parts = [(part, Figure(_part(at, part), ledger.part(part))) for part in ledger.parts]
+    page = Decision(
+        kicker="Site selection", title=report.workbook.title, headline=_headline(at), second=_against_today(at),
+        tiles=_tiles(at, ledger, checks),
+        changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
+        comparison=_comparison(at, ledger), comparison_title="Against today", parts=parts,
+        total=Figure(report.audit.total, ledger.total),
+        changes=_changes(at), sure=_sure(at), binding=_binding(at), check=_check(at), glossary=GLOSSARY,
+        provenance=provenance(report.workbook, report.run), currency=case.currency, per=at.per,
+    )
+    return write_decision(name, page, picture)
+
+
+def _part(at: SitePlaces, name: str) -> float:
+    return next(part.amount for part in at.report.audit.parts if part.name == name)
+
+
+def _money(at: SitePlaces, amount: float, rounding: style.Rounding = "nearest") -> str:
+    return style.money_words(amount, at.report.case.currency, rounding)
+
+
+def _names(at: SitePlaces, which: np.ndarray, most: int = 8) -> str:
+    return style.listed([at.report.case.site_names[j] for j in np.flatnonzero(which).tolist()], most)
+
+
+def _headline(at: SitePlaces) -> str:
+    case, plan = at.report.case, at.report.plan
+    running = int(plan.open.sum())
+    cost = _money(at, at.report.audit.total)
+    if running == 0:
+        return f"Run no site at all: leaving all demand unmet costs {cost} per {case.period_covered}, and no site is cheaper."
+    sites = f"Run {_names(at, plan.open)}" if running == 1 else (
+        f"Run {running} of {style.counted(case.m, 'site')}: {_names(at, plan.open)}")
+    return f"{sites}. All together that costs {cost} per {case.period_covered}."
+
+
+def _against_today(at: SitePlaces) -> str:
+    today = at.report.today
+    if today is None:
+        return ""
+    if today.solved.cost is None:
+        return "Today's sites alone cannot keep the rules of this workbook, so there is no cost of today to compare with."
+    saved = today.solved.cost - at.report.audit.total
+    count = style.counted(int(at.report.case.today.sum()), "site")
+    if abs(saved) < 0.5 * 10.0 ** -style.money_digits(at.report.case.currency):
+        return f"That is what today's {count} cost with deliveries at their best: no change pays."
+    part = style.percent_words(abs(saved) / today.solved.cost, "down") if today.solved.cost else ""
+    if saved > 0:
+        return f"That is {_money(at, saved, 'down')} ({part}) less than today's {count} cost with deliveries at their best."
+    return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count or group "
+            "rule of this workbook that the plan keeps.")
+
+
+def _tiles(at: SitePlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
+    report = at.report
+    cost, currency = report.audit.total, report.case.currency
+    unit = f"{currency} per {report.case.period_covered}"
+    today = report.today
+    if today is None:
+        against: Tile = ("Against today", "not asked for", "", "no site is marked as in use today")
+    elif today.solved.cost is None:
+        against = ("Against today", "no figure", "", "today's sites cannot keep the rules")
+    else:
+        saved = today.solved.cost - cost
+        against = ("Saved against today" if saved >= 0 else "Dearer than today", abs(saved), "", unit)
+    if report.solved.bound is None:
+        still: Tile = ("Could still be saved", "not known", "", "no bound is known")
+    else:
+        still = ("Could still be saved, at most", max(0.0, cost - report.solved.bound), "",
+                 f"{currency}; {saving_note(report.solved)}")
+    return [
+        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"per {report.case.period_covered}; line by line in "
+         "the ledger"),
+        against, still,
+        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in Proof"),
+    ]
+
+
+def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
+    case, report = at.report.case, at.report
+    money = style.money_format(case.currency)
+    before = report.today.solved.plan if report.today is not None else None
+    cost = report.today.solved.cost if report.today is not None else None
+    missing = "not asked for" if report.today is None else "not possible"
+    rows = [
+        Today(f"Cost ({at.money_unit})", missing if cost is None else cost, report.audit.total, money, f"={ledger.total}"),
+        Today("Open sites (number)", int(case.today.sum()) if at.has_today else missing, int(report.plan.open.sum()),
+              style.WHOLE, f'=COUNTIF({at.sites_at.span("open")},"yes")'),
+    ]
+    if at.measured:
+        rows.append(Today(f"Average distance ({case.distance_unit})", missing if before is None else
+                          _average_distance(at, before), _average_distance(at, report.plan), "#,##0.0"))
+    if case.unmet_cost is not None:
+        rows.append(Today(f"Unmet demand ({case.demand_unit})", missing if before is None else
+                          float(before.unmet @ case.demand), float(report.plan.unmet @ case.demand), at.demand_format))
+    moved, volume = _moved(at)
+    if before is not None:
+        total = float(case.demand.sum())
+        rows.append(Today("Customers with another main site", None, moved, style.WHOLE))
+        rows.append(Today("Their part of all demand (%)", None, volume / total if total else 0.0, style.PERCENT))
+    return rows
+
+
+def _average_distance(at: SitePlaces, plan: Plan) -> float | str:
+    """Average distance of a delivered unit; words where no distance is known."""
+    case = at.report.case
+    if case.distance is None:
+        return "not known"
+    far = case.distance[plan.site, plan.customer]
+    volume = np.where(np.isfinite(far), plan.share * case.demand[plan.customer], 0.0)
+    total = float(volume.sum())
+    return float((np.where(np.isfinite(far), far, 0.0) * volume).sum() / total) if total > 0 else "not known"
+
+
+def _moved(at: SitePlaces) -> tuple[int, float]:
+    """Customers whose main site changes against today, and their demand."""
+    which = _movers(at)
+    return len(which), float(at.report.case.demand[which].sum())
+
+
+def _movers(at: SitePlaces) -> list[int]:
+    today, plan, n = at.report.today, at.report.plan, at.report.case.n
+    if today is None or today.solved.plan is None:
+        return []
+    before = today.solved.plan
+    was, now = (main_sites(p.site, p.customer, p.share, n) for p in (before, plan))
+    return [i for i in range(n) if was[i] != now[i]]
+
+
+def _changes(at: SitePlaces) -> list[str]:
+    case, plan = at.report.case, at.report.plan
+    points = []
+    if at.has_today:
+        for word, which in (("Opens", plan.open & ~case.today), ("Closes", case.today & ~plan.open),
+                            ("Stays open", plan.open & case.today)):
+            if which.any():
+                points.append(f"{word}: {_names(at, which)}.")
+    else:
+        points.append("No site is marked as in use today, so the plan is not set against anything.")
+    movers = _movers(at)
+    if movers:
+        largest = sorted(movers, key=lambda i: -case.demand[i])[:4]
+        who = style.listed([case.customer_names[i] for i in largest])
+        points.append(f"{style.counted(len(movers), 'customer')} get another main site; the largest: {who}. All of them are "
+                      f"shaded in {at.name(names.PLAN_CUSTOMERS)}.")
+    elif at.report.today is not None and at.report.today.solved.plan is not None:
+        points.append("No customer gets another main site.")
+    unmet = plan.unmet > 0
+    if unmet.any():
+        points.append(f"{style.counted(int(unmet.sum()), 'customer')} do not get all of their demand.")
+    return points
+
+
+def _sure(at: SitePlaces) -> list[str]:
+    report = at.report
+    points = how_sure(report.solved, report.case.currency, report.workbook.run.accepted_gap)
+    if report.solved.prices is not None:
+        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, what no plan "
+                      "can undercut.")
+    points.append("The plan was recomputed by a second, separate part of the program: every rule holds, and the costs "
+                  "agree.")
+    return points
+
+
+def _binding(at: SitePlaces) -> list[str]:
+    """What keeps the plan from being cheaper, as far as the plan itself shows it."""
+    case, plan, points = at.report.case, at.report.plan, []
+    with np.errstate(divide="ignore", invalid="ignore"):
+        full = plan.open & np.isfinite(case.capacity) & (at.load >= FULL * case.capacity)
+    if full.any():
+        points.append(f"Full to capacity: {_names(at, full)}.")
+    least = plan.open & (case.least_volume > 0) & (at.load <= case.least_volume / FULL)
+    if least.any():
+        points.append(f"Held up to the least volume: {_names(at, least)}.")
+    running = int(plan.open.sum())
+    if case.most_sites is not None and running == case.most_sites:
+        points.append(f"The most sites allowed ({case.most_sites}) are open.")
+    if case.fewest_sites is not None and running == case.fewest_sites:
+        points.append(f"No fewer sites are allowed than the {case.fewest_sites} that are open.")
+    for rule, word in ((OPEN, "Open by rule"), (CLOSED, "Closed by rule")):
+        if (case.rule == rule).any():
+            points.append(f"{word}: {_names(at, case.rule == rule)}.")
+    if at.promised:
+        points.append(_promise_words(at))
+    if case.share_within is not None and case.share_distance is not None:
+        points.append(f"At least {style.percent_words(case.share_within)} of the demand is kept within "
+                      f"{style.quantity_words(case.share_distance)} {case.distance_unit}.")
+    return points or ["No capacity, count or distance rule holds the plan back: costs alone decide."]
+
+
+def _promise_words(at: SitePlaces) -> str:
+    case = at.report.case
+    barred = np.zeros((case.m, case.n), dtype=bool)
+    if case.distance is not None:
+        barred = (case.distance > case.promised()) & np.isfinite(case.lane_cost)
+    far = int(barred.sum())
+    return f"The longest distance allowed rules out {style.counted(far, 'lane')}."
+
+
+def _check(at: SitePlaces) -> Sequence[str]:
+    case, plan = at.report.case, at.report.plan
+    points = ["Inputs: are the costs, demands and capacities of the open sites, and of the best closed ones, still right?"]
+    if at.report.workbook.road_cost is not None and case.site_latitude is not None:
+        points.append("Distances: straight lines times a road factor; check water, mountains and borders.")
+    opened, closed = plan.open & ~case.today, case.today & ~plan.open
+    if at.has_today and opened.any():
+        points.append("Sites that open: permits, building, staff, time to start.")
+    if at.has_today and closed.any():
+        points.append("Sites that close: people, leases, contracts, and what customers were promised.")
+    points.append("Local rules (labour, zoning, customs, transport), and matters that only licensed professionals may decide, "
+                  "are not in this workbook.")
+    return points

@@ -1,0 +1,146 @@
+"""The map-like picture: sites and customers by coordinates, deliveries as lines, on a sheet of its own figures."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ledgersolve.report import names, style
+from ledgersolve.report.site_places import SitePlaces
+from ledgersolve.report.tables import FIRST_ROW, Column, detail_sheet
+from ledgersolve.site_selection.case import Floats, Ints
+from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
+
+DRAWN_DELIVERIES = 3000
+LABELLED_SITES = 16
+PLOT_RATIO = 1.5
+"""Width over height of the plot area, so that a mile is as long sideways as upwards."""
+
+
+@dataclass(frozen=True)
+class _Points:
+    """A series: its look, and longitude, latitude and label of each point (None lifts the pen)."""
+
+    name: str
+    rows: list[tuple[float | None, float | None, str]]
+    colour: str
+    marker: str = ""
+    size: int = 7
+    hollow: bool = False
+    line: str = ""
+    labelled: bool = False
+
+
+def site_map(at: SitePlaces) -> tuple[ResultSheet, Chart] | None:
+    """Give the sheet of points and the chart over it; None where coordinates are missing."""
+    case = at.report.case
+    sites = _places(case.site_longitude, case.site_latitude)
+    customers = _places(case.customer_longitude, case.customer_latitude)
+    if sites is None or customers is None:
+        return None
+    series = [_deliveries(at, sites, customers), _customers(at, customers), *_site_kinds(at, sites)]
+    kept = [points for points in series if points.rows]
+    return _sheet(at, kept), _chart(at.name(names.PLAN_MAP), kept, np.vstack([sites, customers]), at)
+
+
+def _places(longitude: Floats | None, latitude: Floats | None) -> Floats | None:
+    if longitude is None or latitude is None or not np.isfinite(longitude + latitude).any():
+        return None
+    return np.column_stack([longitude, latitude])
+
+
+def _deliveries(at: SitePlaces, sites: Floats, customers: Floats) -> _Points:
+    """For each site, in turn: out to a customer and back; an empty row lifts the pen."""
+    rows: list[tuple[float | None, float | None, str]] = []
+    before = -1
+    for j, i in _drawn(at):
+        if not (np.isfinite(sites[j]).all() and np.isfinite(customers[i]).all()):
+            continue
+        if j != before:
+            rows += [(None, None, "")] if rows else []
+            rows.append((*sites[j].tolist(), at.report.case.sites[j]))
+            before = j
+        rows.append((*customers[i].tolist(), at.report.case.customers[i]))
+        rows.append((*sites[j].tolist(), at.report.case.sites[j]))
+    return _Points("Deliveries", rows, style.LINE, line="solid")
+
+
+def _drawn(at: SitePlaces) -> list[tuple[int, int]]:
+    """Sites and customers of the deliveries that are drawn: the largest ones, in table order."""
+    kept: Ints = np.sort(np.argsort(-at.volumes, kind="stable")[:DRAWN_DELIVERIES]).astype(np.int64)
+    return list(zip(at.sites[kept].tolist(), at.customers[kept].tolist(), strict=True))
+
+
+def _customers(at: SitePlaces, customers: Floats) -> _Points:
+    kept = np.argsort(-at.report.case.demand, kind="stable")[:DRAWN_DELIVERIES]
+    size = 5 if at.report.case.n <= 300 else 3
+    return _Points("Customer", _listed(customers, np.sort(kept), at.report.case.customers), style.QUIET, "circle", size)
+
+
+def _site_kinds(at: SitePlaces, sites: Floats) -> list[_Points]:
+    case, running = at.report.case, at.report.plan.open
+    was = case.today if at.has_today else running
+    kinds = (
+        ("Site not used", ~running & ~case.today, style.QUIET, "square", 6, True),
+        ("Site that closes", case.today & ~running, style.RUST, "x", 9, True),
+        ("Open site" if not at.has_today else "Site that stays", running & was, style.PETROL, "diamond", 11, False),
+        ("Site that opens", running & ~was, style.RUST, "triangle", 11, False),
+    )
+    labelled = int(running.sum()) <= LABELLED_SITES
+    return [
+        _Points(name, _listed(sites, np.flatnonzero(which), case.site_names), colour, marker, size, hollow,
+                labelled=labelled and not hollow)
+        for name, which, colour, marker, size, hollow in kinds
+    ]
+
+
+def _listed(places: Floats, which: Ints, labels: tuple[str, ...]) -> list[tuple[float | None, float | None, str]]:
+    return [(float(places[k, 0]), float(places[k, 1]), labels[k]) for k in which.tolist() if np.isfinite(places[k]).all()]
+
+
+def _sheet(at: SitePlaces, series: list[_Points]) -> ResultSheet:
+    flat = [(points.name, *row) for points in series for row in points.rows]
+    degrees = style.number("0.0000")
+    columns: list[list[Scalar]] = [list(column) for column in zip(*flat, strict=True)]
+    return detail_sheet(
+        at.name(names.PLAN_MAP), "Figures behind the map",
+        "Where sites, customers and delivery lines of the picture on the first page stand.",
+        [
+            Column("series", "Part of the picture", columns[0], width=20),
+            Column("place", "Site or customer", columns[3], width=24),
+            Column("longitude", "Longitude (degrees)", columns[1], degrees, 14),
+            Column("latitude", "Latitude (degrees)", columns[2], degrees, 14),
+        ], style.MOSS,
+    )
+
+
+def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) -> Chart:
+    made, row = [], FIRST_ROW
+    for points in series:
+        last = row + len(points.rows) - 1
+        made.append(Series(
+            points.name, Area(sheet, row, 2, last, 2), Area(sheet, row, 3, last, 3), points.colour,
+            pattern="open" if points.hollow else "", marker=points.marker, marker_size=points.size,
+            line_width=0.75, dash=points.line,
+            point_labels=tuple(label for _, _, label in points.rows) if points.labelled else (),
+        ))
+        row = last + 1
+    horizontal, vertical = _limits(places)
+    title = "Sites, customers and deliveries"
+    if at.sites.size > DRAWN_DELIVERIES:
+        title += f" (largest {DRAWN_DELIVERIES:,})"
+    return Chart("scatter", title, tuple(made), 0, 0, x_title="longitude", y_title="latitude", number_format="0.0",
+                 x_limits=horizontal, y_limits=vertical,
+                 description="Sites and customers by longitude and latitude; lines show who serves whom")
+
+
+def _limits(places: Floats) -> tuple[tuple[float, float], tuple[float, float]]:
+    """Axis limits that show every point, with the same length for a mile in both directions."""
+    known = places[np.isfinite(places).all(axis=1)]
+    low, high = known.min(axis=0), known.max(axis=0)
+    middle = (low + high) / 2
+    squeeze = max(0.05, float(np.cos(np.radians(middle[1]))))
+    tall = max(float(high[1] - low[1]), float(high[0] - low[0]) * squeeze / PLOT_RATIO, 0.05) * 1.12
+    wide = tall * PLOT_RATIO / squeeze
+    def around(centre: float, size: float) -> tuple[float, float]:
+        return round(float(centre) - size / 2, 2), round(float(centre) + size / 2, 2)
+    return around(middle[0], wide), around(middle[1], tall)

@@ -1,0 +1,239 @@
+"""The Proof sheet of a site-selection plan: a lower bound by prices, the checks, the audit."""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from ledgersolve.mip import Verdict
+from ledgersolve.report import names, style
+from ledgersolve.report.certificate import Certificate, certify
+from ledgersolve.report.checks import ChecksAt, checks_at, write_audit, write_checks
+from ledgersolve.report.ledger import Ledger
+from ledgersolve.report.price_sheet import PriceSheet, price_sheet
+from ledgersolve.report.site_checks import site_checks
+from ledgersolve.report.site_places import SitePlaces
+from ledgersolve.report.tables import Column, Figure, heading, paragraph, quoted, write_table
+from ledgersolve.site_selection.case import CLOSED, OPEN
+from ledgersolve.site_selection.lanes import Lanes
+from ledgersolve.workbook.sheets import ResultSheet
+
+TOLERANCE_ROW = 3
+CHECKS_ROW = 6
+
+
+@dataclass(frozen=True)
+class SiteProof:
+    """The Proof sheet with the sheet of prices (if any), and where checks stand."""
+
+    sheets: tuple[ResultSheet, ...]
+    checks: ChecksAt
+    bound: float | None
+
+
+def site_proof(at: SitePlaces, ledger: Ledger) -> SiteProof:
+    """Write the proof: live checks first, then the bound, then the audit's words."""
+    sheet = ResultSheet(at.name(names.PROOF), tab_colour=style.RUST, landscape=True)
+    proof_widths(sheet)
+    tolerance_row(sheet)
+    tolerance = f"$C${TOLERANCE_ROW + 1}"
+    checks = site_checks(at, ledger, tolerance)
+    name = quoted(sheet.name)
+    sheet.put(CHECKS_ROW - 1, 0, "Checks that watch the sheets", style.SECTION)
+    row = write_checks(sheet, CHECKS_ROW, checks, tolerance) + 1
+    certificate, prices = _certificate(at)
+    sheets = [sheet]
+    if certificate is not None and prices is not None:
+        row = _write_bound(at, ledger, sheet, row, certificate, prices)
+        sheets.append(prices.sheet)
+    else:
+        row = _no_prices(at, sheet, row)
+    write_audit(sheet, row + 1, at.report.audit)
+    heading(sheet, "Proof", "What you can check yourself: that the plan keeps every rule, and that no plan can cost "
+            "much less. Change a plan cell in a Plan sheet and a check turns BROKEN.", 6)
+    return SiteProof(tuple(sheets), checks_at(name, CHECKS_ROW, len(checks)),
+                     None if certificate is None else certificate.bound)
+
+
+def tolerance_row(sheet: ResultSheet) -> None:
+    """Write the tolerance of all checks in a cell of its own."""
+    sheet.put(TOLERANCE_ROW, 0, "Tolerance of the checks", style.BOLD)
+    sheet.put(TOLERANCE_ROW, 1, "share of the figure that is required", style.NOTE)
+    sheet.put(TOLERANCE_ROW, 2, 1e-6, style.number("0.000000"))
+
+
+def proof_widths(sheet: ResultSheet) -> None:
+    """Set the widths that text of a proof is fitted to."""
+    for column, width in enumerate((30.0, 36.0, 22.0, 16.0, 13.0, 12.0)):
+        sheet.widths[column] = width
+
+
+def _certificate(at: SitePlaces) -> tuple[Certificate | None, PriceSheet | None]:
+    prices = at.report.solved.prices
+    if prices is None or not np.isfinite(prices).all():
+        return None, None
+    lanes = Lanes.of(at.report.case)
+    certificate = certify(at.report.case, lanes, np.asarray(prices, dtype=np.float64))
+    return price_sheet(at, lanes, certificate)
+
+
+def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int) -> int:
+    sheet.put(row, 0, "No plan can cost less than", style.SECTION)
+    bound = at.report.solved.bound
+    words = ("For this workbook the search left no prices per customer, so that the lower bound cannot be checked in a "
+             "sheet; it rests on the search alone.")
+    if bound is not None:
+        words += f" The bound: {style.money_words(bound, at.report.case.currency, 'down')}."
+    paragraph(sheet, row + 1, 0, 5, words, style.TEXT)
+    return row + 2
+
+
+EXPLANATION = (
+    "Give every customer a price: what the plan could at most spend to serve that customer. Whatever a plan looks like, "
+    "serving a customer costs the price or more, unless an open site serves it for less; what a site can save in this "
+    "way on all customers together is its gain. A site whose gain exceeds its cost lowers the bound by the difference. "
+    "So: sum of all prices + sum of the sites' terms + the constants below is less than or equal to the cost of "
+    "EVERY plan that keeps the rules. The prices were found by the program, but any prices give a valid bound: the "
+    "sheet needs no trust in how they were found. Change one price and see: the bound stays valid, and gets lower."
+)
+
+
+def _write_bound(at: SitePlaces, ledger: Ledger, sheet: ResultSheet, row: int, certificate: Certificate,
+                 prices: PriceSheet) -> int:
+    """Write the summary of the bound and, under it, the table of sites."""
+    case = at.report.case
+    sheet.put(row, 0, "No plan can cost less than", style.SECTION)
+    paragraph(sheet, row + 1, 0, 5, EXPLANATION, style.TEXT)
+    paragraph(sheet, row + 2, 0, 5, prices.words, style.NOTE)
+    first = row + 4
+    charges = _charge_rows(at, certificate)
+    sites_row = first + 7 + len(charges) + len(certificate.rules)
+    money = style.number(style.money_format(case.currency))
+    cells = _Cells(at, first, sites_row, len(charges))
+    summary = [*charges, ("Sum of all customers' prices", Figure(float(certificate.price.sum()), prices.total)),
+               ("Sum of the sites' terms", Figure(float(certificate.term.sum()), cells.terms()))]
+    summary += [(words, Figure(amount, cells.rule(words))) for words, amount in certificate.rules]
+    start = first + len(charges) + 1
+    end = start + 1 + len(certificate.rules)
+    bound, cost = certificate.bound, at.report.audit.total
+    summary.append(("No plan can cost less than (checked here)", Figure(bound, f"SUM(C{start}:C{end})")))
+    summary.append(("Cost of this plan", Figure(cost, ledger.total)))
+    summary.append(("So a better plan could save at most", Figure(cost - bound, f"C{end + 2}-C{end + 1}")))
+    for place, (words, figure) in enumerate(summary):
+        strong = words.startswith(("No plan", "So a better"))
+        look = replace(money, bold=strong)
+        sheet.put(first + place, 0, words, style.BOLD if strong else style.TEXT)
+        sheet.put(first + place, 1, f"{case.currency}{at.per}" if place >= len(charges) else
+                  f"{case.currency} each", style.NOTE)
+        sheet.put(first + place, 2, figure.value, look, formula=figure.written)
+    paragraph(sheet, first + len(summary), 0, 5, _rest_on_search(at, bound), style.TEXT)
+    _write_sites(at, sheet, sites_row, certificate, prices, cells)
+    return sites_row + case.m + 1
+
+
+def _charge_rows(at: SitePlaces, certificate: Certificate) -> list[tuple[str, Figure]]:
+    rows = []
+    if certificate.supply_price:
+        rows.append((f"Price per {at.report.case.demand_unit} of capacity, all sites", Figure(certificate.supply_price)))
+    if certificate.count_charge:
+        rows.append(("Charge per open site (count of sites)", Figure(certificate.count_charge)))
+    return rows
+
+
+@dataclass(frozen=True)
+class _Cells:
+    """Cells of the bound's summary and of its table of sites (rows from 0)."""
+
+    at: SitePlaces
+    first: int
+    sites_row: int
+    charges: int
+
+    def terms(self) -> str:
+        """Sum over the column of terms."""
+        return f"SUM(I{self.sites_row + 2}:I{self.sites_row + 1 + self.at.report.case.m})"
+
+    def charge(self, label: str) -> str:
+        """Cell of a charge that stands in the summary."""
+        return f"$C${self.first + 1}" if label == "supply" or self.charges == 1 else f"$C${self.first + 2}"
+
+    def rule(self, words: str) -> str:
+        """Formula of a constant, where it follows from a charge and a cell."""
+        at, origins = self.at, self.at.report.workbook.origins
+        if words.startswith("All demand"):
+            return f"{self.charge('supply')}*SUM({at.customers_at.span('demand')})"
+        name = "Most sites" if "most sites" in words else "Fewest sites" if "fewest sites" in words else ""
+        ref = origins.setting(name) if name else None
+        return "" if ref is None else f"-{self.charge('count')}*{ref.formula}"
+
+
+def _rest_on_search(at: SitePlaces, checked: float) -> str:
+    """Say which part of the certainty is checkable and which rests on the search."""
+    report, currency = at.report, at.report.case.currency
+    cost, proven = report.audit.total, report.solved.bound
+    possible = style.money_words(max(0.0, cost - checked), currency, "up")
+    words = f"What you can check in this sheet: no plan costs less by more than {possible}."
+    if proven is None or proven <= checked + 1e-9 * abs(cost):
+        return f"{words} Nothing more is claimed than this sheet shows."
+    rest = style.money_words(max(0.0, cost - proven), currency, "up")
+    branching = ("The search closed the rest by trying out sites open and closed one after the other (branching): it "
+                 f"claims that no plan costs less by more than {rest}. That part rests on the program.")
+    if report.solved.verdict == Verdict.BEST_FOUND:
+        branching += " The time limit ended this work before it was done."
+    return f"{words} {branching}"
+
+
+def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certificate, prices: PriceSheet,
+                 cells: _Cells) -> None:
+    case = at.report.case
+    money = style.number(style.money_format(case.currency))
+    per_unit = style.number(style.rate_format(case.currency))
+    rule = Lanes.of(case).rule
+    words = ["open" if r == OPEN else "closed" if r == CLOSED else "free" for r in rule.tolist()]
+    rows = [row + 2 + j for j in range(case.m)]
+    live = [r != CLOSED for r in rule.tolist()]
+    capacity = np.where(np.isfinite(case.capacity), case.capacity, 0.0)
+    priced = np.where(certificate.volume_price > 0, capacity, 0.0)
+    balance = certificate.fixed + certificate.charge - priced * certificate.volume_price - certificate.gain
+    balance = np.where(np.array(live), balance, 0.0)
+    charge = [_charge_formula(at, certificate, cells, j) if live[j] else "" for j in range(case.m)]
+    columns = [
+        Column("site", "Site", case.sites, style.TEXT, 30),
+        Column("rule", "Rule in the bound (free, open, closed)", words, style.TEXT, 36),
+        Column("fixed", f"Fixed and opening cost, less closing cost saved ({at.money_unit})",
+               certificate.fixed.tolist(), money, 22, [_fixed_formula(at, j) for j in range(case.m)]),
+        Column("charge", f"Charges of rules ({at.money_unit})", certificate.charge.tolist(), money, 16, charge),
+        Column("price", f"Price per {case.demand_unit} of its capacity ({case.currency})",
+               certificate.volume_price.tolist(), per_unit, 13),
+        Column("capacity", f"Capacity priced ({case.demand_unit}{at.per})", priced.tolist(),
+               style.number(at.demand_format), 12,
+               [at.sites_at.cell("capacity", j) if priced[j] else "" for j in range(case.m)]),
+        Column("gain", f"Gain: what it can save on all customers ({at.money_unit})", certificate.gain.tolist(), money, 18,
+               [prices.gain(j, f"$E{r}") if live[j] else "" for j, r in enumerate(rows)]),
+        Column("balance", f"Cost less gain ({at.money_unit})", balance.tolist(), money, 16,
+               [f"C{r}+D{r}-E{r}*F{r}-G{r}" if on else "" for r, on in zip(rows, live, strict=True)]),
+        Column("term", f"Term in the bound ({at.money_unit})", certificate.term.tolist(), replace(money, bold=True), 16,
+               [f'IF(B{r}="open",H{r},MIN(0,H{r}))' if on else "" for r, on in zip(rows, live, strict=True)]),
+    ]
+    write_table(sheet, row, columns)
+
+
+def _fixed_formula(at: SitePlaces, j: int) -> str:
+    """Fixed cost + opening cost, or - closing cost, from their cells; "" where a figure has no number cell."""
+    case, origins = at.report.case, at.report.workbook.origins
+    fixed = origins.number("Sites", (case.sites[j],), "Fixed cost")
+    title, sign = ("Closing cost", "-") if case.today[j] else ("Opening cost", "+")
+    once = float((case.closing_cost if case.today[j] else case.opening_cost)[j])
+    ref = origins.number("Sites", (case.sites[j],), title)
+    if fixed is None or (once and ref is None):
+        return ""
+    return fixed.formula + (f"{sign}{ref.formula}" if ref is not None else "")
+
+
+def _charge_formula(at: SitePlaces, certificate: Certificate, cells: _Cells, j: int) -> str:
+    """Charge of a site from the charges in the summary; "" where a group's own charge is part of it."""
+    if certificate.group_charge[j]:
+        return ""
+    parts = [cells.charge("count")] if certificate.count_charge else []
+    if certificate.supply_price and np.isfinite(at.report.case.capacity[j]):
+        parts.append(f"-{cells.charge('supply')}*{at.sites_at.cell('capacity', j)}")
+    return "".join(parts).removeprefix("+")

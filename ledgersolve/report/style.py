@@ -1,0 +1,156 @@
+"""The house style: colours, cell styles, number formats and figures in words. Nothing else sets a look.
+
+Every pair of text and ground has a contrast of at least 4.5 to 1, and no meaning rests on colour alone.
+"""
+
+import math
+from collections.abc import Iterable
+from dataclasses import replace
+from typing import Literal
+
+from ledgersolve.workbook.sheets import Style
+
+INK = "1F2933"
+QUIET = "52606D"
+PETROL = "0F4C5C"
+RUST = "8A3B12"
+MOSS = "3F6B3A"
+PALE = "E6EFF1"
+SAND = "F6F1E7"
+WHITE = "FFFFFF"
+ALARM_GROUND, ALARM = "F9DDD2", "7A1F0B"
+GOOD_GROUND, GOOD = "E3F0E6", "1B5E3B"
+LINE = "9AA5B1"
+
+TEXT = Style()
+WRAPPED = Style(wrap=True, valign="top")
+SMALL = Style(size=8.0, colour=QUIET)
+SMALL_WRAPPED = Style(size=8.0, colour=QUIET, wrap=True, valign="top")
+BOLD = Style(bold=True)
+TITLE = Style(size=16.0, bold=True, colour=PETROL)
+SUBTITLE = Style(size=10.0, colour=QUIET)
+SECTION = Style(size=11.0, bold=True, colour=PETROL, bottom=1, border_colour=PETROL, valign="bottom")
+HEADER = Style(bold=True, colour=WHITE, fill=PETROL, wrap=True, valign="vcenter", size=9.0)
+HEADER_RIGHT = replace(HEADER, align="right")
+NOTE = Style(italic=True, colour=QUIET, size=9.0)
+LINK = Style(colour=PETROL, underline=True)
+TOTAL = Style(bold=True, fill=PALE, top=1, bottom=2, border_colour=PETROL)
+SUBTOTAL = Style(bold=True, fill=PALE)
+SUBSUBTOTAL = Style(bold=True, fill=SAND)
+BAD = Style(bold=True, colour=ALARM, fill=ALARM_GROUND)
+FINE = Style(colour=GOOD, fill=GOOD_GROUND)
+
+PERCENT = "0.0%"
+FINE_PERCENT = "0.00%"
+WHOLE = "#,##0"
+DATE = "yyyy-mm-dd"
+DATE_TIME = "yyyy-mm-dd hh:mm"
+SECONDS = "0.00"
+
+_NO_DIGITS = frozenset(["JPY", "KRW", "CLP", "ISK", "VND", "XAF", "XOF", "XPF", "PYG", "RWF", "UGX", "KMF", "DJF", "GNF", "BIF", "VUV"])
+_THREE_DIGITS = frozenset(["BHD", "IQD", "JOD", "KWD", "LYD", "OMR", "TND"])
+_FOUR_DIGITS = frozenset(["CLF", "UYW"])
+
+NO_BREAK = "\u00a0"
+Rounding = Literal["nearest", "up", "down"]
+
+
+def money_digits(currency: str) -> int:
+    """Digits of the currency's minor unit (ISO 4217, list one)."""
+    code = currency.upper()
+    return 0 if code in _NO_DIGITS else 3 if code in _THREE_DIGITS else 4 if code in _FOUR_DIGITS else 2
+
+
+def money_format(currency: str) -> str:
+    """Number format of an amount; the reader's own separators are shown."""
+    digits = money_digits(currency)
+    return "#,##0" + ("." + "0" * digits if digits else "")
+
+
+def rate_format(currency: str) -> str:
+    """Number format of a rate: the currency's digits, and four more where they are needed."""
+    digits = money_digits(currency)
+    return "#,##0." + "0" * max(digits, 1) + "####"
+
+
+def figure_format(values: Iterable[float]) -> str:
+    """Number format for a column of quantities: as many decimals as they need, at most three."""
+    needed = 0
+    for value in values:
+        while needed < 3 and abs(value * 10**needed - round(value * 10**needed)) > 1e-6:
+            needed += 1
+        if needed == 3:
+            break
+    return "#,##0" + ("." + "0" * needed if needed else "")
+
+
+def with_format(style: Style, number_format: str) -> Style:
+    """Give the style with a number format, figures to the right."""
+    return replace(style, number_format=number_format, align="right")
+
+
+def number(number_format: str) -> Style:
+    """Style of a plain figure."""
+    return Style(number_format=number_format, align="right")
+
+
+def money_words(amount: float, currency: str, rounding: Rounding = "nearest") -> str:
+    """Amount in a sentence: thousands apart by a space, whole units from 1,000 on, then the code."""
+    digits = 0 if abs(amount) >= 1000 else money_digits(currency)
+    return f"{figure_words(amount, digits, rounding)}{NO_BREAK}{currency}"
+
+
+def figure_words(value: float, digits: int = 0, rounding: Rounding = "nearest") -> str:
+    """Figure in a sentence with a space between thousands (readable in every country)."""
+    scale = 10.0**digits
+    scaled = value * scale
+    snapped = round(scaled)
+    if abs(scaled - snapped) > 1e-6 * max(1.0, abs(scaled) * 1e-6):
+        snapped = math.ceil(scaled) if rounding == "up" else math.floor(scaled) if rounding == "down" else snapped
+    return f"{snapped / scale:,.{digits}f}".replace(",", NO_BREAK).replace("-", "\u2212")
+
+
+def quantity_words(value: float) -> str:
+    """Quantity in a sentence: whole where it is whole or large, else three significant digits."""
+    if value == round(value) or abs(value) >= 1000:
+        return figure_words(value)
+    digits = max(0, 2 - math.floor(math.log10(abs(value))))
+    return figure_words(value, min(digits, 6))
+
+
+def percent_words(fraction: float, rounding: Rounding = "nearest") -> str:
+    """Fraction as a percentage in a sentence; small ones keep two significant digits."""
+    percent = 100 * fraction
+    digits = 1 if abs(percent) >= 1 or percent == 0 else min(6, 1 - math.floor(math.log10(abs(percent))))
+    return f"{figure_words(percent, digits, rounding)}{NO_BREAK}%"
+
+
+def listed(words: list[str], most: int = 12) -> str:
+    """Words as a list in a sentence: ``A, B and C``; beyond ``most`` the rest is counted."""
+    if len(words) > most:
+        return f"{', '.join(words[:most])} and {len(words) - most} more"
+    return words[0] if len(words) == 1 else f"{', '.join(words[:-1])} and {words[-1]}" if words else "none"
+
+
+def named(code: str, name: str) -> str:
+    """A thing by name and code; the code alone where it is the name."""
+    return code if not name or name == code else f"{name} ({code})"
+
+
+def counted(number_of: int, one: str, many: str = "") -> str:
+    """``1 site``, ``3 sites``."""
+    return f"{figure_words(number_of)} {one if number_of == 1 else many or one + 's'}"
+
+
+def contrast(first: str, second: str) -> float:
+    """Contrast of two colours (WCAG 2.2, relative luminance)."""
+    light, dark = sorted((_luminance(first), _luminance(second)), reverse=True)
+    return (light + 0.05) / (dark + 0.05)
+
+
+def _luminance(colour: str) -> float:
+    def linear(channel: int) -> float:
+        part = channel / 255
+        return part / 12.92 if part <= 0.04045 else ((part + 0.055) / 1.055) ** 2.4
+    red, green, blue = (linear(int(colour[place:place + 2], 16)) for place in (0, 2, 4))
+    return 0.2126 * red + 0.7152 * green + 0.0722 * blue
