@@ -30,6 +30,7 @@ from tests.packages import (
 )
 
 ROWS = '<row r="1"><c r="A1"><v>1</v></c></row>'
+BROKEN = "broken XML"
 STRICT = "http://purl.oclc.org/ooxml"
 DTD = "entity definitions"
 OLE = b"\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1" + bytes(504)
@@ -136,12 +137,12 @@ PACKAGES: dict[str, tuple[Callable[[], dict[str, str | bytes]], str]] = {
     "fetching an address": (
         lambda: parts(sheet='<!DOCTYPE x SYSTEM "http://localhost:9/x.dtd"><worksheet/>'), DTD),
     "undefined entity": (lambda: parts(sheet=sheet_xml('<row r="1"><c r="A1"><v>&no;</v></c></row>')),
-                         "broken XML"),
-    "not well formed": (lambda: parts(sheet=sheet_xml(ROWS)[:-5]), "broken XML"),
-    "not well formed workbook": (lambda: parts(workbook="<workbook"), "broken XML"),
-    "unknown encoding": (lambda: parts(sheet='<?xml version="1.0" encoding="UTF-7"?><worksheet/>'), "broken XML"),
+                         BROKEN),
+    "not well formed": (lambda: parts(sheet=sheet_xml(ROWS)[:-5]), BROKEN),
+    "not well formed workbook": (lambda: parts(workbook="<workbook"), BROKEN),
+    "unknown encoding": (lambda: parts(sheet='<?xml version="1.0" encoding="UTF-7"?><worksheet/>'), BROKEN),
     "lying encoding": (lambda: parts(sheet=b'<?xml version="1.0" encoding="UTF-8"?><worksheet x="\xe4"/>'),
-                       "broken XML"),
+                       BROKEN),
     "no sheets": (lambda: parts(workbook=workbook_xml([])), "no sheet"),
     "missing sheet part": (lambda: {name: new for name, new in parts().items() if "sheet1" not in name},
                            "damaged"),

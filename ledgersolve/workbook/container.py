@@ -30,7 +30,7 @@ class Limits:
 
     Sizes in bytes. ``ratio`` is inflated to compressed size of a member, looked at only above
     ``ratio_floor`` (XML) or ``picture_floor`` (all else: pictures of one colour are dense by nature and are
-    never unpacked here). ``cells`` counts filled cells and ``cell_elements`` all cells of a workbook, empty
+    never unpacked here). ``cells`` counts filled cells and ``cell_elements`` all cells of a sheet, empty
     formatted ones included; ``part_size`` bounds the small parts that are read as lists (workbook, styles).
     """
 
