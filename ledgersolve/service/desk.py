@@ -24,6 +24,7 @@ from ledgersolve.service.states import JobView, Reply, short_id
 
 logger = logging.getLogger(__name__)
 _FIRST_WAIT, _LONGEST_WAIT = 1.0, 60.0
+_PUBLISH_WAIT = 10.0
 _RETURNED_KEPT = 50
 
 
@@ -226,7 +227,9 @@ class Desk:
         try:
             published = self.protocol.publish(view)
         except OSError as error:
-            self.wait_for(view.job, 10.0)
+            if self.protocol.view(view.job) is None:
+                return  # another process published and finished it
+            self.wait_for(view.job, _PUBLISH_WAIT)
             self.alerts[view.job] = {
                 "name": view.reply.name,
                 "why": f"answered, but cannot be put into Returned ({error.strerror or error}); tried again",

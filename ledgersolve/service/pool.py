@@ -6,6 +6,7 @@ import threading
 from concurrent.futures import CancelledError, Executor, Future, ThreadPoolExecutor
 from typing import Any, Protocol
 
+from ledgersolve.service.disk import Disk
 from ledgersolve.service.order import Order, Report
 from ledgersolve.service.supervise import supervise
 
@@ -33,15 +34,18 @@ class LocalPool:
     ----------
     executor
         Any executor; a pool of ``places`` threads where None.
+    disk
+        The served folder's file system.
     """
 
-    def __init__(self, places: int, executor: Executor | None = None) -> None:
+    def __init__(self, places: int, executor: Executor | None = None, disk: Disk | None = None) -> None:
         self._halt = threading.Event()
+        self._disk = disk
         self._executor = executor or ThreadPoolExecutor(places, thread_name_prefix="supervisor")
 
     def submit(self, order: Order) -> "Future[Report]":
         """Hand an order over."""
-        return self._executor.submit(supervise, order, self._halt)
+        return self._executor.submit(supervise, order, self._halt, self._disk)
 
     def halt(self) -> None:
         """End everything at once."""

@@ -5,6 +5,7 @@ workbook does can harm the executor; it never answers or publishes, so running i
 """
 
 import contextlib
+import errno
 import hashlib
 import json
 import logging
@@ -33,12 +34,14 @@ from ledgersolve.service.whole import Shape, shape
 
 logger = logging.getLogger(__name__)
 PRIVATE_PREFIX = "ledgersolve-job-"
+_LOCAL = Disk()
 _OUTCOMES = ("solved", "to fix", "failed")
 _MOST_RESULT = 8 << 20
 _TELL_SECONDS = 2.0
 _STOP_SECONDS = 0.5
 _DELIVERY_WAITS = (1.0, 2.0, 4.0, 8.0, 15.0, 30.0)
 _DELIVERY_TRIES = 40
+_FOR_GOOD = (errno.EACCES, errno.EPERM, errno.EINVAL, errno.ELOOP, errno.ENXIO, errno.EISDIR)
 _SHOWN = ("job", "title", "outcome", "verdict", "total_cost", "lower_bound", "gap_pct", "seconds", "reason")
 
 
@@ -94,7 +97,8 @@ class _Supervisor:
             guard(self._layout, self.disk, self.order.mark)
             if self.order.input.name not in self.disk.names(self.order.input.parent):
                 return Report("stopped", "the job is gone")
-            return Report("crashed", f"the workbook cannot be read ({error.strerror or error})")
+            if error.errno in _FOR_GOOD:
+                return Report("crashed", f"the workbook cannot be read ({error.strerror or error})")
         return Report("share lost", str(error))
 
     def _answered(self, snapshot: Snapshot) -> Report:
@@ -133,7 +137,7 @@ class _Supervisor:
         ended = run_child(request, self.private, self.order.limits, self._must_stop, self._tell)
         words: dict[str, Any] = {}
         with contextlib.suppress(OSError, ValueError):
-            found = json.loads(self.disk.read(result, _MOST_RESULT))
+            found = json.loads(_LOCAL.read(result, _MOST_RESULT))
             words = found if isinstance(found, dict) else {}
         return ended, words
 
@@ -158,8 +162,8 @@ class _Supervisor:
     def _is_sound(self, returned: Path) -> bool:
         try:
             inside = returned.resolve().is_relative_to((self.private / "out").resolve())
-            size = self.disk.status(returned).st_size
-            if not inside or shape(self.disk, returned, size) is not Shape.COMPLETE:
+            size = _LOCAL.status(returned).st_size
+            if not inside or shape(_LOCAL, returned, size) is not Shape.COMPLETE:
                 return False
             with zipfile.ZipFile(returned) as package:
                 return package.testzip() is None

@@ -5,7 +5,8 @@ from collections import Counter
 from pathlib import Path
 
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.layout import Layout
+from ledgersolve.service.layout import SELFTEST, Layout
+from ledgersolve.service.names import is_temporary
 from ledgersolve.service.states import ANSWER, JobView, State, read_job, sha256_of, short_id
 
 _ALLOWED = re.compile(r"in|answer\.json|(lease|beat|released|failed|payload|progress|stop)\.[1-9][0-9]*")
@@ -39,7 +40,8 @@ def verify(folder: Path, *, settled: bool = False) -> list[str]:
     faults += [f"I1: job {job} is both at work and done" for job, count in _counts(views) if count > 1]
     faults += _of_returned(disk, layout, views)
     if settled:
-        faults += [f"not settled: Inbox/{name}" for name in disk.names(layout.inbox)]
+        inbox = [entry for entry in disk.entries(layout.inbox) if not entry.is_folder]
+        faults += [f"not settled: Inbox/{entry.name}" for entry in inbox if not is_temporary(entry.name)]
         faults += [f"not settled: job {view.job} is {view.state}" for view in at_work if view is not None]
         returned = Counter(_marks(disk.names(layout.returned)))
         missing = [view.job for view in views if not returned[short_id(view.job)]]
@@ -82,6 +84,8 @@ def _of_returned(disk: Disk, layout: Layout, views: list[JobView]) -> list[str]:
     by_mark = {short_id(view.job): view for view in views}
     found = Counter[str]()
     for entry in disk.entries(layout.returned):
+        if entry.name.startswith(SELFTEST):
+            continue
         marks = _marks([entry.name])
         view = by_mark.get(marks[0]) if marks else None
         if view is None:

@@ -73,16 +73,33 @@ def serve(
     settings = settings or ServiceSettings()
     set_up_log(settings)
     try:
-        watcher, pool = open_shop(folder.absolute(), cluster, settings, handler)
+        opened = _open_when_there(folder.absolute(), cluster, settings, handler, once=once)
     except UnfitFolderError as error:
         logger.error("%s", error)
         return 2
+    if opened is None:
+        return 1
+    watcher, pool = opened
     with _stopped_by_signals(watcher):
         try:
             return _serve(watcher, once=once)
         finally:
             watcher.leave()
             pool.close()
+
+
+def _open_when_there(
+    folder: Path, cluster: str | None, settings: ServiceSettings, handler: str, *, once: bool
+) -> tuple[Watcher, Pool] | None:
+    """Open the shop, waiting for a share that is not there yet; None where ``once`` forbids to wait."""
+    while True:
+        try:
+            return open_shop(folder, cluster, settings, handler)
+        except OSError as error:
+            logger.error("%s cannot be served yet (%s)", folder, error)
+            if once:
+                return None
+            time.sleep(settings.scan_seconds or _SCAN_REMOTE)
 
 
 def open_shop(

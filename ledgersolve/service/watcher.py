@@ -17,7 +17,7 @@ from ledgersolve.service.fair import Line, Turns, Waiting
 from ledgersolve.service.holder import describe
 from ledgersolve.service.hours import is_paused, local_now, quiet_until
 from ledgersolve.service.keeper import Keeper
-from ledgersolve.service.layout import Layout, discard, guard
+from ledgersolve.service.layout import SELFTEST, Layout, discard, guard
 from ledgersolve.service.leases import LeaseWatch
 from ledgersolve.service.names import is_conflict_copy, show
 from ledgersolve.service.settle import Drop, Settler
@@ -103,7 +103,10 @@ class Watcher:
         if now >= self._next_scan:
             self._scan()
         self._start_more()
-        self.keeper.step()
+        try:
+            self.keeper.step()
+        except OSError as error:
+            logger.warning("housekeeping goes on later (%s)", error)
         self._tell(changed)
 
     def _suspend(self, error: OSError) -> None:
@@ -156,22 +159,31 @@ class Watcher:
         for job in jobs:
             if job in self.desk.trays:
                 continue
-            view = self.desk.protocol.view(job)
-            if view is None:
-                continue
-            self.left_in_jobs += view.state not in (State.BROKEN, State.EMPTY)
-            if view.state is State.EMPTY:
-                self.keeper.empty(job)
-            elif view.state is State.BROKEN:
-                self._alert_broken(view)
-            elif view.reply is not None:
-                if self.desk.may_try(job):
-                    self.desk.hand_on(view)
-            elif view.input is not None and self.leases.left_behind(view) and self.desk.may_try(job):
-                status = self.disk.status(view.input)
-                owner = f"account {status.st_uid}"
-                waiting.append(Waiting(owner, status.st_size, -math.inf, view))
+            try:
+                waiting += self._look_at_job(job)
+            except OSError as error:  # one job's trouble is not the others'; a lost share shows right after
+                self.left_in_jobs += 1
+                self.desk.wait_for(job, self.desk.settings.retry_seconds)
+                logger.warning("job %s: not looked after yet (%s)", job, error)
         return waiting
+
+    def _look_at_job(self, job: str) -> list[Waiting]:
+        view = self.desk.protocol.view(job)
+        if view is None:
+            return []
+        self.left_in_jobs += view.state not in (State.BROKEN, State.EMPTY)
+        if view.state is State.EMPTY:
+            self.keeper.empty(job)
+        elif view.state is State.BROKEN:
+            self._alert_broken(view)
+        elif not self.desk.may_try(job):
+            return []
+        elif view.reply is not None:
+            self.desk.hand_on(view)
+        elif view.input is not None and self.leases.left_behind(view):
+            status = self.disk.status(view.input)
+            return [Waiting(f"account {status.st_uid}", status.st_size, -math.inf, view)]
+        return []
 
     def _alert_broken(self, view: JobView) -> None:
         name = "" if view.input is None else show(view.input.name)
@@ -200,7 +212,7 @@ class Watcher:
         now = self.clock()
         if now >= self._next_probe or self._probe_trouble:
             self._next_probe = now + _PROBE_SECONDS
-            probe = self.layout.returned / f".{self.layout.new_tmp('probe').name}.tmp"
+            probe = self.layout.returned / f"{SELFTEST}{self.layout.new_tmp('probe').name}"
             try:
                 self.disk.write_new(probe, b"")
                 self._probe_trouble = ""
