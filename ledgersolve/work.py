@@ -13,7 +13,7 @@ from typing import Any
 from ledgersolve import report
 from ledgersolve.answer import VariantAnswer
 from ledgersolve.contract.reading import Job, Reading
-from ledgersolve.findings import Audit, Conflict, Explanation
+from ledgersolve.findings import Answered, Audit, Conflict, Explanation
 from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.lot_sizing.case import Case as LotCase
 from ledgersolve.lot_sizing.explain import explain as explain_lots
@@ -114,7 +114,7 @@ def _work_sites(reading: Reading, case: SiteCase, budget: Budget) -> Worked:
         found = solve_sites(case.as_today(), budget.part("today's network", seconds))
         today = Today(found, confirmed(case.as_today(), found, audit_sites))
     variants = _variants(case, budget, reading.run.questions_share if reading.run.questions else 0.0)
-    answers = ()
+    answers: tuple[Answered, ...] = ()
     if reading.run.questions:
         answers = answer_site_questions(
             case, solved, budget.part("questions", budget.left()), None if today is None else today.solved)
@@ -133,7 +133,7 @@ def _work_lots(reading: Reading, case: LotCase, budget: Budget) -> Worked:
     audit = confirmed(case, solved, audit_lots)
     if audit is None:
         return _without_plan(reading, case, solved, budget, explain_lots)
-    answers = ()
+    answers: tuple[Answered, ...] = ()
     if reading.run.questions:
         answers = answer_lot_questions(case, solved, budget.part("questions", budget.left()))
     given = LotReport(reading, case, solved, audit, _NO_FACTS, _today_plan(case), answers)
