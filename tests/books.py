@@ -16,9 +16,11 @@ from pathlib import Path
 import numpy as np
 import xlsxwriter
 
+from ledgersolve.contract import Reading, read_workbook
 from ledgersolve.lot_sizing.case import Case as LotCase
 from ledgersolve.site_selection.case import CLOSED, OPEN
 from ledgersolve.site_selection.case import Case as SiteCase
+from ledgersolve.workbook.package import open_package
 
 Row = Mapping[str, object]
 Matrix = Sequence[Sequence[object]] | np.ndarray
@@ -35,14 +37,14 @@ class Formula:
 
 def write_book(
     path: Path, sheets: Mapping[str, Sequence[Sequence[object]]],
-    hidden_rows: Mapping[str, Iterable[int]] | None = None,
+    hidden_rows: Mapping[str, Iterable[int]] | None = None, date1904: bool = False,
 ) -> Path:
     """Write sheets of rows (the first row of each list is row 1); None leaves a cell empty.
 
     Text is written as text, also ``"=A1"``; dates as date cells; ``Formula`` as a formula. Rows in
     ``hidden_rows`` count from 1.
     """
-    book = xlsxwriter.Workbook(str(path), {"in_memory": True})
+    book = xlsxwriter.Workbook(str(path), {"in_memory": True, "date_1904": date1904})
     date_format = book.add_format({"num_format": "yyyy-mm-dd"})
     for name, rows in sheets.items():
         sheet = book.add_worksheet(name)
@@ -83,6 +85,17 @@ def _forget_values(path: Path) -> None:
             if info.filename.startswith("xl/worksheets/sheet"):
                 data = pattern.sub(rb"\1", data)
             package.writestr(info, data)
+
+
+def read_sheets(folder: Path, sheets: Mapping[str, Sequence[Sequence[object]]], **more) -> Reading:
+    """Write sheets to a workbook in ``folder`` and read it."""
+    return read_book(write_book(folder / "book.xlsx", sheets, **more))
+
+
+def read_book(path: Path) -> Reading:
+    """Read a workbook."""
+    with open_package(path) as package:
+        return read_workbook(package, path.name)
 
 
 def table(rows: Sequence[Row]) -> list[list[object]]:

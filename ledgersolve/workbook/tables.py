@@ -269,9 +269,15 @@ def _matrix_titles(top: Mapping[int, Sequence[Cell]], codes: Collection[str], da
     """
     if not codes:
         return next((row for row, cells in top.items() if len(cells) > 1), None)
-    counts = {row: len(_known_in(cells, codes, date1904)) for row, cells in top.items()}
+    counts = {row: _count_titles(cells, codes, date1904) for row, cells in top.items()}
     most = max(counts.values(), default=0)
     return None if most == 0 else next(row for row, count in counts.items() if 2 * count >= most)
+
+
+def _count_titles(cells: Sequence[Cell], codes: Collection[str], date1904: bool) -> int:
+    """Known codes in a row; one in front of other cells alone is the code of a row, not a title."""
+    known = _known_in(cells, codes, date1904)
+    return 0 if known == cells[:1] and len(cells) > 1 else len(known)
 
 
 def _code_column(top: Mapping[int, Sequence[Cell]], title_row: int, first_title: int,
