@@ -75,7 +75,8 @@ SITE_FAULTS = {
     "Sites": [
         ["Depots of the north"],
         [None],
-        ["Site", "Fixed cost (EUR/year)", "Capacity", "Least volume", "Rule", "Group", "Latitude", "Longitude", "Today"],
+        ["Site", "Fixed cost (EUR/year)", "Capacity", "Least volume", "Rule", "Group", "Latitude", "Longitude",
+         "Today"],
         ["HAM", 1000, 500, None, "free", None, 53.5, 10.0, "yes"],
         ["MUC", "1.200,50", 500, None, "free", None, 48.1, 11.6, "no"],   # 11 B5 ambiguous
         ["BER", -5, 500, None, "free", None, 52.5, 13.4, "no"],           # 12 B6 negative
@@ -224,7 +225,8 @@ LOT_FAULTS = {
 
 LOT_EXPECTED = [
     ("half a rule", "Settings", "B4"), ("nothing to compare", "Settings", "B5"),
-    ("periods out of order", "Periods", "B4"), ("date expected", "Periods", "B5"), ("duplicate code", "Periods", "A6"),
+    ("periods out of order", "Periods", "B4"), ("date expected", "Periods", "B5"),
+    ("duplicate code", "Periods", "A6"),
     ("holding cost not known", "Items", "D3"), ("rules conflict", "Items", "E4"), ("rules conflict", "Items", "G5"),
     ("rules conflict", "Items", "H6"), ("time without resource", "Items", "J7"), ("unknown code", "Items", "J8"),
     ("unknown code", "Items", "L9"), ("number expected", "Items", "B10"), ("unknown code", "Demand", "F2"),
