@@ -56,7 +56,7 @@ def test_wagner_and_whitin(tmp_path, horizon, value) -> None:
 
 @pytest.mark.parametrize(
     ("setup", "holding", "capacity", "value", "setups"),
-    [(100, 1, None, 580, 3), (100, 1, 150, 580, 3), (500, 1, None, 1700, 2), (100, 3, None, 820, 7)],
+    [(100, 1, None, 580, 3), (100, 1, 150, 580, 3), (500, 1, 150, 1700, 2), (100, 3, None, 820, 7)],
 )
 def test_hopp_and_spearman(tmp_path, setup, holding, capacity, value, setups) -> None:
     """LS-02, Hopp & Spearman, *Factory Physics*, 2.3.3: 580; 1,700 and 820 are our own values."""
