@@ -5,12 +5,16 @@ from entries whose headers may lie.
 """
 
 import struct
+import warnings
 import zipfile
 import zlib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from hashlib import sha256
+from io import BytesIO
 from pathlib import Path
+
+import openpyxl
 
 MAIN = "http://schemas.openxmlformats.org/spreadsheetml/2006/main"
 LINKS = "http://schemas.openxmlformats.org/officeDocument/2006/relationships"
@@ -110,6 +114,13 @@ def contents(path: Path) -> dict[str, bytes]:
 def hashes(path: Path) -> dict[str, str]:
     """SHA-256 of every part."""
     return {name: sha256(content).hexdigest() for name, content in contents(path).items()}
+
+
+def second_reader(path: Path, *, values: bool = False) -> openpyxl.Workbook:
+    """The workbook as an independent reader sees it: formulas, or their cached values."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", UserWarning)  # about what it cannot keep; it only reads here
+        return openpyxl.load_workbook(BytesIO(path.read_bytes()), data_only=values)
 
 
 @dataclass

@@ -13,6 +13,16 @@ from ledgersolve.workbook.splice import Element
 _ORDER = ("numFmts", "fonts", "fills", "borders", "cellStyleXfs", "cellXfs", "cellStyles", "dxfs",
           "tableStyles", "colors", "extLst")
 _FIRST_OWN_FORMAT = 164
+# What a workbook without a style part looks like: one plain format.
+_PLAIN = (
+    f'<?xml version="1.0" encoding="UTF-8" standalone="yes"?>\n<styleSheet xmlns="{MAIN}">'
+    '<fonts count="1"><font><sz val="11"/><name val="Calibri"/><family val="2"/></font></fonts>'
+    '<fills count="2"><fill><patternFill patternType="none"/></fill>'
+    '<fill><patternFill patternType="gray125"/></fill></fills>'
+    '<borders count="1"><border><left/><right/><top/><bottom/><diagonal/></border></borders>'
+    '<cellStyleXfs count="1"><xf numFmtId="0" fontId="0" fillId="0" borderId="0"/></cellStyleXfs>'
+    '<cellXfs count="1"><xf numFmtId="0" fontId="0" fillId="0" borderId="0" xfId="0"/></cellXfs>'
+    '<cellStyles count="1"><cellStyle name="Normal" xfId="0" builtinId="0"/></cellStyles></styleSheet>')
 
 Key = tuple[object, ...]
 
@@ -28,10 +38,7 @@ class MergedStyles:
 
 def merge_styles(theirs: str | None, ours: str) -> MergedStyles:
     """Bring all cell formats and live formats of ``ours`` into ``theirs`` (None: there is no style part)."""
-    if theirs is None:
-        cells = range(len(_entries(ours, "cellXfs")))
-        live = range(len(_entries(ours, "dxfs")))
-        return MergedStyles(ours, {index: index for index in cells}, {index: index for index in live})
+    theirs = _PLAIN if theirs is None else theirs
     pools = {name: _Pool(theirs, name) for name in ("fonts", "fills", "borders", "cellXfs", "dxfs")}
     formats = _Formats(theirs, ours)
     maps = {name: [pools[name].index(part) for part in _parts(ours, name)]
