@@ -3,12 +3,14 @@
 from collections.abc import Sequence
 from dataclasses import replace
 
-from ledgersolve.findings import Answered, Column
+from ledgersolve.findings import Answered
+from ledgersolve.findings import Column as AnswerColumn
 from ledgersolve.report import names, style
-from ledgersolve.report.tables import FOOTER, heading, paragraph
+from ledgersolve.report.tables import FOOTER, Column, heading, paragraph, write_table
 from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Series, Style
 
-WIDTH = 8
+WIDEST, NARROWEST = 34.0, 13.0
+LEAST_COLUMNS = 7
 PATTERNS = ("", "wide_upward_diagonal", "dotted_grid", "wide_downward_diagonal", "light_horizontal")
 COLOURS = (style.PETROL, style.RUST, style.MOSS, style.QUIET, "6B4E8A")
 CHART_ROWS = 17
@@ -18,45 +20,60 @@ def answers_sheet(name: str, answers: Sequence[Answered], currency: str, per: st
     """Write the answers one below the other; None where there are none."""
     if not answers:
         return None
-    sheet = ResultSheet(name, tab_colour=style.MOSS, landscape=True)
-    sheet.widths = {0: 34.0, **dict.fromkeys(range(1, WIDTH), 17.0)}
-    heading(sheet, names.ANSWERS, "Questions that come up when a plan is discussed. Every answer was found by solving again, "
-            "not by guessing; where time was short, the words say how far it is certain.", WIDTH)
+    sheet = ResultSheet(name, tab_colour=style.MOSS, landscape=True, widths=_widths(answers))
+    last = len(sheet.widths) - 1
+    heading(sheet, names.ANSWERS, "Questions that come up when a plan is discussed. Every answer was found by solving "
+            "again, not by guessing; where time was short, the words say how far it is certain.", last + 1)
     row = 3
     for answer in answers:
-        row = _write(sheet, row, answer, (currency, per)) + 1
+        for column in range(last + 1):
+            sheet.put(row, column, answer.question if column == 0 else None, style.SECTION)
+        sheet.heights[row] = 22.0
+        paragraph(sheet, row + 1, 0, last, answer.words, style.TEXT)
+        row = _table(sheet, row + 2, answer, (currency, per)) + 1
     sheet.footer = FOOTER
     return sheet
 
 
-def _write(sheet: ResultSheet, row: int, answer: Answered, money: tuple[str, str]) -> int:
-    for column in range(WIDTH):
-        sheet.put(row, column, answer.question if column == 0 else None, style.SECTION)
-    sheet.heights[row] = 22.0
-    paragraph(sheet, row + 1, 0, WIDTH - 1, answer.words, style.TEXT)
-    row += 2
+def _widths(answers: Sequence[Answered]) -> dict[int, float]:
+    """Widths that suit the columns of all answers, which stand one below the other."""
+    widths = dict.fromkeys(range(LEAST_COLUMNS), NARROWEST)
+    for answer in answers:
+        for column, given in enumerate(answer.columns):
+            texts = [line[column] for line in answer.rows]
+            longest = max((len(text) for text in texts if isinstance(text, str)), default=0)
+            wanted = max(longest * 0.95 + 3.0, len(given.title) * 0.6 + 3.0, NARROWEST + 3.0)
+            widths[column] = max(widths.get(column, NARROWEST), min(WIDEST, wanted))
+    return widths
+
+
+def _table(sheet: ResultSheet, row: int, answer: Answered, money: tuple[str, str]) -> int:
+    """Write the figures behind an answer; gives the next free row."""
     if not answer.rows:
         return row
-    for column, given in enumerate(answer.columns):
+    columns = []
+    for number, given in enumerate(answer.columns):
+        values = [line[number] for line in answer.rows]
         unit = f" ({money[0]}{money[1]})" if given.kind == "money" and "(" not in given.title else ""
-        look = style.HEADER if given.kind == "text" else style.HEADER_RIGHT
-        sheet.put(row, column, given.title + unit, look)
-    sheet.heights[row] = 28.0
-    for place, line in enumerate(answer.rows, start=row + 1):
-        for column, (given, value) in enumerate(zip(answer.columns, line, strict=True)):
-            sheet.put(place, column, value, _look(given, money[0], isinstance(value, str)))
+        look = _look(given, money[0], [value for value in values if isinstance(value, int | float)])
+        styles = [WORDS if isinstance(value, str) else look for value in values]
+        columns.append(Column(given.title, given.title + unit, values, look, sheet.widths[number], styles=styles))
+    write_table(sheet, row, columns)
     last = row + len(answer.rows)
-    if answer.picture is not None:
-        _picture(sheet, answer, row, last, money[0])
-        return last + 2 + CHART_ROWS
-    return last + 1
+    if answer.picture is None:
+        return last + 1
+    _picture(sheet, answer, row, last, money[0])
+    return last + 2 + CHART_ROWS
 
 
-def _look(column: Column, currency: str, words: bool) -> Style:
-    if column.kind == "text" or words:
-        return replace(style.WRAPPED, size=9.0)
+WORDS = replace(style.WRAPPED_CELL, valign="vcenter")
+
+
+def _look(column: AnswerColumn, currency: str, figures: Sequence[float]) -> Style:
+    if column.kind == "text":
+        return WORDS
     formats = {"money": style.money_format(currency), "percent": style.PERCENT}
-    return style.number(formats.get(column.kind, "#,##0.##"))
+    return style.number(formats.get(column.kind) or style.figure_format(figures))
 
 
 def _picture(sheet: ResultSheet, answer: Answered, row: int, last: int, currency: str) -> None:

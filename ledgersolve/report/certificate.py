@@ -129,11 +129,16 @@ def _group_charge(lanes: Lanes, balance: Floats) -> Floats:
     return charge
 
 
+def fewest_sites(lanes: Lanes) -> int:
+    """Least number of open sites: at least one where some demand must be met."""
+    return max(lanes.fewest, int((lanes.needs & np.isinf(lanes.unmet_cost)).any()))
+
+
 def _count_charge(lanes: Lanes, balance: Floats) -> float:
     """Charge per open site at which the allowed number of sites is worth opening."""
     forced = int((lanes.rule == OPEN).sum())
     ranked = np.sort(balance[(lanes.rule != OPEN) & (lanes.rule != CLOSED)])
-    most, fewest = lanes.most - forced, lanes.fewest - forced
+    most, fewest = lanes.most - forced, fewest_sites(lanes) - forced
     if 0 <= most < ranked.size and ranked[most] < 0:
         return float(-ranked[most])
     if 0 < fewest <= ranked.size and ranked[fewest - 1] > 0:
@@ -150,7 +155,7 @@ def _rules(case: Case, lanes: Lanes, supply: float, count: float, group: Floats)
     if count > 0:
         rows.append(("Charge per site x most sites, handed back", -count * lanes.most))
     if count < 0:
-        rows.append(("Charge per site x fewest sites", -count * lanes.fewest))
+        rows.append(("Charge per site x fewest sites", -count * fewest_sites(lanes)))
     if group.any():
         total = sum(float(group[lanes.group == number].max()) for number in np.unique(lanes.group[lanes.group >= 0]))
         rows.append(("Charges of groups, handed back", -total))

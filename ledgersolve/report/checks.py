@@ -50,20 +50,28 @@ def write_checks(sheet: ResultSheet, row: int, checks: Sequence[LiveCheck], tole
     rows = range(row + 2, last + 2)
     required = [c.required.value if isinstance(c.required, Figure) else c.required for c in checks]
     formulas = [c.required.formula if isinstance(c.required, Figure) else "" for c in checks]
-    figures = style.number("#,##0.######")
+    figures = [style.number(style.figure_format(_figures(c))) for c in checks]
+    asked = [replace(style.WRAPPED_CELL, number_format=look.number_format) for look in figures]
+    plain = style.number(style.WHOLE)
     write_table(sheet, row, [
-        Column("rule", "Rule", [c.rule for c in checks], style.WRAPPED, 30),
-        Column("subject", "Checked on", [c.subject for c in checks], style.WRAPPED, 36),
-        Column("required", "Required", required, replace(figures, wrap=True), 22, formulas),
-        Column("got", "Found in the sheets", [c.got.value for c in checks], figures, 16, [c.got.formula for c in checks]),
-        Column("broken", "Broken by", [c.broken_by.value for c in checks], figures, 13,
-               [c.broken_by.formula for c in checks]),
+        Column("rule", "Rule", [c.rule for c in checks], style.WRAPPED_CELL, 30),
+        Column("subject", "Checked on", [c.subject for c in checks], style.WRAPPED_CELL, 36),
+        Column("required", "Required", required, style.WRAPPED_CELL, 30, formulas, styles=asked),
+        Column("got", "Found in the sheets", [c.got.value for c in checks], plain, 18,
+               [c.got.formula for c in checks], styles=figures),
+        Column("broken", "Broken by", [c.broken_by.value for c in checks], plain, 13,
+               [c.broken_by.formula for c in checks], styles=figures),
         Column("status", "Status", [OK if c.broken_by.value <= TOLERANCE else BROKEN for c in checks],
                replace(style.BOLD, align="center"), 12,
                [f'IF(E{r}<={tolerance},"{OK}","{BROKEN}")' for r in rows]),
     ])
     shade_status(sheet, row + 1, last, 5)
     return last + 1
+
+
+def _figures(check: LiveCheck) -> list[float]:
+    required = [check.required.value] if isinstance(check.required, Figure) else []
+    return [check.got.value, check.broken_by.value, *required]
 
 
 def checks_at(name: str, row: int, count: int) -> ChecksAt:
@@ -87,11 +95,12 @@ def write_audit(sheet: ResultSheet, row: int, audit: Audit) -> int:
               "nothing with the search. These are its findings as words; they do not change with the sheet.", style.NOTE)
     checks = audit.checks
     write_table(sheet, row + 2, [
-        Column("rule", "Rule", [c.rule for c in checks], style.WRAPPED, 30),
-        Column("subject", "Checked on", [c.subject for c in checks], style.WRAPPED, 36),
-        Column("required", "Required", [c.required for c in checks], style.WRAPPED, 22),
-        Column("got", "Found by the audit", [c.got for c in checks], style.WRAPPED, 16),
-        Column("broken", "Broken by", [c.worst for c in checks], style.number("#,##0.######"), 13),
+        Column("rule", "Rule", [c.rule for c in checks], style.WRAPPED_CELL, 30),
+        Column("subject", "Checked on", [c.subject for c in checks], style.WRAPPED_CELL, 36),
+        Column("required", "Required", [c.required for c in checks], style.WRAPPED_CELL, 30),
+        Column("got", "Found by the audit", [c.got for c in checks], style.WRAPPED_CELL, 16),
+        Column("broken", "Broken by", [c.worst for c in checks],
+               style.number(style.figure_format([c.worst for c in checks])), 13),
         Column("status", "Status", [OK if c.ok else BROKEN for c in checks], replace(style.BOLD, align="center"), 12),
     ])
     shade_status(sheet, row + 3, row + 2 + max(1, len(checks)), 5)

@@ -4,6 +4,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
+from ledgersolve.findings import Answered
 from ledgersolve.mip import Verdict
 from ledgersolve.mip.run import Solved
 from ledgersolve.report import style
@@ -16,14 +17,20 @@ from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
 LEFT, RIGHT, LAST = 0, 4, 6
 WIDTHS = (31.0, 15.0, 15.0, 2.0, 31.0, 18.0, 10.0)
 LINE = 15.0
-CHART_ROWS = 15
+CHART_ROWS = 20
 
 KICKER = Style(size=9.0, bold=True, colour=style.RUST)
 HEADLINE = Style(size=15.0, bold=True, colour=style.INK, wrap=True, valign="top")
-TILE_LABEL = Style(size=9.0, colour=style.QUIET, fill=style.PALE, top=2, border_colour=style.PETROL, indent=1)
-TILE_NUMBER = Style(size=16.0, bold=True, colour=style.PETROL, fill=style.PALE, align="left", indent=1)
-TILE_NOTE = Style(size=8.0, colour=style.QUIET, fill=style.PALE, wrap=True, valign="top", indent=1)
+TILE_LABEL = Style(size=9.0, colour=style.QUIET, fill=style.PALE, top=2, border_colour=style.PETROL, align="left", indent=1)
+TILE_NUMBER = Style(size=17.0, bold=True, colour=style.PETROL, fill=style.PALE, align="left", indent=1)
+TILE_NOTE = Style(size=8.0, colour=style.QUIET, fill=style.PALE, wrap=True, valign="top", align="left", indent=1)
 WARNING = Style(bold=True, colour=style.ALARM, wrap=True)
+
+PICTURE_WIDTH = int(sum(7 * width + 5 for width in WIDTHS[:RIGHT])) - 8
+PICTURE_HEIGHT = CHART_ROWS * 20 - 8
+"""Size in pixels of the left one of two pictures."""
+
+ROW = Style(bottom=1, border_colour="D5DBE1", align="left", indent=1)
 
 Tile = tuple[str, Scalar, str, str]
 """Label, value, formula (with equals sign, or ""), note."""
@@ -58,6 +65,7 @@ class Decision:
     sure: Sequence[str]
     binding: Sequence[str]
     check: Sequence[str]
+    asked: Sequence[tuple[str, str]]
     glossary: Sequence[tuple[str, str]]
     provenance: str
     currency: str
@@ -80,6 +88,7 @@ def write_decision(name: str, page: Decision, picture: Chart | None) -> ResultSh
     for left, right in ((("What changes", page.changes), ("How sure this is", page.sure)),
                         (("What limits the plan", page.binding), ("Check before you act", page.check))):
         row = _points(sheet, row, left, right)
+    row = _asked(sheet, page.asked, row)
     row = _foot(sheet, page, row)
     sheet.print_area = (0, 0, row - 1, LAST)
     sheet.footer = FOOTER
@@ -99,23 +108,33 @@ def _head(sheet: ResultSheet, page: Decision) -> int:
 
 
 def _tiles(sheet: ResultSheet, page: Decision, row: int) -> int:
+    """Four figures to remember, and the line that warns when they no longer hold."""
     sheet.heights[row] = 6.0
-    places = ((0, 0), (1, 2), (4, 4), (5, 6))
-    for (first, last), (label, value, formula, note) in zip(places, page.tiles, strict=True):
-        number = isinstance(value, int | float)
-        look = replace(TILE_NUMBER, number_format=style.money_format(page.currency) if number else "",
-                       size=16.0 if number else 12.0, wrap=not number)
-        for line, (what, shown, how) in enumerate(((label, TILE_LABEL, ""), (value, look, formula), (note, TILE_NOTE, ""))):
-            sheet.put(row + 1 + line, first, what, shown, formula=how)
-            if last > first:
-                sheet.put(row + 1 + line, last, None, shown)
-                sheet.merges.append((row + 1 + line, first, row + 1 + line, last))
-    sheet.heights |= {row + 1: 15.0, row + 2: 26.0, row + 3: 24.0}
-    formula = page.changed
-    sheet.put(row + 4, LEFT, "", WARNING, formula=formula)
+    places = ((0, 0), (1, 2), (RIGHT, RIGHT), (RIGHT + 1, LAST))
+    grounds = (style.PALE, style.SAND, style.PALE, style.SAND)
+    for columns, tile, ground in zip(places, page.tiles, grounds, strict=True):
+        _tile(sheet, row + 1, columns, tile, (ground, page.currency))
+    sheet.heights |= {row + 1: 16.0, row + 2: 26.0, row + 3: 24.0, row + 4: 14.0}
+    sheet.put(row + 4, LEFT, "", WARNING, formula=page.changed)
     sheet.merges.append((row + 4, LEFT, row + 4, LAST))
-    sheet.heights[row + 4] = 12.0
     return row + 5
+
+
+def _tile(sheet: ResultSheet, row: int, columns: tuple[int, int], tile: Tile, how: tuple[str, str]) -> None:
+    label, value, formula, note = tile
+    ground, currency = how
+    look = replace(TILE_NUMBER, size=12.0, wrap=True)
+    if isinstance(value, int | float):
+        shown = f"{value:,.{style.money_digits(currency)}f}"
+        look = replace(TILE_NUMBER, number_format=style.money_format(currency), size=17.0 if len(shown) < 15 else 12.0)
+    lines = ((label, TILE_LABEL, ""), (value, look, formula), (note, TILE_NOTE, ""))
+    first, last = columns
+    for place, (words, line, calculated) in enumerate(lines, start=row):
+        for column in range(first, last + 1):
+            sheet.put(place, column, words if column == first else None, replace(line, fill=ground),
+                      formula=calculated if column == first else "")
+        if last > first:
+            sheet.merges.append((place, first, place, last))
 
 
 def _tables(sheet: ResultSheet, page: Decision, row: int) -> int:
@@ -129,8 +148,8 @@ def _comparison(sheet: ResultSheet, page: Decision, row: int) -> int:
         sheet.put(row, column, title, style.HEADER if column == 0 else style.HEADER_RIGHT)
     for line in page.comparison:
         row += 1
-        look = Style(bottom=1, border_colour="D5DBE1")
-        figures = replace(look, align="right", number_format=line.number_format)
+        look = ROW
+        figures = replace(look, align="right", indent=0, number_format=line.number_format)
         sheet.put(row, 0, line.label, look)
         sheet.put(row, 1, line.today, figures)
         sheet.put(row, 2, line.plan, replace(figures, bold=True), formula=line.formula)
@@ -145,7 +164,7 @@ def _parts(sheet: ResultSheet, page: Decision, row: int) -> int:
     money = style.money_format(page.currency)
     total = page.total.value
     for place, (label, figure) in enumerate(page.parts, start=row + 1):
-        look = Style(bottom=1, border_colour="D5DBE1")
+        look = ROW
         _part_row(sheet, place, total_row, label, figure, total, (look, money))
     _part_row(sheet, total_row, total_row, "Cost of the plan", page.total, total, (style.TOTAL, money))
     return total_row + 1
@@ -155,25 +174,25 @@ def _part_row(sheet: ResultSheet, row: int, total_row: int, label: str, figure: 
               looks: tuple[Style, str]) -> None:
     look, money = looks
     sheet.put(row, RIGHT, label, look)
-    sheet.put(row, RIGHT + 1, figure.value, replace(look, align="right", number_format=money), formula=figure.written)
+    sheet.put(row, RIGHT + 1, figure.value, replace(look, align="right", indent=0, number_format=money), formula=figure.written)
     share = figure.value / total if total else None
     formula = f"=F{row + 1}/F${total_row + 1}" if total else ""
-    sheet.put(row, RIGHT + 2, share, replace(look, align="right", number_format=style.PERCENT), formula=formula)
+    sheet.put(row, RIGHT + 2, share, replace(look, align="right", indent=0, number_format=style.PERCENT), formula=formula)
 
 
 def parts_chart(name: str, row: int, count: int, currency: str, per: str) -> Chart:
     """Bar chart of the cost parts; ``row`` is the first part's row (from 0)."""
     series = Series("Cost", Area(name, row, RIGHT, row + count - 1, RIGHT),
                     Area(name, row, RIGHT + 1, row + count - 1, RIGHT + 1), style.PETROL)
-    return Chart("bar", "Cost by part", (series,), 0, RIGHT, y_title=f"{currency}{per}", number_format="#,##0", legend="",
-                 description="Bars of the cost parts that stand in the table above")
+    return Chart("bar", "Cost by part", (series,), 0, RIGHT, y_title=f"{currency}{per}", number_format="#,##0",
+                 legend="", from_zero=True, description="Bars of the cost parts that stand in the table above")
 
 
 def _charts(sheet: ResultSheet, charts: Sequence[Chart], row: int) -> int:
     """Two charts beside each other, or one over the whole width."""
     widths = [_pixels(LEFT, 3), _pixels(RIGHT, LAST)] if len(charts) > 1 else [_pixels(LEFT, LAST)]
     for chart, column, width in zip(charts, (LEFT, RIGHT), widths, strict=False):
-        sheet.charts.append(replace(chart, row=row, column=column, width=width - 8, height=CHART_ROWS * 20 - 8))
+        sheet.charts.append(replace(chart, row=row, column=column, width=width - 8, height=PICTURE_HEIGHT))
     for place in range(row, row + CHART_ROWS):
         sheet.heights[place] = LINE
     return row + CHART_ROWS
@@ -192,10 +211,23 @@ def _points(sheet: ResultSheet, row: int, left: tuple[str, Sequence[str]], right
         for column in range(first, last + 1):
             sheet.put(row, column, title if column == first else None, style.SECTION)
         wide = sum(WIDTHS[first:last + 1])
-        tallest = max(tallest, text_height(words, wide, 9.0))
-        sheet.put(row + 1, first, words, replace(style.WRAPPED, size=9.0))
+        tallest = max(tallest, text_height(words, wide, 10.0))
+        sheet.put(row + 1, first, words, style.WRAPPED)
         sheet.merges.append((row + 1, first, row + 1, last))
     sheet.heights |= {row: 20.0, row + 1: tallest + 4.0}
+    return row + 2
+
+
+def _asked(sheet: ResultSheet, asked: Sequence[tuple[str, str]], row: int) -> int:
+    """Questions that the meeting will ask, with their answers, over the whole width."""
+    if not asked:
+        return row
+    for column in range(LAST + 1):
+        sheet.put(row, column, "Asked ahead" if column == LEFT else None, style.SECTION)
+    sheet.heights[row] = 20.0
+    words = "\n".join(f"\u2022 {question} {answer}" for question, answer in asked)
+    paragraph(sheet, row + 1, LEFT, LAST, words, style.TEXT)
+    sheet.heights[row + 1] += 4.0
     return row + 2
 
 
@@ -220,19 +252,19 @@ def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[st
         return ["Proven: no plan that keeps the rules of the workbook costs less."]
     gap = f" ({style.percent_words(rest / cost, 'up')})" if cost > 0 else ""
     if solved.verdict is Verdict.PROVEN_BEST:
-        return [f"Proven best as far as matters: no other plan that keeps the rules can be cheaper by more than {most}"
-                f"{gap}."]
+        return [f"Proven, as far as it matters: no plan that keeps the rules is cheaper by more than {most}{gap}."]
     if solved.verdict is Verdict.WITHIN_GAP:
-        return [f"Good enough by your own setting: the search stopped once no plan could be cheaper by more than "
-                f"{style.percent_words(accepted_gap)}. At most {most}{gap} could still be saved."]
-    return [f"The time limit ended the search. This is the best plan found; a better one could save at most {most}{gap}. "
-            "Whether there is one is not known: a higher time limit may tell."]
+        stop = style.percent_words(accepted_gap)
+        return [f"Good enough by your own setting: the search stopped once no plan could be cheaper by more than {stop}. "
+                f"At most {most}{gap} could still be saved."]
+    return ["The time limit ended the search. This is the best plan found; a better one could save at most "
+            f"{most}{gap}. Whether there is one is not known: a higher time limit may tell."]
 
 
 def saving_note(solved: Solved[Any]) -> str:
     """Small print under the most that could still be saved."""
     return {
-        Verdict.PROVEN_BEST: "proven: no plan costs less than this amount below the cost",
+        Verdict.PROVEN_BEST: "proven for every plan that keeps the rules",
         Verdict.WITHIN_GAP: "within the gap that the workbook accepts",
         Verdict.BEST_FOUND: "the time limit ended the search",
     }.get(solved.verdict, "")
@@ -253,5 +285,12 @@ def provenance(workbook: Workbook, run: RunFacts) -> str:
     """One line that says where the page comes from."""
     versions = ", ".join(f"{program} {version}" for program, version in run.versions[:1])
     notices = sum(1 for problem in workbook.problems if not problem.is_error)
-    more = f" {style.counted(notices, 'notice')} and {style.counted(len(workbook.defaults), 'default')} in the run record."
-    return f"Made {run.when:%Y-%m-%d %H:%M} from {run.file_name} by {versions or 'LedgerSolve'}.{more}"
+    listed = f"{style.counted(notices, 'notice')} and {style.counted(len(workbook.defaults), 'default')}"
+    made = f"Made {run.when:%Y-%m-%d %H:%M} from {run.file_name} by {versions or 'LedgerSolve'}."
+    return f"{made} The run record lists {listed}, all settings and times."
+
+
+def asked_ahead(answers: Sequence[Answered], most: int = 4) -> list[tuple[str, str]]:
+    """Give the answers that belong on the first page; what changes against today stands there already."""
+    return [(answer.question, answer.words) for answer in answers
+            if answer.headline and "today" not in answer.question.lower()][:most]

@@ -6,13 +6,13 @@ from dataclasses import replace
 
 from ledgersolve.report import style
 from ledgersolve.report.inputs import RunFacts
-from ledgersolve.report.tables import FOOTER, Column, paragraph, quoted, text_height, write_table
+from ledgersolve.report.tables import FOOTER, Column, paragraph, quoted, write_table
 from ledgersolve.workbook.cells import column_letters, column_number
 from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.sheets import LiveFormat, ResultSheet
 
 TO_FIX, DONE, DROP_AGAIN = "to fix", "done", "drop again"
-WIDTHS = (24.0, 10.0, 22.0, 38.0, 34.0, 44.0, 10.0, 12.0, 11.0, 11.0)
+WIDTHS = (17.0, 8.0, 19.0, 36.0, 32.0, 40.0, 8.0, 13.0, 9.0, 9.0)
 WATCHED_SPANS = 40
 """At most so many runs of cells of one entry are watched by its status."""
 _LETTERS = "ABCDEFGHIJKLMNOPQRSTUVWXYZ"
@@ -73,7 +73,7 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
 
 
 def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bool) -> None:
-    wrapped = replace(style.WRAPPED, size=9.0)
+    wrapped = style.WRAPPED_CELL
     status = [_status(problem, place) for place, problem in enumerate(problems, start=row + 1)]
     columns = [
         Column("sheet", "Sheet", [p.sheet or "the workbook" for p in problems], wrapped, WIDTHS[0]),
@@ -89,15 +89,12 @@ def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bo
         columns.append(Column("status", "Status", [value for value, _ in status],
                               replace(style.BOLD, align="center", valign="top"), WIDTHS[7],
                               [formula for _, formula in status]))
-        limits = replace(style.number("#,##0.######"), valign="top", size=9.0, colour=style.QUIET)
+        limits = replace(style.number("General"), valign="top", size=9.0, colour=style.QUIET)
         columns.append(Column("low", "Right from", [_low(p) if f else None for p, (_, f) in zip(problems, status, strict=True)],
                               limits, WIDTHS[8]))
         columns.append(Column("high", "Right up to", [p.high if f else None for p, (_, f) in
                                                       zip(problems, status, strict=True)], limits, WIDTHS[9]))
     write_table(sheet, row, columns)
-    for place, problem in enumerate(problems, start=row + 1):
-        texts = ((_found(problem), 3), (problem.expected, 4), (problem.remedy, 5), (problem.title, 2), (problem.sheet, 0))
-        sheet.heights[place] = max(text_height(text, WIDTHS[column], 9.0) for text, column in texts)
     if live and problems:
         for word, look in ((DONE, style.FINE), (TO_FIX, style.BAD)):
             sheet.live_formats.append(LiveFormat(row + 1, 7, row + len(problems), 7, f'=$H{row + 2}="{word}"', look))

@@ -1,7 +1,7 @@
 """The ledger: every cost of a plan as a line of quantity x rate, with subtotals that add up to the total."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from ledgersolve.report import style
 from ledgersolve.report.tables import FIRST_ROW, FOOTER, TITLE_ROW, Figure, heading, quoted
@@ -10,6 +10,7 @@ from ledgersolve.workbook.sheets import ResultSheet, RowGroup, Style
 
 KIND, PART, WHO, WHAT, QUANTITY, UNIT, RATE, RATE_UNIT, AMOUNT, FROM = range(10)
 TOTAL_ROW = FIRST_ROW
+SMALL_CELL = replace(style.SMALL, align="left", indent=1)
 
 
 @dataclass(frozen=True, slots=True)
@@ -117,7 +118,7 @@ def write_ledger(name: str, parts: Sequence[Part], currency: str, per: str, who:
     row = TOTAL_ROW + 1
     money = style.money_format(currency)
     for part in kept:
-        row = _write_part(ledger, part, row, money, style.rate_format(currency), f"{currency}{per}")
+        row = _write_part(ledger, part, row, currency)
     ledger.last_row = row - 1
     _write_total(ledger, sum(part.amount for part in kept), money)
     sheet.filter = (TITLE_ROW, KIND, ledger.last_row, FROM)
@@ -142,10 +143,12 @@ def _titles(sheet: ResultSheet, who: str, what: str, money: str) -> None:
             "workbook again. Filter the column Row by \"line\" to see the single costs only.", 10)
 
 
-def _write_part(ledger: Ledger, part: Part, row: int, money: str, rate: str, amount_unit: str) -> int:
+def _write_part(ledger: Ledger, part: Part, row: int, currency: str) -> int:
     sheet, top = ledger.sheet, row
     ledger.parts[part.name] = top
-    looks = _Looks.of(part.quantity_format, rate, money)
+    money = style.money_format(currency)
+    rates = (line.rate.value for group in part.groups for line in group.lines)
+    looks = _Looks.of(part.quantity_format, style.rate_format(currency, rates), money)
     row += 1
     for group in part.groups:
         if not group.lines:
@@ -196,20 +199,20 @@ class _Looks:
 def _write_line(ledger: Ledger, part: Part, line: Line, row: int, looks: _Looks) -> None:
     put = ledger.sheet.put
     ledger.rows[line.key] = row
-    put(row, KIND, "line", style.SMALL)
-    put(row, PART, part.name, style.SMALL)
-    put(row, WHO, line.who)
-    put(row, WHAT, line.what)
+    put(row, KIND, "line", SMALL_CELL)
+    put(row, PART, part.name, SMALL_CELL)
+    put(row, WHO, line.who, style.CELL)
+    put(row, WHAT, line.what, style.CELL)
     put(row, QUANTITY, line.quantity.value, looks.quantity, formula=line.quantity.written)
-    put(row, UNIT, line.unit or part.unit, style.SMALL)
+    put(row, UNIT, line.unit or part.unit, SMALL_CELL)
     put(row, RATE, line.rate.value, looks.rate, formula=line.rate.written)
-    put(row, RATE_UNIT, line.rate_unit or part.rate_unit, style.SMALL)
+    put(row, RATE_UNIT, line.rate_unit or part.rate_unit, SMALL_CELL)
     put(row, AMOUNT, line.amount, looks.amount, formula=f"=E{row + 1}*G{row + 1}")
     if line.source is not None:
         words = f"{line.source.sheet}, {line.source.address}"
         put(row, FROM, f"{words} {line.note}".rstrip(), style.LINK, link=link_to(line.source))
     else:
-        put(row, FROM, line.note, style.SMALL)
+        put(row, FROM, line.note, SMALL_CELL)
 
 
 def link_to(ref: CellRef) -> str:

@@ -2,12 +2,14 @@
 
 import numpy as np
 
+from ledgersolve.lot_sizing.case import Floats
 from ledgersolve.report import names, style
 from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.decision import (
     Decision,
     Tile,
     Today,
+    asked_ahead,
     changed_since,
     how_sure,
     provenance,
@@ -42,7 +44,7 @@ def lot_decision(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> ResultSheet
         comparison=_comparison(at, ledger), comparison_title="Against today",
         parts=[(name, Figure(amounts[name], ledger.part(name))) for name in ledger.parts],
         total=Figure(report.audit.total, ledger.total), changes=_changes(at), sure=_sure(at), binding=_binding(at),
-        check=_check(at), glossary=GLOSSARY, provenance=provenance(report.workbook, report.run),
+        check=_check(at), asked=asked_ahead(report.answers), glossary=GLOSSARY, provenance=provenance(report.workbook, report.run),
         currency=report.case.currency, per="",
     )
     return write_decision(at.name(names.DECISION), page, picture(at))
@@ -112,15 +114,17 @@ def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
               value(report.plan.stock), "#,##0.0", f"=SUM({at.stock.whole()})/COLUMNS({at.stock.line(0)})"),
     ]
     if at.may_wait:
-        rows.append(Today(f"Late units x {case.period_unit}s", missing if before is None else float(before.late.sum()),
-                          float(report.plan.late.sum()), "#,##0.##"))
+        rows.append(_sum_row(f"Late units x {case.period_unit}s", None if before is None else before.late, report.plan.late))
     if at.may_lose:
-        rows.append(Today("Units never delivered", missing if before is None else float(before.lost.sum()),
-                          float(report.plan.lost.sum()), "#,##0.##"))
+        rows.append(_sum_row("Units never delivered", None if before is None else before.lost, report.plan.lost))
     if case.resources:
-        rows.append(Today("Overtime (time units)", missing if before is None else float(before.overtime.sum()),
-                          float(report.plan.overtime.sum()), "#,##0.##"))
+        rows.append(_sum_row("Overtime (time units)", None if before is None else before.overtime, report.plan.overtime))
     return rows
+
+
+def _sum_row(label: str, before: Floats | None, now: Floats) -> Today:
+    figures = [float(now.sum())] + ([] if before is None else [float(before.sum())])
+    return Today(label, "not asked for" if before is None else figures[1], figures[0], style.figure_format(figures))
 
 
 def _one_unit(at: LotPlaces) -> str:
@@ -231,5 +235,5 @@ def picture(at: LotPlaces) -> Chart:
                kind="line", marker="square", marker_size=5),
     )
     return Chart("column", f"Load of {case.resources[r]} by {case.period_unit}", both, 0, 0, x_title=case.period_unit,
-                 y_title="time units", number_format="#,##0",
+                 y_title="time units", number_format="#,##0", from_zero=True,
                  description="Columns of the load and a line of the time available in each period")

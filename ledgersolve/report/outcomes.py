@@ -8,7 +8,7 @@ from ledgersolve.report import names, style
 from ledgersolve.report.fix_list import fix_list
 from ledgersolve.report.inputs import NoPlan, RunFacts, Workbook
 from ledgersolve.report.run_record import Outcome, run_record
-from ledgersolve.report.tables import FOOTER, Column, paragraph, quoted, text_height, write_table
+from ledgersolve.report.tables import FOOTER, Column, paragraph, quoted, write_table
 from ledgersolve.workbook.origins import CellRef, Origins
 from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.sheets import ResultSheet, Style
@@ -68,7 +68,7 @@ def _conflicts(sheet: ResultSheet, row: int, given: NoPlan) -> None:
     conflicts, origins = given.conflicts, given.workbook.origins
     refs = [_place(origins, conflict) for conflict in conflicts]
     sheet.put(row - 1, 0, "What cannot hold together", style.SECTION)
-    look = replace(style.WRAPPED, size=10.0)
+    look = style.WRAPPED_CELL
     write_table(sheet, row, [
         Column("what", "What cannot hold", [c.words for c in conflicts], look, WIDTHS[0]),
         Column("cell", "Cell", [f"{r.sheet}, {r.address}" if r is not None else None for r in refs],
@@ -77,9 +77,6 @@ def _conflicts(sheet: ResultSheet, row: int, given: NoPlan) -> None:
         Column("stake", "Rows and rules at stake", [_subjects(c) for c in conflicts], look, WIDTHS[2]),
         Column("remedy", "The smallest change that helps", [c.remedy for c in conflicts], look, WIDTHS[3]),
     ])
-    for place, conflict in enumerate(conflicts, start=row + 1):
-        texts = ((conflict.words, 0), (_subjects(conflict), 2), (conflict.remedy, 3))
-        sheet.heights[place] = max(text_height(words, WIDTHS[column]) for words, column in texts)
 
 
 def _place(origins: Origins, conflict: Conflict) -> CellRef | None:
@@ -93,8 +90,11 @@ def _place(origins: Origins, conflict: Conflict) -> CellRef | None:
 
 
 def _subjects(conflict: Conflict) -> str:
-    return "; ".join(f"{s.sheet}: {', '.join(s.key)} ({s.title})" if s.key else f"{s.sheet}: {s.title}"
-                     for s in conflict.subjects[:8])
+    words = []
+    for subject in conflict.subjects[:8]:
+        parts = [", ".join(subject.key), subject.title and f"({subject.title})"]
+        words.append(f"{subject.sheet}: {' '.join(part for part in parts if part)}")
+    return "; ".join(words)
 
 
 def fix_sheets(workbook: Workbook, run: RunFacts, settled: Mapping[str, str]) -> list[ResultSheet]:

@@ -44,9 +44,9 @@ def write_periods(at: LotPlaces, sheet: ResultSheet, table: PeriodTable) -> None
     last = column_letters(FIRST_PERIOD + block.periods)
     for r, code in enumerate(table.rows):
         row = block.first_row + r
-        sheet.put(row, CODE, code)
-        sheet.put(row, NAME, table.row_names[r])
-        sheet.put(row, UNIT, table.units[r], style.SMALL)
+        sheet.put(row, CODE, code, style.CELL)
+        sheet.put(row, NAME, table.row_names[r], style.CELL)
+        sheet.put(row, UNIT, table.units[r], replace(style.SMALL, align="left", indent=1))
         if table.sum_title:
             formula = f"=SUM({column_letters(FIRST_PERIOD + 1)}{row + 1}:{last}{row + 1})"
             sheet.put(row, SUM, float(table.values[r].sum()), total, formula=formula)

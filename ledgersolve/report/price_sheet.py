@@ -130,7 +130,8 @@ def _laid_out(at: SitePlaces, sheet: ResultSheet, certificate: Certificate) -> t
     if case.m * case.n > COPIED_LANES:
         return None
     linked = case.m * case.n <= LINKED_LANES
-    look = style.number(style.rate_format(case.currency))
+    sample = case.lane_cost[certificate.usable][:2000].tolist()
+    look = style.number(style.rate_format(case.currency, sample))
     first, last = column_letters(FIRST_COLUMN + 1), column_letters(FIRST_COLUMN + case.n)
     spans = []
     for j, code in enumerate(case.sites):
@@ -154,7 +155,7 @@ def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, 
     for row, label, words in rows:
         sheet.put(row, 0, label, style.HEADER if row == CODE_ROW else style.BOLD)
         sheet.put(row, 1, words, style.HEADER if row == CODE_ROW else style.NOTE)
-    amounts, rates = style.number(style.money_format(money)), style.number(style.rate_format(money))
+    amounts, rates = style.number(style.money_format(money)), style.number(style.rate_format(money, [0.001]))
     header = replace(style.HEADER_RIGHT, wrap=False)
     for place, i in enumerate(order):
         column = FIRST_COLUMN + place

@@ -55,12 +55,12 @@ def run_record(name: str, workbook: Workbook, run: RunFacts, outcome: Outcome) -
 def _facts(sheet: ResultSheet, row: int, run: RunFacts, outcome: Outcome) -> int:
     sheet.put(row, 0, "Run", style.SECTION)
     rows: list[tuple[str, Scalar, Style]] = [
-        ("Workbook", run.file_name, style.WRAPPED),
-        ("SHA-256 of the workbook", run.sha256, style.WRAPPED),
+        ("Workbook", run.file_name, style.WRAPPED_CELL),
+        ("SHA-256 of the workbook", run.sha256, style.WRAPPED_CELL),
         ("Date and time of the run", f"{run.when:%Y-%m-%d %H:%M %Z}".strip(), style.TEXT),
         *outcome.rows,
         *[(f"Version of {program}", version, style.TEXT) for program, version in run.versions],
-        *[(label, words, style.WRAPPED) for label, words in run.more],
+        *[(label, words, style.WRAPPED_CELL) for label, words in run.more],
     ]
     for place, (label, value, look) in enumerate(rows, start=row + 1):
         sheet.put(place, 0, label, style.TEXT)
@@ -78,7 +78,7 @@ def _steps(sheet: ResultSheet, row: int, run: RunFacts, outcome: Outcome) -> int
         return row + 2
     write_table(sheet, row + 1, [
         Column("step", "Step", [step for step, _, _ in rows], width=40),
-        Column("note", "What happened", [note for _, _, note in rows], style.WRAPPED, 62),
+        Column("note", "What happened", [note for _, _, note in rows], style.WRAPPED_CELL, 62),
         Column("seconds", "Time (seconds)", [seconds for _, seconds, _ in rows], style.number(style.SECONDS), 22),
     ])
     return row + 2 + len(rows)
@@ -88,7 +88,7 @@ def _settings(sheet: ResultSheet, row: int, workbook: Workbook) -> int:
     sheet.put(row, 0, "Settings used", style.SECTION)
     write_table(sheet, row + 1, [
         Column("setting", "Setting", [name for name, _ in workbook.settings], width=40),
-        Column("value", "Value used", [value for _, value in workbook.settings], style.WRAPPED, 62),
+        Column("value", "Value used", [value for _, value in workbook.settings], style.WRAPPED_CELL, 62),
     ])
     return row + 2 + len(workbook.settings)
 
@@ -101,7 +101,7 @@ def _defaults(sheet: ResultSheet, row: int, workbook: Workbook) -> int:
         return row + 2
     write_table(sheet, row + 1, [
         Column("what", "Column or setting", [d.title for d in defaults], width=40),
-        Column("value", "Default taken", [d.value for d in defaults], style.WRAPPED, 62),
+        Column("value", "Default taken", [d.value for d in defaults], style.WRAPPED_CELL, 62),
         Column("cells", "Cells (number)", [d.cells for d in defaults], style.number(style.WHOLE), 22),
         Column("sheet", "Sheet", [d.sheet for d in defaults], width=36),
     ])
@@ -114,10 +114,10 @@ def _notices(sheet: ResultSheet, row: int, notices: Sequence[Problem]) -> int:
         sheet.put(row + 1, 0, "none", style.NOTE)
         return row + 2
     write_table(sheet, row + 1, [
-        Column("where", "Where", [where(p) for p in notices], style.WRAPPED, 40),
-        Column("found", "Found", [p.found for p in notices], style.WRAPPED, 62),
+        Column("where", "Where", [where(p) for p in notices], style.WRAPPED_CELL, 40),
+        Column("found", "Found", [p.found for p in notices], style.WRAPPED_CELL, 62),
         Column("count", "Places (number)", [p.count for p in notices], style.number(style.WHOLE), 22),
-        Column("remedy", "What to do", [p.remedy for p in notices], style.WRAPPED, 36),
+        Column("remedy", "What to do", [p.remedy for p in notices], style.WRAPPED_CELL, 36),
     ])
     return row + 2 + len(notices)
 

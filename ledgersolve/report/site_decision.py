@@ -10,6 +10,7 @@ from ledgersolve.report.decision import (
     Decision,
     Tile,
     Today,
+    asked_ahead,
     changed_since,
     how_sure,
     provenance,
@@ -46,7 +47,7 @@ def site_decision(at: SitePlaces, ledger: Ledger, checks: ChecksAt, picture: Cha
         changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
         comparison=_comparison(at, ledger), comparison_title="Against today", parts=parts,
         total=Figure(report.audit.total, ledger.total),
-        changes=_changes(at), sure=_sure(at), binding=_binding(at), check=_check(at), glossary=GLOSSARY,
+        changes=_changes(at), sure=_sure(at), binding=_binding(at), check=_check(at), asked=asked_ahead(report.answers), glossary=GLOSSARY,
         provenance=provenance(report.workbook, report.run), currency=case.currency, per=at.per,
     )
     return write_decision(name, page, picture)

@@ -13,7 +13,7 @@ from ledgersolve.site_selection.case import CLOSED, FREE, OPEN
 from ledgersolve.workbook.sheets import LiveFormat, ResultSheet, Scalar, Style
 
 OPEN_ROW = replace(style.TEXT, bold=True, fill=style.PALE)
-MOVED_ROW = replace(style.TEXT, bold=True, fill=style.SAND)
+MOVED_ROW = replace(style.TEXT, fill=style.SAND)
 SERVED_CELLS = 30_000_000
 """Customers x deliveries up to which delivered shares are formulas; beyond, recalculating would take too long."""
 
@@ -87,16 +87,18 @@ def _capacity_columns(at: SitePlaces) -> list[Column]:
     refs = [origins.number("Sites", (code,), "Capacity") for code in case.sites]
     used = [float(at.load[j] / case.capacity[j]) if capped[j] and case.capacity[j] > 0 else None for j in rows]
     figures = style.number(at.demand_format)
-    least = [origins.number("Sites", (code,), "Least volume") for code in case.sites]
-    return [
+    columns = [
         Column("capacity", f"Capacity ({case.demand_unit}{at.per})",
                [float(case.capacity[j]) if capped[j] else "unlimited" for j in rows], figures, 14,
                [ref.formula if ref is not None and capped[j] else "" for j, ref in enumerate(refs)]),
         Column("use", "Load of capacity (%)", used, style.number(style.PERCENT), 11,
                [f"{where.here('load', j)}/{where.here('capacity', j)}" if used[j] is not None else "" for j in rows]),
-        Column("least", f"Least volume if open ({case.demand_unit}{at.per})", case.least_volume.tolist(), figures, 14,
-               [ref.formula if ref is not None else "" for ref in least]),
     ]
+    if case.least_volume.any():
+        least = [origins.number("Sites", (code,), "Least volume") for code in case.sites]
+        columns.append(Column("least", f"Least volume if open ({case.demand_unit}{at.per})", case.least_volume.tolist(),
+                              figures, 14, [ref.formula if ref is not None else "" for ref in least]))
+    return columns
 
 
 def _cost_columns(at: SitePlaces, ledger: Ledger) -> list[Column]:

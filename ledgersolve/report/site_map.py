@@ -5,6 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ledgersolve.report import names, style
+from ledgersolve.report.decision import PICTURE_HEIGHT, PICTURE_WIDTH
 from ledgersolve.report.site_places import SitePlaces
 from ledgersolve.report.tables import FIRST_ROW, Column, detail_sheet
 from ledgersolve.site_selection.case import Floats, Ints
@@ -12,8 +13,10 @@ from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
 
 DRAWN_DELIVERIES = 3000
 LABELLED_SITES = 16
-PLOT_RATIO = 1.5
-"""Width over height of the plot area, so that a mile is as long sideways as upwards."""
+PLOT = (0.08, 0.10, 0.89, 0.66)
+"""Where the plot stands in the picture: left, top, width, height as parts of it."""
+PLOT_RATIO = PLOT[2] * PICTURE_WIDTH / (PLOT[3] * PICTURE_HEIGHT)
+"""Width over height of the plot, so that a mile is as long sideways as upwards."""
 
 
 @dataclass(frozen=True)
@@ -72,7 +75,7 @@ def _drawn(at: SitePlaces) -> list[tuple[int, int]]:
 
 def _customers(at: SitePlaces, customers: Floats) -> _Points:
     kept = np.argsort(-at.report.case.demand, kind="stable")[:DRAWN_DELIVERIES]
-    size = 5 if at.report.case.n <= 300 else 3
+    size = 4 if at.report.case.n <= 300 else 3
     return _Points("Customer", _listed(customers, np.sort(kept), at.report.case.customers), style.QUIET, "circle", size)
 
 
@@ -128,8 +131,7 @@ def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) ->
     title = "Sites, customers and deliveries"
     if at.sites.size > DRAWN_DELIVERIES:
         title += f" (largest {DRAWN_DELIVERIES:,})"
-    return Chart("scatter", title, tuple(made), 0, 0, x_title="longitude", y_title="latitude", number_format="0.0",
-                 x_limits=horizontal, y_limits=vertical,
+    return Chart("scatter", title, tuple(made), 0, 0, number_format="0", x_limits=horizontal, y_limits=vertical, plot=PLOT,
                  description="Sites and customers by longitude and latitude; lines show who serves whom")
 
 

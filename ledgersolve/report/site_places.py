@@ -102,7 +102,9 @@ class SitePlaces:
     def sites_at(self) -> Places:
         """Places of the table of sites."""
         keys = ["site", "name", "open"] + (["today", "change"] if self.has_today else [])
-        keys += ["customers", "load", "capacity", "use", "least", "fixed", "once", "lane", "handling", "cost", "part"]
+        keys += ["customers", "load", "capacity", "use"]
+        keys += ["least"] if self.report.case.least_volume.any() else []
+        keys += ["fixed", "once", "lane", "handling", "cost", "part"]
         keys += ["rule"] if self.ruled else []
         keys += ["group"] if self.grouped else []
         return places(self.name(names.PLAN_SITES), keys, self.report.case.m)

@@ -63,7 +63,7 @@ def tolerance_row(sheet: ResultSheet) -> None:
 
 def proof_widths(sheet: ResultSheet) -> None:
     """Set the widths that text of a proof is fitted to."""
-    for column, width in enumerate((30.0, 36.0, 22.0, 16.0, 13.0, 12.0)):
+    for column, width in enumerate((28.0, 34.0, 30.0, 18.0, 13.0, 13.0)):
         sheet.widths[column] = width
 
 
@@ -186,7 +186,7 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
                  cells: _Cells) -> None:
     case = at.report.case
     money = style.number(style.money_format(case.currency))
-    per_unit = style.number(style.rate_format(case.currency))
+    per_unit = style.number(style.rate_format(case.currency, certificate.volume_price.tolist()))
     rule = Lanes.of(case).rule
     words = ["open" if r == OPEN else "closed" if r == CLOSED else "free" for r in rule.tolist()]
     rows = [row + 2 + j for j in range(case.m)]
@@ -197,8 +197,8 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
     balance = np.where(np.array(live), balance, 0.0)
     charge = [_charge_formula(at, certificate, cells, j) if live[j] else "" for j in range(case.m)]
     columns = [
-        Column("site", "Site", case.sites, style.TEXT, 30),
-        Column("rule", "Rule in the bound (free, open, closed)", words, style.TEXT, 36),
+        Column("site", "Site", case.sites, style.CELL, 30),
+        Column("rule", "Rule in the bound (free, open, closed)", words, style.CELL, 36),
         Column("fixed", f"Fixed and opening cost, less closing cost saved ({at.money_unit})",
                certificate.fixed.tolist(), money, 22, [_fixed_formula(at, j) for j in range(case.m)]),
         Column("charge", f"Charges of rules ({at.money_unit})", certificate.charge.tolist(), money, 16, charge),

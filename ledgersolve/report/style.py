@@ -23,20 +23,22 @@ GOOD_GROUND, GOOD = "E3F0E6", "1B5E3B"
 LINE = "9AA5B1"
 
 TEXT = Style()
+CELL = Style(align="left", indent=1)
 WRAPPED = Style(wrap=True, valign="top")
+WRAPPED_CELL = Style(wrap=True, valign="top", align="left", indent=1)
 SMALL = Style(size=8.0, colour=QUIET)
 SMALL_WRAPPED = Style(size=8.0, colour=QUIET, wrap=True, valign="top")
 BOLD = Style(bold=True)
 TITLE = Style(size=16.0, bold=True, colour=PETROL)
 SUBTITLE = Style(size=10.0, colour=QUIET)
 SECTION = Style(size=11.0, bold=True, colour=PETROL, bottom=1, border_colour=PETROL, valign="bottom")
-HEADER = Style(bold=True, colour=WHITE, fill=PETROL, wrap=True, valign="vcenter", size=9.0)
-HEADER_RIGHT = replace(HEADER, align="right")
+HEADER = Style(bold=True, colour=WHITE, fill=PETROL, wrap=True, align="left", indent=1, size=9.0)
+HEADER_RIGHT = replace(HEADER, align="right", indent=0)
 NOTE = Style(italic=True, colour=QUIET, size=9.0)
-LINK = Style(colour=PETROL, underline=True)
-TOTAL = Style(bold=True, fill=PALE, top=1, bottom=2, border_colour=PETROL)
-SUBTOTAL = Style(bold=True, fill=PALE)
-SUBSUBTOTAL = Style(bold=True, fill=SAND)
+LINK = Style(colour=PETROL, underline=True, align="left", indent=1)
+TOTAL = Style(bold=True, fill=PALE, top=1, bottom=2, border_colour=PETROL, align="left", indent=1)
+SUBTOTAL = Style(bold=True, fill=PALE, align="left", indent=1)
+SUBSUBTOTAL = Style(bold=True, fill=SAND, align="left", indent=1)
 BAD = Style(bold=True, colour=ALARM, fill=ALARM_GROUND)
 FINE = Style(colour=GOOD, fill=GOOD_GROUND)
 
@@ -67,10 +69,12 @@ def money_format(currency: str) -> str:
     return "#,##0" + ("." + "0" * digits if digits else "")
 
 
-def rate_format(currency: str) -> str:
-    """Number format of a rate: the currency's digits, and four more where they are needed."""
+def rate_format(currency: str, rates: Iterable[float] = ()) -> str:
+    """Number format of rates: the currency's digits, and two more where one of them needs more."""
     digits = money_digits(currency)
-    return "#,##0." + "0" * max(digits, 1) + "####"
+    finer = any(abs(rate * 10**digits - round(rate * 10**digits)) > 1e-6 for rate in rates)
+    shown = digits + 2 if finer else digits
+    return "#,##0" + ("." + "0" * shown if shown else "")
 
 
 def figure_format(values: Iterable[float]) -> str:
@@ -86,7 +90,7 @@ def figure_format(values: Iterable[float]) -> str:
 
 def with_format(style: Style, number_format: str) -> Style:
     """Give the style with a number format, figures to the right."""
-    return replace(style, number_format=number_format, align="right")
+    return replace(style, number_format=number_format, align="right", indent=0)
 
 
 def number(number_format: str) -> Style:

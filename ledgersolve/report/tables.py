@@ -11,7 +11,8 @@ from ledgersolve.workbook.sheets import ResultSheet, Scalar, Style
 TITLE_ROW = 3
 """Row (from 0) of a detail sheet's column titles; the data begin below."""
 FIRST_ROW = TITLE_ROW + 1
-LINE_HEIGHT = 13.5
+LINE_HEIGHT = 13.0
+ONE_LINE = 16.5
 LONGEST_HEIGHT = 400.0
 
 
@@ -32,16 +33,21 @@ class Figure:
 class Column:
     """A column of a table: ``key`` for formulas, ``title`` with its unit, values and maybe formulas.
 
-    ``formulas`` are without the equals sign; "" where the value is a constant.
+    ``formulas`` are without the equals sign; "" where the value is a constant. ``styles`` win over ``style``.
     """
 
     key: str
     title: str
     values: Sequence[Scalar]
-    style: Style = style.TEXT
+    style: Style = style.CELL
     width: float = 12.0
     formulas: Sequence[str] | None = None
     links: Sequence[str] | None = None
+    styles: Sequence[Style] | None = None
+
+    def look(self, place: int) -> Style:
+        """Style of the value at ``place``."""
+        return self.style if self.styles is None else self.styles[place]
 
 
 @dataclass(frozen=True)
@@ -98,7 +104,7 @@ def paragraph(sheet: ResultSheet, row: int, first: int, last: int, words: str, l
 
 def text_height(words: str, width: float, size: float = 10.0) -> float:
     """Height in points of wrapped text in a column ``width`` characters wide."""
-    fits = max(1.0, width * 10.0 / size * 1.05)
+    fits = max(1.0, width * 10.0 / size * 1.17)
     lines = sum(max(1, math.ceil(len(line) / fits)) for line in words.split("\n"))
     return min(LONGEST_HEIGHT, lines * LINE_HEIGHT * size / 10.0 + 3.0)
 
@@ -115,9 +121,21 @@ def write_table(sheet: ResultSheet, row: int, columns: Sequence[Column], first_c
         for place, value in enumerate(column.values):
             formula = formulas[place] if formulas is not None else ""
             link = links[place] if links is not None else ""
-            sheet.put(row + 1 + place, number, value, column.style, formula=f"={formula}" if formula else "",
+            sheet.put(row + 1 + place, number, value, column.look(place),
+                      formula=f"={formula}" if formula else "",
                       link=link)
     sheet.heights[row] = max(sheet.heights.get(row, 0.0), 13.0 * tallest + 4.0)
+    _fit_rows(sheet, row + 1, columns)
+
+
+def _fit_rows(sheet: ResultSheet, first: int, columns: Sequence[Column]) -> None:
+    """Make rows as high as their wrapped texts need; rows of one line keep the standard height."""
+    wrapped = [column for column in columns if column.style.wrap]
+    for place in range(len(columns[0].values) if wrapped else 0):
+        texts = [(column, value) for column in wrapped if isinstance(value := column.values[place], str)]
+        height = max((text_height(text, column.width, column.style.size) for column, text in texts), default=0.0)
+        if height > ONE_LINE:
+            sheet.heights[first + place] = max(sheet.heights.get(first + place, 0.0), height)
 
 
 def detail_sheet(name: str, title: str, words: str, columns: Sequence[Column], tab: str) -> ResultSheet:

@@ -20,14 +20,14 @@ def plan_variants(at: SitePlaces) -> ResultSheet | None:
     if not report.variants:
         return None
     case, currency = report.case, report.case.currency
-    solved: list[Solved[Plan]] = [report.solved, *[result.solved for result in report.variants]]
+    solved = _solved(at)
     money = style.number(style.money_format(currency))
     base = report.audit.total
     columns = [
-        Column("variant", "Variant", [OWN, *[result.variant.name for result in report.variants]], style.WRAPPED, 26),
+        Column("variant", "Variant", [OWN, *[result.variant.name for result in report.variants]], style.WRAPPED_CELL, 26),
         Column("change", "What it changes", ["nothing", *[changed(r.variant, case.distance_unit) for r in report.variants]],
-               style.WRAPPED, 40),
-        Column("verdict", "Verdict", [s.verdict.value for s in solved], style.WRAPPED, 16),
+               style.WRAPPED_CELL, 40),
+        Column("verdict", "Verdict", [s.verdict.value for s in solved], style.WRAPPED_CELL, 16),
         Column("cost", f"Cost ({at.money_unit})", [_cost(s) for s in solved], money, 18),
         Column("against", f"Against the own case ({at.money_unit})",
                [None if s.cost is None else s.cost - base for s in solved],
@@ -36,14 +36,19 @@ def plan_variants(at: SitePlaces) -> ResultSheet | None:
                 for row, s in enumerate(solved, start=TITLE_ROW + 2)]),
         Column("still", f"Could still be saved, at most ({at.money_unit})", [_still(s) for s in solved], money, 18),
         Column("count", "Open sites (number)", [_count(s) for s in solved], style.number(style.WHOLE), 11),
-        Column("open", "Open sites", [_open(at, s) for s in solved], style.WRAPPED, 40),
+        Column("open", "Open sites", [_open(at, s) for s in solved], style.WRAPPED_CELL, 40),
         Column("differs", "Differs from the own case by",
-               ["", *[_difference(at, result) for result in report.variants]], style.WRAPPED, 36),
+               ["", *[_difference(at, result) for result in report.variants]], style.WRAPPED_CELL, 36),
     ]
     sheet = detail_sheet(at.name(names.PLAN_VARIANTS), "Variants", "Each variant was solved for itself; it changes only what "
                          "its row in your sheet Variants names. No figure stands where there is no plan.", columns, style.MOSS)
     _chart(sheet, at, len(solved))
     return sheet
+
+
+def _solved(at: SitePlaces) -> list[Solved[Plan]]:
+    """The own case first, then the variants."""
+    return [at.report.solved, *[result.solved for result in at.report.variants]]
 
 
 def changed(variant: Variant, distance_unit: str) -> str:
@@ -93,4 +98,5 @@ def _chart(sheet: ResultSheet, at: SitePlaces, count: int) -> None:
                     Area(sheet.name, TITLE_ROW + 1, 3, TITLE_ROW + count, 3), style.PETROL)
     sheet.charts.append(Chart("bar", "Cost of each variant", (series,), TITLE_ROW + count + 2, 0, 760,
                               60 + 28 * min(count, 20), y_title=at.money_unit, number_format="#,##0", legend="",
+                              from_zero=min((s.cost or 0.0) for s in _solved(at)) >= 0,
                               description="Bars of the cost of each variant in the table above"))

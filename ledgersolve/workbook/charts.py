@@ -100,7 +100,7 @@ def _marker(series: Series) -> dict[str, Any]:
     return {
         "type": series.marker, "size": series.marker_size,
         "border": {"color": f"#{series.colour}", "width": 1.25},
-        "fill": {"none": True} if open_mark else {"color": f"#{series.colour}"},
+        "fill": {"color": "#FFFFFF"} if open_mark else {"color": f"#{series.colour}"},
     }
 
 
@@ -109,26 +109,40 @@ def _dress(drawn: Any, chart: Chart) -> None:
         "name": clean_text(chart.title), "overlay": False, "layout": None,
         "name_font": {"name": "Arial", "size": 11, "bold": True, "color": _INK},
     })
-    categories = _axis(chart.x_title, chart.x_limits, "", chart)
-    if "bar" in chart.kind:
-        categories["reverse"] = True  # first category on top
-    drawn.set_x_axis(categories)
-    drawn.set_y_axis(_axis(chart.y_title, chart.y_limits, chart.number_format, chart))
+    scatter, bar = chart.kind == "scatter", "bar" in chart.kind
+    across = _axis(chart.x_title, chart.x_limits, chart.number_format if scatter else "", not scatter)
+    up = _axis(chart.y_title, chart.y_limits, chart.number_format, not scatter)
+    if chart.from_zero:
+        up["min"] = 0
+    if bar:
+        across["reverse"] = True  # first category on top
+        across, up = up, across  # the library names the axes of bars by where they are drawn
+        up["major_gridlines"]["visible"] = False
+        across["label_position"] = "high"
+    elif not scatter:
+        across["major_gridlines"]["visible"] = False
+    drawn.set_x_axis(across)
+    drawn.set_y_axis(up)
+    if chart.plot is not None:
+        left, top, width, height = chart.plot
+        layout = {"x": left, "y": top, "width": width, "height": height}
+        drawn.set_plotarea({"fill": {"color": "#FFFFFF"}, "layout": layout})
+    else:
+        drawn.set_plotarea({"fill": {"color": "#FFFFFF"}})
     if chart.legend:
         drawn.set_legend({"position": chart.legend, "font": _FONT})
     else:
         drawn.set_legend({"none": True})
     drawn.set_chartarea({"border": {"none": True}, "fill": {"color": "#FFFFFF"}})
-    drawn.set_plotarea({"fill": {"color": "#FFFFFF"}})
     drawn.show_blanks_as("gap")
     drawn.set_size({"width": chart.width, "height": chart.height})
 
 
-def _axis(title: str, limits: tuple[float, float] | None, number_format: str, chart: Chart) -> dict[str, Any]:
+def _axis(title: str, limits: tuple[float, float] | None, number_format: str, grid: bool) -> dict[str, Any]:
     given: dict[str, Any] = {
         "num_font": _FONT, "name_font": _FONT | {"bold": False, "color": _GREY},
         "line": {"color": _GREY, "width": 0.75},
-        "major_gridlines": {"visible": chart.kind != "scatter", "line": {"color": _FAINT, "width": 0.5}},
+        "major_gridlines": {"visible": grid, "line": {"color": _FAINT, "width": 0.5}},
     }
     if title:
         given["name"] = title

@@ -32,12 +32,15 @@ def _properties(style: Style) -> dict[str, object]:
         "num_format": style.number_format, "bold": style.bold, "italic": style.italic,
         "align": style.align, "text_wrap": style.wrap, "indent": style.indent,
         "underline": 1 if style.underline else 0, "top": style.top, "bottom": style.bottom,
+        "left": style.left,
     }
     properties |= {name: value for name, value in given.items() if value}
     if style.fill:
         properties |= {"bg_color": f"#{style.fill}", "pattern": 1}
     if style.top:
         properties["top_color"] = f"#{style.border_colour}"
+    if style.left:
+        properties["left_color"] = f"#{style.border_colour}"
     if style.bottom:
         properties["bottom_color"] = f"#{style.border_colour}"
     return properties

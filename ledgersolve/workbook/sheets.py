@@ -27,6 +27,7 @@ class Style:
     bottom: int = 0
     border_colour: str = "9AA5B1"
     indent: int = 0
+    left: int = 0
     underline: bool = False
 
 
@@ -94,6 +95,8 @@ class Chart:
     x_limits: tuple[float, float] | None = None
     y_limits: tuple[float, float] | None = None
     legend: str = "bottom"
+    from_zero: bool = False  # the value axis starts at 0
+    plot: tuple[float, float, float, float] | None = None  # left, top, width, height as parts of the chart
     description: str = ""
 
 
