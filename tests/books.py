@@ -98,6 +98,16 @@ def read_book(path: Path) -> Reading:
         return read_workbook(package, path.name)
 
 
+def errors(reading: Reading) -> list[tuple[str, str, str]]:
+    """Kind, sheet and cell of each error."""
+    return [(p.kind, p.sheet, p.cell) for p in reading.problems if p.is_error]
+
+
+def notices(reading: Reading) -> list[tuple[str, str, str]]:
+    """Kind, sheet and cell of each notice."""
+    return [(p.kind, p.sheet, p.cell) for p in reading.problems if not p.is_error]
+
+
 def table(rows: Sequence[Row]) -> list[list[object]]:
     """Rows of a list sheet: the titles, in the order they are first met, then one row a mapping."""
     titles: dict[str, None] = {}

@@ -8,7 +8,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from ledgersolve.contract import Job, Reading
+from ledgersolve.contract import Job
 from ledgersolve.lot_sizing.case import Case as LotCase
 from ledgersolve.lot_sizing.case import plain_case as plain_lots
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Variant, plain_case
@@ -16,22 +16,14 @@ from tests.books import (
     Formula,
     book_of_lot_case,
     book_of_site_case,
+    errors,
     lot_sheets,
+    notices,
     read_book,
     read_sheets,
     site_sheets,
     write_book,
 )
-
-
-def errors(reading: Reading) -> list[tuple[str, str, str]]:
-    """Kind, sheet and cell of each error."""
-    return [(p.kind, p.sheet, p.cell) for p in reading.problems if p.is_error]
-
-
-def notices(reading: Reading) -> list[tuple[str, str, str]]:
-    """Kind, sheet and cell of each notice."""
-    return [(p.kind, p.sheet, p.cell) for p in reading.problems if not p.is_error]
 
 
 def small_site(**more) -> dict[str, list[list[object]]]:
