@@ -1,0 +1,81 @@
+"""The command line: exit codes, JSON and nothing else, templates, refusals."""
+
+import json
+import subprocess
+import sys
+
+import pytest
+
+from tests.books import site_book
+
+SITES = [{"Site": "A", "Fixed cost": 10}]
+CUSTOMERS = [{"Customer": "x", "Demand": 4}]
+
+
+def run(*words: object, cwd=None):
+    """Run the command as a program would."""
+    command = [sys.executable, "-m", "ledgersolve", *map(str, words)]
+    return subprocess.run(command, capture_output=True, text=True, cwd=cwd, timeout=120)
+
+
+@pytest.fixture
+def good(tmp_path):
+    """A workbook that is solved at once."""
+    return site_book(tmp_path / "good.xlsx", SITES, CUSTOMERS, lane_costs=[[2]], settings={"Questions": "no"})
+
+
+@pytest.fixture
+def bad(tmp_path):
+    """A workbook with one fault."""
+    return site_book(tmp_path / "bad.xlsx", SITES, [{"Customer": "x", "Demand": "?"}], lane_costs=[[2]])
+
+
+def test_solving_prints_one_object_and_nothing_else(good, tmp_path) -> None:
+    """Standard output is JSON from the first to the last byte; exit code 0."""
+    done = run("solve", good, "--into", tmp_path / "out", "--json")
+    assert done.returncode == 0, done.stderr
+    told = json.loads(done.stdout)
+    assert told["total_cost"] == pytest.approx(18)
+    assert (tmp_path / "out" / "good solved.xlsx").exists()
+
+
+def test_several_files_print_a_list_and_the_worst_exit_code(good, bad) -> None:
+    """One good and one faulty workbook: a list of two, exit code 3."""
+    done = run("solve", good, bad, "--json")
+    assert done.returncode == 3
+    assert [answer["outcome"] for answer in json.loads(done.stdout)] == ["solved", "to fix"]
+
+
+def test_checking_finds_the_fault_without_solving(good, bad) -> None:
+    """The faulty cell is told in words on the terminal; a fit workbook gives 0."""
+    done = run("check", bad)
+    assert done.returncode == 3
+    assert "B2" in done.stdout
+    assert run("check", good, "--json").returncode == 0
+
+
+def test_wrong_usage_is_two(tmp_path) -> None:
+    """A file that is not there and an unknown job are mistakes of usage."""
+    assert run("solve", tmp_path / "none.xlsx").returncode == 2
+    assert run("template", "cooking").returncode == 2
+
+
+def test_a_template_is_written_once(tmp_path) -> None:
+    """The template appears under the name given and is not overwritten."""
+    target = tmp_path / "empty.xlsx"
+    assert run("template", "lot sizing", target).returncode == 0
+    size = target.stat().st_size
+    assert run("template", "lot sizing", target).returncode == 2
+    assert target.stat().st_size == size
+    assert run("check", target).returncode == 3
+
+
+def test_version_and_help() -> None:
+    """Both answer at once, without an error."""
+    from ledgersolve import __version__
+
+    assert run("--version").stdout.strip() == f"ledgersolve {__version__}"
+    told = run("--help")
+    assert told.returncode == 0
+    for command in ("solve", "check", "watch", "template", "demo", "status"):
+        assert command in told.stdout

@@ -1,0 +1,196 @@
+"""One workbook from path to returned copy: outcomes, names, nothing overwritten, failures answered."""
+
+import hashlib
+import os
+import zipfile
+
+import openpyxl
+import pytest
+
+from ledgersolve import Outcome, Verdict, check_workbook, job, solve_workbook
+from ledgersolve.work import AuditError
+from tests.books import lot_book, site_book
+
+SITES = [{"Site": "A", "Fixed cost": 10}, {"Site": "B", "Fixed cost": 30}]
+CUSTOMERS = [{"Customer": "x", "Demand": 4}, {"Customer": "y", "Demand": 6}]
+COSTS = [[1, 9], [8, 1]]
+
+
+def good(tmp_path, **settings):
+    """Two sites, two customers: both open, 10 + 30 + 4 x 1 + 6 x 1 = 50."""
+    given = {"Title": "Two by two", "Questions": "no", **settings}
+    return site_book(tmp_path / "plan.xlsx", SITES, CUSTOMERS, lane_costs=COSTS, settings=given)
+
+
+def digest(path) -> str:
+    """SHA-256 of a file."""
+    return hashlib.sha256(path.read_bytes()).hexdigest()
+
+
+def test_a_good_workbook_comes_back_solved(tmp_path) -> None:
+    """The answer holds the pencil optimum, and the copy opens on the decision."""
+    answer = solve_workbook(good(tmp_path))
+    assert answer.outcome is Outcome.SOLVED
+    assert answer.verdict is Verdict.PROVEN_BEST
+    assert answer.total_cost == pytest.approx(50)
+    assert answer.returned == tmp_path / "plan solved.xlsx"
+    book = openpyxl.load_workbook(answer.returned)
+    assert book.sheetnames[0] == "Decision"
+    assert book.active.title == "Decision"
+    assert book.sheetnames[-4:] == ["Settings", "Sites", "Customers", "Lane costs"]
+
+
+def test_the_machine_readable_answer_has_the_fixed_keys(tmp_path) -> None:
+    """All keys of the contract, and no others."""
+    told = solve_workbook(good(tmp_path)).as_json()
+    assert list(told) == [
+        "file", "job", "title", "outcome", "verdict", "total_cost", "lower_bound", "gap_pct", "returned",
+        "problems", "seconds", "plan", "variants",
+    ]
+    assert list(told["seconds"]) == ["read", "check", "solve", "write", "total"]
+    assert told["gap_pct"] <= 0.01
+    assert told["plan"] == {"open": ["A", "B"]}
+
+
+def test_the_original_is_only_read(tmp_path) -> None:
+    """Solving leaves the bytes of the analyst's file alone."""
+    path = good(tmp_path)
+    before = digest(path)
+    solve_workbook(path)
+    assert digest(path) == before
+
+
+def test_nothing_is_overwritten(tmp_path) -> None:
+    """A second answer stands beside the first, which stays as it is."""
+    path = good(tmp_path)
+    first = solve_workbook(path).returned
+    kept = digest(first)
+    second = solve_workbook(path).returned
+    assert second.name == "plan solved 2.xlsx"
+    assert digest(first) == kept
+
+
+def test_a_folder_without_hard_links_is_served_too(tmp_path, monkeypatch) -> None:
+    """Where links are refused, the answer still comes under an unused name."""
+    def refuse(*_: object) -> None:
+        raise OSError("no links here")
+
+    monkeypatch.setattr(os, "link", refuse)
+    path = good(tmp_path)
+    names = [solve_workbook(path).returned.name for _ in range(2)]
+    assert names == ["plan solved.xlsx", "plan solved 2.xlsx"]
+
+
+def test_a_long_name_is_cut_not_lost(tmp_path) -> None:
+    """A name of 255 bytes leaves room for the word behind it, cut between characters."""
+    path = good(tmp_path)
+    long = path.rename(tmp_path / ("ü" * 125 + ".xlsx"))
+    returned = solve_workbook(long).returned
+    assert returned.exists()
+    assert len(os.fsencode(returned.name)) <= 255
+    assert returned.name.endswith(" solved.xlsx")
+
+
+def test_a_faulty_workbook_comes_back_to_fix(tmp_path) -> None:
+    """The list leads, the faults are in the answer with their cells."""
+    customers = [{"Customer": "x", "Demand": "many"}, {"Customer": "y", "Demand": 6}]
+    path = site_book(tmp_path / "bad.xlsx", SITES, customers, lane_costs=COSTS)
+    answer = solve_workbook(path)
+    assert answer.outcome is Outcome.TO_FIX
+    assert answer.verdict is None
+    assert [(p.sheet, p.cell) for p in answer.problems if p.is_error] == [("Customers", "B2")]
+    assert openpyxl.load_workbook(answer.returned).sheetnames[0] == "To fix"
+
+
+def test_a_mended_copy_comes_back_solved_without_list_and_marks(tmp_path) -> None:
+    """Fix and drop again: the returned file itself is mended and solved."""
+    customers = [{"Customer": "x", "Demand": "many"}, {"Customer": "y", "Demand": 6}]
+    path = site_book(tmp_path / "bad.xlsx", SITES, customers, lane_costs=COSTS, settings={"Questions": "no"})
+    returned = solve_workbook(path).returned
+    book = openpyxl.load_workbook(returned)
+    book["Customers"]["B2"] = 4
+    book.save(tmp_path / "mended.xlsx")
+    answer = solve_workbook(tmp_path / "mended.xlsx")
+    assert answer.total_cost == pytest.approx(50)
+    names = openpyxl.load_workbook(answer.returned).sheetnames
+    assert "To fix" not in names
+    with zipfile.ZipFile(answer.returned) as package:
+        assert not any(b"ledgersolve-flag" in package.read(name) for name in package.namelist())
+
+
+def test_checking_writes_a_copy_for_faults_only(tmp_path) -> None:
+    """A fit workbook is told fit, and no file appears."""
+    answer = check_workbook(good(tmp_path))
+    assert (answer.outcome, answer.verdict, answer.returned) == (Outcome.SOLVED, None, None)
+    assert [path.name for path in tmp_path.iterdir()] == ["plan.xlsx"]
+
+
+def test_a_file_that_is_no_workbook_is_answered_in_a_fresh_one(tmp_path) -> None:
+    """The answer to a text file is a workbook of ours."""
+    path = tmp_path / "notes.xlsx"
+    path.write_text("site;cost\nA;10\n")
+    answer = solve_workbook(path)
+    assert answer.outcome is Outcome.TO_FIX
+    assert openpyxl.load_workbook(answer.returned).sheetnames[0] == "To fix"
+
+
+def test_a_missing_file_is_the_caller_s_mistake(tmp_path) -> None:
+    """No answer is made up for a path without a file."""
+    with pytest.raises(FileNotFoundError, match="there is no file"):
+        solve_workbook(tmp_path / "none.xlsx")
+
+
+def test_a_plan_that_fails_its_audit_is_never_handed_out(tmp_path, monkeypatch) -> None:
+    """The outcome is failed, it says what differed, and the copy holds no decision."""
+    def wrong(*_: object) -> None:
+        raise AuditError("the plan costs 51 by the audit, 50 by the solver")
+
+    monkeypatch.setattr(job, "work", wrong)
+    answer = solve_workbook(good(tmp_path))
+    assert answer.outcome is Outcome.FAILED
+    assert "51 by the audit" in answer.reason
+    assert answer.total_cost is None
+    assert openpyxl.load_workbook(answer.returned).sheetnames[0] == "No plan"
+
+
+def test_a_fault_of_our_own_shows_no_traceback(tmp_path, monkeypatch) -> None:
+    """An unforeseen error becomes an answer in words."""
+    def broken(*_: object) -> None:
+        raise ZeroDivisionError("division by zero")
+
+    monkeypatch.setattr(job, "work", broken)
+    answer = solve_workbook(good(tmp_path))
+    assert answer.outcome is Outcome.FAILED
+    assert "division" not in answer.reason
+    assert answer.returned is not None
+
+
+def test_no_plan_exists_goes_back_to_be_fixed(tmp_path) -> None:
+    """The rule that cannot hold is named with its cell, and no cost is shown."""
+    sites = [{**site, "Capacity": 4} for site in SITES]
+    path = site_book(tmp_path / "tight.xlsx", sites, CUSTOMERS, lane_costs=COSTS)
+    answer = solve_workbook(path)
+    assert (answer.outcome, answer.verdict) == (Outcome.TO_FIX, Verdict.NO_PLAN_EXISTS)
+    assert answer.total_cost is None
+    assert [(p.sheet, p.cell) for p in answer.problems if p.is_error] == [("Sites", "C2")]
+
+
+def test_variants_are_answered_beside_the_case(tmp_path) -> None:
+    """A variant changes what its row names: with A closed, B serves both for 30 + 4 x 8 + 6 x 1."""
+    path = site_book(
+        tmp_path / "plan.xlsx", SITES, CUSTOMERS, lane_costs=COSTS, settings={"Questions": "no"},
+        variants=[{"Variant": "without A", "Closed": "A"}, {"Variant": "double", "Demand factor": 2}],
+    )
+    answer = solve_workbook(path)
+    told = {variant.variant: (variant.total_cost, variant.open) for variant in answer.variants}
+    assert told["without A"] == (pytest.approx(68), ("B",))
+    assert told["double"] == (pytest.approx(60), ("A", "B"))
+
+
+def test_lot_sizing_takes_the_same_way(tmp_path) -> None:
+    """Two periods, one setup: 5 + 3 held once."""
+    path = lot_book(tmp_path / "lots.xlsx", [{"Item": "a", "Setup cost": 5, "Holding cost": 1}], [[2, 3]],
+                    settings={"Questions": "no"})
+    answer = solve_workbook(path)
+    assert answer.total_cost == pytest.approx(8)
+    assert answer.as_json()["plan"] == {"setups": 1}
