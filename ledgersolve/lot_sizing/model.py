@@ -32,7 +32,8 @@ class WholeModel:
     """The model and the numbers of its variables.
 
     ``made``, ``setup``, ``stock``, ``late``, ``lost``, ``multiples`` have shape (N, T), ``family`` (F, T),
-    ``used`` and ``overtime`` (R, T); -1 where the case has no use for the variable.
+    ``used``, ``overtime`` and ``short`` (time beyond all overtime, in elastic models only) (R, T); -1 where
+    there is no such variable.
     """
 
     case: Case
@@ -47,6 +48,7 @@ class WholeModel:
     family: Ints
     used: Ints
     overtime: Ints
+    short: Ints
 
     def setups(self, values: Floats) -> Flags:
         """Shape (N, T): where the values make something."""
@@ -92,11 +94,15 @@ def choose_form(case: Case, tight: Tight) -> Form:
     return Form.PLANT_LOCATION if small else Form.INEQUALITIES
 
 
-def whole_model(case: Case, form: Form | None = None) -> WholeModel:
-    """Build the model; ``form`` None chooses by size."""
+def whole_model(case: Case, form: Form | None = None, *, dear: float | None = None) -> WholeModel:
+    """Build the model; ``form`` None chooses by size.
+
+    With ``dear``, time beyond all overtime is there at that price a time unit: then a plan that does not fit
+    yet has a place in the model too.
+    """
     tight = tight_limits(case)
     model = LinearModel()
-    whole = _variables(case, tight, model)
+    whole = _variables(case, tight, model, dear)
     _balance(whole)
     _stock_limits(whole)
     _lots(whole)
@@ -109,7 +115,7 @@ def whole_model(case: Case, form: Form | None = None) -> WholeModel:
     return whole
 
 
-def _variables(case: Case, tight: Tight, model: LinearModel) -> WholeModel:
+def _variables(case: Case, tight: Tight, model: LinearModel, dear: float | None) -> WholeModel:
     n, t = case.n, case.t
     possible = tight.most_made > 0
     made = model.add_variables(n * t, upper=tight.most_made.ravel(), cost=case.unit_cost.ravel())
@@ -130,9 +136,12 @@ def _variables(case: Case, tight: Tight, model: LinearModel) -> WholeModel:
     used = _some(model, case.use_cost > 0, case.use_cost, np.ones((len(case.resources), t)), whole=True)
     over = np.repeat(case.overtime_limit[:, None], t, axis=1)
     overtime = _some(model, case.overtime_limit > 0, case.overtime_cost, over)
+    endless = np.full(over.shape, np.inf)
+    elastic = np.full(len(case.resources), dear is not None)
+    short = _some(model, elastic, np.full(len(case.resources), dear or 0.0), endless)
     made, setup, stock = made.reshape(n, t), setup.reshape(n, t), stock.reshape(n, t)
     return WholeModel(
-        case, tight, model, made, setup, stock, late, lost, multiples, family, used, overtime
+        case, tight, model, made, setup, stock, late, lost, multiples, family, used, overtime, short
     )
 
 
@@ -235,6 +244,7 @@ def _resources(whole: WholeModel) -> None:
         (cells[case.item_resource[on]], whole.setup[on], case.setup_time[on, None]),
         (cells[case.family_resource[placed]], whole.family[placed], case.family_time[placed, None]),
         (cells, whole.overtime, -np.ones((len(case.resources), 1))),
+        (cells, whole.short, -np.ones((len(case.resources), 1))),
     ]
     limited = np.isfinite(case.capacity)
     rented = (whole.used >= 0) & limited
