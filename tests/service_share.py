@@ -4,9 +4,11 @@ import errno
 import json
 import os
 import signal
+import threading
 import zipfile
 from collections.abc import Callable
 from concurrent.futures import Executor, Future
+from io import BytesIO
 from pathlib import Path
 from random import Random
 from typing import Any
@@ -32,6 +34,11 @@ CHANGES = (
 HANDLERS = Path(__file__).parent / "faults" / "stand_ins"
 
 
+def names(folder: Path) -> list[str]:
+    """Names in a folder, sorted."""
+    return sorted(path.name for path in folder.iterdir())
+
+
 def memory_root() -> str | None:
     """A folder in memory, where bringing files to the disk costs nothing; the usual one where there is none."""
     shared = Path("/dev/shm")
@@ -40,12 +47,10 @@ def memory_root() -> str | None:
 
 def package(word: str = "", content: str = "") -> bytes:
     """A small zip package; ``word`` tells a stand-in handler what to do."""
-    from io import BytesIO
-
     made = BytesIO()
     with zipfile.ZipFile(made, "w") as archive:
-        archive.writestr("word.txt", word)
-        archive.writestr("content.txt", content)
+        archive.writestr(zipfile.ZipInfo("word.txt"), word)
+        archive.writestr(zipfile.ZipInfo("content.txt"), content)
     return made.getvalue()
 
 
@@ -192,8 +197,6 @@ class SilentBell:
     """A doorbell without events."""
 
     def __init__(self) -> None:
-        import threading
-
         self.rung = threading.Event()
 
     def keep_alive(self) -> None:
