@@ -13,6 +13,7 @@ from ledgersolve.workbook.text import alike, cell_text, clean, nearest, serial_d
 _PLAIN = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 _SPACED = re.compile(r"[+-]?\d{1,3}(?:[ \u00a0\u2009\u202f'’]\d{3})+(?:\.\d+)?", re.ASCII)
 _THOUSANDS = re.compile(r"[+-]?[1-9]\d{0,2}\.\d{3}", re.ASCII)
+_GROUPS = re.compile(r"\d{1,3}(?:\.\d{3})+", re.ASCII)
 _SEPARATED = re.compile(r"[+-]?[\d.,]*\d[\d.,]*", re.ASCII)
 _LEADING = re.compile(r"\D{0,4}[\d.,]*\d[\d.,]*\s*\D{1,12}|\D{1,4}[\d.,]*\d[\d.,]*", re.ASCII)
 _DAY_TEXT = re.compile(r"\d{1,4}[./-]\d{1,2}[./-]\d{1,4}", re.ASCII)
@@ -40,6 +41,9 @@ def readings(text: str) -> tuple[float, ...]:
         return ()
     found: list[float] = []
     for decimal, thousands in ((",", "."), (".", ",")):
+        whole = text.split(decimal)[0].lstrip("+-")
+        if whole.count(thousands) > 1 and not _GROUPS.fullmatch(whole.replace(thousands, ".")):
+            continue
         candidate = text.replace(thousands, "").replace(decimal, ".")
         if _PLAIN.fullmatch(candidate) and float(candidate) not in found:
             found.append(float(candidate))
@@ -100,9 +104,10 @@ def text_number(words: str, entry: Entry) -> float | Fault:
     """The one number a text can mean in this column, or what is wrong with it."""
     meanings = readings(words)
     fitting = [value for value in meanings if entry.low <= value <= entry.high]
-    if len(meanings) == 1 and "," not in words:
+    separated = "," in words or words.count(".") > 1
+    if len(meanings) == 1 and not separated:
         return meanings[0]
-    if len(fitting) == 1 and "," not in words:
+    if len(fitting) == 1 and not separated:
         return fitting[0]
     found = f"the text “{_cut(words)}”"
     if meanings:
