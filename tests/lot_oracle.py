@@ -115,3 +115,30 @@ def random_items(rng: np.random.Generator, n: int, t: int, *features: str) -> Ca
     if "most lot" in features:
         changes["most_lot"] = rng.integers(30, 60, n).astype(float)
     return replace(case, **changes)
+
+
+def random_shared(rng: np.random.Generator, n: int, t: int, *features: str) -> Case:
+    """Give a small case on two resources that are nearly full, with the features named.
+
+    Beside those of ``random_items``: "family", "overtime", "use".
+    """
+    case = random_items(rng, n, t, *features)
+    resource = rng.integers(-1 if "loose" in features else 0, 2, n)
+    time, setup_time = rng.integers(1, 4, n) / 2, rng.integers(0, 12, n).astype(float)
+    load = np.zeros((2, t))
+    np.add.at(load, resource[resource >= 0], (time[:, None] * case.demand)[resource >= 0])
+    capacity = np.ceil(load.mean(axis=1, keepdims=True) * 1.15 + 14.0) * np.ones((2, t))
+    changes: dict[str, object] = {
+        "resources": ("A", "B"), "item_resource": resource, "time_per_unit": time, "setup_time": setup_time,
+        "capacity": capacity, "overtime_limit": np.zeros(2), "overtime_cost": np.zeros(2), "use_cost": np.zeros(2),
+    }
+    if "overtime" in features:
+        changes |= {"overtime_limit": np.full(2, 25.0), "overtime_cost": rng.integers(1, 6, 2).astype(float)}
+    if "use" in features:
+        changes["use_cost"] = rng.integers(20, 90, 2).astype(float)
+    if "family" in features:
+        changes |= {
+            "families": ("F", "G"), "item_family": rng.integers(-1, 2, n), "family_cost": np.array([60.0, 25.0]),
+            "family_time": np.array([5.0, 3.0]), "family_resource": np.array([0, -1]),
+        }
+    return replace(case, **changes)

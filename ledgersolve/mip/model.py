@@ -127,6 +127,15 @@ class LinearModel:
         """
         return _Run(self, seconds, gap, hint, cancelled, parameters, log).result()
 
+    def bounded(self, variables: ArrayLike, lower: ArrayLike, upper: ArrayLike) -> "LinearModel":
+        """Give the same model with other bounds for these variables; this one stays as it is."""
+        low, high, cost, whole = self.columns()
+        which = np.asarray(variables, dtype=np.int64).ravel()
+        low[which], high[which] = _vector(lower, which.size), _vector(upper, which.size)
+        return LinearModel(
+            self.offset, [low], [high], [cost], [whole], list(self._blocks), self.variables, self.rows
+        )
+
     def to_proto(self) -> linear_solver_pb2.MPModelProto:
         """Give the model as the wrapper's own message, checked for finiteness."""
         lower, upper, cost, whole = self.columns()

@@ -1,0 +1,190 @@
+"""Items tied by shared capacity: bound and plan by decomposition.
+
+The way: an ascent on the Lagrangian bound keeps the schedules it meets; where families or rented resources
+couple the items, their running periods are chosen at the prices and held; columns are generated to the
+bound; the wrapper picks one schedule an item; quantities are re-optimised with the setups fixed; windows
+improve the plan until time is over or the gap is accepted.
+"""
+
+import math
+from dataclasses import dataclass, field
+
+from ledgersolve.lot_sizing.ascent import Ascent
+from ledgersolve.lot_sizing.audit import audit
+from ledgersolve.lot_sizing.bound import Charges, Point, Relaxation
+from ledgersolve.lot_sizing.case import Case, Floats
+from ledgersolve.lot_sizing.columns import Pool, generate
+from ledgersolve.lot_sizing.couplings import Runs, choose, held
+from ledgersolve.lot_sizing.pick import pick
+from ledgersolve.lot_sizing.plan import Plan, plan_from_made
+from ledgersolve.lot_sizing.quantities import best_quantities
+from ledgersolve.lot_sizing.start import find_start
+from ledgersolve.lot_sizing.windows import Best, improve
+from ledgersolve.mip import Clock, Limits, Solved, Verdict, judge
+
+_STEPS = 800
+_HELD_STEPS = 150
+_HOLDS = 5
+_BLEND = 0.2
+
+
+def solve_decomposed(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
+    """Solve a case of items that share resources or families; ``start`` is a plan to begin with.
+
+    ``Solved.prices`` are those of the bound, for ``price_bound``.
+    """
+    run = _Run(case, limits.start())
+    run.take(start)
+    run.ascend()
+    if run.impossible:
+        return Solved(Verdict.NO_PLAN_EXISTS, None, None, None, tuple(run.clock.stages), tuple(run.notes))
+    run.plan_by_columns()
+    run.improve()
+    return run.ended()
+
+
+@dataclass
+class _Run:
+    case: Case
+    clock: Clock
+    notes: list[str] = field(default_factory=list)
+    plan: Plan | None = None
+    cost: float = math.inf
+
+    def __post_init__(self) -> None:
+        self.relaxation = Relaxation(self.case)
+        self.pool = Pool(self.case)
+        self.ascent: Ascent | None = None
+        self.point: Point = self.relaxation.at(self.relaxation.start())
+
+    @property
+    def impossible(self) -> bool:
+        """Whether some item has no schedule even alone."""
+        return not math.isfinite(self.point.bound)
+
+    def take(self, plan: Plan | None) -> bool:
+        """Take a plan that is sound and better."""
+        if plan is None:
+            return False
+        checked = audit(self.case, plan)
+        if not checked.ok or not checked.total < self.cost:
+            return False
+        self.plan, self.cost = plan, checked.total
+        self.clock.note("plan", best=self.cost)
+        return True
+
+    def ascend(self) -> None:
+        """Climb, and keep schedules met near the top."""
+        share = 0.3 * self.clock.left()
+        until = self.clock.elapsed() + share
+        self.ascent = climb(self.relaxation, self.pool, None, _STEPS, self.cost, self.clock, until)
+        self.point = self.ascent.best
+        self.clock.note("ascent", bound=self.point.bound)
+        self.clock.end_stage("ascent", f"{self.ascent.steps} steps")
+
+    def plan_by_columns(self) -> None:
+        """Hold couplings, generate columns, pick schedules, re-optimise quantities."""
+        if not self.relaxation.coupled:
+            self.point, made = plan_held(
+                self.relaxation, self.pool, self.point, self.clock, 0.3 * self.clock.left()
+            )
+            self._finish(made)
+        else:
+            until = self.clock.elapsed() + 0.4 * self.clock.left()
+            self._hold(until)
+
+    def _hold(self, until: float) -> None:
+        case, charges = self.case, self.point.charges
+        prices = charges.prices
+        found: list[tuple[float, Relaxation, Pool, Point]] = []
+        for _ in range(_HOLDS):
+            if self.clock.elapsed() > until and found:
+                break
+            at = Charges(prices, charges.family, charges.use, charges.family_use)
+            runs = choose(self.relaxation, at, self.ascent.runs if self.ascent else self.point.runs, self.clock)
+            relaxation = Relaxation(held(case, runs))
+            pool = Pool(relaxation.case)
+            ascent = climb(
+                relaxation, pool, relaxation.start(prices), _HELD_STEPS, math.inf, self.clock, until, 0.1
+            )
+            found.append((ascent.best.bound + _sunk(case, runs), relaxation, pool, ascent.best))
+            if not math.isfinite(ascent.best.bound):
+                break
+            prices = (1 - _BLEND) * prices + _BLEND * ascent.best.charges.prices
+        self.clock.end_stage("families and uses", f"{len(found)} choices held")
+        found.sort(key=lambda entry: entry[0])
+        _, relaxation, pool, point = found[0]
+        _, made = plan_held(relaxation, pool, point, self.clock, 0.4 * self.clock.left())
+        self._finish(made)
+
+    def _finish(self, made: Floats | None) -> None:
+        self.clock.note("columns", bound=self.point.bound)
+        if made is not None:
+            self.take(best_quantities(self.case, made > 0, max(1.0, self.clock.left()), counts=made))
+            self.take(plan_from_made(self.case, made))
+        self.clock.end_stage("columns")
+        if self.plan is None and not self.clock.over():
+            guess = self.point.schedules.made if made is None else made
+            prices, seconds = self.point.charges.prices, 0.5 * self.clock.left()
+            self.take(find_start(self.case, guess, prices, self.clock, seconds))
+            self.clock.end_stage("first plan")
+
+    def improve(self) -> None:
+        """Windows, where the plan is not yet near enough."""
+        if self.plan is None or self.clock.over() or self.clock.close_enough():
+            return
+        best = Best(self.case, self.plan, self.cost)
+        tried = improve(best, self.clock)
+        self.take(best.plan)
+        self.clock.end_stage("windows", f"{tried} windows")
+
+    def ended(self) -> Solved[Plan]:
+        """Give the end of the run."""
+        bound, stages, notes = self.point.bound, tuple(self.clock.stages), tuple(self.notes)
+        prices = self.point.charges.prices
+        if self.plan is None:
+            return Solved(Verdict.NONE_FOUND, None, None, bound, stages, notes, prices)
+        bound = min(bound, self.cost)
+        verdict = judge(self.cost, bound, self.clock.limits.gap)
+        return Solved(verdict, self.plan, self.cost, bound, stages, notes, prices)
+
+
+def climb(
+    relaxation: Relaxation, pool: Pool, charges: Charges | None, steps: int, goal: float, clock: Clock,
+    until: float, step: float = 0.5,
+) -> Ascent:
+    """Climb from some charges and keep the schedules met near the top."""
+    ascent = Ascent.begin(relaxation, charges)
+    ascent.step = step
+    keep_all = relaxation.case.n <= 60
+
+    def met(point: Point) -> bool:
+        if keep_all or ascent.step < 0.02:
+            pool.add(point.schedules.made, relaxation.column_costs(point))
+        return clock.over() or clock.elapsed() > until
+
+    ascent.climb(steps, goal, met)
+    return ascent
+
+
+def plan_held(
+    relaxation: Relaxation, pool: Pool, point: Point, clock: Clock, seconds: float
+) -> tuple[Point, Floats | None]:
+    """Columns to the bound, and one schedule an item: quantities (N, T), or None."""
+    case = relaxation.case
+    if not math.isfinite(point.bound):
+        return point, None
+    pool.add(point.schedules.made, relaxation.column_costs(point))
+    dear = 10.0 * float(point.charges.prices.max(initial=0.0)) + 2.0 * float(case.overtime_cost.max(initial=0.0))
+    dear = max(dear, 1e-3 * abs(point.bound) / max(float(relaxation.capacity.max(initial=1.0)), 1.0))
+    point, mix = generate(relaxation, pool, point, clock, dear)
+    if mix is None:
+        return point, None
+    clock.end_stage("column generation", f"{pool.items.size} schedules")
+    return point, pick(relaxation, pool, point, mix, dear, seconds, clock, max(clock.limits.gap / 2, 1e-5))
+
+
+def _sunk(case: Case, runs: Runs) -> float:
+    """Cost of what a choice runs."""
+    family = float((case.family_cost[:, None] * runs.family).sum())
+    return family + float((case.use_cost[:, None] * runs.used).sum())

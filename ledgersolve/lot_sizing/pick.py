@@ -1,0 +1,118 @@
+"""One schedule an item: the choice among the schedules met, by the wrapper.
+
+The master with whole-number choices (Manne 1958; Degraeve & Jans 2007), where families and uses are paid in
+full by whoever needs them. Time that does not fit is allowed at a price, so that there is always an answer;
+quantities are re-optimised afterwards with the setups fixed, which gives back most of what single schedules
+waste.
+"""
+
+import numpy as np
+
+from ledgersolve.lot_sizing.bound import Point, Relaxation
+from ledgersolve.lot_sizing.case import Flags, Floats, Ints
+from ledgersolve.lot_sizing.columns import Mix, Pool
+from ledgersolve.mip import Clock, LinearModel
+
+MOST_COLUMNS = 12_000
+"""Largest number of schedules given to the wrapper."""
+
+
+def pick(
+    relaxation: Relaxation, pool: Pool, point: Point, mix: Mix, dear: float, seconds: float, clock: Clock,
+    gap: float,
+) -> Floats | None:
+    """Give quantities (N, T), one schedule an item, or None where time ran out before any choice.
+
+    ``point`` holds the charges by which schedules are ranked.
+    """
+    case = relaxation.case
+    per_item = int(np.clip(MOST_COLUMNS // max(case.n, 1), 3, 40))
+    chosen = np.union1d(pool.promising(point.charges, per_item), mix.columns)
+    items, made = pool.items[chosen], pool.made[chosen]
+    model = LinearModel()
+    columns = model.add_variables(chosen.size, upper=1.0, cost=pool.costs[chosen], whole=True)
+    model.add_rows(case.n, items, columns, 1.0, lower=1.0, upper=1.0)
+    family, used = _couplings(relaxation, model, items, made > 0, columns)
+    _time(relaxation, model, items, made, columns, family, used, dear)
+    result = model.solve(min(seconds, clock.left()), gap=gap, cancelled=clock.limits.cancelled)
+    if result.values is None:
+        return None
+    taken = np.flatnonzero(result.values[columns] > 0.5)
+    quantities = np.zeros((case.n, case.t))
+    quantities[items[taken]] = made[taken]
+    return quantities
+
+
+def _couplings(
+    relaxation: Relaxation, model: LinearModel, items: Ints, setup: Flags, columns: Ints
+) -> tuple[Ints, Ints]:
+    """Family setups and uses, each at least what the schedules of any one item ask for; -1 where free."""
+    case = relaxation.case
+    family = np.full((len(case.families), case.t), -1, dtype=np.int64)
+    used = np.full(case.capacity.shape, -1, dtype=np.int64)
+    if case.families:
+        family[:] = model.add_variables(
+            family.size, upper=1.0, cost=np.repeat(case.family_cost, case.t), whole=True
+        ).reshape(family.shape)
+    rented = relaxation.rented
+    if rented.any():
+        used[rented] = model.add_variables(
+            int(rented.sum()) * case.t, upper=1.0, cost=np.repeat(case.use_cost[rented], case.t), whole=True
+        ).reshape(-1, case.t)
+    none = np.full((1, case.t), -1, dtype=np.int64)
+    _link(model, np.vstack([family, none])[case.item_family], items, setup, columns)
+    _link(model, np.vstack([used, none])[case.item_resource], items, setup, columns)
+    over = np.vstack([used, none])[case.family_resource]
+    both = (family >= 0) & (over >= 0)
+    rows = np.arange(int(both.sum()))
+    model.add_rows(
+        rows.size, np.tile(rows, 2), np.concatenate([family[both], over[both]]),
+        np.repeat([1.0, -1.0], rows.size), upper=0.0,
+    )
+    return family, used
+
+
+def _link(model: LinearModel, target: Ints, items: Ints, setup: Flags, columns: Ints) -> None:
+    """For each item and period: the schedules with a setup there need the coupling ``target`` (N, T)."""
+    column, period = np.nonzero(setup & (target[items] >= 0))
+    if not column.size:
+        return
+    cell = items[column] * target.shape[1] + period
+    unique, row = np.unique(cell, return_inverse=True)
+    model.add_rows(
+        unique.size, np.concatenate([row, np.arange(unique.size)]),
+        np.concatenate([columns[column], target.ravel()[unique]]),
+        np.repeat([1.0, -1.0], [column.size, unique.size]), upper=0.0,
+    )
+
+
+def _time(
+    relaxation: Relaxation, model: LinearModel, items: Ints, made: Floats, columns: Ints, family: Ints,
+    used: Ints, dear: float,
+) -> None:
+    """Capacity rows; an unused resource gives no time, and time short costs ``dear``."""
+    case = relaxation.case
+    limited = np.isfinite(case.capacity)
+    cells = np.full(limited.shape, -1, dtype=np.int64)
+    count = int(limited.sum())
+    cells[limited] = np.arange(count)
+    none = np.full((1, case.t), -1, dtype=np.int64)
+    load = case.time_per_unit[items, None] * made + case.setup_time[items, None] * (made > 0)
+    row = np.vstack([cells, none])[case.item_resource[items]]
+    there = (load > 0) & (row >= 0)
+    over = model.add_variables(
+        count, upper=np.broadcast_to(case.overtime_limit[:, None], limited.shape)[limited],
+        cost=np.broadcast_to(case.overtime_cost[:, None], limited.shape)[limited],
+    )
+    short = model.add_variables(count, cost=dear)
+    family_row = np.vstack([cells, none])[case.family_resource]
+    timed = (family >= 0) & (family_row >= 0) & (case.family_time > 0)[:, None]
+    rent = (used >= 0) & limited
+    parts = (
+        (row[there], np.broadcast_to(columns[:, None], there.shape)[there], load[there]),
+        (np.arange(count), over, np.full(count, -1.0)), (np.arange(count), short, np.full(count, -1.0)),
+        (family_row[timed], family[timed], np.broadcast_to(case.family_time[:, None], timed.shape)[timed]),
+        (cells[rent], used[rent], -case.capacity[rent]),
+    )
+    rows, variables, factors = (np.concatenate([part[k] for part in parts]) for k in range(3))
+    model.add_rows(count, rows, variables, factors, upper=np.where(rent, 0.0, case.capacity)[limited])
