@@ -1,0 +1,191 @@
+"""Answers about a choice of sites agree with every site set tried by hand."""
+
+import itertools
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from ledgersolve.mip import Limits, Solved
+from ledgersolve.site_selection.alternatives import how_many, promising, runner_up, why_closed, why_open
+from ledgersolve.site_selection.asker import Asker
+from ledgersolve.site_selection.binding import today_against_plan, what_binds
+from ledgersolve.site_selection.case import CLOSED, OPEN, Case, plain_case
+from ledgersolve.site_selection.firmness import changed, demand_off, how_firm
+from ledgersolve.site_selection.plan import Plan
+from ledgersolve.site_selection.questions import QUESTIONS, answer_questions
+from ledgersolve.site_selection.solve import solve
+
+LIMITS = Limits(seconds=60)
+
+
+def random_case(seed: int, m: int = 5, n: int = 8) -> Case:
+    """Sites and customers on a line, with fixed costs that make two or three sites best."""
+    rng = np.random.default_rng(seed)
+    sites, customers = rng.uniform(0, 100, m), rng.uniform(0, 100, n)
+    demand = rng.integers(1, 9, n).astype(float)
+    lanes = np.abs(sites[:, None] - customers).round(2)
+    return plain_case(rng.integers(60, 160, m), lanes, demand, handling_cost=rng.uniform(0, 2, m).round(2))
+
+
+def every_set(case: Case) -> dict[frozenset[int], float]:
+    """Cost of every set of open sites, each customer at its cheapest open one."""
+    costs = {}
+    unit = case.lane_cost + case.handling_cost[:, None]
+    for size in range(1, case.m + 1):
+        for chosen in itertools.combinations(range(case.m), size):
+            service = float((unit[list(chosen)].min(axis=0) * case.demand).sum())
+            costs[frozenset(chosen)] = float(case.fixed_cost[list(chosen)].sum()) + service
+    return costs
+
+
+def asked(case: Case) -> tuple[Asker, frozenset[int], dict[frozenset[int], float]]:
+    """An asker about the best plan, its set, and all sets."""
+    solved = solve(case, LIMITS)
+    assert solved.plan is not None
+    assert solved.cost is not None
+    asker = Asker(case, solved.plan, solved.cost, LIMITS.start())
+    return asker, frozenset(np.flatnonzero(solved.plan.open).tolist()), every_set(case)
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_doing_without_a_site(seed) -> None:
+    """The cost of doing without a site is the best of all sets that lack it."""
+    case = random_case(seed)
+    asker, best, sets = asked(case)
+    answer = why_open(asker)
+    assert len(answer.rows) == len(best)
+    for row in answer.rows:
+        j = case.sites.index(row[0])
+        extra = min(cost for chosen, cost in sets.items() if j not in chosen) - sets[best]
+        assert row[2] == pytest.approx(extra, abs=1e-6)
+        assert row[3] == pytest.approx(extra, abs=1e-6)
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_insisting_on_a_site_and_the_fixed_cost_at_which_it_pays(seed) -> None:
+    """At the fixed cost told, insisting on the site costs nothing more; a little dearer, it does."""
+    case = random_case(seed)
+    asker, best, sets = asked(case)
+    for row in why_closed(asker).rows:
+        j = case.sites.index(row[0])
+        extra = min(cost for chosen, cost in sets.items() if j in chosen) - sets[best]
+        assert row[2] == pytest.approx(extra, abs=1e-6)
+        if row[5] is not None:
+            fixed = case.fixed_cost.copy()
+            fixed[j] = row[5]
+            again = every_set(replace(case, fixed_cost=fixed))
+            with_it = min(cost for chosen, cost in again.items() if j in chosen)
+            assert with_it == pytest.approx(min(again.values()), abs=1e-6)
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_the_curve_over_the_number_of_sites(seed) -> None:
+    """Each count shows the best set of that size, split into site and service cost."""
+    case = random_case(seed)
+    asker, best, sets = asked(case)
+    rows = how_many(asker).rows
+    assert [row[0] for row in rows] == sorted(row[0] for row in rows)
+    for row in rows:
+        least = min(cost for chosen, cost in sets.items() if len(chosen) == row[0])
+        assert row[3] == pytest.approx(least, rel=1e-9)
+        assert row[1] + row[2] == pytest.approx(row[3], rel=1e-9)
+
+
+@pytest.mark.parametrize("seed", range(8))
+def test_the_runner_up_is_the_second_best_set(seed) -> None:
+    """The best plan that differs in one site, proven; the one that differs in two is never below its own."""
+    case = random_case(seed)
+    asker, best, sets = asked(case)
+    one, two = runner_up(asker).rows
+    second = min(cost for chosen, cost in sets.items() if chosen != best) - sets[best]
+    apart = min(cost for chosen, cost in sets.items() if len(chosen ^ best) >= 2) - sets[best]
+    assert one[2] == pytest.approx(second, abs=1e-6)
+    assert one[5].startswith("proven")
+    assert two[2] >= apart - 1e-6
+    assert two[1] <= apart + 1e-6
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_regret_when_demand_is_off(seed) -> None:
+    """Keeping the sites costs what the sets say it costs."""
+    case = random_case(seed)
+    asker, best, _ = asked(case)
+    for row in demand_off(asker).rows:
+        sets = every_set(replace(case, demand=case.demand * (1 + row[0])))
+        assert row[1] == pytest.approx(sets[best])
+        assert row[2] == pytest.approx(min(sets.values()))
+        assert row[3] == pytest.approx(sets[best] - min(sets.values()), abs=1e-6)
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_the_range_over_which_the_sites_stay_best(seed) -> None:
+    """Inside the range the set is best in every step; the next step outside it is not."""
+    case = random_case(seed)
+    asker, best, _ = asked(case)
+    for row, lever in zip(how_firm(asker).rows, ("demand", "lane rates", "fixed costs"), strict=True):
+        low, high = round(100 * row[1]), round(100 * row[2])
+        for percent in range(-50, 55, 5):
+            sets = every_set(changed(case, lever, percent))
+            is_best = sets[best] <= min(sets.values()) * (1 + 1e-4)
+            assert is_best == (low <= percent <= high)
+
+
+def test_a_full_site_is_asked_about() -> None:
+    """S1 is full at 10; one more tenth of capacity saves one unit's detour of 5."""
+    case = plain_case([0, 0], [[1, 1], [6, 6]], [8, 8], capacity=np.array([10.0, 20.0]))
+    asker = Asker(case, *planned(case), LIMITS.start())
+    rows = what_binds(asker).rows
+    assert [row[0] for row in rows] == ["S1 is full"]
+    assert rows[0][2] == pytest.approx(5)
+
+
+def planned(case: Case) -> tuple[Plan, float]:
+    """Plan and cost of a case that has one."""
+    solved = solve(case, LIMITS)
+    assert solved.plan is not None
+    assert solved.cost is not None
+    return solved.plan, solved.cost
+
+
+def test_a_count_at_its_limit_is_asked_about() -> None:
+    """With one site allowed, a second would save 40 of service for 5."""
+    case = plain_case([5, 5], [[1, 41], [41, 1]], [1, 1], most_sites=1)
+    rows = what_binds(Asker(case, *planned(case), LIMITS.start())).rows
+    assert rows[0][2] == pytest.approx(35)
+
+
+def test_today_against_the_plan_counts_who_moves() -> None:
+    """Today S1 serves both; the plan moves C2 with its 5 units to S2."""
+    case = plain_case([5, 5], [[1, 41], [41, 1]], [4, 5], today=np.array([True, False]),
+                      distance=np.array([[10.0, 90.0], [90.0, 20.0]]))
+    plan, cost = planned(case)
+    today, today_cost = planned(case.as_today())
+    answer = today_against_plan(case, plan, today, today_cost, cost)
+    assert "Opens: S2" in answer.words
+    assert "1 customers get another site, with 5 unit" in answer.words
+    figures = {row[0]: row[1:3] for row in answer.rows}
+    assert figures["Mean distance per unit"] == pytest.approx(((4 * 10 + 5 * 90) / 9, (4 * 10 + 5 * 20) / 9))
+    assert figures["Longest distance"] == (90.0, 20.0)
+
+
+def test_forced_and_closed_sites_are_not_asked_about() -> None:
+    """Sites that the workbook decides are left as they are, and told so."""
+    case = replace(random_case(1), rule=np.array([OPEN, CLOSED, 0, 0, 0]))
+    asker, _, _ = asked(case)
+    rows = {row[0]: row for row in why_open(asker).rows}
+    assert rows["S1"][4] == "must be open by its rule"
+    assert 1 not in promising(asker)
+
+
+def test_no_time_gives_words_and_no_figures() -> None:
+    """With the clock over, every figure stays empty and says why."""
+    case = random_case(2)
+    plan, cost = planned(case)
+    over = Limits(seconds=1, cancelled=lambda: True)
+    answers = answer_questions(case, Solved(solve(case, LIMITS).verdict, plan, cost, cost), over)
+    assert len(answers) == len(QUESTIONS)
+    told = {answer.question: answer for answer in answers}
+    for row in told["Why each of these sites?"].rows:
+        assert row[2] is None
+        assert "not answered" in row[4]
