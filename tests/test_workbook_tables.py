@@ -1,9 +1,7 @@
-"""Tables on a sheet: title rows, columns, matrices."""
-
-import numpy as np
+"""Lists on a sheet: title rows and columns."""
 
 from ledgersolve.workbook.cells import Cell, Kind
-from ledgersolve.workbook.tables import SEARCHED_ROWS, find_titles, read_list, read_matrix, read_rows
+from ledgersolve.workbook.tables import SEARCHED_ROWS, find_titles, read_list, read_rows
 
 WANTED = {"Site": True, "Fixed cost": False, "Capacity": False}
 REQUIRED = (("Site",), ("Fixed cost", "Capacity"))
@@ -82,56 +80,6 @@ def test_blank_texts_are_empty():
     assert raw.rows.tolist() == [4]
 
 
-def test_a_matrix_is_read_in_one_pass():
-    """Codes along both sides, numbers as arrays, the rest as cells."""
-    raw = read_matrix(iter(cells(["Costs"], ["Site", "C1", "C2"], ["A", 1, 2], ["B", "x", 4])), ["A", "B"],
-                      ["C1", "C2"])
-    assert (raw.title_row, raw.code_column) == (2, 1)
-    assert [cell.value for cell in raw.row_codes] == ["A", "B"]
-    assert list(zip(raw.rows, raw.columns, raw.values, strict=True)) == [(3, 2, 1), (3, 3, 2), (4, 3, 4)]
-    assert [cell.address for cell in raw.others] == ["B4"]
-
-
-def test_a_matrix_of_numeric_codes_is_not_misread():
-    """Costs that equal customer codes do not make a data row the title row, nor a slip in the titles."""
-    codes = [str(k) for k in range(1, 11)]
-    rows = [[None, *[float(k) for k in range(1, 10)], 99.0], *[[float(j), *[float(k) for k in range(10, 0, -1)]]
-                                                          for j in range(1, 4)]]
-    raw = read_matrix(iter(cells(*rows)), ["1", "2", "3"], codes)
-    assert raw.title_row == 1
-    assert raw.code_column == 1
-    assert raw.values.size == 30
-
-
-def test_the_code_column_is_where_the_codes_are():
-    """A column of names between codes and figures is left alone."""
-    raw = read_matrix(iter(cells(["No", "Site", "Town", "C1"], [1, "A", "Aachen", 5.0], [2, "B", "Bonn", 6.0])),
-                      ["A", "B"], ["C1"])
-    assert raw.code_column == 2
-    assert [cell.value for cell in raw.row_codes] == ["A", "B"]
-    assert raw.strays == []
-
-
-def test_a_matrix_without_known_titles_is_none():
-    """No row with a known code: no matrix. A code in front of figures is the code of a row, no title."""
-    assert read_matrix(iter(cells(["x", "y"], ["A", 1])), ["A"], ["C1"]) is None
-    assert read_matrix(iter(cells(["Customer", "A", "B"], ["C1", 1, 2], ["C2", 1, 2])), ["A", "B"],
-                       ["C1", "C2"]) is None
-
-
-def test_figures_under_no_code_are_strays():
-    """Figures right of the titles are kept apart."""
-    raw = read_matrix(iter(cells(["Site", "C1"], ["A", 1, 2])), ["A"], ["C1"])
-    assert [cell.address for cell in raw.strays] == ["C2"]
-
-
-def test_totals_rows_of_a_matrix_are_dropped():
-    """A totals row of a table object is no row of the matrix."""
-    raw = read_matrix(iter(cells(["Site", "C1"], ["A", 1], ["Sum", 1])), ["A"], ["C1"], lambda: [(3, 1, 2)])
-    assert [cell.value for cell in raw.row_codes] == ["A"]
-    assert raw.rows.tolist() == [2]
-
-
 def test_short_lists_are_read_as_rows_of_cells():
     """Rows map titles to cells; blank cells are not there."""
     titles, rows = read_rows(iter(cells(["Setting", "Value"], ["Job", "x"], ["Currency", " "])),
@@ -142,8 +90,6 @@ def test_short_lists_are_read_as_rows_of_cells():
 
 
 def test_a_far_cell_costs_nothing():
-    """A value in the last cell of the sheet neither makes a large array nor a row."""
+    """A value in the last cell of the sheet is under no title and makes no row."""
     far = Cell(1_048_576, 16_384, Kind.NUMBER, 1.0, "1")
-    raw = read_matrix(iter([*cells(["Site", "C1"], ["A", 1]), far]), ["A"], ["C1"])
-    assert np.array_equal(raw.rows, [2])
     assert read_list(iter([*cells(["Site", "Capacity"], ["A", 1]), far]), WANTED, REQUIRED).rows.tolist() == [2]

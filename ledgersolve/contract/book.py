@@ -10,8 +10,9 @@ from ledgersolve.contract.lists import CheckedList, check_list, report_titles
 from ledgersolve.contract.matrices import CheckedMatrix, check_matrix
 from ledgersolve.contract.setting_values import SettingValues
 from ledgersolve.workbook.cells import Cell, Kind
+from ledgersolve.workbook.matrices import RawMatrix, read_matrix
 from ledgersolve.workbook.package import Package, SheetDetails, SheetInfo
-from ledgersolve.workbook.tables import RawMatrix, read_list, read_matrix
+from ledgersolve.workbook.tables import read_list
 from ledgersolve.workbook.text import cell_text, nearest, plain, unit_in
 
 
@@ -65,7 +66,7 @@ def report_sheets(package: Package, contract: JobContract, other: JobContract, f
     used = {info.name for info in found.values()}
     spare = [info.name for info in package.sheets if info.name not in used]
     absent = [sheet for sheet in contract.sheets if sheet.name not in found]
-    near = {name: nearest(plain(name), [sheet.name for sheet in absent]) for name in spare}
+    near = {name: nearest(name, [sheet.name for sheet in absent], plain) for name in spare}
     for sheet in absent:
         slip = next((name for name, meant in near.items() if meant == sheet.name), None)
         if sheet.required:

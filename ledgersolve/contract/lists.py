@@ -7,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ledgersolve.contract import values
-from ledgersolve.contract.columns import Entry, Holds, ListSheet, listed
+from ledgersolve.contract.columns import Entry, Holds, ListSheet, listed, shown
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.models import outside
 from ledgersolve.workbook.cells import Cell
@@ -108,7 +108,21 @@ def check_list(sheet: str, contract: ListSheet, raw: RawList, faults: Faults, da
     for title, column in checked.columns.items():
         if column.entry.required:
             _report_empty(checked, title, faults)
+    _report_sums(checked, raw, faults)
     return checked
+
+
+def _report_sums(checked: CheckedList, raw: RawList, faults: Faults) -> None:
+    """Notices for totals rows of table objects whose figure is no total, mean, count or extreme of the column."""
+    for title, row, total in raw.totals:
+        figures = checked.columns[title].numbers[checked.columns[title].good]
+        if not len(figures) or bool(checked.columns[title].bad.any()):
+            continue
+        fitting = (figures.sum(), figures.mean(), len(figures), figures.min(), figures.max())
+        if not any(np.isclose(total, value, rtol=1e-6, atol=1e-9) for value in fitting):
+            faults.notice(checked.sheet, (row, checked.columns[title].column), title, "sum does not match",
+                          f"a total of {shown(total)}, where the rows add up to {shown(round(figures.sum(), 6))}",
+                          "a total of the rows above", "The rows were used; check whether one is missing.")
 
 
 def _data_rows(sheet: str, contract: ListSheet, raw: RawList, faults: Faults) -> Ints:
@@ -262,7 +276,7 @@ def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults)
     """Report missing and repeated titles, and titles that are close to a known one."""
     titles = raw.titles
     absent = [entry.title for entry in contract.entries if entry.title not in titles.columns]
-    near = {cell: nearest(plain(str(cell.value)), absent) for cell in titles.strangers}
+    near = {cell: nearest(str(cell.value), absent, plain) for cell in titles.strangers}
     for names in titles.missing:
         slip = next((cell for cell, name in near.items() if name in names), None)
         wanted = " or ".join(f"`{name}`" for name in names)

@@ -13,7 +13,7 @@ from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.lists import TOTAL_WORDS
 from ledgersolve.contract.models import outside
 from ledgersolve.workbook.cells import Cell, Kind
-from ledgersolve.workbook.tables import RawMatrix
+from ledgersolve.workbook.matrices import RawMatrix
 from ledgersolve.workbook.text import plain
 
 Floats = NDArray[np.float64]

@@ -111,7 +111,7 @@ def _settings_rows(package: Package, faults: Faults) -> tuple[TitleRow | None, l
     """Title row and rows of the Settings sheet; a sheet that is missing or has no titles is reported."""
     info = find_sheets(package, [settings.SHEET], faults).get(settings.SHEET)
     if info is None:
-        slip = next((each.name for each in package.sheets if nearest(plain(each.name), [settings.SHEET])),
+        slip = next((each.name for each in package.sheets if nearest(each.name, [settings.SHEET], plain)),
                     None)
         missing_sheet(settings.SHEET, slip, faults)
         return None, [], settings.SHEET

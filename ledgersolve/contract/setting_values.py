@@ -188,7 +188,7 @@ def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[E
             faults.notice(sheet, where, name, "setting of the other job", f"the setting “{cell.value}”",
                           "settings of this job", "It was not used; take it out, or check Job.")
             continue
-        name = nearest(plain(str(cell.value)), absent) or ""
+        name = nearest(str(cell.value), absent, plain) or ""
         if name in required:
             near[name] = cell
         elif name:

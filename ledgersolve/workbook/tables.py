@@ -1,12 +1,10 @@
-"""Tables on a sheet: the title row, columns by title, their cells; knows no job.
+"""Lists on a sheet: the title row, columns by title, their cells; knows no job.
 
-A list has known titles along its title row. A matrix has codes down its first column and codes along its
-title row. Both are read in one pass over the cells, numbers into flat arrays, so that a sheet of a
-million cells costs some ten bytes a number; whatever is no plain number is kept as a cell.
+A list is read in one pass over the cells, numbers into flat arrays, so that a sheet of a million cells costs
+some sixteen bytes a number; whatever is no plain number is kept as a cell.
 """
 
 from array import array
-from collections import Counter
 from collections.abc import Callable, Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from itertools import chain
@@ -45,7 +43,7 @@ class NumberColumn:
         if cell.kind is Kind.NUMBER:
             self.rows.append(cell.row)
             self.values.append(float(cell.value))
-        elif not _blank(cell):
+        elif not is_blank(cell):
             self.others.append(cell)
 
 
@@ -95,45 +93,30 @@ class TitleRow:
 
 @dataclass(frozen=True)
 class RawList:
-    """A list sheet as it stands: its title row, a store a column, and the rows that hold anything."""
+    """A list sheet as it stands: its title row, a store a column, and the rows that hold anything.
+
+    ``totals`` are the numbers of totals rows of table objects: title, row, value.
+    """
 
     titles: TitleRow
     columns: dict[str, NumberColumn | TextColumn]
     rows: Ints
+    totals: tuple[tuple[str, int, float], ...] = ()
 
 
-@dataclass(frozen=True)
-class RawMatrix:
-    """A matrix sheet as it stands.
-
-    ``row_codes`` and ``column_codes`` are the cells of the codes; ``rows``, ``columns``, ``values`` its
-    numbers (rows and columns of the sheet); ``others`` all other cells inside; ``strays`` cells with
-    something in them right of the table or under no code.
-    """
-
-    title_row: int
-    code_column: int
-    row_codes: list[Cell]
-    column_codes: list[Cell]
-    rows: Ints
-    columns: Ints
-    values: Floats
-    others: list[Cell]
-    strays: list[Cell]
-
-
-def _blank(cell: Cell) -> bool:
+def is_blank(cell: Cell) -> bool:
+    """Whether a cell holds spaces only."""
     return cell.kind is Kind.TEXT and not str(cell.value).strip()
 
 
-def _first_rows(cells: Iterable[Cell]) -> tuple[dict[int, list[Cell]], Iterator[Cell]]:
+def first_rows(cells: Iterable[Cell]) -> tuple[dict[int, list[Cell]], Iterator[Cell]]:
     """The filled cells of the rows in which the titles are searched, and the cells after them."""
     top: dict[int, list[Cell]] = {}
     stream = iter(cells)
     for cell in stream:
         if cell.row > SEARCHED_ROWS:
             return top, chain([cell], stream)
-        if not _blank(cell):
+        if not is_blank(cell):
             top.setdefault(cell.row, []).append(cell)
     return top, stream
 
@@ -197,7 +180,7 @@ def read_list(cells: Iterable[Cell], wanted: Mapping[str, bool], required: Seque
     RawList or None
         None where no row of the first 30 holds a known title.
     """
-    top, rest = _first_rows(cells)
+    top, rest = first_rows(cells)
     titles = find_titles(top, wanted, required)
     if titles is None:
         return None
@@ -211,18 +194,23 @@ def read_list(cells: Iterable[Cell], wanted: Mapping[str, bool], required: Seque
             _hand_out(filled, take)
     _hand_out(rest, take)
     totals_rows = totals()
-    for store in columns.values():
-        _drop_rows(store, {row for row, first, last in totals_rows if first <= store.column <= last})
+    sums: list[tuple[str, int, float]] = []
+    for title, store in columns.items():
+        dropped = {row for row, first, last in totals_rows if first <= store.column <= last}
+        if dropped and isinstance(store, NumberColumn):
+            sums += [(title, row, value) for row, value in zip(store.rows, store.values, strict=True)
+                     if row in dropped]
+        _drop_rows(store, dropped)
     every = [np.frombuffer(store.rows, dtype=np.int64) for store in columns.values() if store.rows]
     odd = [cell.row for store in columns.values() for cell in store.others]
     rows = np.unique(np.concatenate([*every, np.array(odd, dtype=np.int64)]))
-    return RawList(titles, columns, rows)
+    return RawList(titles, columns, rows, tuple(sums))
 
 
 def read_rows(cells: Iterable[Cell], wanted: Collection[str],
               required: Sequence[tuple[str, ...]]) -> tuple[TitleRow, list[dict[str, Cell]]] | None:
     """Read a short list sheet whole: its title row, and a mapping from title to cell for every row."""
-    top, rest = _first_rows(cells)
+    top, rest = first_rows(cells)
     titles = find_titles(top, wanted, required)
     if titles is None:
         return None
@@ -230,7 +218,7 @@ def read_rows(cells: Iterable[Cell], wanted: Collection[str],
     rows: dict[int, dict[str, Cell]] = {}
     below = (cell for row, filled in top.items() if row > titles.row for cell in filled)
     for cell in chain(below, rest):
-        if cell.column in title_of and not _blank(cell):
+        if cell.column in title_of and not is_blank(cell):
             rows.setdefault(cell.row, {})[title_of[cell.column]] = cell
     return titles, list(rows.values())
 
@@ -255,118 +243,3 @@ def _drop_rows(store: NumberColumn | TextColumn, rows: set[int]) -> None:
         store.values = array("d", [store.values[place] for place in keep])
     else:
         store.texts = [store.texts[place] for place in keep]
-
-
-def _known_in(cells: Sequence[Cell], known: Collection[str], date1904: bool) -> list[Cell]:
-    return [cell for cell in cells if cell_text(cell, date1904) in known]
-
-
-def _matrix_titles(top: Mapping[int, Sequence[Cell]], codes: Collection[str], date1904: bool) -> int | None:
-    """The first row holding at least half as many known codes as the row that holds most of them.
-
-    A data row can hold known codes by chance (cost 7, customer 7), and a title row can hold slips; without
-    known codes, the first row with two filled cells.
-    """
-    if not codes:
-        return next((row for row, cells in top.items() if len(cells) > 1), None)
-    counts = {row: _count_titles(cells, codes, date1904) for row, cells in top.items()}
-    most = max(counts.values(), default=0)
-    return None if most == 0 else next(row for row, count in counts.items() if 2 * count >= most)
-
-
-def _count_titles(cells: Sequence[Cell], codes: Collection[str], date1904: bool) -> int:
-    """Known codes in a row; one in front of other cells alone is the code of a row, not a title."""
-    known = _known_in(cells, codes, date1904)
-    return 0 if known == cells[:1] and len(cells) > 1 else len(known)
-
-
-def _code_column(top: Mapping[int, Sequence[Cell]], title_row: int, first_title: int,
-                 codes: Collection[str], date1904: bool) -> int:
-    """The column left of the titles in which most known codes stand; else the leftmost filled one."""
-    below = [cell for row, cells in top.items() if row > title_row for cell in cells]
-    left = [cell for cell in below if cell.column < first_title]
-    counts = Counter(cell.column for cell in _known_in(left, codes, date1904))
-    if counts:
-        return min(counts, key=lambda column: (-counts[column], column))
-    return min((cell.column for cell in left), default=max(first_title - 1, 1))
-
-
-def read_matrix(cells: Iterable[Cell], row_codes: Collection[str], column_codes: Collection[str],
-                totals: Totals = no_totals, date1904: bool = False) -> RawMatrix | None:
-    """Read a matrix sheet in one pass.
-
-    Parameters
-    ----------
-    cells
-        The sheet's cells in row order.
-    row_codes, column_codes
-        Codes known to stand down the first column and along the title row; empty where not known.
-    totals
-        Totals rows of table objects.
-    date1904
-        The workbook's date system.
-
-    Returns
-    -------
-    RawMatrix or None
-        None where no title row was found within the first 30 rows.
-    """
-    top, rest = _first_rows(cells)
-    title_row = _matrix_titles(top, column_codes, date1904)
-    if title_row is None:
-        return None
-    titles = top[title_row]
-    known = _known_in(titles, column_codes, date1904) if column_codes else titles[1:]
-    first_title = min(cell.column for cell in known)
-    code_column = _code_column(top, title_row, first_title, row_codes, date1904)
-    heads = [cell for cell in titles if cell.column > code_column and cell.column >= first_title]
-    matrix = _MatrixStore(code_column, first_title, {cell.column for cell in heads})
-    for row, filled in top.items():
-        if row > title_row:
-            matrix.take(filled)
-    matrix.take(rest)
-    skipped = {row for row, first, last in totals() if first <= code_column <= last}
-    rows = np.array(matrix.rows, dtype=np.int64)
-    kept = ~np.isin(rows, list(skipped))
-    return RawMatrix(
-        title_row, code_column, _outside(matrix.codes, skipped), heads, rows[kept],
-        np.array(matrix.columns, dtype=np.int64)[kept], np.array(matrix.values, dtype=np.float64)[kept],
-        _outside(matrix.others, skipped), _outside(matrix.strays, skipped),
-    )
-
-
-def _outside(cells: list[Cell], rows: set[int]) -> list[Cell]:
-    return [cell for cell in cells if cell.row not in rows] if rows else cells
-
-
-class _MatrixStore:
-    """Sorts the cells below the title row into codes, numbers, other cells and strays."""
-
-    def __init__(self, code_column: int, first: int, heads: set[int]) -> None:
-        self.code_column = code_column
-        self.first = first
-        self.heads = heads
-        self.codes: list[Cell] = []
-        self.rows = array("q")
-        self.columns = array("q")
-        self.values = array("d")
-        self.others: list[Cell] = []
-        self.strays: list[Cell] = []
-
-    def take(self, cells: Iterable[Cell]) -> None:
-        """Store cells in row order."""
-        for cell in cells:
-            column = cell.column
-            if column in self.heads:
-                if cell.kind is Kind.NUMBER:
-                    self.rows.append(cell.row)
-                    self.columns.append(column)
-                    self.values.append(float(cell.value))
-                elif not _blank(cell):
-                    self.others.append(cell)
-            elif _blank(cell):
-                continue
-            elif column == self.code_column:
-                self.codes.append(cell)
-            elif column >= self.first:
-                self.strays.append(cell)

@@ -3,7 +3,7 @@
 import datetime
 import re
 import unicodedata
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable
 
 from rapidfuzz import fuzz, process
 
@@ -109,16 +109,17 @@ def cell_text(cell: Cell, date1904: bool = False) -> str | None:
     return None
 
 
-def nearest(word: str, known: Iterable[str]) -> str | None:
+def nearest(word: str, known: Iterable[str], form: Callable[[str], str] = alike) -> str | None:
     """The known word that ``word`` is most likely a slip of; None where none is close.
 
-    A difference in case, spacing or leading zeros only always counts as close.
+    A difference in case, spacing or leading zeros only always counts as close. ``form`` is what is compared:
+    ``plain`` for titles, whose units do not count.
     """
-    choices = {each: alike(each) for each in known}
-    wanted = alike(word)
+    choices = {each: form(each) for each in known}
+    wanted = form(word)
     bare = wanted.lstrip("0")
-    for each, form in choices.items():
-        if form == wanted or (bare.isdigit() and form.lstrip("0") == bare):
+    for each, shape in choices.items():
+        if shape == wanted or (bare.isdigit() and shape.lstrip("0") == bare):
             return each
     best = process.extractOne(wanted, choices, scorer=fuzz.ratio, score_cutoff=CLOSE)
     return None if best is None else str(best[2])
