@@ -1,7 +1,9 @@
 """From a lot-sizing case to a plan with an honest bound: which method for which items.
 
 Items without a tie to others go to the programmes of one item, exact where these carry the item's
-features; items tied by a resource or a family are a case of their own each group.
+features; what they do not carry goes to the whole model, item by item. Items tied by a resource or a family
+are a case of their own each group: a small one goes to the whole model, others to the decomposition, and then,
+as far as their size allows, to the whole model with the plan found as a start.
 """
 
 import math
@@ -12,11 +14,20 @@ import numpy as np
 
 from ledgersolve.lot_sizing.audit import audit
 from ledgersolve.lot_sizing.case import Case, Floats
+from ledgersolve.lot_sizing.decompose import solve_decomposed
 from ledgersolve.lot_sizing.groups import Group, groups, joined, part
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.programmes import ItemProgrammes
+from ledgersolve.lot_sizing.tight import tight_limits
 from ledgersolve.lot_sizing.whole import solve_whole
 from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict, judge
+
+WHOLE_AT_ONCE = 60
+"""Setups up to which the whole model needs no help."""
+SMALL, FIRST_SHARE_SMALL = 250, 0.2
+"""Setups up to which the decomposition gets a short share of the time, and that share."""
+WHOLE_AFTER, FIRST_SHARE = 2000, 0.5
+"""Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
 
 
 @dataclass
@@ -47,6 +58,7 @@ class _Run:
     def __init__(self, case: Case, clock: Clock) -> None:
         self.case, self.clock = case, clock
         self.notes: list[str] = []
+        self.prices: Floats = np.zeros(case.capacity.shape)
         self.parts: list[_Part] = []
         for group in groups(case):
             if group.shared:
@@ -86,11 +98,13 @@ class _Run:
         self.parts.append(_Part(group, bound, plan if checked.ok else None, total))
 
     def tied(self, number: int) -> bool:
-        """One group whole through the wrapper; False when it has no plan."""
+        """One group that is still without a plan; False when it has none."""
         now = self.parts[number]
         if now.plan is not None:
             return True
-        found = solve_whole(now.group.case, self._share(number))
+        found = _tied(now.group.case, self._share(number))
+        if found.prices is not None:
+            self.prices[now.group.resources] = found.prices
         self.clock.stages.extend(_named(found.stages, now.group))
         if found.verdict is Verdict.NO_PLAN_EXISTS:
             return False
@@ -128,12 +142,28 @@ class _Run:
         known = bound if math.isfinite(bound) else None
         plans = [p.plan for p in self.parts if p.plan is not None]
         if len(plans) < len(self.parts):
-            return Solved(Verdict.NONE_FOUND, None, None, known, stages, notes)
+            return Solved(Verdict.NONE_FOUND, None, None, known, stages, notes, self.prices)
         plan = joined(self.case, [p.group for p in self.parts], plans)
         cost = audit(self.case, plan).total
         known = None if known is None else min(known, cost)
         self.clock.note("done", cost, known)
-        return Solved(judge(cost, bound, self.clock.limits.gap), plan, cost, known, stages, notes)
+        verdict = judge(cost, bound, self.clock.limits.gap)
+        return Solved(verdict, plan, cost, known, stages, notes, self.prices)
+
+
+def _tied(case: Case, limits: Limits) -> Solved[Plan]:
+    """One group of tied items: the decomposition, the whole model, or one after the other, by size."""
+    cells = int(np.count_nonzero(tight_limits(case).most_made > 0))
+    if cells <= WHOLE_AT_ONCE:
+        return solve_whole(case, limits)
+    clock = limits.start()
+    share = 1.0 if cells > WHOLE_AFTER else FIRST_SHARE_SMALL if cells <= SMALL else FIRST_SHARE
+    first = solve_decomposed(case, replace(limits, seconds=limits.seconds * share))
+    enough = first.gap is not None and first.gap <= limits.gap
+    if first.verdict is Verdict.NO_PLAN_EXISTS or enough or share == 1.0 or clock.left() < 0.5:
+        return first
+    second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
+    return replace(second, stages=first.stages + second.stages, notes=first.notes, prices=first.prices)
 
 
 def _named(stages: tuple[Stage, ...], group: Group) -> list[Stage]:

@@ -13,8 +13,10 @@ EXACT = 1e-9
 """Gap at which nothing is left to polish."""
 
 
-def solve_whole(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
-    """Run the whole model; ``start`` is a plan to begin with.
+def solve_whole(
+    case: Case, limits: Limits, start: Plan | None = None, floor: float | None = None
+) -> Solved[Plan]:
+    """Run the whole model; ``start`` is a plan to begin with, ``floor`` a bound that is proven already.
 
     A run that ends within the accepted gap early is run on from its plan for a moment: small cases then come
     out exact, not merely within the gap.
@@ -23,7 +25,7 @@ def solve_whole(case: Case, limits: Limits, start: Plan | None = None) -> Solved
     whole = whole_model(case)
     best, cost = _better(case, start, None, math.inf)
     result = _run(whole, clock, clock.left(), limits.gap, best)
-    bound = result.bound
+    bound = result.bound if floor is None else max(result.bound, floor)
     best, cost = _taken(whole, result, clock, best, cost)
     if result.status == "optimal" and bound < cost * (1 - EXACT):
         spare = min(clock.left(), 1.0 + clock.elapsed() / 2)
