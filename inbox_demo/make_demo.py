@@ -89,7 +89,7 @@ def depots_from_coordinates() -> None:
     ]
     plan = settings("site selection", "Depots for the coming year", Demand_unit="pallet", Period_covered="year",
                     Cost_per_unit_and_distance=0.11, Road_factor=1.3, Compare_with_today="yes")
-    plan += [["Time limit (seconds)", 60]]
+    plan += [["Time limit (seconds)", 20]]
     write("1 depots from coordinates",
           {"Settings": plan, "Sites": sites, "Customers": customers, "Variants": variants})
 
@@ -115,7 +115,7 @@ def depots_from_a_lane_list() -> None:
                 lanes += [[f"{site}-S", code, rate, distance], [f"{site}-L", code, rate, distance]]
     plan = settings("site selection", "Regional halls, one supplier each", Demand_unit="pallet",
                     Period_covered="year", Single_sourcing="yes", Longest_distance=560)
-    plan += [["Share within distance (%)", 60], ["Distance for share", 200], ["Time limit (seconds)", 60]]
+    plan += [["Share within distance (%)", 60], ["Distance for share", 200], ["Time limit (seconds)", 20]]
     write("2 halls from a lane list",
           {"Settings": plan, "Sites": sites, "Customers": customers, "Lanes": lanes})
 
@@ -146,10 +146,10 @@ def lots_on_two_machines() -> None:
         demand.append([code, *weekly])
         today.append([code, *two_week_lots(weekly, opening - safety)])
     resources: Rows = [["Resource", "Capacity (h)", "Overtime limit", "Overtime cost", "Use cost"],
-                       ["Forge", 52, 10, 65, 0], ["Press", 50, 10, 65, 120]]
+                       ["Forge", 60, 10, 65, 0], ["Press", 58, 10, 65, 120]]
     families: Rows = [["Family", "Setup cost", "Setup time", "Resource"], ["Blades", 180, 1.5, "Forge"]]
     plan = settings("lot sizing", "Garden tools, first half-year", Period_unit="week", Periods_a_year=52)
-    plan += [["Yearly holding rate (%)", 22], ["Compare with today", "yes"], ["Time limit (seconds)", 60]]
+    plan += [["Yearly holding rate (%)", 22], ["Compare with today", "yes"], ["Time limit (seconds)", 20]]
     write("3 lots on two machines", {
         "Settings": plan, "Periods": [["Period"], *([week] for week in WEEKS)], "Items": items, "Demand": demand,
         "Resources": resources, "Families": families, "Today plan": today,
@@ -204,7 +204,7 @@ def large() -> None:
         customers.append([f"Shop {number:04d}", draw.randrange(5, 120), *somewhere(draw)])
     plan = settings("site selection", "Pick-up points for two thousand shops", Demand_unit="pallet",
                     Cost_per_unit_and_distance=0.14, Road_factor=1.25)
-    plan += [["Time limit (seconds)", 90], ["Questions", "no"]]
+    plan += [["Time limit (seconds)", 30], ["Questions", "no"]]
     write("6 large", {"Settings": plan, "Sites": sites, "Customers": customers})
 
 

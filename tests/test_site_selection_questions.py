@@ -83,7 +83,7 @@ def test_insisting_on_a_site_and_the_fixed_cost_at_which_it_pays(seed) -> None:
 def test_the_curve_over_the_number_of_sites(seed) -> None:
     """Each count shows the best set of that size, split into site and service cost."""
     case = random_case(seed)
-    asker, best, sets = asked(case)
+    asker, _, sets = asked(case)
     rows = how_many(asker).rows
     assert [row[0] for row in rows] == sorted(row[0] for row in rows)
     for row in rows:
