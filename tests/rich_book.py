@@ -16,6 +16,7 @@ import xlsxwriter
 from tests.packages import LINKS, MAIN, TYPES, WORKBOOK_TYPE, contents, links_xml, zipped
 
 MICROSOFT = "http://schemas.microsoft.com/office"
+ANA, REMARK, STORE = (f"{{0A1B2C3D-0000-4000-8000-00000000000{last}}}" for last in "ABC")
 MACRO_TYPE = "application/vnd.ms-excel.sheet.macroEnabled.main+xml"
 
 # part -> (content type, content); the parts a writer cannot make
@@ -40,15 +41,15 @@ BY_HAND: dict[str, tuple[str, str | bytes]] = {
         f'<slicerCacheDefinition xmlns="{MICROSOFT}/spreadsheetml/2009/9/main" name="Slicer_Site" '
         'sourceName="Site"/>')),
     "xl/timelines/timeline1.xml": ("application/vnd.ms-excel.timeline+xml", (
-        f'<timelines xmlns="{MICROSOFT}/spreadsheetml/2010/11/main"><timeline name="When" cache="When"/>'
-        "</timelines>")),
+        f'<timelines xmlns="{MICROSOFT}/spreadsheetml/2010/11/main"><timeline name="When" cache="When" '
+        'level="2" selectionLevel="2"/></timelines>')),
     "xl/threadedComments/threadedComment1.xml": ("application/vnd.ms-excel.threadedcomments+xml", (
-        f'<ThreadedComments xmlns="{MICROSOFT}/spreadsheetml/2018/threadedcomments"><threadedComment ref="B2" '
-        'dT="2026-12-01T10:00:00.00" personId="{A}" id="{B}"><text>Ask the landlord</text></threadedComment>'
-        "</ThreadedComments>")),
+        f'<ThreadedComments xmlns="{MICROSOFT}/spreadsheetml/2018/threadedcomments"><threadedComment '
+        f'ref="B2" dT="2026-12-01T10:00:00.00" personId="{ANA}" id="{REMARK}"><text>Ask the landlord</text>'
+        "</threadedComment></ThreadedComments>")),
     "xl/persons/person.xml": ("application/vnd.ms-excel.person+xml", (
         f'<personList xmlns="{MICROSOFT}/spreadsheetml/2018/threadedcomments"><person displayName="Ana" '
-        'id="{A}" userId="ana" providerId="None"/></personList>')),
+        f'id="{ANA}" userId="ana" providerId="None"/></personList>')),
     "xl/ctrlProps/ctrlProp1.xml": ("application/vnd.ms-excel.controlproperties+xml", (
         f'<formControlPr xmlns="{MICROSOFT}/spreadsheetml/2009/9/main" objectType="CheckBox"/>')),
     "xl/externalLinks/externalLink1.xml": (f"{TYPES}.externalLink+xml", (
@@ -66,12 +67,13 @@ BY_HAND: dict[str, tuple[str, str | bytes]] = {
     "customXml/itemProps1.xml": (
         "application/vnd.openxmlformats-officedocument.customXmlProperties+xml",
         '<ds:datastoreItem xmlns:ds="http://schemas.openxmlformats.org/officeDocument/2006/customXml" '
-        'ds:itemID="{C}"/>'),
+        f'ds:itemID="{STORE}"/>'),
     "docMetadata/LabelInfo.xml": ("application/vnd.ms-office.classificationlabels+xml", (
         f'<clbl:labelList xmlns:clbl="{MICROSOFT}/2020/mipLabelMetadata"/>')),
     "xl/printerSettings/printerSettings1.bin": ("", bytes(range(256)) * 4),
     "customXml/item1.xml": ("", "<plan xmlns=\"urn:x\"><note>a &amp; b</note></plan>"),
-    "xl/vbaProject.bin": ("", b"\xd0\xcf\x11\xe0" + bytes(range(255, -1, -1)) * 20),
+    "xl/vbaProject.bin": (
+        "application/vnd.ms-office.vbaProject", b"\xd0\xcf\x11\xe0" + bytes(range(255, -1, -1)) * 20),
 }
 FROM_WORKBOOK = [
     ("hand1", "pivotCacheDefinition", "pivotCache/pivotCacheDefinition1.xml"),
@@ -141,9 +143,9 @@ def _link(parts: dict[str, str | bytes], name: str, links: list[tuple[str, str, 
 
 def _declare(parts: dict[str, str | bytes], *, macros: bool) -> None:
     listed = "".join(f'<Override PartName="/{part}" ContentType="{kind}"/>'
-                     for part, (kind, _) in BY_HAND.items() if kind)
+                     for part, (kind, _) in BY_HAND.items() if kind and (macros or "vba" not in part))
     types = text(parts["[Content_Types].xml"]).replace("</Types>", listed + "</Types>").replace(
-        "<Override", '<Default Extension="bin" ContentType="application/octet-stream"/><Override', 1)
+        "<Override", f'<Default Extension="bin" ContentType="{TYPES}.printerSettings"/><Override', 1)
     if macros:
         types = types.replace(WORKBOOK_TYPE, MACRO_TYPE)
     else:

@@ -5,6 +5,7 @@ from pathlib import Path
 
 import openpyxl
 import pytest
+from openxml_audit import FileFormat, OpenXmlValidator
 
 from ledgersolve.workbook.container import open_container
 from ledgersolve.workbook.graft import fresh, graft, plan_names
@@ -422,3 +423,15 @@ def test_the_result_is_a_sound_zip(tmp_path: Path) -> None:
     graft(rich_book(tmp_path / "a.xlsm"), tmp_path / "b.xlsm", results())
     with zipfile.ZipFile(tmp_path / "b.xlsm") as package:
         assert package.testzip() is None
+
+
+def test_a_schema_check_finds_nothing(tmp_path: Path) -> None:
+    """The schemas of the format hold for a rich workbook, for its answer with marks, and for a fresh one."""
+    source = rich_book(tmp_path / "a.xlsx", macros=False)
+    graft(source, tmp_path / "b.xlsx", results(), [
+        Problem("error", "number expected", "Sites", "B3", "Fixed cost", "x", "y", "z", ("B9", "D1"), 3, "number"),
+        Problem("notice", "hidden", "Lanes", "A1", "", "x", "y", "z")])
+    fresh(tmp_path / "c.xlsx", results())
+    check = OpenXmlValidator(file_format=FileFormat.MICROSOFT_365)
+    for name in ("a.xlsx", "b.xlsx", "c.xlsx"):
+        assert [str(error) for error in check.validate(str(tmp_path / name)).errors] == [], name
