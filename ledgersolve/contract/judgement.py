@@ -47,19 +47,19 @@ def odd_figures(faults: Faults, table: CheckedList, titles: tuple[str, ...]) -> 
 def odd_costs(costs: Floats) -> Flags:
     """Lanes that cost a hundred times (or a hundredth of) the middle one of their site and of their customer.
 
-    ``costs`` has shape (m, n) with NaN where there is no lane of its own cost.
+    A dear site and a far customer make their common lane dear twice over, so the lane must also be that far
+    from what both together suggest. ``costs`` has shape (m, n) with NaN where a lane has no cost of its own.
     """
     known = ~np.isnan(costs) & (costs > 0)
     if known.sum() < ENOUGH:
         return np.zeros(costs.shape, dtype=bool)
     logs = np.where(known, np.log(np.where(known, costs, 1.0)), np.nan)
     limit = np.log(FAR_OFF)
-    odd = np.zeros(costs.shape, dtype=bool)
-    by_site, by_customer = _middles(logs, 1), _middles(logs, 0)
-    off_site = np.abs(logs - by_site[:, None])
-    off_customer = np.abs(logs - by_customer[None, :])
-    np.logical_and(off_site >= limit, off_customer >= limit, out=odd, where=known)
-    return odd
+    by_site, by_customer = _middles(logs, 1)[:, None], _middles(logs, 0)[None, :]
+    suggested = by_site + by_customer - np.nanmedian(logs)
+    with np.errstate(invalid="ignore"):
+        return np.asarray(known & (np.abs(logs - by_site) >= limit) & (np.abs(logs - by_customer) >= limit)
+                          & (np.abs(logs - suggested) >= limit))
 
 
 def _middles(logs: Floats, axis: int) -> Floats:
