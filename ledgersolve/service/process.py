@@ -153,21 +153,23 @@ def _environment(private: Path) -> dict[str, str]:
 
 def _listen(stream: BinaryIO, heard: Heard) -> None:
     """Read the child's lines; one that is no such line is passed over, a very long one is cut."""
-    while line := stream.readline(_LONGEST_LINE):
-        try:
-            said = json.loads(line)
-        except ValueError:
-            continue
-        if not isinstance(said, dict):
-            continue
-        limit = said.get("limit")
-        if isinstance(limit, int | float) and 0 < limit < 1e7:
-            heard.limit = float(limit)
-        elif isinstance(said.get("stage"), str):
-            heard.progress = {
-                "stage": said["stage"][:120],
-                **{name: _figure(said.get(name)) for name in ("best", "bound", "seconds")},
-            }
+    with stream:
+        while line := stream.readline(_LONGEST_LINE):
+            try:
+                said = json.loads(line)
+            except ValueError:
+                continue
+            if isinstance(said, dict):
+                _take_in(said, heard)
+
+
+def _take_in(said: dict[str, Any], heard: Heard) -> None:
+    limit = said.get("limit")
+    if isinstance(limit, int | float) and 0 < limit < 1e7:
+        heard.limit = float(limit)
+    elif isinstance(said.get("stage"), str):
+        figures = {name: _figure(said.get(name)) for name in ("best", "bound", "seconds")}
+        heard.progress = {"stage": said["stage"][:120], **figures}
 
 
 def _figure(value: Any) -> float | None:
@@ -177,8 +179,9 @@ def _figure(value: Any) -> float | None:
 
 def _note_words(stream: BinaryIO, heard: Heard) -> None:
     """Keep the last lines of what the child and its solvers print; a solver may print megabytes."""
-    while line := stream.readline(_LONGEST_LINE):
-        heard.last_words.append(line.decode("utf-8", "replace").rstrip())
+    with stream:
+        while line := stream.readline(_LONGEST_LINE):
+            heard.last_words.append(line.decode("utf-8", "replace").rstrip())
 
 
 def _end(child: "subprocess.Popen[bytes]") -> None:

@@ -5,7 +5,7 @@ import json
 import os
 import secrets
 import time
-from dataclasses import asdict, dataclass, field
+from dataclasses import asdict, dataclass, field, fields
 from enum import StrEnum
 from pathlib import Path
 from typing import Any
@@ -112,10 +112,15 @@ def read_job(disk: Disk, job: str, home: Path) -> JobView | None:
 
 
 def read_reply(disk: Disk, home: Path) -> Reply | None:
-    """The answer of a job; None where it cannot be understood."""
+    """The answer of a job; None where it cannot be understood.
+
+    Keys that this version does not know are passed over: a newer one may have answered.
+    """
+    known = {one.name for one in fields(Reply)}
     try:
-        reply = Reply(**json.loads(disk.read(home / ANSWER)))
-    except (ValueError, TypeError):
+        found = json.loads(disk.read(home / ANSWER))
+        reply = Reply(**{key: value for key, value in found.items() if key in known})
+    except (ValueError, TypeError, AttributeError):
         return None
     sound = isinstance(reply.generation, int) and reply.name == Path(str(reply.name)).name
     return reply if sound and len(str(reply.sha256)) == 64 else None

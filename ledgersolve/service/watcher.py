@@ -74,6 +74,7 @@ class Watcher:
     _scan_took: float = 0.0
     _next_scan: float = -math.inf
     _next_beat: float = -math.inf
+    _seen_all: bool = False
     _told: float = -math.inf
     _told_state: str = ""
     _news: bool = False
@@ -100,6 +101,9 @@ class Watcher:
             self._next_beat = now + self.pace.beat
             self.desk.beat()
         changed = self.desk.conclude()
+        if changed:
+            self._seen_all = False
+            self._look_soon()
         if now >= self._next_scan:
             self._scan()
         self._start_more()
@@ -126,10 +130,15 @@ class Watcher:
         if self.desk.trays:
             due = min(due, self.clock() + _BUSY_WAIT)
         news = self.bell.wait(min(self.pace.scan, max(_SHORTEST_WAIT, due - self.clock())))
-        if news and self.state != "suspended" and (self.line is None or len(self.line) < _LONG_LINE):
+        if news and self.state != "suspended":
+            self._look_soon()
+            time.sleep(_SHORTEST_WAIT)  # one burst of events is one piece of news
+
+    def _look_soon(self) -> None:
+        """Bring the next scan forward, unless the queue is long anyway."""
+        if self.line is None or len(self.line) < _LONG_LINE:
             earliest = -math.inf if self._last_scan is None else self._last_scan[1]
             self._next_scan = min(self._next_scan, earliest + _SCAN_SHARE * self._scan_took)
-            time.sleep(_SHORTEST_WAIT)  # one burst of events is one piece of news
 
     # ---- looking -----------------------------------------------------------------------------------
 
@@ -143,6 +152,7 @@ class Watcher:
         self.state, self.why = self._intake()
         ended = self.clock()
         self.scans += 1
+        self._seen_all = True
         self._scan_took = ended - started
         self._last_scan = (now_words(), ended, time.time())
         soonest = min((drop.look_in for drop in self.drops if not drop.ready), default=math.inf)
@@ -322,7 +332,7 @@ class Watcher:
     def is_empty(self) -> bool:
         """Whether nothing is left that this process could still answer."""
         return (
-            self._last_scan is not None
+            self._seen_all
             and not self.desk.trays
             and not self.left_in_jobs
             and all(drop.blocked for drop in self.drops)

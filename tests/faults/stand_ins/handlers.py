@@ -85,7 +85,7 @@ def _outside(source, into, word, progress, limit_known):
 
 
 def _without(source, into, word, progress, limit_known):
-    return SimpleNamespace(as_json=lambda: {"outcome": "failed", "returned": None, "reason": "The audit differs."})
+    return SimpleNamespace(as_json=lambda: {"outcome": "failed", "returned": None}, reason="The audit differs.")
 
 
 WORDS = {

@@ -1,0 +1,95 @@
+"""Many drops at once, and a small one behind long ones; prints figures and what went wrong.
+
+Run as a program of its own: ``python -m tests.faults.service_load COUNT`` (real child processes with a
+stand-in that answers at once) or ``... service_load behind`` (fifty long ones, then a small one).
+"""
+
+import json
+import logging
+import os
+import resource
+import shutil
+import sys
+import tempfile
+import time
+from pathlib import Path
+
+from ledgersolve.service.config import ServiceSettings
+from ledgersolve.service.verify import verify
+from ledgersolve.service.watch import open_shop
+from tests.service_share import HANDLERS, drop, memory_root, names
+
+
+def main() -> None:
+    """Run the load that is asked for."""
+    os.environ["PYTHONPATH"] = os.pathsep.join((str(Path.cwd()), str(HANDLERS)))
+    logging.disable(logging.CRITICAL)
+    folder = Path(tempfile.mkdtemp(dir=memory_root()))
+    try:
+        print(json.dumps(_behind(folder) if sys.argv[1] == "behind" else _many(folder, int(sys.argv[1]))))
+    finally:
+        shutil.rmtree(folder)
+
+
+def _scan_seconds(folder: Path, count: int) -> float:
+    """How long a scan of so many settled drops takes, nothing being started."""
+    for number in range(len(names(folder / "Inbox")), count):
+        drop(folder, f"plan {number}.xlsx", content=str(number))
+    watcher, pool = open_shop(folder, None, ServiceSettings(free_mb=1 << 40), "handlers:solve")
+    pool.close()
+    watcher._scan()
+    time.sleep(2.5)
+    watcher._scan()
+    watcher._scan()
+    return watcher._scan_took
+
+
+def _many(folder: Path, count: int) -> dict:
+    (folder / "Inbox").mkdir()
+    scans = {f"scan seconds at {size}": round(_scan_seconds(folder, size), 4) for size in (count // 10, count)}
+    watcher, pool = open_shop(folder, None, ServiceSettings(workers=2), "handlers:solve")
+    began = time.monotonic()
+    before = resource.getrusage(resource.RUSAGE_SELF)
+    marks = []
+    while not watcher.is_empty():
+        watcher.step()
+        watcher.wait()
+        done = len(names(folder / ".ledgersolve" / "done")) if len(marks) < 10 and time.monotonic() - began > 1 else 0
+        if done > (len(marks) + 1) * count / 10:
+            marks.append(round(time.monotonic() - began, 1))
+    took = time.monotonic() - began
+    after = resource.getrusage(resource.RUSAGE_SELF)
+    watcher.leave()
+    pool.close()
+    return {
+        "returned": len([name for name in names(folder / "Returned") if name.endswith(".xlsx")]),
+        "faults": verify(folder, settled=True)[:5], "seconds": round(took, 1), **scans,
+        "service cpu seconds": round(after.ru_utime + after.ru_stime - before.ru_utime - before.ru_stime, 1),
+        "service peak MB": round(after.ru_maxrss / 1024), "scans": watcher.scans, "tenths done at": marks,
+    }
+
+
+def _behind(folder: Path) -> dict:
+    """Fifty jobs of a minute each, of the size of large workbooks; ten seconds later a small one."""
+    (folder / "Inbox").mkdir()
+    for number in range(50):
+        drop(folder, f"long {number}.xlsx", "slow 60", content="x" * 200_000 + str(number))
+    watcher, pool = open_shop(folder, None, ServiceSettings(workers=2), "handlers:solve")
+    began, dropped, back = time.monotonic(), 0.0, 0.0
+    while not back and time.monotonic() - began < 200:
+        watcher.step()
+        watcher.wait()
+        now = time.monotonic() - began
+        if now > 10 and not dropped:
+            drop(folder, "small.xlsx", "slow 1")
+            dropped = now
+        if any(name.startswith("small") for name in names(folder / "Returned")):
+            back = now
+    running = len(watcher.desk.trays)
+    watcher.leave()
+    pool.close()
+    return {"own seconds": 1.0, "back after": round(back - dropped, 2), "running meanwhile": running}
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,172 @@
+"""What people and programs are told about a folder."""
+
+import base64
+import hashlib
+import json
+import re
+import time
+
+import pytest
+
+from ledgersolve.service.board import as_text, boot, gather, health, stale_after, status, write_board
+from ledgersolve.service.disk import Disk
+from ledgersolve.service.layout import Layout, prepare
+from ledgersolve.service.page import render
+from tests.service_share import names
+
+HOSTILE = ["<script>alert(1)</script>", "{{7*7}}", "%s%n", '"><img src=x onerror=alert(1)>', "a&b", "U+202Egpj"]
+
+
+def picture(**changes) -> dict:
+    """What one process says of itself."""
+    entry = {"name": "plan.xlsx", "job": "J", "host": "h", "stage": "search", "best": 120.0, "saving": 20.0}
+    told = {
+        "id": "one", "host": "h", "pid": 1, "boot": boot(), "version": "1", "workers": 2, "state": "at work",
+        "why": "", "last_scan": "2026-01-02T03:04:05+00:00", "last_scan_unix": time.time(),
+        "monotonic": time.monotonic(), "scan_took": 0.01, "scans": 5, "stale_after_seconds": 60.0,
+        "waiting": [{"name": "next.xlsx", "owner": "ann", "why": "number 1 in the queue"}], "waiting_count": 1,
+        "running": [entry | {"elapsed": 12.0, "left": 100.0}],
+        "returned": [{"name": "old.xlsx", "returned": "old [X] solved.xlsx", "outcome": "solved", "job": "I",
+                      "at": "2026-01-02T03:00:00+00:00", "verdict": "proven best", "total_cost": 1234.5}],
+        "alerts": [],
+    }
+    return told | changes
+
+
+@pytest.fixture
+def layout(tmp_path):
+    """A served folder."""
+    prepare(tmp_path, Disk())
+    return Layout(tmp_path)
+
+
+def write(layout: Layout, **changes) -> None:
+    """One process writes its board."""
+    told = picture(**changes)
+    write_board(layout, Disk(), layout.hosts / f"{told['id']}.json", told)
+
+
+def test_the_board_is_written_whole(layout):
+    """Page and data are replaced at once; nothing is left in tmp."""
+    write(layout)
+    write(layout)
+    assert names(layout.tmp) == []
+    data = json.loads((layout.folder / "status.json").read_text())
+    assert data["running"][0]["saving"] == 20.0
+    assert "at most 20.00 could be saved" in (layout.folder / "Status.html").read_text()
+
+
+def test_the_board_shows_all_services(layout):
+    """Two processes on one folder: what each runs stands on the page of either, what both see only once."""
+    alert = {"name": "x", "why": "a link"}
+    write(layout, id="two", running=[picture()["running"][0] | {"name": "theirs.xlsx"}], alerts=[alert])
+    write(layout, id="one", alerts=[alert])
+    state = gather(layout, Disk())
+    assert {one["name"] for one in state["running"]} == {"plan.xlsx", "theirs.xlsx"}
+    assert len(state["services"]) == 2 and len(state["alerts"]) == len(state["returned"]) == 1
+
+
+def test_a_dead_service_is_seen_as_dead(layout):
+    """Health is 0 with a fresh scan, 1 with an old one, after a good end and with no service, 2 elsewhere."""
+    assert health(layout.folder) == 1
+    write(layout)
+    assert health(layout.folder) == 0
+    write(layout, monotonic=time.monotonic() - 61.0)
+    assert health(layout.folder) == 1
+    write(layout, state="stopped")
+    assert health(layout.folder) == 1
+    write(layout, state="suspended")
+    assert health(layout.folder) == 1
+    assert health(layout.folder / "Inbox") == 2
+
+
+def test_health_does_not_rest_on_the_date(layout):
+    """On the machine itself a clock that is years off changes nothing."""
+    if not boot():
+        pytest.skip("this system does not name its boots")
+    write(layout, last_scan_unix=time.time() + 3.15e8)
+    assert health(layout.folder) == 0
+    write(layout, last_scan_unix=time.time() - 3.15e8)
+    assert health(layout.folder) == 0
+
+
+def test_another_machines_service_is_judged_by_date(layout):
+    """Elsewhere only the dates can be compared."""
+    write(layout, boot="another", monotonic=0.0)
+    assert health(layout.folder) == 0
+    write(layout, boot="another", monotonic=time.monotonic(), last_scan_unix=time.time() - 100.0)
+    assert health(layout.folder) == 1
+
+
+def test_a_live_service_makes_up_for_a_dead_one(layout):
+    """One of two is enough; the dead one's running jobs are not shown as running."""
+    write(layout, id="dead", monotonic=time.monotonic() - 500.0, last_scan_unix=time.time() - 500.0)
+    write(layout, id="live", running=[])
+    state = status(layout.folder)
+    assert state["well"] and state["running"] == []
+
+
+def test_damaged_signs_of_life_are_passed_over(layout):
+    """Garbage in the hosts folder hides nothing else."""
+    (layout.hosts / "x.json").write_bytes(b"\xff{")
+    (layout.hosts / "y.json").write_text("[1]")
+    write(layout)
+    assert status(layout.folder)["well"]
+
+
+def test_three_missed_scans_are_too_many():
+    """With slow scans more patience, never less than a minute."""
+    assert stale_after(5.0) == 60.0
+    assert stale_after(30.0) == 90.0
+
+
+@pytest.mark.parametrize("text", HOSTILE)
+def test_hostile_names_are_shown_literally(text):
+    """In every place of the page a name is text: no tag, no attribute, no template."""
+    waiting = {"name": text, "owner": text, "why": text}
+    told = picture(why=text, waiting=[waiting], alerts=[{"name": text, "why": text}])
+    told["running"][0] |= {"name": text, "stage": text, "host": text}
+    fault = {"sheet": text, "cell": text, "found": text, "remedy": text}
+    told["returned"][0] |= {"name": text, "returned": text, "outcome": "to fix", "first_fault": fault, "faults": 1}
+    page = render(told)
+    assert "<script" not in page and "<img" not in page
+    tags = set(re.findall(r"<([a-z0-9]+)", page))
+    assert tags <= {"html", "head", "meta", "title", "style", "body", "h1", "h2", "div", "p", "b", "ul", "li", "span"}
+    from html import unescape
+
+    assert unescape(page).count(text) >= 10
+
+
+def test_the_page_allows_nothing_but_its_own_style():
+    """The policy names the hash of the one style sheet and forbids everything else; nothing is linked."""
+    page = render(picture())
+    policy = re.search(r'Content-Security-Policy" content="([^"]*)"', page)[1]
+    style = re.search(r"<style>(.*?)</style>", page, re.DOTALL)[1]
+    digest = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode()
+    assert policy.startswith(f"default-src 'none'; style-src 'sha256-{digest}'")
+    assert "unsafe" not in policy
+    assert not re.search(r"\b(src|href|style|on\w+)=", page)
+
+
+def test_the_page_tells_when_it_is_stale():
+    """A static page cannot know that the service died: it shows when it last looked and how to read that."""
+    page = render(picture(stale_after_seconds=90.0))
+    assert "2026-01-02 03:04:05+00:00" in page
+    assert "more than 2 minutes ago, the service is not running" in page
+    assert '<meta http-equiv="refresh" content="10">' in page
+
+
+def test_a_long_queue_is_counted_not_listed(layout):
+    """Ten thousand waiting: the first are listed, the rest is a number."""
+    waiting = [{"name": f"{number}.xlsx", "owner": "a", "why": "w"} for number in range(300)]
+    write(layout, waiting=waiting, waiting_count=10_000)
+    page = (layout.folder / "Status.html").read_text()
+    assert "and 9,800 more" in page and page.count("<li>") < 250
+
+
+def test_the_terminal_gets_the_same_facts(layout):
+    """The text of the command names what runs, waits and came back."""
+    write(layout)
+    text = as_text(status(layout.folder))
+    for words in ("plan.xlsx: search, 12 s, best 120.00", "next.xlsx: number 1 in the queue", "old [X] solved.xlsx"):
+        assert words in text

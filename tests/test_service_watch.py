@@ -1,0 +1,358 @@
+"""The watch process as a whole: what analysts and operators rely on."""
+
+import errno
+import json
+import os
+import signal
+import subprocess
+import sys
+import threading
+import time
+from pathlib import Path
+
+import pytest
+
+from ledgersolve.service.board import health, status
+from ledgersolve.service.disk import Disk
+from ledgersolve.service.layout import Layout, prepare
+from ledgersolve.service.protocol import Protocol
+from ledgersolve.service.verify import verify
+from ledgersolve.service.watch import serve
+from tests.service_share import (
+    HANDLERS,
+    FaultyDisk,
+    Plan,
+    child_at_once,
+    drop,
+    faults_after_recovery,
+    hasten,
+    names,
+    quick_settings,
+    quick_watcher,
+    run_until_empty,
+)
+
+
+@pytest.fixture
+def quick(monkeypatch):
+    """No waits and no child processes."""
+    hasten(monkeypatch.setattr)
+
+
+def returned(folder: Path) -> list[str]:
+    """Returned files without their ids."""
+    whole = [name for name in names(folder / "Returned") if not name.startswith(".")]
+    return sorted(name[: name.index(" [")] + name[name.index("]") + 1 :] for name in whole)
+
+
+# ---- with real child processes ----------------------------------------------------------------------
+
+
+def test_a_folder_is_emptied_once(tmp_path, monkeypatch):
+    """Solved, to fix and a file that is no workbook at all come back; queues of teams are served, too."""
+    monkeypatch.setenv("PYTHONPATH", str(HANDLERS))
+    drop(tmp_path, "good.xlsx")
+    drop(tmp_path, "north/bad.xlsx", "fix")
+    drop(tmp_path, "<b>&.xlsm", "chatter")
+    code = serve(tmp_path, once=True, settings=quick_settings(workers=2), handler="handlers:solve")
+    assert code == 0
+    assert returned(tmp_path) == ["_b_& solved.xlsx", "bad to fix.xlsx", "good solved.xlsx"]
+    assert verify(tmp_path, settled=True) == []
+    state = status(tmp_path)
+    assert state["state"] == "stopped" and len(state["returned"]) == 3
+    assert health(tmp_path) == 1
+
+
+def test_a_workbook_that_stops_the_program_comes_back_after_three_attempts(tmp_path, monkeypatch):
+    """A crash in the solver costs three attempts and no other job anything; the operator is told."""
+    monkeypatch.setenv("PYTHONPATH", str(HANDLERS))
+    drop(tmp_path, "poison.xlsx", "crash")
+    drop(tmp_path, "good.xlsx")
+    assert serve(tmp_path, once=True, settings=quick_settings(), handler="handlers:solve") == 0
+    assert returned(tmp_path) == ["good solved.xlsx", "poison failed.xlsx"]
+    (alert,) = status(tmp_path)["alerts"]
+    assert "SIGSEGV" in alert["why"] and alert["name"] == "poison.xlsx"
+    assert len(list((tmp_path / ".ledgersolve/done").glob("*/failed.*"))) == 3
+
+
+def _service(folder: Path) -> subprocess.Popen:
+    code = (
+        "import sys; from pathlib import Path; from ledgersolve.service.watch import serve;"
+        "from tests.service_share import quick_settings;"
+        "sys.exit(serve(Path(sys.argv[1]), settings=quick_settings(workers=2, beat_seconds=1.0),"
+        " handler='handlers:solve'))"
+    )
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join((str(Path.cwd()), str(HANDLERS)))}
+    return subprocess.Popen([sys.executable, "-c", code, str(folder)], env=environment)
+
+
+def _wait_for(reached, seconds=60.0):
+    until = time.monotonic() + seconds
+    while not reached():
+        assert time.monotonic() < until
+        time.sleep(0.02)
+
+
+@pytest.mark.parametrize("number", [signal.SIGTERM, signal.SIGINT, signal.SIGKILL])
+def test_a_service_stopped_in_mid_solve_loses_nothing(tmp_path, number):
+    """By a signal in good order the lease is given back and the code is 0; killed, the next start takes over."""
+    prepare(tmp_path, Disk())
+    service = _service(tmp_path)
+    drop(tmp_path, "slow.xlsx", "slow 600")
+    drop(tmp_path, "good.xlsx")
+    progress = tmp_path / ".ledgersolve" / "jobs"
+    _wait_for(lambda: list(progress.glob("*/progress.1")) and returned(tmp_path))
+    service.send_signal(number)
+    code = service.wait(60)
+    assert code == (0 if number != signal.SIGKILL else -signal.SIGKILL)
+    assert bool(list(progress.glob("*/released.1"))) == (number != signal.SIGKILL)
+    (held,) = progress.glob("*/in/slow.xlsx")
+    held.write_bytes(drop(tmp_path, "x.xlsx", "fix").read_bytes())  # solved at once the next time
+    (tmp_path / "Inbox" / "x.xlsx").unlink()
+    again = _service(tmp_path)
+    _wait_for(lambda: len(returned(tmp_path)) == 2)
+    again.terminate()
+    assert again.wait(60) == 0
+    assert returned(tmp_path) == ["good solved.xlsx", "slow to fix.xlsx"]
+
+
+# ---- step by step -----------------------------------------------------------------------------------
+
+
+def test_names_of_people_all_come_back(tmp_path, quick):
+    """Every odd but legal name ends in one returned file of its own."""
+    odd = [
+        "a" * 250 + ".xlsx", "u\u0308.xlsx", "\u00fc.xlsx", "Plan.xlsx", "plan.xlsx", "dot. .xlsx", "CON.xlsx",
+        "-x.xlsx", "=x.xlsx", "line\nfeed.xlsx", "esc\x1b[31m.xlsx", os.fsdecode(b"raw\xff\xfe.xlsx"),
+        "\u202egnp.xlsx", ".xlsx", "no ending", "plan (conflicted copy).xlsx", "plan [AB12CD34] solved.xlsx",
+        "'; drop.xlsx",
+    ]  # fmt: skip
+    prepare(tmp_path, Disk())
+    for name in odd:
+        source = tmp_path / "source"
+        source.write_bytes(drop(tmp_path, "x.xlsx", content=name.encode("utf-8", "replace").decode()).read_bytes())
+        (tmp_path / "Inbox" / "x.xlsx").unlink()
+        source.rename(tmp_path / "Inbox" / name)
+    watcher = quick_watcher(tmp_path)
+    assert run_until_empty(watcher)
+    assert len(names(tmp_path / "Returned")) == len(odd)
+    assert faults_after_recovery(tmp_path, odd) == []
+    for name in names(tmp_path / "Returned"):
+        name.encode("utf-8")
+
+
+def test_the_same_name_a_hundred_times_is_a_hundred_jobs(tmp_path, quick):
+    """A later drop of a name is a later job; nothing is overwritten or skipped."""
+    watcher = quick_watcher(tmp_path)
+    for number in range(100):
+        drop(tmp_path, "plan.xlsx", content=str(number))
+        while (tmp_path / "Inbox" / "plan.xlsx").exists():
+            watcher.step()
+    assert run_until_empty(watcher)
+    assert len(names(tmp_path / "Returned")) == 100
+    assert faults_after_recovery(tmp_path, ["plan.xlsx"] * 100) == []
+
+
+def test_a_drop_replaced_in_mid_solve_is_two_jobs_each_from_its_own_input(tmp_path, quick, monkeypatch):
+    """While the first is being solved the second one arrives under the same name."""
+
+    def replacing(request, *rest):
+        if b"first" in Path(request["source"]).read_bytes():
+            drop(tmp_path, "plan.xlsx", content="second")
+        return child_at_once(request, *rest)
+
+    monkeypatch.setattr("ledgersolve.service.supervise.run_child", replacing)
+    watcher = quick_watcher(tmp_path)
+    drop(tmp_path, "plan.xlsx", content="first")
+    assert run_until_empty(watcher)
+    assert faults_after_recovery(tmp_path, ["plan.xlsx"] * 2) == []
+
+
+def test_one_of_two_processes_gets_each_file(tmp_path, quick):
+    """Three hundred files claimed by four threads at once: each is in exactly one job."""
+    prepare(tmp_path, Disk())
+    paths = [drop(tmp_path, f"{number}.xlsx") for number in range(300)]
+    claims: list[str | None] = []
+
+    def claim_all(order: list[Path]) -> None:
+        clerk = Protocol(Layout(tmp_path), Disk(), {})
+        claims.extend(clerk.claim(path) for path in order)
+
+    orders = (paths, paths[::-1], paths[150:] + paths[:150], paths)
+    threads = [threading.Thread(target=claim_all, args=(order,)) for order in orders]
+    for thread in threads:
+        thread.start()
+    for thread in threads:
+        thread.join()
+    assert len([job for job in claims if job is not None]) == 300
+    assert len(list((tmp_path / ".ledgersolve/jobs").glob("*/in/*"))) == 300
+
+
+def test_pause_holds_new_work_and_keeps_drops(tmp_path, quick):
+    """A file PAUSE: nothing is claimed and the page says why; without it work goes on."""
+    watcher = quick_watcher(tmp_path)
+    (tmp_path / "PAUSE").touch()
+    path = drop(tmp_path, "plan.xlsx")
+    for _ in range(20):
+        watcher.step()
+        watcher.wait()
+    assert path.exists() and watcher.state == "paused"
+    assert serve(tmp_path, once=True, settings=quick_settings()) == 1
+    assert path.exists()
+    (tmp_path / "PAUSE").unlink()
+    assert run_until_empty(watcher)
+    assert len(names(tmp_path / "Returned")) == 1
+
+
+def test_quiet_hours_hold_new_work(tmp_path, quick):
+    """A window that covers the whole day starts nothing."""
+    watcher = quick_watcher(tmp_path, quiet_hours=("00:00-00:00",))
+    path = drop(tmp_path, "plan.xlsx")
+    watcher.step()
+    watcher.step()
+    assert path.exists() and watcher.state == "quiet hours"
+
+
+def test_too_little_space_holds_new_work(tmp_path, quick):
+    """Below the floor nothing is taken in; what is there stays where it is."""
+    watcher = quick_watcher(tmp_path, free_mb=1 << 30)
+    path = drop(tmp_path, "plan.xlsx")
+    watcher.step()
+    watcher.step()
+    assert path.exists() and watcher.state == "held" and "free" in watcher.why
+
+
+def test_a_clock_that_jumps_changes_nothing(tmp_path, quick, monkeypatch):
+    """Ten years ahead, ten years back, at every step: all are answered once."""
+    jumps = iter(range(10_000))
+    monkeypatch.setattr("time.time", lambda: 1.8e9 + (-1) ** next(jumps) * 3.15e8)
+    for number in range(5):
+        drop(tmp_path, f"{number}.xlsx")
+    watcher = quick_watcher(tmp_path)
+    assert run_until_empty(watcher)
+    assert faults_after_recovery(tmp_path, [f"{number}.xlsx" for number in range(5)]) == []
+
+
+def test_a_returned_file_that_is_taken_at_once_is_not_made_again(tmp_path, quick):
+    """The analyst moves results away as they come; nothing is returned a second time."""
+    watcher = quick_watcher(tmp_path)
+    taken = 0
+    for number in range(10):
+        drop(tmp_path, f"{number}.xlsx")
+    while not (watcher.is_empty() and taken):
+        watcher.step()
+        for path in (tmp_path / "Returned").glob("*.xlsx"):
+            path.unlink()
+            taken += 1
+        watcher.wait()
+    for _ in range(20):
+        watcher.step()
+    assert taken == 10 and names(tmp_path / "Returned") == []
+
+
+def test_a_file_held_open_elsewhere_waits_and_is_then_taken(tmp_path, quick):
+    """The system refuses the rename while a program has the file: waiting, told, and tried again."""
+
+    class Held(Plan):
+        open = True
+
+        def before(self, number, name, arguments):
+            if name == "rename" and self.open and arguments[0].name == "plan.xlsx":
+                raise PermissionError(errno.EACCES, "sharing violation")
+
+    plan = Held()
+    watcher = quick_watcher(tmp_path, FaultyDisk(plan))
+    drop(tmp_path, "plan.xlsx")
+    drop(tmp_path, "other.xlsx")
+    told = set()
+    for _ in range(100):
+        watcher.step()
+        told |= {found.why for found in watcher.drops if found.name == "plan.xlsx"}
+        watcher.wait()
+    assert returned(tmp_path) == ["other solved.xlsx"]
+    assert any("cannot be read or moved" in why for why in told)
+    plan.open = False
+    assert run_until_empty(watcher)
+    assert faults_after_recovery(tmp_path, ["plan.xlsx", "other.xlsx"]) == []
+
+
+def test_what_cannot_be_taken_does_not_keep_once_from_ending(tmp_path, quick):
+    """A link in Inbox is told and left; the code says that something is left."""
+    prepare(tmp_path, Disk())
+    (tmp_path / "Inbox" / "link.xlsx").symlink_to("/etc/hostname")
+    assert serve(tmp_path, once=True, settings=quick_settings()) == 1
+    assert names(tmp_path / "Inbox") == ["link.xlsx"]
+
+
+def test_a_damaged_answer_alerts_and_stops_nobody_else(tmp_path, quick):
+    """A job with a garbled answer is left alone for the administrator; others go on."""
+    watcher = quick_watcher(tmp_path)
+    clerk = watcher.desk.protocol
+    job = clerk.claim(drop(tmp_path, "plan.xlsx"))
+    (clerk.home(job) / "answer.json").write_text("{")
+    drop(tmp_path, "other.xlsx")
+    assert run_until_empty(watcher)
+    assert returned(tmp_path) == ["other solved.xlsx"]
+    (alert,) = watcher.picture()["alerts"]
+    assert alert["name"] == "plan.xlsx" and "damaged" in alert["why"]
+    assert clerk.view(job).input.exists()
+
+
+def test_answers_of_a_newer_version_are_understood(tmp_path, quick):
+    """Old and new version on one share: an answer with unknown keys is published all the same."""
+    watcher = quick_watcher(tmp_path)
+    drop(tmp_path, "plan.xlsx")
+    clerk = watcher.desk.protocol
+    real = clerk.publish
+    clerk.publish = lambda view: (_ for _ in ()).throw(OSError(errno.EIO, "later"))
+    for _ in range(5):
+        watcher.step()
+    (answer,) = (tmp_path / ".ledgersolve/jobs").glob("*/answer.json")
+    answer.write_text(json.dumps(json.loads(answer.read_text()) | {"colour": "green"}))
+    clerk.publish = real
+    assert run_until_empty(watcher)
+    assert faults_after_recovery(tmp_path, ["plan.xlsx"]) == []
+
+
+def test_status_files_deleted_while_running_come_back(tmp_path, quick):
+    """Page, data and signs of life are made anew; they mean nothing to the work."""
+    watcher = quick_watcher(tmp_path)
+    drop(tmp_path, "plan.xlsx")
+    watcher.step()
+    watcher.write_board()
+    for path in (tmp_path / "Status.html", tmp_path / "status.json", *(tmp_path / ".ledgersolve/hosts").iterdir()):
+        path.unlink()
+    assert run_until_empty(watcher)
+    watcher.write_board()
+    assert (tmp_path / "Status.html").exists() and len(names(tmp_path / ".ledgersolve/hosts")) == 1
+
+
+def test_a_job_whose_holders_vanish_again_and_again_is_answered(tmp_path, quick):
+    """A workbook that takes the whole service down each time leaves no word; in the end it goes back, too."""
+    watcher = quick_watcher(tmp_path, lost_leases=4)
+    clerk = watcher.desk.protocol
+    job = clerk.claim(drop(tmp_path, "plan.xlsx"))
+    for _ in range(4):
+        clerk.lease(clerk.view(job))
+    time.sleep(0.01)
+    assert run_until_empty(watcher)
+    assert returned(tmp_path) == ["plan failed.xlsx"]
+
+
+def test_a_share_that_is_not_there_at_the_start_ends_once_with_words(tmp_path, caplog):
+    """With an expected mark and no share the run ends with 1 and nothing is created."""
+    assert serve(tmp_path, once=True, settings=quick_settings(share_id="wanted")) == 1
+    assert names(tmp_path) == []
+    (tmp_path / "file").touch()
+    assert serve(tmp_path / "file", once=True, settings=quick_settings()) == 2
+
+
+def test_a_log_that_cannot_be_written_stops_nothing(tmp_path, quick):
+    """A full log disk, and a folder that is not there: the work is done all the same."""
+    for number, log in enumerate((Path("/dev/full"), tmp_path / "no" / "such" / "x.log")):
+        drop(tmp_path, f"{number}.xlsx", content=str(number))
+        code = serve(
+            tmp_path, once=True, settings=quick_settings(log_file=log, log_level="DEBUG"), handler="handlers:solve"
+        )
+        assert code == 0
+    assert len(names(tmp_path / "Returned")) == 2
