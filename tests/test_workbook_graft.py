@@ -383,6 +383,18 @@ def test_a_marked_sheet_is_no_longer_selected_and_is_again_when_cleared(tmp_path
     assert contents(tmp_path / "c.xlsx")["xl/worksheets/sheet1.xml"] == contents(source)["xl/worksheets/sheet1.xml"]
 
 
+def test_the_selection_can_be_taken_without_marks(tmp_path: Path) -> None:
+    """Asked to, the graft frees the analyst's selected tab by one attribute, and the next drop restores it."""
+    source = rich_book(tmp_path / "a.xlsx", macros=False)
+    graft(source, tmp_path / "b.xlsx", results(), free_tab=True)
+    parts, before = contents(tmp_path / "b.xlsx"), contents(source)
+    part = "xl/worksheets/sheet1.xml"
+    assert parts[part] == before[part].replace(b'tabSelected="1"', b'tabSelected="0"')
+    assert b"".join(parts.values()).count(b'tabSelected="1"') == 1
+    graft(tmp_path / "b.xlsx", tmp_path / "c.xlsx", results())
+    assert contents(tmp_path / "c.xlsx")[part] == before[part]
+
+
 def test_results_without_any_text(tmp_path: Path) -> None:
     """Sheets of figures alone need no list of texts, and make none."""
     sheet = ResultSheet("Figures")

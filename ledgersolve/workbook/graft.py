@@ -70,7 +70,8 @@ def plan_names(source: Path, wanted: Sequence[str]) -> dict[str, str]:
     return planned
 
 
-def graft(source: Path, target: Path, sheets: Sequence[ResultSheet], marks: Sequence[Problem] = ()) -> None:
+def graft(source: Path, target: Path, sheets: Sequence[ResultSheet], marks: Sequence[Problem] = (), *,
+          free_tab: bool = False) -> None:
     """Write a copy of ``source`` with the result sheets in front and marks on the cells that problems name.
 
     Earlier sheets and marks of ours are taken out first. The first result sheet is the active one. Problems
@@ -84,6 +85,10 @@ def graft(source: Path, target: Path, sheets: Sequence[ResultSheet], marks: Sequ
         Sheets under the names ``plan_names`` gave.
     marks
         Problems whose ``cell`` and ``more`` are marked on their ``sheet``.
+    free_tab
+        Take the selection from the analyst's selected sheet, by the one attribute that says so, until the
+        next drop. Without it every unmarked sheet keeps its bytes, and some programs open the copy with two
+        tabs selected, ours and theirs. A marked sheet is freed in any case.
 
     Raises
     ------
@@ -96,7 +101,7 @@ def graft(source: Path, target: Path, sheets: Sequence[ResultSheet], marks: Sequ
         parts = sheet_parts(draft)
         problems = {name: found for name, found in by_sheet(marks).items() if name in parts}
         selected = {name for name, part in parts.items() if is_selected(draft.head(part))}
-        freed = selected & problems.keys()
+        freed = selected if free_tab else selected & problems.keys()
         rendered = _rendered(sheets)
         styles = _add_sheets(draft, rendered, first_selected=not selected - freed)
         _add_marks(draft, styles, parts, problems, freed)
@@ -190,13 +195,13 @@ def _new_part(draft: Draft, kind: str, content_type: str) -> str:
 
 def _add_marks(draft: Draft, styles: str, parts: dict[str, str], problems: dict[str, list[Problem]],
                freed: set[str]) -> None:
-    if not problems:
-        return
-    text, (error, notice) = add_live_formats(draft.text(styles), [ERROR_FORMAT, NOTICE_FORMAT])
-    draft.put(styles, text)
+    if problems:
+        text, (error, notice) = add_live_formats(draft.text(styles), [ERROR_FORMAT, NOTICE_FORMAT])
+        draft.put(styles, text)
     for name, found in problems.items():
-        sheet = with_marks(draft.read(parts[name]), found, error, notice)
-        draft.put(parts[name], with_tab_freed(sheet) if name in freed else sheet)
+        draft.put(parts[name], with_marks(draft.read(parts[name]), found, error, notice))
+    for name in freed:
+        draft.put(parts[name], with_tab_freed(draft.read(parts[name])))
 
 
 def _tabs(draft: Draft, rendered: Rendered) -> list[book.Tab]:
