@@ -12,7 +12,7 @@ and charges stand for rules that tie sites together: counts, groups, capacity fo
 charges keep the bound valid; the ones chosen here make it as high as these rules alone allow.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -77,14 +77,25 @@ def certify(case: Case, lanes: Lanes, prices: Floats) -> Certificate:
         if np.isfinite(lanes.capacity[j]):
             volume_price[j] = _volume_price(surplus, demand, lanes.capacity[j])
         gain[j] = np.maximum(surplus - volume_price[j] * demand, 0.0).sum()
+    bare = Certificate(price, usable, volume_price, lanes.site_cost, gain, gain, gain, (), 0.0, 0.0, gain)
     reduced = lanes.site_cost - capacity * volume_price - gain
-    supply, count, group = _charges(case, lanes, reduced)
+    supplies = {0.0, _supply_price(case, lanes, reduced)}
+    return max((_charged(case, lanes, bare, reduced, supply) for supply in sorted(supplies)), key=lambda c: c.bound)
+
+
+def _charged(case: Case, lanes: Lanes, bare: Certificate, reduced: Floats, supply: float) -> Certificate:
+    """Complete a certificate with this supply price and the best charges for counts and groups beside it."""
     every = np.where(np.isfinite(case.capacity), case.capacity, 0.0)
+    balance = reduced - supply * every
+    count = _count_charge(lanes, balance)
+    group = _group_charge(lanes, balance + count)
+    closed = lanes.rule == CLOSED
     charge = np.where(closed, 0.0, group + count - supply * every)
-    balance = reduced + charge
-    term = np.where(closed, 0.0, np.where(lanes.rule == OPEN, balance, np.minimum(balance, 0.0)))
+    full = reduced + charge
+    term = np.where(closed, 0.0, np.where(lanes.rule == OPEN, full, np.minimum(full, 0.0)))
     rules = _rules(case, lanes, supply, count, group)
-    return Certificate(price, usable, volume_price, lanes.site_cost, gain, charge, term, rules, supply, count, group)
+    return replace(bare, charge=charge, term=term, rules=rules, supply_price=supply, count_charge=count,
+                   group_charge=group)
 
 
 def _volume_price(surplus: Floats, demand: Floats, capacity: float) -> float:
@@ -95,14 +106,6 @@ def _volume_price(surplus: Floats, demand: Floats, capacity: float) -> float:
     filled = np.cumsum(demand[worth][order])
     beyond = int(np.searchsorted(filled, capacity * (1 + 1e-12), side="right"))
     return float(ratio[order[beyond]]) if beyond < order.size else 0.0
-
-
-def _charges(case: Case, lanes: Lanes, reduced: Floats) -> tuple[float, float, Floats]:
-    """Supply price, count charge and group charges, found one after the other."""
-    supply = _supply_price(case, lanes, reduced)
-    balance = reduced - supply * np.where(np.isfinite(case.capacity), case.capacity, 0.0)
-    group = _group_charge(lanes, balance)
-    return supply, _count_charge(lanes, balance + group), group
 
 
 def _supply_price(case: Case, lanes: Lanes, reduced: Floats) -> float:
@@ -129,6 +132,13 @@ def _group_charge(lanes: Lanes, balance: Floats) -> Floats:
     return charge
 
 
+def _best_of_groups(lanes: Lanes, balance: Floats) -> Floats:
+    """Balances of the sites that may open: one for each group, its best."""
+    free = (lanes.rule != OPEN) & (lanes.rule != CLOSED)
+    groups = [balance[free & (lanes.group == number)].min() for number in np.unique(lanes.group[free]) if number >= 0]
+    return np.concatenate([balance[free & (lanes.group < 0)], np.array(groups, dtype=np.float64)])
+
+
 def fewest_sites(lanes: Lanes) -> int:
     """Least number of open sites: at least one where some demand must be met."""
     return max(lanes.fewest, int((lanes.needs & np.isinf(lanes.unmet_cost)).any()))
@@ -137,7 +147,7 @@ def fewest_sites(lanes: Lanes) -> int:
 def _count_charge(lanes: Lanes, balance: Floats) -> float:
     """Charge per open site at which the allowed number of sites is worth opening."""
     forced = int((lanes.rule == OPEN).sum())
-    ranked = np.sort(balance[(lanes.rule != OPEN) & (lanes.rule != CLOSED)])
+    ranked = np.sort(_best_of_groups(lanes, balance))
     most, fewest = lanes.most - forced, fewest_sites(lanes) - forced
     if 0 <= most < ranked.size and ranked[most] < 0:
         return float(-ranked[most])

@@ -83,7 +83,7 @@ def write_decision(name: str, page: Decision, picture: Chart | None) -> ResultSh
     row = _tiles(sheet, page, row)
     parts_row = row + 1
     row = _tables(sheet, page, row)
-    bars = parts_chart(name, parts_row, len(page.parts), page.currency, page.per)
+    bars = parts_chart(name, parts_row, [figure.value for _, figure in page.parts], page.currency, page.per)
     row = _charts(sheet, [bars] if picture is None else [picture, bars], row)
     for left, right in ((("What changes", page.changes), ("How sure this is", page.sure)),
                         (("What limits the plan", page.binding), ("Check before you act", page.check))):
@@ -180,12 +180,13 @@ def _part_row(sheet: ResultSheet, row: int, total_row: int, label: str, figure: 
     sheet.put(row, RIGHT + 2, share, replace(look, align="right", indent=0, number_format=style.PERCENT), formula=formula)
 
 
-def parts_chart(name: str, row: int, count: int, currency: str, per: str) -> Chart:
+def parts_chart(name: str, row: int, amounts: Sequence[float], currency: str, per: str) -> Chart:
     """Bar chart of the cost parts; ``row`` is the first part's row (from 0)."""
+    count, negative = len(amounts), min(amounts, default=0.0) < 0
     series = Series("Cost", Area(name, row, RIGHT, row + count - 1, RIGHT),
                     Area(name, row, RIGHT + 1, row + count - 1, RIGHT + 1), style.PETROL)
     return Chart("bar", "Cost by part", (series,), 0, RIGHT, y_title=f"{currency}{per}", number_format="#,##0",
-                 legend="", from_zero=True, description="Bars of the cost parts that stand in the table above")
+                 legend="", from_zero=not negative, step=style.axis_step(max(amounts, default=0.0)), description="Bars of the cost parts that stand in the table above")
 
 
 def _charts(sheet: ResultSheet, charts: Sequence[Chart], row: int) -> int:

@@ -85,7 +85,9 @@ def _tiles(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
         against: Tile = ("Against today", "not asked for", "", "the sheet Today plan is not filled, or not compared")
     else:
         saved = today.solved.cost - cost
-        against = ("Saved against today" if saved >= 0 else "Dearer than today", abs(saved), "", currency)
+        broken = "; today's plan breaks rules" if today.audit is not None and not today.audit.ok else ""
+        label = "Saved against today" if saved >= 0 else "Dearer than today"
+        against = (label, abs(saved), "", currency + broken)
     if report.solved.bound is None:
         still: Tile = ("Could still be saved", "not known", "", "no bound is known")
     else:
@@ -149,8 +151,9 @@ def _changes(at: LotPlaces) -> list[str]:
     if changed.size:
         top = sorted(changed.tolist(), key=lambda i: -abs(saved[i]))[:4]
         words = style.listed([case.item_names[i] for i in top])
-        points.append(f"{style.counted(int(changed.size), 'item')} of {case.n} are made in other lots than today; most of "
-                      f"the money moves with {words}.")
+        who = f"All {case.n} items" if changed.size == case.n > 1 else (
+            f"{changed.size} of {style.counted(case.n, 'item')}")
+        points.append(f"Made in other lots than today: {who.lower()}; most of the money moves with {words}.")
     fewer = before.setups - plan.setups
     if fewer:
         points.append(f"{style.counted(abs(fewer), 'setup')} {'fewer' if fewer > 0 else 'more'} than today.")

@@ -1,11 +1,12 @@
 """Detail sheets of a lot-sizing plan: lots, stock, late and lost demand, load of resources."""
 
+import math
 from collections.abc import Sequence
 
 import numpy as np
 
 from ledgersolve.report import names, style
-from ledgersolve.report.lot_places import Block, LotPlaces
+from ledgersolve.report.lot_places import CODE, NAME, Block, LotPlaces
 from ledgersolve.report.period_tables import ALERT, MADE, SOME, PeriodTable, shade, write_periods
 from ledgersolve.report.tables import FIRST_ROW, FOOTER, TITLE_ROW, Column, heading
 from ledgersolve.workbook.sheets import ResultSheet, Style
@@ -62,6 +63,7 @@ def _lot_columns(at: LotPlaces) -> list[Column]:
     ]
 
 
+PERIODS_A_PAGE = 22
 RESOURCE, TIME, SETUP_TIME, FAMILY, LEAST, MOST, MULTIPLE = range(7)
 """Columns to the right of the periods of the lots."""
 SAFETY, CLOSING, MOST_STOCK, OPENING = range(4)
@@ -219,6 +221,8 @@ def _finished(at: LotPlaces, sheet: ResultSheet, title: str, words: str, frozen_
     heading(sheet, title, words, 8)
     sheet.frozen = (frozen_row, 2)
     sheet.repeat_rows = (TITLE_ROW, TITLE_ROW) if frozen_row else None
+    sheet.repeat_columns = (CODE, NAME)
+    sheet.pages_wide = max(1, math.ceil((at.report.case.t + 9) / PERIODS_A_PAGE))
     sheet.footer = FOOTER
     return sheet
 

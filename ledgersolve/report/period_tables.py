@@ -39,8 +39,8 @@ class PeriodTable:
 def write_periods(at: LotPlaces, sheet: ResultSheet, table: PeriodTable) -> None:
     """Write titles (in the row above the block) and the table."""
     _titles(at, sheet, table)
-    block, look = table.block, style.number(table.number_format)
-    total = replace(look, bold=True, fill=style.SAND)
+    block, look = table.block, style.number(style.without_zeros(table.number_format))
+    total = replace(style.number(table.number_format), bold=True, fill=style.SAND)
     last = column_letters(FIRST_PERIOD + block.periods)
     for r, code in enumerate(table.rows):
         row = block.first_row + r

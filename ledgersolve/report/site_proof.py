@@ -88,12 +88,12 @@ def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int) -> int:
 
 
 EXPLANATION = (
-    "Give every customer a price: what the plan could at most spend to serve that customer. Whatever a plan looks like, "
-    "serving a customer costs the price or more, unless an open site serves it for less; what a site can save in this "
-    "way on all customers together is its gain. A site whose gain exceeds its cost lowers the bound by the difference. "
-    "So: sum of all prices + sum of the sites' terms + the constants below is less than or equal to the cost of "
-    "EVERY plan that keeps the rules. The prices were found by the program, but any prices give a valid bound: the "
-    "sheet needs no trust in how they were found. Change one price and see: the bound stays valid, and gets lower."
+    "Give every customer a price: what a plan may at most be counted to spend on serving that customer. In any plan, "
+    "serving a customer costs its price or more, except from an open site that does it for less; what a site saves "
+    "against the prices, on all customers together, is its gain. A site whose gain exceeds its cost lowers the sum by "
+    "the difference. So the sum of all prices + the terms of all sites + the constants below is at most the cost of "
+    "EVERY plan that keeps the rules. How the prices were found does not matter: with any other prices, or charges "
+    "and prices of capacity of 0 or more, the sum is still a bound (a price above a cost of unmet demand aside)."
 )
 
 
@@ -122,8 +122,8 @@ def _write_bound(at: SitePlaces, ledger: Ledger, sheet: ResultSheet, row: int, c
         strong = words.startswith(("No plan", "So a better"))
         look = replace(money, bold=strong)
         sheet.put(first + place, 0, words, style.BOLD if strong else style.TEXT)
-        sheet.put(first + place, 1, f"{case.currency}{at.per}" if place >= len(charges) else
-                  f"{case.currency} each", style.NOTE)
+        unit = f"{case.currency}{at.per}" if place >= len(charges) else f"{case.currency} each"
+        sheet.put(first + place, 3, unit, replace(style.NOTE, align="left", indent=1))
         sheet.put(first + place, 2, figure.value, look, formula=figure.written)
     paragraph(sheet, first + len(summary), 0, 5, _rest_on_search(at, bound), style.TEXT)
     _write_sites(at, sheet, sites_row, certificate, prices, cells)
@@ -171,12 +171,14 @@ def _rest_on_search(at: SitePlaces, checked: float) -> str:
     report, currency = at.report, at.report.case.currency
     cost, proven = report.audit.total, report.solved.bound
     possible = style.money_words(max(0.0, cost - checked), currency, "up")
-    words = f"What you can check in this sheet: no plan costs less by more than {possible}."
+    words = "What you can check in this sheet: no plan costs less."
+    if cost - checked > 1e-9 * abs(cost):
+        words = f"What you can check in this sheet: no plan is cheaper by more than {possible}."
     if proven is None or proven <= checked + 1e-9 * abs(cost):
         return f"{words} Nothing more is claimed than this sheet shows."
     rest = style.money_words(max(0.0, cost - proven), currency, "up")
     branching = ("The search closed the rest by trying out sites open and closed one after the other (branching): it "
-                 f"claims that no plan costs less by more than {rest}. That part rests on the program.")
+                 f"claims that no plan is cheaper by more than {rest}. That part rests on the program.")
     if report.solved.verdict == Verdict.BEST_FOUND:
         branching += " The time limit ended this work before it was done."
     return f"{words} {branching}"

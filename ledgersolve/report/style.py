@@ -88,6 +88,19 @@ def figure_format(values: Iterable[float]) -> str:
     return "#,##0" + ("." + "0" * needed if needed else "")
 
 
+def without_zeros(number_format: str) -> str:
+    """Number format that shows a dash in place of 0, so that the other figures stand out."""
+    return f"{number_format};\u2212{number_format};\u2013"
+
+
+def axis_step(largest: float, marks: int = 4) -> float | None:
+    """Round distance between marks of an axis up to ``largest``; None where there is nothing to measure."""
+    if not largest > 0:
+        return None
+    size = 10.0 ** math.floor(math.log10(largest / marks))
+    return next(size * part for part in (1.0, 2.0, 2.5, 5.0, 10.0) if size * part * marks >= largest)
+
+
 def with_format(style: Style, number_format: str) -> Style:
     """Give the style with a number format, figures to the right."""
     return replace(style, number_format=number_format, align="right", indent=0)

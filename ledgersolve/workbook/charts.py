@@ -114,6 +114,8 @@ def _dress(drawn: Any, chart: Chart) -> None:
     up = _axis(chart.y_title, chart.y_limits, chart.number_format, not scatter)
     if chart.from_zero:
         up["min"] = 0
+    if chart.step is not None:
+        up["major_unit"] = chart.step
     if bar:
         across["reverse"] = True  # first category on top
         across, up = up, across  # the library names the axes of bars by where they are drawn

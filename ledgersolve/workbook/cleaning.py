@@ -14,6 +14,8 @@ def clean_text(text: str) -> str:
 
     Length counts UTF-16 units, as the file format does; longer text ends in a visible mark.
     """
+    if text.isascii() and text.isprintable() and len(text) <= MOST_TEXT:
+        return text
     plain = text.replace("\r\n", "\n").replace("\r", "\n")
     plain = _LONE_SURROGATE.sub("�", _NOT_IN_XML.sub("", plain))
     if len(plain) * 2 <= MOST_TEXT:

@@ -96,6 +96,7 @@ class Chart:
     y_limits: tuple[float, float] | None = None
     legend: str = "bottom"
     from_zero: bool = False  # the value axis starts at 0
+    step: float | None = None  # distance of the marks on the value axis
     plot: tuple[float, float, float, float] | None = None  # left, top, width, height as parts of the chart
     description: str = ""
 
@@ -140,6 +141,7 @@ class ResultSheet:
     pages_wide: int = 1
     pages_tall: int = 0
     repeat_rows: tuple[int, int] | None = None
+    repeat_columns: tuple[int, int] | None = None
     print_area: tuple[int, int, int, int] | None = None
     footer: str = "&L&F&C&A&RPage &P of &N"
     tab_colour: str = ""
