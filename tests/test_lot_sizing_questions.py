@@ -94,7 +94,7 @@ def test_today_s_plan_stands_beside_the_rules() -> None:
 
 def test_one_more_hour_is_worth_what_re_solving_says() -> None:
     """Never more than re-solving with that hour saves, for each full period."""
-    case = on_one_line(58.0)
+    case = on_one_line(60.0)
     solved = planned(case)
     rows = bottlenecks(case, solved, LIMITS.start()).rows
     hours = [row for row in rows if row[0].startswith("one more")]
@@ -109,7 +109,7 @@ def test_one_more_hour_is_worth_what_re_solving_says() -> None:
 
 def test_a_tenth_more_capacity_is_re_planned() -> None:
     """The saving is the difference of two proven plans."""
-    case = on_one_line(58.0)
+    case = on_one_line(60.0)
     solved = planned(case)
     row = next(row for row in bottlenecks(case, solved, LIMITS.start()).rows if row[0].startswith("a tenth"))
     better = planned(replace(case, capacity=case.capacity * 1.1))
