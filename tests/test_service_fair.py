@@ -50,31 +50,25 @@ def test_what_waited_long_goes_before_smaller_ones():
     assert order(line)[0] == "old"
 
 
-def test_one_place_is_kept_for_small_work():
-    """With four places three long jobs may run; the last one is for small work only."""
+def test_one_more_place_is_kept_for_small_work():
+    """Long work may take all places but never the one beyond them."""
     taking = turns()
-    long = Running(size=1 << 20, expected=500.0, started=0.0)
+    long = Running(size=1 << 20, expected=500.0, started=990.0)
     small = Running(size=100, expected=1.0, started=995.0)
-    assert taking.places([long, long], 4) == "any"
-    assert taking.places([long, long, long], 4) == "small"
-    assert taking.places([small, small, small], 4) == "any"
-    assert taking.places([long, small, long, long], 4) == "none"
+    assert taking.places([long], 2) == "any"
+    assert taking.places([long, long], 2) == "small"
+    assert taking.places([long, long, small], 2) == "none"
+    assert taking.places([long, small], 2) == "none"
+    assert taking.places([], 1) == "any"
+    assert taking.places([long], 1) == "small"
 
 
 def test_a_small_one_gets_a_place_where_all_turned_out_long():
-    """Work that was thought small and runs on opens one more place, never two."""
+    """Work that was thought small and runs on opens the place beyond, never two."""
     taking = turns()
     surprise = Running(size=100, expected=1.0, started=900.0)
     assert taking.places([surprise, surprise], 2) == "small"
     assert taking.places([surprise, surprise, surprise], 2) == "none"
-
-
-def test_a_single_place_lets_a_small_one_pass_a_long_one():
-    """With one place a small workbook still does not wait for a long one."""
-    taking = turns()
-    assert taking.places([], 1) == "any"
-    assert taking.places([Running(1 << 20, 500.0, 999.0)], 1) == "small"
-    assert taking.places([Running(100, 1.0, 999.0)], 1) == "none"
 
 
 def test_a_place_for_small_work_is_not_given_to_long_work():

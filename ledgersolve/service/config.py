@@ -29,7 +29,7 @@ class ServiceSettings(BaseSettings):
     workers: int = Field(default_factory=lambda: max(1, os.cpu_count() or 1), ge=1, le=1024)
     """Workbooks solved at a time."""
     small_seconds: float = Field(60.0, ge=0)
-    """One place is kept for workbooks that are expected back within this time (with two or more places)."""
+    """One more place is kept for workbooks that are expected back within this time."""
     age_seconds: float = Field(900.0, gt=0)
     """A workbook that waited this long goes before smaller ones of the same owner."""
 

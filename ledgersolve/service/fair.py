@@ -95,13 +95,12 @@ class Turns:
     def places(self, running: list[Running], workers: int) -> Literal["any", "small", "none"]:
         """What may be started now beside what runs.
 
-        With two or more places the last one is kept for small work. Where every place is taken by work
-        that is long (or turned out to be), one more is opened for a small one: at most workers + 1 run.
+        Every place takes any work. Where all are taken by work that is long, or turned out to be, one more
+        is open to a small one: at most workers + 1 run, and no small one waits for fifty long ones.
         """
-        now = self.clock()
-        long = sum(1 for job in running if job.expected > self.small_seconds)
         if len(running) < workers:
-            return "any" if workers == 1 or long < workers - 1 else "small"
+            return "any"
+        now = self.clock()
         slow = sum(1 for job in running if job.expected > self.small_seconds or now - job.started > _SURPRISE)
         return "small" if len(running) == workers and slow >= workers else "none"
 
