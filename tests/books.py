@@ -35,6 +35,13 @@ class Formula:
     value: float | str | bool | None = None
 
 
+@dataclass(frozen=True)
+class Percent:
+    """A number shown as a percentage: 0.2 is shown as 20 %."""
+
+    value: float
+
+
 def write_book(
     path: Path, sheets: Mapping[str, Sequence[Sequence[object]]],
     hidden_rows: Mapping[str, Iterable[int]] | None = None, date1904: bool = False,
@@ -46,11 +53,12 @@ def write_book(
     """
     book = xlsxwriter.Workbook(str(path), {"in_memory": True, "date_1904": date1904})
     date_format = book.add_format({"num_format": "yyyy-mm-dd"})
+    percent_format = book.add_format({"num_format": "0.00%"})
     for name, rows in sheets.items():
         sheet = book.add_worksheet(name)
         for r, row in enumerate(rows):
             for c, value in enumerate(row):
-                _write_cell(sheet, r, c, value, date_format)
+                _write_cell(sheet, r, c, value, date_format, percent_format)
         for row_number in (hidden_rows or {}).get(name, ()):
             sheet.set_row(row_number - 1, None, None, {"hidden": True})
     book.close()
@@ -60,13 +68,15 @@ def write_book(
     return path
 
 
-def _write_cell(sheet, r: int, c: int, value: object, date_format) -> None:
+def _write_cell(sheet, r: int, c: int, value: object, date_format, percent_format) -> None:
     if value is None:
         return
     if isinstance(value, bool | np.bool_):
         sheet.write_boolean(r, c, bool(value))
     elif isinstance(value, Formula):
         sheet.write_formula(r, c, value.text, None, NEVER if value.value is None else value.value)
+    elif isinstance(value, Percent):
+        sheet.write_number(r, c, value.value, percent_format)
     elif isinstance(value, datetime.date):
         sheet.write_datetime(r, c, datetime.datetime(value.year, value.month, value.day), date_format)
     elif isinstance(value, str):

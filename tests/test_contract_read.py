@@ -597,3 +597,28 @@ def test_periods_over_new_year_keep_their_order(tmp_path):
     case = read_sheets(tmp_path, sheets).case
     assert case.periods == ("2026-W52", "2026-W53", "2027-W01")
     assert case.period_starts == ("2026-12-21", "2026-12-28", "2027-01-04")
+
+
+def test_tables_too_large_for_memory_are_refused(tmp_path):
+    """Lists that make more pairs than fit into memory are one error, found before any memory is taken."""
+    sites = [{"Site": k, "Fixed cost": 1, "Latitude": 1, "Longitude": 1} for k in range(7000)]
+    customers = [{"Customer": k, "Demand": 1, "Latitude": 1, "Longitude": 1} for k in range(7000)]
+    sheets = site_sheets(sites, customers, settings={"Cost per unit and distance": 1})
+    sheets["Distances"] = [["Site", 1], [1, 5]]
+    reading = read_sheets(tmp_path, sheets)
+    assert errors(reading) == [("too large", "Sites", "")]
+    assert "7,000 sites and 7,000 customers" in reading.problems[0].found
+    items = [{"Item": k, "Setup cost": 1, "Holding cost": 1} for k in range(3000)]
+    sheets = lot_sheets(items, [[1]] * 3000)
+    sheets["Periods"] = [["Period"], *[[k] for k in range(1, 2001)]]
+    assert errors(read_sheets(tmp_path, sheets)) == [("too large", "Items", "")]
+
+
+def test_hostile_texts_are_quoted_short_and_clean(tmp_path):
+    """Codes of 30,000 characters, control characters and formula-like text come back short, on one line."""
+    sheets = small_site(lanes=[{"Site": "x" * 30_000, "Customer": "C1", "Unit cost": 1},
+                               {"Site": "a\u202eb\tc\nd", "Customer": "=cmd|x", "Unit cost": 1}])
+    for problem in read_sheets(tmp_path, sheets).problems:
+        assert len(problem.found) < 150
+        assert problem.found.isprintable()
+    assert any("=cmd|x" in p.found for p in read_sheets(tmp_path, sheets).problems)

@@ -3,7 +3,7 @@
 import pytest
 
 from ledgersolve.contract import Job
-from tests.books import Formula, errors, notices, read_sheets, site_sheets
+from tests.books import Formula, Percent, errors, notices, read_sheets, site_sheets
 
 SITES = [{"Site": "A", "Fixed cost": 1, "Today": "yes"}]
 CUSTOMERS = [{"Customer": "X", "Demand": 10}]
@@ -102,3 +102,14 @@ def test_cells_of_settings_travel_beside_the_case(tmp_path):
     assert origins.setting("Road factor") is None
     assert origins.setting("Most sites") is None
     assert origins.setting("Longest distance") is None
+
+
+def test_percent_cells_are_read_as_they_are_shown(tmp_path):
+    """A cell that shows 2 % is stored as 0.02: it means 2, a notice says so, and formulas leave it alone."""
+    reading = read(tmp_path, [*RIGHT, ["Accepted gap (%)", Percent(0.02)], ["Road factor", Percent(1.3)]])
+    assert notices(reading) == [("percent format", "Settings", "B4")]
+    assert reading.run.accepted_gap == 0.02
+    assert reading.origins.setting("Accepted gap (%)") is None
+    assert dict(reading.settings)["Road factor"] == "1.3"
+    assert errors(read(tmp_path, [*RIGHT, ["Accepted gap (%)", Percent(2)]])) == [("number too large", "Settings",
+                                                                                   "B4")]

@@ -4,7 +4,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 
 from ledgersolve.contract.codes import Codes, codes_of
-from ledgersolve.contract.columns import JobContract, ListSheet, MatrixSheet, listed
+from ledgersolve.contract.columns import JobContract, ListSheet, MatrixSheet, listed, quoted
 from ledgersolve.contract.faults import Fault, Faults
 from ledgersolve.contract.lists import CheckedList, check_list, report_titles
 from ledgersolve.contract.matrices import CheckedMatrix, check_matrix
@@ -18,7 +18,11 @@ from ledgersolve.workbook.text import cell_text, nearest, plain, unit_in
 
 @dataclass
 class Book:
-    """What was read of a workbook; ``tables``, ``codes`` and ``matrices`` by the contract's sheet names."""
+    """What was read of a workbook; ``tables``, ``codes`` and ``matrices`` by the contract's sheet names.
+
+    ``broken`` are sheets that could not be read as what they are, ``too_large`` lists that make too many
+    pairs with another.
+    """
 
     contract: JobContract
     faults: Faults
@@ -28,6 +32,7 @@ class Book:
     codes: dict[str, Codes] = field(default_factory=dict)
     matrices: dict[str, CheckedMatrix] = field(default_factory=dict)
     broken: set[str] = field(default_factory=set)
+    too_large: set[str] = field(default_factory=set)
 
     def table(self, name: str) -> CheckedList | None:
         """A list sheet; None where it is absent, empty or could not be read."""
@@ -50,11 +55,11 @@ def find_sheets(package: Package, names: Sequence[str], faults: Faults) -> dict[
         for other in fitting[1:]:
             if unit_in(other.name):
                 faults.notice(other.name, None, "", "sheet like a known one",
-                              f"the sheet “{other.name}” beside “{fitting[0].name}”", f"one sheet {name}",
+                              f"the sheet {quoted(other.name)} beside {quoted(fitting[0].name)}", f"one sheet {name}",
                               "It was not used; rename it if it should stand for something else.")
             else:
                 faults.add(other.name, None, "", Fault(
-                    "sheet twice", f"the sheet “{other.name}” beside “{fitting[0].name}”",
+                    "sheet twice", f"the sheet {quoted(other.name)} beside {quoted(fitting[0].name)}",
                     f"one sheet {name}",
                     "Rename or take out one of the two sheets."))
     return found
@@ -72,7 +77,7 @@ def report_sheets(package: Package, contract: JobContract, other: JobContract, f
         if sheet.required:
             missing_sheet(sheet.name, slip, faults)
         elif slip is not None:
-            faults.notice(slip, None, "", "sheet like a known one", f"the sheet “{slip}”; it was not used",
+            faults.notice(slip, None, "", "sheet like a known one", f"the sheet {quoted(slip)}; it was not used",
                           f"`{sheet.name}`, if that is what it means",
                           "Rename the sheet if it should be used.")
     foreign = {plain(sheet.name) for sheet in other.sheets}
@@ -86,8 +91,8 @@ def report_sheets(package: Package, contract: JobContract, other: JobContract, f
 
 def missing_sheet(name: str, slip: str | None, faults: Faults) -> None:
     """Report a required sheet that is not there."""
-    found = f"no sheet {name}" + (f"; there is a sheet “{slip}”" if slip else "")
-    remedy = f"Did you mean {name}? Rename “{slip}”." if slip else f"Add a sheet named {name}."
+    found = f"no sheet {name}" + (f"; there is a sheet {quoted(slip)}" if slip else "")
+    remedy = f"Did you mean {name}? Rename {quoted(slip)}." if slip else f"Add a sheet named {name}."
     faults.add(name, None, "", Fault("missing sheet", found, f"a sheet named {name}", remedy))
 
 
@@ -103,6 +108,21 @@ def read_sheets(package: Package, book: Book) -> None:
             _read_matrix(package, info, sheet, book)
         if sheet.name in book.tables or sheet.name in book.matrices:
             _report_surroundings(info, package.details(info.name), _title_row(book, sheet.name), book)
+
+
+def is_too_large(book: Book, down: str, across: str) -> bool:
+    """Whether two lists make more pairs than fit into memory, which is then reported once."""
+    sizes = [len(book.codes[name].codes) if name in book.codes else 0 for name in (down, across)]
+    most = book.contract.most_pairs
+    if sizes[0] * sizes[1] <= most:
+        return False
+    if down not in book.too_large:
+        book.too_large.add(down)
+        book.faults.add(book.tables[down].sheet, None, "", Fault(
+            "too large", f"{sizes[0]:,} {down.casefold()} and {sizes[1]:,} {across.casefold()}",
+            f"at most {most:,} pairs of the two",
+            "Put rows together that can be planned as one, or split the workbook."))
+    return True
 
 
 def _title_row(book: Book, name: str) -> int:
@@ -172,6 +192,8 @@ def _no_titles(name: str, sheet: ListSheet, faults: Faults) -> None:
 
 def _read_matrix(package: Package, info: SheetInfo, sheet: MatrixSheet, book: Book) -> None:
     down, across = book.codes.get(sheet.rows_of), book.codes.get(sheet.columns_of)
+    if is_too_large(book, sheet.rows_of, sheet.columns_of):
+        return
     raw = read_matrix(
         package.cells(info.name), down.number if down else (), across.number if across else (),
         _totals(package, info.name), package.date1904)

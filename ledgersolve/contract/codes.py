@@ -7,6 +7,7 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 
+from ledgersolve.contract.columns import quoted
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.lists import CheckedList
 from ledgersolve.workbook.cells import address
@@ -48,9 +49,10 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
             first = forms[form]
             where = address(*table.place(rows[first], title))
             faults.add(table.sheet, table.place(row, title), title, Fault(
-                "codes alike", f"“{code}”, which differs from “{first}” in {where} in case or spacing only",
+                "codes alike",
+                f"{quoted(code)}, which differs from {quoted(first)} in {where} in case or spacing only",
                 "codes that differ clearly",
-                f"Write “{first}” in both cells if they are one, or rename one."))
+                f"Write {quoted(first)} in both cells if they are one, or rename one."))
             rows[code] = row
         else:
             rows[code] = row
@@ -62,7 +64,7 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
 def _report_twice(table: CheckedList, title: str, row: int, first: int, code: str, faults: Faults) -> None:
     where = address(*table.place(first, title))
     faults.add(table.sheet, table.place(row, title), title, Fault(
-        "duplicate code", f"“{code}”, which stands in {where} already", "each code once",
+        "duplicate code", f"{quoted(code)}, which stands in {where} already", "each code once",
         "Take one of the two rows out, or rename it."))
 
 
@@ -115,8 +117,8 @@ def _same(fault: Fault, _: int) -> Fault:
 
 def unknown_code(code: str, near: str | None, sheet: str) -> Fault:
     """The fault of a code that its list does not hold."""
-    remedy = f"Did you mean “{near}”?" if near else f"Correct the code, or add it to {sheet}."
-    return Fault("unknown code", f"“{code}”, which is not in {sheet}", f"a code of the sheet {sheet}", remedy)
+    remedy = f"Did you mean {quoted(near)}?" if near else f"Correct the code, or add it to {sheet}."
+    return Fault("unknown code", f"{quoted(code)}, which is not in {sheet}", f"a code of the sheet {sheet}", remedy)
 
 
 def report_pairs(table: CheckedList, first: Ints, second: Ints, faults: Faults) -> None:
@@ -134,7 +136,7 @@ def report_pairs(table: CheckedList, first: Ints, second: Ints, faults: Faults) 
 
     def describe(i: int) -> Fault:
         row, earlier = again[i]
-        pair = " and ".join(f"“{column[row]}”" for column in texts)
+        pair = " and ".join(f"{quoted(column[row])}" for column in texts)
         return Fault("duplicate pair", f"{pair}, a pair that stands in row {table.rows[earlier]} already",
                      "each pair once", "Take one of the two rows out.")
 

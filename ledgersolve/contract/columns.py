@@ -152,13 +152,17 @@ class ListSheet:
 
 @dataclass(frozen=True)
 class MatrixSheet:
-    """A sheet with codes of one list down its first column and of another along its title row."""
+    """A sheet with codes of one list down its first column and of another along its title row.
+
+    ``corner`` and ``across`` are the titles of these codes in their own lists.
+    """
 
     name: str
     meaning: str
     rows_of: str
     columns_of: str
     corner: str
+    across: str
     figure: Entry
     required: bool = False
 
@@ -168,11 +172,16 @@ Sheet = ListSheet | MatrixSheet
 
 @dataclass(frozen=True)
 class JobContract:
-    """All a workbook of one job may hold; sheets in the order in which they depend on each other."""
+    """All a workbook of one job may hold; sheets in the order in which they depend on each other.
+
+    ``most_pairs`` is how many pairs of sites and customers, or of items and periods, fit into memory, where
+    a case holds several figures a pair.
+    """
 
     job: Job
     settings: tuple[Entry, ...]
     sheets: tuple[Sheet, ...]
+    most_pairs: int
 
     def sheet(self, name: str) -> Sheet:
         """The sheet of that name."""
@@ -181,6 +190,13 @@ class JobContract:
     def list_sheet(self, name: str) -> ListSheet:
         """The list sheet of that name."""
         return next(sheet for sheet in self.sheets if isinstance(sheet, ListSheet) and sheet.name == name)
+
+
+def quoted(text: object, most: int = 60) -> str:
+    """An analyst's text in quotes: on one line, without control characters, cut where it is long."""
+    line = "".join(c if c.isprintable() else " " for c in str(text))
+    line = " ".join(line.split())
+    return f"“{line if len(line) <= most else line[: most - 1] + '…'}”"
 
 
 def shown(value: object) -> str:

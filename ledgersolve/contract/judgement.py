@@ -6,7 +6,7 @@ Few and telling: each names its cell, why it looks odd and what to do.
 import numpy as np
 from numpy.typing import NDArray
 
-from ledgersolve.contract.columns import shown
+from ledgersolve.contract.columns import quoted, shown
 from ledgersolve.contract.faults import Fault, Faults
 from ledgersolve.contract.lists import CheckedList
 from ledgersolve.contract.setting_values import SettingValues
@@ -80,7 +80,7 @@ def other_currencies(faults: Faults, values: SettingValues, tables: list[Checked
                      if word in MINOR_UNITS}
             if currency and named and currency not in named:
                 faults.notice(table.sheet, (table.title_row, column), "", "another currency",
-                              f"the title “{heading}”", f"money in {currency}, as Settings says",
+                              f"the title {quoted(heading)}", f"money in {currency}, as Settings says",
                               "The figures were taken as they are; convert them, or correct the title.")
 
 

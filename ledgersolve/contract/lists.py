@@ -7,7 +7,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ledgersolve.contract import values
-from ledgersolve.contract.columns import Entry, Holds, ListSheet, listed, shown
+from ledgersolve.contract.columns import Entry, Holds, ListSheet, listed, quoted, shown
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.models import outside
 from ledgersolve.workbook.cells import Cell
@@ -139,7 +139,7 @@ def _data_rows(sheet: str, contract: ListSheet, raw: RawList, faults: Faults) ->
             break
         dropped.append(row)
         faults.add(sheet, (row, store.column), title, Fault(
-            "totals row", f"a totals row (“{codes[row]}”) at the foot of the list",
+            "totals row", f"a totals row ({quoted(codes[row])}) at the foot of the list",
             f"a row of {sheet}, or nothing",
             "Take the totals row out, or make the list a table object with a totals row.", "empty"))
     itself = plain(title)
@@ -147,7 +147,7 @@ def _data_rows(sheet: str, contract: ListSheet, raw: RawList, faults: Faults) ->
         if plain(code) == itself:
             dropped.append(row)
             faults.add(sheet, (row, store.column), title, Fault(
-                "titles repeated", f"the title “{code}” again, inside the list",
+                "titles repeated", f"the title {quoted(code)} again, inside the list",
                 contract.entry(title).expected(),
                 "Take the second title row out; two lists on one sheet have to become one.", "empty"))
     return rows[~np.isin(rows, dropped)] if dropped else rows
@@ -282,17 +282,17 @@ def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults)
         wanted = " or ".join(f"`{name}`" for name in names)
         place = (slip.row, slip.column) if slip else (titles.row, min(titles.headings))
         known = listed(str(text) for text in titles.headings.values())
-        found = f"the title “{slip.value}”" if slip else f"a title row with {known}"
+        found = f"the title {quoted(slip.value)}" if slip else f"a title row with {known}"
         remedy = f"Did you mean {wanted}? Change the title." if slip else f"Add a column {wanted}."
         faults.add(sheet, place, names[0], Fault("missing column", found, f"a column {wanted}", remedy))
     missing = {name for names in titles.missing for name in names}
     for cell, name in near.items():
         if name is not None and name not in missing:
             faults.notice(sheet, (cell.row, cell.column), name, "title like a known one",
-                          f"the title “{cell.value}”; the column was not used",
+                          f"the title {quoted(cell.value)}; the column was not used",
                           f"`{name}`, if that is what it means",
                           "Change the title if the column should be used.")
     for name, cell in titles.twice:
         faults.add(sheet, (cell.row, cell.column), name, Fault(
-            "title twice", f"the title “{cell.value}” a second time", f"one column `{name}`",
+            "title twice", f"the title {quoted(cell.value)} a second time", f"one column `{name}`",
             "Rename or take out one of the two columns."))

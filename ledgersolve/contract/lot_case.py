@@ -7,9 +7,9 @@ from numpy.typing import NDArray
 
 from ledgersolve.contract import lot_sizing as c
 from ledgersolve.contract import settings
-from ledgersolve.contract.book import Book
+from ledgersolve.contract.book import Book, is_too_large
 from ledgersolve.contract.codes import Codes, report_pairs, resolve_column
-from ledgersolve.contract.columns import shown
+from ledgersolve.contract.columns import quoted, shown
 from ledgersolve.contract.faults import Fault
 from ledgersolve.contract.lists import CheckedList
 from ledgersolve.lot_sizing.case import Case
@@ -34,6 +34,7 @@ def build(book: Book, title: str) -> Case | None:
     periods, items, resources = book.table(c.PERIODS), book.table(c.ITEMS), book.table(c.RESOURCES)
     if periods is not None:
         _check_order(book, periods)
+    is_too_large(book, c.ITEMS, c.PERIODS)
     costs = _pair_rows(book, c.PERIOD_COSTS)
     receipts = _pair_rows(book, c.RECEIPTS)
     families = book.table(c.FAMILIES)
@@ -87,7 +88,7 @@ def _reference(book: Book, name: str, column: str, target: str) -> Ints:
     if named:
         code = table.texts(column)[named[0]]
         book.faults.add(table.sheet, table.place(named[0], column), column, Fault(
-            "missing sheet", f"“{code}” and no filled sheet {target}", f"a sheet {target} that lists it",
+            "missing sheet", f"{quoted(code)} and no filled sheet {target}", f"a sheet {target} that lists it",
             f"Add the sheet {target}, or clear the column {column}."))
     return np.full(table.count, -1, dtype=np.int64)
 

@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from ledgersolve.contract import judgement
 from ledgersolve.contract import lot_sizing as c
 from ledgersolve.contract.book import Book
-from ledgersolve.contract.columns import shown
+from ledgersolve.contract.columns import quoted, shown
 from ledgersolve.contract.faults import Fault
 from ledgersolve.contract.lists import CheckedList
 from ledgersolve.lot_sizing.case import Case
@@ -60,7 +60,7 @@ def _holding_against_value(book: Book, case: Case, items: CheckedList) -> None:
     book.faults.many(items.sheet, [items.place(row, "Holding cost") for row in over], "Holding cost",
                      lambda i: Fault(
         "figure far off",
-        f"a holding cost above the Unit value {shown(value[over[i]])} for “{case.items[over[i]]}”",
+        f"a holding cost above the Unit value {shown(value[over[i]])} for {quoted(case.items[over[i]])}",
         "a cost of holding a unit for one period", "Check that it is for one unit and one period."),
         severity="notice")
 
@@ -93,14 +93,14 @@ def _order(book: Book, case: Case) -> None:
     if late is not None:
         book.faults.notice(
             periods.sheet, periods.place(late, "Period"), "Period", "periods out of order",
-            f"“{case.periods[late]}” after “{case.periods[late - 1]}”", "periods from first to last",
+            f"{quoted(case.periods[late])} after {quoted(case.periods[late - 1])}", "periods from first to last",
             "The rows were taken in the order they stand; sort them if that is wrong.")
 
 
 def _no_demand(book: Book, case: Case, items: CheckedList) -> None:
     idle = np.flatnonzero(~(case.demand > 0).any(axis=1)).tolist()
     book.faults.many(items.sheet, [items.place(row, "Item") for row in idle], "Item", lambda i: Fault(
-        "item without demand", f"“{case.items[idle[i]]}”, without demand in any period",
+        "item without demand", f"{quoted(case.items[idle[i]])}, without demand in any period",
         "demand for each item",
         "Fill in its row in Demand, or take the item out."), severity="notice")
 
@@ -137,7 +137,7 @@ def _idle_capacity(book: Book, case: Case) -> None:
     title = "Capacity" if "Capacity" in resources.columns else "Resource"
     book.faults.many(resources.sheet, [resources.place(row, title) for row in idle], "Capacity",
                      lambda i: Fault(
-        "capacity never binds", f"“{case.resources[idle[i]]}” could do all work of the horizon "
+        "capacity never binds", f"{quoted(case.resources[idle[i]])} could do all work of the horizon "
         f"({shown(round(float(work[idle[i]]), 6))}) in any one period",
         "capacity and times in one unit, a period each",
         "Check the units; the plan is right if so meant."), severity="notice")

@@ -79,7 +79,8 @@ ITEMS_SHEET = ListSheet(
 
 DEMAND_SHEET = MatrixSheet(
     DEMAND, "Demand: a row an item, a column a period; empty = 0.",
-    ITEMS, PERIODS, "Item", Entry("Demand", "Units wanted in the period.", example=180, unit=_UNITS,
+    ITEMS, PERIODS, "Item", "Period",
+    Entry("Demand", "Units wanted in the period.", example=180, unit=_UNITS,
                                   default=0.0),
     required=True,
 )
@@ -103,8 +104,9 @@ RESOURCES_SHEET = ListSheet(
 CAPACITY_SHEET = MatrixSheet(
     CAPACITY,
     "Capacity by period, in place of the one figure in Resources: a row a resource, a column a period.",
-    RESOURCES, PERIODS, "Resource", Entry("Capacity", "Time available in the period.", example=76, unit=_TIME,
-                                          default_words="Capacity in Resources"),
+    RESOURCES, PERIODS, "Resource", "Period",
+    Entry("Capacity", "Time available in the period.", example=76, unit=_TIME,
+          default_words="Capacity in Resources"),
 )
 
 PERIOD_COSTS_SHEET = ListSheet(
@@ -148,12 +150,14 @@ FAMILIES_SHEET = ListSheet(
 
 TODAY_SHEET = MatrixSheet(
     TODAY_PLAN, "Quantities made in today's plan: a row an item, a column a period; empty = 0.",
-    ITEMS, PERIODS, "Item", Entry("Made", "Units made in the period.", example=180, unit=_UNITS, default=0.0),
+    ITEMS, PERIODS, "Item", "Period",
+    Entry("Made", "Units made in the period.", example=180, unit=_UNITS, default=0.0),
 )
 
 CONTRACT = JobContract(
     Job.LOT_SIZING, (*settings.FIRST, *SETTINGS),
     (PERIODS_SHEET, RESOURCES_SHEET, FAMILIES_SHEET, ITEMS_SHEET, DEMAND_SHEET, CAPACITY_SHEET,
      PERIOD_COSTS_SHEET, RECEIPTS_SHEET, TODAY_SHEET),
+    most_pairs=5_000_000,
 )
 """The whole contract of the job."""

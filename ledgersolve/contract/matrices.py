@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 
 from ledgersolve.contract import values
 from ledgersolve.contract.codes import Codes, resolve
-from ledgersolve.contract.columns import Entry, Holds, MatrixSheet
+from ledgersolve.contract.columns import Entry, Holds, MatrixSheet, quoted
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.lists import TOTAL_WORDS
 from ledgersolve.contract.models import outside
@@ -67,7 +67,7 @@ def check_matrix(sheet: str, contract: MatrixSheet, raw: RawMatrix, down: Codes,
     filled_columns = set(np.unique(raw.columns).tolist()) | {cell.column for cell in raw.others}
     rows = _side(sheet, contract.corner, raw.row_codes, [c.row for c in raw.row_codes], filled_rows, down,
                  faults, date1904)
-    columns = _side(sheet, contract.columns_of, raw.column_codes, [c.column for c in raw.column_codes],
+    columns = _side(sheet, contract.across, raw.column_codes, [c.column for c in raw.column_codes],
                     filled_columns, across, faults, date1904)
     _report_without_code(sheet, raw, filled_rows, faults, contract)
     figures = np.full((len(down.codes), len(across.codes)), np.nan)
@@ -113,7 +113,7 @@ def _side(sheet: str, title: str, cells: Sequence[Cell], lines: Sequence[int], f
         cell, line, code = named.pop()
         at_fault.add(line)
         faults.add(sheet, (cell.row, cell.column), title, Fault(
-            "totals row", f"totals (“{code}”) at the end of the matrix", entry.expected(),
+            "totals row", f"totals ({quoted(code)}) at the end of the matrix", entry.expected(),
             "Take the totals out of the matrix.", "empty"))
     numbers = resolve(sheet, title, [code for _, _, code in named],
                       lambda i: (named[i][0].row, named[i][0].column), known, faults)
@@ -123,7 +123,7 @@ def _side(sheet: str, title: str, cells: Sequence[Cell], lines: Sequence[int], f
         elif code in met:
             at_fault.add(line)
             faults.add(sheet, (cell.row, cell.column), title, Fault(
-                "duplicate code", f"“{code}”, which stands in {met[code].address} already", "each code once",
+                "duplicate code", f"{quoted(code)}, which stands in {met[code].address} already", "each code once",
                 "Take one of the two out, or rename it."))
         else:
             met[code] = cell
@@ -143,7 +143,7 @@ def _report_without_code(sheet: str, raw: RawMatrix, filled_rows: set[int], faul
     lost_columns = sorted({cell.column for cell in raw.strays if cell.kind is Kind.NUMBER
                            and cell.column <= last + 1})
     places = [(raw.title_row, column) for column in lost_columns]
-    faults.many(sheet, places, contract.columns_of, lambda _: Fault(
+    faults.many(sheet, places, contract.across, lambda _: Fault(
         "required cell empty", "an empty cell above figures", f"a code of the sheet {contract.columns_of}",
         "Type the code, or clear the column.", "filled"))
 

@@ -60,8 +60,8 @@ def read_workbook(package: Package, file_name: str) -> Reading:
         values = SettingValues(values={entry.title: entry.default for entry in contract.settings},
                                readable=False)
     else:
-        values = read_settings(sheet, titles, rows, contract.settings, other.settings, faults,
-                               package.date1904)
+        values = read_settings(sheet, titles, rows, contract.settings, other.settings, faults, package.date1904,
+                               package.details(sheet).percents)
     found = find_sheets(package, [each.name for each in contract.sheets], faults)
     book = Book(contract, faults, values, found)
     report_sheets(package, contract, other, found, faults)

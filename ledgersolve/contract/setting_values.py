@@ -1,11 +1,11 @@
 """Reads the Settings sheet: which job, and the value of every setting or its default."""
 
 import re
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field
 
 from ledgersolve.contract import settings, values
-from ledgersolve.contract.columns import Entry, Holds, Value, shown
+from ledgersolve.contract.columns import Entry, Holds, Value, quoted, shown
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.models import outside
 from ledgersolve.contract.reading import Job
@@ -101,20 +101,24 @@ def job_of(rows: Sequence[Mapping[str, Cell]]) -> Job | None:
 
 
 def read_settings(sheet: str, titles: TitleRow, rows: Sequence[Mapping[str, Cell]], entries: Sequence[Entry],
-                  other_job: Sequence[Entry], faults: Faults, date1904: bool) -> SettingValues:
+                  other_job: Sequence[Entry], faults: Faults, date1904: bool,
+                  percents: Collection[Place] = ()) -> SettingValues:
     """Read every setting of a job and report what is wrong.
 
-    ``other_job`` are the settings of the other job, which are told apart from slips.
+    ``other_job`` are the settings of the other job, which are told apart from slips; ``percents`` the cells
+    shown as percentages, where 20 % is stored as 0.2.
     """
     result = SettingValues(sheet, {entry.title: entry.default for entry in entries}, columns=titles.columns)
     found, twice, strangers = find_settings(rows, entries)
     for name, cell in twice:
         faults.add(sheet, (cell.row, cell.column), name, Fault(
-            "setting twice", f"the setting “{cell.value}” a second time", f"one row for {name}",
+            "setting twice", f"the setting {quoted(cell.value)} a second time", f"one row for {name}",
             "Take one of the two rows out."))
     for entry in entries:
         if entry.title in found:
             _take(entry, found[entry.title], result, faults, date1904)
+            if entry.unit.startswith("%") and result.given.get(entry.title) in percents:
+                _take_percentage(entry, result, faults)
     near = _report_strangers(sheet, strangers, entries, found, other_job, faults)
     for entry in entries:
         if entry.required and entry.title not in result.given and entry.title not in result.bad:
@@ -131,7 +135,7 @@ def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: 
     if unit_in(entry.title) and unit.casefold() in _OTHER_UNITS:
         result.bad.add(entry.title)
         faults.add(result.sheet, (name.row, name.column), entry.title, Fault(
-            "unit differs", f"the unit “{unit}”", f"the unit {unit_in(entry.title)}",
+            "unit differs", f"the unit {quoted(unit)}", f"the unit {unit_in(entry.title)}",
             f"Give the value in {unit_in(entry.title)} and name the setting {entry.title}."))
         return
     if cell is None:
@@ -145,6 +149,25 @@ def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: 
         result.given[entry.title] = (cell.row, cell.column)
         if entry.numeric and cell.kind is not Kind.NUMBER:
             result.as_text.add(entry.title)
+
+
+def _take_percentage(entry: Entry, result: SettingValues, faults: Faults) -> None:
+    """Read a cell with a percent format by what it shows, and say so; formulas cannot use it as it stands."""
+    stored = result.number(entry.title) or 0.0
+    shown_value = float(f"{stored * 100:.15g}")
+    fault = values.limit_fault(entry, shown_value) if outside(entry, [shown_value]) else None
+    place = result.given[entry.title]
+    if fault is not None:
+        result.bad.add(entry.title)
+        faults.add(result.sheet, place, entry.title, fault)
+        return
+    result.values[entry.title] = shown_value
+    result.as_text.add(entry.title)
+    if stored:
+        faults.notice(result.sheet, place, entry.title, "percent format",
+                      f"a cell with a percent format, stored as {shown(stored)}",
+                      f"{shown(shown_value)} in a plain cell",
+                      f"It was read as it is shown: {shown(shown_value)} %.")
 
 
 def _value(cell: Cell, entry: Entry, date1904: bool) -> Value | Fault:
@@ -170,7 +193,7 @@ def _currency(words: str, entry: Entry) -> str | Fault:
     meant = _SIGNS.get(words.casefold()) or (re.sub(r"[^A-Z]", "", code) or None)
     known = meant if meant in MINOR_UNITS else nearest(code, MINOR_UNITS)
     remedy = f"Did you mean {known}?" if known else "Look the code up; euro is EUR, US dollar is USD."
-    return Fault("currency expected", f"“{words[:40]}”", entry.expected(), remedy)
+    return Fault("currency expected", f"{quoted(words)}", entry.expected(), remedy)
 
 
 def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[Entry],
@@ -185,7 +208,7 @@ def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[E
         where = (cell.row, cell.column)
         if plain(str(cell.value)) in others:
             name = others[plain(str(cell.value))]
-            faults.notice(sheet, where, name, "setting of the other job", f"the setting “{cell.value}”",
+            faults.notice(sheet, where, name, "setting of the other job", f"the setting {quoted(cell.value)}",
                           "settings of this job", "It was not used; take it out, or check Job.")
             continue
         name = nearest(str(cell.value), absent, plain) or ""
@@ -193,7 +216,7 @@ def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[E
             near[name] = cell
         elif name:
             faults.notice(sheet, where, name, "setting like a known one",
-                          f"the setting “{cell.value}”; it was not used",
+                          f"the setting {quoted(cell.value)}; it was not used",
                           f"`{name}`, if that is what it means",
                           "Change the name if the setting should be used.")
     return near
@@ -203,7 +226,7 @@ def _report_missing(entry: Entry, result: SettingValues, titles: TitleRow, slip:
                     faults: Faults) -> None:
     if slip is not None:
         faults.add(result.sheet, (slip.row, slip.column), entry.title, Fault(
-            "missing setting", f"the setting “{slip.value}”", f"a setting {entry.title}",
+            "missing setting", f"the setting {quoted(slip.value)}", f"a setting {entry.title}",
             f"Did you mean {entry.title}? Change the name."))
         return
     place = result.place(entry.title)

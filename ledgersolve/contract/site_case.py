@@ -9,9 +9,9 @@ from numpy.typing import NDArray
 from ledgersolve.contract import lanes as lane_sources
 from ledgersolve.contract import settings
 from ledgersolve.contract import site_selection as c
-from ledgersolve.contract.book import Book
+from ledgersolve.contract.book import Book, is_too_large
 from ledgersolve.contract.codes import Codes, unknown_code
-from ledgersolve.contract.columns import listed, shown
+from ledgersolve.contract.columns import listed, quoted, shown
 from ledgersolve.contract.faults import Fault
 from ledgersolve.contract.lanes import LaneRows, Lanes
 from ledgersolve.contract.lists import CheckedList
@@ -47,6 +47,8 @@ def build(book: Book, title: str) -> SiteData:
     if sites is None or customers is None or site_codes is None or customer_codes is None:
         return SiteData(None)
     rows = lane_sources.lane_rows(book, site_codes, customer_codes)
+    if is_too_large(book, c.SITES, c.CUSTOMERS):
+        return SiteData(None)
     places = (*_coordinates(sites, site_codes), *_coordinates(customers, customer_codes))
     located = all(bool(np.isfinite(place).any()) for place in places)
     lane_sources.check_sources(book, rows, located or _has_bad_coordinates(sites, customers))
@@ -116,7 +118,7 @@ def _check_sites(book: Book, sites: CheckedList) -> None:
             continue
         if group in first_open:
             book.faults.add(sites.sheet, sites.place(row, "Rule"), "Rule", Fault(
-                "rules conflict", f"a second site of the group “{group}” with the rule open",
+                "rules conflict", f"a second site of the group {quoted(group)} with the rule open",
                 "at most one open site in a group", "Set one of the two to free or closed."))
         first_open.setdefault(group, row)
     wanted = book.settings.values.get(settings.COMPARE)
@@ -192,7 +194,7 @@ def _check_variant_groups(book: Book, table: CheckedList, row: int, variant: Var
     twice = sorted({group for group in groups if group and groups.count(group) > 1})
     if twice:
         book.faults.add(table.sheet, table.place(row, "Open"), "Open", Fault(
-            "rules conflict", f"two sites of the group “{twice[0]}”", "at most one open site in a group",
+            "rules conflict", f"two sites of the group {quoted(twice[0])}", "at most one open site in a group",
             "Name one of them only."))
 
 

@@ -6,7 +6,7 @@ from numpy.typing import NDArray
 from ledgersolve.contract import judgement
 from ledgersolve.contract import site_selection as c
 from ledgersolve.contract.book import Book
-from ledgersolve.contract.columns import listed, shown
+from ledgersolve.contract.columns import listed, quoted, shown
 from ledgersolve.contract.faults import Fault
 from ledgersolve.contract.geography import great_circle
 from ledgersolve.contract.lanes import LaneRows, Lanes
@@ -86,7 +86,7 @@ def _other_distance_units(book: Book, case: Case, tables: list[CheckedList]) -> 
             if set(unit_in(heading).casefold().replace("/", " ").split()) & foreign:
                 book.faults.notice(
                     table.sheet, (table.title_row, column), "", "another distance unit",
-                    f"the title “{heading}”", f"distances in {case.distance_unit}, as Settings says",
+                    f"the title {quoted(heading)}", f"distances in {case.distance_unit}, as Settings says",
                     "The figures were taken as they are; set Distance unit, or correct the title.")
 
 
@@ -156,7 +156,7 @@ def _lost(case: Case, customer: int, reach: Flags) -> Fault:
         found = "a customer whose lanes are all too long or start at closed sites"
     else:
         found = "a customer without any lane"
-    return Fault("demand no site can serve", f"{found} (“{case.customers[customer]}”)",
+    return Fault("demand no site can serve", f"{found} ({quoted(case.customers[customer])})",
                  "a site that can serve each customer", "Add a lane or a site, or give Unmet demand cost.")
 
 

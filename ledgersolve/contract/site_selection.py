@@ -118,14 +118,16 @@ LANES_SHEET = ListSheet(
 LANE_COSTS_SHEET = MatrixSheet(
     LANE_COSTS,
     "Lane costs by the Lane cost basis: a row a site, a column a customer; an empty cell = no lane.",
-    SITES, CUSTOMERS, "Site", Entry("Lane cost", "Cost of the lane.", example=6.4, unit="money by the basis",
-                                    default_words="no lane"),
+    SITES, CUSTOMERS, "Site", "Customer",
+    Entry("Lane cost", "Cost of the lane.", example=6.4, unit="money by the basis",
+          default_words="no lane"),
 )
 
 DISTANCES_SHEET = MatrixSheet(
     DISTANCES, "Distances: a row a site, a column a customer.",
-    SITES, CUSTOMERS, "Site", Entry("Distance", "Length of the lane.", example=118, unit=_DISTANCE,
-                                    default_words="not known"),
+    SITES, CUSTOMERS, "Site", "Customer",
+    Entry("Distance", "Length of the lane.", example=118, unit=_DISTANCE,
+          default_words="not known"),
 )
 
 VARIANTS_SHEET = ListSheet(
@@ -150,6 +152,7 @@ VARIANTS_SHEET = ListSheet(
 CONTRACT = JobContract(
     Job.SITE_SELECTION, (*settings.FIRST, *SETTINGS),
     (SITES_SHEET, CUSTOMERS_SHEET, LANES_SHEET, LANE_COSTS_SHEET, DISTANCES_SHEET, VARIANTS_SHEET),
+    most_pairs=40_000_000,
 )
 """The whole contract of the job."""
 

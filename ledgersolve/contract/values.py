@@ -4,7 +4,7 @@ import datetime
 import math
 import re
 
-from ledgersolve.contract.columns import LARGEST, Entry, Holds, shown
+from ledgersolve.contract.columns import LARGEST, Entry, Holds, quoted, shown
 from ledgersolve.contract.faults import Fault
 from ledgersolve.workbook.cells import Cell, Kind
 from ledgersolve.workbook.problems import Recheck
@@ -77,7 +77,7 @@ def cell_fault(cell: Cell, entry: Entry) -> Fault | None:
                      f"Mend the formula, or type the value{or_empty(entry)}.", *recheck)
     if cell.kind is Kind.UNCALCULATED:
         return Fault(
-            "formula never calculated", f"a formula without a result: {_cut(str(cell.value))}",
+            "formula never calculated", f"a formula without a result: {quoted(cell.value)}",
             entry.expected(),
             "Open the workbook in a spreadsheet program, let it calculate, save, and drop it again.",
             *recheck)
@@ -109,7 +109,7 @@ def text_number(words: str, entry: Entry) -> float | Fault:
         return meanings[0]
     if len(fitting) == 1 and not separated:
         return fitting[0]
-    found = f"the text “{_cut(words)}”"
+    found = f"the text {quoted(words)}"
     if meanings:
         both = " or ".join(shown(value) for value in meanings)
         return _number_fault(entry, "ambiguous number", f"{found}, which can be read as {both}",
@@ -142,7 +142,7 @@ def yes_no(word: str, entry: Entry) -> bool | Fault:
         return True
     if word.casefold() in NO:
         return False
-    return Fault("yes or no expected", f"“{_cut(word)}”", entry.expected(),
+    return Fault("yes or no expected", f"{quoted(word)}", entry.expected(),
                  f"Type yes or no{or_empty(entry)}.")
 
 
@@ -154,7 +154,7 @@ def choice(words: str, entry: Entry) -> str | Fault:
             return word
     near = nearest(words, entry.choices)
     remedy = f"Did you mean `{near}`?" if near else f"Type one of these words{or_empty(entry)}."
-    return Fault("unknown word", f"“{_cut(words)}”", entry.expected(), remedy)
+    return Fault("unknown word", f"{quoted(words)}", entry.expected(), remedy)
 
 
 def date(cell: Cell, entry: Entry, date1904: bool) -> str | Fault:
@@ -183,7 +183,7 @@ def bare_serial(serial: float, entry: Entry, date1904: bool = False) -> Fault:
 def found_in(cell: Cell) -> str:
     """What stands in a cell, in words."""
     if cell.kind is Kind.TEXT:
-        return f"the text “{_cut(str(cell.value))}”"
+        return f"the text {quoted(cell.value)}"
     if cell.kind is Kind.BOOLEAN:
         return "TRUE" if cell.value else "FALSE"
     if cell.kind is Kind.DATE:
@@ -191,12 +191,6 @@ def found_in(cell: Cell) -> str:
     if cell.kind is Kind.NUMBER:
         return f"the number {shown(cell.value)}"
     return f"the error value {cell.value}" if cell.kind is Kind.ERROR else "a formula without a result"
-
-
-def _cut(words: str, most: int = 60) -> str:
-    """Text short enough for a sentence, on one line."""
-    line = " ".join(words.split())
-    return line if len(line) <= most else line[: most - 1] + "…"
 
 
 def limit_fault(entry: Entry, value: float) -> Fault | None:

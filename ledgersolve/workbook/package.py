@@ -11,11 +11,11 @@ from ledgersolve.workbook.container import Container, Limits, Member
 from ledgersolve.workbook.gate import pass_gate
 from ledgersolve.workbook.markup import MAIN, RELATIONS, STRICT, Attributes, walk
 from ledgersolve.workbook.ownership import OWN_SHEET, sheets_named
-from ledgersolve.workbook.parts import Relation, relations, small_pieces, workbook_part
+from ledgersolve.workbook.parts import Relation, check_relations, relations, small_pieces, workbook_part
 from ledgersolve.workbook.refusals import refusal
 from ledgersolve.workbook.stream import Area, Surroundings, Texts, area_of, stream_cells
 from ledgersolve.workbook.strings import shared_strings
-from ledgersolve.workbook.styles import date_styles
+from ledgersolve.workbook.styles import number_styles
 
 
 @dataclass(frozen=True)
@@ -49,7 +49,8 @@ class SheetDetails:
     """What lies around the cells of a sheet.
 
     ``hidden_rows`` and ``hidden_columns`` are ranges from 1, inclusive, in order; ``filtered`` says that a
-    filter is set (rows it hides are among the hidden ones); ``merged`` are areas, never expanded.
+    filter is set (rows it hides are among the hidden ones); ``merged`` are areas, never expanded; ``percents``
+    are number cells shown as a percentage (row, column; the first ten thousand).
     """
 
     tables: tuple[TableArea, ...] = ()
@@ -57,6 +58,7 @@ class SheetDetails:
     hidden_columns: tuple[tuple[int, int], ...] = ()
     filtered: bool = False
     merged: tuple[Area, ...] = ()
+    percents: frozenset[tuple[int, int]] = frozenset()
 
 
 @dataclass(frozen=True)
@@ -120,19 +122,21 @@ class Package:
         around = self._around[name]
         tables, table_filter = self._tables(name, around.table_ids)
         return SheetDetails(tables, tuple(around.hidden_rows), tuple(around.hidden_columns),
-                            around.filtered or table_filter, tuple(around.merged))
+                            around.filtered or table_filter, tuple(around.merged), frozenset(around.percents))
 
     def _shared(self) -> Texts:
         if self._texts is None:
             strings: list[str] = []
             dates: frozenset[int] = frozenset()
+            percents: frozenset[int] = frozenset()
             for relation in self._relations:
                 member = self.container.find(relation.target)
                 if member is not None and relation.kind == "sharedStrings":
                     strings = shared_strings(member.name, self.container.pieces(member), self.limits)
                 elif member is not None and relation.kind == "styles":
-                    dates = date_styles(member.name, small_pieces(self.container, member, self.limits))
-            self._texts = Texts(strings, dates, self.date1904)
+                    pieces = small_pieces(self.container, member, self.limits)
+                    dates, percents = number_styles(member.name, pieces)
+            self._texts = Texts(strings, dates, self.date1904, percents)
         return self._texts
 
     def _tables(self, name: str, ids: list[str]) -> tuple[tuple[TableArea, ...], bool]:
@@ -168,6 +172,7 @@ def open_package(path: Path, limits: Limits | None = None) -> Package:
 
 def _package(container: Container, limits: Limits) -> Package:
     part = workbook_part(container, limits)
+    check_relations(container, limits)
     outline = read_outline(container, part, limits)
     links = relations(container, part, limits)
     worksheets = {link.id: link.target for link in links if link.kind == "worksheet" and not link.external}

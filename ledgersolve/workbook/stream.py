@@ -22,6 +22,7 @@ _GUIDE, _MERGE, _FILTER_COLUMN, _TABLE_PART, _COL = (
     f"{MAIN} {name}" for name in ("rPh", "mergeCell", "filterColumn", "tablePart", "col"))
 _TEXTUAL = frozenset((_F, _T, _GUIDE))
 _TRUE = ("1", "true")
+_MOST_PERCENTS = 10_000  # cells shown as percentages that are remembered; only settings ask for them
 _MANY = 16  # pieces of text beyond which their length is looked at
 _NUMBER, _TEXT = Kind.NUMBER, Kind.TEXT
 _new = tuple.__new__  # a Cell without the detour through its constructor: a third of the time of a pass
@@ -32,11 +33,12 @@ Area = tuple[int, int, int, int]
 
 @dataclass(frozen=True)
 class Texts:
-    """What a sheet's cells refer to: shared texts, and the styles that make a number a date."""
+    """What a sheet's cells refer to: shared texts, and the styles that make a number a date or a percentage."""
 
     shared: list[str]
     dates: frozenset[int]
     date1904: bool = False
+    percents: frozenset[int] = frozenset()
 
 
 @dataclass
@@ -49,6 +51,7 @@ class Surroundings:
     filtered: bool = False
     table_ids: list[str] = field(default_factory=list)
     complete: bool = False
+    percents: list[tuple[int, int]] = field(default_factory=list)
 
 
 def stream_cells(sheet: str, part: str, pieces: Iterable[bytes], texts: Texts, limits: Limits,
@@ -197,8 +200,10 @@ class _Scan:
             return
         if kind is None or kind == "n":
             style = self.cell.get("s")
-            dated = style is not None and style.isdecimal() and int(style) in self.texts.dates
-            self._number(column, raw, Kind.DATE if dated else _NUMBER)
+            index = int(style) if style is not None and style.isdecimal() else -1
+            if index in self.texts.percents and len(self.around.percents) < _MOST_PERCENTS:
+                self.around.percents.append((self.row, column))
+            self._number(column, raw, Kind.DATE if index in self.texts.dates else _NUMBER)
             return
         found, value = self._typed(kind, raw)
         if value != "":

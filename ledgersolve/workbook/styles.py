@@ -1,5 +1,6 @@
-"""Which cell styles show a number as a date."""
+"""Which cell styles show a number as a date, and which as a percentage."""
 
+import re
 from collections.abc import Iterable
 
 from openpyxl.styles.numbers import BUILTIN_FORMATS, is_date_format
@@ -10,8 +11,12 @@ from ledgersolve.workbook.markup import MAIN, Attributes, walk
 _EAST_ASIAN_DATES = frozenset((*range(27, 37), *range(50, 59)))
 
 
-def date_styles(part: str, pieces: Iterable[bytes]) -> frozenset[int]:
-    """Indices of the cell formats (``cellXfs``) whose number format is a date or a time."""
+# What a number format shows as it is: text in quotes, and characters behind a backslash, an underscore or a star.
+_LITERAL = re.compile(r'"[^"]*"|[\\_*].')
+
+
+def number_styles(part: str, pieces: Iterable[bytes]) -> tuple[frozenset[int], frozenset[int]]:
+    """Indices of the cell formats (``cellXfs``) that show a date or a time, and of those that show percent."""
     formats: dict[int, str] = {}
     used: list[int] = []
     inside = False
@@ -31,8 +36,11 @@ def date_styles(part: str, pieces: Iterable[bytes]) -> frozenset[int]:
             inside = False
 
     walk(part, pieces, start, end=end)
-    dates = {code: _is_date(code, formats.get(code)) for code in set(used)}
-    return frozenset(index for index, code in enumerate(used) if dates[code])
+    dates = {code for code in set(used) if _is_date(code, formats.get(code))}
+    percents = {code for code in set(used) if "%" in _LITERAL.sub("", formats.get(code) or BUILTIN_FORMATS.get(code,
+                                                                                                               ""))}
+    return (frozenset(index for index, code in enumerate(used) if code in dates),
+            frozenset(index for index, code in enumerate(used) if code in percents))
 
 
 def _number(text: str | None) -> int:
