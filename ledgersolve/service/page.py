@@ -12,7 +12,7 @@ _STYLE = """
   :root { --ink: #e8edf2; --soft: #a3b1bf; --line: #34424f; --paper: #131b23; --card: #1b2630;
     --good: #7fd1a5; --fix: #f0b072; --bad: #f08c9c; --run: #86c5ec; } }
 * { box-sizing: border-box; }
-body { margin: 0 auto; max-width: 62rem; padding: 1rem; background: var(--paper); color: var(--ink);
+body { margin: 0 auto; max-width: 76rem; padding: 1rem; background: var(--paper); color: var(--ink);
   font: 1rem/1.45 system-ui, sans-serif; }
 h1 { font-size: 1.35rem; margin: 0 0 .25rem; }
 h2 { font-size: 1.05rem; margin: 1.75rem 0 .5rem; }
@@ -21,6 +21,8 @@ h2 { font-size: 1.05rem; margin: 1.75rem 0 .5rem; }
   border-radius: .4rem; padding: .75rem 1rem; }
 .pulse.held { border-left-color: var(--fix); }
 .pulse p { margin: .2rem 0; }
+.pulse b { white-space: nowrap; }
+@media (min-width: 58rem) { .sides { display: grid; grid-template-columns: 1fr 1fr; gap: 0 2.5rem; } }
 .soft { color: var(--soft); font-size: .9rem; }
 ul { list-style: none; margin: 0; padding: 0; border-top: 1px solid var(--line); }
 li { border-bottom: 1px solid var(--line); padding: .55rem 0; }
@@ -29,9 +31,9 @@ li { border-bottom: 1px solid var(--line); padding: .55rem 0; }
 .mark { display: inline-block; min-width: 4.6rem; font-weight: 600; }
 .solved { color: var(--good); } .fix { color: var(--fix); } .failed { color: var(--bad); }
 .runs { color: var(--run); }
-meter { width: 100%; height: .5rem; }
 """
 _REFRESH_SECONDS = 10
+_MOST_WAITING = 25
 
 
 def render(state: dict[str, Any]) -> str:
@@ -39,18 +41,21 @@ def render(state: dict[str, Any]) -> str:
     digest = base64.b64encode(hashlib.sha256(_STYLE.encode("utf-8")).digest()).decode("ascii")
     policy = f"default-src 'none'; style-src 'sha256-{digest}'; base-uri 'none'; form-action 'none'"
     fixes = [one for one in state["returned"] if one.get("outcome") != "solved"]
-    more = int(state["waiting_count"]) - len(state["waiting"])
-    waits = [_waiting(one) for one in state["waiting"]]
+    waits = [_plain(one) for one in state["waiting"][:_MOST_WAITING]]
+    more = int(state["waiting_count"]) - len(waits)
     if more > 0:
         waits.append(f'<span class="soft">and {more:,} more</span>')
     alerts = [_plain(one) for one in state["alerts"]]
     parts = [
         _pulse(state),
         _section("Needs the administrator", alerts) if alerts else "",
+        '<div class="sides"><div>',
         _section("Running now", [_running(one) for one in state["running"]]),
         _section("Waiting", waits, int(state["waiting_count"])),
+        "</div><div>",
         _section("Needs fixing", [_fix(one) for one in fixes]) if fixes else "",
         _section("Came back", [_returned(one) for one in state["returned"]]),
+        "</div></div>",
     ]
     return (
         '<!DOCTYPE html>\n<html lang="en"><head><meta charset="utf-8">'
@@ -94,11 +99,6 @@ def _section(title: str, entries: list[str], count: int | None = None) -> str:
 
 def _plain(one: dict[str, Any]) -> str:
     return f'<div class="name">{_text(one.get("name"))}</div><div class="what">{_text(one.get("why"))}</div>'
-
-
-def _waiting(one: dict[str, Any]) -> str:
-    since = f'<div class="soft">since {_text(_time(one.get("since")))}</div>' if one.get("since") else ""
-    return _plain(one) + since
 
 
 def _running(one: dict[str, Any]) -> str:
@@ -147,8 +147,11 @@ def _duration(seconds: float) -> str:
 
 
 def _time(value: Any) -> str:
-    """ISO 8601 with a blank in the middle, as people read it."""
-    return str(value).replace("T", " ") if value else "not yet"
+    """A time of ISO 8601 as people read it, with its distance from UTC."""
+    text = str(value)
+    if not value or len(text) < 20:
+        return "not yet" if not value else text
+    return f"{text[:10]} {text[11:19]} (UTC{text[19:]})"
 
 
 def _text(value: Any) -> str:
