@@ -140,6 +140,7 @@ PACKAGES: dict[str, tuple[Callable[[], dict[str, str | bytes]], str]] = {
                          BROKEN),
     "not well formed": (lambda: parts(sheet=sheet_xml(ROWS)[:-5]), BROKEN),
     "not well formed workbook": (lambda: parts(workbook="<workbook"), BROKEN),
+    "not well formed links nobody reads": (lambda: parts() | {"xl/drawings/_rels/drawing1.xml.rels": "<x"}, BROKEN),
     "unknown encoding": (lambda: parts(sheet='<?xml version="1.0" encoding="UTF-7"?><worksheet/>'), BROKEN),
     "lying encoding": (lambda: parts(sheet=b'<?xml version="1.0" encoding="UTF-8"?><worksheet x="\xe4"/>'),
                        BROKEN),

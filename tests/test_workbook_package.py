@@ -11,7 +11,7 @@ from openpyxl.utils.datetime import from_excel
 
 from ledgersolve.workbook.cells import Kind
 from ledgersolve.workbook.package import SheetInfo, TableArea, open_package
-from tests.packages import book_of, parts_of, sheet_xml, workbook_xml, zipped
+from tests.packages import book_of, parts_of, second_reader, sheet_xml, workbook_xml, zipped
 
 TEXTS = ["HAM", " two  spaces ", "00123", "12345678901234567", "=1+1", "Größe", "東京", "😀", "مرحبا", "a\nb\tc",
          "<b>&amp;</b>", "_x000A_", "#N/A", "TRUE", "N/A", "x" * 32_767, "é", "1,200.50", "\u202eabc", "'quoted"]
@@ -43,7 +43,7 @@ def test_values_equal_those_of_a_second_reader(tmp_path: Path) -> None:
     """Every cell another reader finds is found with the same value, and no other."""
     path = mixed_book(tmp_path / "a.xlsx")
     theirs = {}
-    for row in openpyxl.load_workbook(path, data_only=True, read_only=True)["Mixed"].iter_rows():
+    for row in second_reader(path, values=True)["Mixed"].iter_rows():
         for cell in row:
             if cell.value is not None:
                 theirs[cell.row, cell.column] = cell.value

@@ -54,6 +54,13 @@ def relations(container: Container, part: str, limits: Limits) -> tuple[Relation
     return tuple(found)
 
 
+def check_relations(container: Container, limits: Limits) -> None:
+    """Read every relationships part once, so that a broken one is told now and not when an answer is written."""
+    for member in container.members:
+        if member.name.lower().endswith(".rels"):
+            walk(member.name, small_pieces(container, member, limits), lambda _, attributes: attributes)
+
+
 def relations_name(part: str) -> str:
     """Name of the relationships part of a part."""
     folder, _, name = part.rpartition("/")
