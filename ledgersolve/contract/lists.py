@@ -143,8 +143,9 @@ def _data_rows(sheet: str, contract: ListSheet, raw: RawList, faults: Faults) ->
             f"a row of {sheet}, or nothing",
             "Take the totals row out, or make the list a table object with a totals row.", "empty"))
     itself = plain(title)
-    for row, code in codes.items():
-        if plain(code) == itself:
+    repeated = {code for code in set(store.texts) if plain(code) == itself}
+    for row, code in codes.items() if repeated else ():
+        if code in repeated:
             dropped.append(row)
             faults.add(sheet, (row, store.column), title, Fault(
                 "titles repeated", f"the title {quoted(code)} again, inside the list",
