@@ -54,7 +54,8 @@ def _table(sheet: ResultSheet, row: int, answer: Answered, money: tuple[str, str
     columns = []
     for number, given in enumerate(answer.columns):
         values = [line[number] for line in answer.rows]
-        unit = f" ({money[0]}{money[1]})" if given.kind == "money" and "(" not in given.title else ""
+        units = {"money": f" ({money[0]}{money[1]})", "percent": " (%)", "number": " (number)"}
+        unit = "" if "(" in given.title else units.get(given.kind, "")
         look = _look(given, money[0], [value for value in values if isinstance(value, int | float)])
         styles = [WORDS if isinstance(value, str) else look for value in values]
         columns.append(Column(given.title, given.title + unit, values, look, sheet.widths[number], styles=styles))

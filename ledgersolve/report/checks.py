@@ -56,10 +56,10 @@ def write_checks(sheet: ResultSheet, row: int, checks: Sequence[LiveCheck], tole
     write_table(sheet, row, [
         Column("rule", "Rule", [c.rule for c in checks], style.WRAPPED_CELL, 30),
         Column("subject", "Checked on", [c.subject for c in checks], style.WRAPPED_CELL, 36),
-        Column("required", "Required", required, style.WRAPPED_CELL, 30, formulas, styles=asked),
-        Column("got", "Found in the sheets", [c.got.value for c in checks], plain, 18,
+        Column("required", "Required (in the rule's unit)", required, style.WRAPPED_CELL, 30, formulas, styles=asked),
+        Column("got", "Found in the sheets (in the rule's unit)", [c.got.value for c in checks], plain, 18,
                [c.got.formula for c in checks], styles=figures),
-        Column("broken", "Broken by", [c.broken_by.value for c in checks], plain, 13,
+        Column("broken", "Broken by (in the rule's unit)", [c.broken_by.value for c in checks], plain, 13,
                [c.broken_by.formula for c in checks], styles=figures),
         Column("status", "Status", [OK if c.broken_by.value <= TOLERANCE else BROKEN for c in checks],
                replace(style.BOLD, align="center"), 12,
@@ -99,7 +99,7 @@ def write_audit(sheet: ResultSheet, row: int, audit: Audit) -> int:
         Column("subject", "Checked on", [c.subject for c in checks], style.WRAPPED_CELL, 36),
         Column("required", "Required", [c.required for c in checks], style.WRAPPED_CELL, 30),
         Column("got", "Found by the audit", [c.got for c in checks], style.WRAPPED_CELL, 16),
-        Column("broken", "Broken by", [c.worst for c in checks],
+        Column("broken", "Broken by (in the rule's unit)", [c.worst for c in checks],
                style.number(style.figure_format([c.worst for c in checks])), 13),
         Column("status", "Status", [OK if c.ok else BROKEN for c in checks], replace(style.BOLD, align="center"), 12),
     ])

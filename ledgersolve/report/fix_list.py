@@ -60,7 +60,7 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
     list_row = row + 3 + len(listed)
     write_table(sheet, row, [
         Column("sheet", "Sheet", [name for name, _ in listed], width=WIDTHS[0]),
-        Column("count", "Places", [count for _, count in listed], style.number(style.WHOLE), WIDTHS[1]),
+        Column("count", "Places (number)", [count for _, count in listed], style.number(style.WHOLE), WIDTHS[1]),
     ])
     span = f"H{list_row + 2}:H{list_row + 1 + max(1, len(errors))}"
     left = sum(1 for problem in errors if _status(problem, 0)[1])
@@ -83,16 +83,16 @@ def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bo
         Column("found", "Found", [_found(p) for p in problems], wrapped, WIDTHS[3]),
         Column("expected", "Expected", [p.expected for p in problems], wrapped, WIDTHS[4]),
         Column("remedy", "What to do", [p.remedy for p in problems], wrapped, WIDTHS[5]),
-        Column("count", "Places", [p.count for p in problems], replace(style.number(style.WHOLE), valign="top"), WIDTHS[6]),
+        Column("count", "Places (number)", [p.count for p in problems], replace(style.number(style.WHOLE), valign="top"), WIDTHS[6]),
     ]
     if live:
         columns.append(Column("status", "Status", [value for value, _ in status],
                               replace(style.BOLD, align="center", valign="top"), WIDTHS[7],
                               [formula for _, formula in status]))
         limits = replace(style.number("General"), valign="top", size=9.0, colour=style.QUIET)
-        columns.append(Column("low", "Right from", [_low(p) if f else None for p, (_, f) in zip(problems, status, strict=True)],
+        columns.append(Column("low", "Right from (value)", [_low(p) if f else None for p, (_, f) in zip(problems, status, strict=True)],
                               limits, WIDTHS[8]))
-        columns.append(Column("high", "Right up to", [p.high if f else None for p, (_, f) in
+        columns.append(Column("high", "Right up to (value)", [p.high if f else None for p, (_, f) in
                                                       zip(problems, status, strict=True)], limits, WIDTHS[9]))
     write_table(sheet, row, columns)
     if live and problems:

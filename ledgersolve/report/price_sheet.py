@@ -150,7 +150,7 @@ def _laid_out(at: SitePlaces, sheet: ResultSheet, certificate: Certificate) -> t
 def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, order: list[int]) -> None:
     case = at.report.case
     unit, money = case.demand_unit, case.currency
-    rows = ((CODE_ROW, "Customer", ""), (DEMAND_ROW, "Demand", f"{unit}{at.per}"),
+    rows = ((CODE_ROW, "Customer", "Unit"), (DEMAND_ROW, "Demand", f"{unit}{at.per}"),
             (PRICE_ROW, f"Price per {unit}", f"{money} per {unit}"), (WHOLE_ROW, "Price of the whole demand", at.money_unit))
     for row, label, words in rows:
         sheet.put(row, 0, label, style.HEADER if row == CODE_ROW else style.BOLD)

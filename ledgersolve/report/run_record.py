@@ -2,6 +2,7 @@
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from datetime import datetime, timedelta
 from typing import Any
 
 from ledgersolve.mip import Solved
@@ -57,7 +58,7 @@ def _facts(sheet: ResultSheet, row: int, run: RunFacts, outcome: Outcome) -> int
     rows: list[tuple[str, Scalar, Style]] = [
         ("Workbook", run.file_name, style.WRAPPED_CELL),
         ("SHA-256 of the workbook", run.sha256, style.WRAPPED_CELL),
-        ("Date and time of the run", f"{run.when:%Y-%m-%d %H:%M %Z}".strip(), style.TEXT),
+        ("Date and time of the run", serial(run.when), Style(number_format=style.DATE_TIME)),
         *outcome.rows,
         *[(f"Version of {program}", version, style.TEXT) for program, version in run.versions],
         *[(label, words, style.WRAPPED_CELL) for label, words in run.more],
@@ -66,6 +67,11 @@ def _facts(sheet: ResultSheet, row: int, run: RunFacts, outcome: Outcome) -> int
         sheet.put(place, 0, label, style.TEXT)
         sheet.put(place, 1, value, Style(**{**look.__dict__, "align": "left"}))
     return row + 1 + len(rows)
+
+
+def serial(when: datetime) -> float:
+    """Date and time as the number a sheet shows as a date."""
+    return (when.replace(tzinfo=None) - datetime(1899, 12, 30)) / timedelta(days=1)
 
 
 def _steps(sheet: ResultSheet, row: int, run: RunFacts, outcome: Outcome) -> int:

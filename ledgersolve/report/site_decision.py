@@ -138,7 +138,7 @@ def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
     moved, volume = _moved(at)
     if before is not None:
         total = float(case.demand.sum())
-        rows.append(Today("Customers with another main site", None, moved, style.WHOLE))
+        rows.append(Today("Customers with another main site (number)", None, moved, style.WHOLE))
         rows.append(Today("Their part of all demand (%)", None, volume / total if total else 0.0, style.PERCENT))
     return rows
 
