@@ -4,7 +4,7 @@ import json
 import logging
 import shutil
 import sys
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
 from typing import Annotated
@@ -56,7 +56,7 @@ def _show_version(wanted: bool) -> None:
 @app.callback()
 def _common(
     verbose: Annotated[bool, typer.Option("--verbose", "-v", help="Log every step on standard error.")] = False,
-    version: Annotated[
+    _version: Annotated[
         bool, typer.Option("--version", help="Show the version.", callback=_show_version, is_eager=True)
     ] = False,
 ) -> None:
@@ -188,7 +188,7 @@ def _answer_all(files: list[Path], into: Path | None, as_json: bool, *, solving:
 
 
 @contextmanager
-def _progress_line(file: Path, *, quiet: bool) -> Iterator[object]:
+def _progress_line(file: Path, *, quiet: bool) -> Iterator[Callable[[Progress], None] | None]:
     """Show the running solve on one line of a terminal; nothing elsewhere."""
     if quiet or not errors.is_terminal:
         yield None
