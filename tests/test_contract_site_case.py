@@ -97,6 +97,12 @@ def test_two_open_sites_of_a_group_conflict(tmp_path):
         ("rules conflict", "Variants", "B2")]
 
 
+def test_group_names_that_are_alike_are_an_error(tmp_path):
+    """Two names of a group that differ in case only are nearly always one group."""
+    reading = read(tmp_path, sites=with_column(SITES, "Group", ["Rhine", None, "rhine"]))
+    assert errors(reading) == [("codes alike", "Sites", "C4")]
+
+
 def test_a_least_volume_above_the_capacity_conflicts(tmp_path):
     """A site that could never hold what it has to is an error at its Least volume."""
     sites = with_column(with_column(SITES, "Capacity", [5, None, 5]), "Least volume", [6, 100, 5])

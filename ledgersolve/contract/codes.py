@@ -46,13 +46,7 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
         if code in rows:
             _report_twice(table, title, row, rows[code], code, faults)
         elif form in forms:
-            first = forms[form]
-            where = address(*table.place(rows[first], title))
-            faults.add(table.sheet, table.place(row, title), title, Fault(
-                "codes alike",
-                f"{quoted(code)}, which differs from {quoted(first)} in {where} in case or spacing only",
-                "codes that differ clearly",
-                f"Write {quoted(first)} in both cells if they are one, or rename one."))
+            _report_alike(table, title, row, forms[form], rows[forms[form]], faults)
             rows[code] = row
         else:
             rows[code] = row
@@ -66,6 +60,22 @@ def _report_twice(table: CheckedList, title: str, row: int, first: int, code: st
     faults.add(table.sheet, table.place(row, title), title, Fault(
         "duplicate code", f"{quoted(code)}, which stands in {where} already", "each code once",
         "Take one of the two rows out, or rename it."))
+
+
+def report_alike(table: CheckedList, title: str, faults: Faults) -> None:
+    """Report names under a title that differ in case or spacing only, where no list of its own defines them."""
+    forms: dict[str, tuple[str, int]] = {}
+    for row, name in enumerate(table.texts(title)):
+        first, first_row = forms.setdefault(alike(name), (name, row))
+        if name and name != first:
+            _report_alike(table, title, row, first, first_row, faults)
+
+
+def _report_alike(table: CheckedList, title: str, row: int, first: str, first_row: int, faults: Faults) -> None:
+    where, code = address(*table.place(first_row, title)), table.texts(title)[row]
+    faults.add(table.sheet, table.place(row, title), title, Fault(
+        "codes alike", f"{quoted(code)}, which differs from {quoted(first)} in {where} in case or spacing only",
+        "codes that differ clearly", f"Write {quoted(first)} in both cells if they are one, or rename one."))
 
 
 def resolve(sheet: str, title: str, texts: Sequence[str], place: Callable[[int], Place], known: Codes | None,

@@ -10,7 +10,7 @@ from ledgersolve.contract import lanes as lane_sources
 from ledgersolve.contract import settings
 from ledgersolve.contract import site_selection as c
 from ledgersolve.contract.book import Book, is_too_large
-from ledgersolve.contract.codes import Codes, unknown_code
+from ledgersolve.contract.codes import Codes, report_alike, unknown_code
 from ledgersolve.contract.columns import listed, quoted, shown
 from ledgersolve.contract.faults import Fault
 from ledgersolve.contract.lanes import LaneRows, Lanes
@@ -112,6 +112,7 @@ def _check_sites(book: Book, sites: CheckedList) -> None:
         "rules conflict",
         f"a Least volume of {shown(least[over[i]])} above the Capacity {shown(capacity[over[i]])}",
         "a Least volume of at most the Capacity", "Change one of the two."))
+    report_alike(sites, "Group", book.faults)
     first_open: dict[str, int] = {}
     for row, (group, rule) in enumerate(zip(sites.texts("Group"), sites.texts("Rule"), strict=True)):
         if not group or rule != "open":
