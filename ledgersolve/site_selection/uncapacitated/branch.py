@@ -21,6 +21,8 @@ from ledgersolve.site_selection.uncapacitated.volume import Dual, Steps, climb
 
 NODE_STEPS = 40
 NODE_CLIMBS = 8
+MARGIN = 0.4
+"""Room for prices in a node, see ``NearLanes.around``."""
 
 
 @dataclass(frozen=True)
@@ -36,9 +38,9 @@ class Tree:
     """The tree of one core, whose sites are ``rows`` of the incumbent's."""
 
     def __init__(
-        self, core: Core, near: NearLanes, search: Search, incumbent: Incumbent, rows: Ints
+        self, core: Core, search: Search, incumbent: Incumbent, rows: Ints
     ) -> None:
-        self.core, self.near, self.search = core, near, search
+        self.core, self.search = core, search
         self.incumbent, self.rows = incumbent, rows
         self.floor = np.inf
         self.nodes = 0
@@ -65,7 +67,8 @@ class Tree:
         """Climb while it pays, then search and split, unless the node is closed on the way."""
         steps = Steps(length=0.05)
         selection, prices, average = node.selection, node.prices, node.average
-        near = self.near.of_sites(~selection.shut)
+        room = MARGIN * np.maximum(prices - self.core.lowest, self.core.spread)
+        near = NearLanes.around(self.core, selection, prices, room)
         for attempt in range(NODE_CLIMBS):
             if self._closed(bound):
                 return
@@ -77,7 +80,13 @@ class Tree:
             if self._closed(bound):
                 return
             selection = self._fixed(selection, dual)
-            if clock.over() or (attempt > 0 and gained * (NODE_CLIMBS - attempt) < cut - bound):
+            held = near.held(prices)
+            if held.any():
+                room[held] *= 4.0
+                near = NearLanes.around(self.core, selection, prices, room)
+            elif attempt > 0 and gained * (NODE_CLIMBS - attempt) < cut - bound:
+                break
+            if clock.over():
                 break
         self._look(selection, dual, clock)
         if not self._closed(bound):

@@ -20,8 +20,8 @@ from ledgersolve.site_selection.uncapacitated.volume import Dual, Steps, climb, 
 from ledgersolve.site_selection.whole import solve_whole
 
 ROUND_STEPS = 150
-ALL_LANES = 300_000
-"""Up to so many lanes are kept whole; beyond, only those below a ceiling price."""
+WIDEST, NARROWEST = 0.6, 0.2
+"""Room for prices in a round, see ``NearLanes.around``."""
 PATIENCE = 2
 """Rounds without progress before branching starts."""
 
@@ -64,6 +64,7 @@ class _Engine:
         self.search = Search(core)
         self.incumbent = Incumbent(core.m, self._cost_of, _grain(core), clock)
         self.floor = np.inf
+        self.room = np.full(core.n, np.inf)
         self.random = np.random.default_rng(1)
         self.checkable: list[Floats] = []
         self.notes: list[str] = []
@@ -77,11 +78,11 @@ class _Engine:
         self.search.improve(np.arange(self.core.m), self.clock)
         self._offer()
         self.clock.end_stage("first plan")
-        near, dual = self._rounds()
+        dual = self._rounds()
         self.checkable.append(_spread(self.lanes, self.root, dual.prices))
         self.clock.end_stage("bound and search")
         if np.isfinite(self.incumbent.cost) and not self.incumbent.enough():
-            tree = Tree(self.core, near, self.search, self.incumbent, self.rows)
+            tree = Tree(self.core, self.search, self.incumbent, self.rows)
             tree.floor = self.floor
             tree.run(dual, self.selection, self.clock)
             self.notes.append(f"branched on sites: {tree.nodes} nodes")
@@ -99,12 +100,13 @@ class _Engine:
         """Cost the steps aim at: the best plan's, or that of the present set with its penalties."""
         return self.incumbent.cut() if np.isfinite(self.incumbent.cost) else self.search.cost()
 
-    def _rounds(self) -> tuple[NearLanes, Dual]:
+    def _rounds(self) -> Dual:
         """Climb and search in turn until the gap is closed or neither side moves."""
         prices = start_prices(self.core, self.search.first, self.search.second, self.search.source)
-        near = NearLanes.below(self.core, self._ceilings(prices))
+        self.room = WIDEST * np.maximum(prices - self.core.lowest, self.core.spread)
         steps, average, idle = Steps(), None, 0
         while True:
+            near = NearLanes.around(self.core, self.selection, prices, self.room)
             bound, cost = self.incumbent.bound, self.incumbent.cost
             dual = climb(
                 self.core, near, self.selection, prices, self._target(), ROUND_STEPS, self.clock, steps,
@@ -112,30 +114,19 @@ class _Engine:
             )
             self.incumbent.raise_bound(min(dual.bound, self.floor), "bound")
             if self.incumbent.enough() or self.clock.over():
-                return near, dual
+                return dual
             self._search_from(dual)
             if self.incumbent.cost < cost:
                 steps.length = max(steps.length, 0.05)
             closing = self.incumbent.cost - self.incumbent.bound
             moved = self.incumbent.cost < cost or self.incumbent.bound - bound > 0.1 * closing
             idle = 0 if moved else idle + 1
-            near, dual = self._shrunk(near, dual)
+            self._narrow(near, prices, dual.prices)
+            dual = self._shrunk(dual)
             prices, average = dual.prices, dual.average
             decided = bool((self.selection.forced | self.selection.shut).all())
             if decided or idle >= PATIENCE or self.incumbent.enough():
-                return near, dual
-
-    def _ceilings(self, prices: Floats) -> Floats:
-        """Highest prices worth a thought: none on small cases, and never above a lane of a forced site."""
-        core = self.core
-        ceiling = np.full(core.n, np.inf)
-        if core.m * core.n > ALL_LANES:
-            low = core.cost.min(axis=0)
-            room = np.maximum(prices - low, 0.0)
-            ceiling = prices + room + room.mean() + 1e-9 * np.abs(prices)
-        for j in np.flatnonzero(self.selection.forced).tolist():
-            np.minimum(ceiling, core.cost[j], out=ceiling)
-        return ceiling
+                return dual
 
     def _search_from(self, dual: Dual) -> None:
         """Local searches from the sets the relaxation likes, and from random ones drawn by it."""
@@ -149,24 +140,27 @@ class _Engine:
             if self.clock.over():
                 return
 
-    def _shrunk(self, near: NearLanes, dual: Dual) -> tuple[NearLanes, Dual]:
-        """Drop the sites that no better plan can open, force those it must open, and renew the lanes."""
+    def _shrunk(self, dual: Dual) -> Dual:
+        """Drop the sites that no better plan can open, and force those it must open."""
         cut = self.incumbent.cut()
         rise = self.selection.flips(dual.value, dual.picked)
         sure = np.isfinite(rise) & (dual.bound + rise >= cut)
-        grown = bool((sure & dual.picked).any())
         if sure.any():
             self.floor = min(self.floor, self.incumbent.closed_at(cut))
             self.selection = self.selection.fix(
                 np.flatnonzero(sure & dual.picked), np.flatnonzero(sure & ~dual.picked)
             )
-        few = np.count_nonzero(self.selection.shut) > 0.1 * self.core.m
-        if few:
-            dual = self._drop(dual)
-        stuck = (dual.prices >= near.ceiling * (1 - 1e-9)) & (near.ceiling < self.core.unmet)
-        if few or grown or np.count_nonzero(stuck) > 0.001 * self.core.n:
-            near = NearLanes.below(self.core, self._ceilings(dual.prices))
-        return near, dual
+        return self._drop(dual) if np.count_nonzero(self.selection.shut) > 0.1 * self.core.m else dual
+
+    def _narrow(self, near: NearLanes, before: Floats, after: Floats) -> None:
+        """Lower the ceilings as prices come to rest, but raise those that hold a price back."""
+        scale = np.maximum(after - self.core.lowest, self.core.spread)
+        moved = np.abs(after - before) / np.maximum(scale, 1e-300)
+        margin = np.clip(4.0 * np.quantile(moved, 0.98), NARROWEST, WIDEST)
+        held = near.held(after)
+        wider = 4.0 * self.room[held]
+        self.room = margin * scale
+        self.room[held] = wider
 
     def _drop(self, dual: Dual) -> Dual:
         """Leave the shut sites out of the core."""

@@ -96,7 +96,7 @@ class _Climb:
         average: Floats | None,
     ) -> None:
         self.core, self.near, self.selection, self.upper, self.steps = core, near, selection, upper, steps
-        self.top = np.minimum(near.ceiling, core.unmet)
+        self.top = near.ceiling
         prices = np.minimum(prices, self.top)
         self.bound, self.value, self.picked, worth = price_value(core, near, selection, prices)
         self.prices = prices
@@ -150,7 +150,6 @@ class _Climb:
 
     def _lack(self, prices: Floats, picked: Flags, worth: Floats) -> Floats:
         """Subgradient: how much of each customer the picked sites leave unserved (negative: served twice)."""
-        on = np.flatnonzero(picked[self.near.site] & (worth > 0))
-        lack: Floats = 1.0 - np.bincount(self.near.customer[on], minlength=self.core.n).astype(np.float64)
+        lack: Floats = 1.0 - self.near.served(picked, worth)
         lack[(prices >= self.top) & (lack > 0)] = 0.0
         return lack
