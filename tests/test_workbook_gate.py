@@ -142,6 +142,12 @@ PACKAGES: dict[str, tuple[Callable[[], dict[str, str | bytes]], str]] = {
     "not well formed workbook": (lambda: parts(workbook="<workbook"), BROKEN),
     "not well formed links nobody reads": (lambda: parts() | {"xl/drawings/_rels/drawing1.xml.rels": "<x"}, BROKEN),
     "unknown encoding": (lambda: parts(sheet='<?xml version="1.0" encoding="UTF-7"?><worksheet/>'), BROKEN),
+    "encoding of no such name": (
+        lambda: parts(sheet='<?xml version="1.0" encoding="UTF-81"?><worksheet/>'), BROKEN),
+    "encoding of two bytes": (
+        lambda: parts(sheet='<?xml version="1.0" encoding="Shift_JIS"?><worksheet/>'), BROKEN),
+    "number of five thousand digits": (
+        lambda: parts(sheet=sheet_xml(f'<row r="{"9" * 5000}"/>')), "damaged"),
     "lying encoding": (lambda: parts(sheet=b'<?xml version="1.0" encoding="UTF-8"?><worksheet x="\xe4"/>'),
                        BROKEN),
     "no sheets": (lambda: parts(workbook=workbook_xml([])), "no sheet"),

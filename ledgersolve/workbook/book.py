@@ -5,7 +5,7 @@ from dataclasses import dataclass
 from html import unescape
 
 from ledgersolve.workbook import splice
-from ledgersolve.workbook.markup import MAIN, RELATIONS
+from ledgersolve.workbook.markup import MAIN, RELATIONS, whole
 from ledgersolve.workbook.ownership import OWN_NAMES
 from ledgersolve.workbook.splice import Edits, Element
 
@@ -39,7 +39,7 @@ def section(text: str, name: str) -> Element | None:
 
 def tabs(text: str) -> list[Tab]:
     """The sheet list in order."""
-    return [Tab(element.attributes.get("name", ""), _number(element.attributes.get("sheetId")),
+    return [Tab(element.attributes.get("name", ""), whole(element.attributes.get("sheetId")),
                 next((value for key, value in element.attributes.items() if key.endswith(":id")), ""))
             for element in _inside(text, "sheets")]
 
@@ -69,15 +69,15 @@ def without_sheets(text: str, names: frozenset[str]) -> str:
         if entry in dropped:
             edits.remove(entry)
         elif gone and local is not None:
-            shift = sum(position < _number(local) for position in gone)
-            edits.set(entry, {"localSheetId": str(_number(local) - shift)})
+            shift = sum(position < whole(local) for position in gone)
+            edits.set(entry, {"localSheetId": str(whole(local) - shift)})
     return edits.result()
 
 
 def _is_dropped(entry: Element, gone: list[int]) -> bool:
     local = entry.attributes.get("localSheetId")
     return (entry.attributes.get("name", "").casefold() in OWN_NAMES
-            or (local is not None and _number(local) in gone))
+            or (local is not None and whole(local) in gone))
 
 
 def with_sheets_in_front(text: str, added: Sequence[Tab], names: Sequence[LocalName]) -> str:
@@ -89,7 +89,7 @@ def with_sheets_in_front(text: str, added: Sequence[Tab], names: Sequence[LocalN
     for entry in _inside(text, "definedNames"):
         local = entry.attributes.get("localSheetId")
         if local is not None and added:
-            edits.set(entry, {"localSheetId": str(_number(local) + len(added))})
+            edits.set(entry, {"localSheetId": str(whole(local) + len(added))})
     views = section(text, "bookViews")
     if views is None:
         view = splice.made("bookViews", {}, MAIN, sheets, "<workbookView/>")
@@ -169,7 +169,3 @@ def free_sheet_ids(text: str, count: int) -> list[int]:
 def _inside(text: str, name: str) -> list[Element]:
     found = section(text, name)
     return [] if found is None else splice.children(text, found.inner, found.outer)
-
-
-def _number(text: str | None) -> int:
-    return int(text) if text is not None and text.strip().isdecimal() else 0

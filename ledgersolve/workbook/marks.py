@@ -11,7 +11,7 @@ from typing import NamedTuple
 
 from ledgersolve.workbook import splice
 from ledgersolve.workbook.cells import column_letters
-from ledgersolve.workbook.markup import MAIN
+from ledgersolve.workbook.markup import MAIN, whole
 from ledgersolve.workbook.problems import Problem, Recheck
 from ledgersolve.workbook.splice import Edits, Element
 from ledgersolve.workbook.stream import corner_of
@@ -44,7 +44,7 @@ _BEFORE = frozenset((
     "sheetCalcPr", "sheetProtection", "protectedRanges", "scenarios", "autoFilter", "sortState",
     "dataConsolidate", "customSheetViews", "mergeCells", "phoneticPr"))
 _TAIL = re.compile(rb"</(?:\w+:)?sheetData\s*>|<(?:\w+:)?sheetData\s*/>")
-_PRIORITY = re.compile(r"""(<(?:\w+:)?cfRule\b[^>]*?\spriority\s*=\s*["'])(\d+)""")
+_PRIORITY = re.compile(r"""(<(?:\w+:)?cfRule\b[^>]*?\spriority\s*=\s*["'])(\d{1,9})(?!\d)""")
 _SELECTED = re.compile(rb"""(<(?:\w+:)?sheetView\b[^>]*?\stabSelected\s*=\s*["'])(1|true)(?=["'])""")
 _FREED = re.compile(rb"""(<(?:\w+:)?sheetView\b[^>]*?\stabSelected\s*=\s*["'])(0|false)(?=["'])""")
 
@@ -105,7 +105,7 @@ def without_marks(sheet: bytes) -> bytes:
             continue
         rules = splice.children(tail, element.inner, element.outer)
         mine = [rule for rule in rules if FLAG in rule.content(tail)]
-        ours += [int(rule.attributes.get("priority", "0")) for rule in mine]
+        ours += [whole(rule.attributes.get("priority")) for rule in mine]
         if rules and len(mine) == len(rules):
             edits.remove(element)
         else:

@@ -15,10 +15,18 @@ PACKAGE_RELATIONS = "http://schemas.openxmlformats.org/package/2006/relationship
 CONTENT_TYPES = "http://schemas.openxmlformats.org/package/2006/content-types"
 STRICT = "http://purl.oclc.org/ooxml/"
 
+_UNICODE = ("UTF-8", "UTF-16", "UTF-16LE", "UTF-16BE")
+_BYTES = bytes(range(256))
+
 Attributes = dict[str, str]
 OnStart = Callable[[str, Attributes], object]
 OnText = Callable[[str], object]
 OnEnd = Callable[[str], object]
+
+
+def whole(text: str | None, default: int = 0) -> int:
+    """A whole number of at most nine digits as it stands in an attribute; ``default`` for anything else."""
+    return int(text) if text is not None and len(text) < 10 and text.isdecimal() else default
 
 
 class _RootSeenError(Exception):
@@ -34,9 +42,22 @@ def parser(part: str) -> expat.XMLParserType:
     def refuse(*_: object) -> None:
         raise refusal("entity definitions", part)
 
+    def declared(_version: str, encoding: str | None, _standalone: int) -> None:
+        if encoding is not None and not _is_readable(encoding):
+            raise refusal("broken XML", f"{part} is written in an encoding that cannot be read")
+
     made.StartDoctypeDeclHandler = refuse
     made.EntityDeclHandler = refuse
+    made.XmlDeclHandler = declared
     return made
+
+
+def _is_readable(encoding: str) -> bool:
+    """Whether expat can read it: the Unicode ones it knows, and those of one byte a character."""
+    try:
+        return encoding.upper() in _UNICODE or len(_BYTES.decode(encoding, "replace")) == len(_BYTES)
+    except (LookupError, ValueError):
+        return False
 
 
 def feed(reader: expat.XMLParserType, part: str, piece: bytes, *, last: bool = False) -> None:
@@ -46,8 +67,6 @@ def feed(reader: expat.XMLParserType, part: str, piece: bytes, *, last: bool = F
     except expat.ExpatError as error:
         raise refusal("broken XML", f"{part} is not well formed "
                       f"(line {error.lineno}: {expat.ErrorString(error.code)})") from None
-    except (LookupError, ValueError):  # an encoding that is not known, or that lies
-        raise refusal("broken XML", f"{part} is written in an encoding that cannot be read") from None
 
 
 def walk(part: str, pieces: Iterable[bytes], start: OnStart, text: OnText | None = None,
@@ -75,6 +94,7 @@ class PrologCheck:
         self._part = part
         self._reader = parser(part)
         self._reader.StartElementHandler = self._root
+        self._reader.XmlDeclHandler = None
         self.done = False
 
     def _root(self, *_: object) -> None:

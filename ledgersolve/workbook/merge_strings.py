@@ -11,14 +11,14 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 from ledgersolve.workbook import splice
-from ledgersolve.workbook.markup import MAIN, Attributes, walk
+from ledgersolve.workbook.markup import MAIN, Attributes, walk, whole
 
 _NEW_PART = (f'<?xml version="1.0" encoding="UTF-8" standalone="yes"?>\n'
              f'<sst xmlns="{MAIN}" count="0" uniqueCount="0"></sst>').encode()
 _ROOT = re.compile(rb"""<(?:\w+:)?sst(?:[^>"']|"[^"]*"|'[^']*')*>""")
 _ITEM = re.compile(rb"<(?:\w+:)?si[\s/>]")
 _SENTINEL = re.compile(
-    rb"<si(?: xmlns=\"[^\"]*\")?><t>ledgersolve texts (\d+) uses (\d+) check (\d+) (new|added)</t></si>")
+    rb"<si(?: xmlns=\"[^\"]*\")?><t>ledgersolve texts (\d{1,9}) uses (\d{1,9}) check (\d{1,10}) (new|added)</t></si>")
 
 
 @dataclass(frozen=True)
@@ -70,7 +70,7 @@ def _counted(data: bytes, texts: int, uses: int) -> bytes:
     known = splice.attributes(tag)
     values: dict[str, str | None] = {
         name: str(int(known[name]) + more) for name, more in (("count", uses), ("uniqueCount", texts))
-        if known.get(name, "").isdecimal()}
+        if whole(known.get(name), -1) >= 0}
     return data[:head.start()] + splice.with_attributes(tag, values).encode() + data[head.end():]
 
 

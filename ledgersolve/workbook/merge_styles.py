@@ -7,7 +7,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 
 from ledgersolve.workbook import splice
-from ledgersolve.workbook.markup import MAIN
+from ledgersolve.workbook.markup import MAIN, whole
 from ledgersolve.workbook.splice import Element
 
 _ORDER = ("numFmts", "fonts", "fills", "borders", "cellStyleXfs", "cellXfs", "cellStyles", "dxfs",
@@ -91,7 +91,7 @@ class _Formats:
         for entry in _entries(theirs, "numFmts"):
             code = entry.attributes.get("numFmtId", "")
             self._theirs.setdefault(entry.attributes.get("formatCode", ""), code)
-            codes += [int(code)] if code.isdecimal() else []
+            codes.append(whole(code))
         self._next = max(codes) + 1
         self.added: list[str] = []
 

@@ -9,7 +9,7 @@ from typing import Self
 from ledgersolve.workbook.cells import Cell
 from ledgersolve.workbook.container import Container, Limits, Member
 from ledgersolve.workbook.gate import pass_gate
-from ledgersolve.workbook.markup import MAIN, RELATIONS, STRICT, Attributes, walk
+from ledgersolve.workbook.markup import MAIN, RELATIONS, STRICT, Attributes, walk, whole
 from ledgersolve.workbook.ownership import OWN_SHEET, sheets_named
 from ledgersolve.workbook.parts import Relation, check_relations, relations, small_pieces, workbook_part
 from ledgersolve.workbook.refusals import refusal
@@ -249,14 +249,10 @@ def _table(part: str, pieces: Iterator[bytes]) -> tuple[TableArea | None, bool]:
             area = area_of(attributes.get("ref", ""))
             if area is not None:
                 found.append(TableArea(attributes.get("displayName") or attributes.get("name", ""), *area,
-                                       _count(attributes.get("headerRowCount"), 1),
-                                       _count(attributes.get("totalsRowCount"), 0)))
+                                       whole(attributes.get("headerRowCount"), 1),
+                                       whole(attributes.get("totalsRowCount"), 0)))
         elif name == f"{MAIN} filterColumn":
             filtered = True
 
     walk(part, pieces, start)
     return (found[0] if found else None), filtered
-
-
-def _count(text: str | None, default: int) -> int:
-    return int(text) if text is not None and text.isdecimal() else default

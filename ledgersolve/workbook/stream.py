@@ -10,7 +10,7 @@ from datetime import datetime
 
 from ledgersolve.workbook.cells import Cell, Kind, address, column_letters
 from ledgersolve.workbook.container import Limits
-from ledgersolve.workbook.markup import MAIN, RELATIONS, Attributes, feed, parser
+from ledgersolve.workbook.markup import MAIN, RELATIONS, Attributes, feed, parser, whole
 from ledgersolve.workbook.refusals import refusal
 from ledgersolve.workbook.strings import unescaped
 
@@ -133,7 +133,7 @@ class _Scan:
 
     def _start_row(self, attributes: Attributes) -> None:
         given = attributes.get("r")
-        row = self.row + 1 if given is None else int(given) if given.isdecimal() else 0
+        row = self.row + 1 if given is None else whole(given)
         if not self.row < row <= LAST_ROW:
             raise refusal("damaged", f"row {given} of the sheet “{self.sheet}” is not where it should be")
         self.row, self.row_text, self.column = row, str(row), 0
@@ -200,7 +200,7 @@ class _Scan:
             return
         if kind is None or kind == "n":
             style = self.cell.get("s")
-            index = int(style) if style is not None and style.isdecimal() else -1
+            index = whole(style, -1)
             if index in self.texts.percents and len(self.around.percents) < _MOST_PERCENTS:
                 self.around.percents.append((self.row, column))
             self._number(column, raw, Kind.DATE if index in self.texts.dates else _NUMBER)
@@ -242,9 +242,9 @@ def _look_around(name: str, attributes: Attributes, around: Surroundings) -> Non
     elif name == _TABLE_PART:
         around.table_ids.append(attributes.get(f"{RELATIONS} id", ""))
     elif name == _COL and attributes.get("hidden") in _TRUE:
-        first, last = attributes.get("min", ""), attributes.get("max", "")
-        if first.isdecimal() and last.isdecimal():
-            around.hidden_columns.append((int(first), min(int(last), LAST_COLUMN)))
+        first, last = whole(attributes.get("min")), min(whole(attributes.get("max")), LAST_COLUMN)
+        if 0 < first <= last:
+            around.hidden_columns.append((first, last))
 
 
 def _extend(ranges: list[tuple[int, int]], row: int) -> None:
@@ -267,11 +267,8 @@ def area_of(reference: str) -> Area | None:
 def corner_of(reference: str) -> tuple[int, int] | None:
     """Row and column of an address such as ``D8``; None where it is none."""
     letters = reference.rstrip("0123456789")
-    digits = reference[len(letters):]
-    column = COLUMNS.get(letters.upper())
-    if column is None or not digits or not 0 < int(digits[:8]) <= LAST_ROW:
-        return None
-    return int(digits), column
+    row, column = whole(reference[len(letters):]), COLUMNS.get(letters.upper())
+    return None if column is None or not 0 < row <= LAST_ROW else (row, column)
 
 
 def _serial(text: str, date1904: bool) -> float | None:

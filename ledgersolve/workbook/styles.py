@@ -5,7 +5,7 @@ from collections.abc import Iterable
 
 from openpyxl.styles.numbers import BUILTIN_FORMATS, is_date_format
 
-from ledgersolve.workbook.markup import MAIN, Attributes, walk
+from ledgersolve.workbook.markup import MAIN, Attributes, walk, whole
 
 # Codes 27-36 and 50-58 are dates in the East Asian editions; a file names them without a format text.
 _EAST_ASIAN_DATES = frozenset((*range(27, 37), *range(50, 59)))
@@ -24,11 +24,11 @@ def number_styles(part: str, pieces: Iterable[bytes]) -> tuple[frozenset[int], f
     def start(name: str, attributes: Attributes) -> None:
         nonlocal inside
         if name == f"{MAIN} numFmt":
-            formats[_number(attributes.get("numFmtId"))] = attributes.get("formatCode", "")
+            formats[whole(attributes.get("numFmtId"))] = attributes.get("formatCode", "")
         elif name == f"{MAIN} cellXfs":
             inside = True
         elif inside and name == f"{MAIN} xf":
-            used.append(_number(attributes.get("numFmtId")))
+            used.append(whole(attributes.get("numFmtId")))
 
     def end(name: str) -> None:
         nonlocal inside
@@ -41,10 +41,6 @@ def number_styles(part: str, pieces: Iterable[bytes]) -> tuple[frozenset[int], f
                                                                                                                ""))}
     return (frozenset(index for index, code in enumerate(used) if code in dates),
             frozenset(index for index, code in enumerate(used) if code in percents))
-
-
-def _number(text: str | None) -> int:
-    return int(text) if text is not None and text.strip().isdecimal() else 0
 
 
 def _is_date(code: int, text: str | None) -> bool:
