@@ -151,7 +151,7 @@ def hard_case(items: int = 15, periods: int = 30) -> Case:
     demand = rng.integers(0, 120, (items, periods)) * (rng.random((items, periods)) < 0.8)
     demand[:, :3] //= 3
     setup_time = rng.integers(20, 60, items) * 1.0
-    capacity = demand.sum(axis=0).mean() * 1.02 + 0.35 * setup_time.sum()
+    capacity = demand.sum(axis=0).mean() * 1.05 + 0.5 * setup_time.sum()
     return plain_case(
         demand, rng.integers(100, 900, (items, 1)), rng.integers(1, 5, (items, 1)), resources=("M",),
         capacity=np.full((1, periods), capacity), overtime_limit=np.zeros(1), overtime_cost=np.zeros(1),

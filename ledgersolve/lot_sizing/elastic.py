@@ -18,7 +18,7 @@ from ledgersolve.mip import Clock, LinearModel
 TINY = 1e-6
 """Slack below this share of an item's quantities, or of a capacity, is rounding."""
 HELD = 1e-5
-"""Price of holding beside a price of 1 for a time unit: shortfall is then placed as late as it can be."""
+"""Price of holding beside a price of 1 for a time unit."""
 ITEM_SECONDS = 5.0
 
 
@@ -68,15 +68,18 @@ def mended(case: Case, slacks: dict[int, Slack]) -> Case:
     return replace(case, demand=demand, safety_stock=safety, closing_stock=closing, most_stock=most)
 
 
-def short_of_time(case: Case) -> Case:
-    """Give the case in which only time beyond capacity and overtime costs: one money unit a time unit."""
+def short_of_time(case: Case, held: float = HELD) -> Case:
+    """Give the case in which only time beyond capacity and overtime costs: one money unit a time unit.
+
+    ``held`` is a small price of holding beside it, so that shortfall is placed as late as it can be.
+    """
     most = resource_need(case, _all_at_once(case)).max(axis=1, initial=0.0)
     nothing = np.zeros((case.n, case.t))
-    held = HELD * np.where(case.time_per_unit > 0, case.time_per_unit, 1.0) / max(case.t, 1)
+    price = held * np.where(case.time_per_unit > 0, case.time_per_unit, 1.0) / max(case.t, 1)
     return replace(
-        case, setup_cost=nothing, unit_cost=nothing, holding_cost=np.repeat(held[:, None], case.t, axis=1),
-        backlog_cost=np.where(np.isnan(case.backlog_cost), np.nan, 2 * held),
-        lost_cost=np.where(np.isnan(case.lost_cost), np.nan, 2 * case.t * held),
+        case, setup_cost=nothing, unit_cost=nothing, holding_cost=np.repeat(price[:, None], case.t, axis=1),
+        backlog_cost=np.where(np.isnan(case.backlog_cost), np.nan, 2 * price),
+        lost_cost=np.where(np.isnan(case.lost_cost), np.nan, 2 * case.t * price),
         family_cost=np.zeros(len(case.families)), use_cost=np.zeros(len(case.resources)),
         capacity=case.capacity + case.overtime_limit[:, None], overtime_limit=most,
         overtime_cost=np.ones(len(case.resources)),

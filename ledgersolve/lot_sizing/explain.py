@@ -25,7 +25,7 @@ from ledgersolve.lot_sizing.elastic import (
 from ledgersolve.lot_sizing.groups import part
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made, resource_need
 from ledgersolve.lot_sizing.solve import solve
-from ledgersolve.lot_sizing.tight import tight_limits
+from ledgersolve.lot_sizing.totals import least_time, overdrawn
 from ledgersolve.mip import Clock, Limits
 
 MOST_LISTED = 40
@@ -124,44 +124,18 @@ def _what_helps(case: Case, item: int, clock: Clock) -> list[tuple[str, Subject]
 # ------------------------------------------------------------------ time
 
 
-def _least_time(case: Case) -> Floats:
-    """Shape (R, T): time that every plan must have spent on each resource by each period's end.
-
-    Counted from the net needs of items that can neither be late nor lose demand (items that may be late: at
-    the end only), with the fewest setups that the largest lots allow.
-    """
-    tight = tight_limits(case)
-    due = np.where(np.isfinite(case.lost_cost)[:, None], 0.0, tight.stair)
-    due[np.isfinite(case.backlog_cost), :-1] = 0.0
-    due = np.maximum(due, 0.0)
-    lot = np.where(np.isfinite(tight.most_lot), np.maximum(tight.most_lot, 1e-12), np.inf)[:, None]
-    setups = np.where(due > 0, np.maximum(np.ceil(due / lot - 1e-9), 1.0), 0.0)
-    need = np.zeros(case.capacity.shape)
-    on = np.flatnonzero(case.item_resource >= 0)
-    time = case.time_per_unit[on, None] * due[on] + case.setup_time[on, None] * setups[on]
-    np.add.at(need, case.item_resource[on], time)
-    for family in np.flatnonzero(case.family_resource >= 0):
-        once = (due[case.item_family == family] > 0).any(axis=0)
-        need[case.family_resource[family]] += case.family_time[family] * once
-    return need
-
-
 def _running_totals(case: Case) -> Iterator[Conflict]:
-    """Resources whose time up to some period does not even suffice when every setup is shared best."""
-    need = _least_time(case)
-    have = np.cumsum(case.capacity + case.overtime_limit[:, None], axis=1)
-    for r, name in enumerate(case.resources):
-        excess = need[r] - have[r]
-        t = int(np.argmax(excess))
-        if excess[t] <= 1e-6 * max(1e-3, need[r, t]):
-            continue
+    """Resources whose time up to some period does not even suffice for the fewest setups; the worst period."""
+    need, excess = least_time(case), overdrawn(case)
+    for r in np.flatnonzero(excess.any(axis=1)).tolist():
+        name, t = case.resources[r], int(np.argmax(excess[r]))
         code = case.periods[t]
         extra = " with all overtime" if case.overtime_limit[r] > 0 else ""
         yield Conflict(
-            f"{name} is {figure(excess[t])} short up to {case.period_unit} {code}: the demand until then "
-            f"needs at least {figure(need[r, t])} of its time, there are {figure(have[r, t])}{extra}.",
-            f"Give {name} {figure(excess[t])} more up to {case.period_unit} {code}, or move or drop demand.",
-            float(excess[t]), _capacity_cells(case, r, t),
+            f"{name} is {figure(excess[r, t])} short up to {case.period_unit} {code}: the demand until then "
+            f"needs at least {figure(need[r, t])} of its time, there are {figure(need[r, t] - excess[r, t])}{extra}.",
+            f"Give {name} {figure(excess[r, t])} more up to {case.period_unit} {code}, or move or drop demand.",
+            float(excess[r, t]), _capacity_cells(case, r, t),
         )
 
 

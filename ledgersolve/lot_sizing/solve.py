@@ -13,21 +13,12 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from ledgersolve.lot_sizing.audit import audit
-from ledgersolve.lot_sizing.case import Case, Floats
-from ledgersolve.lot_sizing.decompose import solve_decomposed
+from ledgersolve.lot_sizing.case import Case, Flags, Floats, Ints
 from ledgersolve.lot_sizing.groups import Group, groups, joined, part
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.programmes import ItemProgrammes
-from ledgersolve.lot_sizing.tight import tight_limits
-from ledgersolve.lot_sizing.whole import solve_whole
+from ledgersolve.lot_sizing.tied import solve_tied
 from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict, judge
-
-WHOLE_AT_ONCE = 60
-"""Setups up to which the whole model needs no help."""
-SMALL, FIRST_SHARE_SMALL = 250, 0.2
-"""Setups up to which the decomposition gets a short share of the time, and that share."""
-WHOLE_AFTER, FIRST_SHARE = 2000, 0.5
-"""Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
 
 
 @dataclass
@@ -53,56 +44,73 @@ def solve(case: Case, limits: Limits) -> Solved[Plan]:
 
 
 class _Run:
-    """One run over the groups of a case."""
+    """One run over the groups of a case; small groups come first and leave their spare time to the large."""
 
     def __init__(self, case: Case, clock: Clock) -> None:
         self.case, self.clock = case, clock
         self.notes: list[str] = []
         self.prices: Floats = np.zeros(case.capacity.shape)
-        self.parts: list[_Part] = []
-        for group in groups(case):
-            if group.shared:
-                self.parts.append(_Part(group, -math.inf))
-            else:
-                self.lone = group
-
-    lone: Group | None = None
+        found = groups(case)
+        self.lone = next((group for group in found if not group.shared), None)
+        tied = sorted((group for group in found if group.shared), key=lambda group: group.case.n)
+        self.parts = [_Part(group, _first_bound(group.case)) for group in tied]
 
     def alone(self) -> bool:
-        """Items without a tie: the exact programmes at once; the items they do not carry become parts."""
+        """Items without a tie: the exact programmes at once; the items they do not carry become parts.
+
+        Such an item is settled too where its relaxed schedule keeps every rule at the relaxed cost. False
+        when an item has no plan.
+        """
+        if any(math.isinf(p.bound) for p in self.parts):
+            return False
         if self.lone is None:
             return True
-        group, case = self.lone, self.lone.case
+        case = self.lone.case
         programmes = ItemProgrammes(case)
         found = programmes.best()
         if not np.isfinite(found.cost).all():
             return False
-        exact = np.flatnonzero(programmes.exact)
-        made = found.made[exact]
-        if exact.size:
-            sub = part(case, exact)
-            own = Group(sub.case, group.items[exact], sub.resources, shared=False)
-            self._add(own, plan_from_made(sub.case, made), found.cost[exact])
-            self.notes.append(f"{exact.size} items without shared capacity: exact dynamic programme.")
-        self.clock.end_stage("dynamic programmes", f"{exact.size} of {case.n} items")
-        for item in np.flatnonzero(~programmes.exact):
-            sub = part(case, np.array([item]))
-            own = Group(sub.case, group.items[[item]], sub.resources)
-            self.parts.append(_Part(own, float(found.cost[item])))
+        settled = programmes.exact.copy()
+        for item in np.flatnonzero(~settled):
+            alone = part(case, np.array([item])).case
+            checked = audit(alone, plan_from_made(alone, found.made[[item]]))
+            settled[item] = checked.ok and checked.total <= found.cost[item] * (1 + 1e-9) + 1e-9
+        if settled.any():
+            self._settle(np.flatnonzero(settled), found.made, found.cost)
+        for item in np.flatnonzero(~settled):
+            self.parts.append(_Part(self._taken(np.array([item])), float(found.cost[item])))
+        self._tell(programmes, settled)
         return True
 
-    def _add(self, group: Group, plan: Plan, cost: Floats) -> None:
+    def _taken(self, items: Ints) -> Group:
+        """Give a group of lone items, numbered as in the whole case."""
+        assert self.lone is not None
+        own = part(self.lone.case, items)
+        return replace(own, items=self.lone.items[items])
+
+    def _settle(self, items: Ints, made: Floats, cost: Floats) -> None:
+        group = self._taken(items)
+        plan = plan_from_made(group.case, made[items])
         checked = audit(group.case, plan)
-        total = checked.total if checked.ok else math.inf
-        bound = min(float(cost.sum()), total)
-        self.parts.append(_Part(group, bound, plan if checked.ok else None, total))
+        if not checked.ok:
+            raise ArithmeticError(f"the programmes' plan breaks {[check.rule for check in checked.broken()]}")
+        self.parts.append(_Part(group, min(float(cost[items].sum()), checked.total), plan, checked.total))
+
+    def _tell(self, programmes: ItemProgrammes, settled: Flags) -> None:
+        """Note which method treated the lone items."""
+        count, rest = int(settled.sum()), int((~settled).sum())
+        self.notes.append(f"{count} items without shared capacity: exact dynamic programme.")
+        if rest:
+            features = ", ".join(programmes.relaxed())
+            self.notes.append(f"{rest} items without shared capacity: whole model each ({features}).")
+        self.clock.end_stage("dynamic programmes", f"{count} of {settled.size} items")
 
     def tied(self, number: int) -> bool:
         """One group that is still without a plan; False when it has none."""
         now = self.parts[number]
         if now.plan is not None:
             return True
-        found = _tied(now.group.case, self._share(number))
+        found = solve_tied(now.group.case, self._share(number))
         if found.prices is not None:
             self.prices[now.group.resources] = found.prices
         self.clock.stages.extend(_named(found.stages, now.group))
@@ -151,19 +159,9 @@ class _Run:
         return Solved(verdict, plan, cost, known, stages, notes, self.prices)
 
 
-def _tied(case: Case, limits: Limits) -> Solved[Plan]:
-    """One group of tied items: the decomposition, the whole model, or one after the other, by size."""
-    cells = int(np.count_nonzero(tight_limits(case).most_made > 0))
-    if cells <= WHOLE_AT_ONCE:
-        return solve_whole(case, limits)
-    clock = limits.start()
-    share = 1.0 if cells > WHOLE_AFTER else FIRST_SHARE_SMALL if cells <= SMALL else FIRST_SHARE
-    first = solve_decomposed(case, replace(limits, seconds=limits.seconds * share))
-    enough = first.gap is not None and first.gap <= limits.gap
-    if first.verdict is Verdict.NO_PLAN_EXISTS or enough or share == 1.0 or clock.left() < 0.5:
-        return first
-    second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
-    return replace(second, stages=first.stages + second.stages, notes=first.notes, prices=first.prices)
+def _first_bound(case: Case) -> float:
+    """Cost of the items each alone, with all the time in the world: a bound, inf where one has no plan."""
+    return float(ItemProgrammes(case).best().cost.sum())
 
 
 def _named(stages: tuple[Stage, ...], group: Group) -> list[Stage]:

@@ -1,0 +1,70 @@
+"""Items tied by resources or families: decomposition, whole model, or one after the other, by size.
+
+Where no plan is found, the same decomposition looks for the least time missing in all: nothing missing is a
+plan to go on from, and a proven bound above nothing is the proof that no plan exists.
+"""
+
+from dataclasses import replace
+
+import numpy as np
+
+from ledgersolve.lot_sizing.case import Case
+from ledgersolve.lot_sizing.decompose import solve_decomposed
+from ledgersolve.lot_sizing.elastic import TINY, short_of_time, shortfall
+from ledgersolve.lot_sizing.plan import Plan, plan_from_made
+from ledgersolve.lot_sizing.tight import tight_limits
+from ledgersolve.lot_sizing.totals import overdrawn
+from ledgersolve.lot_sizing.whole import solve_whole
+from ledgersolve.mip import Clock, Limits, Solved, Stage, Verdict
+
+WHOLE_AT_ONCE = 60
+"""Setups up to which the whole model needs no help."""
+SMALL, FIRST_SHARE_SMALL = 250, 0.2
+"""Setups up to which the decomposition gets a short share of the time, and that share."""
+WHOLE_AFTER, FIRST_SHARE = 2000, 0.5
+"""Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
+RESCUE_SHARE = 0.3
+"""Share of the time kept for the search of the least time missing, on cases too large for the whole model."""
+
+
+def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
+    """Solve one group of tied items; ``Solved.prices`` are those of the decomposition's bound, if it ran."""
+    clock = limits.start()
+    if overdrawn(case).any():
+        return _impossible(clock, "running totals of time exceed the capacity")
+    cells = int(np.count_nonzero(tight_limits(case).most_made > 0))
+    if cells <= WHOLE_AT_ONCE or case.n == 1:
+        return solve_whole(case, limits)
+    share = FIRST_SHARE_SMALL if cells <= SMALL else FIRST_SHARE if cells <= WHOLE_AFTER else 1.0
+    first = solve_decomposed(case, replace(limits, seconds=limits.seconds * share))
+    enough = first.gap is not None and first.gap <= limits.gap
+    if first.verdict is Verdict.NO_PLAN_EXISTS or enough or clock.over():
+        return first
+    if cells <= WHOLE_AFTER:
+        second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
+        return _after(first, second)
+    return first if first.plan is not None else _rescued(case, first, clock)
+
+
+def _rescued(case: Case, first: Solved[Plan], clock: Clock) -> Solved[Plan]:
+    """Look for the least time missing; go on from a plan that lacks none."""
+    limits = replace(clock.limits, seconds=max(clock.left() * 0.7, 1e-3), gap=0.5)
+    least = solve_decomposed(short_of_time(case, held=0.0), limits)
+    size = float(np.where(np.isfinite(case.capacity), case.capacity, 0.0).max(initial=0.0))
+    if least.bound is not None and least.bound > TINY * max(size, 1e-3):
+        return _after(first, _impossible(clock, f"at least {least.bound:.6g} time units are missing"))
+    if least.plan is None or shortfall(case, least.plan.made).any() or clock.over():
+        return replace(first, stages=first.stages + least.stages)
+    plan = plan_from_made(case, least.plan.made)
+    return _after(first, solve_decomposed(case, replace(clock.limits, seconds=clock.left()), plan))
+
+
+def _after(first: Solved[Plan], second: Solved[Plan]) -> Solved[Plan]:
+    """Give the second run's answer with the stages of both, and the prices of the first."""
+    prices = first.prices if second.prices is None else second.prices
+    return replace(second, stages=first.stages + second.stages, notes=first.notes + second.notes, prices=prices)
+
+
+def _impossible(clock: Clock, reason: str) -> Solved[Plan]:
+    stage = Stage("no plan exists", clock.elapsed(), note=reason)
+    return Solved(Verdict.NO_PLAN_EXISTS, None, None, None, (*clock.stages, stage))
