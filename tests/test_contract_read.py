@@ -4,14 +4,16 @@ import dataclasses
 import datetime
 
 import numpy as np
+import openpyxl
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from ledgersolve.contract import Job
+from ledgersolve.contract import Job, read_workbook
 from ledgersolve.lot_sizing.case import Case as LotCase
 from ledgersolve.lot_sizing.case import plain_case as plain_lots
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Variant, plain_case
+from ledgersolve.workbook.package import open_package
 from tests.books import (
     Formula,
     book_of_lot_case,
@@ -474,11 +476,31 @@ def test_defaults_of_settings_are_listed_and_used(tmp_path):
     assert ("Sites", "Capacity", "unlimited", 2) in {(d.sheet, d.title, d.value, d.cells) for d in reading.defaults}
 
 
-def test_hidden_rows_sheets_and_merged_cells_give_notices(tmp_path):
+def test_hidden_rows_are_said(tmp_path):
     """Hidden rows are used, and said."""
     reading = read_sheets(tmp_path, small_site(), hidden_rows={"Customers": [3]})
     assert notices(reading) == [("hidden rows", "Customers", "")]
     assert reading.case.n == 3
+
+
+def test_hidden_sheets_and_merged_cells_are_said(tmp_path):
+    """A hidden sheet is used, merged cells below the titles are named; a merged heading is nothing."""
+    path = write_book(tmp_path / "plain.xlsx", {**small_site(), "Sites": [["Heading", None], *small_site()["Sites"]]})
+    book = openpyxl.load_workbook(path)
+    book["Customers"].sheet_state = "hidden"
+    book["Sites"].merge_cells("A1:B1")
+    book["Customers"]["D2"] = "note"
+    book["Customers"].merge_cells("D2:D3")
+    book.save(path)
+    assert notices(read_book(path)) == [("hidden sheet", "Customers", ""), ("merged cells", "Customers", "D2")]
+
+
+def test_links_to_other_workbooks_and_macros_are_said(tmp_path):
+    """External links are used as saved, macros are not run: two notices about the whole file."""
+    with open_package(write_book(tmp_path / "book.xlsx", small_site())) as package:
+        package.external_links = package.macros = True
+        reading = read_workbook(package, "book.xlsx")
+    assert notices(reading) == [("external links", "", ""), ("macros", "", "")]
 
 
 def test_a_transposed_matrix_has_its_own_words(tmp_path):

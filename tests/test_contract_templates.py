@@ -4,6 +4,7 @@ from pathlib import Path
 
 import openpyxl
 import pytest
+from openxml_audit import FileFormat, OpenXmlValidator
 
 from ledgersolve.contract import Job
 from ledgersolve.contract.columns import Holds, ListSheet
@@ -113,6 +114,12 @@ def test_every_column_has_its_title_example_note_and_validation(job):
             assert entry.meaning[:60] in rule.prompt
             assert (rule.type == "list") == (entry.holds in (Holds.YES_NO, Holds.CHOICE)
                                              or (entry.holds is Holds.CODE and bool(entry.refers)))
+
+
+@pytest.mark.parametrize("job", list(Job))
+def test_templates_are_right_by_the_standard(job):
+    """A validator of the format (ISO/IEC 29500) finds nothing to complain about."""
+    assert OpenXmlValidator(FileFormat.OFFICE_2019).validate(str(COMMITTED / f"{job}.xlsx")).errors == []
 
 
 @pytest.mark.parametrize("job", list(Job))

@@ -39,20 +39,23 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
     title = table.contract.key[0]
     rows: dict[str, int] = {}
     forms: dict[str, str] = {}
+    whole = table.whole
     for row, code in enumerate(table.texts(title)):
         if not code:
             continue
         form = alike(code)
         if code in rows:
             _report_twice(table, title, row, rows[code], code, faults)
+            whole = False
         elif form in forms:
             _report_alike(table, title, row, forms[form], rows[forms[form]], faults)
             rows[code] = row
+            whole = False
         else:
             rows[code] = row
             forms[form] = code
     number = {code: place for place, code in enumerate(rows)}
-    return Codes(table.sheet, tuple(rows), number, tuple(rows.values()), table.whole)
+    return Codes(table.sheet, tuple(rows), number, tuple(rows.values()), whole)
 
 
 def _report_twice(table: CheckedList, title: str, row: int, first: int, code: str, faults: Faults) -> None:

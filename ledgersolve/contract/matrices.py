@@ -52,14 +52,6 @@ class CheckedMatrix:
         return down[:, None] & across[None, :]
 
 
-class _Side:
-    """Codes along one side of a matrix: sheet line (row or column) -> number of the code."""
-
-    def __init__(self, lines: dict[int, int], at_fault: set[int]) -> None:
-        self.lines = lines
-        self.at_fault = at_fault
-
-
 def check_matrix(sheet: str, contract: MatrixSheet, raw: RawMatrix, down: Codes, across: Codes,
                  faults: Faults, date1904: bool) -> CheckedMatrix:
     """Check the codes along both sides and every figure, and report what is wrong."""
@@ -72,16 +64,16 @@ def check_matrix(sheet: str, contract: MatrixSheet, raw: RawMatrix, down: Codes,
     _report_without_code(sheet, raw, filled_rows, faults, contract)
     figures = np.full((len(down.codes), len(across.codes)), np.nan)
     bad = np.zeros(figures.shape, dtype=bool)
-    row_number = _lookup(rows.lines, raw.rows, filled_rows)
-    column_number = _lookup(columns.lines, raw.columns, filled_columns)
+    row_number = _lookup(rows, raw.rows, filled_rows)
+    column_number = _lookup(columns, raw.columns, filled_columns)
     inside = (row_number >= 0) & (column_number >= 0)
     figures[row_number[inside], column_number[inside]] = raw.values[inside]
     _check_limits(sheet, contract.figure, raw, inside, row_number, column_number, figures, bad, faults)
-    as_text = _take_others(sheet, contract.figure, raw.others, rows.lines, columns.lines, figures, bad,
+    as_text = _take_others(sheet, contract.figure, raw.others, rows, columns, figures, bad,
                            faults)
     return CheckedMatrix(sheet, contract, figures, bad, frozenset(as_text),
-                         {number: line for line, number in rows.lines.items()},
-                         {number: line for line, number in columns.lines.items()}, raw.title_row)
+                         {number: line for line, number in rows.items()},
+                         {number: line for line, number in columns.items()}, raw.title_row)
 
 
 def _lookup(lines: Mapping[int, int], wanted: Ints, filled: set[int]) -> Ints:
@@ -94,41 +86,45 @@ def _lookup(lines: Mapping[int, int], wanted: Ints, filled: set[int]) -> Ints:
 
 
 def _side(sheet: str, title: str, cells: Sequence[Cell], lines: Sequence[int], filled: set[int], known: Codes,
-          faults: Faults, date1904: bool) -> _Side:
-    """Read the codes along one side; codes over no figures may be notes and are left alone."""
-    entry = Entry(title, "", Holds.CODE, refers=known.sheet)
+          faults: Faults, date1904: bool) -> dict[int, int]:
+    """Codes along one side: sheet line (row or column) -> number of the code; what is wrong is reported."""
+    named = _named_lines(sheet, title, cells, lines, filled, known, faults, date1904)
+    numbers = resolve(sheet, title, [code for _, _, code in named],
+                      lambda i: (named[i][0].row, named[i][0].column), known, faults)
     found: dict[int, int] = {}
-    at_fault: set[int] = set()
     met: dict[str, Cell] = {}
+    for (cell, line, code), number in zip(named, numbers.tolist(), strict=True):
+        if code in met:
+            faults.add(sheet, (cell.row, cell.column), title, Fault(
+                "duplicate code", f"{quoted(code)}, which stands in {met[code].address} already", "each code once",
+                "Take one of the two out, or rename it."))
+        elif number >= 0:
+            met[code] = cell
+            found[line] = number
+    return found
+
+
+def _named_lines(sheet: str, title: str, cells: Sequence[Cell], lines: Sequence[int], filled: set[int],
+                 known: Codes, faults: Faults, date1904: bool) -> list[tuple[Cell, int, str]]:
+    """Code cells along one side with their line and code, without totals at the end.
+
+    Words over no figures may be notes and are left alone.
+    """
+    entry = Entry(title, "", Holds.CODE, refers=known.sheet)
     named: list[tuple[Cell, int, str]] = []
     for cell, line in zip(cells, lines, strict=True):
         code = values.text(cell, entry, date1904)
         if isinstance(code, Fault):
-            at_fault.add(line)
             if line in filled:
                 faults.add(sheet, (cell.row, cell.column), title, code)
         elif line in filled or code in known.number:
             named.append((cell, line, code))
     if named and plain(named[-1][2]) in TOTAL_WORDS and named[-1][2] not in known.number:
-        cell, line, code = named.pop()
-        at_fault.add(line)
+        cell, _, code = named.pop()
         faults.add(sheet, (cell.row, cell.column), title, Fault(
             "totals row", f"totals ({quoted(code)}) at the end of the matrix", entry.expected(),
             "Take the totals out of the matrix.", "empty"))
-    numbers = resolve(sheet, title, [code for _, _, code in named],
-                      lambda i: (named[i][0].row, named[i][0].column), known, faults)
-    for (cell, line, code), number in zip(named, numbers.tolist(), strict=True):
-        if number < 0:
-            at_fault.add(line)
-        elif code in met:
-            at_fault.add(line)
-            faults.add(sheet, (cell.row, cell.column), title, Fault(
-                "duplicate code", f"{quoted(code)}, which stands in {met[code].address} already", "each code once",
-                "Take one of the two out, or rename it."))
-        else:
-            met[code] = cell
-            found[line] = number
-    return _Side(found, at_fault)
+    return named
 
 
 def _report_without_code(sheet: str, raw: RawMatrix, filled_rows: set[int], faults: Faults,

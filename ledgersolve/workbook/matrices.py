@@ -71,7 +71,7 @@ def _code_column(top: Mapping[int, Sequence[Cell]], title_row: int, first_title:
 
 def read_matrix(cells: Iterable[Cell], row_codes: Collection[str], column_codes: Collection[str],
                 totals: Totals = no_totals, date1904: bool = False) -> RawMatrix | None:
-    """Read a matrix sheet in one pass.
+    """Read a matrix sheet in one pass; None where no title row was found within the first 30 rows.
 
     Parameters
     ----------
@@ -83,11 +83,6 @@ def read_matrix(cells: Iterable[Cell], row_codes: Collection[str], column_codes:
         Totals rows of table objects.
     date1904
         The workbook's date system.
-
-    Returns
-    -------
-    RawMatrix or None
-        None where no title row was found within the first 30 rows.
     """
     top, rest = first_rows(cells)
     title_row = _matrix_titles(top, column_codes, date1904)
@@ -97,13 +92,16 @@ def read_matrix(cells: Iterable[Cell], row_codes: Collection[str], column_codes:
     known = _known_in(titles, column_codes, date1904) if column_codes else titles[1:]
     first_title = min(cell.column for cell in known)
     code_column = _code_column(top, title_row, first_title, row_codes, date1904)
-    heads = [cell for cell in titles if cell.column > code_column and cell.column >= first_title]
+    heads = [cell for cell in titles if cell.column > code_column]
     matrix = _MatrixStore(code_column, first_title, {cell.column for cell in heads})
     for row, filled in top.items():
         if row > title_row:
             matrix.take(filled)
     matrix.take(rest)
     skipped = {row for row, first, last in totals() if first <= code_column <= last}
+    notes = _note_columns(heads, first_title, set(matrix.columns))
+    heads = [cell for cell in heads if cell.column not in notes]
+    matrix.others = [cell for cell in matrix.others if cell.column not in notes]
     rows = np.array(matrix.rows, dtype=np.int64)
     kept = ~np.isin(rows, list(skipped))
     return RawMatrix(
@@ -111,6 +109,11 @@ def read_matrix(cells: Iterable[Cell], row_codes: Collection[str], column_codes:
         np.array(matrix.columns, dtype=np.int64)[kept], np.array(matrix.values, dtype=np.float64)[kept],
         _outside(matrix.others, skipped), _outside(matrix.strays, skipped),
     )
+
+
+def _note_columns(heads: Sequence[Cell], first_title: int, with_figures: set[int]) -> set[int]:
+    """Columns left of the first known code that hold no figures: names and notes, no part of the matrix."""
+    return {cell.column for cell in heads if cell.column < first_title and cell.column not in with_figures}
 
 
 def _outside(cells: list[Cell], rows: set[int]) -> list[Cell]:

@@ -193,18 +193,24 @@ def read_list(cells: Iterable[Cell], wanted: Mapping[str, bool], required: Seque
         if row > titles.row:
             _hand_out(filled, take)
     _hand_out(rest, take)
-    totals_rows = totals()
-    sums: list[tuple[str, int, float]] = []
-    for title, store in columns.items():
-        dropped = {row for row, first, last in totals_rows if first <= store.column <= last}
-        if dropped and isinstance(store, NumberColumn):
-            sums += [(title, row, value) for row, value in zip(store.rows, store.values, strict=True)
-                     if row in dropped]
-        _drop_rows(store, dropped)
+    sums = _take_out_totals(columns, totals())
     every = [np.frombuffer(store.rows, dtype=np.int64) for store in columns.values() if store.rows]
     odd = [cell.row for store in columns.values() for cell in store.others]
     rows = np.unique(np.concatenate([*every, np.array(odd, dtype=np.int64)]))
-    return RawList(titles, columns, rows, tuple(sums))
+    return RawList(titles, columns, rows, sums)
+
+
+def _take_out_totals(columns: Mapping[str, NumberColumn | TextColumn], totals: Sequence[tuple[int, int, int]],
+                     ) -> tuple[tuple[str, int, float], ...]:
+    """Take totals rows out of the columns; gives their numbers with title and row."""
+    sums: list[tuple[str, int, float]] = []
+    for title, store in columns.items():
+        dropped = {row for row, first, last in totals if first <= store.column <= last}
+        if dropped and isinstance(store, NumberColumn):
+            numbers = zip(store.rows, store.values, strict=True)
+            sums += [(title, row, value) for row, value in numbers if row in dropped]
+        _drop_rows(store, dropped)
+    return tuple(sums)
 
 
 def read_rows(cells: Iterable[Cell], wanted: Collection[str],
