@@ -16,7 +16,8 @@ Sheets are found by their names, columns by their titles, whatever the case, the
 behind them. Columns stand in any order; other sheets and columns are left alone. The title row is the first of the
 first 30 rows that holds all required titles, so headings and examples above it do no harm.
 
-- Codes are text, trimmed; `7` and `7.0` are one code. Codes that differ in case or inner spacing only are an error.
+- Codes are text, trimmed; `7` and `7.0` are one code. Codes that differ in case or inner spacing only are an
+  error.
 - A number is a number cell, or text that can mean one number only: `" 12 "`, `"12.5"`, `"1 200"`. Text with a comma,
   and text such as `"1.200"`, is an error that shows how it can be read. No figure may be larger than 1e12.
 - yes/no cells take yes, no, y, n, true, false, 1, 0 and Boolean cells. Dates are date cells or year-month-day texts.
