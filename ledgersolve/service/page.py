@@ -2,6 +2,7 @@
 
 import base64
 import hashlib
+import math
 from html import escape
 from typing import Any
 
@@ -106,7 +107,7 @@ def _running(one: dict[str, Any]) -> str:
     if one.get("best") is not None:
         words.append(f"best cost so far {float(one['best']):,.2f}")
     if one.get("saving") is not None:
-        words.append(f"at most {float(one['saving']):,.2f} could be saved")
+        words.append(f"at most {_up(float(one['saving']), 2):,.2f} could be saved")
     if one.get("left") is not None:
         words.append(f"at most {_duration(float(one['left']))} left")
     elapsed = _duration(float(one.get("elapsed") or 0.0))
@@ -122,8 +123,8 @@ def _returned(one: dict[str, Any]) -> str:
     words = [str(one["verdict"])] if one.get("verdict") else []
     if one.get("total_cost") is not None:
         words.append(f"total cost {float(one['total_cost']):,.2f}")
-    if one.get("gap_pct") is not None:
-        words.append(f"at most {float(one['gap_pct']):.3f} % above the best possible")
+    if one.get("gap_pct"):
+        words.append(f"at most {_up(float(one['gap_pct']), 3):.3f} % above the best possible")
     if one.get("faults"):
         words.append(f"{int(one['faults']):,} to fix")
     return (
@@ -138,6 +139,11 @@ def _fix(one: dict[str, Any]) -> str:
     where = " ".join(filter(None, (str(first.get("sheet") or ""), str(first.get("cell") or ""))))
     what = f"{where}: {first.get('found')}. {first.get('remedy')}" if first else str(one.get("reason") or "")
     return f'<div class="name">{_text(one.get("name"))}</div><div class="what">{_text(what)}</div>'
+
+
+def _up(figure: float, digits: int) -> float:
+    """Rounded, never in our favour."""
+    return math.ceil(figure * 10**digits) / 10**digits
 
 
 def _duration(seconds: float) -> str:

@@ -88,7 +88,7 @@ class Settler:
         for folder, owner, entries in self._folders(self.inbox, "", 0):
             marks = self._marks_in(folder, entries)
             for entry in entries:
-                if is_temporary(entry.name) or (entry.is_folder and not _too_deep(self.inbox, entry.path)):
+                if is_temporary(entry.name) or (entry.is_folder and not self._is_strange(entry)):
                     continue
                 seen.add(entry.path)
                 drops.append(self._judge(entry, owner or f"account {entry.status.st_uid}", marks))
@@ -120,6 +120,11 @@ class Settler:
         """Start all observations over, as after a share outage."""
         self._watched.clear()
         self._marks.clear()
+
+    def _is_strange(self, folder: Entry) -> bool:
+        """Whether a folder is worth a word: too deep to be walked, or called like a workbook."""
+        too_deep = len(folder.path.relative_to(self.inbox).parts) > DEEPEST
+        return too_deep or folder.name.lower().endswith((".xlsx", ".xlsm"))
 
     def _marks_in(self, folder: Path, entries: list[Entry]) -> dict[str, float]:
         """Names that a spreadsheet program marks as open, with the time since the mark last changed."""
@@ -195,16 +200,12 @@ def _signature(entry: Entry) -> Signature:
     return (status.st_size, status.st_mtime_ns, status.st_ctime_ns, status.st_ino, status.st_dev)
 
 
-def _too_deep(inbox: Path, path: Path) -> bool:
-    return len(path.relative_to(inbox).parts) > DEEPEST
-
-
 def _kind_words(entry: Entry) -> str:
     mode = entry.status.st_mode
     if stat.S_ISLNK(mode):
         return "a link, not a file"
     if stat.S_ISDIR(mode):
-        return "a folder too deep inside other folders"
+        return "a folder named like a workbook, or too deep inside other folders"
     return "a device or pipe, not a file"
 
 
