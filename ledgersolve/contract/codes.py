@@ -25,6 +25,7 @@ class Codes:
 
     ``rows`` are the places in the list where each first stands; without faults 0, 1, 2, ...
     ``whole`` is False where the list has rows whose code is broken: an unknown code may be one of them.
+    ``doubled`` counts rows that repeat another's code: one of them may be a code lost to a slip.
     """
 
     sheet: str
@@ -32,6 +33,7 @@ class Codes:
     number: Mapping[str, int] = field(default_factory=dict)
     rows: tuple[int, ...] = ()
     whole: bool = True
+    doubled: int = 0
 
 
 def codes_of(table: CheckedList, faults: Faults) -> Codes:
@@ -39,23 +41,23 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
     title = table.contract.key[0]
     rows: dict[str, int] = {}
     forms: dict[str, str] = {}
-    whole = table.whole
+    doubled = 0
     for row, code in enumerate(table.texts(title)):
         if not code:
             continue
         form = alike(code)
         if code in rows:
             _report_twice(table, title, row, rows[code], code, faults)
-            whole = False
+            doubled += 1
         elif form in forms:
             _report_alike(table, title, row, forms[form], rows[forms[form]], faults)
             rows[code] = row
-            whole = False
+            doubled += 1
         else:
             rows[code] = row
             forms[form] = code
     number = {code: place for place, code in enumerate(rows)}
-    return Codes(table.sheet, tuple(rows), number, tuple(rows.values()), whole)
+    return Codes(table.sheet, tuple(rows), number, tuple(rows.values()), table.whole, doubled)
 
 
 def _report_twice(table: CheckedList, title: str, row: int, first: int, code: str, faults: Faults) -> None:
@@ -105,9 +107,13 @@ def _report_unknown(sheet: str, title: str, lost: Mapping[str, Sequence[Place]],
                     faults: Faults) -> None:
     one_by_one = len(lost) <= NAMED
     gathered: list[tuple[Place, str]] = []
+    slips = known.doubled
     for code, places in lost.items():
         near = nearest(code, known.codes) if one_by_one or len(gathered) < NAMED else None
         if near is None and not known.whole:
+            continue
+        if near is None and slips > 0 and len(places) > 1:
+            slips -= 1  # used again and again: most likely the code that a repeated row has lost
             continue
         if one_by_one:
             faults.many(sheet, places, title, partial(_same, unknown_code(code, near, known.sheet)),
