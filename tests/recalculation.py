@@ -7,7 +7,7 @@ import math
 import os
 import shutil
 import subprocess
-from collections.abc import Iterable
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -45,39 +45,37 @@ def profile(folder: Path) -> Path:
     return folder / "profile"
 
 
-def convert(source: Path, folder: Path, kind: str = "xlsx", seconds: float = 240.0) -> Path:
-    """Convert a workbook with LibreOffice, recalculated; gives the new file in ``folder``."""
+def convert(sources: Sequence[Path], folder: Path, kind: str = "xlsx", seconds: float = 280.0) -> list[Path]:
+    """Convert workbooks with LibreOffice, recalculated, in one go; gives the new files in ``folder``."""
     if OFFICE is None:
         raise RuntimeError("LibreOffice is not installed")
     target = folder / "converted"
     target.mkdir(parents=True, exist_ok=True)
     command = [OFFICE, f"-env:UserInstallation={profile(folder).as_uri()}", "--headless", "--norestore",
-               "--convert-to", kind, "--outdir", str(target), str(source)]
+               "--convert-to", kind, "--outdir", str(target), *map(str, sources)]
     done = subprocess.run(command, capture_output=True, text=True, timeout=seconds, check=False,
                           env={**os.environ, "HOME": str(folder)})
-    made = target / f"{source.stem}.{kind.split(':')[0]}"
-    if not made.is_file():
+    made = [target / f"{source.stem}.{kind}" for source in sources]
+    if not all(path.is_file() for path in made):
         raise RuntimeError(f"LibreOffice gave nothing: {done.stdout} {done.stderr}")
     return made
 
 
-def recalculated(source: Path, folder: Path) -> "openpyxl.Workbook":
-    """Give the values of the workbook after LibreOffice has calculated every formula anew."""
-    return openpyxl.load_workbook(convert(source, folder), data_only=True)
+def recalculated_all(sources: Sequence[Path], folder: Path) -> "dict[Path, openpyxl.Workbook]":
+    """Give the values of workbooks (of different names) after LibreOffice has calculated every formula anew."""
+    made = convert(sources, folder)
+    return {source: openpyxl.load_workbook(path, data_only=True) for source, path in zip(sources, made, strict=True)}
 
 
-def differences(source: Path, folder: Path, sheets: Iterable[str] | None = None) -> list[Difference]:
-    """List the formulas (of these sheets) whose cached value differs from the recalculated one.
+def differences(source: Path, again: "openpyxl.Workbook") -> list[Difference]:
+    """List the formulas of ``source`` whose cached value differs from the recalculated one.
 
     Figures count as equal within 1e-9 of their size; no text and an empty cell are the same.
     """
     formulas = openpyxl.load_workbook(source)
     cached = openpyxl.load_workbook(source, data_only=True)
-    again = recalculated(source, folder)
     found = []
-    for name in sheets if sheets is not None else formulas.sheetnames:
-        if name not in formulas.sheetnames:
-            continue
+    for name in formulas.sheetnames:
         for row in formulas[name].iter_rows():
             for cell in row:
                 if cell.data_type != "f":

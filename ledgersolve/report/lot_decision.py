@@ -116,9 +116,9 @@ def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
               value(report.plan.stock), "#,##0.0", f"=SUM({at.stock.whole()})/COLUMNS({at.stock.line(0)})"),
     ]
     if at.may_wait:
-        rows.append(_sum_row(f"Late units x {case.period_unit}s", None if before is None else before.late, report.plan.late))
+        rows.append(_sum_row(f"Late (units x {case.period_unit}s)", None if before is None else before.late, report.plan.late))
     if at.may_lose:
-        rows.append(_sum_row("Units never delivered", None if before is None else before.lost, report.plan.lost))
+        rows.append(_sum_row("Never delivered (units)", None if before is None else before.lost, report.plan.lost))
     if case.resources:
         rows.append(_sum_row("Overtime (time units)", None if before is None else before.overtime, report.plan.overtime))
     return rows

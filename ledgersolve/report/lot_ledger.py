@@ -38,7 +38,7 @@ class _Kind:
         """Quantity in one period."""
         cell = self.block.cell(item, period)
         value = float(self.quantity[item, period])
-        return Figure(float(value > 0), f"IF({cell}>0,1,0)") if self.counted else Figure(value, cell)
+        return Figure(float(value > 0), f'COUNTIF({cell},">0")') if self.counted else Figure(value, cell)
 
 
 def lot_ledger(at: LotPlaces) -> Ledger:
