@@ -41,14 +41,12 @@ class Faults:
     def add(self, sheet: str, place: Place | None, title: str, fault: Fault, *, severity: Severity = "error",
             group: str = "") -> None:
         """Add one fault; faults of one kind, sheet, title and ``group`` belong together."""
-        problem = Problem(
-            severity, fault.kind, sheet, address(*place) if place else "", title, fault.found, fault.expected,
-            fault.remedy, recheck=fault.recheck, low=fault.low, high=fault.high,
-        )
         key = (severity, fault.kind, sheet, title, group)
         entries = self._groups.setdefault(key, [])
         if len(entries) <= FEW or place is None:
-            entries.append((place, problem))
+            entries.append((place, Problem(
+                severity, fault.kind, sheet, address(*place) if place else "", title, fault.found, fault.expected,
+                fault.remedy, recheck=fault.recheck, low=fault.low, high=fault.high)))
         if place is not None:
             self._bulk.setdefault(key, []).append(place)
 

@@ -33,7 +33,8 @@ _NOTES = {
   distance (x the customer's demand, where costs are for the whole demand).
 - Its distance is the one in `Lanes`, else in `Distances`, else great circle (sphere of radius 6371.0088 km) x Road
   factor. The road factor does not touch distances that are given.
-- An empty cell of `Lane costs` is no lane, unless a row of `Lanes` names the pair. A row with Allowed = no is no lane.
+- An empty cell of `Lane costs` is no lane, unless a row of `Lanes` names the pair. A row with Allowed = no is no
+  lane.
 - Without Cost per unit and distance, pairs that are not listed do not exist; with it, they are costed from
   coordinates.
 - A workbook holds at most 40 million pairs of sites and customers.
