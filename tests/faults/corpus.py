@@ -49,10 +49,11 @@ def lot() -> Sheets:
     """A good lot-sizing workbook with resources, families, receipts and period costs."""
     items = [
         {"Item": "SPADE", "Setup cost": 90, "Unit cost": 2, "Holding cost": 0.5, "Opening stock": 10,
-         "Safety stock": 2, "Least lot": 0, "Most lot": 900, "Resource": "Forge", "Time per unit": 0.1, "Setup time": 1,
-         "Family": "Blades"},
+         "Safety stock": 2, "Least lot": 0, "Most lot": 900, "Resource": "Forge",
+         "Time per unit": 0.1, "Setup time": 1, "Family": "Blades"},
         {"Item": "RAKE", "Setup cost": 80, "Unit cost": 3, "Holding cost": 0.4, "Opening stock": 0,
-         "Safety stock": 0, "Least lot": 5, "Most lot": 900, "Resource": "Forge", "Time per unit": 0.1, "Setup time": 1},
+         "Safety stock": 0, "Least lot": 5, "Most lot": 900, "Resource": "Forge",
+         "Time per unit": 0.1, "Setup time": 1},
     ]
     start = datetime.date(2027, 1, 4)
     periods = [{"Period": f"W{k}", "Start": start + datetime.timedelta(7 * k)} for k in range(1, 5)]
