@@ -195,8 +195,11 @@ class _Run:
     ) -> Path:
         names = plan_names(self.source, wanted)
         made = sheets(self.facts(), names)
+        # a copy that is to be edited must not open with two tabs selected, where an edit hits both
+        edited = word == "to fix"
         return _publish(
-            self.into, self.shown_name, word, lambda path: graft(self.source, path, made, marks)
+            self.into, self.shown_name, word,
+            lambda path: graft(self.source, path, made, marks, free_tab=edited),
         )
 
     def facts(self) -> RunFacts:
