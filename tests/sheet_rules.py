@@ -192,8 +192,8 @@ def most_patterns(sheet: str, title: str) -> int:
         return 20  # one rule a row, one figure a row
     if sheet.startswith("To fix"):
         return 10  # one kind of fault a row
-    if sheet.startswith("Plan deliveries") and title.startswith("Distance"):
-        return 2  # a cell of its own, or straight line x road factor
+    if sheet.startswith("Plan deliveries") and title.startswith(("Distance", "Rate")):
+        return 2  # a cell of its own, or straight line x road factor, distance x rate
     return 2 if sheet.startswith("Plan stock") else 1  # with and without a receipt
 
 

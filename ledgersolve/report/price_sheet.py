@@ -14,7 +14,7 @@ from ledgersolve.workbook.cells import column_letters
 from ledgersolve.workbook.origins import MatrixMap
 from ledgersolve.workbook.sheets import ResultSheet
 
-COPIED_LANES = 400_000
+COPIED_LANES = 200_000
 """Sites x customers up to which lane costs are laid out beside the prices."""
 LINKED_LANES = 40_000
 """Sites x customers up to which each laid-out cost is a formula into its own cell."""
@@ -95,22 +95,28 @@ def _words(at: SitePlaces, laid_out: bool) -> str:
 
 
 def _own_matrix(at: SitePlaces, certificate: Certificate) -> MatrixMap | None:
-    """The analyst's matrix of lane costs, if a formula can use it as it stands."""
+    """The analyst's matrix of lane costs, if a formula can use its rows as they stand.
+
+    That is: all lanes come from it, as numbers, its columns are the customers and nothing else, and no rule
+    forbids a lane that stands in it.
+    """
     case, origins = at.report.case, at.report.workbook.origins
     matrix = origins.matrices.get("Lane costs")
-    if matrix is None or "Lanes" in origins.tables or matrix.not_numbers:
-        return None
-    if any(code not in matrix.rows for code in case.sites):
+    if matrix is None or "Lanes" in origins.tables or at.report.workbook.road_cost is not None:
         return None
     places = sorted(matrix.columns.get(code, -1) for code in case.customers)
-    if places[0] < 1 or places[-1] - places[0] + 1 != case.n:
+    if any(code not in matrix.rows for code in case.sites) or places[0] < 1 or places[-1] - places[0] + 1 != case.n:
         return None
-    numbers = np.array([[origins.matrix_number("Lane costs", s, c) is not None for c in case.customers]
-                        for s in case.sites])
-    listed = np.isfinite(case.lane_cost) & certificate_customers(certificate)
-    live = np.asarray(certificate.usable.any(axis=1)).reshape(-1, 1)
-    same = (numbers & certificate_customers(certificate) & live) == (certificate.usable & listed)
-    return matrix if bool(same.all()) else None
+    live = np.asarray(certificate.usable.any(axis=1)).reshape(-1, 1) & certificate_customers(certificate)
+    listed = np.isfinite(case.lane_cost)
+    if (live & listed & ~certificate.usable).any():
+        return None
+    rows = [matrix.rows[code] for code in case.sites]
+    columns = [matrix.columns[code] for code in case.customers]
+    if any((row, column) in matrix.not_numbers for row in rows for column in columns):
+        return None
+    missing = zip(*np.nonzero(live & ~listed), strict=True)
+    return matrix if all((rows[j], columns[i]) in matrix.blanks for j, i in missing) else None
 
 
 def certificate_customers(certificate: Certificate) -> Flags:

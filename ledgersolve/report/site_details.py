@@ -7,7 +7,7 @@ import numpy as np
 
 from ledgersolve.report import names, style
 from ledgersolve.report.ledger import Ledger
-from ledgersolve.report.site_places import SitePlaces, distance_source
+from ledgersolve.report.site_places import LEDGER_DELIVERIES, SitePlaces, distance_source, lane_source
 from ledgersolve.report.tables import FIRST_ROW, Column, detail_sheet, fitting_width
 from ledgersolve.site_selection.case import CLOSED, FREE, OPEN
 from ledgersolve.workbook.sheets import LiveFormat, ResultSheet, Scalar, Style
@@ -132,7 +132,7 @@ def _cost_columns(at: SitePlaces, ledger: Ledger) -> list[Column]:
 def _lane_amounts(at: SitePlaces) -> np.ndarray:
     case = at.report.case
     rate = case.lane_cost[at.sites, at.customers]
-    return rate * (at.shares if case.cost_is_whole else at.volumes)
+    return rate * at.lane_quantities
 
 
 def plan_deliveries(at: SitePlaces, ledger: Ledger) -> ResultSheet:
@@ -153,13 +153,35 @@ def plan_deliveries(at: SitePlaces, ledger: Ledger) -> ResultSheet:
                     zip(count, pairs, strict=True)]),
         Column("cost", f"Lane cost ({at.money_unit})", _lane_amounts(at).tolist(),
                style.number(style.money_format(case.currency)), 16,
-               [ledger.amount(("Lane", j, i)) for j, i in pairs]),
+               _cost_formulas(at, ledger, pairs)),
+        *_rate_column(at),
         *_distance_columns(at),
         *_limit_columns(at),
     ]
-    words = ("Who serves whom. Shares are the plan; volumes follow from the demand cells, costs stand in the ledger. "
-             "Sorted by site; use the filter for one site or customer.")
+    words = "Who serves whom. Shares are the plan; volumes follow from the demand cells, "
+    words += (f"costs are quantity x rate: above {LEDGER_DELIVERIES:,} deliveries the ledger has one line a site. "
+              if at.compact else "costs stand in the ledger. ")
+    words += "Sorted by site; use the filter for one site or customer."
     return detail_sheet(at.name(names.PLAN_DELIVERIES), "Deliveries in the plan", words, columns, style.MOSS)
+
+
+def _cost_formulas(at: SitePlaces, ledger: Ledger, pairs: Sequence[tuple[int, int]]) -> list[str]:
+    """Cost of each delivery: its ledger line, or quantity x rate where the ledger has one line a site."""
+    if not at.compact:
+        return [ledger.amount(("Lane", j, i)) for j, i in pairs]
+    where, quantity = at.deliveries_at, "share" if at.report.case.cost_is_whole else "volume"
+    return [f"{where.here(quantity, k)}*{where.here('rate', k)}" for k in range(len(pairs))]
+
+
+def _rate_column(at: SitePlaces) -> list[Column]:
+    if not at.compact:
+        return []
+    case = at.report.case
+    sources = [lane_source(at, k).figure for k in range(at.sites.size)]
+    basis = "whole demand" if case.cost_is_whole else case.demand_unit
+    return [Column("rate", f"Rate ({case.currency} per {basis})", [s.value for s in sources],
+                   style.number(style.rate_format(case.currency, [s.value for s in sources])), 14,
+                   [s.formula for s in sources])]
 
 
 def _distance_columns(at: SitePlaces) -> list[Column]:

@@ -56,12 +56,27 @@ def _lanes(at: SitePlaces) -> Part:
     bounds = np.flatnonzero(np.diff(at.sites, prepend=-1))
     for first, last in zip(bounds.tolist(), [*bounds[1:].tolist(), at.sites.size], strict=True):
         j = int(at.sites[first])
+        count = style.counted(last - first, "delivery", "deliveries")
+        if at.compact:
+            groups.append(group_of_lines([_all_deliveries(at, j, count)]))
+            continue
         lines = [_delivery(at, k) for k in range(first, last)]
-        groups.append(Group(("Lanes", j, 0), case.sites[j], f"{style.counted(last - first, 'delivery', 'deliveries')}",
-                            lines))
+        groups.append(Group(("Lanes", j, 0), case.sites[j], count, lines))
     unit = "share of the demand" if whole else f"{case.demand_unit}{at.per}"
     rate = f"{case.currency} for the whole demand" if whole else f"{case.currency} per {case.demand_unit}"
     return Part(LANE, unit, rate, "0.00####" if whole else at.demand_format, groups)
+
+
+def _all_deliveries(at: SitePlaces, j: int, count: str) -> Line:
+    """One line for all deliveries of a site; each delivery has its rate and cost in the table of deliveries."""
+    case, where = at.report.case, at.deliveries_at
+    own = at.sites == j
+    amount = float((case.lane_cost[j, at.customers[own]] * at.lane_quantities[own]).sum())
+    site = at.sites_at.cell("site", j)
+    rate = Figure(amount, f"SUMIF({where.span('site')},{site},{where.span('cost')})")
+    return Line(("Lanes", j, 0), case.sites[j], f"all {count}", Figure(1.0), rate, None,
+                f"sum of the costs in {at.name(names.PLAN_DELIVERIES)}", "all together",
+                f"{case.currency} for all together")
 
 
 def _delivery(at: SitePlaces, k: int) -> Line:

@@ -13,6 +13,10 @@ from ledgersolve.site_selection.case import FREE, Floats, Ints
 from ledgersolve.workbook.origins import CellRef
 
 
+LEDGER_DELIVERIES = 25_000
+"""Most deliveries with a line each in the ledger; beyond, each site has one line for all of its deliveries."""
+
+
 @dataclass(frozen=True)
 class SitePlaces:
     """A report with its settled sheet names, and the order in which its tables stand.
@@ -54,6 +58,11 @@ class SitePlaces:
         return self.shares * self.report.case.demand[self.customers]
 
     @cached_property
+    def lane_quantities(self) -> Floats:
+        """Shape (k,): what a lane's rate is paid on: units, or shares on whole-demand costs."""
+        return self.shares if self.report.case.cost_is_whole else self.volumes
+
+    @cached_property
     def load(self) -> Floats:
         """Shape (m,): units through each site."""
         return np.bincount(self.sites, weights=self.volumes, minlength=self.report.case.m).astype(np.float64)
@@ -90,9 +99,15 @@ class SitePlaces:
         return np.full(self.sites.size, np.nan) if distance is None else distance[self.sites, self.customers]
 
     @cached_property
+    def compact(self) -> bool:
+        """Whether there are too many deliveries for a ledger line each: rates then stand in the table of deliveries."""
+        return self.sites.size > LEDGER_DELIVERIES
+
+    @cached_property
     def deliveries_at(self) -> Places:
         """Places of the table of deliveries."""
         keys = ["site", "site name", "customer", "customer name", "share", "volume", "cost"]
+        keys += ["rate"] if self.compact else []
         keys += ["distance", "straight"] if self.measured else []
         keys += ["allowed"] if self.promised else []
         keys += ["most"] if self.report.case.lane_most is not None else []

@@ -46,7 +46,7 @@ def site_proof(at: SitePlaces, ledger: Ledger) -> SiteProof:
         row = _write_bound(at, ledger, sheet, row, certificate, prices)
         sheets.append(prices.sheet)
     else:
-        row = _no_prices(at, sheet, row)
+        row = _no_prices(at, sheet, row, certificate)
     write_audit(sheet, row + 1, at.report.audit)
     heading(sheet, "Proof", "What you can check yourself: that the plan keeps every rule, and that no plan can cost "
             "much less. Change a plan cell in a Plan sheet and a check turns BROKEN.", 6)
@@ -76,11 +76,14 @@ def _certificate(at: SitePlaces) -> tuple[Certificate | None, PriceSheet | None]
     return price_sheet(at, lanes, certificate)
 
 
-def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int) -> int:
+def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certificate | None) -> int:
     sheet.put(row, 0, "No plan can cost less than", style.SECTION)
     bound = at.report.solved.bound
     words = ("For this workbook the search left no prices per customer, so that the lower bound cannot be checked in a "
              "sheet; it rests on the search alone.")
+    if certificate is not None:
+        words = (f"The prices of {at.report.case.n:,} customers are too many to lay out side by side in a sheet, so that "
+                 "the lower bound rests on the program.")
     if bound is not None:
         words += f" The bound: {style.money_words(bound, at.report.case.currency, 'down')}."
     paragraph(sheet, row + 1, 0, 5, words, style.TEXT)
