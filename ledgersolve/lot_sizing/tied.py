@@ -23,8 +23,8 @@ SMALL, FIRST_SHARE_SMALL = 250, 0.2
 """Setups up to which the decomposition gets a short share of the time, and that share."""
 WHOLE_AFTER, FIRST_SHARE = 2000, 0.5
 """Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
-RESCUE_SHARE = 0.3
-"""Share of the time kept for the search of the least time missing, on cases too large for the whole model."""
+RESCUE_SHARE = 0.4
+"""Share of the time left for the search of the least time missing, where the whole model comes after it."""
 
 
 def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
@@ -40,15 +40,18 @@ def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
     enough = first.gap is not None and first.gap <= limits.gap
     if first.verdict is Verdict.NO_PLAN_EXISTS or enough or clock.over():
         return first
-    if cells <= WHOLE_AFTER:
-        second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
-        return _after(first, second)
-    return first if first.plan is not None else _rescued(case, first, clock)
+    if first.plan is None and case.resources:
+        first = _rescued(case, first, clock, RESCUE_SHARE if cells <= WHOLE_AFTER else 1.0)
+    if first.verdict is Verdict.NO_PLAN_EXISTS or cells > WHOLE_AFTER or clock.over():
+        return first
+    second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
+    return _after(first, second)
 
 
-def _rescued(case: Case, first: Solved[Plan], clock: Clock) -> Solved[Plan]:
-    """Look for the least time missing; go on from a plan that lacks none."""
-    limits = replace(clock.limits, seconds=max(clock.left() * 0.7, 1e-3), gap=0.5)
+def _rescued(case: Case, first: Solved[Plan], clock: Clock, share: float) -> Solved[Plan]:
+    """Look for the least time missing in a share of the time left; go on from a plan that lacks none."""
+    seconds = max(share * clock.left(), 1e-3)
+    limits = replace(clock.limits, seconds=0.7 * seconds, gap=0.5)
     least = solve_decomposed(short_of_time(case, held=0.0), limits)
     size = float(np.where(np.isfinite(case.capacity), case.capacity, 0.0).max(initial=0.0))
     if least.bound is not None and least.bound > TINY * max(size, 1e-3):
@@ -56,7 +59,8 @@ def _rescued(case: Case, first: Solved[Plan], clock: Clock) -> Solved[Plan]:
     if least.plan is None or shortfall(case, least.plan.made).any() or clock.over():
         return replace(first, stages=first.stages + least.stages)
     plan = plan_from_made(case, least.plan.made)
-    return _after(first, solve_decomposed(case, replace(clock.limits, seconds=clock.left()), plan))
+    limits = replace(clock.limits, seconds=min(0.3 * seconds, clock.left()))
+    return _after(first, solve_decomposed(case, limits, plan))
 
 
 def _after(first: Solved[Plan], second: Solved[Plan]) -> Solved[Plan]:
