@@ -5,8 +5,6 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
-from scipy.sparse import coo_matrix
-from scipy.sparse.csgraph import connected_components
 
 from ledgersolve.lot_sizing.case import Case, Flags, Floats, Ints
 from ledgersolve.lot_sizing.plan import Plan
@@ -71,12 +69,25 @@ def groups(case: Case) -> list[Group]:
         [n + slim.item_resource[on], n + r + slim.item_family[kin], n + slim.family_resource[placed]]
     )
     size = n + r + f
-    ties = coo_matrix((np.ones(starts.size), (starts, ends)), (size, size))
-    label = connected_components(ties, directed=False)[1][:n]
+    label = _components(starts, ends, size)[:n]
     alone = (slim.item_resource < 0) & (slim.item_family < 0)
     label[alone] = size
     marks = dict.fromkeys(label.tolist())
     return [part(slim, np.flatnonzero(label == mark), shared=mark != size) for mark in marks]
+
+
+def _components(starts: Ints, ends: Ints, size: int) -> Ints:
+    """Shape (size,): one number for all nodes that links join, the least node among them."""
+    label = np.arange(size)
+    while True:
+        low = np.minimum(label[starts], label[ends])
+        spread = label.copy()
+        np.minimum.at(spread, starts, low)
+        np.minimum.at(spread, ends, low)
+        spread = spread[spread]
+        if bool((spread == label).all()):
+            return label
+        label = spread
 
 
 def part(case: Case, items: Ints, *, shared: bool = True) -> Group:
