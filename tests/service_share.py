@@ -157,6 +157,20 @@ class RandomErrors(Plan):
             raise OSError(code, os.strerror(code))
 
 
+class StaleDisk(Disk):
+    """Listings are up to so many listings old, as a network folder shows them from its cache."""
+
+    def __init__(self, seed: int, share: float = 0.5) -> None:
+        self.random, self.share = Random(seed), share
+        self.cached: dict[Path, list[str]] = {}
+
+    def names(self, folder: Path) -> list[str]:
+        """An old listing now and then, also of a folder that is gone."""
+        if folder not in self.cached or self.random.random() >= self.share:
+            self.cached[folder] = super().names(folder)
+        return self.cached[folder]
+
+
 class AtOnce(Executor):
     """Runs what is submitted before it returns."""
 

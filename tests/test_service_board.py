@@ -11,8 +11,9 @@ from html import escape, unescape
 
 import pytest
 
-from ledgersolve.service.board import as_text, boot, gather, health, stale_after, status, write_board
+from ledgersolve.service.board import as_text, boot, gather, health, stale_after, status, sweep_beacons, write_board
 from ledgersolve.service.disk import Disk
+from ledgersolve.service.holder import describe
 from ledgersolve.service.layout import Layout, prepare
 from ledgersolve.service.page import render
 from tests.service_share import names
@@ -78,8 +79,12 @@ def test_a_dead_service_is_seen_as_dead(layout):
     assert health(layout.folder) == 1
     write(layout, state="stopped")
     assert health(layout.folder) == 1
-    write(layout, state="suspended")
-    assert health(layout.folder) == 1
+    for state in ("suspended", "held"):
+        write(layout, state=state)
+        assert health(layout.folder) == 1
+    for state in ("paused", "quiet hours"):
+        write(layout, state=state)
+        assert health(layout.folder) == 0
     assert health(layout.folder / "Inbox") == 2
 
 
@@ -107,6 +112,17 @@ def test_a_live_service_makes_up_for_a_dead_one(layout):
     write(layout, id="live", running=[])
     state = status(layout.folder)
     assert state["well"] and state["running"] == []
+
+
+def test_signs_of_life_of_ended_services_are_swept(layout):
+    """One that stopped in good order and one known to be dead go; others stay."""
+    write(layout, id="stopped", state="stopped")
+    write(layout, id="dead", holder=describe() | {"started": "1"})
+    write(layout, id="elsewhere", holder={"host": "x", "pid": 1})
+    write(layout, id="here", holder=describe())
+    sweep_beacons(layout, Disk())
+    left = ["elsewhere.json", "here.json"] + (["dead.json"] if "place" not in describe() else [])
+    assert names(layout.hosts) == sorted(left)
 
 
 def test_damaged_signs_of_life_are_passed_over(layout):

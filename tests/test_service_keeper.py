@@ -94,15 +94,26 @@ def test_hours_go_on_after_a_restart(tmp_path):
     assert scene.done() == []
 
 
-def test_an_original_whose_answer_is_not_published_is_never_deleted(tmp_path):
-    """A done job that still holds its payload is published, not deleted."""
+def test_an_original_whose_answer_cannot_be_published_is_never_deleted(tmp_path, monkeypatch):
+    """A done job that still holds its payload is kept, whatever its age."""
     scene = Scene(tmp_path, 1, keep_days=0.1, keep_at_least=0)
     (job,) = scene.done()
     home = scene.layout.done / job
     (returned,) = (tmp_path / "Returned").iterdir()
     returned.rename(home / "payload.1")
+    monkeypatch.setattr(scene.protocol, "publish", lambda view: None)
     scene.serve(scene.keeper, 1.0)
     assert scene.done() == [job]
+
+
+def test_any_process_publishes_what_stayed_behind(tmp_path):
+    """The process that finished the job may be gone: the hourly round of another one finds the payload."""
+    scene = Scene(tmp_path, 1)
+    (job,) = scene.done()
+    (returned,) = (tmp_path / "Returned").iterdir()
+    returned.rename(scene.layout.done / job / "payload.1")
+    scene.serve(scene.fresh(), 0.1)
+    assert verify(tmp_path, settled=True) == []
 
 
 def test_an_answer_that_showed_up_late_is_published(tmp_path):

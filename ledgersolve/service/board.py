@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from ledgersolve.service.disk import Disk
+from ledgersolve.service.holder import is_gone
 from ledgersolve.service.layout import Layout
 from ledgersolve.service.page import render
 
@@ -74,6 +75,15 @@ def gather(layout: Layout, disk: Disk, own: dict[str, Any] | None = None) -> dic
     }
 
 
+def sweep_beacons(layout: Layout, disk: Disk) -> None:
+    """Remove the signs of life of processes that ended in good order, or are known to be dead."""
+    for name in disk.names(layout.hosts):
+        with suppress(OSError, ValueError, AttributeError):
+            found = json.loads(disk.read(layout.hosts / name, 1 << 24))
+            if found.get("state") == "stopped" or is_gone(found.get("holder") or {}):
+                disk.remove(layout.hosts / name)
+
+
 def _all(beacons: Iterable[dict[str, Any]], key: str) -> list[dict[str, Any]]:
     """Entries of all processes, equal ones (two processes see the same Inbox) once."""
     found: dict[str, dict[str, Any]] = {}
@@ -135,7 +145,9 @@ def _trouble(service: dict[str, Any]) -> str:
         return "its first scan is not complete yet"
     if age > patience:
         return f"the last complete look at Inbox was {age:.0f} s ago"
-    return "" if service.get("state") != "suspended" else "the share is out of reach"
+    return {"suspended": "the share is out of reach", "held": "nothing new can be taken in"}.get(
+        str(service.get("state")), ""
+    )
 
 
 def boot() -> str:

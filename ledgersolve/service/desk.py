@@ -267,8 +267,7 @@ class Desk:
             with suppress(OSError, ValueError):
                 found = json.loads(self.protocol.disk.read(path))
                 words = found if isinstance(found, dict) else {}
-            best, bound, limit = words.get("best"), words.get("bound"), words.get("limit")
-            spent = words.get("seconds") or 0.0
+            best, bound = words.get("best"), words.get("bound")
             yield {
                 "name": tray.name,
                 "job": tray.job,
@@ -277,7 +276,7 @@ class Desk:
                 "best": best,
                 "saving": None if best is None or bound is None else max(0.0, best - bound),
                 "elapsed": round(self.clock() - tray.started, 1),
-                "left": None if limit is None else max(0.0, limit - spent),
+                "left": words.get("left"),
             }
 
     def stop(self, seconds: float) -> None:

@@ -1,5 +1,6 @@
 """Who holds a lease, in words this machine can check: a holder known to be dead is not waited for."""
 
+import hashlib
 import os
 import socket
 from pathlib import Path
@@ -26,6 +27,22 @@ def is_gone(words: dict[str, Any]) -> bool:
     if place is None or place != _place() or not isinstance(pid, int):
         return False
     return _started(pid) != words.get("started")
+
+
+def process_words() -> str:
+    """The own process for the name of a file: its number, boot and process namespace."""
+    return f"{os.getpid()}-{_place_digest()}"
+
+
+def is_of_dead_process(words: str) -> bool:
+    """Whether such words name a process of this place that runs no more."""
+    pid, _, rest = words.partition("-")
+    ours = rest.partition("-")[0] == _place_digest()
+    return ours and pid.isdigit() and _place() is not None and _started(int(pid)) is None
+
+
+def _place_digest() -> str:
+    return hashlib.sha256((_place() or "").encode()).hexdigest()[:12]
 
 
 def _place() -> str | None:

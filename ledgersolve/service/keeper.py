@@ -22,6 +22,8 @@ _DAY = 86400.0
 _EMPTY_SECONDS = 60.0
 _LATE_SECONDS = 90.0
 _ROUND_SECONDS = 3600.0
+_LOOKED_AT_AGAIN = 200
+"""Newest done jobs whose payload is looked for in every round, by any process."""
 
 
 @dataclass
@@ -70,14 +72,17 @@ class Keeper:
         now = self.clock()
         while self._finished and self._finished[0][0] <= now:
             _, job = self._finished.pop(0)
-            view = read_job(self.disk, job, self.layout.done / job)
-            if view is not None and view.state is State.ANSWERED:
-                logger.warning("job %s: the answer had stayed behind and is returned now", job)
-                self.protocol.publish(view)
+            self._publish_late(job)
         if now >= self._next_round:
             self._next_round = now + _ROUND_SECONDS
             self._sweep_names()
             self._sweep_kept()
+
+    def _publish_late(self, job: str) -> None:
+        view = read_job(self.disk, job, self.layout.done / job)
+        if view is not None and view.state is State.ANSWERED:
+            logger.warning("job %s: the answer had stayed behind and is returned now", job)
+            self.protocol.publish(view)
 
     def _sweep_names(self) -> None:
         """Remove names that mean nothing once they stayed unchanged for a day of our own time."""
@@ -108,6 +113,8 @@ class Keeper:
         hours = self._service_hours()
         first_seen = self._read_table("kept.json")
         names = self.disk.names(self.layout.done)
+        for job in names[-_LOOKED_AT_AGAIN:]:
+            self._publish_late(job)
         answers = [f"answers/{name}" for name in self.disk.names(self.layout.answers)]
         table = {name: first_seen.get(name, hours) for name in (*names, *answers)}
         limit = hours - 24.0 * self.keep_days

@@ -143,7 +143,8 @@ def _fix(one: dict[str, Any]) -> str:
 
 def _up(figure: float, digits: int) -> float:
     """Rounded, never in our favour."""
-    return math.ceil(figure * 10**digits) / 10**digits
+    scale = 10.0**digits
+    return math.ceil(figure * scale) / scale
 
 
 def _duration(seconds: float) -> str:

@@ -31,6 +31,7 @@ class Heard:
     """What the child said so far."""
 
     limit: float | None = None
+    limit_heard: float = 0.0
     progress: dict[str, Any] = field(default_factory=dict)
     last_words: deque[str] = field(default_factory=lambda: deque(maxlen=_KEPT_LINES))
 
@@ -62,8 +63,9 @@ def run_child(
     private
         The private folder of the job; the child works in it.
     limits
-        Wall time: ``reading_seconds`` until the child tells the workbook's own limit, then that limit,
-        plus ``grace_seconds``; never more than ``longest_seconds``.
+        Wall time: ``reading_seconds`` until the child tells the workbook's own limit, then that limit and a
+        tenth more; never more than ``longest_seconds``. Then the child is asked to end with the best plan
+        so far, and killed after ``grace_seconds``.
     stop
         Asked four times a second; True kills the child at once.
     tell
@@ -84,10 +86,12 @@ def run_child(
             with contextlib.suppress(subprocess.TimeoutExpired):
                 child.wait(_LOOK_SECONDS)
                 break
-            seconds = time.monotonic() - started
+            over = time.monotonic() - started - _allowed(heard, limits)
             stopped = stop()
-            if seconds > _deadline(heard, limits):
-                cause = f"it did not end within {_deadline(heard, limits):.0f} s"
+            if over > limits.grace_seconds:
+                cause = f"it did not end within {_allowed(heard, limits) + limits.grace_seconds:.0f} s"
+            elif over > 0:
+                _ask_to_end(child)
             tell(heard)
     finally:
         _end(child)
@@ -100,9 +104,18 @@ def run_child(
     return Ended(cause, stopped, bool(cause) and too_big, words, time.monotonic() - started)
 
 
-def _deadline(heard: Heard, limits: ChildLimits) -> float:
+def _allowed(heard: Heard, limits: ChildLimits) -> float:
+    """Seconds after which the child should have ended by itself."""
     own = limits.reading_seconds if heard.limit is None else limits.reading_seconds + 1.1 * heard.limit
-    return min(own, limits.longest_seconds) + limits.grace_seconds
+    return min(own, limits.longest_seconds)
+
+
+def _ask_to_end(child: "subprocess.Popen[bytes]") -> None:
+    """A byte on the life line cancels the solve; one that is not read does no harm."""
+    if child.stdin is not None:
+        with contextlib.suppress(OSError):
+            os.set_blocking(child.stdin.fileno(), False)
+            os.write(child.stdin.fileno(), b"c")
 
 
 def _start(request: dict[str, Any], private: Path, limits: ChildLimits) -> "subprocess.Popen[bytes]":
@@ -143,7 +156,6 @@ def _environment(private: Path) -> dict[str, str]:
         **dict.fromkeys(_ONE_THREAD, "1"),
         "PYTHONPATH": os.pathsep.join(paths),
         "PYTHONFAULTHANDLER": "1",
-        "PYTHONDONTWRITEBYTECODE": "1",
         "HOME": str(private),
         "TMPDIR": str(private),
         "TEMP": str(private),
@@ -166,7 +178,7 @@ def _listen(stream: BinaryIO, heard: Heard) -> None:
 def _take_in(said: dict[str, Any], heard: Heard) -> None:
     limit = said.get("limit")
     if isinstance(limit, int | float) and 0 < limit < 1e7:
-        heard.limit = float(limit)
+        heard.limit, heard.limit_heard = float(limit), time.monotonic()
     elif isinstance(said.get("stage"), str):
         figures = {name: _figure(said.get(name)) for name in ("best", "bound", "seconds")}
         heard.progress = {"stage": said["stage"][:120], **figures}

@@ -213,13 +213,16 @@ class Protocol:
     def publish(self, view: JobView) -> Path | None:
         """Move the answer's payload to Returned; its path there, or None where it was moved before.
 
+        The move is tried whatever the listing showed: a listing may be old, and moving what is gone does
+        no harm.
+
         Raises
         ------
         OSError
             The payload is still here: Returned is full, protected or out of reach.
         """
         reply = view.reply
-        if reply is None or reply.generation not in view.payloads:
+        if reply is None:
             return None
         payload = view.home / f"payload.{reply.generation}"
         target = self.layout.returned / reply.name

@@ -9,7 +9,6 @@ import errno
 import hashlib
 import json
 import logging
-import os
 import shutil
 import tempfile
 import threading
@@ -24,6 +23,7 @@ from ledgersolve.service import answers
 from ledgersolve.service.answers import Former
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.flagged import flagged_workbook
+from ledgersolve.service.holder import process_words
 from ledgersolve.service.layout import Layout, guard
 from ledgersolve.service.names import private_name, show
 from ledgersolve.service.order import Order, Report
@@ -53,7 +53,7 @@ def supervise(order: Order, halt: threading.Event | None = None, disk: Disk | No
     """
     started = time.monotonic()
     root = order.private_root or None
-    private = Path(tempfile.mkdtemp(prefix=f"{PRIVATE_PREFIX}{os.getpid()}-", dir=root))
+    private = Path(tempfile.mkdtemp(prefix=f"{PRIVATE_PREFIX}{process_words()}-", dir=root))
     try:
         report = _Supervisor(order, disk or Disk(), private, halt or threading.Event()).run()
     finally:
@@ -213,7 +213,8 @@ class _Supervisor:
         if now - self._told < _TELL_SECONDS or not (heard.progress or heard.limit):
             return
         self._told = now
-        words = {**heard.progress, "limit": heard.limit}
+        left = None if heard.limit is None else max(0.0, heard.limit - (now - heard.limit_heard))
+        words = {**heard.progress, "left": left}
         home = self._layout.jobs / self.order.job
         with contextlib.suppress(OSError):
             self.disk.refresh(home / f"progress.{self.order.generation}", json.dumps(words).encode("ascii"))

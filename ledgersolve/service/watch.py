@@ -14,13 +14,13 @@ from types import FrameType
 
 import psutil
 
-from ledgersolve.service.board import gather
+from ledgersolve.service.board import gather, sweep_beacons
 from ledgersolve.service.config import ServiceSettings
 from ledgersolve.service.desk import Desk, DeskSettings
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.doorbell import Doorbell, is_remote
 from ledgersolve.service.fair import Turns
-from ledgersolve.service.holder import describe
+from ledgersolve.service.holder import describe, is_of_dead_process
 from ledgersolve.service.keeper import Keeper
 from ledgersolve.service.layout import Layout, UnfitFolderError, prepare, self_test
 from ledgersolve.service.leases import LeaseWatch
@@ -133,6 +133,7 @@ def open_shop(
     desk_settings = _desk_settings(settings, mark, quiet, handler)
     desk = Desk(protocol, pool, keeper, turns.estimates, desk_settings, bell.rung.set)
     desk.returned = list(gather(layout, disk)["returned"])
+    sweep_beacons(layout, disk)
     sure = min(settings.sure_quiet_seconds, quiet)
     patience = Patience(
         quiet, quiet if remote else sure, settings.long_quiet_seconds, settings.open_elsewhere_seconds
@@ -223,7 +224,6 @@ def _sweep_private(settings: ServiceSettings) -> None:
     """Remove private folders of supervisors that are dead: a killed service leaves them behind."""
     root = settings.private_folder or Path(tempfile.gettempdir())
     for left in root.glob(f"{PRIVATE_PREFIX}*"):
-        pid = left.name.removeprefix(PRIVATE_PREFIX).partition("-")[0]
         mine = not hasattr(os, "getuid") or left.lstat().st_uid == os.getuid()
-        if mine and pid.isdigit() and not left.is_symlink() and not psutil.pid_exists(int(pid)):
+        if mine and not left.is_symlink() and is_of_dead_process(left.name.removeprefix(PRIVATE_PREFIX)):
             shutil.rmtree(left, ignore_errors=True)

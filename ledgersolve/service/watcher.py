@@ -196,11 +196,11 @@ class Watcher:
         return []
 
     def _alert_broken(self, view: JobView) -> None:
-        name = "" if view.input is None else show(view.input.name)
         if view.job not in self.desk.alerts:
             logger.critical("job %s: its folder is damaged and is left alone", view.job)
+        name = view.job if view.input is None else show(view.input.name)
         why = f"the folder of job {view.job} is damaged (answer or input unreadable); it is left alone"
-        self.desk.alerts[view.job] = {"name": name or view.job, "why": why}
+        self.desk.alerts[view.job] = {"name": name, "why": why}
 
     # ---- taking ------------------------------------------------------------------------------------
 
@@ -223,9 +223,9 @@ class Watcher:
         if now >= self._next_probe or self._probe_trouble:
             self._next_probe = now + _PROBE_SECONDS
             probe = self.layout.returned / f"{SELFTEST}{self.layout.new_tmp('probe').name}"
+            self._probe_trouble = ""
             try:
                 self.disk.write_new(probe, b"")
-                self._probe_trouble = ""
             except OSError as error:
                 self._probe_trouble = f"Returned takes no files ({error.strerror}); nothing new is taken in."
             discard(self.disk, probe)
@@ -244,7 +244,6 @@ class Watcher:
             self._start(chosen)
 
     def _start(self, chosen: Waiting) -> None:
-        view: JobView | None
         if isinstance(chosen.item, Drop):
             if self.disk.free_bytes(self.layout.private) < 5 * chosen.size:
                 self.settler.refused(chosen.item.path, OSError(28, "the disk has too little space for it"))
@@ -290,14 +289,15 @@ class Watcher:
     def picture(self) -> dict[str, Any]:
         """What this process knows, as plain values."""
         words, monotonic, unix = self._last_scan or (None, None, None)
-        holder = describe()
         waiting, count = self._waiting()
+        holder = describe()
         alerts = [{"name": show(drop.name), "why": drop.why} for drop in self.drops if drop.alert]
         return {
             "id": self._beacon,
             "host": holder["host"],
             "pid": holder["pid"],
             "boot": boot(),
+            "holder": holder,
             "version": __version__,
             "workers": self.pace.workers,
             "state": self.state,
@@ -339,7 +339,7 @@ class Watcher:
         )
 
     def leave(self, seconds: float = 10.0) -> None:
-        """Stop what runs, give leases back, and say so on the page."""
+        """Stop what runs, give leases back, say so."""
         self.stopping = True
         self.desk.stop(seconds)
         self.bell.silence()

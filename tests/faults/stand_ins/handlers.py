@@ -22,6 +22,10 @@ def solve(source, into, *, progress=None, cancelled=None, shown_name=None, limit
     """Answer at once; what the file says inside decides how."""
     with zipfile.ZipFile(source) as package:
         word = package.read("word.txt").decode() if "word.txt" in package.namelist() else ""
+    if word == "polite":
+        limit_known(0.1)
+        while not cancelled():
+            time.sleep(0.02)
     return WORDS.get(word.partition(" ")[0], _solved)(source, into, word, progress, limit_known)
 
 
