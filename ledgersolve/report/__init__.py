@@ -56,6 +56,6 @@ def lot_sheets(report: LotReport, settled: Mapping[str, str]) -> list[ResultShee
                         outcome_of(report.solved, report.case.currency, ""))
     sheets = [
         lot_decision(at, ledger, checks), ledger.sheet, plan_lots(at), plan_stock(at), *optional_sheets(at),
-        answers_sheet(at.name(names.ANSWERS), report.answers, report.case.currency, ""), proof, record,
+        answers_sheet(at.name(names.ANSWERS), report.answers, report.case.currency, ""), *proof, record,
     ]
     return [sheet for sheet in sheets if sheet is not None]

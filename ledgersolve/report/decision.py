@@ -249,8 +249,10 @@ def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[st
         return ["This is the best plan found. How much a better one could save is not known."]
     rest = max(0.0, cost - bound)
     most = style.money_words(rest, currency, "up")
-    if rest <= 1e-9 * max(1.0, abs(cost)):
-        return ["Proven: no plan that keeps the rules of the workbook costs less."]
+    least = 10.0 ** -style.money_digits(currency)
+    if solved.verdict is Verdict.PROVEN_BEST and rest < least:
+        smallest = style.figure_words(least, style.money_digits(currency))
+        return [f"Proven: no plan that keeps the rules of the workbook is cheaper, not even by {smallest} {currency}."]
     gap = f" ({style.percent_words(rest / cost, 'up')})" if cost > 0 else ""
     if solved.verdict is Verdict.PROVEN_BEST:
         return [f"Proven, as far as it matters: no plan that keeps the rules is cheaper by more than {most}{gap}."]

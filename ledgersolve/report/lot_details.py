@@ -41,8 +41,8 @@ def _lots_by_period(at: LotPlaces, sheet: ResultSheet) -> None:
 
 
 def _lot_columns(at: LotPlaces) -> list[Column]:
-    case, quantity = at.report.case, style.number(at.quantity_format)
-    rate = style.number("#,##0.####")
+    case, quantity = at.report.case, style.number(style.without_zeros(at.quantity_format))
+    rate = style.number(style.figure_format([*case.time_per_unit.tolist(), *case.setup_time.tolist()], 4))
 
     def of(title: str, values: np.ndarray, unit: str, look: Style = quantity) -> Column:
         finite = [float(v) if np.isfinite(v) else None for v in values]
@@ -105,7 +105,7 @@ def _stock_formula(at: LotPlaces, i: int, t: int) -> str:
 
 
 def _stock_columns(at: LotPlaces) -> list[Column]:
-    case, look = at.report.case, style.number(at.quantity_format)
+    case, look = at.report.case, style.number(style.without_zeros(at.quantity_format))
 
     def of(title: str, values: np.ndarray) -> Column:
         finite = [float(v) if np.isfinite(v) else None for v in values]
@@ -175,7 +175,7 @@ def _families(at: LotPlaces, sheet: ResultSheet) -> None:
     resource = [case.resources[r] if r >= 0 else None for r in case.family_resource.tolist()]
     time = [at.figure("Families", (code,), "Setup time", float(case.family_time[f])) for f, code in enumerate(case.families)]
     side = [Column("resource", "Resource", resource, width=11),
-            Column("time", "Setup time (time units)", [f.value for f in time], style.number("#,##0.####"), 11,
+            Column("time", "Setup time (time units)", [f.value for f in time], style.number(style.figure_format([f.value for f in time])), 11,
                    [f.formula for f in time])]
     sheet.put(block.first_row - 2, 0, "Family setups (1 = any member is made)", style.SECTION)
     made, family = at.made, at.made.side(FAMILY)

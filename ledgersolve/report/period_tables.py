@@ -68,7 +68,8 @@ def _titles(at: LotPlaces, sheet: ResultSheet, table: PeriodTable) -> None:
     for t, period in enumerate(case.periods):
         sheet.put(row, FIRST_PERIOD + t, period, style.HEADER_RIGHT)
     for k, column in enumerate(table.side):
-        sheet.put(row, FIRST_PERIOD + block.periods + k, column.title, style.HEADER)
+        sheet.put(row, FIRST_PERIOD + block.periods + k, column.title,
+                  style.HEADER_RIGHT if column.style.align == "right" else style.HEADER)
         sheet.widths[FIRST_PERIOD + block.periods + k] = column.width
     sheet.heights[row] = 40.0 if table.side else 28.0
     widths = {CODE: fitting_width([*table.rows, table.code_title]), NAME: fitting_width(table.row_names, 12.0),

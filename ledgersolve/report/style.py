@@ -77,13 +77,13 @@ def rate_format(currency: str, rates: Iterable[float] = ()) -> str:
     return "#,##0" + ("." + "0" * shown if shown else "")
 
 
-def figure_format(values: Iterable[float]) -> str:
-    """Number format for a column of quantities: as many decimals as they need, at most three."""
+def figure_format(values: Iterable[float], most: int = 3) -> str:
+    """Number format for a column of quantities: as many decimals as they need, at most ``most``."""
     needed = 0
     for value in values:
-        while needed < 3 and abs(value * 10**needed - round(value * 10**needed)) > 1e-6:
+        while needed < most and abs(value * 10**needed - round(value * 10**needed)) > 1e-6:
             needed += 1
-        if needed == 3:
+        if needed == most:
             break
     return "#,##0" + ("." + "0" * needed if needed else "")
 

@@ -100,7 +100,7 @@ def _marker(series: Series) -> dict[str, Any]:
     return {
         "type": series.marker, "size": series.marker_size,
         "border": {"color": f"#{series.colour}", "width": 1.25},
-        "fill": {"color": "#FFFFFF"} if open_mark else {"color": f"#{series.colour}"},
+        "fill": {"none": True} if open_mark else {"color": f"#{series.colour}"},
     }
 
 
