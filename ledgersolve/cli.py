@@ -112,10 +112,14 @@ def watch(
     ] = None,
 ) -> None:
     """Serve a folder: drops in Inbox/ come back in Returned/."""
-    from ledgersolve.service.config import load_settings
+    from ledgersolve.service.config import SettingsError, load_settings
     from ledgersolve.service.watch import serve
 
-    settings = load_settings(config, workers=workers, polling=polling)
+    try:
+        settings = load_settings(config, workers=workers, polling=polling)
+    except SettingsError as trouble:
+        errors.print(escape(str(trouble)))
+        raise typer.Exit(2) from trouble
     raise typer.Exit(serve(folder, once=once, cluster=cluster, settings=settings))
 
 

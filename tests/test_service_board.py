@@ -205,6 +205,13 @@ def test_a_long_queue_is_counted_not_listed(layout):
     assert "and 9,975 more" in page and page.count("<li>") < 40
 
 
+def test_a_folder_that_was_never_served_is_told_as_such(tmp_path):
+    """No traceback, no guess: words, for the terminal and for programs."""
+    state = status(tmp_path)
+    assert not state["well"] and "never served" in as_text(state)
+    json.dumps(state)
+
+
 def test_the_terminal_gets_the_same_facts(layout):
     """The text of the command names what runs, waits and came back."""
     write(layout)

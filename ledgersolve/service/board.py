@@ -13,6 +13,7 @@ from ledgersolve.service.holder import is_gone
 from ledgersolve.service.layout import Layout
 from ledgersolve.service.page import render
 
+NEVER_SERVED = "never served"
 MOST_SHOWN = 200
 MOST_RETURNED = 50
 _SERVICE = (
@@ -95,18 +96,17 @@ def _all(beacons: Iterable[dict[str, Any]], key: str) -> list[dict[str, Any]]:
 
 
 def status(folder: Path) -> dict[str, Any]:
-    """The state of a served folder, ready for JSON; ``well`` says whether a service looks after it.
+    """The state of a served folder, ready for JSON.
 
-    Raises
-    ------
-    FileNotFoundError
-        The folder was never served.
+    ``well`` says whether a service looks after it, ``trouble`` in words why not.
     """
     layout = Layout(folder)
-    disk = Disk()
-    if not layout.private.is_dir():
-        raise FileNotFoundError(f"{folder} was never served: it holds no folder {layout.private.name}")
-    state = gather(layout, disk)
+    if not layout.share_id.exists():
+        return _nothing(NEVER_SERVED, "the folder was never served, or its share is not mounted")
+    try:
+        state = gather(layout, Disk())
+    except OSError as error:
+        return _nothing("out of reach", f"the share is out of reach ({error})")
     troubles = [_trouble(service) for service in state["services"]]
     if not troubles:
         state["trouble"] = "no service is running"
@@ -118,14 +118,19 @@ def status(folder: Path) -> dict[str, Any]:
     return state
 
 
+def _nothing(state: str, trouble: str) -> dict[str, Any]:
+    """The state of a folder that tells nothing."""
+    lists: dict[str, Any] = {key: [] for key in ("services", "waiting", "running", "returned", "alerts")}
+    told = {"state": state, "why": "", "last_scan": None, "waiting_count": 0, "trouble": trouble, "well": False}
+    return told | lists
+
+
 def health(folder: Path) -> int:
     """0 where a service looks after the folder, 1 where none does, 2 where it was never served."""
-    try:
-        return 0 if status(folder)["well"] else 1
-    except FileNotFoundError:
-        return 2
-    except OSError:
-        return 1
+    state = status(folder)
+    if state["well"]:
+        return 0
+    return 2 if state["state"] == NEVER_SERVED else 1
 
 
 def _trouble(service: dict[str, Any]) -> str:

@@ -1,12 +1,13 @@
 """Settings of the service: one TOML file, environment variables over it, the command line over both."""
 
 import os
+import tomllib
 from datetime import time
 from pathlib import Path
 from typing import Any, Literal
-from zoneinfo import ZoneInfo
+from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
-from pydantic import Field, field_validator
+from pydantic import Field, ValidationError, field_validator
 from pydantic_settings import (
     BaseSettings,
     PydanticBaseSettingsSource,
@@ -16,6 +17,10 @@ from pydantic_settings import (
 
 _FILE_VARIABLE = "LEDGERSOLVE_SETTINGS"
 _DAYS = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
+
+
+class SettingsError(ValueError):
+    """Settings that cannot be used; the text says which and why."""
 
 
 class ServiceSettings(BaseSettings):
@@ -96,8 +101,10 @@ class ServiceSettings(BaseSettings):
     @field_validator("time_zone")
     @classmethod
     def _known(cls, name: str) -> str:
-        if name:
-            ZoneInfo(name)
+        try:
+            ZoneInfo(name or "UTC")
+        except (ZoneInfoNotFoundError, ValueError, OSError) as error:
+            raise ValueError(f"no time zone is called {name}") from error
         return name
 
 
@@ -108,12 +115,12 @@ def load_settings(file: Path | None = None, **overrides: Any) -> ServiceSettings
 
     Raises
     ------
-    pydantic.ValidationError, tomllib.TOMLDecodeError, FileNotFoundError
-        The file names an unknown setting, holds an impossible value, is no TOML or is not there.
+    SettingsError
+        The file is not there or no TOML, or a setting is unknown or impossible; the text says which.
     """
     named = file or (Path(os.environ[_FILE_VARIABLE]) if os.environ.get(_FILE_VARIABLE) else None)
     if named is not None and not named.is_file():
-        raise FileNotFoundError(f"the settings file {named} is not there")
+        raise SettingsError(f"The settings file {named} is not there.")
 
     class FromFile(ServiceSettings):
         @classmethod
@@ -128,7 +135,20 @@ def load_settings(file: Path | None = None, **overrides: Any) -> ServiceSettings
             toml = TomlConfigSettingsSource(settings_cls, named)
             return init_settings, env_settings, dotenv_settings, toml, file_secret_settings
 
-    return FromFile(**{name: value for name, value in overrides.items() if value is not None})
+    try:
+        return FromFile(**{name: value for name, value in overrides.items() if value is not None})
+    except tomllib.TOMLDecodeError as error:
+        raise SettingsError(f"The settings file {named} cannot be read: {error}.") from error
+    except ValidationError as error:
+        raise SettingsError("\n".join(_words(fault) for fault in error.errors())) from error
+
+
+def _words(fault: Any) -> str:
+    """A fault of a setting in a sentence."""
+    name = ".".join(str(part) for part in fault["loc"])
+    if fault["type"] == "extra_forbidden":
+        return f"There is no setting {name}."
+    return f"The setting {name} cannot be {fault['input']!r}: {fault['msg'].removeprefix('Value error, ')}."
 
 
 def parse_window(text: str) -> tuple[frozenset[int], time, time]:
