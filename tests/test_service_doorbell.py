@@ -53,8 +53,9 @@ def test_it_rings_on_a_drop_and_on_one_in_a_new_sub_folder(tmp_path, polling):
         bell.silence()
 
 
-def test_a_dead_observer_is_built_anew(tmp_path):
+def test_a_dead_observer_is_built_anew(tmp_path, monkeypatch):
     """The watched folder is removed and made again: the observer lives on deaf until it is looked after."""
+    monkeypatch.setattr("ledgersolve.service.doorbell._TRY_SECONDS", 0.0)
     inbox = tmp_path / "Inbox"
     inbox.mkdir()
     bell = Doorbell(inbox, polling=False, seconds=1.0)
@@ -71,6 +72,19 @@ def test_a_dead_observer_is_built_anew(tmp_path):
         assert bell.wait(20.0)
     finally:
         bell.silence()
+
+
+def test_an_observer_that_cannot_be_built_is_not_tried_all_the_time(tmp_path):
+    """A step a second must not mean an attempt a second; after an outage the first attempt is at once."""
+    bell = Doorbell(tmp_path / "gone", polling=False, seconds=1.0)
+    bell.keep_alive()
+    (tmp_path / "gone").mkdir()
+    bell.keep_alive()
+    assert bell._observer is None
+    bell.silence()
+    bell.keep_alive()
+    assert bell._observer is not None
+    bell.silence()
 
 
 def test_a_folder_that_cannot_be_watched_costs_only_promptness(tmp_path):

@@ -125,7 +125,7 @@ class Disk:
 
     def link(self, source: Path, target: Path) -> None:
         """Second name for a file; atomic, and refused where the target exists: the put-if-absent."""
-        os.link(source, target, follow_symlinks=False)
+        os.link(source, target, follow_symlinks=os.link not in os.supports_follow_symlinks)
 
     def remove(self, path: Path) -> None:
         """Remove one name of a file."""

@@ -1,6 +1,7 @@
 """The doorbell: file events wake the scan early. What one says is never acted on; scans are the truth."""
 
 import logging
+import math
 import threading
 import time
 from pathlib import Path
@@ -11,7 +12,7 @@ from watchdog.observers.api import BaseObserver
 from watchdog.observers.polling import PollingObserver
 
 logger = logging.getLogger(__name__)
-_REBUILD_SECONDS = 3600.0
+_REBUILD_SECONDS, _TRY_SECONDS = 3600.0, 10.0
 _REMOTE = frozenset(
     (
         "nfs", "nfs4", "cifs", "smb2", "smb3", "smbfs", "9p", "drvfs", "virtiofs", "vboxsf", "vmhgfs",
@@ -75,7 +76,7 @@ class Doorbell(FileSystemEventHandler):
         self._polling = polling
         self._seconds = seconds
         self._observer: BaseObserver | None = None
-        self._built = 0.0
+        self._built = -math.inf
 
     def on_any_event(self, event: FileSystemEvent) -> None:  # noqa: ARG002 - what it says is never acted on
         """Ring, whatever happened."""
@@ -84,12 +85,12 @@ class Doorbell(FileSystemEventHandler):
 
     def keep_alive(self) -> None:
         """Build the observer anew where it is missing, dead or old; its failure costs only promptness."""
-        if self._observer is not None:
-            emitters = self._observer.emitters
-            well = self._observer.is_alive() and emitters and all(one.is_alive() for one in emitters)
-            if well and time.monotonic() - self._built < _REBUILD_SECONDS:
-                return
-            self.silence()
+        age = time.monotonic() - self._built
+        if self._observer is not None and age < _REBUILD_SECONDS and self._is_well(self._observer):
+            return
+        if age < _TRY_SECONDS:
+            return
+        self.silence()
         self._built = time.monotonic()
         observer = PollingObserver(timeout=self._seconds) if self._polling else Observer()
         try:
@@ -100,6 +101,11 @@ class Doorbell(FileSystemEventHandler):
             return
         self._observer = observer
 
+    def _is_well(self, observer: BaseObserver) -> bool:
+        """An observer stays alive when its emitters died, so these are asked, too."""
+        emitters = observer.emitters
+        return observer.is_alive() and bool(emitters) and all(emitter.is_alive() for emitter in emitters)
+
     def wait(self, seconds: float) -> bool:
         """Sleep until somebody rings or the time is over; whether files changed meanwhile."""
         if not self.rung.wait(seconds):
@@ -109,8 +115,9 @@ class Doorbell(FileSystemEventHandler):
         return news
 
     def silence(self) -> None:
-        """Stop observing."""
+        """Stop observing, until somebody asks to keep it alive."""
         observer, self._observer = self._observer, None
+        self._built = -math.inf
         if observer is not None:
             observer.stop()
             observer.join(5.0)

@@ -114,7 +114,8 @@ def _ask_to_end(child: "subprocess.Popen[bytes]") -> None:
     """A byte on the life line cancels the solve; one that is not read does no harm."""
     if child.stdin is not None:
         with contextlib.suppress(OSError):
-            os.set_blocking(child.stdin.fileno(), False)
+            if sys.platform != "win32":
+                os.set_blocking(child.stdin.fileno(), False)
             os.write(child.stdin.fileno(), b"c")
 
 
