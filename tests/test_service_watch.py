@@ -339,6 +339,20 @@ def test_a_job_whose_holders_vanish_again_and_again_is_answered(tmp_path, quick)
     assert returned(tmp_path) == ["plan failed.xlsx"]
 
 
+def test_a_job_that_another_process_took_since_the_scan_is_left_to_it(tmp_path, quick):
+    """Between looking and starting another watch process may have leased the job: its lease is respected."""
+    watcher = quick_watcher(tmp_path, beat_seconds=100.0)
+    other = Protocol(Layout(tmp_path), Disk(), {"host": "other"})
+    job = other.claim(drop(tmp_path, "plan.xlsx"))
+    watcher.turns.places = lambda running, workers: "none"
+    watcher.step()
+    assert len(watcher.line) == 1
+    other.lease(other.view(job))
+    del watcher.turns.places
+    watcher._start_more()
+    assert not watcher.desk.trays and other.view(job).generation == 1
+
+
 def test_a_share_that_is_not_there_at_the_start_ends_once_with_words(tmp_path, caplog):
     """With an expected mark and no share the run ends with 1 and nothing is created."""
     assert serve(tmp_path, once=True, settings=quick_settings(share_id="wanted")) == 1

@@ -1,5 +1,6 @@
 """One watch process: looks, takes, starts, hands on, and tells; each step may fail and is taken again."""
 
+import errno
 import logging
 import math
 import secrets
@@ -246,11 +247,13 @@ class Watcher:
     def _start(self, chosen: Waiting) -> None:
         if isinstance(chosen.item, Drop):
             if self.disk.free_bytes(self.layout.private) < 5 * chosen.size:
-                self.settler.refused(chosen.item.path, OSError(28, "the disk has too little space for it"))
+                self.settler.refused(chosen.item.path, OSError(errno.ENOSPC, "too little space"))
                 return
             view = self._claim(chosen.item)
         else:
             view = self.desk.protocol.view(chosen.item.job)
+            if view is not None and not self.leases.left_behind(view):
+                return  # another process took it since the scan
         if view is None or view.reply is not None:
             return
         try:
