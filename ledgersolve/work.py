@@ -89,9 +89,9 @@ def confirmed(case: Any, solved: Solved[Any], audit: Callable[[Any, Any], Audit]
         broken = found.broken()[0]
         raise AuditError(f"the plan breaks the rule {broken.rule} on {broken.subject}: required "
                          f"{broken.required}, got {broken.got}")
-    if abs(found.total - solved.cost) > slack:
+    if not abs(found.total - solved.cost) <= slack:  # so put, a cost that is not a number fails too
         raise AuditError(f"the plan costs {found.total:.6f} by the audit, {solved.cost:.6f} by the solver")
-    if solved.bound is not None and solved.bound > found.total + slack:
+    if solved.bound is not None and not solved.bound <= found.total + slack:
         raise AuditError(f"the bound {solved.bound:.6f} lies above the plan's cost {found.total:.6f}")
     return found
 

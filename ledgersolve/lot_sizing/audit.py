@@ -29,7 +29,9 @@ def audit(case: Case, plan: Plan) -> Audit:
     """
     _check_shapes(case, plan)
     book = _Book(case, plan)
-    return Audit(tuple(book.parts()), tuple(_finite(plan)) or tuple(book.checks()))
+    with np.errstate(invalid="ignore"):  # a figure that is not a number fails its own check
+        parts = tuple(book.parts())
+    return Audit(parts, tuple(_finite(plan)) or tuple(book.checks()))
 
 
 def _check_shapes(case: Case, plan: Plan) -> None:
@@ -118,9 +120,9 @@ class _Book:
         yield self._items("No negative quantity", -lowest, "0 or more", lowest)
         balance = plan.stock - plan.late - self._balance()
         yield self._items("Stock balance", np.abs(balance), "stock follows from what comes and goes", balance)
+        differs = plan.setup != (plan.made > 0)  # a whole size, so that no tolerance forgives it
         yield self._items(
-            "Setups", 1.0 * (plan.setup != (plan.made > 0)), "a setup exactly where something is made",
-            plan.setup,
+            "Setups", self.size() * differs, "a setup exactly where something is made", plan.setup,
         )
 
     def _balance(self) -> Floats:
