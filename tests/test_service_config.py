@@ -1,13 +1,8 @@
 """Settings: file, environment, command line."""
 
-from datetime import datetime
-from zoneinfo import ZoneInfo
-
 import pytest
 
 from ledgersolve.service.config import SettingsError, load_settings, parse_window
-from ledgersolve.service.disk import Disk
-from ledgersolve.service.hours import is_paused, quiet_until
 
 
 def test_the_command_line_wins_over_environment_over_file(tmp_path, monkeypatch):
@@ -56,36 +51,3 @@ def test_a_missing_file_is_an_error(tmp_path):
 def test_windows_name_days(window, days):
     """No day, one day, or a range that may run over the weekend."""
     assert parse_window(window)[0] == days
-
-
-ZONE = ZoneInfo("Europe/Paris")
-
-
-@pytest.mark.parametrize(("now", "until"), [
-    ((2026, 3, 2, 9, 0), (2026, 3, 2, 12, 0)),  # a Monday
-    ((2026, 3, 2, 12, 0), None),
-    ((2026, 3, 1, 9, 0), None),  # a Sunday
-    ((2026, 3, 6, 23, 0), (2026, 3, 7, 6, 0)),  # Friday night, into Saturday
-    ((2026, 3, 7, 5, 59), (2026, 3, 7, 6, 0)),
-    ((2026, 3, 7, 23, 0), None),
-])  # fmt: skip
-def test_quiet_hours_hold_new_work(now, until):
-    """Within a window its end is told; a window over midnight belongs to the day on which it starts."""
-    windows = ["Mon-Fri 08:00-12:00", "Fri 22:00-06:00"]
-    wanted = None if until is None else datetime(*until, tzinfo=ZONE)
-    assert quiet_until(windows, datetime(*now, tzinfo=ZONE)) == wanted
-
-
-def test_quiet_hours_follow_the_clocks_of_the_zone():
-    """On the night the clocks go forward (29 March 2026, Paris) the window still ends at 6 local time."""
-    until = quiet_until(["22:00-06:00"], datetime(2026, 3, 29, 1, 30, tzinfo=ZONE))
-    assert until.isoformat() == "2026-03-29T06:00:00+02:00"
-
-
-def test_a_pause_file_pauses(tmp_path):
-    """PAUSE or PAUSE.txt, in any case; nothing else."""
-    assert not is_paused(Disk(), tmp_path)
-    (tmp_path / "paused").touch()
-    assert not is_paused(Disk(), tmp_path)
-    (tmp_path / "Pause.TXT").touch()
-    assert is_paused(Disk(), tmp_path)

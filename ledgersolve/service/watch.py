@@ -8,7 +8,7 @@ import tempfile
 import threading
 import time
 from collections.abc import Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from pathlib import Path
 from types import FrameType
 
@@ -21,6 +21,7 @@ from ledgersolve.service.disk import Disk
 from ledgersolve.service.doorbell import Doorbell, is_remote
 from ledgersolve.service.fair import Turns
 from ledgersolve.service.holder import describe, is_of_dead_process
+from ledgersolve.service.intake import Intake
 from ledgersolve.service.keeper import Keeper
 from ledgersolve.service.layout import Layout, UnfitFolderError, prepare, self_test
 from ledgersolve.service.leases import LeaseWatch
@@ -142,15 +143,13 @@ def open_shop(
         layout=layout,
         disk=disk,
         mark=mark,
-        pace=Pace(
-            settings.workers, scan, settings.beat_seconds, free_bytes=settings.free_mb * _MB,
-            quiet_hours=settings.quiet_hours, time_zone=settings.time_zone,
-        ),
+        pace=Pace(settings.workers, scan, settings.beat_seconds),
         settler=Settler(disk, layout.inbox, patience, sure=not remote),
         leases=LeaseWatch(disk, _BEATS * settings.beat_seconds),
         turns=turns,
         desk=desk,
         keeper=keeper,
+        intake=Intake(layout, disk, settings.free_mb * _MB, settings.quiet_hours, settings.time_zone),
         bell=bell,
     )
     logger.info("serving %s with %d places (%s)", folder, settings.workers, "timer" if remote else "events")
@@ -224,6 +223,7 @@ def _sweep_private(settings: ServiceSettings) -> None:
     """Remove private folders of supervisors that are dead: a killed service leaves them behind."""
     root = settings.private_folder or Path(tempfile.gettempdir())
     for left in root.glob(f"{PRIVATE_PREFIX}*"):
-        mine = not hasattr(os, "getuid") or left.lstat().st_uid == os.getuid()
-        if mine and not left.is_symlink() and is_of_dead_process(left.name.removeprefix(PRIVATE_PREFIX)):
-            shutil.rmtree(left, ignore_errors=True)
+        with suppress(FileNotFoundError):  # another service sweeps, too
+            mine = not hasattr(os, "getuid") or left.lstat().st_uid == os.getuid()
+            if mine and not left.is_symlink() and is_of_dead_process(left.name.removeprefix(PRIVATE_PREFIX)):
+                shutil.rmtree(left, ignore_errors=True)

@@ -16,9 +16,9 @@ from ledgersolve.service.disk import Disk
 from ledgersolve.service.doorbell import Doorbell
 from ledgersolve.service.fair import Line, Turns, Waiting
 from ledgersolve.service.holder import describe
-from ledgersolve.service.hours import is_paused, local_now, quiet_until
+from ledgersolve.service.intake import Intake
 from ledgersolve.service.keeper import Keeper
-from ledgersolve.service.layout import SELFTEST, Layout, discard, guard
+from ledgersolve.service.layout import Layout, guard
 from ledgersolve.service.leases import LeaseWatch
 from ledgersolve.service.names import is_conflict_copy, show
 from ledgersolve.service.settle import Drop, Settler
@@ -29,7 +29,6 @@ _SCAN_SHARE = 5.0
 """After a scan of s seconds there is none for five times s: scanning stays a sixth of the time."""
 _LONG_LINE = 50
 """With so many in the queue nothing is gained by looking before the next scan is due."""
-_PROBE_SECONDS = 60.0
 _BOARD_SECONDS = 15.0
 _SHORTEST_WAIT, _BUSY_WAIT = 0.02, 2.0
 _MOST_SHOWN = 200
@@ -37,15 +36,12 @@ _MOST_SHOWN = 200
 
 @dataclass(frozen=True)
 class Pace:
-    """How often things are done, in seconds, and what must be free; see ``ServiceSettings``."""
+    """How much at a time, and how often things are done, in seconds; see ``ServiceSettings``."""
 
     workers: int = 2
     scan: float = 5.0
     beat: float = 5.0
     board: float = 2.0
-    free_bytes: int = 500 << 20
-    quiet_hours: tuple[str, ...] = ()
-    time_zone: str = ""
 
 
 @dataclass
@@ -61,6 +57,7 @@ class Watcher:
     turns: Turns
     desk: Desk
     keeper: Keeper
+    intake: Intake
     bell: Doorbell
     clock: Callable[[], float] = time.monotonic
     stopping: bool = False
@@ -79,8 +76,6 @@ class Watcher:
     _told: float = -math.inf
     _told_state: str = ""
     _news: bool = False
-    _next_probe: float = -math.inf
-    _probe_trouble: str = ""
 
     # ---- one step ----------------------------------------------------------------------------------
 
@@ -150,7 +145,7 @@ class Watcher:
         waiting += self._look_at_jobs()
         guard(self.layout, self.disk, self.mark)
         self.line = self.turns.line_up(waiting)
-        self.state, self.why = self._intake()
+        self.state, self.why = self.intake.state()
         ended = self.clock()
         self.scans += 1
         self._seen_all = True
@@ -205,33 +200,6 @@ class Watcher:
 
     # ---- taking ------------------------------------------------------------------------------------
 
-    def _intake(self) -> tuple[str, str]:
-        """Whether new work may be started now, and why not."""
-        if is_paused(self.disk, self.layout.folder):
-            return "paused", "There is a file PAUSE in the folder; remove it to go on."
-        until = quiet_until(self.pace.quiet_hours, local_now(self.pace.time_zone))
-        if until is not None:
-            return "quiet hours", f"Nothing new is started before {until:%Y-%m-%d %H:%M}."
-        if self.disk.free_bytes(self.layout.private) < self.pace.free_bytes:
-            need = self.pace.free_bytes / (1 << 20)
-            return "held", f"The disk has less than {need:,.0f} MB free; nothing new is taken in."
-        trouble = self._probe()
-        return ("held", trouble) if trouble else ("at work", "")
-
-    def _probe(self) -> str:
-        """Whether Returned takes files, tried at most once a minute."""
-        now = self.clock()
-        if now >= self._next_probe or self._probe_trouble:
-            self._next_probe = now + _PROBE_SECONDS
-            probe = self.layout.returned / f"{SELFTEST}{self.layout.new_tmp('probe').name}"
-            self._probe_trouble = ""
-            try:
-                self.disk.write_new(probe, b"")
-            except OSError as error:
-                self._probe_trouble = f"Returned takes no files ({error.strerror}); nothing new is taken in."
-            discard(self.disk, probe)
-        return self._probe_trouble
-
     def _start_more(self) -> None:
         """Fill the free places from the line."""
         while self.line is not None and self.state == "at work" and not self.stopping:
@@ -246,7 +214,7 @@ class Watcher:
 
     def _start(self, chosen: Waiting) -> None:
         if isinstance(chosen.item, Drop):
-            if self.disk.free_bytes(self.layout.private) < 5 * chosen.size:
+            if not self.intake.has_space(chosen.size):
                 self.settler.refused(chosen.item.path, OSError(errno.ENOSPC, "too little space"))
                 return
             view = self._claim(chosen.item)

@@ -107,7 +107,7 @@ def read_only_returned(folder: Path) -> list[str]:
     answered = folder / ".ledgersolve" / "jobs"
     faults += step_until(watcher, lambda: bool(list(answered.glob("*/answer.json"))))
     drop(folder, "second.xlsx")
-    watcher._next_probe = 0.0
+    watcher.intake._next_probe = 0.0
     faults += step_until(watcher, lambda: watcher.state == "held")
     faults += [] if (folder / "Inbox" / "second.xlsx").exists() else ["taken in while nothing can be returned"]
     mount("umount", returned)
