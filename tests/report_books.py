@@ -88,4 +88,6 @@ def returned(source: Path, target: Path, given: SiteReport | LotReport) -> Path:
 
 def made(given: SiteReport | LotReport, names: Mapping[str, str] | None = None) -> list:
     """Sheets of a report."""
-    return report.site_sheets(given, names or {}) if isinstance(given, SiteReport) else report.lot_sheets(given, names or {})
+    if isinstance(given, SiteReport):
+        return report.site_sheets(given, names or {})
+    return report.lot_sheets(given, names or {})

@@ -6,7 +6,8 @@ import numpy as np
 
 from tests import books
 
-HOSTILE = ("=cmd|' /C calc'!A0", "+49 30 123", "@SUM(A1)", "<b>bold</b>", "Łódź & \"Søn\" <x>", "مستودع", "🚚 depot", "a" * 300)
+HOSTILE = ("=cmd|' /C calc'!A0", "+49 30 123", "@SUM(A1)", "<b>bold</b>", "Łódź & \"Søn\" <x>", "مستودع", "🚚 depot",
+           "a" * 300)
 
 
 def site_rows() -> tuple[list[dict], list[dict]]:
@@ -14,7 +15,8 @@ def site_rows() -> tuple[list[dict], list[dict]]:
     rng = np.random.default_rng(7)
     sites = [
         {"Site": f"{j + 1:04d}", "Name": HOSTILE[j], "Fixed cost": float(rng.integers(300, 900)) + 0.25,
-         "Capacity": float(rng.integers(150, 320)), "Handling cost": 0.5 * (j % 3), "Today": "yes" if j in (0, 1, 5) else "no",
+         "Capacity": float(rng.integers(150, 320)), "Handling cost": 0.5 * (j % 3),
+         "Today": "yes" if j in (0, 1, 5) else "no",
          "Opening cost": 40.0, "Closing cost": 25.0, "Least volume": 20.0 if j == 2 else None,
          "Rule": {3: "closed", 4: "open"}.get(j, "free"), "Group": "big or small" if j in (6, 7) else None,
          "Latitude": 48.0 + float(rng.uniform(0, 5)), "Longitude": 7.0 + float(rng.uniform(0, 6))}
@@ -72,23 +74,28 @@ def rich_lot_book(path: Path) -> Path:
     horizon = 6
     demand = rng.integers(0, 40, (5, horizon)).astype(float)
     items: list[dict] = [
-        {"Item": f"{k:03d}", "Name": HOSTILE[k], "Unit": "box", "Setup cost": 50.0 + 10 * k, "Unit cost": 1.5 if k else None,
+        {"Item": f"{k:03d}", "Name": HOSTILE[k], "Unit": "box", "Setup cost": 50.0 + 10 * k,
+         "Unit cost": 1.5 if k else None,
          "Holding cost": None if k == 1 else 0.4, "Unit value": 30.0, "Opening stock": 12.0, "Safety stock": 3.0,
-         "Closing stock": 8.0 if k == 2 else None, "Most stock": 150.0 if k == 3 else None, "Least lot": 5.0 if k == 0 else None,
+         "Closing stock": 8.0 if k == 2 else None, "Most stock": 150.0 if k == 3 else None,
+         "Least lot": 5.0 if k == 0 else None,
          "Most lot": 90.0 if k == 3 else None, "Lot multiple": 4.0 if k == 4 else None,
          "Backlog cost": 3.0 if k == 1 else None, "Lost sale cost": 4.0 if k == 2 else None,
-         "Resource": "R1" if k < 3 else "R2", "Time per unit": 0.5, "Setup time": 2.0, "Family": "F" if k in (0, 3) else None}
+         "Resource": "R1" if k < 3 else "R2", "Time per unit": 0.5, "Setup time": 2.0,
+         "Family": "F" if k in (0, 3) else None}
         for k in range(5)
     ]
     return books.lot_book(
         path, items, [[value or None for value in row] for row in demand.tolist()],
         periods=[{"Period": f"W{t + 1}"} for t in range(horizon)],
-        resources=[{"Resource": "R1", "Capacity": 70.0, "Overtime limit": 15.0, "Overtime cost": 2.0, "Use cost": 5.0},
+        resources=[{"Resource": "R1", "Capacity": 70.0, "Overtime limit": 15.0, "Overtime cost": 2.0,
+                    "Use cost": 5.0},
                    {"Resource": "R2", "Capacity": 60.0, "Overtime limit": 10.0, "Overtime cost": 3.0}],
         capacity=[[70.0, 65.0, 70.0, 70.0, 60.0, 70.0], [60.0] * horizon],
         period_costs=[{"Item": "000", "Period": "W2", "Setup cost": 80.0, "Unit cost": 2.0},
                       {"Item": "004", "Period": "W3", "Holding cost": 0.9, "Setup allowed": "no"}],
-        receipts=[{"Item": "001", "Period": "W2", "Quantity": 10.0}, {"Item": "003", "Period": "W1", "Quantity": 6.0}],
+        receipts=[{"Item": "001", "Period": "W2", "Quantity": 10.0},
+                  {"Item": "003", "Period": "W1", "Quantity": 6.0}],
         families=[{"Family": "F", "Setup cost": 30.0, "Setup time": 1.0, "Resource": "R1"}],
         today_plan=(demand + 4.0).tolist(),
         settings={"Title": "Lots", "Period unit": "week", "Periods a year": 52, "Yearly holding rate (%)": 26,

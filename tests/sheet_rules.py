@@ -74,15 +74,20 @@ def front_sheet(book: Returned) -> Iterator[str]:
         return
     if book.formulas.active.title != first:
         yield f"WB-01 {first} is not open on arrival"
-    text = " ".join(str(cell.value) for row in book.values[first].iter_rows() for cell in row if cell.value is not None)
+    text = text_of(book.values[first])
     if not re.search(r"\d{4}-\d{2}-\d{2} \d{2}:\d{2}", text) or ".xls" not in text:
         yield f"WB-01 {first} does not say when it was made, and from which file"
     records = [name for name in book.ours if name.startswith("Run record")]
     if first.startswith("Decision"):
-        record = " ".join(str(c.value) for row in book.values[records[0]].iter_rows() for c in row if c.value) if records else ""
+        record = text_of(book.values[records[0]]) if records else ""
         for word in ("SHA-256", "Version of", "Verdict", "lower bound", "Gap", "Settings used", "Time (seconds)"):
             if word not in record:
                 yield f"WB-01 the run record lacks {word}"
+
+
+def text_of(sheet: Worksheet) -> str:
+    """Everything that stands on a sheet."""
+    return " ".join(str(cell.value) for row in sheet.iter_rows() for cell in row if cell.value is not None)
 
 
 def inputs_unchanged(book: Returned) -> Iterator[str]:
@@ -117,7 +122,8 @@ def tables(sheet: Worksheet) -> Iterator[tuple[int, list[Cell], int]]:
     titles: dict[int, list[Cell]] = {}
     for row in sheet.iter_rows():
         for cell in row:
-            if cell.value is not None and cell.fill.fill_type == "solid" and cell.fill.fgColor.rgb[-6:] == style.PETROL:
+            dark = cell.fill.fill_type == "solid" and cell.fill.fgColor.rgb[-6:] == style.PETROL
+            if cell.value is not None and dark:
                 titles.setdefault(cell.row, []).append(cell)
     for row, cells in titles.items():
         for block in blocks(cells):
@@ -188,7 +194,7 @@ def most_patterns(sheet: str, title: str) -> int:
     """How many patterns a column may hold: more only where sources differ by row, which the sheet says."""
     if sheet.startswith("Ledger") and title == "Rate":
         return 2  # a cell of its own, or distance x rate; a yearly rate on the value
-    if sheet.startswith("Proof") or sheet.startswith("Decision"):
+    if sheet.startswith(("Proof", "Decision")):
         return 20  # one rule a row, one figure a row
     if sheet.startswith("To fix"):
         return 10  # one kind of fault a row
@@ -274,7 +280,8 @@ def nothing_hidden(book: Returned) -> Iterator[str]:
         areas = [(row, titles[0].column, last, titles[-1].column) for row, titles, last in tables(sheet)]
         for merged in sheet.merged_cells.ranges:
             left, top, right, bottom = range_boundaries(str(merged))
-            if any(top <= last and bottom >= row and left <= end and right >= start for row, start, last, end in areas):
+            if any(top <= last and bottom >= row and left <= end and right >= start
+                   for row, start, last, end in areas):
                 yield f"WB-10 {name} merges {merged} inside a table"
 
 

@@ -1,4 +1,4 @@
-"""Whole returned workbooks: rules for good sheets, recalculation by another program, schema, changed and doctored cells."""
+"""Whole returned workbooks: rules for good sheets, recalculation elsewhere, schema, changed and doctored cells."""
 
 import shutil
 from collections.abc import Callable
@@ -97,14 +97,17 @@ CHANGES = {
               ("Settings", "Road factor", "Value", 1.5), ("Settings", "Unmet demand cost", "Value", 33.0),
               ("Customers", "C4", "Demand", 71.0), ("Sites", "0005", "Handling cost", 9.0),
               ("Sites", "0001", "Closing cost", 66.0)],
-    "matrix": [("Lane costs", "S1", "C2", 99.0), ("Lane costs", "S2", "C4", 98.0), ("Sites", "S1", "Fixed cost", 555.0),
+    "matrix": [("Lane costs", "S1", "C2", 99.0), ("Lane costs", "S2", "C4", 98.0),
+               ("Sites", "S1", "Fixed cost", 555.0),
                ("Customers", "C2", "Demand", 44.0)],
-    "whole demand": [("Lane costs", "S1", "C2", 99.0), ("Lane costs", "S4", "C2", 99.0), ("Customers", "C2", "Demand", 44.0),
+    "whole demand": [("Lane costs", "S1", "C2", 99.0), ("Lane costs", "S4", "C2", 99.0),
+                     ("Customers", "C2", "Demand", 44.0),
                      ("Sites", "S1", "Handling cost", 2.5)],
     "lots": [("Items", "000", "Setup cost", 222.0), ("Items", "002", "Holding cost", 0.9),
              ("Settings", "Yearly holding rate (%)", "Value", 40), ("Items", "001", "Unit value", 99.0),
              ("Items", "000", "Unit cost", 0.7), ("Items", "002", "Lost sale cost", 31.0),
-             ("Period costs", "004", "Holding cost", 3.0), ("Demand", "001", "W3", 7.0), ("Families", "F", "Setup cost", 77.0),
+             ("Period costs", "004", "Holding cost", 3.0), ("Demand", "001", "W3", 7.0),
+             ("Families", "F", "Setup cost", 77.0),
              ("Resources", "R1", "Overtime cost", 8.0), ("Resources", "R1", "Use cost", 17.0),
              ("Receipts", "001", "Quantity", 14.0), ("Items", "003", "Opening stock", 30.0)],
 }
@@ -161,7 +164,8 @@ def _cost_of(given: SiteReport | LotReport, source: Path) -> float:
 def _first(sheet: Worksheet, title: str, value: object) -> Cell:
     """First cell with this value under the title in row 4."""
     column = next(cell.column for cell in sheet[4] if str(cell.value).startswith(title))
-    return next(sheet.cell(row, column) for row in range(5, sheet.max_row + 1) if sheet.cell(row, column).value == value)
+    below = (sheet.cell(row, column) for row in range(5, sheet.max_row + 1))
+    return next(cell for cell in below if cell.value == value)
 
 
 def _first_lot(sheet: Worksheet) -> Cell:
@@ -171,7 +175,8 @@ def _first_lot(sheet: Worksheet) -> Cell:
 
 
 DOCTORED = {
-    "a site that delivers is marked closed": ("sites", "Plan sites", lambda s: _first(s, "Open in", "yes"), "no", "Open site"),
+    "a site that delivers is marked closed": (
+        "sites", "Plan sites", lambda s: _first(s, "Open in", "yes"), "no", "Open site"),
     "a delivery is cut": ("matrix", "Plan deliveries", lambda s: _first(s, "Share", 1), 0.5, "Demand"),
     "a delivery is doubled": ("matrix", "Plan deliveries", lambda s: _first(s, "Share", 1), 2, "Demand"),
     "a lot is dropped": ("lots", "Plan lots", _first_lot, 0, "Safety stock"),

@@ -40,7 +40,8 @@ def site_sheets(report: SiteReport, settled: Mapping[str, str]) -> list[ResultSh
     record = run_record(at.name(names.RUN_RECORD), report.workbook, report.run,
                         outcome_of(report.solved, report.case.currency, at.per))
     sheets = [
-        decision, ledger.sheet, plan_sites(at, ledger), plan_customers(at), plan_deliveries(at, ledger), plan_variants(at),
+        decision, ledger.sheet,
+        plan_sites(at, ledger), plan_customers(at), plan_deliveries(at, ledger), plan_variants(at),
         answers_sheet(at.name(names.ANSWERS), report.answers, report.case.currency, at.per), *proof.sheets,
         None if drawn is None else drawn[0], record,
     ]

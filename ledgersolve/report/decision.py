@@ -21,7 +21,8 @@ CHART_ROWS = 20
 
 KICKER = Style(size=9.0, bold=True, colour=style.RUST)
 HEADLINE = Style(size=15.0, bold=True, colour=style.INK, wrap=True, valign="top")
-TILE_LABEL = Style(size=9.0, colour=style.QUIET, fill=style.PALE, top=2, border_colour=style.PETROL, align="left", indent=1)
+TILE_LABEL = Style(
+    size=9.0, colour=style.QUIET, fill=style.PALE, top=2, border_colour=style.PETROL, align="left", indent=1)
 TILE_NUMBER = Style(size=17.0, bold=True, colour=style.PETROL, fill=style.PALE, align="left", indent=1)
 TILE_NOTE = Style(size=8.0, colour=style.QUIET, fill=style.PALE, wrap=True, valign="top", align="left", indent=1)
 WARNING = Style(bold=True, colour=style.ALARM, wrap=True)
@@ -126,7 +127,8 @@ def _tile(sheet: ResultSheet, row: int, columns: tuple[int, int], tile: Tile, ho
     look = replace(TILE_NUMBER, size=12.0, wrap=True)
     if isinstance(value, int | float):
         shown = f"{value:,.{style.money_digits(currency)}f}"
-        look = replace(TILE_NUMBER, number_format=style.money_format(currency), size=17.0 if len(shown) < 15 else 12.0)
+        size = 17.0 if len(shown) < 15 else 12.0
+        look = replace(TILE_NUMBER, number_format=style.money_format(currency), size=size)
     lines = ((label, TILE_LABEL, ""), (value, look, formula), (note, TILE_NOTE, ""))
     first, last = columns
     for place, (words, line, calculated) in enumerate(lines, start=row):
@@ -174,10 +176,10 @@ def _part_row(sheet: ResultSheet, row: int, total_row: int, label: str, figure: 
               looks: tuple[Style, str]) -> None:
     look, money = looks
     sheet.put(row, RIGHT, label, look)
-    sheet.put(row, RIGHT + 1, figure.value, replace(look, align="right", indent=0, number_format=money), formula=figure.written)
+    sheet.put(row, RIGHT + 1, figure.value, style.with_format(look, money), formula=figure.written)
     share = figure.value / total if total else None
     formula = f"=F{row + 1}/F${total_row + 1}" if total else ""
-    sheet.put(row, RIGHT + 2, share, replace(look, align="right", indent=0, number_format=style.PERCENT), formula=formula)
+    sheet.put(row, RIGHT + 2, share, style.with_format(look, style.PERCENT), formula=formula)
 
 
 def parts_chart(name: str, row: int, amounts: Sequence[float], currency: str, per: str) -> Chart:
@@ -186,7 +188,8 @@ def parts_chart(name: str, row: int, amounts: Sequence[float], currency: str, pe
     series = Series("Cost", Area(name, row, RIGHT, row + count - 1, RIGHT),
                     Area(name, row, RIGHT + 1, row + count - 1, RIGHT + 1), style.PETROL)
     return Chart("bar", "Cost by part", (series,), 0, RIGHT, y_title=f"{currency}{per}", number_format="#,##0",
-                 legend="", from_zero=not negative, step=style.axis_step(max(amounts, default=0.0)), description="Bars of the cost parts that stand in the table above")
+                 legend="", from_zero=not negative, step=style.axis_step(max(amounts, default=0.0)),
+                 description="Bars of the cost parts that stand in the table above")
 
 
 def _charts(sheet: ResultSheet, charts: Sequence[Chart], row: int) -> int:
@@ -252,13 +255,15 @@ def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[st
     least = 10.0 ** -style.money_digits(currency)
     if solved.verdict is Verdict.PROVEN_BEST and rest < least:
         smallest = style.figure_words(least, style.money_digits(currency))
-        return [f"Proven: no plan that keeps the rules of the workbook is cheaper, not even by {smallest} {currency}."]
+        return [f"Proven: no plan that keeps the rules of the workbook is cheaper, not even by {smallest} "
+                f"{currency}."]
     gap = f" ({style.percent_words(rest / cost, 'up')})" if cost > 0 else ""
     if solved.verdict is Verdict.PROVEN_BEST:
         return [f"Proven, as far as it matters: no plan that keeps the rules is cheaper by more than {most}{gap}."]
     if solved.verdict is Verdict.WITHIN_GAP:
         stop = style.percent_words(accepted_gap)
-        return [f"Good enough by your own setting: the search stopped once no plan could be cheaper by more than {stop}. "
+        return ["Good enough by your own setting: the search stopped once no plan could be cheaper by more than "
+                f"{stop}. "
                 f"At most {most}{gap} could still be saved."]
     return ["The time limit ended the search. This is the best plan found; a better one could save at most "
             f"{most}{gap}. Whether there is one is not known: a higher time limit may tell."]

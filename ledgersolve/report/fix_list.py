@@ -41,11 +41,15 @@ def _head(sheet: ResultSheet, errors: Sequence[Problem], run: RunFacts, title: s
     places = sum(problem.count for problem in errors)
     sheet.put(0, 0, f"To fix: {style.counted(places, 'place')} in {title or run.file_name}", style.TITLE)
     sheet.heights[0] = 26.0
-    paragraph(sheet, 1, 0, 7, "This workbook was not solved, because something in it is missing or cannot be right. Nothing in "
+    paragraph(sheet, 1, 0, 7, "This workbook was not solved, because something in it is missing or cannot be "
+                              "right. Nothing in "
               "your sheets was changed; the cells are marked where they stand.", replace(style.TEXT, size=11.0))
-    paragraph(sheet, 2, 0, 7, "What to do: go down the list (a click on the cell leads there), mend each cell, and watch its "
-              f"status turn to \"{DONE}\" and its mark vanish. Entries that need other data turn green only after the next drop. "
-              "Then save the workbook and drop it again: list and marks go by themselves.", replace(style.TEXT, size=11.0))
+    paragraph(sheet, 2, 0, 7, "What to do: go down the list (a click on the cell leads there), mend each cell, and "
+                              "watch its "
+              f"status turn to \"{DONE}\" and its mark vanish. Entries that need other data turn green only after "
+              "the next drop. "
+              "Then save the workbook and drop it again: list and marks go by "
+              "themselves.", replace(style.TEXT, size=11.0))
     words = f"{run.file_name}, {run.when:%Y-%m-%d %H:%M}"
     sheet.put(3, 0, words, style.SMALL)
     return 5
@@ -66,7 +70,8 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
     left = sum(1 for problem in errors if _status(problem, 0)[1])
     sheet.put(row, 3, "Entries whose cell is mended (live)", style.BOLD)
     sheet.put(row, 4, 0, style.number(style.WHOLE), formula=f'=COUNTIF({span},"{DONE}")')
-    sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}; {left} of them show by themselves when they are "
+    sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}; {left} of them show by themselves "
+                          "when they are "
               "mended", style.NOTE)
     sheet.put(list_row - 1, 0, "Errors", style.SECTION)
     return list_row
@@ -83,17 +88,19 @@ def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bo
         Column("found", "Found", [_found(p) for p in problems], wrapped, WIDTHS[3]),
         Column("expected", "Expected", [p.expected for p in problems], wrapped, WIDTHS[4]),
         Column("remedy", "What to do", [p.remedy for p in problems], wrapped, WIDTHS[5]),
-        Column("count", "Places (number)", [p.count for p in problems], replace(style.number(style.WHOLE), valign="top"), WIDTHS[6]),
+        Column("count", "Places (number)", [p.count for p in problems],
+               replace(style.number(style.WHOLE), valign="top"), WIDTHS[6]),
     ]
     if live:
         columns.append(Column("status", "Status", [value for value, _ in status],
                               replace(style.BOLD, align="center", valign="top"), WIDTHS[7],
                               [formula for _, formula in status]))
         limits = replace(style.number("General"), valign="top", size=9.0, colour=style.QUIET)
-        columns.append(Column("low", "Right from (value)", [_low(p) if f else None for p, (_, f) in zip(problems, status, strict=True)],
-                              limits, WIDTHS[8]))
-        columns.append(Column("high", "Right up to (value)", [p.high if f else None for p, (_, f) in
-                                                      zip(problems, status, strict=True)], limits, WIDTHS[9]))
+        live_ones = list(zip(problems, status, strict=True))
+        low = [_low(problem) if formula else None for problem, (_, formula) in live_ones]
+        high = [problem.high if formula else None for problem, (_, formula) in live_ones]
+        columns.append(Column("low", "Right from (value)", low, limits, WIDTHS[8]))
+        columns.append(Column("high", "Right up to (value)", high, limits, WIDTHS[9]))
     write_table(sheet, row, columns)
     if live and problems:
         for word, look in ((DONE, style.FINE), (TO_FIX, style.BAD)):

@@ -44,7 +44,8 @@ def lot_decision(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> ResultSheet
         comparison=_comparison(at, ledger), comparison_title="Against today",
         parts=[(name, Figure(amounts[name], ledger.part(name))) for name in ledger.parts],
         total=Figure(report.audit.total, ledger.total), changes=_changes(at), sure=_sure(at), binding=_binding(at),
-        check=_check(at), asked=asked_ahead(report.answers), glossary=GLOSSARY, provenance=provenance(report.workbook, report.run),
+        check=_check(at), asked=asked_ahead(report.answers), glossary=GLOSSARY,
+        provenance=provenance(report.workbook, report.run),
         currency=report.case.currency, per="",
     )
     return write_decision(at.name(names.DECISION), page, picture(at))
@@ -94,10 +95,12 @@ def _tiles(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
         still = ("Could still be saved, at most", max(0.0, cost - report.solved.bound), "",
                  f"{currency}; {saving_note(report.solved)}")
     return [
-        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"over {report.case.t} {report.case.period_unit}s; line "
+        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"over {report.case.t} "
+                                                                      f"{report.case.period_unit}s; line "
          "by line in the ledger"),
         against, still,
-        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in Proof"),
+        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in "
+                                                             "Proof"),
     ]
 
 
@@ -116,11 +119,13 @@ def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
               value(report.plan.stock), "#,##0.0", f"=SUM({at.stock.whole()})/COLUMNS({at.stock.line(0)})"),
     ]
     if at.may_wait:
-        rows.append(_sum_row(f"Late (units x {case.period_unit}s)", None if before is None else before.late, report.plan.late))
+        late = None if before is None else before.late
+        rows.append(_sum_row(f"Late (units x {case.period_unit}s)", late, report.plan.late))
     if at.may_lose:
         rows.append(_sum_row("Never delivered (units)", None if before is None else before.lost, report.plan.lost))
     if case.resources:
-        rows.append(_sum_row("Overtime (time units)", None if before is None else before.overtime, report.plan.overtime))
+        overtime = None if before is None else before.overtime
+        rows.append(_sum_row("Overtime (time units)", overtime, report.plan.overtime))
     return rows
 
 
@@ -178,7 +183,8 @@ def _sure(at: LotPlaces) -> list[str]:
     return [
         *how_sure(report.solved, report.case.currency, report.workbook.run.accepted_gap),
         "The plan was recomputed by a second, separate part of the program: every rule holds, and the costs agree.",
-        f"Stock, load and cost are formulas over the lots and your own cells: {at.name(names.PROOF)} watches every rule.",
+        f"Stock, load and cost are formulas over the lots and your own cells: {at.name(names.PROOF)} watches every "
+        "rule.",
     ]
 
 
@@ -194,8 +200,8 @@ def _binding(at: LotPlaces) -> list[str]:
         if over.size:
             points.append(f"{code} needs overtime in {style.counted(int(over.size), case.period_unit)}.")
     for label, which in (
-        ("Most stock reached", (plan.stock >= FULL * case.most_stock[:, None]) & np.isfinite(case.most_stock)[:, None]),
-        ("Least lot reached", plan.setup & (case.least_lot[:, None] > 0) & (plan.made <= case.least_lot[:, None] / FULL)),
+        ("Most stock reached", plan.stock >= FULL * case.most_stock[:, None]),
+        ("Least lot reached", plan.setup & (plan.made <= case.least_lot[:, None] / FULL)),
         ("Most lot reached", plan.setup & (plan.made >= FULL * case.most_lot[:, None])),
     ):
         items = np.flatnonzero(which.any(axis=1)).tolist()
@@ -208,11 +214,14 @@ def _check(at: LotPlaces) -> list[str]:
     case = at.report.case
     points = ["Inputs: are demand, opening stock, setup costs and times still right?"]
     if case.resources:
-        points.append("Capacity: holidays, maintenance and staff in the full periods; whether overtime may be asked for.")
-    points.append("Order of lots within a period, shelf life, tools, quality holds and suppliers are not in this workbook.")
+        points.append("Capacity: holidays, maintenance and staff in the full periods; whether overtime may be "
+                      "asked for.")
+    points.append("Order of lots within a period, shelf life, tools, quality holds and suppliers are not in this "
+                  "workbook.")
     if at.may_lose and at.report.plan.lost.any():
         points.append("Lost sales: who tells the customers, and what was promised to them.")
-    points.append("Labour rules and contracts, and matters that only licensed professionals may decide, are not in this "
+    points.append("Labour rules and contracts, and matters that only licensed professionals may decide, are not in "
+                  "this "
                   "workbook.")
     return points
 
@@ -232,7 +241,8 @@ def picture(at: LotPlaces) -> Chart:
     load, available = at.load_block(0), at.load_block(1)
     titles = Area(load.sheet, load.first_row - 1, FIRST_PERIOD, load.first_row - 1, last)
     both = (
-        Series("Load", titles, Area(load.sheet, load.first_row + r, FIRST_PERIOD, load.first_row + r, last), style.PETROL),
+        Series("Load", titles, Area(load.sheet, load.first_row + r, FIRST_PERIOD, load.first_row + r, last),
+               style.PETROL),
         Series("Time available", titles,
                Area(load.sheet, available.first_row + r, FIRST_PERIOD, available.first_row + r, last), style.RUST,
                kind="line", marker="square", marker_size=5),

@@ -21,7 +21,8 @@ def plan_lots(at: LotPlaces) -> ResultSheet:
     write_periods(at, sheet, table)
     shade(sheet, at.made, "{cell}>0", MADE)
     _lots_by_period(at, sheet)
-    words = (f"Quantity made in each {case.period_unit}: each dark cell is a lot with its setup. These cells are the plan: "
+    words = (f"Quantity made in each {case.period_unit}: each dark cell is a lot with its setup. These cells are "
+             "the plan: "
              "stock, load and ledger follow from them.")
     return _finished(at, sheet, "Lots in the plan", words)
 
@@ -79,7 +80,8 @@ def plan_stock(at: LotPlaces) -> ResultSheet:
     write_periods(at, sheet, table)
     shade(sheet, at.stock, "{cell}<0", ALERT)
     shade(sheet, at.stock, "{cell}>0", SOME)
-    words = (f"Stock at the end of each {case.period_unit} = stock before + receipts + made - demand (less what is late or "
+    words = (f"Stock at the end of each {case.period_unit} = stock before + receipts + made - demand (less what is "
+             "late or "
              "lost). Change a demand cell and the stock follows.")
     return _finished(at, sheet, "Stock in the plan", words)
 
@@ -173,9 +175,11 @@ def plan_load(at: LotPlaces) -> ResultSheet:
 def _families(at: LotPlaces, sheet: ResultSheet) -> None:
     case, block = at.report.case, at.load_block(5)
     resource = [case.resources[r] if r >= 0 else None for r in case.family_resource.tolist()]
-    time = [at.figure("Families", (code,), "Setup time", float(case.family_time[f])) for f, code in enumerate(case.families)]
+    time = [at.figure("Families", (code,), "Setup time", float(case.family_time[f]))
+            for f, code in enumerate(case.families)]
+    time_look = style.number(style.figure_format([figure.value for figure in time]))
     side = [Column("resource", "Resource", resource, width=11),
-            Column("time", "Setup time (time units)", [f.value for f in time], style.number(style.figure_format([f.value for f in time])), 11,
+            Column("time", "Setup time (time units)", [f.value for f in time], time_look, 11,
                    [f.formula for f in time])]
     sheet.put(block.first_row - 2, 0, "Family setups (1 = any member is made)", style.SECTION)
     made, family = at.made, at.made.side(FAMILY)
@@ -184,8 +188,9 @@ def _families(at: LotPlaces, sheet: ResultSheet) -> None:
         code = f"$A{block.first_row + f + 1}"
         return f"IF(SUMPRODUCT(({family}={code})*({made.column(t)}>0))>0,1,0)"
 
-    write_periods(at, sheet, PeriodTable(block, case.families, [""] * len(case.families), ["1 or 0"] * len(case.families),
-                                         at.family_runs, style.WHOLE, runs, side=side, code_title="Family"))
+    count = len(case.families)
+    write_periods(at, sheet, PeriodTable(block, case.families, [""] * count, ["1 or 0"] * count, at.family_runs,
+                                         style.WHOLE, runs, side=side, code_title="Family"))
     shade(sheet, block, "{cell}>0", MADE)
 
 

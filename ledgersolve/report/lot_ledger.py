@@ -124,7 +124,8 @@ def _rate(at: LotPlaces, kind: _Kind, i: int, t: int) -> Source:
         worth, yearly = origins.number("Items", (code,), "Unit value"), origins.setting("Yearly holding rate (%)")
         year = origins.setting("Periods a year")
         if worth is not None and yearly is not None and year is not None and value:
-            return Source(Figure(value, f"{worth.formula}*{yearly.formula}/100/{year.formula}"), worth, "x yearly rate")
+            formula = f"{worth.formula}*{yearly.formula}/100/{year.formula}"
+            return Source(Figure(value, formula), worth, "x yearly rate")
     return _constant(at, "Items", (code,), kind.title, value)
 
 
@@ -165,7 +166,9 @@ def _listed(at: LotPlaces, part: str, sheet: str, title: str, codes: tuple[str, 
         value = float(costs[k])
         if ref is None and value == 0:
             continue
-        source = Source(Figure(value, ref.formula), ref) if ref is not None else _constant(at, sheet, (code,), title, value)
+        source = _constant(at, sheet, (code,), title, value)
+        if ref is not None:
+            source = Source(Figure(value, ref.formula), ref)
         lines.append(Line((part, k, -1), code, "", Figure(float(amounts[k]), cell(k)), source.figure, source.ref,
                           source.note))
     return group_of_lines(lines)

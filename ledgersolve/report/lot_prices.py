@@ -31,11 +31,12 @@ class TimePrices:
 def time_prices(at: LotPlaces) -> TimePrices | None:
     """Lay out the prices of time; None without resources, prices or a bound from them."""
     case, given = at.report.case, at.report.solved.prices
-    if not case.resources or given is None or given.shape != case.capacity.shape or not np.isfinite(case.capacity).all():
+    limited = np.isfinite(case.capacity).all() and np.isfinite(case.overtime_limit).all()
+    if not case.resources or not limited or given is None or given.shape != case.capacity.shape:
         return None
     prices = np.maximum(np.asarray(given, dtype=np.float64), 0.0)
     bound = price_bound(case, prices)
-    if not np.isfinite(bound) or not np.isfinite(case.overtime_limit).all():
+    if not np.isfinite(bound):
         return None
     sheet = ResultSheet(at.name(names.PROOF_PRICES), tab_colour=style.RUST, landscape=True, frozen=(0, 2))
     worth = _worth(at, prices)
@@ -43,7 +44,8 @@ def time_prices(at: LotPlaces) -> TimePrices | None:
     given_back = float(worth.sum())
     row = second.first_row + second.rows + 2
     items_cell = _items(at, sheet, row, prices, bound - given_back)
-    heading(sheet, "Prices behind the proof", "One price for each time unit of a resource in each period; 0 where time is "
+    heading(sheet, "Prices behind the proof", "One price for each time unit of a resource in each period; 0 where "
+                                              "time is "
             "not scarce. The sheet Proof adds the figures up.", 8)
     sheet.footer = FOOTER
     return TimePrices(sheet, bound - given_back, items_cell, given_back, f"SUM({second.sums()})")
@@ -76,8 +78,9 @@ def _blocks(at: LotPlaces, sheet: ResultSheet, prices: Floats, worth: Floats) ->
         return f"-{price}*{cell.formula}{tail}"
 
     sheet.put(first.first_row - 2, 0, f"Prices of time ({unit})", style.SECTION)
-    write_periods(at, sheet, PeriodTable(first, case.resources, blank, [unit] * count, prices,
-                                         style.rate_format(case.currency, [0.001]), sum_title="", code_title="Resource"))
+    rates = style.rate_format(case.currency, prices.ravel().tolist())
+    write_periods(at, sheet, PeriodTable(first, case.resources, blank, [unit] * count, prices, rates, sum_title="",
+                                         code_title="Resource"))
     sheet.put(second.first_row - 2, 0, f"Worth of the time available ({case.currency})", style.SECTION)
     write_periods(at, sheet, PeriodTable(second, case.resources, blank, [case.currency] * count, worth,
                                          style.money_format(case.currency), formula, code_title="Resource"))

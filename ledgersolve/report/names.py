@@ -20,6 +20,7 @@ _WANTED = {
 def wanted_names(kind: str) -> tuple[str, ...]:
     """Give the sheet names a report of this kind may use, in order.
 
-    ``kind`` is ``site selection``, ``lot sizing``, ``to fix`` or ``no plan``; a report leaves out sheets it has nothing for.
+    ``kind`` is ``site selection``, ``lot sizing``, ``to fix`` or ``no plan``; a report leaves out sheets it has
+    nothing for.
     """
     return _WANTED[kind]

@@ -18,17 +18,20 @@ WIDTHS = (46.0, 16.0, 40.0, 46.0)
 _SAID = {
     "no plan exists": (
         "No plan can keep all the rules of this workbook.",
-        "This is proven, not a matter of time: the rows and rules below cannot hold together. Change one of them, smallest "
+        "This is proven, not a matter of time: the rows and rules below cannot hold together. Change one of them, "
+        "smallest "
         "change first, save the workbook and drop it again.",
     ),
     "none found": (
         "No plan was found within the time limit.",
-        "That does not mean that there is none. Raise the time limit in Settings, or loosen a rule (capacity, counts, "
+        "That does not mean that there is none. Raise the time limit in Settings, or loosen a rule (capacity, "
+        "counts, "
         "distances, unmet demand at a cost), save the workbook and drop it again.",
     ),
     "failed": (
         "This workbook could not be solved, for a reason that does not lie in it.",
-        "Nothing in your sheets has to be changed. Drop the workbook again; if the same happens, hand this copy to whoever "
+        "Nothing in your sheets has to be changed. Drop the workbook again; if the same happens, hand this copy to "
+        "whoever "
         "looks after the service: the run record says what is known.",
     ),
 }
@@ -36,7 +39,8 @@ _SAID = {
 
 def no_plan_sheets(given: NoPlan, settled: Mapping[str, str]) -> list[ResultSheet]:
     """Sheets of a workbook without a plan: what happened and what to do, then the run record."""
-    sheet = ResultSheet(settled.get(names.NO_PLAN, names.NO_PLAN), tab_colour=style.RUST, widths=dict(enumerate(WIDTHS)))
+    name = settled.get(names.NO_PLAN, names.NO_PLAN)
+    sheet = ResultSheet(name, tab_colour=style.RUST, widths=dict(enumerate(WIDTHS)))
     headline, advice = _SAID.get(given.what, _SAID["failed"])
     sheet.put(0, 0, given.workbook.title, replace(style.TITLE, size=13.0, colour=style.QUIET))
     paragraph(sheet, 1, 0, 3, headline, Style(size=15.0, bold=True))
@@ -46,9 +50,8 @@ def no_plan_sheets(given: NoPlan, settled: Mapping[str, str]) -> list[ResultShee
         row += 1
     if given.conflicts:
         _conflicts(sheet, row + 1, given)
-    sheet.put(row + 3 + len(given.conflicts), 0, f"{given.run.file_name}, {given.run.when:%Y-%m-%d %H:%M}. No cost is shown, "
-              "because no plan exists to have one." if given.what == "no plan exists" else
-              f"{given.run.file_name}, {given.run.when:%Y-%m-%d %H:%M}. No cost is shown, because there is no plan to have one.",
+    made = f"{given.run.file_name}, {given.run.when:%Y-%m-%d %H:%M}."
+    sheet.put(row + 3 + len(given.conflicts), 0, f"{made} No cost is shown, because there is no plan to have one.",
               style.SMALL)
     sheet.landscape = True
     sheet.footer = FOOTER

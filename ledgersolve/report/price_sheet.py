@@ -9,7 +9,6 @@ from ledgersolve.report.certificate import Certificate
 from ledgersolve.report.site_places import SitePlaces, lane_cell
 from ledgersolve.report.tables import FIRST_ROW, FOOTER, heading, quoted
 from ledgersolve.site_selection.case import Flags
-from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.workbook.cells import column_letters
 from ledgersolve.workbook.origins import MatrixMap
 from ledgersolve.workbook.sheets import ResultSheet
@@ -61,11 +60,11 @@ class PriceSheet:
         return f"{quoted(self.sheet.name)}!${column_letters(FIRST_COLUMN + 1)}${row + 1}:${last}${row + 1}"
 
 
-def price_sheet(at: SitePlaces, lanes: Lanes, certificate: Certificate) -> tuple[Certificate, PriceSheet | None]:
-    """Lay out prices; gives the certificate as the sheet shows it (None for the sheet: too many customers)."""
+def price_sheet(at: SitePlaces, certificate: Certificate) -> PriceSheet | None:
+    """Lay out the prices; None where there are too many customers."""
     case = at.report.case
     if case.n > MOST_CUSTOMERS:
-        return certificate, None
+        return None
     sheet = ResultSheet(at.name(names.PROOF_PRICES), tab_colour=style.RUST, landscape=True)
     matrix = _own_matrix(at, certificate)
     costs: tuple[str, ...] | None
@@ -81,12 +80,13 @@ def price_sheet(at: SitePlaces, lanes: Lanes, certificate: Certificate) -> tuple
     _write_prices(at, sheet, certificate, order)
     first, last = column_letters(FIRST_COLUMN + 1), column_letters(FIRST_COLUMN + case.n)
     total = f"SUM({quoted(sheet.name)}!${first}${WHOLE_ROW + 1}:${last}${WHOLE_ROW + 1})"
-    return certificate, PriceSheet(sheet, total, words, at, costs)
+    return PriceSheet(sheet, total, words, at, costs)
 
 
 def _words(at: SitePlaces, laid_out: bool) -> str:
     if not laid_out:
-        return (f"With {at.report.case.m:,} x {at.report.case.n:,} lanes the costs are too many to lay out; the gains are "
+        return (f"With {at.report.case.m:,} x {at.report.case.n:,} lanes the costs are too many to lay out; the "
+                "gains are "
                 "figures of the program, all else is formulas.")
     if at.report.case.m * at.report.case.n <= LINKED_LANES:
         return ("Lane costs stand under the prices, each a formula into its own cell where it has one (costs from "
@@ -157,7 +157,8 @@ def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, 
     case = at.report.case
     unit, money = case.demand_unit, case.currency
     rows = ((CODE_ROW, "Customer", "Unit"), (DEMAND_ROW, "Demand", f"{unit}{at.per}"),
-            (PRICE_ROW, f"Price per {unit}", f"{money} per {unit}"), (WHOLE_ROW, "Price of the whole demand", at.money_unit))
+            (PRICE_ROW, f"Price per {unit}", f"{money} per {unit}"),
+            (WHOLE_ROW, "Price of the whole demand", at.money_unit))
     for row, label, words in rows:
         sheet.put(row, 0, label, style.HEADER if row == CODE_ROW else style.BOLD)
         sheet.put(row, 1, words, style.HEADER if row == CODE_ROW else style.NOTE)
@@ -168,7 +169,8 @@ def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, 
         letter = column_letters(column + 1)
         demand, price = float(case.demand[i]), float(certificate.price[i])
         sheet.put(CODE_ROW, column, case.customers[i], header)
-        sheet.put(DEMAND_ROW, column, demand, style.number(at.demand_format), formula=f"={at.customers_at.cell('demand', i)}")
+        cell = at.customers_at.cell("demand", i)
+        sheet.put(DEMAND_ROW, column, demand, style.number(at.demand_format), formula=f"={cell}")
         if demand > 0 and not case.cost_is_whole:
             formula = f"={letter}{DEMAND_ROW + 1}*{letter}{PRICE_ROW + 1}"
             sheet.put(PRICE_ROW, column, price / demand, rates)
@@ -177,7 +179,8 @@ def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, 
             sheet.put(WHOLE_ROW, column, price, amounts)
         sheet.widths[column] = 14.0
     sheet.widths |= {0: 24.0, 1: 26.0}
-    heading(sheet, "Prices behind the proof", "One price a customer, and what serving it costs from each site. The sheet "
+    heading(sheet, "Prices behind the proof", "One price a customer, and what serving it costs from each site. The "
+                                              "sheet "
             "Proof adds them up to a bound that no plan can undercut.", 8)
     sheet.frozen = (CODE_ROW + 1, 2)
     sheet.pages_wide = 0

@@ -35,10 +35,12 @@ def _service_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:
     if case.n * at.sites.size <= SERVED_CELLS:
         off = f"ABS({where.span('delivered')}+{where.span('unmet')}-1)>{tolerance}"
         needed = "" if case.cost_is_whole else f"({where.span('demand')}>0)*"
-        yield count_check("Demand", f"all {case.n:,} customers", "delivered and unmet make the whole demand: none off",
+        yield count_check("Demand", f"all {case.n:,} customers", "delivered and unmet make the whole demand: none "
+                                                                 "off",
                           f"SUMPRODUCT({needed}({off}))")
         if case.single_source.any():
-            yield count_check("Single source", f"{int(case.single_source.sum()):,} customers", "one site each: none off",
+            yield count_check("Single source", f"{int(case.single_source.sum()):,} "
+                                               "customers", "one site each: none off",
                               f'COUNTIFS({where.span("single")},"yes",{where.span("sites")},">1")')
     if case.unmet_cost is None:
         yield count_check("Unmet demand", f"all {case.n:,} customers", "none", f"SUM({where.span('unmet')})")

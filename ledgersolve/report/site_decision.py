@@ -27,7 +27,8 @@ from ledgersolve.workbook.sheets import Chart, ResultSheet
 
 FULL = 0.9995
 GLOSSARY = (
-    ("Cost of the plan", "everything in the ledger, for the period covered; one-off opening and closing costs in full"),
+    ("Cost of the plan", "everything in the ledger, for the period covered; one-off opening and closing costs in "
+                         "full"),
     ("Today", "the sites in use today, with deliveries at their best"),
     ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less that "
      "amount"),
@@ -47,7 +48,8 @@ def site_decision(at: SitePlaces, ledger: Ledger, checks: ChecksAt, picture: Cha
         changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
         comparison=_comparison(at, ledger), comparison_title="Against today", parts=parts,
         total=Figure(report.audit.total, ledger.total),
-        changes=_changes(at), sure=_sure(at), binding=_binding(at), check=_check(at), asked=asked_ahead(report.answers), glossary=GLOSSARY,
+        changes=_changes(at), sure=_sure(at), binding=_binding(at), check=_check(at),
+        asked=asked_ahead(report.answers), glossary=GLOSSARY,
         provenance=provenance(report.workbook, report.run), currency=case.currency, per=at.per,
     )
     return write_decision(name, page, picture)
@@ -70,7 +72,8 @@ def _headline(at: SitePlaces) -> str:
     running = int(plan.open.sum())
     cost = _money(at, at.report.audit.total)
     if running == 0:
-        return f"Run no site at all: leaving all demand unmet costs {cost} per {case.period_covered}, and no site is cheaper."
+        return (f"Run no site at all: leaving all demand unmet costs {cost} per {case.period_covered}, and no site "
+                "makes that cheaper.")
     sites = f"Run {_names(at, plan.open)}" if running == 1 else (
         f"Run {running} of {style.counted(case.m, 'site')}: {_names(at, plan.open)}")
     return f"{sites}. All together that costs {cost} per {case.period_covered}."
@@ -81,15 +84,17 @@ def _against_today(at: SitePlaces) -> str:
     if today is None:
         return ""
     if today.solved.cost is None:
-        return "Today's sites alone cannot keep the rules of this workbook, so there is no cost of today to compare with."
+        return "Today's sites alone cannot keep the rules of this workbook: there is no cost of today to compare with."
     saved = today.solved.cost - at.report.audit.total
     count = style.counted(int(at.report.case.today.sum()), "site")
     if abs(saved) < 0.5 * 10.0 ** -style.money_digits(at.report.case.currency):
         return f"That is what today's {count} cost with deliveries at their best: no change pays."
     part = style.percent_words(abs(saved) / today.solved.cost, "down") if today.solved.cost else ""
     if saved > 0:
-        return f"That is {_money(at, saved, 'down')} ({part}) less than today's {count} cost with deliveries at their best."
-    return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count or group "
+        less = f"{_money(at, saved, 'down')} ({part}) less"
+        return f"That is {less} than today's {count} cost with deliveries at their best."
+    return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count "
+            "or group "
             "rule of this workbook that the plan keeps.")
 
 
@@ -111,10 +116,12 @@ def _tiles(at: SitePlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
         still = ("Could still be saved, at most", max(0.0, cost - report.solved.bound), "",
                  f"{currency}; {saving_note(report.solved)}")
     return [
-        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"per {report.case.period_covered}; line by line in "
+        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"per {report.case.period_covered}; line by "
+                                                                      "line in "
          "the ledger"),
         against, still,
-        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in Proof"),
+        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in "
+                                                             "Proof"),
     ]
 
 
@@ -125,7 +132,8 @@ def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
     cost = report.today.solved.cost if report.today is not None else None
     missing = "not asked for" if report.today is None else "not possible"
     rows = [
-        Today(f"Cost ({at.money_unit})", missing if cost is None else cost, report.audit.total, money, f"={ledger.total}"),
+        Today(f"Cost ({at.money_unit})", missing if cost is None else cost, report.audit.total, money,
+              f"={ledger.total}"),
         Today("Open sites (number)", int(case.today.sum()) if at.has_today else missing, int(report.plan.open.sum()),
               style.WHOLE, f'=COUNTIF({at.sites_at.span("open")},"yes")'),
     ]
@@ -133,8 +141,9 @@ def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
         rows.append(Today(f"Average distance ({case.distance_unit})", missing if before is None else
                           _average_distance(at, before), _average_distance(at, report.plan), "#,##0.0"))
     if case.unmet_cost is not None:
-        rows.append(Today(f"Unmet demand ({case.demand_unit})", missing if before is None else
-                          float(before.unmet @ case.demand), float(report.plan.unmet @ case.demand), at.demand_format))
+        was = missing if before is None else float(before.unmet @ case.demand)
+        rows.append(Today(f"Unmet demand ({case.demand_unit})", was, float(report.plan.unmet @ case.demand),
+                          at.demand_format))
     moved, volume = _moved(at)
     if before is not None:
         total = float(case.demand.sum())
@@ -183,13 +192,16 @@ def _changes(at: SitePlaces) -> list[str]:
     if movers:
         largest = sorted(movers, key=lambda i: -case.demand[i])[:4]
         who = style.listed([case.customer_names[i] for i in largest])
-        points.append(f"{style.counted(len(movers), 'customer')} get another main site; the largest: {who}. All of them are "
+        moved = style.counted(len(movers), "customer gets", "customers get")
+        points.append(f"{moved} another main site; the largest: {who}. All of "
+                      "them are "
                       f"shaded in {at.name(names.PLAN_CUSTOMERS)}.")
     elif at.report.today is not None and at.report.today.solved.plan is not None:
         points.append("No customer gets another main site.")
     unmet = plan.unmet > 0
     if unmet.any():
-        points.append(f"{style.counted(int(unmet.sum()), 'customer')} do not get all of their demand.")
+        short = style.counted(int(unmet.sum()), "customer does", "customers do")
+        points.append(f"{short} not get all of the demand.")
     return points
 
 
@@ -197,9 +209,11 @@ def _sure(at: SitePlaces) -> list[str]:
     report = at.report
     points = how_sure(report.solved, report.case.currency, report.workbook.run.accepted_gap)
     if report.solved.prices is not None:
-        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, what no plan "
+        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, "
+                      "what no plan "
                       "can undercut.")
-    points.append("The plan was recomputed by a second, separate part of the program: every rule holds, and the costs "
+    points.append("The plan was recomputed by a second, separate part of the program: every rule holds, and the "
+                  "costs "
                   "agree.")
     return points
 
@@ -241,7 +255,8 @@ def _promise_words(at: SitePlaces) -> str:
 
 def _check(at: SitePlaces) -> Sequence[str]:
     case, plan = at.report.case, at.report.plan
-    points = ["Inputs: are the costs, demands and capacities of the open sites, and of the best closed ones, still right?"]
+    points = ["Inputs: are the costs, demands and capacities of the open sites, and of the best closed ones, still "
+              "right?"]
     if at.report.workbook.road_cost is not None and case.site_latitude is not None:
         points.append("Distances: straight lines times a road factor; check water, mountains and borders.")
     opened, closed = plan.open & ~case.today, case.today & ~plan.open
@@ -249,6 +264,7 @@ def _check(at: SitePlaces) -> Sequence[str]:
         points.append("Sites that open: permits, building, staff, time to start.")
     if at.has_today and closed.any():
         points.append("Sites that close: people, leases, contracts, and what customers were promised.")
-    points.append("Local rules (labour, zoning, customs, transport), and matters that only licensed professionals may decide, "
+    points.append("Local rules (labour, zoning, customs, transport), and matters that only licensed professionals "
+                  "may decide, "
                   "are not in this workbook.")
     return points

@@ -96,7 +96,8 @@ def _capacity_columns(at: SitePlaces) -> list[Column]:
     ]
     if case.least_volume.any():
         least = [origins.number("Sites", (code,), "Least volume") for code in case.sites]
-        columns.append(Column("least", f"Least volume if open ({case.demand_unit}{at.per})", case.least_volume.tolist(),
+        columns.append(Column("least", "Least volume if open "
+                                       f"({case.demand_unit}{at.per})", case.least_volume.tolist(),
                               figures, 14, [ref.formula if ref is not None else "" for ref in least]))
     return columns
 
@@ -144,7 +145,8 @@ def plan_deliveries(at: SitePlaces, ledger: Ledger) -> ResultSheet:
     columns = [
         Column("site", "Site", [case.sites[j] for j, _ in pairs], width=fitting_width(case.sites)),
         Column("site name", "Site name", [site_names[j] for j, _ in pairs], width=fitting_width(site_names)),
-        Column("customer", "Customer", [case.customers[i] for _, i in pairs], width=fitting_width(case.customers, 10)),
+        Column("customer", "Customer", [case.customers[i] for _, i in pairs],
+               width=fitting_width(case.customers, 10)),
         Column("customer name", "Customer name", [customer_names[i] for _, i in pairs],
                width=fitting_width(customer_names, 14)),
         Column("share", "Share of the customer's demand (%)", at.shares.tolist(), style.number(style.PERCENT), 14),
@@ -256,7 +258,8 @@ def plan_customers(at: SitePlaces) -> ResultSheet:
                 for i in rows] if live else None),
         Column("unmet", "Unmet (% of demand)", plan.unmet.tolist(), style.number(style.PERCENT), 12),
         Column("sites", "Served by (number of sites)", sources.tolist(), style.number(style.WHOLE), 12,
-               [f"COUNTIF({deliveries.span('customer')},{where.here('customer', i)})" for i in rows] if live else None),
+               [f"COUNTIF({deliveries.span('customer')},{where.here('customer', i)})" for i in rows]
+               if live else None),
         Column("main", "Main site", [case.sites[j] if j >= 0 else "" for j in main], width=12),
         Column("main name", "Name of main site", [case.site_names[j] if j >= 0 else "" for j in main],
                width=fitting_width(case.site_names, 12)),

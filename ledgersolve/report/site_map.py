@@ -76,7 +76,8 @@ def _drawn(at: SitePlaces) -> list[tuple[int, int]]:
 def _customers(at: SitePlaces, customers: Floats) -> _Points:
     kept = np.argsort(-at.report.case.demand, kind="stable")[:DRAWN_DELIVERIES]
     size = 4 if at.report.case.n <= 300 else 3
-    return _Points("Customer", _listed(customers, np.sort(kept), at.report.case.customers), style.QUIET, "circle", size)
+    points = _listed(customers, np.sort(kept), at.report.case.customers)
+    return _Points("Customer", points, style.QUIET, "circle", size)
 
 
 def _site_kinds(at: SitePlaces, sites: Floats) -> list[_Points]:
@@ -97,7 +98,8 @@ def _site_kinds(at: SitePlaces, sites: Floats) -> list[_Points]:
 
 
 def _listed(places: Floats, which: Ints, labels: tuple[str, ...]) -> list[tuple[float | None, float | None, str]]:
-    return [(float(places[k, 0]), float(places[k, 1]), labels[k]) for k in which.tolist() if np.isfinite(places[k]).all()]
+    known = [k for k in which.tolist() if np.isfinite(places[k]).all()]
+    return [(float(places[k, 0]), float(places[k, 1]), labels[k]) for k in known]
 
 
 def _sheet(at: SitePlaces, series: list[_Points]) -> ResultSheet:
@@ -131,8 +133,8 @@ def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) ->
     title = "Sites, customers and deliveries"
     if at.sites.size > DRAWN_DELIVERIES:
         title += f" (largest {DRAWN_DELIVERIES:,})"
-    return Chart("scatter", title, tuple(made), 0, 0, number_format="0", x_limits=horizontal, y_limits=vertical, plot=PLOT,
-                 description="Sites and customers by longitude and latitude; lines show who serves whom")
+    return Chart("scatter", title, tuple(made), 0, 0, number_format="0", x_limits=horizontal, y_limits=vertical,
+                 plot=PLOT, description="Sites and customers by longitude and latitude; lines show who serves whom")
 
 
 def _limits(places: Floats) -> tuple[tuple[float, float], tuple[float, float]]:

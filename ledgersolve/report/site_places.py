@@ -12,7 +12,6 @@ from ledgersolve.report.tables import Figure, Places, places
 from ledgersolve.site_selection.case import FREE, Floats, Ints
 from ledgersolve.workbook.origins import CellRef
 
-
 LEDGER_DELIVERIES = 25_000
 """Most deliveries with a line each in the ledger; beyond, each site has one line for all of its deliveries."""
 
@@ -100,7 +99,7 @@ class SitePlaces:
 
     @cached_property
     def compact(self) -> bool:
-        """Whether there are too many deliveries for a ledger line each: rates then stand in the table of deliveries."""
+        """Whether there are too many deliveries for a ledger line each: their rates then stand beside them."""
         return self.sites.size > LEDGER_DELIVERIES
 
     @cached_property

@@ -73,16 +73,18 @@ def _certificate(at: SitePlaces) -> tuple[Certificate | None, PriceSheet | None]
         return None, None
     lanes = Lanes.of(at.report.case)
     certificate = certify(at.report.case, lanes, np.asarray(prices, dtype=np.float64))
-    return price_sheet(at, lanes, certificate)
+    return certificate, price_sheet(at, certificate)
 
 
 def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certificate | None) -> int:
     sheet.put(row, 0, "No plan can cost less than", style.SECTION)
     bound = at.report.solved.bound
-    words = ("For this workbook the search left no prices per customer, so that the lower bound cannot be checked in a "
+    words = ("For this workbook the search left no prices per customer, so that the lower bound cannot be checked "
+             "in a "
              "sheet; it rests on the search alone.")
     if certificate is not None:
-        words = (f"The prices of {at.report.case.n:,} customers are too many to lay out side by side in a sheet, so that "
+        words = (f"The prices of {at.report.case.n:,} customers are too many to lay out side by side in a sheet, "
+                 "so that "
                  "the lower bound rests on the program.")
     if bound is not None:
         words += f" The bound: {style.money_words(bound, at.report.case.currency, 'down')}."
@@ -93,7 +95,8 @@ def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certif
 EXPLANATION = (
     "Give every customer a price: what a plan may at most be counted to spend on serving that customer. In any plan, "
     "serving a customer costs its price or more, except from an open site that does it for less; what a site saves "
-    "against the prices, on all customers together, is its gain. A site whose gain exceeds its cost lowers the sum by "
+    "against the prices, on all customers together, is its gain. A site whose gain exceeds its cost lowers the sum "
+    "by "
     "the difference. So the sum of all prices + the terms of all sites + the constants below is at most the cost of "
     "EVERY plan that keeps the rules. How the prices were found does not matter: with any other prices, or charges "
     "and prices of capacity of 0 or more, the sum is still a bound (a price above a cost of unmet demand aside)."
@@ -136,7 +139,8 @@ def _write_bound(at: SitePlaces, ledger: Ledger, sheet: ResultSheet, row: int, c
 def _charge_rows(at: SitePlaces, certificate: Certificate) -> list[tuple[str, Figure]]:
     rows = []
     if certificate.supply_price:
-        rows.append((f"Price per {at.report.case.demand_unit} of capacity, all sites", Figure(certificate.supply_price)))
+        label = f"Price per {at.report.case.demand_unit} of capacity, all sites"
+        rows.append((label, Figure(certificate.supply_price)))
     if certificate.count_charge:
         rows.append(("Charge per open site (count of sites)", Figure(certificate.count_charge)))
     return rows
@@ -212,11 +216,12 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
         Column("capacity", f"Capacity priced ({case.demand_unit}{at.per})", priced.tolist(),
                style.number(at.demand_format), 12,
                [at.sites_at.cell("capacity", j) if priced[j] else "" for j in range(case.m)]),
-        Column("gain", f"Gain: what it can save on all customers ({at.money_unit})", certificate.gain.tolist(), money, 18,
-               [prices.gain(j, f"$E{r}") if live[j] else "" for j, r in enumerate(rows)]),
+        Column("gain", f"Gain: what it can save on all customers ({at.money_unit})", certificate.gain.tolist(),
+               money, 18, [prices.gain(j, f"$E{r}") if live[j] else "" for j, r in enumerate(rows)]),
         Column("balance", f"Cost less gain ({at.money_unit})", balance.tolist(), money, 16,
                [f"C{r}+D{r}-E{r}*F{r}-G{r}" if on else "" for r, on in zip(rows, live, strict=True)]),
-        Column("term", f"Term in the bound ({at.money_unit})", certificate.term.tolist(), replace(money, bold=True), 16,
+        Column("term", f"Term in the bound ({at.money_unit})", certificate.term.tolist(),
+               replace(money, bold=True), 16,
                [f'IF(B{r}="open",H{r},MIN(0,H{r}))' if on else "" for r, on in zip(rows, live, strict=True)]),
     ]
     write_table(sheet, row, columns)

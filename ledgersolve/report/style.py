@@ -49,9 +49,14 @@ DATE = "yyyy-mm-dd"
 DATE_TIME = "yyyy-mm-dd hh:mm"
 SECONDS = "0.00"
 
-_NO_DIGITS = frozenset(["JPY", "KRW", "CLP", "ISK", "VND", "XAF", "XOF", "XPF", "PYG", "RWF", "UGX", "KMF", "DJF", "GNF", "BIF", "VUV"])
-_THREE_DIGITS = frozenset(["BHD", "IQD", "JOD", "KWD", "LYD", "OMR", "TND"])
-_FOUR_DIGITS = frozenset(["CLF", "UYW"])
+_DIGITS = {
+    0: ("JPY", "KRW", "CLP", "ISK", "VND", "XAF", "XOF", "XPF", "PYG", "RWF", "UGX", "KMF", "DJF", "GNF", "BIF",
+        "VUV"),
+    3: ("BHD", "IQD", "JOD", "KWD", "LYD", "OMR", "TND"),
+    4: ("CLF", "UYW"),
+}
+"""Currencies whose minor unit has not two digits (ISO 4217, list one)."""
+
 
 NO_BREAK = "\u00a0"
 Rounding = Literal["nearest", "up", "down"]
@@ -60,7 +65,7 @@ Rounding = Literal["nearest", "up", "down"]
 def money_digits(currency: str) -> int:
     """Digits of the currency's minor unit (ISO 4217, list one)."""
     code = currency.upper()
-    return 0 if code in _NO_DIGITS else 3 if code in _THREE_DIGITS else 4 if code in _FOUR_DIGITS else 2
+    return next((digits for digits, codes in _DIGITS.items() if code in codes), 2)
 
 
 def money_format(currency: str) -> str:

@@ -24,8 +24,10 @@ def plan_variants(at: SitePlaces) -> ResultSheet | None:
     money = style.number(style.money_format(currency))
     base = report.audit.total
     columns = [
-        Column("variant", "Variant", [OWN, *[result.variant.name for result in report.variants]], style.WRAPPED_CELL, 26),
-        Column("change", "What it changes", ["nothing", *[changed(r.variant, case.distance_unit) for r in report.variants]],
+        Column("variant", "Variant", [OWN, *[result.variant.name for result in report.variants]],
+               style.WRAPPED_CELL, 26),
+        Column("change", "What it changes",
+               ["nothing", *[changed(result.variant, case.distance_unit) for result in report.variants]],
                style.WRAPPED_CELL, 40),
         Column("verdict", "Verdict", [s.verdict.value for s in solved], style.WRAPPED_CELL, 16),
         Column("cost", f"Cost ({at.money_unit})", [_cost(s) for s in solved], money, 18),
@@ -40,8 +42,10 @@ def plan_variants(at: SitePlaces) -> ResultSheet | None:
         Column("differs", "Differs from the own case by",
                ["", *[_difference(at, result) for result in report.variants]], style.WRAPPED_CELL, 36),
     ]
-    sheet = detail_sheet(at.name(names.PLAN_VARIANTS), "Variants", "Each variant was solved for itself; it changes only what "
-                         "its row in your sheet Variants names. No figure stands where there is no plan.", columns, style.MOSS)
+    sheet = detail_sheet(at.name(names.PLAN_VARIANTS), "Variants", "Each variant was solved for itself; it changes "
+                                                                   "only what "
+                         "its row in your sheet Variants names. No figure stands where there is no "
+                         "plan.", columns, style.MOSS)
     _chart(sheet, at, len(solved))
     return sheet
 
