@@ -31,7 +31,8 @@ CHANGES = (
     "make_folder", "remove_folder", "write_stream", "refresh", "rename", "replace", "link", "remove",
     "sync_file", "sync_folder", "open_up",
 )
-HANDLERS = Path(__file__).parent / "faults" / "stand_ins"
+ROOT = Path(__file__).parent.parent
+HANDLERS = ROOT / "tests" / "faults" / "stand_ins"
 
 
 def names(folder: Path) -> list[str]:

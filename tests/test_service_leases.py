@@ -2,6 +2,8 @@
 
 import json
 import os
+import subprocess
+import sys
 from pathlib import Path
 
 import pytest
@@ -82,11 +84,9 @@ def test_after_an_outage_watching_starts_over(scene):
 
 def test_a_holder_of_this_machine_that_runs_no_more_is_not_waited_for(tmp_path):
     """A process known to be dead has left its job behind at the first look."""
-    pid = os.fork()
-    if pid == 0:
-        os._exit(0)
-    dead = describe() | {"pid": pid}
-    os.waitpid(pid, 0)
+    process = subprocess.Popen([sys.executable, "-c", ""])
+    process.wait()
+    dead = describe() | {"pid": process.pid}
     assert Scene(tmp_path, dead).left_behind(0.0)
 
 

@@ -20,6 +20,7 @@ from ledgersolve.service.verify import verify
 from ledgersolve.service.watch import serve
 from tests.service_share import (
     HANDLERS,
+    ROOT,
     FaultyDisk,
     Plan,
     child_at_once,
@@ -82,7 +83,7 @@ def _service(folder: Path) -> subprocess.Popen:
         "sys.exit(serve(Path(sys.argv[1]), settings=quick_settings(workers=2, beat_seconds=1.0),"
         " handler='handlers:solve'))"
     )
-    environment = {**os.environ, "PYTHONPATH": os.pathsep.join((str(Path.cwd()), str(HANDLERS)))}
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join((str(ROOT), str(HANDLERS)))}
     return subprocess.Popen([sys.executable, "-c", code, str(folder)], env=environment)
 
 

@@ -17,14 +17,14 @@ import psutil
 from ledgersolve.service.pool import ClusterPool
 from ledgersolve.service.verify import verify
 from ledgersolve.service.watch import open_shop
-from tests.service_share import HANDLERS, drop, names, quick_settings
+from tests.service_share import HANDLERS, ROOT, drop, names, quick_settings
 
 JOBS = 6
 
 
 def main() -> None:
     """Six jobs of two seconds, a worker killed while two run, a second folder service stopped in between."""
-    os.environ["PYTHONPATH"] = os.pathsep.join((str(Path.cwd()), str(HANDLERS)))
+    os.environ["PYTHONPATH"] = os.pathsep.join((str(ROOT), str(HANDLERS)))
     logging.disable(logging.CRITICAL)
     from distributed import LocalCluster
 

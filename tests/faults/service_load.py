@@ -17,12 +17,12 @@ from pathlib import Path
 from ledgersolve.service.config import ServiceSettings
 from ledgersolve.service.verify import verify
 from ledgersolve.service.watch import open_shop
-from tests.service_share import HANDLERS, drop, memory_root, names
+from tests.service_share import HANDLERS, ROOT, drop, memory_root, names
 
 
 def main() -> None:
     """Run the load that is asked for."""
-    os.environ["PYTHONPATH"] = os.pathsep.join((str(Path.cwd()), str(HANDLERS)))
+    os.environ["PYTHONPATH"] = os.pathsep.join((str(ROOT), str(HANDLERS)))
     logging.disable(logging.CRITICAL)
     folder = Path(tempfile.mkdtemp(dir=memory_root()))
     try:

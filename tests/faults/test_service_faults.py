@@ -21,6 +21,7 @@ from ledgersolve.service.leases import LeaseWatch
 from tests.service_share import (
     CHANGES,
     LOOKS,
+    ROOT,
     ErrorAt,
     FaultyDisk,
     Plan,
@@ -41,7 +42,9 @@ def program(name: str, *words: str, before: tuple[str, ...] = (), seconds: int =
     """Run a program of this folder and give what it prints."""
     command = [*before, sys.executable, "-m", f"tests.faults.{name}", *words]
     environment = {**os.environ, "PYTHONDONTWRITEBYTECODE": "1"}
-    done = subprocess.run(command, capture_output=True, text=True, timeout=seconds, env=environment, check=False)
+    done = subprocess.run(
+        command, capture_output=True, text=True, timeout=seconds, env=environment, cwd=ROOT, check=False
+    )
     assert done.returncode == 0, done.stderr[-2000:]
     return json.loads(done.stdout.splitlines()[-1])
 
