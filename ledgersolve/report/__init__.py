@@ -16,7 +16,7 @@ from ledgersolve.report.run_record import outcome_of, run_record
 from ledgersolve.report.site_decision import site_decision
 from ledgersolve.report.site_details import plan_customers, plan_deliveries, plan_sites
 from ledgersolve.report.site_ledger import site_ledger
-from ledgersolve.report.site_map import site_map
+from ledgersolve.report.site_map import load_picture, site_map
 from ledgersolve.report.site_places import SitePlaces
 from ledgersolve.report.site_proof import site_proof
 from ledgersolve.report.variants import plan_variants
@@ -36,7 +36,7 @@ def site_sheets(report: SiteReport, settled: Mapping[str, str]) -> list[ResultSh
     ledger = site_ledger(at)
     proof = site_proof(at, ledger)
     drawn = site_map(at)
-    decision = site_decision(at, ledger, proof.checks, None if drawn is None else drawn[1])
+    decision = site_decision(at, ledger, proof.checks, load_picture(at) if drawn is None else drawn[1])
     record = run_record(at.name(names.RUN_RECORD), report.workbook, report.run,
                         outcome_of(report.solved, report.case.currency, at.per))
     sheets = [

@@ -8,6 +8,7 @@ from ledgersolve.findings import Answered
 from ledgersolve.mip import Verdict
 from ledgersolve.mip.run import Solved
 from ledgersolve.report import style
+from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.inputs import RunFacts, Workbook
 from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.run_record import RECORDED_COST
@@ -33,8 +34,16 @@ PICTURE_HEIGHT = CHART_ROWS * 20 - 8
 
 ROW = Style(bottom=1, border_colour="D5DBE1", align="left", indent=1)
 
-Tile = tuple[str, Scalar, str, str]
-"""Label, value, formula (with equals sign, or ""), note."""
+
+@dataclass(frozen=True)
+class Tile:
+    """One of the four figures to remember; ``number_format`` is that of money unless given."""
+
+    label: str
+    value: Scalar
+    note: str
+    formula: str = ""
+    number_format: str = ""
 
 
 @dataclass(frozen=True)
@@ -59,10 +68,11 @@ class Decision:
     tiles: Sequence[Tile]
     changed: str
     comparison: Sequence[Today]
-    comparison_title: str
+    compared: bool
     parts: Sequence[tuple[str, Figure]]
     total: Figure
     changes: Sequence[str]
+    changes_title: str
     sure: Sequence[str]
     binding: Sequence[str]
     check: Sequence[str]
@@ -86,7 +96,7 @@ def write_decision(name: str, page: Decision, picture: Chart | None) -> ResultSh
     row = _tables(sheet, page, row)
     bars = parts_chart(name, parts_row, [figure.value for _, figure in page.parts], page.currency, page.per)
     row = _charts(sheet, [bars] if picture is None else [picture, bars], row)
-    for left, right in ((("What changes", page.changes), ("How sure this is", page.sure)),
+    for left, right in (((page.changes_title, page.changes), ("How sure this is", page.sure)),
                         (("What limits the plan", page.binding), ("Check before you act", page.check))):
         row = _points(sheet, row, left, right)
     row = _asked(sheet, page.asked, row)
@@ -122,14 +132,13 @@ def _tiles(sheet: ResultSheet, page: Decision, row: int) -> int:
 
 
 def _tile(sheet: ResultSheet, row: int, columns: tuple[int, int], tile: Tile, how: tuple[str, str]) -> None:
-    label, value, formula, note = tile
     ground, currency = how
     look = replace(TILE_NUMBER, size=12.0, wrap=True)
-    if isinstance(value, int | float):
-        shown = f"{value:,.{style.money_digits(currency)}f}"
+    if isinstance(tile.value, int | float):
+        shown = f"{tile.value:,.{style.money_digits(currency)}f}"
         size = 17.0 if len(shown) < 15 else 12.0
-        look = replace(TILE_NUMBER, number_format=style.money_format(currency), size=size)
-    lines = ((label, TILE_LABEL, ""), (value, look, formula), (note, TILE_NOTE, ""))
+        look = replace(TILE_NUMBER, number_format=tile.number_format or style.money_format(currency), size=size)
+    lines = ((tile.label, TILE_LABEL, ""), (tile.value, look, tile.formula), (tile.note, TILE_NOTE, ""))
     first, last = columns
     for place, (words, line, calculated) in enumerate(lines, start=row):
         for column in range(first, last + 1):
@@ -146,15 +155,17 @@ def _tables(sheet: ResultSheet, page: Decision, row: int) -> int:
 
 
 def _comparison(sheet: ResultSheet, page: Decision, row: int) -> int:
-    for column, title in enumerate((page.comparison_title, "Today", "This plan")):
+    """Today's figures beside the plan's; the plan's alone where there is nothing to compare with."""
+    titles = ("Against today", "Today", "This plan") if page.compared else ("The plan in figures", "This plan", None)
+    own, other = (2, 1) if page.compared else (1, 2)
+    for column, title in enumerate(titles):
         sheet.put(row, column, title, style.HEADER if column == 0 else style.HEADER_RIGHT)
     for line in page.comparison:
         row += 1
-        look = ROW
-        figures = replace(look, align="right", indent=0, number_format=line.number_format)
-        sheet.put(row, 0, line.label, look)
-        sheet.put(row, 1, line.today, figures)
-        sheet.put(row, 2, line.plan, replace(figures, bold=True), formula=line.formula)
+        figures = style.with_format(ROW, line.number_format)
+        sheet.put(row, 0, line.label, ROW)
+        sheet.put(row, own, line.plan, replace(figures, bold=True), formula=line.formula)
+        sheet.put(row, other, line.today if page.compared else None, figures)
     return row + 1
 
 
@@ -267,6 +278,30 @@ def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[st
                 f"At most {most}{gap} could still be saved."]
     return ["The time limit ended the search. This is the best plan found; a better one could save at most "
             f"{most}{gap}. Whether there is one is not known: a higher time limit may tell."]
+
+
+def cost_tile(cost: float, currency: str, ledger: Ledger, note: str) -> Tile:
+    """Cost of the plan, as the ledger has it."""
+    return Tile(f"Cost of this plan ({currency})", cost, f"{note}; line by line in the ledger", f"={ledger.total}")
+
+
+def against_tile(saved: float, unit: str) -> Tile:
+    """What the plan saves against today, or costs more."""
+    return Tile("Saved against today" if saved >= 0 else "Dearer than today", abs(saved), unit)
+
+
+def still_tile(solved: Solved[Any], currency: str) -> Tile:
+    """The most that a better plan could save."""
+    if solved.cost is None or solved.bound is None:
+        return Tile("Could still be saved", "not known", "no bound is known")
+    note = f"{currency}; {saving_note(solved)}"
+    return Tile("Could still be saved, at most", max(0.0, solved.cost - solved.bound), note)
+
+
+def checks_tile(checks: ChecksAt) -> Tile:
+    """The master check."""
+    note = f"{style.counted(checks.count, 'rule')} watched in Proof"
+    return Tile("Checks", "All checks hold", note, f"={checks.master()}")
 
 
 def saving_note(solved: Solved[Any]) -> str:

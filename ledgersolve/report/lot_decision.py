@@ -9,11 +9,14 @@ from ledgersolve.report.decision import (
     Decision,
     Tile,
     Today,
+    against_tile,
     asked_ahead,
     changed_since,
+    checks_tile,
+    cost_tile,
     how_sure,
     provenance,
-    saving_note,
+    still_tile,
     write_decision,
 )
 from ledgersolve.report.ledger import Ledger
@@ -41,10 +44,12 @@ def lot_decision(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> ResultSheet
         kicker="Lot sizing", title=report.workbook.title, headline=_headline(at), second=_against_today(at),
         tiles=_tiles(at, ledger, checks),
         changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
-        comparison=_comparison(at, ledger), comparison_title="Against today",
+        comparison=_comparison(at, ledger), compared=report.today is not None,
         parts=[(name, Figure(amounts[name], ledger.part(name))) for name in ledger.parts],
-        total=Figure(report.audit.total, ledger.total), changes=_changes(at), sure=_sure(at), binding=_binding(at),
-        check=_check(at), asked=asked_ahead(report.answers), glossary=GLOSSARY,
+        total=Figure(report.audit.total, ledger.total),
+        changes=_changes(at), changes_title="What changes" if report.today is not None else "What is made",
+        sure=_sure(at), binding=_binding(at), check=_check(at),
+        asked=asked_ahead(report.answers), glossary=GLOSSARY,
         provenance=provenance(report.workbook, report.run),
         currency=report.case.currency, per="",
     )
@@ -83,32 +88,20 @@ def _tiles(at: LotPlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
     report, currency = at.report, at.report.case.currency
     cost, today = report.audit.total, report.today
     if today is None or today.solved.cost is None:
-        against: Tile = ("Against today", "not asked for", "", "the sheet Today plan is not filled, or not compared")
+        count = f'=COUNTIF({at.made.whole()},">0")'
+        against = Tile("Lots", report.plan.setups, f"of {style.counted(report.case.n, 'item')}", count, style.WHOLE)
     else:
-        saved = today.solved.cost - cost
         broken = "; today's plan breaks rules" if today.audit is not None and not today.audit.ok else ""
-        label = "Saved against today" if saved >= 0 else "Dearer than today"
-        against = (label, abs(saved), "", currency + broken)
-    if report.solved.bound is None:
-        still: Tile = ("Could still be saved", "not known", "", "no bound is known")
-    else:
-        still = ("Could still be saved, at most", max(0.0, cost - report.solved.bound), "",
-                 f"{currency}; {saving_note(report.solved)}")
-    return [
-        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"over {report.case.t} "
-                                                                      f"{report.case.period_unit}s; line "
-         "by line in the ledger"),
-        against, still,
-        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in "
-                                                             "Proof"),
-    ]
+        against = against_tile(today.solved.cost - cost, currency + broken)
+    span = cost_tile(cost, currency, ledger, f"over {style.counted(report.case.t, report.case.period_unit)}")
+    return [span, against, still_tile(report.solved, currency), checks_tile(checks)]
 
 
 def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
     case, report = at.report.case, at.report
     before = report.today.solved.plan if report.today is not None else None
     cost = report.today.solved.cost if report.today is not None else None
-    missing = "not asked for"
+    missing = None
     value = _average_stock_value
     rows = [
         Today(f"Cost ({case.currency})", missing if cost is None else cost, report.audit.total,
@@ -131,7 +124,7 @@ def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
 
 def _sum_row(label: str, before: Floats | None, now: Floats) -> Today:
     figures = [float(now.sum())] + ([] if before is None else [float(before.sum())])
-    return Today(label, "not asked for" if before is None else figures[1], figures[0], style.figure_format(figures))
+    return Today(label, None if before is None else figures[1], figures[0], style.figure_format(figures))
 
 
 def _one_unit(at: LotPlaces) -> str:
@@ -148,8 +141,7 @@ def _changes(at: LotPlaces) -> list[str]:
     first = [case.item_names[i] for i in np.flatnonzero(plan.setup[:, 0]).tolist()]
     points = [f"Start now ({case.period_unit} {case.periods[0]}): {style.listed(first, 6)}."]
     if today is None or today.solved.plan is None:
-        points.append("Today's plan is not given, so the plan is not set against anything.")
-        return points
+        return [*points, *_largest(at)]
     before = today.solved.plan
     changed = np.flatnonzero((np.abs(before.made - plan.made) > 1e-6).any(axis=1))
     saved = _saved_by_item(at)
@@ -166,6 +158,20 @@ def _changes(at: LotPlaces) -> list[str]:
     if late:
         points.append(f"{style.counted(late, 'item')} are late at some time: see {at.name(names.PLAN_LATE)}.")
     return points
+
+
+def _largest(at: LotPlaces) -> list[str]:
+    """The lots that cost most to make."""
+    case, plan = at.report.case, at.report.plan
+    worth = plan.made * np.maximum(case.unit_cost, 1e-9) + case.setup_cost * plan.setup
+    order = np.argsort(-worth, axis=None, kind="stable")[:3].tolist()
+    points = []
+    for place in order:
+        i, t = divmod(place, case.t)
+        if plan.setup[i, t]:
+            points.append(f"{case.item_names[i]}: {style.quantity_words(float(plan.made[i, t]))} {case.units[i]} in "
+                          f"{case.period_unit} {case.periods[t]}.")
+    return [f"Dearest lots: {' '.join(points)}"] if points else []
 
 
 def _saved_by_item(at: LotPlaces) -> list[float]:

@@ -1,7 +1,7 @@
 """The run record: what was read, with which settings and defaults, by which versions, in which time."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime, timedelta
 from typing import Any
 
@@ -64,8 +64,8 @@ def _facts(sheet: ResultSheet, row: int, run: RunFacts, outcome: Outcome) -> int
         *[(label, words, style.WRAPPED_CELL) for label, words in run.more],
     ]
     for place, (label, value, look) in enumerate(rows, start=row + 1):
-        sheet.put(place, 0, label, style.TEXT)
-        sheet.put(place, 1, value, Style(**{**look.__dict__, "align": "left"}))
+        sheet.put(place, 0, label, style.CELL)
+        sheet.put(place, 1, value, replace(look, align="left", indent=1))
     return row + 1 + len(rows)
 
 

@@ -10,11 +10,14 @@ from ledgersolve.report.decision import (
     Decision,
     Tile,
     Today,
+    against_tile,
     asked_ahead,
     changed_since,
+    checks_tile,
+    cost_tile,
     how_sure,
     provenance,
-    saving_note,
+    still_tile,
     write_decision,
 )
 from ledgersolve.report.ledger import Ledger
@@ -46,9 +49,10 @@ def site_decision(at: SitePlaces, ledger: Ledger, checks: ChecksAt, picture: Cha
         kicker="Site selection", title=report.workbook.title, headline=_headline(at), second=_against_today(at),
         tiles=_tiles(at, ledger, checks),
         changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
-        comparison=_comparison(at, ledger), comparison_title="Against today", parts=parts,
+        comparison=_comparison(at, ledger), compared=report.today is not None, parts=parts,
         total=Figure(report.audit.total, ledger.total),
-        changes=_changes(at), sure=_sure(at), binding=_binding(at), check=_check(at),
+        changes=_changes(at), changes_title="What changes" if at.has_today else "What each site does",
+        sure=_sure(at), binding=_binding(at), check=_check(at),
         asked=asked_ahead(report.answers), glossary=GLOSSARY,
         provenance=provenance(report.workbook, report.run), currency=case.currency, per=at.per,
     )
@@ -84,7 +88,7 @@ def _against_today(at: SitePlaces) -> str:
     if today is None:
         return ""
     if today.solved.cost is None:
-        return "Today's sites alone cannot keep the rules of this workbook: there is no cost of today to compare with."
+        return "Today's sites alone cannot keep the rules of this workbook: there is no cost of today to compare."
     saved = today.solved.cost - at.report.audit.total
     count = style.counted(int(at.report.case.today.sum()), "site")
     if abs(saved) < 0.5 * 10.0 ** -style.money_digits(at.report.case.currency):
@@ -101,28 +105,17 @@ def _against_today(at: SitePlaces) -> str:
 def _tiles(at: SitePlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
     report = at.report
     cost, currency = report.audit.total, report.case.currency
-    unit = f"{currency} per {report.case.period_covered}"
+    per = f"per {report.case.period_covered}"
     today = report.today
     if today is None:
-        against: Tile = ("Against today", "not asked for", "", "no site is marked as in use today")
+        count = f'=COUNTIF({at.sites_at.span("open")},"yes")'
+        against = Tile("Open sites", int(report.plan.open.sum()), f"of {style.counted(report.case.m, 'site')}", count,
+                       style.WHOLE)
     elif today.solved.cost is None:
-        against = ("Against today", "no figure", "", "today's sites cannot keep the rules")
+        against = Tile("Against today", "no figure", "today's sites cannot keep the rules")
     else:
-        saved = today.solved.cost - cost
-        against = ("Saved against today" if saved >= 0 else "Dearer than today", abs(saved), "", unit)
-    if report.solved.bound is None:
-        still: Tile = ("Could still be saved", "not known", "", "no bound is known")
-    else:
-        still = ("Could still be saved, at most", max(0.0, cost - report.solved.bound), "",
-                 f"{currency}; {saving_note(report.solved)}")
-    return [
-        (f"Cost of this plan ({currency})", cost, f"={ledger.total}", f"per {report.case.period_covered}; line by "
-                                                                      "line in "
-         "the ledger"),
-        against, still,
-        ("Checks", "All checks hold", f"={checks.master()}", f"{style.counted(checks.count, 'rule')} watched in "
-                                                             "Proof"),
-    ]
+        against = against_tile(today.solved.cost - cost, f"{currency} {per}")
+    return [cost_tile(cost, currency, ledger, per), against, still_tile(report.solved, currency), checks_tile(checks)]
 
 
 def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
@@ -130,7 +123,7 @@ def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
     money = style.money_format(case.currency)
     before = report.today.solved.plan if report.today is not None else None
     cost = report.today.solved.cost if report.today is not None else None
-    missing = "not asked for" if report.today is None else "not possible"
+    missing = None if report.today is None else "not possible"
     rows = [
         Today(f"Cost ({at.money_unit})", missing if cost is None else cost, report.audit.total, money,
               f"={ledger.total}"),
@@ -187,7 +180,7 @@ def _changes(at: SitePlaces) -> list[str]:
             if which.any():
                 points.append(f"{word}: {_names(at, which)}.")
     else:
-        points.append("No site is marked as in use today, so the plan is not set against anything.")
+        points += _tasks(at)
     movers = _movers(at)
     if movers:
         largest = sorted(movers, key=lambda i: -case.demand[i])[:4]
@@ -202,6 +195,20 @@ def _changes(at: SitePlaces) -> list[str]:
     if unmet.any():
         short = style.counted(int(unmet.sum()), "customer does", "customers do")
         points.append(f"{short} not get all of the demand.")
+    return points
+
+
+def _tasks(at: SitePlaces, most: int = 6) -> list[str]:
+    """What the largest open sites do: customers and part of the demand."""
+    case, total = at.report.case, float(at.report.case.demand.sum())
+    served = np.bincount(at.sites, minlength=case.m)
+    running = np.flatnonzero(at.report.plan.open).tolist()
+    points = []
+    for j in sorted(running, key=lambda j: -at.load[j])[:most]:
+        part = f", {style.percent_words(at.load[j] / total)} of the demand" if total else ""
+        points.append(f"{case.site_names[j]}: {style.counted(int(served[j]), 'customer')}{part}.")
+    if len(running) > most:
+        points.append(f"{len(running) - most} more in {at.name(names.PLAN_SITES)}.")
     return points
 
 

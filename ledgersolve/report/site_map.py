@@ -9,10 +9,12 @@ from ledgersolve.report.decision import PICTURE_HEIGHT, PICTURE_WIDTH
 from ledgersolve.report.site_places import SitePlaces
 from ledgersolve.report.tables import FIRST_ROW, Column, detail_sheet
 from ledgersolve.site_selection.case import Floats, Ints
+from ledgersolve.workbook.cells import column_number
 from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
 
 DRAWN_DELIVERIES = 3000
 LABELLED_SITES = 16
+DRAWN_SITES = 30
 PLOT = (0.08, 0.10, 0.89, 0.66)
 """Where the plot stands in the picture: left, top, width, height as parts of it."""
 PLOT_RATIO = PLOT[2] * PICTURE_WIDTH / (PLOT[3] * PICTURE_HEIGHT)
@@ -148,3 +150,22 @@ def _limits(places: Floats) -> tuple[tuple[float, float], tuple[float, float]]:
     def around(centre: float, size: float) -> tuple[float, float]:
         return round(float(centre) - size / 2, 2), round(float(centre) + size / 2, 2)
     return around(middle[0], wide), around(middle[1], tall)
+
+
+def load_picture(at: SitePlaces) -> Chart | None:
+    """Load of each site against its capacity, where there is no map; None where there are too many sites."""
+    case, where = at.report.case, at.sites_at
+    if case.m > DRAWN_SITES:
+        return None
+    sheet, last = at.name(names.PLAN_SITES), FIRST_ROW + case.m - 1
+    columns = {key: column_number(letter) - 1 for key, letter in where.letters.items()}
+
+    def area(key: str) -> Area:
+        return Area(sheet, FIRST_ROW, columns[key], last, columns[key])
+
+    series = [Series("Load", area("site"), area("load"), style.PETROL)]
+    if np.isfinite(case.capacity).any():
+        series.append(Series("Capacity", area("site"), area("capacity"), style.RUST, pattern="wide_upward_diagonal"))
+    return Chart("column", "Load of each site", tuple(series), 0, 0, y_title=f"{case.demand_unit}{at.per}",
+                 number_format="#,##0", from_zero=True, legend="bottom" if len(series) > 1 else "",
+                 description="Columns of the load of each site, beside its capacity")
