@@ -133,7 +133,7 @@ def spoiled_run(plan: Plan, watched: tuple[str, ...] = CHANGES) -> tuple[list[st
     if isinstance(plan, ErrorAt):
         plan.number += before
     disk.plan = plan
-    ended = run_until_empty(watcher, 400)
+    ended = run_until_empty(watcher, 150 if isinstance(plan, RandomErrors) else 400)
     faults = [] if ended or isinstance(plan, RandomErrors) else ["one error was enough to stop the service"]
     faults += faults_after_recovery(folder, DROPS)
     shutil.rmtree(folder)
