@@ -120,6 +120,15 @@ def test_rounding_is_taken_off_every_figure_in_the_bound() -> None:
     assert 22.0 - bound == pytest.approx(1e-12 * (18 + 16 + 21 + 4), rel=1e-3)
 
 
+def test_figures_below_nothing_add_to_the_allowance() -> None:
+    """Price -8, no savings, site costs 10 - 40 and 100, closing cost 40: S1 stays, 2 - 30 + 40 = 12."""
+    case = plain_case(
+        [10, 100], [[3, 20], [3, 15]], today=np.array([True, False]), closing_cost=np.array([40.0, 0]),
+    )
+    bound = price_bound(case, np.array([-8.0, 10.0]))
+    assert 12.0 - bound == pytest.approx(1e-12 * (18 + 0 + 130 + 40), rel=0.02)
+
+
 @pytest.mark.parametrize(
     ("changes", "bound"),
     [
