@@ -89,7 +89,7 @@ def test_the_allowance_is_a_billionth_of_what_is_added_up() -> None:
     assert 4.0 - found == pytest.approx(160e-9, rel=1e-4)
 
 
-@pytest.mark.parametrize("rent", [5.0, 50.0, 500.0])
+@pytest.mark.parametrize("rent", [0.5, 5.0, 50.0, 500.0])
 def test_a_rented_press_by_hand(rent: float) -> None:
     """Without prices rent is due in each period of use; holding all of the second lot costs 10 less a setup.
 
@@ -97,6 +97,18 @@ def test_a_rented_press_by_hand(rent: float) -> None:
     """
     case = one_item(use_cost=np.array([rent]))
     assert price_bound(case, np.zeros((1, 2))) == near(min(10 + 2 * rent, 15 + rent))
+
+
+def test_only_the_rented_resource_takes_rent() -> None:
+    """Press and oven, an item on each, rent 4 on the oven only: 10 and 10 + 2 x 4; a price on the press as ever."""
+    case = plain_case(
+        [[10, 10], [10, 10]], 5.0, 1.0, item_resource=np.array([0, 1]), time_per_unit=np.ones(2),
+        setup_time=np.array([2.0, 2]), resources=("Press", "Oven"), capacity=np.full((2, 2), 12.0),
+        overtime_limit=np.zeros(2), overtime_cost=np.zeros(2), use_cost=np.array([0.0, 4]),
+    )
+    assert price_bound(case, np.zeros((2, 2))) == near(10 + 18)
+    assert price_bound(case, np.array([[0.0, 3], [0, 0]])) == near(15 - 3 * 12 + 18)
+    assert price_bound(case, np.array([[0.0, 0], [0, 3]])) == near(10 + (15 + 4) + (4 - 3 * 12))
 
 
 def test_time_of_a_rented_press_is_worth_its_price_where_it_is_used() -> None:
@@ -194,3 +206,48 @@ def test_who_owes_nothing_pays_nothing() -> None:
     # 9 x 12 hours and 5 x 3 of overtime are worth more than the rent in the first period
     assert filled.use.tolist() == [[0.0, 50.0]]
     assert filled.prices.tolist() == [[9.0, 0.0]]
+
+
+def at(case: Case, prices: list[float], family: float = 0.0, use: float = 0.0, family_use: float = 0.0) -> float:
+    """The bound of a case with one item at charges given outright, the same in both periods."""
+    shares = [np.full((1, 2), share) for share in (family, use)]
+    charges = Charges(np.array([prices]), *shares, np.full((len(case.families), 2), family_use))
+    return Relaxation(case).at(charges).bound
+
+
+@pytest.mark.parametrize(("paid", "bound"), [(12.0, 15 + 12.0), (20.0, 15 + 20.0), (23.0, 15 + 23 - 2 * 3.0)])
+def test_what_a_family_is_paid_beyond_its_setup_is_given_back(paid: float, bound: float) -> None:
+    """Paid too little the bound is lower, paid too much the surplus of both periods is taken off."""
+    assert at(family(), [0.0, 0.0], family=paid) == near(bound)
+
+
+@pytest.mark.parametrize(("paid", "bound"), [(3.0, 10 + 6.0), (4.0, 10 + 8.0), (4.5, 10 + 9 - 2 * 0.5)])
+def test_what_a_resource_is_paid_beyond_its_rent_is_given_back(paid: float, bound: float) -> None:
+    """Rent 4: what the item pays beyond it is taken off in both periods."""
+    assert at(one_item(use_cost=np.array([4.0])), [0.0, 0.0], use=paid) == near(bound)
+
+
+@pytest.mark.parametrize(("paid", "bound"), [(6.0, 35 + 6.0), (7.0, 35 + 7.0), (9.0, 35 + 9 - 2 * 2.0)])
+def test_what_a_family_pays_for_rent_is_counted_like_what_items_pay(paid: float, bound: float) -> None:
+    """Rent 7 on the family's oven: the family's share is in what its member pays, a surplus is taken off."""
+    assert at(family(use_cost=np.array([7.0])), [0.0, 0.0], family=20 + paid, family_use=paid) == near(bound)
+
+
+def test_rent_and_time_are_set_against_what_is_paid() -> None:
+    """Rent 50, a price of 2 on 12 hours: 26 are due; the item pays 30 and its time, 4 come back in each period."""
+    case = one_item(use_cost=np.array([50.0]))
+    assert at(case, [2.0, 2.0], use=30.0) == near(5 + 30 + 10 + 2 * 22 - 2 * 4)
+
+
+def test_shares_move_to_those_who_are_set_up() -> None:
+    """An item wanted once does not pay for the later lots of its family: shares reach the joint cost of 4 x 50.
+
+    Shared equally the second item's half of three setups would be lost: 125.
+    """
+    case = plain_case(
+        [[10.0, 10, 10, 10], [10, 0, 0, 0]], 0.0, 100.0, families=("F",), item_family=np.zeros(2, dtype=np.int64),
+        family_cost=np.array([50.0]), family_time=np.zeros(1), family_resource=np.array([-1]),
+    )
+    found = price_bound(case, np.zeros((0, 4)))
+    assert 199.0 < found <= 200.0
+    assert Relaxation(case).at(Relaxation(case).start()).bound == pytest.approx(125.0)
