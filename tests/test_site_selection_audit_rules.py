@@ -395,6 +395,12 @@ def test_the_words_for_a_wrong_delivery(change: Change, required: str, got: str)
     assert check.worst == 1.0
 
 
+def test_what_is_missing_is_told_in_percent() -> None:
+    """A quarter of C2 missing: 75 % are delivered or unmet together, short by 0.25 of the demand."""
+    check = first_broken(full_case(), full_plan(share=np.array([1.0, 0.25, 0.25, 1.0])))
+    assert (check.subject, check.got, check.worst) == ("customer C2", "75 %", 0.25)
+
+
 @pytest.mark.parametrize("count", [10, 11, 14])
 def test_of_many_broken_rows_the_ten_worst_are_named(count: int) -> None:
     """The worst come first; the rest are one line that says how many and by how much at most."""
@@ -410,11 +416,11 @@ def test_of_many_broken_rows_the_ten_worst_are_named(count: int) -> None:
 
 
 def test_rows_that_are_equally_wrong_are_named_in_sheet_order() -> None:
-    """Of forty sites over their capacity by the same amount the first ten are named."""
+    """Of forty sites over their capacity, every other one by more, the first ten of those are named."""
     n = np.arange(40)
-    case = plain_case(np.zeros(40), np.ones((40, 40)), capacity=np.full(40, 0.5))
+    case = plain_case(np.zeros(40), np.ones((40, 40)), capacity=np.tile([0.5, 0.25], 20))
     found = audit(case, Plan(np.ones(40, bool), n, n, np.ones(40), np.zeros(40))).broken()
-    assert [check.subject for check in found] == [*(f"site S{k + 1}" for k in range(10)), "30 more"]
+    assert [check.subject for check in found] == [*(f"site S{2 * k + 2}" for k in range(10)), "30 more"]
 
 
 def test_large_figures_are_told_to_the_unit() -> None:
