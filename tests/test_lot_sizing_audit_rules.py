@@ -352,19 +352,20 @@ def test_lots_keep_their_limits_where_something_is_made() -> None:
 def test_without_a_multiple_any_lot_will_do() -> None:
     """A lot that is no whole number is right where no multiple is asked for."""
     assert audit(one_item([2.5]), one_plan([2.5], [0.0])).ok
+    assert audit(one_item([2.5], lot_multiple=np.array([0.5])), one_plan([2.5], [0.0])).ok
 
 
 def test_a_lot_of_half_a_unit_is_a_lot() -> None:
     """However small, what is made is set up, paid, timed and uses its resource and its family."""
     made = np.array([[0.5, 0], [0, 0], [0, 0]])
     case = shared_case(demand=made, capacity=np.array([[3.5, 20], [INF, 9]]), least_lot=np.array([0.5, 0, 0]))
-    found = audit(case, shared_plan(made=made, setup=made > 0, overtime=np.zeros((2, 2))))
+    plan = shared_plan(made=made, setup=made > 0, overtime=np.zeros((2, 2)))
+    found = audit(case, plan)
     assert found.ok, found.broken()
     assert found.total == 10 + 0.5 + 50 + 11 + 13
-    asked = replace(case, least_lot=np.array([0.75, 0, 0]))
-    assert broken(asked, shared_plan(made=made, setup=made > 0, overtime=np.zeros((2, 2)))) == {"Least lot"}
-    multiple = replace(case, lot_multiple=np.array([0.375, 0, 0]))
-    assert broken(multiple, shared_plan(made=made, setup=made > 0, overtime=np.zeros((2, 2)))) == {"Lot multiple"}
+    assert broken(replace(case, least_lot=np.array([0.75, 0, 0])), plan) == {"Least lot"}
+    assert broken(replace(case, lot_multiple=np.array([0.375, 0, 0])), plan) == {"Lot multiple"}
+    assert broken(replace(case, capacity=np.array([[3.4, 20], [INF, 9]])), plan) == {"Capacity"}
 
 
 def test_room_to_spare_is_not_told_as_an_amount() -> None:
