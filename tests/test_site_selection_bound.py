@@ -155,6 +155,24 @@ def test_of_a_group_one_site_earns() -> None:
     assert price_bound(two_sites(most_sites=1), prices) == near(18.0)
 
 
+def test_groups_count_whatever_their_number() -> None:
+    """A group numbered 1 alone is a group; sites outside groups never stand in each other's way."""
+    prices = np.array([9.0, 10.0])
+    assert price_bound(two_sites(group=np.array([1, 1])), prices) == near(18.0)
+    clash = two_sites(group=np.array([1, 1]), rule=np.array([OPEN, OPEN]))
+    assert price_bound(clash, np.zeros(2)) == INF
+    case = plain_case(
+        [10, 10, 10], [[3], [3], [3]], rule=np.array([OPEN, OPEN, 0]), group=np.array([-1, -1, 0]))
+    assert price_bound(case, np.zeros(1)) == near(20.0)
+
+
+def test_a_site_that_costs_a_little_stays_shut() -> None:
+    """At prices 9 and 8.5 each site saves 9.5 of its 10: where one must open, the other does not, groups or not."""
+    prices = np.array([9.0, 8.5])
+    assert price_bound(two_sites(group=np.array([0, 1])), prices) == near(17.5 + 0.5)
+    assert price_bound(two_sites(), prices) == near(17.5 + 0.5)
+
+
 @pytest.mark.parametrize("prices", [[1.0], [1.0, 2.0, 3.0], [[1.0, 2.0]], [1.0, np.nan], [np.inf, 1.0]])
 def test_prices_that_do_not_fit_are_refused(prices: list[float]) -> None:
     """One finite price a customer, or a plain refusal."""
