@@ -21,8 +21,10 @@ WHOLE_AT_ONCE = 60
 """Setups up to which the whole model needs no help."""
 SMALL, FIRST_SHARE_SMALL = 250, 0.2
 """Setups up to which the decomposition gets a short share of the time, and that share."""
-WHOLE_AFTER, FIRST_SHARE = 2000, 0.5
+WHOLE_AFTER, FIRST_SHARE = 400, 0.5
 """Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
+WHOLE_AT_LAST = 2000
+"""Setups up to which the whole model is tried where nothing else has found a plan."""
 RESCUE_SHARE = 0.4
 """Share of the time left for the search of the least time missing, where the whole model comes after it."""
 
@@ -41,8 +43,9 @@ def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
     if first.verdict is Verdict.NO_PLAN_EXISTS or enough or clock.over():
         return first
     if first.plan is None and case.resources:
-        first = _rescued(case, first, clock, RESCUE_SHARE if cells <= WHOLE_AFTER else 1.0)
-    if first.verdict is Verdict.NO_PLAN_EXISTS or cells > WHOLE_AFTER or clock.over():
+        first = _rescued(case, first, clock, RESCUE_SHARE if cells <= WHOLE_AT_LAST else 1.0)
+    fits = cells <= WHOLE_AFTER or (first.plan is None and cells <= WHOLE_AT_LAST)
+    if first.verdict is Verdict.NO_PLAN_EXISTS or not fits or clock.over():
         return first
     second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
     return _after(first, second)
