@@ -12,15 +12,18 @@ from dataclasses import dataclass
 import numpy as np
 
 from ledgersolve.mip import Clock
-from ledgersolve.site_selection.case import Floats, Ints
+from ledgersolve.site_selection.case import Flags, Floats, Ints
 from ledgersolve.site_selection.selection import Selection
 from ledgersolve.site_selection.uncapacitated.core import Core, NearLanes
 from ledgersolve.site_selection.uncapacitated.incumbent import Incumbent
 from ledgersolve.site_selection.uncapacitated.search import Search
+from ledgersolve.site_selection.uncapacitated.tabu import Tabu
 from ledgersolve.site_selection.uncapacitated.volume import Dual, Steps, climb
 
 NODE_STEPS = 40
 NODE_CLIMBS = 8
+WALKING, WALK = 0.3, 20_000
+"""Part of the branching time that goes to the tabu walk, and its most moves at a time."""
 MARGIN = 0.4
 """Room for prices in a node, see ``NearLanes.around``."""
 
@@ -38,12 +41,13 @@ class Tree:
     """The tree of one core, whose sites are ``rows`` of the incumbent's."""
 
     def __init__(
-        self, core: Core, search: Search, incumbent: Incumbent, rows: Ints
+        self, core: Core, search: Search, tabu: Tabu | None, incumbent: Incumbent, rows: Ints
     ) -> None:
-        self.core, self.search = core, search
+        self.core, self.search, self.tabu = core, search, tabu
         self.incumbent, self.rows = incumbent, rows
         self.floor = np.inf
         self.nodes = 0
+        self._walked = 0.0
         self._number = itertools.count()
         self._heap: list[tuple[float, int, Node]] = []
 
@@ -55,6 +59,7 @@ class Tree:
     def run(self, dual: Dual, selection: Selection, clock: Clock) -> None:
         """Work through the nodes, from the root's prices on, until none is open, or enough is proven."""
         self._push(dual.bound, Node(selection, dual.prices, dual.average))
+        self._walked = clock.elapsed()
         while self._heap and not clock.over() and not self.incumbent.enough():
             bound, _, node = heapq.heappop(self._heap)
             try:
@@ -62,6 +67,17 @@ class Tree:
             finally:
                 self.nodes += 1
             self.incumbent.raise_bound(self.bound(), "branch")
+            if self.tabu is not None and self.nodes % 16 == 0:
+                self._walk(clock)
+
+    def _walk(self, clock: Clock) -> None:
+        """Give the tabu walk its part of the time."""
+        now = clock.elapsed()
+        if self.tabu is not None:
+            found = self.tabu.run(WALKING * (now - self._walked), WALK, clock)
+            if found is not None:
+                self._offer(found)
+        self._walked = clock.elapsed()
 
     def _work(self, bound: float, node: Node, clock: Clock) -> None:
         """Climb while it pays, then search and split, unless the node is closed on the way."""
@@ -115,14 +131,15 @@ class Tree:
         start = dual.average > 0.5 if self.nodes % 2 else dual.picked
         self.search.restart(start & ~selection.shut)
         self.search.improve(np.flatnonzero(~selection.shut), clock)
-        self._offer()
-
-    def _offer(self) -> None:
         found = self.search.found()
         if found.cost < self.incumbent.cost:
-            opened = np.zeros(self.incumbent.opened.size, dtype=bool)
-            opened[self.rows[found.opened]] = True
-            self.incumbent.offer(opened)
+            self._offer(found.opened)
+
+    def _offer(self, chosen: Flags) -> None:
+        """Offer a set of the core's sites to the incumbent."""
+        opened = np.zeros(self.incumbent.opened.size, dtype=bool)
+        opened[self.rows[chosen]] = True
+        self.incumbent.offer(opened)
 
     def _split(self, bound: float, selection: Selection, dual: Dual) -> None:
         free = np.flatnonzero(~selection.forced & ~selection.shut)

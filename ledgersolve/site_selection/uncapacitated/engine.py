@@ -16,12 +16,15 @@ from ledgersolve.site_selection.uncapacitated.branch import Tree
 from ledgersolve.site_selection.uncapacitated.core import Core, NearLanes
 from ledgersolve.site_selection.uncapacitated.incumbent import Incumbent
 from ledgersolve.site_selection.uncapacitated.search import Search
+from ledgersolve.site_selection.uncapacitated.tabu import Tabu
 from ledgersolve.site_selection.uncapacitated.volume import Dual, Steps, climb, start_prices
 from ledgersolve.site_selection.whole import solve_whole
 
 ROUND_STEPS = 150
 WIDEST, NARROWEST = 0.6, 0.2
 """Room for prices in a round, see ``NearLanes.around``."""
+WALK_FIRST, WALK_MOVES = 0.2, 2000
+"""Part of the time so far that the tabu search gets before branching, and its most moves."""
 PATIENCE = 2
 """Rounds without progress before branching starts."""
 
@@ -82,19 +85,33 @@ class _Engine:
         self.checkable.append(_spread(self.lanes, self.root, dual.prices))
         self.clock.end_stage("bound and search")
         if np.isfinite(self.incumbent.cost) and not self.incumbent.enough():
-            tree = Tree(self.core, self.search, self.incumbent, self.rows)
-            tree.floor = self.floor
-            tree.run(dual, self.selection, self.clock)
-            self.notes.append(f"branched on sites: {tree.nodes} nodes")
-            self.clock.end_stage("branch")
+            self._branch(dual)
         return self._answer()
+
+    def _branch(self, dual: Dual) -> None:
+        """Walk over the sites left for a better plan, then branch on them."""
+        tabu = None
+        if Tabu.fits(self.core):
+            tabu = Tabu(self.core, self.search.base, self.incumbent.opened[self.rows], self.random)
+            found = tabu.run(WALK_FIRST * self.clock.elapsed() + 0.2, WALK_MOVES, self.clock)
+            if found is not None:
+                self._offer_set(found)
+            self.clock.end_stage("tabu search")
+        tree = Tree(self.core, self.search, tabu, self.incumbent, self.rows)
+        tree.floor = self.floor
+        tree.run(dual, self.selection, self.clock)
+        self.notes.append(f"branched on sites: {tree.nodes} nodes")
+        self.clock.end_stage("branch")
 
     def _offer(self) -> None:
         found = self.search.found()
         if found.cost < self.incumbent.cost:
-            opened = np.zeros(self.root.m, dtype=bool)
-            opened[self.rows[found.opened]] = True
-            self.incumbent.offer(opened)
+            self._offer_set(found.opened)
+
+    def _offer_set(self, chosen: Flags) -> None:
+        opened = np.zeros(self.root.m, dtype=bool)
+        opened[self.rows[chosen]] = True
+        self.incumbent.offer(opened)
 
     def _target(self) -> float:
         """Cost the steps aim at: the best plan's, or that of the present set with its penalties."""
