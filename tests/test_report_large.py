@@ -50,7 +50,7 @@ def test_costs_are_laid_out_up_to_a_limit(monkeypatch: pytest.MonkeyPatch, tmp_p
         for name, value in limits.items():
             monkeypatch.setattr(price_sheet, name, value)
         if how != "matrix":
-            monkeypatch.setattr(price_sheet, "_own_matrix", lambda at, certificate: None)
+            monkeypatch.setattr(price_sheet, "own_matrix", lambda at, certificate: None)
         books[how] = returned(source, tmp_path / f"{how}.xlsx", site_report(source, PRICES))
         proof = openpyxl.load_workbook(books[how], data_only=True)["Proof"]
         bounds[how] = next(row[2].value for row in proof.iter_rows()

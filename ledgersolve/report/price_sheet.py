@@ -1,11 +1,13 @@
 """The sheet of prices per customer, with lane costs beside them where the workbook's own matrix cannot serve."""
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from ledgersolve.report import names, style
 from ledgersolve.report.certificate import Certificate
+from ledgersolve.report.coordinate_gains import coordinate_gains
 from ledgersolve.report.site_places import SitePlaces, lane_cell
 from ledgersolve.report.tables import FIRST_ROW, FOOTER, heading, quoted
 from ledgersolve.site_selection.case import Flags
@@ -24,77 +26,93 @@ FIRST_COLUMN = 2
 
 @dataclass(frozen=True)
 class PriceSheet:
-    """The sheet, the formula for the sum of prices, and where a site's lane costs stand.
+    """The sheet, the formula for the sum of prices, the formula of each site's gain, and where costs stand.
 
-    ``costs`` is None where there are too many lanes to lay out: gains are then figures.
+    A gain is "" where it is a figure of the program.
     """
 
     sheet: ResultSheet
     total: str
+    gains: tuple[str, ...]
     words: str
-    at: SitePlaces
-    costs: tuple[str, ...] | None
-
-    def gain(self, site: int, price_cell: str) -> str:
-        """Formula of a site's gain; ``price_cell`` holds the price of a unit of its capacity."""
-        if self.costs is None or not self.costs[site]:
-            return ""
-        case = self.at.report.case
-        cost = self.costs[site]
-        price = self._row(WHOLE_ROW if case.cost_is_whole else PRICE_ROW)
-        demand = self._row(DEMAND_ROW)
-        charge = self._charge(site, price_cell)
-        left = f"{price}-{cost}-{charge}*{demand}" if case.cost_is_whole else f"{price}-{cost}-{charge}"
-        tail = "" if case.cost_is_whole else f"*{demand}"
-        return f'SUMPRODUCT(({cost}<>"")*({left}>0)*({left}){tail})'
-
-    def _charge(self, site: int, price_cell: str) -> str:
-        case, origins = self.at.report.case, self.at.report.workbook.origins
-        if not case.handling_cost.any():
-            return price_cell
-        ref = origins.cell("Sites", (case.sites[site],), "Handling cost")
-        return price_cell if ref is None else f"({price_cell}+{ref.formula})"
-
-    def _row(self, row: int) -> str:
-        last = column_letters(FIRST_COLUMN + self.at.report.case.n)
-        return f"{quoted(self.sheet.name)}!${column_letters(FIRST_COLUMN + 1)}${row + 1}:${last}${row + 1}"
 
 
-def price_sheet(at: SitePlaces, certificate: Certificate) -> PriceSheet | None:
-    """Lay out the prices; None where there are too many customers."""
+def price_sheet(at: SitePlaces, certificate: Certificate, price_cells: Sequence[str]) -> PriceSheet | None:
+    """Lay out the prices; None where there are too many customers.
+
+    ``price_cells`` are, by site, the cells of the sheet Proof that hold the price of a unit of its capacity.
+    """
     case = at.report.case
     if case.n > MOST_CUSTOMERS:
         return None
     sheet = ResultSheet(at.name(names.PROOF_PRICES), tab_colour=style.RUST, landscape=True)
-    matrix = _own_matrix(at, certificate)
-    costs: tuple[str, ...] | None
+    matrix = own_matrix(at, certificate)
+    order = list(range(case.n))
     if matrix is not None:
-        order = sorted(range(case.n), key=lambda i: matrix.columns[case.customers[i]])
-        costs = tuple(_matrix_row(matrix, code, [case.customers[order[0]], case.customers[order[-1]]])
-                      for code in case.sites)
-        words = f"Lane costs are read straight from your sheet {matrix.sheet}."
-    else:
-        order = list(range(case.n))
-        costs = _laid_out(at, sheet, certificate)
-        words = _words(at, costs is not None)
+        order.sort(key=lambda i: matrix.columns[case.customers[i]])
     _write_prices(at, sheet, certificate, order)
+    gains, words = _gains(at, sheet, certificate, price_cells, matrix)
     first, last = column_letters(FIRST_COLUMN + 1), column_letters(FIRST_COLUMN + case.n)
     total = f"SUM({quoted(sheet.name)}!${first}${WHOLE_ROW + 1}:${last}${WHOLE_ROW + 1})"
-    return PriceSheet(sheet, total, words, at, costs)
+    return PriceSheet(sheet, total, gains, words)
+
+
+def _gains(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, price_cells: Sequence[str],
+           matrix: MatrixMap | None) -> tuple[tuple[str, ...], str]:
+    """Formulas of the gains: over the workbook's own matrix, coordinates, or costs laid out here."""
+    case = at.report.case
+    local = [cell.rsplit("!", 1)[-1] for cell in price_cells]
+    if matrix is not None:
+        ranked = sorted(case.customers, key=matrix.columns.__getitem__)
+        ends = [ranked[0], ranked[-1]]
+        costs: tuple[str, ...] | None = tuple(_matrix_row(matrix, code, ends) for code in case.sites)
+        words = f"Lane costs are read straight from your sheet {matrix.sheet}."
+    else:
+        charges = [_charge(at, j, cell) for j, cell in enumerate(price_cells)]
+        by_place = coordinate_gains(at, sheet, certificate, charges)
+        if by_place is not None:
+            return by_place, ("Lane costs follow from your coordinates: every gain is one formula over the places of "
+                              "all customers, which stand under the prices.")
+        costs = _laid_out(at, sheet, certificate)
+        words = _words(at, costs is not None)
+    if costs is None:
+        return ("",) * case.m, words
+    return tuple(_gain(at, sheet, cost, _charge(at, j, local[j])) for j, cost in enumerate(costs)), words
+
+
+def _gain(at: SitePlaces, sheet: ResultSheet, cost: str, charge: str) -> str:
+    """Sum over the customers of what the site saves against their prices; blank costs are no lanes."""
+    whole = at.report.case.cost_is_whole
+    price, demand = _row(at, sheet, WHOLE_ROW if whole else PRICE_ROW), _row(at, sheet, DEMAND_ROW)
+    left = f"{price}-{cost}-{charge}*{demand}" if whole else f"{price}-{cost}-{charge}"
+    return f'SUMPRODUCT(({cost}<>"")*({left}>0)*({left}){"" if whole else f"*{demand}"})'
+
+
+def _charge(at: SitePlaces, site: int, price_cell: str) -> str:
+    """What a unit costs at the site apart from its lane: price of its capacity, and handling."""
+    case = at.report.case
+    if not case.handling_cost.any():
+        return price_cell
+    ref = at.report.workbook.origins.cell("Sites", (case.sites[site],), "Handling cost")
+    return price_cell if ref is None else f"({price_cell}+{ref.formula})"
+
+
+def _row(at: SitePlaces, sheet: ResultSheet, row: int) -> str:
+    last = column_letters(FIRST_COLUMN + at.report.case.n)
+    return f"{quoted(sheet.name)}!${column_letters(FIRST_COLUMN + 1)}${row + 1}:${last}${row + 1}"
 
 
 def _words(at: SitePlaces, laid_out: bool) -> str:
     if not laid_out:
         return (f"With {at.report.case.m:,} x {at.report.case.n:,} lanes the costs are too many to lay out; the "
-                "gains are "
-                "figures of the program, all else is formulas.")
+                "gains are figures of the program, all else is formulas.")
     if at.report.case.m * at.report.case.n <= LINKED_LANES:
         return ("Lane costs stand under the prices, each a formula into its own cell where it has one (costs from "
                 "distances and lanes forbidden by a rule: figures).")
     return "Lane costs stand under the prices as figures (too many to link one by one)."
 
 
-def _own_matrix(at: SitePlaces, certificate: Certificate) -> MatrixMap | None:
+def own_matrix(at: SitePlaces, certificate: Certificate) -> MatrixMap | None:
     """The analyst's matrix of lane costs, if a formula can use its rows as they stand.
 
     That is: all lanes come from it, as numbers, its columns are the customers and nothing else, and no rule

@@ -185,21 +185,14 @@ def why_constant(at: SitePlaces, sheet: str, code: str, title: str) -> str:
 
 
 def lane_source(at: SitePlaces, delivery: int) -> Source:
-    """Rate of a delivery's lane: its own cell, a matrix cell, or distance x cost per unit and distance.
-
-    Sources are asked in the order in which the workbook's rules let them win; a distance counts only where it
-    gives the lane's cost.
-    """
-    case, origins = at.report.case, at.report.workbook.origins
+    """Rate of a delivery's lane: its own cell, a matrix cell, or distance x cost per unit and distance."""
     j, i = int(at.sites[delivery]), int(at.customers[delivery])
-    value = float(case.lane_cost[j, i])
-    by_distance = _distance_rate(at, delivery, value)
-    if by_distance is not None and origins.number("Lanes", (case.sites[j], case.customers[i]), "Unit cost") is None:
-        return by_distance
+    value = float(at.report.case.lane_cost[j, i])
     ref = lane_cell(at, j, i)
     if ref is not None:
         return Source(Figure(value, ref.formula), ref)
-    return Source(Figure(value), None, "constant: no number cell gives this rate by itself")
+    constant = Source(Figure(value), None, "constant: no number cell gives this rate by itself")
+    return _distance_rate(at, delivery, value) or constant
 
 
 def lane_cell(at: SitePlaces, site: int, customer: int) -> CellRef | None:

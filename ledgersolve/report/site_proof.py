@@ -40,7 +40,12 @@ def site_proof(at: SitePlaces, ledger: Ledger) -> SiteProof:
     name = quoted(sheet.name)
     sheet.put(CHECKS_ROW - 1, 0, "Checks that watch the sheets", style.SECTION)
     row = write_checks(sheet, CHECKS_ROW, checks, tolerance) + 1
-    certificate, prices = _certificate(at)
+    certificate = _certificate(at)
+    prices = None
+    if certificate is not None:
+        first = _sites_row(at, certificate, row)
+        cells = [f"{name}!$E${first + 2 + j}" for j in range(at.report.case.m)]
+        prices = price_sheet(at, certificate, cells)
     sheets = [sheet]
     if certificate is not None and prices is not None:
         row = _write_bound(at, ledger, sheet, row, certificate, prices)
@@ -67,13 +72,16 @@ def proof_widths(sheet: ResultSheet) -> None:
         sheet.widths[column] = width
 
 
-def _certificate(at: SitePlaces) -> tuple[Certificate | None, PriceSheet | None]:
+def _certificate(at: SitePlaces) -> Certificate | None:
     prices = at.report.solved.prices
     if prices is None or not np.isfinite(prices).all():
-        return None, None
-    lanes = Lanes.of(at.report.case)
-    certificate = certify(at.report.case, lanes, np.asarray(prices, dtype=np.float64))
-    return certificate, price_sheet(at, certificate)
+        return None
+    return certify(at.report.case, Lanes.of(at.report.case), np.asarray(prices, dtype=np.float64))
+
+
+def _sites_row(at: SitePlaces, certificate: Certificate, row: int) -> int:
+    """Row (from 0) of the titles of the table of sites, where the bound begins at ``row``."""
+    return row + 11 + len(_charge_rows(at, certificate)) + len(certificate.rules)
 
 
 def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certificate | None) -> int:
@@ -112,7 +120,7 @@ def _write_bound(at: SitePlaces, ledger: Ledger, sheet: ResultSheet, row: int, c
     paragraph(sheet, row + 2, 0, 5, prices.words, style.NOTE)
     first = row + 4
     charges = _charge_rows(at, certificate)
-    sites_row = first + 7 + len(charges) + len(certificate.rules)
+    sites_row = _sites_row(at, certificate, row)
     money = style.number(style.money_format(case.currency))
     cells = _Cells(at, first, sites_row, len(charges))
     summary = [*charges, ("Sum of all customers' prices", Figure(float(certificate.price.sum()), prices.total)),
@@ -217,7 +225,7 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
                style.number(at.demand_format), 12,
                [at.sites_at.cell("capacity", j) if priced[j] else "" for j in range(case.m)]),
         Column("gain", f"Gain: what it can save on all customers ({at.money_unit})", certificate.gain.tolist(),
-               money, 18, [prices.gain(j, f"$E{r}") if live[j] else "" for j, r in enumerate(rows)]),
+               money, 18, [prices.gains[j] if live[j] else "" for j in range(case.m)]),
         Column("balance", f"Cost less gain ({at.money_unit})", balance.tolist(), money, 16,
                [f"C{r}+D{r}-E{r}*F{r}-G{r}" if on else "" for r, on in zip(rows, live, strict=True)]),
         Column("term", f"Term in the bound ({at.money_unit})", certificate.term.tolist(),
