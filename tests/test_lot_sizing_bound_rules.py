@@ -7,6 +7,7 @@ import pytest
 
 from ledgersolve.lot_sizing.bound import Charges, Relaxation, price_bound
 from ledgersolve.lot_sizing.case import Case, plain_case
+from tests.lot_oracle import random_shared
 
 INF = np.inf
 
@@ -251,3 +252,23 @@ def test_shares_move_to_those_who_are_set_up() -> None:
     found = price_bound(case, np.zeros((0, 4)))
     assert 199.0 < found <= 200.0
     assert Relaxation(case).at(Relaxation(case).start()).bound == pytest.approx(125.0)
+
+
+@pytest.mark.parametrize("features", [("overtime",), ("family", "overtime"), ("use", "overtime"), ("family", "use")])
+def test_the_excess_is_a_supergradient_in_the_prices(features: tuple[str, ...]) -> None:
+    """Time asked for beyond what is given bounds how the bound moves with any prices, payments held.
+
+    Along each price alone and along all together, at random prices below and above the overtime cost.
+    """
+    random = np.random.default_rng(len(features[0]))
+    case = random_shared(random, 4, 4, *features)
+    relaxation = Relaxation(case)
+    shape = case.capacity.shape
+    for _ in range(6):
+        point = relaxation.at(relaxation.start(random.uniform(0, 30, shape)))
+        for _ in range(12):
+            step = random.normal(0, 8, shape) * (random.random(shape) < random.choice([0.15, 1.0]))
+            prices = relaxation.filled(replace(point.charges, prices=point.charges.prices + step)).prices
+            moved = relaxation.at(replace(point.charges, prices=prices)).bound
+            slope = float((point.excess * (prices - point.charges.prices)).sum())
+            assert moved <= point.bound + slope + 1e-6 * (1.0 + abs(point.bound) + abs(slope))
