@@ -6,7 +6,7 @@ and drops the sites that no better plan can use. What is undecided after that is
 
 import numpy as np
 
-from ledgersolve.mip import Clock
+from ledgersolve.mip import PROVEN_GAP, Clock
 from ledgersolve.site_selection.answer import Answer
 from ledgersolve.site_selection.bound import price_bound_of
 from ledgersolve.site_selection.case import Flags, Floats
@@ -25,6 +25,8 @@ WIDEST, NARROWEST = 0.6, 0.2
 """Room for prices in a round, see ``NearLanes.around``."""
 WALK_FIRST, WALK_MOVES = 0.2, 2000
 """Part of the time so far that the tabu search gets before branching, and its most moves."""
+EXTRA = 0.15
+"""Part of the run's time that may go to better checkable prices at its end."""
 PATIENCE = 2
 """Rounds without progress before branching starts."""
 
@@ -77,12 +79,13 @@ class _Engine:
 
     def run(self) -> Answer:
         """Bound and search, then branch."""
+        self.incumbent.raise_bound(_plain_bound(self.core), "bound")
         self.search.greedy()
         self.search.improve(np.arange(self.core.m), self.clock)
         self._offer()
         self.clock.end_stage("first plan")
         dual = self._rounds()
-        self.checkable.append(_spread(self.lanes, self.root, dual.prices))
+        self.checkable.append(dual.prices)
         self.clock.end_stage("bound and search")
         if np.isfinite(self.incumbent.cost) and not self.incumbent.enough():
             self._branch(dual)
@@ -93,7 +96,7 @@ class _Engine:
         tabu = None
         if Tabu.fits(self.core):
             tabu = Tabu(self.core, self.search.base, self.incumbent.opened[self.rows], self.random)
-            found = tabu.run(WALK_FIRST * self.clock.elapsed() + 0.2, WALK_MOVES, self.clock)
+            found = tabu.run(WALK_FIRST * self.clock.elapsed() + 0.1, WALK_MOVES, self.clock)
             if found is not None:
                 self._offer_set(found)
             self.clock.end_stage("tabu search")
@@ -181,7 +184,7 @@ class _Engine:
 
     def _drop(self, dual: Dual) -> Dual:
         """Leave the shut sites out of the core."""
-        self.checkable = self.checkable or [_spread(self.lanes, self.root, dual.prices)]
+        self.checkable = self.checkable or [dual.prices]
         rows = np.flatnonzero(~self.selection.shut)
         self.core = self.core.keep(rows, self.selection)
         self.selection, self.rows = self.core.selection, self.rows[rows]
@@ -194,8 +197,37 @@ class _Engine:
             return Answer(None, incumbent.bound, notes=tuple(self.notes))
         plan = cheapest(self.lanes, self.root.open_in_case(incumbent.opened, self.lanes.m))
         plan = None if plan is None else without_idle(self.lanes, plan)
-        prices = max(self.checkable, key=lambda given: price_bound_of(self.lanes, given))
-        return Answer(plan, incumbent.bound, notes=tuple(self.notes), prices=prices)
+        return Answer(plan, incumbent.bound, notes=tuple(self.notes), prices=self._checkable_prices())
+
+    def _checkable_prices(self) -> Floats:
+        """Prices whose bound over all sites, the dropped ones too, is the best known.
+
+        The last prices looked at the sites left only; where that shows, they climb a little more with all sites.
+        """
+        spread = [_spread(self.lanes, self.root, prices) for prices in self.checkable]
+        bounds = [price_bound_of(self.lanes, given) for given in spread]
+        best = int(np.argmax(bounds))
+        target = min(self.incumbent.cut(), self.incumbent.cost * (1.0 - 0.1 * PROVEN_GAP))
+        if bounds[best] >= target or self.core.m == self.root.m or self.clock.over():
+            return spread[best]
+        root, prices = self.root, self.checkable[best]
+        end = self.clock.elapsed() + EXTRA * self.clock.elapsed() + 0.05
+        steps, bound, before = Steps(), bounds[best], -np.inf
+        while bound > before and bound < target and self.clock.elapsed() < end:
+            before = bound
+            room = WIDEST * np.maximum(prices - root.lowest, root.spread)
+            near = NearLanes.around(root, root.selection, prices, room)
+            dual = climb(root, near, root.selection, prices, target, 50, self.clock, steps)
+            prices, bound = dual.prices, max(bound, dual.bound)
+        self.clock.end_stage("checkable prices")
+        again = _spread(self.lanes, root, prices)
+        return again if price_bound_of(self.lanes, again) > bounds[best] else spread[best]
+
+
+def _plain_bound(core: Core) -> float:
+    """Everybody at the cheapest lane, and no site paid for: exact where a plan costs nothing."""
+    served = np.minimum(core.lowest, core.unmet)
+    return core.offset + float(np.minimum(core.fixed, 0.0).sum() + served[np.isfinite(served)].sum())
 
 
 def cost_of_sites(core: Core, opened: Flags) -> float:
