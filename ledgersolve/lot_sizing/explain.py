@@ -167,7 +167,8 @@ def _closest(
 ) -> tuple[Plan | None, Floats]:
     """Plan with the least shortfall of time, as cheap as time allows; unmet demand stands as lost in it."""
     none = np.zeros(case.capacity.shape)
-    limits = replace(clock.limits, seconds=max(0.5, SHORTFALL_SHARE * clock.left()))
+    seconds = max(0.5, SHORTFALL_SHARE * clock.left())
+    limits = Limits(seconds, clock.limits.gap, clock.limits.cancelled)
     least = solve(short_of_time(possible), limits).plan if case.resources else None
     if case.resources and least is None:
         return None, none

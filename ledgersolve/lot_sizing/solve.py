@@ -53,7 +53,13 @@ class _Run:
         found = groups(case)
         self.lone = next((group for group in found if not group.shared), None)
         tied = sorted((group for group in found if group.shared), key=lambda group: group.case.n)
-        self.parts = [_Part(group, _first_bound(group.case)) for group in tied]
+        self.parts = [self._begun(group) for group in tied]
+
+    def _begun(self, group: Group) -> _Part:
+        """Give a tied group with its first bound: each item alone, with all the time in the world."""
+        programmes = ItemProgrammes(group.case)
+        self.notes.append(f"{_words(group)} tied by {_ties(group.case)}: {_left_out(programmes)}")
+        return _Part(group, float(programmes.best().cost.sum()))
 
     def alone(self) -> bool:
         """Items without a tie: the exact programmes at once; the items they do not carry become parts.
@@ -114,6 +120,7 @@ class _Run:
         if found.prices is not None:
             self.prices[now.group.resources] = found.prices
         self.clock.stages.extend(_named(found.stages, now.group))
+        self.notes.extend(found.notes)
         if found.verdict is Verdict.NO_PLAN_EXISTS:
             return False
         now.bound = max(now.bound, -math.inf if found.bound is None else found.bound)
@@ -159,13 +166,27 @@ class _Run:
         return Solved(verdict, plan, cost, known, stages, notes, self.prices)
 
 
-def _first_bound(case: Case) -> float:
-    """Cost of the items each alone, with all the time in the world: a bound, inf where one has no plan."""
-    return float(ItemProgrammes(case).best().cost.sum())
+def _words(group: Group) -> str:
+    """Name a group by its items."""
+    items = group.case.items
+    return items[0] if len(items) == 1 else f"{len(items)} items from {items[0]}"
+
+
+def _ties(case: Case) -> str:
+    """Name what ties the items of a group."""
+    names = (*(f"resource {name}" for name in case.resources), *(f"family {name}" for name in case.families))
+    return ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
+
+
+def _left_out(programmes: ItemProgrammes) -> str:
+    """Say which features the bound treats exactly."""
+    relaxed = programmes.relaxed()
+    if not relaxed:
+        return "the bound treats every feature of the items exactly."
+    return f"the bound leaves out {', '.join(relaxed)} of some items, the wrapper keeps them in the plan."
 
 
 def _named(stages: tuple[Stage, ...], group: Group) -> list[Stage]:
     """Stages of a part, with its items in the note."""
-    items = group.case.items
-    what = items[0] if len(items) == 1 else f"{len(items)} items from {items[0]}"
-    return [replace(stage, note=f"{what}; {stage.note}") for stage in stages]
+    what = _words(group)
+    return [replace(stage, note=f"{what}; {stage.note}" if stage.note else what) for stage in stages]

@@ -15,7 +15,7 @@ from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.tight import tight_limits
 from ledgersolve.lot_sizing.totals import overdrawn
 from ledgersolve.lot_sizing.whole import solve_whole
-from ledgersolve.mip import Clock, Limits, Solved, Stage, Verdict
+from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict
 
 WHOLE_AT_ONCE = 60
 """Setups up to which the whole model needs no help."""
@@ -54,7 +54,7 @@ def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
 def _rescued(case: Case, first: Solved[Plan], clock: Clock, share: float) -> Solved[Plan]:
     """Look for the least time missing in a share of the time left; go on from a plan that lacks none."""
     seconds = max(share * clock.left(), 1e-3)
-    limits = replace(clock.limits, seconds=0.7 * seconds, gap=0.5)
+    limits = replace(clock.limits, seconds=0.7 * seconds, gap=0.5, progress=_unheard)
     least = solve_decomposed(short_of_time(case, held=0.0), limits)
     size = float(np.where(np.isfinite(case.capacity), case.capacity, 0.0).max(initial=0.0))
     if least.bound is not None and least.bound > TINY * max(size, 1e-3):
@@ -64,6 +64,10 @@ def _rescued(case: Case, first: Solved[Plan], clock: Clock, share: float) -> Sol
     plan = plan_from_made(case, least.plan.made)
     limits = replace(clock.limits, seconds=min(0.3 * seconds, clock.left()))
     return _after(first, solve_decomposed(case, limits, plan))
+
+
+def _unheard(_: Progress) -> None:
+    """Keep figures in time units out of a progress stream of costs."""
 
 
 def _after(first: Solved[Plan], second: Solved[Plan]) -> Solved[Plan]:
