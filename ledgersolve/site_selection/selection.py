@@ -12,7 +12,8 @@ class Selection:
     """Which sets of m sites are allowed.
 
     ``forced`` sites are in every set, ``shut`` ones in none (both shape (m,)); of the sites of one ``group``
-    (-1 = none) at most one is in; a set has between ``fewest`` and ``most`` sites.
+    (-1 = none) at most one is in; a set has between ``fewest`` and ``most`` sites. Group-mates of a forced site
+    are shut.
     """
 
     forced: Flags
@@ -21,18 +22,22 @@ class Selection:
     fewest: int
     most: int
 
+    def __post_init__(self) -> None:
+        groups = self.group[self.forced]
+        mates = np.isin(self.group, groups[groups >= 0]) & ~self.forced
+        if (mates & ~self.shut).any():
+            object.__setattr__(self, "shut", self.shut | mates)
+
     @property
     def m(self) -> int:
         """Number of sites."""
         return int(self.forced.size)
 
     def fix(self, opened: Ints, closed: Ints) -> "Selection":
-        """Force some sites open (shutting their group-mates) and shut others."""
+        """Force some sites open and shut others."""
         forced, shut = self.forced.copy(), self.shut.copy()
         forced[opened] = True
         shut[closed] = True
-        groups = self.group[forced]
-        shut |= np.isin(self.group, groups[groups >= 0]) & ~forced
         return replace(self, forced=forced, shut=shut)
 
     def keep(self, rows: Ints) -> "Selection":
