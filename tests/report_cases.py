@@ -68,6 +68,16 @@ def matrix_site_book(path: Path, basis: str = "per unit", **settings: object) ->
     return books.site_book(path, sites, customers, lane_costs=costs, settings=given)
 
 
+def coordinate_site_book(path: Path) -> Path:
+    """Site selection from coordinates alone, in miles, without capacities: the bound follows from the places."""
+    sites, customers = site_rows()
+    kept = ("Site", "Fixed cost", "Handling cost", "Latitude", "Longitude")
+    plain = [{key: row[key] for key in kept} for row in sites]
+    shops = [{key: row[key] for key in ("Customer", "Demand", "Latitude", "Longitude")} for row in customers]
+    return books.site_book(path, plain, shops, settings={
+        "Cost per unit and distance": 0.4, "Road factor": 1.2, "Distance unit": "mi", "Currency": "USD"})
+
+
 def rich_lot_book(path: Path) -> Path:
     """Lot sizing: two resources, families, period costs, receipts, backlog, lost sales, lot rules, today's plan."""
     rng = np.random.default_rng(5)

@@ -35,6 +35,7 @@ class Book:
 BOOKS = {
     "sites": Book(report_cases.rich_site_book, site_report),
     "matrix": Book(report_cases.matrix_site_book, site_report),
+    "coordinates": Book(report_cases.coordinate_site_book, site_report),
     "whole demand": Book(lambda path: report_cases.matrix_site_book(path, "whole demand"), site_report),
     "lots": Book(report_cases.rich_lot_book, lot_report),
     "plain lots": Book(report_cases.plain_lot_book, lot_report),
@@ -208,6 +209,33 @@ def test_a_doctored_plan_is_caught(how: str, doctored) -> None:
     broken = {row[0].value for row in values["Proof"].iter_rows() if len(row) > 5 and row[5].value == "BROKEN"}
     assert rule in broken
     assert any(cell.value == "A check is BROKEN" for row in values["Decision"].iter_rows() for cell in row)
+
+
+@needs_office
+def test_other_prices_still_give_a_bound(made, tmp_path: Path) -> None:
+    """The proof needs no trust in its prices: with each price of the sheet changed, the sum still bounds the cost."""
+    books = []
+    for kind in ("matrix", "coordinates"):
+        _, target, _ = made(kind)
+        for factor in (0.5, 1.7):
+            book = openpyxl.load_workbook(target)
+            for cell in book["Proof prices"][7][2:]:
+                if isinstance(cell.value, int | float):
+                    cell.value *= factor
+            books.append(tmp_path / f"{kind} {factor}.xlsx")
+            book.save(books[-1])
+    for kind in ("matrix", "coordinates"):
+        shutil.copy(made(kind)[1], tmp_path / f"{kind} own.xlsx")
+        books.append(tmp_path / f"{kind} own.xlsx")
+    values = recalculated_all(books, tmp_path)
+    saved = {book.stem: _most_saved(values[book]["Proof"]) for book in books}
+    for kind in ("matrix", "coordinates"):
+        assert -1e-6 <= saved[f"{kind} own"] < min(saved[f"{kind} 0.5"], saved[f"{kind} 1.7"])
+
+
+def _most_saved(proof: Worksheet) -> float:
+    """The most that a better plan could save, as the sheet adds it up."""
+    return next(row[2].value for row in proof.iter_rows() if str(row[0].value).startswith("So a better plan"))
 
 
 def test_the_decision_is_one_page(made) -> None:

@@ -23,8 +23,8 @@ def answers_sheet(name: str, answers: Sequence[Answered], currency: str, per: st
     sheet = ResultSheet(name, tab_colour=style.MOSS, landscape=True, widths=_widths(answers))
     last = len(sheet.widths) - 1
     heading(sheet, names.ANSWERS, "Questions that come up when a plan is discussed. Every answer was found by "
-                                  "solving "
-            "again, not by guessing; where time was short, the words say how far it is certain.", last + 1)
+                                  "solving again, not by guessing; where time was short, the words say how far it "
+                                  "is certain.", last + 1)
     row = 3
     for answer in answers:
         for column in range(last + 1):

@@ -91,9 +91,9 @@ def shade_status(sheet: ResultSheet, first: int, last: int, column: int) -> None
 def write_audit(sheet: ResultSheet, row: int, audit: Audit) -> int:
     """Write what the audit found before the workbook was returned; gives the next free row."""
     sheet.put(row, 0, "Audit before the workbook was returned", style.SECTION)
-    paragraph(sheet, row + 1, 0, 5, "The plan recomputed from the checked rows by a part of the program that shares "
-              "nothing with the search. These are its findings as words; they do not change with the "
-              "sheet.", style.NOTE)
+    paragraph(sheet, row + 1, 0, 5, "The plan recomputed from the checked rows by a part of the program that "
+                                    "shares nothing with the search. These are its findings as words; they do not "
+                                    "change with the sheet.", style.NOTE)
     checks = audit.checks
     write_table(sheet, row + 2, [
         Column("rule", "Rule", [c.rule for c in checks], style.WRAPPED_CELL, 30),

@@ -274,8 +274,7 @@ def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[st
     if solved.verdict is Verdict.WITHIN_GAP:
         stop = style.percent_words(accepted_gap)
         return ["Good enough by your own setting: the search stopped once no plan could be cheaper by more than "
-                f"{stop}. "
-                f"At most {most}{gap} could still be saved."]
+                f"{stop}. At most {most}{gap} could still be saved."]
     return ["The time limit ended the search. This is the best plan found; a better one could save at most "
             f"{most}{gap}. Whether there is one is not known: a higher time limit may tell."]
 

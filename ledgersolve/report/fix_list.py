@@ -42,14 +42,12 @@ def _head(sheet: ResultSheet, errors: Sequence[Problem], run: RunFacts, title: s
     sheet.put(0, 0, f"To fix: {style.counted(places, 'place')} in {title or run.file_name}", style.TITLE)
     sheet.heights[0] = 26.0
     paragraph(sheet, 1, 0, 7, "This workbook was not solved, because something in it is missing or cannot be "
-                              "right. Nothing in "
-              "your sheets was changed; the cells are marked where they stand.", replace(style.TEXT, size=11.0))
+                              "right. Nothing in your sheets was changed; the cells are marked where they "
+                              "stand.", replace(style.TEXT, size=11.0))
     paragraph(sheet, 2, 0, 7, "What to do: go down the list (a click on the cell leads there), mend each cell, and "
-                              "watch its "
-              f"status turn to \"{DONE}\" and its mark vanish. Entries that need other data turn green only after "
-              "the next drop. "
-              "Then save the workbook and drop it again: list and marks go by "
-              "themselves.", replace(style.TEXT, size=11.0))
+                              f"watch its status turn to \"{DONE}\" and its mark vanish. Entries that need other "
+                              "data turn green only after the next drop. Then save the workbook and drop it again: "
+                              "list and marks go by themselves.", replace(style.TEXT, size=11.0))
     words = f"{run.file_name}, {run.when:%Y-%m-%d %H:%M}"
     sheet.put(3, 0, words, style.SMALL)
     return 5
@@ -71,8 +69,7 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
     sheet.put(row, 3, "Entries whose cell is mended (live)", style.BOLD)
     sheet.put(row, 4, 0, style.number(style.WHOLE), formula=f'=COUNTIF({span},"{DONE}")')
     sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}; {left} of them show by themselves "
-                          "when they are "
-              "mended", style.NOTE)
+                          "when they are mended", style.NOTE)
     sheet.put(list_row - 1, 0, "Errors", style.SECTION)
     return list_row
 

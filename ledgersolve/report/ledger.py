@@ -138,10 +138,10 @@ def _titles(sheet: ResultSheet, who: str, what: str, money: str) -> None:
         sheet.widths[column] = width
     sheet.heights[TITLE_ROW] = 30.0
     heading(sheet, "Ledger", "Every cost of the plan as quantity x rate. Rates, and demands behind quantities, are "
-            "formulas into your own input cells: change one there and the cost of this same plan follows, here and "
-            "on "
-            "the first page. What is open, delivered or made does not change by itself: for a new plan, drop the "
-            "workbook again. Filter the column Row by \"line\" to see the single costs only.", 10)
+                             "formulas into your own input cells: change one there and the cost of this same plan "
+                             "follows, here and on the first page. What is open, delivered or made does not change "
+                             "by itself: for a new plan, drop the workbook again. Filter the column Row by "
+                             "\"line\" to see the single costs only.", 10)
 
 
 def _write_part(ledger: Ledger, part: Part, row: int, currency: str) -> int:

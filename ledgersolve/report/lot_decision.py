@@ -30,8 +30,8 @@ GLOSSARY = (
     ("Cost of the plan", "everything in the ledger, over all periods"),
     ("Lot", "the quantity of an item made in one period, with one setup"),
     ("Stock", "what is there at the end of a period"),
-    ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less that "
-     "amount"),
+    ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less "
+                             "that amount"),
     ("Load", "time that lots and setups need on a resource"),
 )
 
@@ -227,8 +227,7 @@ def _check(at: LotPlaces) -> list[str]:
     if at.may_lose and at.report.plan.lost.any():
         points.append("Lost sales: who tells the customers, and what was promised to them.")
     points.append("Labour rules and contracts, and matters that only licensed professionals may decide, are not in "
-                  "this "
-                  "workbook.")
+                  "this workbook.")
     return points
 
 

@@ -22,8 +22,7 @@ def plan_lots(at: LotPlaces) -> ResultSheet:
     shade(sheet, at.made, "{cell}>0", MADE)
     _lots_by_period(at, sheet)
     words = (f"Quantity made in each {case.period_unit}: each dark cell is a lot with its setup. These cells are "
-             "the plan: "
-             "stock, load and ledger follow from them.")
+             "the plan: stock, load and ledger follow from them.")
     return _finished(at, sheet, "Lots in the plan", words)
 
 
@@ -81,8 +80,7 @@ def plan_stock(at: LotPlaces) -> ResultSheet:
     shade(sheet, at.stock, "{cell}<0", ALERT)
     shade(sheet, at.stock, "{cell}>0", SOME)
     words = (f"Stock at the end of each {case.period_unit} = stock before + receipts + made - demand (less what is "
-             "late or "
-             "lost). Change a demand cell and the stock follows.")
+             "late or lost). Change a demand cell and the stock follows.")
     return _finished(at, sheet, "Stock in the plan", words)
 
 

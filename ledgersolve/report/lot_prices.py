@@ -45,8 +45,7 @@ def time_prices(at: LotPlaces) -> TimePrices | None:
     row = second.first_row + second.rows + 2
     items_cell = _items(at, sheet, row, prices, bound - given_back)
     heading(sheet, "Prices behind the proof", "One price for each time unit of a resource in each period; 0 where "
-                                              "time is "
-            "not scarce. The sheet Proof adds the figures up.", 8)
+                                              "time is not scarce. The sheet Proof adds the figures up.", 8)
     sheet.footer = FOOTER
     return TimePrices(sheet, bound - given_back, items_cell, given_back, f"SUM({second.sums()})")
 

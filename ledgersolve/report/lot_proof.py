@@ -57,8 +57,7 @@ def _bound(at: LotPlaces, ledger: Ledger, sheet: ResultSheet, row: int, prices: 
         sheet.put(place, 3, currency, replace(style.NOTE, align="left", indent=1))
     rest = "" if bound <= total + 1e-9 * abs(total) else (
         f" The rest up to {style.money_words(bound, currency, 'down')} was closed by trying out setups one after "
-        "the other; "
-        "it rests on the program.")
+        "the other; it rests on the program.")
     paragraph(sheet, row + 7, 0, 5, f"{CHECKABLE}{rest}", style.TEXT)
     return row + 8
 
@@ -69,13 +68,11 @@ CANNOT = (
 )
 HOW = (
     "Give every hour of a scarce resource a price. If each item is then planned by itself, paying for the time it "
-    "takes, "
-    "as cheaply as can be, no plan for all of them together can cost less than the sum of these costs, less what "
-    "the time "
-    "of the resources is worth at the prices."
+    "takes, as cheaply as can be, no plan for all of them together can cost less than the sum of these costs, less "
+    "what the time of the resources is worth at the prices."
 )
 CHECKABLE = (
     "What you can check here: the prices, the worth of the time at them (formulas into your capacities), and the "
-    "sum. What "
-    "you cannot: the least cost of each item by itself, which the program finds step by step over the periods."
+    "sum. What you cannot: the least cost of each item by itself, which the program finds step by step over the "
+    "periods."
 )

@@ -19,20 +19,17 @@ _SAID = {
     "no plan exists": (
         "No plan can keep all the rules of this workbook.",
         "This is proven, not a matter of time: the rows and rules below cannot hold together. Change one of them, "
-        "smallest "
-        "change first, save the workbook and drop it again.",
+        "smallest change first, save the workbook and drop it again.",
     ),
     "none found": (
         "No plan was found within the time limit.",
         "That does not mean that there is none. Raise the time limit in Settings, or loosen a rule (capacity, "
-        "counts, "
-        "distances, unmet demand at a cost), save the workbook and drop it again.",
+        "counts, distances, unmet demand at a cost), save the workbook and drop it again.",
     ),
     "failed": (
         "This workbook could not be solved, for a reason that does not lie in it.",
         "Nothing in your sheets has to be changed. Drop the workbook again; if the same happens, hand this copy to "
-        "whoever "
-        "looks after the service: the run record says what is known.",
+        "whoever looks after the service: the run record says what is known.",
     ),
 }
 

@@ -35,9 +35,8 @@ def _service_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:
     if case.n * at.sites.size <= SERVED_CELLS:
         off = f"ABS({where.span('delivered')}+{where.span('unmet')}-1)>{tolerance}"
         needed = "" if case.cost_is_whole else f"({where.span('demand')}>0)*"
-        yield count_check("Demand", f"all {case.n:,} customers", "delivered and unmet make the whole demand: none "
-                                                                 "off",
-                          f"SUMPRODUCT({needed}({off}))")
+        met = f"SUMPRODUCT({needed}({off}))"
+        yield count_check("Demand", f"all {case.n:,} customers", "delivered and unmet make up all: none off", met)
         if case.single_source.any():
             yield count_check("Single source", f"{int(case.single_source.sum()):,} "
                                                "customers", "one site each: none off",

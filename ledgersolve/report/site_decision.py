@@ -33,8 +33,8 @@ GLOSSARY = (
     ("Cost of the plan", "everything in the ledger, for the period covered; one-off opening and closing costs in "
                          "full"),
     ("Today", "the sites in use today, with deliveries at their best"),
-    ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less that "
-     "amount"),
+    ("Could still be saved", "no plan that keeps the workbook's rules costs less than the cost of this one less "
+                             "that amount"),
     ("Lane", "deliveries from one site to one customer"),
     ("Main site", "the site that delivers the largest share of a customer's demand"),
 )
@@ -97,9 +97,8 @@ def _against_today(at: SitePlaces) -> str:
     if saved > 0:
         less = f"{_money(at, saved, 'down')} ({part}) less"
         return f"That is {less} than today's {count} cost with deliveries at their best."
-    return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count "
-            "or group "
-            "rule of this workbook that the plan keeps.")
+    return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count or "
+            "group rule of this workbook that the plan keeps.")
 
 
 def _tiles(at: SitePlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
@@ -186,9 +185,8 @@ def _changes(at: SitePlaces) -> list[str]:
         largest = sorted(movers, key=lambda i: -case.demand[i])[:4]
         who = style.listed([case.customer_names[i] for i in largest])
         moved = style.counted(len(movers), "customer gets", "customers get")
-        points.append(f"{moved} another main site; the largest: {who}. All of "
-                      "them are "
-                      f"shaded in {at.name(names.PLAN_CUSTOMERS)}.")
+        points.append(f"{moved} another main site; the largest: {who}. All of them are shaded in "
+                      f"{at.name(names.PLAN_CUSTOMERS)}.")
     elif at.report.today is not None and at.report.today.solved.plan is not None:
         points.append("No customer gets another main site.")
     unmet = plan.unmet > 0
@@ -216,12 +214,10 @@ def _sure(at: SitePlaces) -> list[str]:
     report = at.report
     points = how_sure(report.solved, report.case.currency, report.workbook.run.accepted_gap)
     if report.solved.prices is not None:
-        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, "
-                      "what no plan "
-                      "can undercut.")
+        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, what "
+                      "no plan can undercut.")
     points.append("The plan was recomputed by a second, separate part of the program: every rule holds, and the "
-                  "costs "
-                  "agree.")
+                  "costs agree.")
     return points
 
 
@@ -272,6 +268,5 @@ def _check(at: SitePlaces) -> Sequence[str]:
     if at.has_today and closed.any():
         points.append("Sites that close: people, leases, contracts, and what customers were promised.")
     points.append("Local rules (labour, zoning, customs, transport), and matters that only licensed professionals "
-                  "may decide, "
-                  "are not in this workbook.")
+                  "may decide, are not in this workbook.")
     return points

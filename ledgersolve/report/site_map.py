@@ -15,6 +15,8 @@ from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
 DRAWN_DELIVERIES = 3000
 LABELLED_SITES = 16
 DRAWN_SITES = 30
+CROWDED = 600
+"""Customers from which marks and lines are drawn finer."""
 PLOT = (0.08, 0.10, 0.89, 0.66)
 """Where the plot stands in the picture: left, top, width, height as parts of it."""
 PLOT_RATIO = PLOT[2] * PICTURE_WIDTH / (PLOT[3] * PICTURE_HEIGHT)
@@ -66,7 +68,7 @@ def _deliveries(at: SitePlaces, sites: Floats, customers: Floats) -> _Points:
             before = j
         rows.append((*customers[i].tolist(), at.report.case.customers[i]))
         rows.append((*sites[j].tolist(), at.report.case.sites[j]))
-    return _Points("Deliveries", rows, style.LINE, line="solid")
+    return _Points("Deliveries", rows, style.LINE if at.report.case.n <= CROWDED else "D5DBE1", line="solid")
 
 
 def _drawn(at: SitePlaces) -> list[tuple[int, int]]:
@@ -77,7 +79,7 @@ def _drawn(at: SitePlaces) -> list[tuple[int, int]]:
 
 def _customers(at: SitePlaces, customers: Floats) -> _Points:
     kept = np.argsort(-at.report.case.demand, kind="stable")[:DRAWN_DELIVERIES]
-    size = 4 if at.report.case.n <= 300 else 3
+    size = 4 if at.report.case.n <= 300 else 3 if at.report.case.n <= CROWDED else 2
     points = _listed(customers, np.sort(kept), at.report.case.customers)
     return _Points("Customer", points, style.QUIET, "circle", size)
 
@@ -127,7 +129,7 @@ def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) ->
         made.append(Series(
             points.name, Area(sheet, row, 2, last, 2), Area(sheet, row, 3, last, 3), points.colour,
             pattern="open" if points.hollow else "", marker=points.marker, marker_size=points.size,
-            line_width=0.75, dash=points.line,
+            line_width=0.75 if at.report.case.n <= CROWDED else 0.25, dash=points.line,
             point_labels=tuple(label for _, _, label in points.rows) if points.labelled else (),
         ))
         row = last + 1

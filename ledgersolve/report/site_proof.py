@@ -88,12 +88,10 @@ def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certif
     sheet.put(row, 0, "No plan can cost less than", style.SECTION)
     bound = at.report.solved.bound
     words = ("For this workbook the search left no prices per customer, so that the lower bound cannot be checked "
-             "in a "
-             "sheet; it rests on the search alone.")
+             "in a sheet; it rests on the search alone.")
     if certificate is not None:
-        words = (f"The prices of {at.report.case.n:,} customers are too many to lay out side by side in a sheet, "
-                 "so that "
-                 "the lower bound rests on the program.")
+        words = (f"The prices of {at.report.case.n:,} customers are too many to lay out side by side in a sheet, so "
+                 "that the lower bound rests on the program.")
     if bound is not None:
         words += f" The bound: {style.money_words(bound, at.report.case.currency, 'down')}."
     paragraph(sheet, row + 1, 0, 5, words, style.TEXT)
@@ -101,13 +99,13 @@ def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certif
 
 
 EXPLANATION = (
-    "Give every customer a price: what a plan may at most be counted to spend on serving that customer. In any plan, "
-    "serving a customer costs its price or more, except from an open site that does it for less; what a site saves "
-    "against the prices, on all customers together, is its gain. A site whose gain exceeds its cost lowers the sum "
-    "by "
-    "the difference. So the sum of all prices + the terms of all sites + the constants below is at most the cost of "
-    "EVERY plan that keeps the rules. How the prices were found does not matter: with any other prices, or charges "
-    "and prices of capacity of 0 or more, the sum is still a bound (a price above a cost of unmet demand aside)."
+    "Give every customer a price: what a plan may at most be counted to spend on serving that customer. In any "
+    "plan, serving a customer costs its price or more, except from an open site that does it for less; what a site "
+    "saves against the prices, on all customers together, is its gain. A site whose gain exceeds its cost lowers "
+    "the sum by the difference. So the sum of all prices + the terms of all sites + the constants below is at most "
+    "the cost of EVERY plan that keeps the rules. How the prices were found does not matter: with any other "
+    "prices, or charges and prices of capacity of 0 or more, the sum is still a bound (a price above a cost of "
+    "unmet demand aside)."
 )
 
 

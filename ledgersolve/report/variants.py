@@ -43,9 +43,9 @@ def plan_variants(at: SitePlaces) -> ResultSheet | None:
                ["", *[_difference(at, result) for result in report.variants]], style.WRAPPED_CELL, 36),
     ]
     sheet = detail_sheet(at.name(names.PLAN_VARIANTS), "Variants", "Each variant was solved for itself; it changes "
-                                                                   "only what "
-                         "its row in your sheet Variants names. No figure stands where there is no "
-                         "plan.", columns, style.MOSS)
+                                                                   "only what its row in your sheet Variants "
+                                                                   "names. No figure stands where there is no "
+                                                                   "plan.", columns, style.MOSS)
     _chart(sheet, at, len(solved))
     return sheet
 
