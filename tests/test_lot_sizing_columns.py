@@ -102,7 +102,7 @@ def test_choice_of_runs_is_near_the_joint_optimum() -> None:
         family_resource=np.full(3, -1),
     )
     relaxation, _, charges = climbed(case)
-    runs = choose(relaxation, charges, np.full((3, 12), 0.5), Limits(60.0).start())
+    runs = choose(relaxation, charges, np.full((3, 12), 0.5), Limits(60.0).start(), 0.1)
     left = Relaxation(held(case, runs))
     made = left.at(left.start()).schedules.made
     cost = left.programmes.best().cost.sum() + (case.family_cost[:, None] * family_setups(case, made > 0)).sum()

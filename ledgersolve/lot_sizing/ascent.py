@@ -38,13 +38,23 @@ class Ascent:
     step: float = 0.5
     weight: float = 0.2
     steps: int = 0
+    quick: bool = False
     _failed: int = 0
 
     @classmethod
-    def begin(cls, relaxation: Relaxation, charges: Charges | None = None) -> "Ascent":
-        """Start at ``charges`` (None: nothing charged)."""
-        point = relaxation.at(charges if charges is not None else relaxation.start())
-        return cls(relaxation, point, point.setup.astype(np.float64), point.runs, point.excess)
+    def begin(
+        cls, relaxation: Relaxation, charges: Charges | None = None, *, step: float = 0.5, quick: bool = False
+    ) -> "Ascent":
+        """Start at ``charges`` (None: nothing charged); ``quick`` as in ``Relaxation.at``."""
+        point = relaxation.at(charges if charges is not None else relaxation.start(), quick=quick)
+        often = point.setup.astype(np.float64)
+        return cls(relaxation, point, often, point.runs, point.excess, step=step, quick=quick)
+
+    def exactly(self) -> None:
+        """Go on with the exact programmes of all items."""
+        if self.quick:
+            self.quick = False
+            self.best = self.relaxation.at(self.best.charges)
 
     def climb(self, steps: int, goal: float, met: Callable[[Point], bool]) -> None:
         """Take up to ``steps`` steps; ``goal`` is the cost of a plan, or inf.
@@ -54,7 +64,7 @@ class Ascent:
         for _ in range(steps):
             if not np.isfinite(self.best.bound) or self._settled():
                 return
-            point = self.relaxation.at(self._next(goal))
+            point = self.relaxation.at(self._next(goal), quick=self.quick)
             self.steps += 1
             self._take(point)
             if met(point):

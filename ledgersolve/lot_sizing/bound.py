@@ -109,13 +109,13 @@ class Relaxation:
         family = self.members.project(charges.family, self._family_value(prices, family_use))
         return Charges(prices, family, use, family_use)
 
-    def at(self, charges: Charges) -> Point:
-        """Evaluate the relaxation."""
+    def at(self, charges: Charges, *, quick: bool = False) -> Point:
+        """Evaluate the relaxation; ``quick`` gives a lower bound of it (see ``ItemProgrammes.schedule``)."""
         case, prices = self.case, charges.prices
         by_item = np.vstack([prices, np.zeros((1, case.t))])[case.item_resource]
         setups = case.setup_cost + case.setup_time[:, None] * by_item + charges.family + charges.use
         units = case.unit_cost + case.time_per_unit[:, None] * by_item
-        schedules = self.programmes.schedule(setups, units)
+        schedules = self.programmes.schedule(setups, units, quick=quick)
         setup = schedules.made > 0
         family_value = self._family_value(prices, charges.family_use) - self.kin @ charges.family
         runs = _answer(family_value, self.kin @ (charges.family * setup), self.kin @ charges.family)

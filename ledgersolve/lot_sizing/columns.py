@@ -39,10 +39,13 @@ class Pool:
         self._seen = [set() for _ in range(self.case.n)]
         self._mark = np.random.default_rng(7).random(self.case.t)
 
-    def add(self, made: Floats, costs: Floats) -> int:
-        """Take in one schedule an item ((N, T) and (N,)); gives how many were new."""
+    def add(self, made: Floats, costs: Floats, which: Flags | None = None) -> int:
+        """Take in one schedule an item ((N, T) and (N,)), of the items ``which``; gives how many were new."""
         new = []
-        for i, key in enumerate((made @ self._mark).tolist()):
+        wanted = np.ones(self.case.n, dtype=bool) if which is None else which
+        keys = (made @ self._mark).tolist()
+        for i in np.flatnonzero(wanted).tolist():
+            key = keys[i]
             if key not in self._seen[i]:
                 self._seen[i].add(key)
                 new.append(i)

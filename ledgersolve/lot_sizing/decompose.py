@@ -7,6 +7,7 @@ improve the plan until time is over or the gap is accepted.
 """
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 from ledgersolve.lot_sizing.ascent import Ascent
@@ -23,9 +24,13 @@ from ledgersolve.lot_sizing.windows import Best, improve
 from ledgersolve.mip import Clock, Limits, Solved, Verdict, judge
 
 _STEPS = 800
-_HELD_STEPS = 150
-_HOLDS = 5
-_BLEND = 0.2
+_HELD_STEPS, _HELD_STEP = 60, 0.03
+_HOLDS = 16
+_BLEND = 0.1
+_EXACT_STEP = 0.05
+_EXACT_STEPS = 150
+_NEAR_TOP = 0.02
+_KEEP_ALL = 60
 
 
 def solve_decomposed(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
@@ -78,6 +83,7 @@ class _Run:
         share = 0.3 * self.clock.left()
         until = self.clock.elapsed() + share
         self.ascent = climb(self.relaxation, self.pool, None, _STEPS, self.cost, self.clock, until)
+        climb_exactly(self.relaxation, self.pool, self.ascent, self.clock, until + share / 2)
         self.point = self.ascent.best
         self.clock.note("ascent", bound=self.point.bound)
         self.clock.end_stage("ascent", f"{self.ascent.steps} steps")
@@ -94,27 +100,32 @@ class _Run:
             self._hold(until)
 
     def _hold(self, until: float) -> None:
-        case, charges = self.case, self.point.charges
-        prices = charges.prices
-        found: list[tuple[float, Relaxation, Pool, Point]] = []
-        for _ in range(_HOLDS):
-            if self.clock.elapsed() > until and found:
-                break
+        """Choose when families and uses run, hold it, and learn from the prices that follow; keep the best."""
+        case, charges, ascent = self.case, self.point.charges, self.ascent
+        prices, often = charges.prices, self.point.runs if ascent is None else ascent.runs
+        best, least, tried = None, math.inf, 0
+        runs: Runs | None = None
+        while tried < _HOLDS and not (tried and (self.clock.elapsed() > until or self.clock.over())):
             at = Charges(prices, charges.family, charges.use, charges.family_use)
-            runs = choose(self.relaxation, at, self.ascent.runs if self.ascent else self.point.runs, self.clock)
+            runs = choose(self.relaxation, at, often, self.clock, 0.0, runs)
             relaxation = Relaxation(held(case, runs))
             pool = Pool(relaxation.case)
             ascent = climb(
-                relaxation, pool, relaxation.start(prices), _HELD_STEPS, math.inf, self.clock, until, 0.1
+                relaxation, pool, relaxation.start(prices), _HELD_STEPS, math.inf, self.clock, until, _HELD_STEP
             )
-            found.append((ascent.best.bound + _sunk(case, runs), relaxation, pool, ascent.best))
-            if not math.isfinite(ascent.best.bound):
-                break
-            prices = (1 - _BLEND) * prices + _BLEND * ascent.best.charges.prices
-        self.clock.end_stage("families and uses", f"{len(found)} choices held")
-        found.sort(key=lambda entry: entry[0])
-        _, relaxation, pool, point = found[0]
-        _, made = plan_held(relaxation, pool, point, self.clock, 0.4 * self.clock.left())
+            ascent.exactly()
+            tried += 1
+            value = ascent.best.bound + _sunk(case, runs)
+            if best is None or value < least:
+                best, least = (relaxation, pool, ascent), value
+            if math.isfinite(value):
+                prices = (1 - _BLEND) * prices + _BLEND * ascent.best.charges.prices
+        self.clock.end_stage("families and uses", f"{tried} choices held")
+        if best is None:
+            return
+        relaxation, pool, ascent = best
+        climb_exactly(relaxation, pool, ascent, self.clock, self.clock.elapsed() + 0.1 * self.clock.left())
+        _, made = plan_held(relaxation, pool, ascent.best, self.clock, 0.4 * self.clock.left())
         self._finish(made)
 
     def _finish(self, made: Floats | None) -> None:
@@ -153,18 +164,38 @@ def climb(
     relaxation: Relaxation, pool: Pool, charges: Charges | None, steps: int, goal: float, clock: Clock,
     until: float, step: float = 0.5,
 ) -> Ascent:
-    """Climb from some charges and keep the schedules met near the top."""
-    ascent = Ascent.begin(relaxation, charges)
-    ascent.step = step
-    keep_all = relaxation.case.n <= 60
+    """Climb from some charges and keep the schedules met near the top.
+
+    Items that need the dearer programme are relaxed on the way (``Ascent.quick``).
+    """
+    ascent = Ascent.begin(relaxation, charges, step=step, quick=relaxation.programmes.level.items.size > 0)
+    ascent.climb(steps, goal, _keeper(relaxation, pool, ascent, clock, until))
+    return ascent
+
+
+def climb_exactly(relaxation: Relaxation, pool: Pool, ascent: Ascent, clock: Clock, until: float) -> None:
+    """Go on with the exact programmes of all items, for a few steps, as long as there is time."""
+    if relaxation.programmes.level.items.size and not clock.over() and math.isfinite(ascent.best.bound):
+        ascent.exactly()
+        ascent.step = _EXACT_STEP
+        ascent.climb(_EXACT_STEPS, math.inf, _keeper(relaxation, pool, ascent, clock, until))
+
+
+def _keeper(
+    relaxation: Relaxation, pool: Pool, ascent: Ascent, clock: Clock, until: float
+) -> Callable[[Point], bool]:
+    keep_all = relaxation.case.n <= _KEEP_ALL
+    beyond = ~relaxation.programmes.exact
 
     def met(point: Point) -> bool:
-        if keep_all or ascent.step < 0.02:
-            pool.add(point.schedules.made, relaxation.column_costs(point))
+        if keep_all or ascent.step < _NEAR_TOP:
+            sound = point.schedules.sound
+            pool.add(
+                point.schedules.made, relaxation.column_costs(point), None if sound is None else sound | beyond
+            )
         return clock.over() or clock.elapsed() > until
 
-    ascent.climb(steps, goal, met)
-    return ascent
+    return met
 
 
 def plan_held(

@@ -160,34 +160,48 @@ class LevelProgramme:
     # ------------------------------------------------------------------ recursion
 
     def _run(self, chunk: _Chunk, setups: Floats, units: Floats) -> tuple[Floats, Floats]:
-        """Forward over the periods; then back, finding again the level each lot started from."""
+        """Forward over the periods; then back, finding again the level each lot started from.
+
+        Levels below every item's need of a period are left out from then on.
+        """
         periods = len(setups)
         best = np.empty((periods + 1, *chunk.levels.shape))
         best[0] = np.inf
         best[0, 0] = 0.0
+        lowest = np.concatenate([[0], self._lowest(chunk)])
         for t in range(periods):
-            lot = _start(best[t] - units[t] * chunk.levels, chunk.high, chunk.low)
-            lot += setups[t] + units[t] * chunk.levels
-            np.minimum(best[t], lot, out=lot)
-            best[t + 1] = lot + self._stock_cost(chunk, t)
+            low = lowest[t]
+            bought = units[t] * chunk.levels[low:]
+            lot = _start(best[t, low:] - bought, chunk.high[low:], chunk.low, low)
+            lot += setups[t] + bought
+            np.minimum(best[t, low:], lot, out=lot)
+            best[t + 1, : lowest[t + 1]] = np.inf
+            best[t + 1, lowest[t + 1] :] = lot[lowest[t + 1] - low :] + self._stock_cost(chunk, t, lowest[t + 1])
         return self._back(chunk, best, setups, units)
 
-    def _stock_cost(self, chunk: _Chunk, t: int) -> Floats:
-        """Holding and backlog cost of each level at the end of a period; inf where a limit is broken."""
-        k = chunk.items
-        over = chunk.levels - self.raw[t, k]
-        tiny = self.scale[k]
-        held = self.held[t, k] * (self.least[t, k] + np.maximum(over, 0.0))
-        broken = self.least[t, k] + over > self.most_stock[k] + tiny
-        late = np.maximum(-over, 0.0)
-        if t == len(self.raw) - 1:
-            broken |= late > tiny
-        elif t == 0:
-            broken |= chunk.levels < self.must[k] - tiny
-        broken |= self.least[t, k] > self.most_stock[k] + tiny
-        with np.errstate(invalid="ignore"):
-            waited = np.where(late > tiny, late * self.late[k], 0.0)
-        return np.where(broken, np.inf, held + waited)
+    def _lowest(self, chunk: _Chunk) -> Ints:
+        """Give for each period the first level that some item can end it with."""
+        late = np.isfinite(self.late[chunk.items])
+        raw = np.where(late, 0.0, self.raw[:, chunk.items] - self.scale[chunk.items])
+        first = np.stack([(chunk.levels < need).sum(axis=0) for need in raw]).min(axis=1)
+        return np.minimum(np.maximum.accumulate(first), len(chunk.levels) - 1)
+
+    def _stock_cost(self, chunk: _Chunk, t: int, low: int) -> Floats:
+        """Holding and backlog cost of each level from ``low`` at the end of a period; inf beyond limits."""
+        k, levels = chunk.items, chunk.levels[low:]
+        over = levels - self.raw[t, k]
+        tiny, least = self.scale[k], self.least[t, k]
+        cost = self.held[t, k] * (least + np.maximum(over, 0.0))
+        if np.isfinite(self.late[k]).any() and t < len(self.raw) - 1:
+            with np.errstate(invalid="ignore"):
+                cost += np.where(over < -tiny, -over * self.late[k], 0.0)
+        else:
+            cost[over < -tiny] = np.inf
+        if np.isfinite(self.most_stock[k]).any():
+            cost[np.maximum(over, 0.0) > self.most_stock[k] - least + tiny] = np.inf
+        if t == 0 and self.must[k].any():
+            cost[levels < self.must[k] - tiny] = np.inf
+        return cost
 
     def _back(self, chunk: _Chunk, best: Floats, setups: Floats, units: Floats) -> tuple[Floats, Floats]:
         periods, n = setups.shape
@@ -197,31 +211,42 @@ class LevelProgramme:
         cost = best[periods, at, column]
         number = np.arange(len(chunk.levels))[:, None]
         for t in range(periods - 1, -1, -1):
-            low = 0 if chunk.low is None else chunk.low[at, column]
-            open_to = (number <= chunk.high[at, column]) & (number >= low)
-            start = np.where(open_to, best[t] - units[t] * chunk.levels, np.inf)
-            source = start.argmin(axis=0)
+            end = int(chunk.high[at, column].max()) + 1
+            start = best[t, :end] - units[t] * chunk.levels[:end]
+            start[number[:end] > chunk.high[at, column]] = np.inf
+            if chunk.low is not None:
+                start[number[:end] < chunk.low[at, column]] = np.inf
             level = chunk.levels[at, column]
-            with_lot = start[source, column] + setups[t] + units[t] * level
-            lot = np.isfinite(cost) & (with_lot < best[t, at, column])
-            made[t] = np.where(lot, level - chunk.levels[source, column], 0.0)
-            at = np.where(lot, source, at)
+            if end > 0:
+                source = start.argmin(axis=0)
+                with_lot = start[source, column] + setups[t] + units[t] * level
+                lot = np.isfinite(cost) & (with_lot < best[t, at, column])
+                made[t] = np.where(lot, level - chunk.levels[source, column], 0.0)
+                at = np.where(lot, source, at)
         return made, cost
 
 
-def _start(value: Floats, high: Ints, low: Ints | None) -> Floats:
-    """Least value over the levels low..high of each entry; inf where there is none."""
+def _start(value: Floats, high: Ints, low: Ints | None, first: int) -> Floats:
+    """Least value over the levels low..high of each entry; inf where there is none.
+
+    ``value`` and ``high`` begin with level ``first``.
+    """
+    column = np.arange(value.shape[1])
     if low is None:
         least = np.minimum.accumulate(value, axis=0)
-        return np.where(high >= 0, np.take_along_axis(least, np.maximum(high, 0), axis=0), np.inf)
-    width = np.maximum(high - low + 1, 0)
+        end = high - first
+        found = least[np.maximum(end, 0), column]
+        found[end < 0] = np.inf
+        return found
+    end, begin = high - first, np.maximum(low[first:] - first, 0)
+    width = np.maximum(end - begin + 1, 0)
     answer = np.full(value.shape, np.inf)
     power, table = 0, value
     while True:
         here = (width >> power) == 1
         if here.any():
-            one = np.take_along_axis(table, np.where(here, low, 0), axis=0)
-            two = np.take_along_axis(table, np.where(here, high + 1 - (1 << power), 0), axis=0)
+            one = np.take_along_axis(table, np.where(here, begin, 0), axis=0)
+            two = np.take_along_axis(table, np.where(here, end + 1 - (1 << power), 0), axis=0)
             answer = np.where(here, np.minimum(one, two), answer)
         if int(width.max()) >> (power + 1) == 0:
             return answer

@@ -16,6 +16,9 @@ from ledgersolve.mip import Clock, LinearModel
 MOST_COLUMNS = 12_000
 """Largest number of schedules given to the wrapper."""
 
+MIXED_SETUPS = 1500
+"""Items x periods up to which setups, not schedules, are the whole-number choice."""
+
 
 def pick(
     relaxation: Relaxation, pool: Pool, point: Point, mix: Mix, dear: float, seconds: float, clock: Clock,
@@ -26,9 +29,11 @@ def pick(
     ``point`` holds the charges by which schedules are ranked.
     """
     case = relaxation.case
-    per_item = int(np.clip(MOST_COLUMNS // max(case.n, 1), 3, 40))
+    per_item = int(np.clip(MOST_COLUMNS // max(case.n, 1), 3, 60))
     chosen = np.union1d(pool.promising(point.charges, per_item), mix.columns)
     items, made = pool.items[chosen], pool.made[chosen]
+    if case.n * case.t <= MIXED_SETUPS and not relaxation.coupled:
+        return _mixed(relaxation, pool, chosen, dear, min(seconds, clock.left()), clock, gap)
     model = LinearModel()
     columns = model.add_variables(chosen.size, upper=1.0, cost=pool.costs[chosen], whole=True)
     model.add_rows(case.n, items, columns, 1.0, lower=1.0, upper=1.0)
@@ -41,6 +46,66 @@ def pick(
     quantities = np.zeros((case.n, case.t))
     quantities[items[taken]] = made[taken]
     return quantities
+
+
+def _mixed(
+    relaxation: Relaxation, pool: Pool, chosen: Ints, dear: float, seconds: float, clock: Clock, gap: float
+) -> Floats | None:
+    """Whole-number setups, and quantities that mix schedules whose setups all are among them.
+
+    With few items one schedule each does not fill the periods well; a mix can (Degraeve & Jans 2007).
+    """
+    case, items, made = relaxation.case, pool.items[chosen], pool.made[chosen]
+    model = LinearModel()
+    setups = (case.setup_cost[items] * (made > 0)).sum(axis=1)
+    columns = model.add_variables(chosen.size, upper=1.0, cost=pool.costs[chosen] - setups)
+    model.add_rows(case.n, items, columns, 1.0, lower=1.0, upper=1.0)
+    column, period = np.nonzero(made > 0)
+    met, row = np.unique(items[column] * case.t + period, return_inverse=True)
+    cost = case.setup_cost.ravel()[met]
+    setup = model.add_variables(met.size, upper=1.0, cost=cost, whole=True)
+    model.add_rows(
+        met.size, np.concatenate([row, np.arange(met.size)]), np.concatenate([columns[column], setup]),
+        np.repeat([1.0, -1.0], [column.size, met.size]), upper=0.0,
+    )
+    _mixed_time(relaxation, model, items, made, columns, setup, met, dear)
+    result = model.solve(seconds, gap=gap, cancelled=clock.limits.cancelled)
+    if result.values is None:
+        return None
+    quantities = np.zeros((case.n, case.t))
+    np.add.at(quantities, items, result.values[columns][:, None] * made)
+    size = 1e-9 * quantities.max(axis=1, keepdims=True)
+    return np.where(quantities > size, quantities, 0.0)
+
+
+def _mixed_time(
+    relaxation: Relaxation, model: LinearModel, items: Ints, made: Floats, columns: Ints, setup: Ints,
+    met: Ints, dear: float,
+) -> None:
+    """Capacity rows: time per unit by the schedules mixed, setup time by the setups."""
+    case = relaxation.case
+    limited = np.isfinite(case.capacity)
+    count = int(limited.sum())
+    cells = np.full((len(case.resources) + 1, case.t), -1, dtype=np.int64)
+    cells[:-1][limited] = np.arange(count)
+    row = cells[case.item_resource[items]]
+    load = case.time_per_unit[items, None] * made
+    there = (load > 0) & (row >= 0)
+    item, period = met // case.t, met % case.t
+    setup_row = cells[case.item_resource[item], period]
+    timed = (setup_row >= 0) & (case.setup_time[item] > 0)
+    over = model.add_variables(
+        count, upper=np.broadcast_to(case.overtime_limit[:, None], limited.shape)[limited],
+        cost=np.broadcast_to(case.overtime_cost[:, None], limited.shape)[limited],
+    )
+    short = model.add_variables(count, cost=dear)
+    parts = (
+        (row[there], np.broadcast_to(columns[:, None], there.shape)[there], load[there]),
+        (setup_row[timed], setup[timed], case.setup_time[item][timed]),
+        (np.arange(count), over, np.full(count, -1.0)), (np.arange(count), short, np.full(count, -1.0)),
+    )
+    rows, variables, factors = (np.concatenate([part[k] for part in parts]) for k in range(3))
+    model.add_rows(count, rows, variables, factors, upper=case.capacity[limited])
 
 
 def _couplings(

@@ -6,6 +6,8 @@ then the programme over cumulative quantities for the items whose schedule break
 neither carries the recursion as a lower bound, named in ``relaxed``.
 """
 
+from dataclasses import replace
+
 import numpy as np
 
 from ledgersolve.lot_sizing import levels, wagner_whitin
@@ -32,19 +34,26 @@ class ItemProgrammes:
         self.whitin = WagnerWhitin(case, everything)
         beyond_recursion = np.flatnonzero(by_level & ~carried)
         self.level = LevelProgramme(case, beyond_recursion)
-        self.always = self._recursion_relaxes()[beyond_recursion]
+        self.understated = self._recursion_relaxes() & ~carried
 
-    def schedule(self, setup_cost: Floats, unit_cost: Floats) -> Schedules:
-        """Give the best schedule of every item; ``setup_cost`` and ``unit_cost`` have shape (N, T)."""
+    def schedule(self, setup_cost: Floats, unit_cost: Floats, *, quick: bool = False) -> Schedules:
+        """Give the best schedule of every item; ``setup_cost`` and ``unit_cost`` have shape (N, T).
+
+        ``quick`` leaves the dearer programme out: the costs of its items are then lower bounds, as are those
+        of items beyond both; ``Schedules.sound`` tells which schedules are nevertheless the best.
+        """
         first = self.whitin.schedule(setup_cost, unit_cost)
+        sound = keeps_limits(self.case, first) & ~self.understated
         hard = self.level.items
-        wanted = self.always | ~keeps_limits(self.case, first)[hard]
-        if wanted.any():
-            second = self.level.schedule(setup_cost[hard], unit_cost[hard], wanted)
-            which = hard[wanted]
-            first.made[which], first.lost[which] = second.made[wanted], 0.0
-            first.cost[which] = second.cost[wanted]
-        return first
+        wanted = ~sound[hard]
+        if quick or not wanted.any():
+            return replace(first, sound=sound)
+        second = self.level.schedule(setup_cost[hard], unit_cost[hard], wanted)
+        which = hard[wanted]
+        first.made[which], first.lost[which] = second.made[wanted], 0.0
+        first.cost[which] = second.cost[wanted]
+        sound[which] = True
+        return replace(first, sound=sound)
 
     def best(self) -> Schedules:
         """Give the best schedule of every item under the case's own costs."""
@@ -61,11 +70,13 @@ class ItemProgrammes:
         return tuple(name for name, has in named if (has & out).any())
 
     def _recursion_relaxes(self) -> Flags:
-        """Items whose recursion charges less than their schedule costs, even if no limit is broken."""
+        """Items whose recursion may charge less than their schedule costs, even if no limit is broken."""
         case, need = self.case, needs(self.case)
         falls = (np.maximum(need.raw, 0.0) != need.stair).any(axis=1)
         short = need.raw[:, 0] > case.demand[:, 0]
-        return np.asarray(~np.isnan(case.backlog_cost) & (falls | short))
+        unordered = (np.diff(need.stair, axis=1, prepend=0.0) > case.demand * (1 + 1e-12)).any(axis=1)
+        late, lost = ~np.isnan(case.backlog_cost), ~np.isnan(case.lost_cost)
+        return np.asarray(late & (falls | short) | lost & unordered)
 
 
 def keeps_limits(case: Case, schedules: Schedules) -> Flags:

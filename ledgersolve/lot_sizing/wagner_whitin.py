@@ -37,12 +37,14 @@ class Schedules:
     """One schedule an item, the best under the costs it was asked for.
 
     ``made`` and ``lost`` have shape (n, T) in units; ``cost`` shape (n,) in money, inf for an item that no
-    schedule can serve (its rows of ``made`` and ``lost`` are then 0).
+    schedule can serve (its rows of ``made`` and ``lost`` are then 0). ``sound``, shape (n,), tells the schedules
+    that keep every limit of their item and cost what ``cost`` says; None where nobody looked.
     """
 
     made: Floats
     lost: Floats
     cost: Floats
+    sound: Flags | None = None
 
 
 @dataclass(frozen=True)
