@@ -103,6 +103,7 @@ def test_group_mates_of_a_site_that_must_open_are_closed() -> None:
         ({"rule": np.array([OPEN, OPEN]), "group": np.array([0, 0])}, "one group"),
         ({"rule": np.array([CLOSED, 0]), "fewest_sites": 2}, "at least 2"),
         ({"rule": np.array([CLOSED, CLOSED])}, "no lane"),
+        ({"most_sites": 0}, "no site may open"),
     ],
 )
 def test_contradictions_are_named(changes: dict[str, object], words: str) -> None:

@@ -133,7 +133,10 @@ class Lanes:
             return f"{int(forced.sum())} sites must be open, and at most {self.most} may be"
         if self.most_choosable() < self.fewest:
             return f"only {self.most_choosable()} sites can open, and at least {self.fewest} must"
-        stranded = self.needs & np.isinf(self.unmet_cost) & ~np.isfinite(self.cost).any(axis=0)
+        must = self.needs & np.isinf(self.unmet_cost)
+        if must.any() and self.most == 0:
+            return "no site may open, and there are customers who must be served"
+        stranded = must & ~np.isfinite(self.cost).any(axis=0)
         if stranded.any():
             return f"{int(stranded.sum())} customers have no lane they may be served on"
         return None

@@ -52,7 +52,10 @@ class Steps:
 def price_value(
     core: Core, near: NearLanes, selection: Selection, prices: Floats
 ) -> tuple[float, Floats, Flags, Floats]:
-    """Bound, values of the sites, best set for them and worth of each lane, at prices within the ceilings."""
+    """Bound, values of the sites, best set for them and worth of each lane.
+
+    Prices are at most the ceilings of the lanes and the customers' cost of staying unmet.
+    """
     worth = near.worth(prices)
     gain = near.by_site(worth, core.m)
     value = core.fixed - gain
@@ -96,7 +99,8 @@ class _Climb:
         average: Floats | None,
     ) -> None:
         self.core, self.near, self.selection, self.upper, self.steps = core, near, selection, upper, steps
-        self.top = near.ceiling
+        # Above the cost of leaving a customer unserved a price would prove too much.
+        self.top = np.minimum(near.ceiling, core.unmet)
         prices = np.minimum(prices, self.top)
         self.bound, self.value, self.picked, worth = price_value(core, near, selection, prices)
         self.prices = prices
