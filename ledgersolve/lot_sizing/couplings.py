@@ -79,6 +79,8 @@ def choose(
 def _searched(
     search: JointSearch, often: Floats, before: Flags | None, clock: Clock, seconds: float
 ) -> Flags:
+    if not search.price.size or not search.group.size:
+        return np.ones(search.price.shape, dtype=bool)
     if before is None:
         return search.chosen(often, clock, seconds)[0]
     return search.searched(before, clock, seconds)[0]
