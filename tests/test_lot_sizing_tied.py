@@ -7,7 +7,9 @@ import pytest
 
 from ledgersolve.lot_sizing.audit import audit
 from ledgersolve.lot_sizing.case import Case
+from ledgersolve.lot_sizing.decompose import solve_decomposed
 from ledgersolve.lot_sizing.elastic import short_of_time, shortfall
+from ledgersolve.lot_sizing.groups import groups
 from ledgersolve.lot_sizing.plan import plan_from_made
 from ledgersolve.lot_sizing.quantities import best_quantities
 from ledgersolve.lot_sizing.start import find_start
@@ -15,7 +17,7 @@ from ledgersolve.lot_sizing.tied import solve_tied
 from ledgersolve.lot_sizing.whole import solve_whole
 from ledgersolve.mip import Limits, Verdict
 from tests.bench.lot_cases import Recipe, generated
-from tests.lot_textbook import random_case, textbook_cost
+from tests.lot_textbook import FEATURES, random_case, textbook_cost
 
 
 def scarce(factor: float) -> Case:
@@ -39,6 +41,25 @@ def test_larger_groups_go_to_the_decomposition_first() -> None:
     stages = names(generated(Recipe(40, 15, 1, 0.9), 1), 30.0)
     assert stages[0] == "ascent"
     assert "whole model" not in stages
+
+
+@pytest.mark.parametrize("seed", range(24))
+def test_the_decomposition_is_sound_on_any_features(seed: int) -> None:
+    """Forced onto small mixed cases, the decomposition bounds from below and its plans pass the audit."""
+    rng = np.random.default_rng([6, seed])
+    features = frozenset(name for name in FEATURES if rng.random() < 0.4) | {"resource"}
+    case = random_case(rng, int(rng.integers(2, 5)), int(rng.integers(3, 6)), features)
+    for group in (group for group in groups(case) if group.shared):
+        wanted = textbook_cost(group.case)
+        answer = solve_decomposed(group.case, Limits(2.0, gap=1e-6))
+        if wanted is None:
+            assert answer.plan is None
+            continue
+        assert answer.verdict is not Verdict.NO_PLAN_EXISTS
+        assert answer.bound <= wanted * (1 + 1e-6) + 1e-6
+        if answer.plan is not None:
+            assert audit(group.case, answer.plan).ok
+            assert answer.cost >= wanted * (1 - 1e-6) - 1e-6
 
 
 def test_impossible_by_adding_up() -> None:
