@@ -5,11 +5,11 @@ import math
 from ledgersolve.mip import Clock, Limits, Solved, Verdict, judge
 from ledgersolve.site_selection.answer import Answer
 from ledgersolve.site_selection.audit import audit
+from ledgersolve.site_selection.capacitated import solve_capacitated
 from ledgersolve.site_selection.case import Case
 from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.uncapacitated import solve_uncapacitated
-from ledgersolve.site_selection.whole import solve_whole
 
 
 def solve(case: Case, limits: Limits) -> Solved[Plan]:
@@ -31,9 +31,7 @@ def _run(lanes: Lanes, clock: Clock) -> Answer:
     """Hand the case to the engine for it."""
     if not lanes.capacitated and lanes.near is None:
         return solve_uncapacitated(lanes, clock)
-    answer = solve_whole(lanes, clock)
-    clock.end_stage("whole model")
-    return answer
+    return solve_capacitated(lanes, clock)
 
 
 def _ended(case: Case, answer: Answer, clock: Clock) -> Solved[Plan]:
