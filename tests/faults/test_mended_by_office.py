@@ -43,12 +43,15 @@ def sheets_of(path: Path) -> dict[str, bytes]:
         links = package.read("xl/_rels/workbook.xml.rels").decode()
         targets = {}
         for link in re.findall(r"<Relationship [^>]*>", links):
-            target = re.search(r'Target="([^"]+)"', link).group(1).lstrip("/")
-            targets[re.search(r'Id="([^"]+)"', link).group(1)] = target if target.startswith("xl/") else f"xl/{target}"
-        return {
-            re.search(r'name="([^"]+)"', tab).group(1): package.read(targets[re.search(r'r:id="([^"]+)"', tab).group(1)])
-            for tab in re.findall(r"<sheet [^>]*>", book)
-        }
+            target = attribute(link, "Target").lstrip("/")
+            targets[attribute(link, "Id")] = target if target.startswith("xl/") else f"xl/{target}"
+        tabs = re.findall(r"<sheet [^>]*>", book)
+        return {attribute(tab, "name"): package.read(targets[attribute(tab, "r:id")]) for tab in tabs}
+
+
+def attribute(element: str, name: str) -> str:
+    """Value of an attribute in a piece of XML."""
+    return re.search(rf'\b{name}="([^"]+)"', element).group(1)
 
 
 def without_marks(sheet: bytes) -> bytes:
