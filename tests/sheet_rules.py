@@ -37,6 +37,7 @@ class Returned:
         self.source = None if source is None else openpyxl.load_workbook(source)
         theirs = set() if self.source is None else set(self.source.sheetnames)
         self.ours = [name for name in self.formulas.sheetnames if name not in theirs]
+        self.tables = {name: list(find_tables(self.values[name])) for name in self.ours}
 
     def cells(self, *, formulas: bool = False) -> Iterator[Cell]:
         """All filled cells of our sheets."""
@@ -117,8 +118,12 @@ def period_sheets_alike(book: Returned) -> Iterator[str]:
         yield f"WB-03 period sheets differ in their columns: {titles}"
 
 
-def tables(sheet: Worksheet) -> Iterator[tuple[int, list[Cell], int]]:
-    """Tables of a sheet: row of the titles, the title cells, last row. Titles are known by their ground."""
+Table = tuple[int, list[Cell], int]
+"""Row of the titles, the title cells, last row."""
+
+
+def find_tables(sheet: Worksheet) -> Iterator[Table]:
+    """Tables of a sheet; titles are known by their ground."""
     titles: dict[int, list[Cell]] = {}
     for row in sheet.iter_rows():
         for cell in row:
@@ -149,7 +154,7 @@ def units_named(book: Returned) -> Iterator[str]:
     """WB-04: every column of figures names its unit: in its title, in a unit column, or in the row's label."""
     for name in book.ours:
         sheet = book.values[name]
-        for row, titles, last in tables(sheet):
+        for row, titles, last in book.tables[name]:
             has_unit = any(str(cell.value).startswith("Unit") for cell in titles)
             for cell in titles:
                 column = [sheet.cell(r, cell.column) for r in range(row + 1, last + 1)]
@@ -177,7 +182,7 @@ def one_pattern_a_column(book: Returned) -> Iterator[str]:
     for name in book.ours:
         sheet = book.formulas[name]
         ledger = name.startswith("Ledger")
-        for row, titles, last in tables(book.values[name]):
+        for row, titles, last in book.tables[name]:
             for cell in titles:
                 patterns: dict[str, set[str]] = {}
                 for r in range(row + 1, last + 1):
@@ -277,7 +282,7 @@ def nothing_hidden(book: Returned) -> Iterator[str]:
                   *(k for k, d in sheet.column_dimensions.items() if d.hidden)]
         if hidden:
             yield f"WB-10 {name} hides {hidden[:5]}"
-        areas = [(row, titles[0].column, last, titles[-1].column) for row, titles, last in tables(sheet)]
+        areas = [(row, titles[0].column, last, titles[-1].column) for row, titles, last in book.tables[name]]
         for merged in sheet.merged_cells.ranges:
             left, top, right, bottom = range_boundaries(str(merged))
             if any(top <= last and bottom >= row and left <= end and right >= start
@@ -323,7 +328,7 @@ def codes_are_text(book: Returned) -> Iterator[str]:
     for name in book.ours:
         if not name.startswith(("Plan", "Ledger")):
             continue
-        for row, titles, last in tables(book.values[name]):
+        for row, titles, last in book.tables[name]:
             for cell in titles:
                 if cell.value in ("Site", "Customer", "Item", "Resource", "Main site"):
                     held = [book.values[name].cell(r, cell.column).value for r in range(row + 1, last + 1)]
@@ -362,8 +367,11 @@ def no_links_or_macros(book: Returned) -> Iterator[str]:
 
 def contrasts(book: Returned) -> Iterator[str]:
     """WB-21: text and ground differ by at least 4.5 to 1, in cells and in live formats."""
-    seen = set()
+    seen, looked_at = set(), []
     for cell in book.cells():
+        if cell._style in looked_at:
+            continue
+        looked_at.append(cell._style)
         if cell.font.color is None or cell.font.color.type != "rgb":
             yield f"WB-21 {place(cell)} has no colour of its own"
             continue
