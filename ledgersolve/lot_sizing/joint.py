@@ -108,7 +108,7 @@ class JointSearch:
     def costs(self, choice: Flags) -> Floats:
         """Cost of each group under a choice (G, T); shape (G,)."""
         ahead, _ = self._forward(choice)
-        return self._by_group(ahead[-1] - self.given) + (choice * self.price).sum(axis=1)
+        return np.asarray(self._by_group(ahead[-1] - self.given) + (choice * self.price).sum(axis=1))
 
     def _by_group(self, by_item: Floats) -> Floats:
         """Sum over the members of each group: (..., n) to (..., G)."""

@@ -201,7 +201,7 @@ class LevelProgramme:
             cost[np.maximum(over, 0.0) > self.most_stock[k] - least + tiny] = np.inf
         if t == 0 and self.must[k].any():
             cost[levels < self.must[k] - tiny] = np.inf
-        return cost
+        return np.asarray(cost)
 
     def _back(self, chunk: _Chunk, best: Floats, setups: Floats, units: Floats) -> tuple[Floats, Floats]:
         periods, n = setups.shape
