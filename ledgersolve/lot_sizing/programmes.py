@@ -3,7 +3,8 @@
 ``ItemProgrammes`` puts the two programmes together: the Wagner-Whitin recursion for what it carries; for
 the rest first that recursion as a relaxation (a schedule that keeps the limits anyway is the best one),
 then the programme over cumulative quantities for the items whose schedule breaks a limit; and for what
-neither carries the recursion as a lower bound, named in ``relaxed``.
+neither carries a lower bound, named in ``relaxed``: that programme without the most lot for items with a
+least lot too, else the recursion.
 """
 
 from dataclasses import replace
@@ -32,8 +33,9 @@ class ItemProgrammes:
         carried, by_level = wagner_whitin.carries(case), levels.carries(case)
         self.exact: Flags = np.asarray(carried | by_level)
         self.whitin = WagnerWhitin(case, everything)
-        beyond_recursion = np.flatnonzero(by_level & ~carried)
-        self.level = LevelProgramme(case, beyond_recursion)
+        both = (case.least_lot > 0) & np.isfinite(case.most_lot) & ~self.exact
+        freed = replace(case, most_lot=np.where(both, np.inf, case.most_lot))
+        self.level = LevelProgramme(freed, np.flatnonzero(levels.carries(freed) & ~carried))
         self.understated = self._recursion_relaxes() & ~carried
 
     def schedule(self, setup_cost: Floats, unit_cost: Floats, *, quick: bool = False) -> Schedules:
@@ -52,7 +54,7 @@ class ItemProgrammes:
         which = hard[wanted]
         first.made[which], first.lost[which] = second.made[wanted], 0.0
         first.cost[which] = second.cost[wanted]
-        sound[which] = True
+        sound[which] = self.exact[which] | keeps_limits(self.case, first)[which]
         return replace(first, sound=sound)
 
     def best(self) -> Schedules:
