@@ -108,6 +108,7 @@ class _Run:
     seconds: dict[str, float] = field(default_factory=dict)
     reading: Reading | None = None
     sha256: str = ""
+    record: tuple[tuple[str, str], ...] = ()
 
     def answered(
         self, solve: bool, progress: ProgressSink | None, cancelled: Callable[[], bool] | None,
@@ -141,6 +142,7 @@ class _Run:
 
     def solved(self, reading: Reading, worked: Worked) -> Answer:
         solved = worked.solved
+        self.record = worked.record
         trouble = [] if solved.verdict.has_plan else _trouble(reading, worked)
         with self.step("write"):
             word = "to fix" if trouble else "solved"
@@ -207,7 +209,7 @@ class _Run:
         versions += [(name, version(package)) for name, package in _RECORDED]
         return RunFacts(
             self.shown_name, self.sha256, datetime.now().replace(microsecond=0), tuple(versions),
-            tuple(self.seconds.items()),
+            tuple(self.seconds.items()), self.record,
         )
 
     def answer(self, outcome: Outcome) -> Answer:

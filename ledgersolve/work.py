@@ -43,7 +43,10 @@ class AuditError(Exception):
 
 @dataclass(frozen=True)
 class Worked:
-    """What solving gave: figures for the answer, and how to make the sheets once their names are settled."""
+    """What solving gave: figures for the answer, and how to make the sheets once their names are settled.
+
+    ``record`` are rows of the run record: what each answer ahead took.
+    """
 
     solved: Solved[Any]
     plan: dict[str, Any] | None
@@ -51,6 +54,7 @@ class Worked:
     sheets: Sheets
     variants: tuple[VariantAnswer, ...] = ()
     conflicts: tuple[Conflict, ...] = ()
+    record: tuple[tuple[str, str], ...] = ()
 
 
 @dataclass
@@ -125,6 +129,7 @@ def _work_sites(reading: Reading, case: SiteCase, budget: Budget) -> Worked:
         report.wanted_names("site selection"),
         lambda facts, names: report.site_sheets(replace(given, run=facts), names),
         tuple(_variant_answer(case, result) for result in variants),
+        record=_times(reading, answers),
     )
 
 
@@ -142,6 +147,7 @@ def _work_lots(reading: Reading, case: LotCase, budget: Budget) -> Worked:
         {"setups": solved.plan.setups} if solved.plan is not None else None,
         report.wanted_names("lot sizing"),
         lambda facts, names: report.lot_sheets(replace(given, run=facts), names),
+        record=_times(reading, answers),
     )
 
 
@@ -149,6 +155,15 @@ TRADES: Mapping[Job, Callable[[Reading, Any, Budget], Worked]] = {
     Job.SITE_SELECTION: _work_sites,
     Job.LOT_SIZING: _work_lots,
 }
+
+
+def _times(reading: Reading, answers: tuple[Answered, ...]) -> tuple[tuple[str, str], ...]:
+    """Time that each question took, and the share of the time limit that was kept for them."""
+    if not answers:
+        return ()
+    kept = f"{100 * reading.run.questions_share:.0f} % of {reading.run.time_limit:g} seconds"
+    times = [(f"Question: {answer.question}", f"{answer.seconds:.2f} seconds") for answer in answers]
+    return (("Kept for questions", kept), *times)
 
 
 def _main_part(reading: Reading, case: SiteCase | LotCase, budget: Budget) -> Limits:
