@@ -38,8 +38,10 @@ class SingleSourcing:
 
     def finish(self, served: Served, opened: Flags, cutoff: float, thorough: bool) -> Served:
         """Find the best whole deliveries for the open sites, if they can cost less than ``cutoff``."""
-        if served.plan is None or served.prices is None or served.bound >= cutoff or self._whole(served.plan):
+        if served.plan is None or self._whole(served.plan):
             return served
+        if served.prices is None or served.bound >= cutoff:
+            return Served(None, np.inf, served.bound)
         items, complete = self._worthwhile(served.prices, served.bound, opened, cutoff)
         built = build(self.lanes, (items.site.astype(np.int64), items.customer.astype(np.int64)), open_sites=opened)
         seconds = min(THOROUGH if thorough else QUICK, self.clock.left())
