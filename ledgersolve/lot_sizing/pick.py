@@ -16,8 +16,8 @@ from ledgersolve.mip import Clock, LinearModel
 MOST_COLUMNS = 12_000
 """Largest number of schedules given to the wrapper."""
 
-MIXED_SETUPS = 1500
-"""Items x periods up to which setups, not schedules, are the whole-number choice."""
+MIXED_SETUPS, MIXED_ITEMS = 1500, 40
+"""Items x periods, and items, up to which setups, not schedules, are the whole-number choice."""
 
 
 def pick(
@@ -32,7 +32,8 @@ def pick(
     per_item = int(np.clip(MOST_COLUMNS // max(case.n, 1), 3, 60))
     chosen = np.union1d(pool.promising(point.charges, per_item), mix.columns)
     items, made = pool.items[chosen], pool.made[chosen]
-    if case.n * case.t <= MIXED_SETUPS and not relaxation.coupled:
+    few = case.n <= MIXED_ITEMS and case.n * case.t <= MIXED_SETUPS
+    if few and not relaxation.coupled:
         return _mixed(relaxation, pool, chosen, dear, min(seconds, clock.left()), clock, gap)
     model = LinearModel()
     columns = model.add_variables(chosen.size, upper=1.0, cost=pool.costs[chosen], whole=True)
