@@ -81,7 +81,7 @@ class _Engine:
     def _rules(self) -> State:
         """Rules of the case; a site that can never reach its least volume stays closed."""
         state = np.where(self.lanes.rule == OPEN, 1, np.where(self.lanes.rule == CLOSED, -1, 0)).astype(np.int8)
-        short = self.items.reach < self.lanes.least * (1.0 - 1e-9)
+        short = np.minimum(self.items.reach, self.lanes.capacity) < self.lanes.least * (1.0 - 1e-9)
         state[short & (state == 0)] = -1
         return state
 
