@@ -200,6 +200,7 @@ def child_at_once(request: dict[str, Any], private: Path, *_: Any) -> Ended:
 def hasten(patch: Callable[[Any, str, Any], None] = setattr) -> None:
     """Make every wait of the service short, and let the stand-in answer in place of a child process."""
     patch(desk_module, "_FIRST_WAIT", 0.001)
+    patch(desk_module, "_LONGEST_WAIT", 0.01)
     patch(desk_module, "_PUBLISH_WAIT", 0.001)
     patch(settle_module, "_FIRST_WAIT", 0.001)
     patch(settle_module, "_LONGEST_WAIT", 0.01)
