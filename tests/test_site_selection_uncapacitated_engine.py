@@ -1,6 +1,7 @@
 """The whole engine without volumes: exact, anytime, honest, and told apart from a wrong bound."""
 
 import time
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -51,12 +52,12 @@ def test_the_engine_agrees_with_the_whole_model(seed: int, monkeypatch: pytest.M
 def test_a_bound_deliberately_wrong_is_seen(monkeypatch: pytest.MonkeyPatch) -> None:
     """The comparison has teeth: an engine whose dual is a tenth too high passes the optimum of a gap case."""
     case = random_case(np.random.default_rng(1), 12, 40, {"whole demand"})
-    cost = audit(case, solve_whole(Lanes.of(case), Limits(60.0, 0.0).start()).plan).total  # type: ignore[arg-type]
+    whole = solve_whole(Lanes.of(case), Limits(60.0, 0.0).start())
+    assert whole.plan is not None
+    cost = audit(case, whole.plan).total
     honest = engine.climb
 
     def boasting(*args: object) -> object:
-        from dataclasses import replace
-
         dual = honest(*args)
         return replace(dual, bound=1.1 * dual.bound)
 

@@ -72,7 +72,7 @@ class _Engine:
         self.room = np.full(core.n, np.inf)
         self.random = np.random.default_rng(1)
         self.checkable: list[Floats] = []
-        self.notes: list[str] = []
+        self.notes = ["no volume rule can bind: priced customers, local search, branching on sites"]
 
     def _cost_of(self, opened: Flags) -> float:
         return cost_of_sites(self.root, opened)
