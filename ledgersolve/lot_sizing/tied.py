@@ -15,7 +15,8 @@ from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.tight import tight_limits
 from ledgersolve.lot_sizing.totals import overdrawn
 from ledgersolve.lot_sizing.whole import solve_whole
-from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict
+from ledgersolve.lot_sizing.windows import Best, improve
+from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict, judge
 
 WHOLE_AT_ONCE = 60
 """Setups up to which the whole model needs no help."""
@@ -25,6 +26,8 @@ WHOLE_AFTER, FIRST_SHARE = 400, 0.5
 """Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
 WHOLE_AT_LAST = 2000
 """Setups up to which the whole model is tried where nothing else has found a plan."""
+START_SHARE, WINDOWS_SHARE = 0.3, 0.5
+"""Shares of the time left for the whole model that has to find the first plan, and for windows after it."""
 RESCUE_SHARE = 0.4
 """Share of the time left for the search of the least time missing, where the whole model comes after it."""
 
@@ -47,8 +50,30 @@ def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
     fits = cells <= WHOLE_AFTER or (first.plan is None and cells <= WHOLE_AT_LAST)
     if first.verdict is Verdict.NO_PLAN_EXISTS or not fits or clock.over():
         return first
-    second = solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound)
-    return _after(first, second)
+    if first.plan is None:
+        limits = replace(limits, seconds=START_SHARE * clock.left())
+        first = _after(first, solve_whole(case, limits, floor=first.bound))
+        if first.verdict in (Verdict.NO_PLAN_EXISTS, Verdict.PROVEN_BEST) or clock.over():
+            return first
+    first = _improved(case, first, clock)
+    if cells > WHOLE_AFTER or clock.over():
+        return first
+    return _after(first, solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound))
+
+
+def _improved(case: Case, found: Solved[Plan], clock: Clock) -> Solved[Plan]:
+    """Improve a plan window by window in a share of the time that is left."""
+    if found.plan is None or found.cost is None or found.verdict is Verdict.PROVEN_BEST:
+        return found
+    bound = -np.inf if found.bound is None else found.bound
+    limits = replace(clock.limits, seconds=max(WINDOWS_SHARE * clock.left(), 1e-3))
+    best, windows = Best(case, found.plan, found.cost), limits.start()
+    windows.note("windows", best.cost, bound)
+    tried = improve(best, windows)
+    windows.end_stage("windows", f"{tried} tried")
+    known = None if found.bound is None else min(found.bound, best.cost)
+    return replace(found, verdict=judge(best.cost, bound, clock.limits.gap), plan=best.plan, cost=best.cost,
+                   bound=known, stages=(*found.stages, *windows.stages))
 
 
 def _rescued(case: Case, first: Solved[Plan], clock: Clock, share: float) -> Solved[Plan]:

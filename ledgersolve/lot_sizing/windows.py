@@ -56,7 +56,7 @@ def improve(best: Best, clock: Clock, seed: int = 0) -> int:
     case = best.case
     rng = np.random.default_rng(seed)
     small = whole_model(case, Form.INEQUALITIES) if case.n * case.t <= WHOLE_CELLS else None
-    tried, idle, size = 0, 0, FREE_SETUPS
+    tried, idle, size = 0, 0, int(np.clip(case.n * case.t // 3, 30, FREE_SETUPS))
     while not clock.over() and not clock.close_enough():
         gained, proven = False, True
         for items, periods in _windows(case, size, rng):
