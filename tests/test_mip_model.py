@@ -127,6 +127,21 @@ def test_the_clock_keeps_the_best_figures_and_tells_them() -> None:
     assert clock.stages[0].best == 10.0
 
 
+def test_a_run_stopped_without_a_plan_claims_no_bound() -> None:
+    """Splitting a market five ways is out of reach of one node; with negative costs 0 would be a false bound."""
+    random = np.random.default_rng(1)
+    model = LinearModel()
+    x = model.add_variables(40, upper=1, cost=-1.0, whole=True)
+    for _ in range(5):
+        weights = random.integers(1, 100, 40)
+        half = float(weights.sum() // 2)
+        model.add_row(x, weights, lower=half, upper=half)
+    result = model.solve(20, parameters=["limits/nodes = 1"])
+    assert result.status == "unknown"
+    assert result.values is None
+    assert result.bound == -math.inf
+
+
 @pytest.mark.parametrize(
     ("cost", "bound", "accepted", "verdict"),
     [

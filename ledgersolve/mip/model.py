@@ -258,12 +258,13 @@ class _Run:
         if not math.isfinite(bound) or abs(bound) >= SCIP_INFINITY:
             bound = -math.inf
         if status == "unknown":
-            return LinearResult(status, None, math.inf, bound, nodes=nodes)
+            # without a plan the wrapper gives 0 whatever was proven, which is no bound where costs can be negative
+            return LinearResult(status, None, math.inf, -math.inf, nodes=nodes)
         answer = linear_solver_pb2.MPSolutionResponse()
         solver.FillSolutionResponseProto(answer)
         values = np.array(answer.variable_value, dtype=np.float64)
         if not np.isfinite(values).all():
-            return LinearResult("unknown", None, math.inf, bound, nodes=nodes)
+            return LinearResult("unknown", None, math.inf, -math.inf, nodes=nodes)
         lower, upper, cost, whole = self.model.columns()
         values[whole] = np.round(values[whole])
         values = np.clip(values, lower, upper)

@@ -22,6 +22,10 @@ LEAST_GAIN = 1e-9
 """Relative difference in cost below which two plans count as equal."""
 
 
+SETTLED = 1e-6
+"""Relative distance below the best cost within which a set's deliveries count as settled."""
+
+
 @dataclass
 class Best:
     """Best plan so far with its cost, and what is known of each set of sites tried.
@@ -63,12 +67,16 @@ class Best:
         """
         key = opened.tobytes()
         self.waiting.pop(key, None)
-        again = thorough and self.finish is not None and key in self.known and self.known[key].bound < self.cost
+        again = thorough and self.finish is not None and key in self.known and self.open_still(key)
         if key not in self.known or again:
             began = time.monotonic()
             self.offer(opened, self.server.serve(opened, self.clock), thorough=thorough)
             self.spent += time.monotonic() - began
         return self.known[key]
+
+    def open_still(self, key: bytes) -> bool:
+        """Whether a set tried may still have a plan better than the best."""
+        return self.known[key].bound < self.cost - SETTLED * abs(self.cost)
 
     def offer(self, opened: Flags, served: Served, *, thorough: bool = False) -> None:
         """Take in the split deliveries of a set of sites, made whole where single sourcing asks for it."""

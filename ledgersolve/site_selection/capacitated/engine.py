@@ -33,6 +33,9 @@ SMALL = 20_000
 HANDY = 40_000
 """Most lanes that the wrapper is handed to close a case."""
 
+SWIFT = 0.7
+"""A slice of branch and bound that leaves at most this part of the gap is followed by another one."""
+
 KERNEL_LANES = 8
 """Lanes a customer in the first kernel."""
 
@@ -151,22 +154,25 @@ class _Engine:
         tree = Tree(self.relaxation, self.best, self.clock, self.margin, root)
         slice_seconds, growth = max(1.0, self.clock.elapsed()), 1.0
         while not self.clock.over():
+            before_gap = self.best.cost - tree.bound()
             tree.run(slice_seconds)
-            self.nodes += tree.nodes
             self._raise(tree.bound())
-            self.clock.end_stage("branch and bound", f"{self.nodes} nodes")
+            self.clock.end_stage("branch and bound", f"{self.nodes + tree.nodes} nodes")
             if tree.closed() or self._done() or self.clock.over():
+                self.nodes += tree.nodes
                 return
+            slice_seconds *= 2.0
+            if self.best.cost - tree.bound() <= SWIFT * before_gap:
+                continue
             before = self.best.cost
             if self._wrapper(root, growth):
                 return
             if self.best.cost < before:
                 root = self._again(root, 200)
                 self._search(root)
+                self.nodes += tree.nodes
                 tree = Tree(self.relaxation, self.best, self.clock, self.margin, root)
-            tree.nodes = 0
             growth *= 1.5
-            slice_seconds *= 2.0
 
     def _wrapper(self, root: Climb, growth: float) -> bool:
         """Let the wrapper close the case where it is small enough, or search a kernel; True if closed."""
