@@ -12,6 +12,7 @@ from pathlib import Path
 
 import pytest
 
+from ledgersolve.service import settle
 from ledgersolve.service.board import health, status
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.layout import Layout, prepare
@@ -251,7 +252,7 @@ def test_a_returned_file_that_is_taken_at_once_is_not_made_again(tmp_path, quick
     assert taken == 10 and names(tmp_path / "Returned") == []
 
 
-def test_a_file_held_open_elsewhere_waits_and_is_then_taken(tmp_path, quick):
+def test_a_file_held_open_elsewhere_waits_and_is_then_taken(tmp_path, quick, monkeypatch):
     """The system refuses the rename while a program has the file: waiting, told, and tried again."""
 
     class Held(Plan):
@@ -261,6 +262,9 @@ def test_a_file_held_open_elsewhere_waits_and_is_then_taken(tmp_path, quick):
             if name == "rename" and self.open and arguments[0].name == "plan.xlsx":
                 raise PermissionError(errno.EACCES, "sharing violation")
 
+    # long enough beside a step that the page is seen while the drop is held back
+    monkeypatch.setattr(settle, "_FIRST_WAIT", 0.3)
+    monkeypatch.setattr(settle, "_LONGEST_WAIT", 0.3)
     plan = Held()
     watcher = quick_watcher(tmp_path, FaultyDisk(plan))
     drop(tmp_path, "plan.xlsx")
