@@ -147,3 +147,14 @@ def test_an_accepted_gap_is_kept() -> None:
     cost = audit(case, answer.plan).total
     assert answer.bound >= cost * (1 - 0.03)
     assert answer.bound <= audit(case, answered(case).plan or answer.plan).total * (1 + 1e-6)
+
+
+def test_a_share_that_no_set_of_sites_reaches_is_called_impossible() -> None:
+    """Half of the demand has a near site; nine tenths within that distance cannot be."""
+    case = plain_case(
+        [1, 1], np.ones((2, 2)), [5, 5], distance=np.array([[1.0, 9.0], [9.0, 9.0]]),
+        share_within=0.9, share_distance=2.0,
+    )
+    answer = answered(case)
+    assert answer.impossible
+    assert "share within distance" in answer.notes[0]

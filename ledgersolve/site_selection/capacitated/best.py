@@ -31,7 +31,8 @@ class Best:
     """Best plan so far with its cost, and what is known of each set of sites tried.
 
     ``known`` maps a set (bytes of its flags) to what its deliveries cost; ``waiting`` maps sets met on the way
-    and not tried yet to a lower bound on the cost of their plans. ``spent`` is the time that trying took, in seconds.
+    and not tried yet to a lower bound on the cost of their plans; ``tried`` are the sets whose split deliveries
+    have been worked out. ``spent`` is the time that trying took, in seconds.
     """
 
     lanes: Lanes
@@ -42,7 +43,12 @@ class Best:
     cost: float = np.inf
     known: dict[bytes, Served] = field(default_factory=dict)
     waiting: dict[bytes, float] = field(default_factory=dict)
+    tried: set[bytes] = field(default_factory=set)
     spent: float = 0.0
+
+    def below(self, margin: float) -> float:
+        """Cost that is lower than the best one by this part; inf without a plan."""
+        return self.cost - margin * abs(self.cost) if self.plan is not None else np.inf
 
     def see(self, choice: Choice, bound: float, _: Prices) -> None:
         """Note the set of a step; a later step may show that no plan with it can be better."""
@@ -84,6 +90,7 @@ class Best:
             served = self.finish(served, opened, self.cost, thorough)
         self.take(served.plan)
         self.known[opened.tobytes()] = replace(served, plan=None, prices=None)
+        self.tried.add(opened.tobytes())
 
     def take(self, plan: Plan | None) -> bool:
         """Keep a plan if it is the best so far."""

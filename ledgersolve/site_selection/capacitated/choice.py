@@ -17,8 +17,11 @@ State = NDArray[np.int8]
 """Shape (m,): 1 = open, -1 = closed, 0 = free."""
 
 SLACK = 1e-9
-LAST = 12
-"""Most halvings of the bracket around the capacity price."""
+TANGENTS = 12
+"""Most tangents laid to find the capacity price."""
+
+FARTHEST = 1e6
+"""Prices above this multiple of the dearest rate are not tried: no set the counts allow holds the demand."""
 
 
 @dataclass(frozen=True)
@@ -141,7 +144,7 @@ class Pool:
             found = self._by_rate(own)
             if found is not None:
                 return found
-        return self._by_halving(own, low)
+        return self._by_tangents(own, low)
 
     def _by_rate(self, own: Floats) -> tuple["_Picked", Floats, NDArray[np.bool_]] | None:
         """Fill the need in the order of value per unit held, as if counts were no matter; None if they are."""
@@ -162,29 +165,31 @@ class Pool:
         degree[critical] = 1.0 - (held[last] - self.left) / holds[critical]
         return self._at(own, float(rate[critical])), degree, roomy
 
-    def _by_halving(self, own: Floats, low: "_Picked") -> tuple["_Picked", Floats, NDArray[np.bool_]]:
-        """Halve a bracket around the last capacity price."""
-        best, bottom = low, 0.0
-        top = self.price if self.price > 0 else self._steepest(own)
+    def _by_tangents(self, own: Floats, low: "_Picked") -> tuple["_Picked", Floats, NDArray[np.bool_]]:
+        """Find the best capacity price between two tangents, one on either side (Kelley 1960), from the last one."""
+        bottom, top = 0.0, self.price if self.price > 0 else self._steepest(own)
         high = self._at(own, top)
-        for _ in range(60):
-            best = high if high.value > best.value else best
-            if high.short <= 0:
-                break
-            low, bottom, top = high, top, 2.0 * top
+        best = high if high.value > low.value else low
+        while high.short > 0 and np.isfinite(top):
+            low, bottom, top = high, top, 1.3 * top if self.price > 0 else 2.0 * top
+            if top > FARTHEST * self._steepest(own):
+                return best, high.opened.astype(np.float64), high.opened
             high = self._at(own, top)
-        for _ in range(LAST):
-            middle = 0.5 * (bottom + top)
-            found = self._at(own, middle)
-            best = found if found.value > best.value else best
-            if found.short > 0:
-                low, bottom = found, middle
-            else:
-                high, top = found, middle
-            if top - bottom <= 1e-4 * top:
+            best = high if high.value > best.value else best
+        for _ in range(TANGENTS):
+            meeting = (high.value - low.value + low.short * bottom - high.short * top) / (low.short - high.short)
+            if not bottom < meeting < top:
                 break
+            found = self._at(own, meeting)
+            best = found if found.value > best.value else best
+            if low.value + low.short * (meeting - bottom) - found.value <= 1e-9 * abs(found.value):
+                break
+            if found.short > 0:
+                low, bottom = found, meeting
+            else:
+                high, top = found, meeting
         self.price = top
-        weight = 0.0 if high.short > 0 else low.short / max(low.short - high.short, 1e-300)
+        weight = low.short / (low.short - high.short)
         return best, (1.0 - weight) * low.opened + weight * high.opened, high.opened
 
     def _steepest(self, own: Floats) -> float:

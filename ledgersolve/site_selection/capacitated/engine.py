@@ -36,6 +36,9 @@ HANDY = 40_000
 SWIFT = 0.7
 """A slice of branch and bound that leaves at most this part of the gap is followed by another one."""
 
+MANY = 200_000
+"""Most lanes that the wrapper is handed to find a first plan."""
+
 KERNEL_LANES = 8
 """Lanes a customer in the first kernel."""
 
@@ -71,15 +74,27 @@ class _Engine:
         pool = Pool(self.lanes, self.items.reach, self._rules())
         if pool.impossible:
             return Answer(None, np.inf, impossible=True, notes=("no set of sites can hold the demand",))
+        if self._near_units() < self.lanes.near_least * (1.0 - 1e-6):
+            note = "too little demand has a site near enough for the share within distance"
+            return Answer(None, np.inf, impossible=True, notes=(note,))
         if not (pool.state == 0).any():
             return self._settled(pool.state)
         root = self._root(pool.state)
-        if self.best.plan is None and self._impossible(root):
+        if self.best.plan is None and not self.clock.over() and self._impossible(root):
             return Answer(None, np.inf, impossible=True, notes=("the wrapper proved that no plan exists",))
         if not self._done():
             self._close(root)
         self._polish()
         return self._answer(root)
+
+    def _near_units(self) -> float:
+        """Most units that near lanes could carry if every site were open and had all the room."""
+        items = self.items
+        if items.near is None:
+            return 0.0
+        share = np.ones(items.site.size) if items.limit is None else items.limit
+        near = np.bincount(items.customer, weights=share * items.near, minlength=self.lanes.n)
+        return float((np.minimum(near, 1.0) * self.lanes.demand).sum())
 
     def _rules(self) -> State:
         """Rules of the case; a site that can never reach its least volume stays closed."""
@@ -111,6 +126,8 @@ class _Engine:
         self._raise(root.bound)
         self.clock.end_stage("bound", f"{root.steps} steps")
         for _ in range(3):
+            if self.clock.over():
+                break
             self._search(root)
             root = self._again(root, steps)
             if self._done():
@@ -154,25 +171,22 @@ class _Engine:
         tree = Tree(self.relaxation, self.best, self.clock, self.margin, root)
         slice_seconds, growth = max(1.0, self.clock.elapsed()), 1.0
         while not self.clock.over():
-            before_gap = self.best.cost - tree.bound()
+            cost, gap = self.best.cost, self.best.cost - tree.bound()
             tree.run(slice_seconds)
+            self.nodes = tree.nodes
             self._raise(tree.bound())
-            self.clock.end_stage("branch and bound", f"{self.nodes + tree.nodes} nodes")
+            self.clock.end_stage("branch and bound", f"{self.nodes} nodes")
             if tree.closed() or self._done() or self.clock.over():
-                self.nodes += tree.nodes
                 return
             slice_seconds *= 2.0
-            if self.best.cost - tree.bound() <= SWIFT * before_gap:
-                continue
-            before = self.best.cost
-            if self._wrapper(root, growth):
+            swift = self.best.cost - tree.bound() <= SWIFT * gap and np.isfinite(gap)
+            if not swift and self._wrapper(root, growth):
                 return
-            if self.best.cost < before:
+            growth *= 1.0 if swift else 1.5
+            self._search(tree.lowest() or root)
+            if self.best.cost < cost:
                 root = self._again(root, 200)
-                self._search(root)
-                self.nodes += tree.nodes
-                tree = Tree(self.relaxation, self.best, self.clock, self.margin, root)
-            growth *= 1.5
+                tree.adopt(root.state)
 
     def _wrapper(self, root: Climb, growth: float) -> bool:
         """Let the wrapper close the case where it is small enough, or search a kernel; True if closed."""
@@ -224,14 +238,18 @@ class _Engine:
         self.clock.end_stage("kernel", f"{int(kept.sum())} sites, {items.site.size} lanes")
 
     def _impossible(self, root: Climb) -> bool:
-        """Without a plan so far, ask the wrapper for one over all lanes; True if there is none."""
+        """Without a plan so far, ask the wrapper for one; True if it shows over all lanes that there is none."""
+        items = self.items.only(root.state >= 0)
+        whole = items.site.size <= MANY
+        if not whole:
+            penalty = items.penalties(root.prices, items.evaluate(root.prices))
+            items = items.at(fewest_penalties(items, penalty, max(3, MANY // self.lanes.n)))
         outcome = run_model(
-            self.lanes, self.items, root.state >= 0, root.state == 1, self.clock, 0.5 * self.clock.left(),
-            0.05, None,
+            self.lanes, items, root.state >= 0, root.state == 1, self.clock, 0.5 * self.clock.left(), 0.05, None
         )
         self.best.take(outcome.plan)
-        self.clock.end_stage("first plan", "by the wrapper over all lanes")
-        return outcome.infeasible
+        self.clock.end_stage("first plan", f"by the wrapper over {items.site.size} lanes")
+        return whole and outcome.infeasible
 
     def _polish(self) -> None:
         """Go on to the exact optimum for a while where no more than a proven plan was asked for."""
@@ -253,7 +271,7 @@ class _Engine:
         self.clock.end_stage("polish", f"{tree.nodes} nodes")
 
     def _cutoff(self) -> float:
-        return self.best.cost - self.margin * abs(self.best.cost)
+        return self.best.below(self.margin)
 
     def _raise(self, bound: float) -> None:
         if bound > self.bound:
@@ -264,6 +282,8 @@ class _Engine:
         return self.bound >= self._cutoff()
 
     def _answer(self, root: Climb | None) -> Answer:
+        if self.best.plan is None and self.bound == np.inf:
+            return Answer(None, np.inf, impossible=True, notes=("no set of sites can serve everybody",))
         bound = min(self.bound, self.best.cost) if self.best.plan is not None else self.bound
         note = f"volumes: Lagrangian bound with a knapsack a site, {self.nodes} nodes of branch and bound"
         prices = None if root is None else root.prices.customer

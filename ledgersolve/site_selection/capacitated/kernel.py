@@ -58,6 +58,8 @@ def run_model(
 
     ``items`` are the lanes, ``kept`` the sites that may open, ``forced`` those that are open.
     """
+    if clock.over():
+        return Outcome(None, -np.inf)
     rule = np.where(kept, np.where(forced, OPEN, lanes.rule), CLOSED)
     built = build(replace(lanes, rule=rule), (items.site.astype(np.int64), items.customer.astype(np.int64)))
     start = None if hint is None else built.hint(hint.open, hint.site, hint.customer, hint.share)

@@ -49,14 +49,21 @@ class Moves:
     state: State
 
     def improve(self, opened: Flags, seconds: float) -> None:
-        """Move to better sets until none is found or time is over; better plans go to ``best``."""
+        """Move to better sets until none is found or time is over; better plans go to ``best``.
+
+        With single sourcing the moves go by split deliveries, and only the last set is made whole.
+        """
+        if self.clock.over():
+            return
         end = time.monotonic() + seconds
         served = self.best.server.serve(opened, self.clock)
         while served.prices is not None and not self._over(end):
             better = self._round(opened, served, served.prices, end)
             if better is None:
-                return
+                break
             opened, served = better
+        if self.best.plan is None or not self.clock.over():
+            self.best.try_set(opened)
 
     def _over(self, end: float) -> bool:
         return time.monotonic() > end or self.clock.over()
@@ -69,10 +76,12 @@ class Moves:
         for changed in self._promising(opened, served, values.value, room):
             if self._over(end):
                 return None
-            if changed.tobytes() in self.best.known or self._bounded(changed, room, target):
+            if changed.tobytes() in self.best.tried or self._bounded(changed, room, target):
                 continue
             found = self.best.server.serve(changed, self.clock)
-            self.best.offer(changed, found)
+            self.best.tried.add(changed.tobytes())
+            if self.best.finish is None:
+                self.best.offer(changed, found)
             if found.cost < target and found.prices is not None:
                 return changed, found
         return None
@@ -111,8 +120,10 @@ class Moves:
         priced = lanes.cost[np.ix_(inside, needs)] + np.outer(room[inside], demand)
         first, which, second = _two_best(priced, unmet, penalty)
         costs = lanes.cost[np.ix_(outside, needs)]
-        change = np.empty((inside.size + 1, outside.size + 1))
+        change = np.full((inside.size + 1, outside.size + 1), np.inf)
         for row in range(inside.size + 1):
+            if self.clock.over():
+                break
             base, loss = first, 0.0
             if row > 0:
                 base = np.where(which == row - 1, second, first)

@@ -7,7 +7,7 @@ Its two parts climb on from its prices. A node with all sites fixed is settled b
 import heapq
 import itertools
 import time
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -52,12 +52,25 @@ class Tree:
 
     def cutoff(self) -> float:
         """Cost that a plan must beat."""
-        return self.best.cost - self.margin * abs(self.best.cost)
+        return self.best.below(self.margin)
 
     def bound(self) -> float:
         """Proven lower bound on the cost of every plan, as far as it is below the cutoff."""
         lowest = self.heap[0][0] if self.heap else np.inf
         return min(lowest, self.unsettled, self.cutoff())
+
+    def lowest(self) -> Climb | None:
+        """The climb of the node with the lowest bound."""
+        return self.heap[0][2].climb if self.heap else None
+
+    def adopt(self, state: State) -> None:
+        """Fix sites in all nodes that are fixed for the whole case; nodes that contradict it hold nothing better."""
+        kept, self.heap = self.heap, []
+        for _, _, node in kept:
+            own = node.climb.state
+            if not ((own * state) == -1).any():
+                joined = np.where(own == 0, state, own).astype(np.int8)
+                self._add(Node(node.bound, replace(node.climb, state=joined)))
 
     def closed(self) -> bool:
         """Whether no plan below the cutoff is left."""
