@@ -1,5 +1,7 @@
 """Every feature of single items against the textbook model, by whichever programme carries it."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
@@ -14,7 +16,9 @@ FEATURES = [
     ("multiple",), ("multiple", "least lot"), ("multiple", "most lot", "late"), ("multiple", "most stock"),
     ("most stock",), ("most stock", "late"), ("most stock", "receipts", "opening"),
     ("late", "receipts"), ("late", "safety"), ("late", "safety", "receipts", "least lot"),
-    ("most stock", "least lot", "allowed"),
+    ("most stock", "least lot", "allowed"), ("least lot", "most lot"), ("least lot", "most lot", "late", "opening"),
+    ("lost", "least lot"), ("lost", "most stock", "late"), ("lost", "safety", "late", "receipts"),
+    ("lost", "multiple", "most lot", "closing"), ("lost", "most lot", "least lot", "most stock", "late", "receipts"),
 ]
 
 
@@ -43,8 +47,12 @@ def test_exact_items_against_whole_model(features: tuple[str, ...]) -> None:
     ids="+".join,
 )
 def test_relaxed_items_are_bounded(features: tuple[str, ...]) -> None:
-    """An item that neither programme carries is named, and its figure is no more than its least cost."""
+    """An item that no programme carries is named, and its figure is no more than its least cost.
+
+    Demand in thirds is not a whole number of any step.
+    """
     case = random_items(np.random.default_rng(4), 10, 6, *features)
+    case = replace(case, demand=case.demand * 4.0 / 3.0)
     programmes = ItemProgrammes(case)
     answer = programmes.best()
     outside = np.flatnonzero(~programmes.exact)

@@ -168,14 +168,14 @@ def climb(
 
     Items that need the dearer programme are relaxed on the way (``Ascent.quick``).
     """
-    ascent = Ascent.begin(relaxation, charges, step=step, quick=relaxation.programmes.level.items.size > 0)
+    ascent = Ascent.begin(relaxation, charges, step=step, quick=relaxation.programmes.dear.size > 0)
     ascent.climb(steps, goal, _keeper(relaxation, pool, ascent, clock, until))
     return ascent
 
 
 def climb_exactly(relaxation: Relaxation, pool: Pool, ascent: Ascent, clock: Clock, until: float) -> None:
     """Go on with the exact programmes of all items, for a few steps, as long as there is time."""
-    if relaxation.programmes.level.items.size and not clock.over() and math.isfinite(ascent.best.bound):
+    if relaxation.programmes.dear.size and not clock.over() and math.isfinite(ascent.best.bound):
         ascent.exactly()
         ascent.step = _EXACT_STEP
         ascent.climb(_EXACT_STEPS, math.inf, _keeper(relaxation, pool, ascent, clock, until))

@@ -1,18 +1,19 @@
 """The best schedule of every item under given prices, each item by the programme that carries it.
 
-``ItemProgrammes`` puts the two programmes together: the Wagner-Whitin recursion for what it carries; for
-the rest first that recursion as a relaxation (a schedule that keeps the limits anyway is the best one),
-then the programme over cumulative quantities for the items whose schedule breaks a limit; and for what
-neither carries a lower bound, named in ``relaxed``: that programme without the most lot for items with a
-least lot too, else the recursion.
+``ItemProgrammes`` puts the programmes together: the Wagner-Whitin recursion for what it carries; for the
+rest first that recursion as a relaxation (a schedule that keeps the limits anyway is the best one), then, for
+the items whose schedule breaks a limit, the programme over breakpoints of the cumulative quantity (``levels``),
+or over whole steps of it (``grid``) where rules meet; and for what none carries a lower bound, named in
+``relaxed``: the programme over breakpoints without the most lot for items with a least lot too, else the recursion.
 """
 
 from dataclasses import replace
 
 import numpy as np
 
-from ledgersolve.lot_sizing import levels, wagner_whitin
-from ledgersolve.lot_sizing.case import Case, Flags, Floats
+from ledgersolve.lot_sizing import grid, levels, wagner_whitin
+from ledgersolve.lot_sizing.case import Case, Flags, Floats, Ints
+from ledgersolve.lot_sizing.grid import GridProgramme
 from ledgersolve.lot_sizing.levels import LevelProgramme
 from ledgersolve.lot_sizing.wagner_whitin import Schedules, WagnerWhitin, needs
 
@@ -25,36 +26,43 @@ class ItemProgrammes:
     exact
         Shape (N,): the cost of the item's schedule is the least of all its schedules; elsewhere it is a lower
         bound and the schedule may break a limit.
+    dear
+        Numbers of the items that need more than the recursion.
     """
 
     def __init__(self, case: Case) -> None:
         self.case = case
         everything = np.arange(case.n)
         carried, by_level = wagner_whitin.carries(case), levels.carries(case)
-        self.exact: Flags = np.asarray(carried | by_level)
+        by_step = grid.carries(case) & ~carried & ~by_level
+        self.exact: Flags = np.asarray(carried | by_level | by_step)
         self.whitin = WagnerWhitin(case, everything)
         both = (case.least_lot > 0) & np.isfinite(case.most_lot) & ~self.exact
         freed = replace(case, most_lot=np.where(both, np.inf, case.most_lot))
-        self.level = LevelProgramme(freed, np.flatnonzero(levels.carries(freed) & ~carried))
+        self.level = LevelProgramme(freed, np.flatnonzero(levels.carries(freed) & ~carried & ~by_step))
+        self.grid = GridProgramme(case, np.flatnonzero(by_step))
+        self.dear: Ints = np.concatenate([self.level.items, self.grid.items])
         self.understated = self._recursion_relaxes() & ~carried
 
     def schedule(self, setup_cost: Floats, unit_cost: Floats, *, quick: bool = False) -> Schedules:
         """Give the best schedule of every item; ``setup_cost`` and ``unit_cost`` have shape (N, T).
 
-        ``quick`` leaves the dearer programme out: the costs of its items are then lower bounds, as are those
-        of items beyond both; ``Schedules.sound`` tells which schedules are nevertheless the best.
+        ``quick`` leaves the dearer programmes out: the costs of their items are then lower bounds, as are those
+        of items beyond all; ``Schedules.sound`` tells which schedules are nevertheless the best.
         """
         first = self.whitin.schedule(setup_cost, unit_cost)
         sound = keeps_limits(self.case, first) & ~self.understated
-        hard = self.level.items
-        wanted = ~sound[hard]
-        if quick or not wanted.any():
+        if quick:
             return replace(first, sound=sound)
-        second = self.level.schedule(setup_cost[hard], unit_cost[hard], wanted)
-        which = hard[wanted]
-        first.made[which], first.lost[which] = second.made[wanted], 0.0
-        first.cost[which] = second.cost[wanted]
-        sound[which] = self.exact[which] | keeps_limits(self.case, first)[which]
+        for programme in (self.level, self.grid):
+            hard = programme.items
+            wanted = ~sound[hard]
+            if wanted.any():
+                second = programme.schedule(setup_cost[hard], unit_cost[hard], wanted)
+                which = hard[wanted]
+                first.made[which], first.lost[which] = second.made[wanted], second.lost[wanted]
+                first.cost[which] = second.cost[wanted]
+        sound[self.dear] |= self.exact[self.dear] | keeps_limits(self.case, first)[self.dear]
         return replace(first, sound=sound)
 
     def best(self) -> Schedules:
@@ -62,7 +70,7 @@ class ItemProgrammes:
         return self.schedule(self.case.setup_cost, self.case.unit_cost)
 
     def relaxed(self) -> tuple[str, ...]:
-        """Features that the figures of items beyond both programmes leave out, in the workbook's words."""
+        """Features that the figures of items beyond all programmes leave out, in the workbook's words."""
         case, out = self.case, ~self.exact
         named = (
             ("least lot", case.least_lot > 0), ("most lot", np.isfinite(case.most_lot)),
