@@ -121,7 +121,7 @@ def _work_sites(reading: Reading, case: SiteCase, budget: Budget) -> Worked:
     answers: tuple[Answered, ...] = ()
     if reading.run.questions:
         answers = answer_site_questions(
-            case, solved, budget.part("questions", budget.left()), None if today is None else today.solved)
+            case, solved, _questions_part(reading, budget), None if today is None else today.solved)
     given = SiteReport(reading, case, solved, audit, _NO_FACTS, today, variants, answers)
     return Worked(
         solved,
@@ -140,7 +140,7 @@ def _work_lots(reading: Reading, case: LotCase, budget: Budget) -> Worked:
         return _without_plan(reading, case, solved, budget, explain_lots)
     answers: tuple[Answered, ...] = ()
     if reading.run.questions:
-        answers = answer_lot_questions(case, solved, budget.part("questions", budget.left()))
+        answers = answer_lot_questions(case, solved, _questions_part(reading, budget))
     given = LotReport(reading, case, solved, audit, _NO_FACTS, _today_plan(case), answers)
     return Worked(
         solved,
@@ -159,11 +159,19 @@ TRADES: Mapping[Job, Callable[[Reading, Any, Budget], Worked]] = {
 
 def _times(reading: Reading, answers: tuple[Answered, ...]) -> tuple[tuple[str, str], ...]:
     """Time that each question took, and the share of the time limit that was kept for them."""
+    if not reading.run.questions:
+        return (("Kept for questions", "nothing: Settings says that none are asked"),)
     if not answers:
         return ()
-    kept = f"{100 * reading.run.questions_share:.0f} % of {reading.run.time_limit:g} seconds"
+    seconds = reading.run.questions_share * reading.run.time_limit
+    kept = f"{100 * reading.run.questions_share:.0f} % of {reading.run.time_limit:g} seconds: {seconds:g} at most"
     times = [(f"Question: {answer.question}", f"{answer.seconds:.2f} seconds") for answer in answers]
     return (("Kept for questions", kept), *times)
+
+
+def _questions_part(reading: Reading, budget: Budget) -> Limits:
+    """Limits of the questions: their share of the time limit, however much of it the plan has left over."""
+    return budget.part("questions", reading.run.questions_share * budget.limits.seconds)
 
 
 def _main_part(reading: Reading, case: SiteCase | LotCase, budget: Budget) -> Limits:

@@ -7,7 +7,7 @@ import zipfile
 import openpyxl
 import pytest
 
-from ledgersolve import Outcome, Verdict, check_workbook, job, solve_workbook
+from ledgersolve import Outcome, Verdict, check_workbook, job, solve_workbook, work
 from ledgersolve.work import AuditError
 from tests.books import lot_book, site_book
 
@@ -194,3 +194,41 @@ def test_lot_sizing_takes_the_same_way(tmp_path) -> None:
     answer = solve_workbook(path)
     assert answer.total_cost == pytest.approx(8)
     assert answer.as_json()["plan"] == {"setups": 1}
+
+
+def run_record(answer) -> dict[str, object]:
+    """First two cells of every row of the run record."""
+    book = openpyxl.load_workbook(answer.returned)
+    return {row[0]: row[1] for row in book["Run record"].iter_rows(values_only=True) if row[0] is not None}
+
+
+def test_switched_off_questions_are_not_asked_and_the_record_says_so(tmp_path, monkeypatch) -> None:
+    """`Questions: no`: no answer is sought, no sheet of answers, and a line in the run record."""
+    def never(*_: object) -> tuple:
+        raise AssertionError("asked although switched off")
+
+    monkeypatch.setattr("ledgersolve.work.answer_site_questions", never)
+    answer = solve_workbook(good(tmp_path))
+    assert "Questions answered" not in openpyxl.load_workbook(answer.returned).sheetnames
+    assert run_record(answer)["Kept for questions"] == "nothing: Settings says that none are asked"
+
+
+@pytest.mark.parametrize("job_kind", ["sites", "lots"])
+def test_questions_get_their_share_of_the_time_limit_and_no_more(tmp_path, monkeypatch, job_kind) -> None:
+    """A quarter of 40 seconds is 10, even where the plan took none; the record names share and times."""
+    steering = {"Time limit (seconds)": 40, "Share of time for questions (%)": 25, "Questions": "yes"}
+    name = "answer_site_questions" if job_kind == "sites" else "answer_lot_questions"
+    asked, real = [], getattr(work, name)
+
+    def spied(case, solved, limits, *more):
+        asked.append(limits.seconds)
+        return real(case, solved, limits, *more)
+
+    monkeypatch.setattr(work, name, spied)
+    path = good(tmp_path, **steering) if job_kind == "sites" else lot_book(
+        tmp_path / "lots.xlsx", [{"Item": "I", "Setup cost": 5, "Holding cost": 1}], [[3, 4]], settings=steering)
+    answer = solve_workbook(path)
+    assert asked == [10.0]
+    record = run_record(answer)
+    assert record["Kept for questions"] == "25 % of 40 seconds: 10 at most"
+    assert sum(str(label).startswith("Question: ") for label in record) >= 4

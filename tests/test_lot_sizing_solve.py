@@ -11,6 +11,7 @@ from hypothesis import strategies as st
 from ledgersolve.lot_sizing.audit import audit
 from ledgersolve.lot_sizing.case import Case, plain_case
 from ledgersolve.lot_sizing.groups import part
+from ledgersolve.lot_sizing.plan import plan_from_made
 from ledgersolve.lot_sizing.solve import solve
 from ledgersolve.mip import Limits, Progress, Solved, Verdict
 from tests.lot_textbook import FEATURES, random_case, textbook_cost, walk_cost
@@ -203,3 +204,21 @@ def test_nothing_to_do_costs_nothing() -> None:
     """Without demand nothing is made, and that is proven."""
     answer = solved(plain_case(np.zeros((3, 4)), 10.0, 1.0))
     assert (answer.cost, answer.verdict) == (0.0, Verdict.PROVEN_BEST)
+
+
+def test_a_plan_to_begin_with_is_never_lost() -> None:
+    """With no time for a search, the plan given comes back; one that breaks a rule does not."""
+    rng = np.random.default_rng(8)
+    case = plain_case(
+        rng.integers(5, 25, (12, 30)), rng.integers(40, 90, (12, 1)) * np.ones((1, 30)), 1.0, resources=("line",),
+        capacity=np.full((1, 30), 230.0), overtime_limit=np.zeros(1), overtime_cost=np.zeros(1),
+        use_cost=np.zeros(1), item_resource=np.zeros(12, dtype=np.int64), time_per_unit=np.ones(12),
+    )
+    begun = plan_from_made(case, case.demand)
+    over = Limits(seconds=0.001)
+    kept = solve(case, over, begun)
+    assert kept.cost is not None
+    assert kept.cost <= audit(case, begun).total
+    broken = plan_from_made(case, 0.9 * case.demand)
+    found = solve(case, over, broken)
+    assert found.plan is None or audit(case, found.plan).ok

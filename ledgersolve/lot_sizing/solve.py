@@ -31,10 +31,13 @@ class _Part:
     cost: float = math.inf
 
 
-def solve(case: Case, limits: Limits) -> Solved[Plan]:
-    """Solve a case within the limits; the verdict follows from the audited cost and the proven bound."""
+def solve(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
+    """Solve a case within the limits; the verdict follows from the audited cost and the proven bound.
+
+    ``start`` is a plan to begin with; one that breaks a rule of the case is left aside.
+    """
     clock = limits.start()
-    run = _Run(case, clock)
+    run = _Run(case, clock, start)
     if not run.alone():
         return run.impossible()
     for number in range(len(run.parts)):
@@ -46,8 +49,8 @@ def solve(case: Case, limits: Limits) -> Solved[Plan]:
 class _Run:
     """One run over the groups of a case; small groups come first and leave their spare time to the large."""
 
-    def __init__(self, case: Case, clock: Clock) -> None:
-        self.case, self.clock = case, clock
+    def __init__(self, case: Case, clock: Clock, start: Plan | None = None) -> None:
+        self.case, self.clock, self.start = case, clock, start
         self.notes: list[str] = []
         self.prices: Floats = np.zeros(case.capacity.shape)
         found = groups(case)
@@ -116,7 +119,8 @@ class _Run:
         now = self.parts[number]
         if now.plan is not None:
             return True
-        found = solve_tied(now.group.case, self._share(number))
+        begun = None if self.start is None else plan_from_made(now.group.case, self.start.made[now.group.items])
+        found = solve_tied(now.group.case, self._share(number), begun)
         if found.prices is not None:
             self.prices[now.group.resources] = found.prices
         self.clock.stages.extend(_named(found.stages, now.group))

@@ -32,16 +32,19 @@ RESCUE_SHARE = 0.4
 """Share of the time left for the search of the least time missing, where the whole model comes after it."""
 
 
-def solve_tied(case: Case, limits: Limits) -> Solved[Plan]:
-    """Solve one group of tied items; ``Solved.prices`` are those of the decomposition's bound, if it ran."""
+def solve_tied(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
+    """Solve one group of tied items; ``Solved.prices`` are those of the decomposition's bound, if it ran.
+
+    ``start`` is a plan to begin with.
+    """
     clock = limits.start()
     if overdrawn(case).any():
         return _impossible(clock, "running totals of time exceed the capacity")
     cells = int(np.count_nonzero(tight_limits(case).most_made > 0))
     if cells <= WHOLE_AT_ONCE or case.n == 1:
-        return solve_whole(case, limits)
+        return solve_whole(case, limits, start)
     share = FIRST_SHARE_SMALL if cells <= SMALL else FIRST_SHARE if cells <= WHOLE_AFTER else 1.0
-    first = solve_decomposed(case, replace(limits, seconds=limits.seconds * share))
+    first = solve_decomposed(case, replace(limits, seconds=limits.seconds * share), start)
     enough = first.gap is not None and first.gap <= limits.gap
     if first.verdict is Verdict.NO_PLAN_EXISTS or enough or clock.over():
         return first
