@@ -69,10 +69,11 @@ def test_figures_show_the_decimals_they_need(values: list[float], expected: str)
 
 @pytest.mark.parametrize(("words", "expected"), [
     ([], "none"), (["A"], "A"), (["A", "B"], "A and B"), (["A", "B", "C"], "A, B and C"),
-    (list("ABCDE"), "A, B, C and 2 more"),
+    (list("ABCDE"), "A, B, C and 2 more"), (["Hall, small", "Hall, large"], "Hall, small; and Hall, large"),
+    (["X, 1", "Y", "Z"], "X, 1; Y; and Z"),
 ])
 def test_lists_read_as_sentences(words: list[str], expected: str) -> None:
-    """Lists end in and; long ones count the rest."""
+    """Lists end in and; long ones count the rest; words with commas of their own are parted by semicolons."""
     assert style.listed(words, 3) == expected
 
 

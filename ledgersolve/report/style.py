@@ -6,8 +6,12 @@ Every pair of text and ground has a contrast of at least 4.5 to 1, and no meanin
 import math
 from collections.abc import Iterable
 from dataclasses import replace
-from typing import Literal
 
+from ledgersolve.workbook.figures import NO_BREAK
+from ledgersolve.workbook.figures import Rounding as Rounding
+from ledgersolve.workbook.figures import figure_words as figure_words
+from ledgersolve.workbook.figures import money_digits as money_digits
+from ledgersolve.workbook.figures import money_words as money_words
 from ledgersolve.workbook.sheets import Style
 
 INK = "1F2933"
@@ -25,7 +29,7 @@ LINE = "9AA5B1"
 TEXT = Style()
 CELL = Style(align="left", indent=1)
 WRAPPED = Style(wrap=True, valign="top")
-WRAPPED_CELL = Style(wrap=True, valign="top", align="left", indent=1)
+WRAPPED_CELL = Style(wrap=True, align="left", indent=1)
 SMALL = Style(size=8.0, colour=QUIET)
 SMALL_WRAPPED = Style(size=8.0, colour=QUIET, wrap=True, valign="top")
 BOLD = Style(bold=True)
@@ -48,24 +52,6 @@ WHOLE = "#,##0"
 DATE = "yyyy-mm-dd"
 DATE_TIME = "yyyy-mm-dd hh:mm"
 SECONDS = "0.00"
-
-_DIGITS = {
-    0: ("JPY", "KRW", "CLP", "ISK", "VND", "XAF", "XOF", "XPF", "PYG", "RWF", "UGX", "KMF", "DJF", "GNF", "BIF",
-        "VUV"),
-    3: ("BHD", "IQD", "JOD", "KWD", "LYD", "OMR", "TND"),
-    4: ("CLF", "UYW"),
-}
-"""Currencies whose minor unit has not two digits (ISO 4217, list one)."""
-
-
-NO_BREAK = "\u00a0"
-Rounding = Literal["nearest", "up", "down"]
-
-
-def money_digits(currency: str) -> int:
-    """Digits of the currency's minor unit (ISO 4217, list one)."""
-    code = currency.upper()
-    return next((digits for digits, codes in _DIGITS.items() if code in codes), 2)
 
 
 def money_format(currency: str) -> str:
@@ -116,22 +102,6 @@ def number(number_format: str) -> Style:
     return Style(number_format=number_format, align="right")
 
 
-def money_words(amount: float, currency: str, rounding: Rounding = "nearest") -> str:
-    """Amount in a sentence: thousands apart by a space, whole units from 1,000 on, then the code."""
-    digits = 0 if abs(amount) >= 1000 else money_digits(currency)
-    return f"{figure_words(amount, digits, rounding)}{NO_BREAK}{currency}"
-
-
-def figure_words(value: float, digits: int = 0, rounding: Rounding = "nearest") -> str:
-    """Figure in a sentence with a space between thousands (readable in every country)."""
-    scale = 10.0**digits
-    scaled = value * scale
-    snapped = round(scaled)
-    if abs(scaled - snapped) > 1e-6 * max(1.0, abs(scaled) * 1e-6):
-        snapped = math.ceil(scaled) if rounding == "up" else math.floor(scaled) if rounding == "down" else snapped
-    return f"{snapped / scale:,.{digits}f}".replace(",", NO_BREAK).replace("-", "\u2212")
-
-
 def quantity_words(value: float) -> str:
     """Quantity in a sentence: whole where it is whole or large, else three significant digits."""
     if value == round(value) or abs(value) >= 1000:
@@ -148,10 +118,16 @@ def percent_words(fraction: float, rounding: Rounding = "nearest") -> str:
 
 
 def listed(words: list[str], most: int = 12) -> str:
-    """Words as a list in a sentence: ``A, B and C``; beyond ``most`` the rest is counted."""
+    """Words as a list in a sentence: ``A, B and C``; beyond ``most`` the rest is counted.
+
+    Where a word holds a comma itself, semicolons part them.
+    """
+    mark = "; " if any("," in word for word in words[:most]) else ", "
     if len(words) > most:
-        return f"{', '.join(words[:most])} and {len(words) - most} more"
-    return words[0] if len(words) == 1 else f"{', '.join(words[:-1])} and {words[-1]}" if words else "none"
+        return f"{mark.join(words[:most])} and {len(words) - most} more"
+    if len(words) < 2:
+        return words[0] if words else "none"
+    return f"{mark.join(words[:-1])}{';' if mark == '; ' else ''} and {words[-1]}"
 
 
 def named(code: str, name: str) -> str:

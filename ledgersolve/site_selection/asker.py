@@ -9,6 +9,7 @@ from ledgersolve.mip import Clock, Limits, Solved, Verdict
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.solve import solve
+from ledgersolve.workbook.figures import Rounding, money_words
 
 SHARE_OF_LEFT = 0.34
 """A single re-solve takes at most this share of the time that is left."""
@@ -113,9 +114,9 @@ def codes(case: Case, numbers: Iterable[int]) -> str:
     return ", ".join(listed[:6]) + (f" and {len(listed) - 6} more" if len(listed) > 6 else "") or "none"
 
 
-def money(case: Case, value: float) -> str:
-    """An amount in words, whole units of the currency."""
-    return f"{case.currency} {value:,.0f}"
+def money(case: Case, value: float, rounding: Rounding = "nearest") -> str:
+    """An amount in words."""
+    return money_words(value, case.currency, rounding)
 
 
 def interval(case: Case, answer: Found, base: float = 0.0) -> str:
@@ -123,7 +124,8 @@ def interval(case: Case, answer: Found, base: float = 0.0) -> str:
     if answer.low is not None and answer.high is not None:
         if answer.exact:
             return money(case, answer.high - base)
-        return f"between {money(case, max(answer.low - base, 0.0))} and {money(case, answer.high - base)}"
+        low, high = money(case, max(answer.low - base, 0.0), "down"), money(case, answer.high - base, "up")
+        return f"between {low} and {high}"
     if answer.high is not None:
-        return f"at most {money(case, answer.high - base)}"
-    return f"at least {money(case, max(answer.low - base, 0.0))}" if answer.low is not None else "not known"
+        return f"at most {money(case, answer.high - base, 'up')}"
+    return f"at least {money(case, max(answer.low - base, 0.0), 'down')}" if answer.low is not None else "not known"

@@ -1,0 +1,30 @@
+"""Figures and money in sentences: readable in every country, rounded as the sentence needs it."""
+
+import math
+from typing import Literal
+
+from ledgersolve.workbook.currencies import MINOR_UNITS
+
+NO_BREAK = "\u00a0"
+Rounding = Literal["nearest", "up", "down"]
+
+
+def money_digits(currency: str) -> int:
+    """Digits of the currency's minor unit (ISO 4217, list one); two for a code that is not listed."""
+    return MINOR_UNITS.get(currency.upper(), 2)
+
+
+def money_words(amount: float, currency: str, rounding: Rounding = "nearest") -> str:
+    """Amount in a sentence: thousands apart by a space, whole units from 1,000 on, then the code."""
+    digits = 0 if abs(amount) >= 1000 else money_digits(currency)
+    return f"{figure_words(amount, digits, rounding)}{NO_BREAK}{currency}"
+
+
+def figure_words(value: float, digits: int = 0, rounding: Rounding = "nearest") -> str:
+    """Figure in a sentence with a space between thousands (readable in every country)."""
+    scale = 10.0**digits
+    scaled = value * scale
+    snapped = round(scaled)
+    if abs(scaled - snapped) > 1e-6 * max(1.0, abs(scaled) * 1e-6):
+        snapped = math.ceil(scaled) if rounding == "up" else math.floor(scaled) if rounding == "down" else snapped
+    return f"{snapped / scale:,.{digits}f}".replace(",", NO_BREAK).replace("-", "\u2212")

@@ -1,0 +1,33 @@
+"""Figures in sentences: the digits of the currency, thousands apart, rounded as the sentence needs it."""
+
+import pytest
+
+from ledgersolve.workbook.currencies import MINOR_UNITS
+from ledgersolve.workbook.figures import figure_words, money_digits, money_words
+
+
+@pytest.mark.parametrize(("codes", "digits"), [("USD EUR", 2), ("JPY XPF", 0), ("BHD KWD", 3), ("CLF UYW", 4)])
+def test_digits_are_those_of_the_one_list(codes: str, digits: int) -> None:
+    """Digits come from the list of currencies (ISO 4217, list one), whatever the case of the code."""
+    for code in codes.split():
+        assert money_digits(code) == money_digits(code.lower()) == MINOR_UNITS[code] == digits
+
+
+def test_an_unknown_code_has_two_digits() -> None:
+    """A code that is not listed is shown like most currencies."""
+    assert money_digits("ZZZ") == 2
+
+
+@pytest.mark.parametrize(("amount", "rounding", "words"), [
+    (0.05, "nearest", "0.05\u00a0EUR"), (999.999, "down", "999.99\u00a0EUR"),
+    (4513.65, "nearest", "4\u00a0514\u00a0EUR"), (4513.65, "down", "4\u00a0513\u00a0EUR"),
+    (4513.01, "up", "4\u00a0514\u00a0EUR"),
+])
+def test_amounts_are_rounded_as_asked(amount: float, rounding: str, words: str) -> None:
+    """Whole units from 1,000 on, minor units below, towards the side that the sentence claims."""
+    assert money_words(amount, "EUR", rounding) == words
+
+
+def test_a_negative_figure_has_a_minus_that_is_no_hyphen() -> None:
+    """The minus sign is the typographic one, so that no line breaks behind it."""
+    assert figure_words(-1234.5, 1) == "\u22121\u00a0234.5"
