@@ -1,7 +1,6 @@
 """The questions a manager asks, each with its words, its table and its picture."""
 
 from collections.abc import Sequence
-from dataclasses import replace
 
 from ledgersolve.findings import Answered
 from ledgersolve.findings import Column as AnswerColumn
@@ -68,7 +67,7 @@ def _table(sheet: ResultSheet, row: int, answer: Answered, money: tuple[str, str
     return last + 2 + CHART_ROWS
 
 
-WORDS = replace(style.WRAPPED_CELL, valign="vcenter")
+WORDS = style.WRAPPED_CELL
 
 
 def _look(column: AnswerColumn, currency: str, figures: Sequence[float]) -> Style:

@@ -17,7 +17,8 @@ class LiveCheck:
     """A rule as the sheets themselves can check it.
 
     ``got`` is a figure from the plan's sheets, ``broken_by`` by how much the rule is broken (0 where it
-    holds), both formulas; ``required`` is in words, or a formula.
+    holds), both formulas; ``required`` is in words, or a formula. ``number_format`` is as its figures need unless
+    given.
     """
 
     rule: str
@@ -25,6 +26,7 @@ class LiveCheck:
     required: str | Figure
     got: Figure
     broken_by: Figure
+    number_format: str = ""
 
 
 @dataclass(frozen=True)
@@ -50,7 +52,7 @@ def write_checks(sheet: ResultSheet, row: int, checks: Sequence[LiveCheck], tole
     rows = range(row + 2, last + 2)
     required = [c.required.value if isinstance(c.required, Figure) else c.required for c in checks]
     formulas = [c.required.formula if isinstance(c.required, Figure) else "" for c in checks]
-    figures = [style.number(style.figure_format(_figures(c))) for c in checks]
+    figures = [style.number(c.number_format or style.figure_format(_figures(c))) for c in checks]
     asked = [replace(style.WRAPPED_CELL, number_format=look.number_format) for look in figures]
     plain = style.number(style.WHOLE)
     write_table(sheet, row, [

@@ -79,20 +79,20 @@ def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bo
     status = [_status(problem, place) for place, problem in enumerate(problems, start=row + 1)]
     columns = [
         Column("sheet", "Sheet", [p.sheet or "the workbook" for p in problems], wrapped, WIDTHS[0]),
-        Column("cell", "Cell", [p.cell or None for p in problems], replace(style.LINK, valign="top"), WIDTHS[1],
+        Column("cell", "Cell", [p.cell or None for p in problems], style.LINK, WIDTHS[1],
                links=[_link(p) for p in problems]),
         Column("title", "Column or setting", [p.title for p in problems], wrapped, WIDTHS[2]),
         Column("found", "Found", [_found(p) for p in problems], wrapped, WIDTHS[3]),
         Column("expected", "Expected", [p.expected for p in problems], wrapped, WIDTHS[4]),
         Column("remedy", "What to do", [p.remedy for p in problems], wrapped, WIDTHS[5]),
         Column("count", "Places (number)", [p.count for p in problems],
-               replace(style.number(style.WHOLE), valign="top"), WIDTHS[6]),
+               style.number(style.WHOLE), WIDTHS[6]),
     ]
     if live:
         columns.append(Column("status", "Status", [value for value, _ in status],
-                              replace(style.BOLD, align="center", valign="top"), WIDTHS[7],
+                              replace(style.BOLD, align="center"), WIDTHS[7],
                               [formula for _, formula in status]))
-        limits = replace(style.number("General"), valign="top", size=9.0, colour=style.QUIET)
+        limits = replace(style.number("General"), size=9.0, colour=style.QUIET)
         live_ones = list(zip(problems, status, strict=True))
         low = [_low(problem) if formula else None for problem, (_, formula) in live_ones]
         high = [problem.high if formula else None for problem, (_, formula) in live_ones]

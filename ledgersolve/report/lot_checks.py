@@ -4,6 +4,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from ledgersolve.report import style
 from ledgersolve.report.checks import LiveCheck, count_check
 from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.lot_details import CLOSING, LEAST, MOST, MOST_STOCK, MULTIPLE, SAFETY
@@ -24,7 +25,7 @@ def _sum_check(at: LotPlaces, ledger: Ledger) -> LiveCheck:
     off = f"ABS({lines}-{ledger.total})/(1+ABS({ledger.total}))"
     total = at.report.audit.total
     return LiveCheck("Cost adds up", "all lines of the ledger against its total", Figure(total, ledger.total),
-                     Figure(total, lines), Figure(0.0, off))
+                     Figure(total, lines), Figure(0.0, off), style.money_format(at.report.case.currency))
 
 
 def _stock_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:

@@ -72,7 +72,7 @@ def _conflicts(sheet: ResultSheet, row: int, given: NoPlan) -> None:
     write_table(sheet, row, [
         Column("what", "What cannot hold", [c.words for c in conflicts], look, WIDTHS[0]),
         Column("cell", "Cell", [f"{r.sheet}, {r.address}" if r is not None else None for r in refs],
-               replace(style.LINK, wrap=True, valign="top"), WIDTHS[1],
+               replace(style.LINK, wrap=True), WIDTHS[1],
                links=[f"{quoted(r.sheet)}!{r.address}" if r is not None else "" for r in refs]),
         Column("stake", "Rows and rules at stake", [_subjects(c) for c in conflicts], look, WIDTHS[2]),
         Column("remedy", "The smallest change that helps", [c.remedy for c in conflicts], look, WIDTHS[3]),

@@ -4,6 +4,7 @@ from collections.abc import Iterator
 
 import numpy as np
 
+from ledgersolve.report import style
 from ledgersolve.report.checks import LiveCheck, count_check
 from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.site_details import SERVED_CELLS
@@ -27,7 +28,7 @@ def _sum_check(at: SitePlaces, ledger: Ledger) -> LiveCheck:
     off = f"ABS({lines}-{ledger.total})/(1+ABS({ledger.total}))"
     total = at.report.audit.total
     return LiveCheck("Cost adds up", "all lines of the ledger against its total", Figure(total, ledger.total),
-                     Figure(total, lines), Figure(0.0, off))
+                     Figure(total, lines), Figure(0.0, off), style.money_format(at.report.case.currency))
 
 
 def _service_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:
@@ -73,12 +74,13 @@ def _share_check(at: SitePlaces) -> LiveCheck:
     got = float(at.volumes[near].sum()) / float(case.demand.sum())
     required = Figure(case.share_within, f"{share.formula}/100" if share is not None else "")
     if reach is None:
-        return LiveCheck("Share within distance", "all demand", required, Figure(got), Figure(0.0))
+        return LiveCheck("Share within distance", "all demand", required, Figure(got), Figure(0.0), style.PERCENT)
     inside = f"ISNUMBER({where.span('distance')})*({where.span('distance')}<={reach.formula})"
     formula = f"SUMPRODUCT({inside}*{where.span('volume')})/{demand}"
     short = f"MAX(0,{required.formula or case.share_within}-{formula})"
     return LiveCheck("Share within distance", f"all demand, within {case.share_distance:g} {case.distance_unit}",
-                     required, Figure(got, formula), Figure(max(0.0, case.share_within - got), short))
+                     required, Figure(got, formula), Figure(max(0.0, case.share_within - got), short),
+                     style.PERCENT)
 
 
 def _volume_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:

@@ -119,14 +119,17 @@ def _cost_columns(at: SitePlaces, ledger: Ledger) -> list[Column]:
             "handling": ["Handling"]}
     titles = {"fixed": "Fixed cost", "once": "Opening or closing, once", "lane": "Lane cost",
               "handling": "Handling cost"}
+    kept = [name for name in titles if (name != "once" or at.once) and (name != "handling" or at.handled)]
     columns = []
-    for name, title in titles.items():
+    for name in kept:
+        title = titles[name]
         cells = [next(filter(None, (ledger.amount((key, j, 0)) for key in keys[name])), "") for j in rows]
         shown = [value if cell else None for value, cell in zip(values[name], cells, strict=True)]
         columns.append(Column(name, f"{title} ({at.money_unit})", shown, money, 16, cells))
-    together = [sum(values[name][j] for name in values) for j in rows]
-    span = [f"SUM({where.here('fixed', j)}:{where.here('handling', j)})" for j in rows]
-    columns.append(Column("cost", f"Cost together ({at.money_unit})", together, replace(money, bold=True), 16, span))
+    together = [sum(values[name][j] for name in kept) for j in rows]
+    span = [f"SUM({where.here('fixed', j)}:{where.here(kept[-1], j)})" for j in rows]
+    look = replace(money, bold=True, number_format=style.without_zeros(money.number_format))
+    columns.append(Column("cost", f"Cost together ({at.money_unit})", together, look, 16, span))
     return columns
 
 
@@ -193,8 +196,8 @@ def _distance_columns(at: SitePlaces) -> list[Column]:
     values: list[Scalar] = []
     formulas: list[str] = []
     straight: list[Scalar] = []
-    for k, known in enumerate(np.isfinite(at.distances).tolist()):
-        if not known:
+    for k, measured in enumerate(np.isfinite(at.distances).tolist()):
+        if not measured:
             values.append(None)
             formulas.append("")
             straight.append(None)
@@ -204,10 +207,10 @@ def _distance_columns(at: SitePlaces) -> list[Column]:
         formulas.append(figure.formula)
         straight.append(behind)
     look = style.number("#,##0.0")
-    return [
-        Column("distance", f"Distance ({unit})", values, look, 12, formulas),
-        Column("straight", f"Straight line from coordinates ({unit})", straight, look, 14),
-    ]
+    known = [Column("distance", f"Distance ({unit})", values, look, 12, formulas)]
+    if not at.straight:
+        return known
+    return [*known, Column("straight", f"Straight line from coordinates ({unit})", straight, look, 14)]
 
 
 def _limit_columns(at: SitePlaces) -> list[Column]:
@@ -298,13 +301,14 @@ def _reach_columns(at: SitePlaces) -> list[Column]:
     far = np.full(case.n, -1.0)
     known = np.isfinite(at.distances)
     np.maximum.at(far, at.customers[known], at.distances[known])
-    promised = case.promised()
-    return [
-        Column("farthest", f"Farthest delivery ({case.distance_unit})", [d if d >= 0 else None for d in far.tolist()],
-               style.number("#,##0.0"), 12),
-        Column("promise", f"Longest distance allowed ({case.distance_unit})",
-               [d if np.isfinite(d) else "no limit" for d in promised.tolist()], style.number("#,##0.0"), 13),
-    ]
+    look = style.number("#,##0.0")
+    columns = [Column("farthest", f"Farthest delivery ({case.distance_unit})",
+                      [d if d >= 0 else None for d in far.tolist()], look, 12)]
+    if at.promised:
+        promised = case.promised().tolist()
+        columns.append(Column("promise", f"Longest distance allowed ({case.distance_unit})",
+                              [d if np.isfinite(d) else "no limit" for d in promised], look, 13))
+    return columns
 
 
 def _move_columns(at: SitePlaces, main: list[int]) -> list[Column]:

@@ -1,6 +1,6 @@
 """The map-like picture: sites and customers by coordinates, deliveries as lines, on a sheet of its own figures."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -15,6 +15,8 @@ from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
 DRAWN_DELIVERIES = 3000
 LABELLED_SITES = 16
 DRAWN_SITES = 30
+IN_USE = 9
+"""Size from which a mark stands for a site in use, today or in the plan."""
 CROWDED = 600
 """Customers from which marks and lines are drawn finer."""
 PLOT = (0.08, 0.10, 0.89, 0.66)
@@ -137,8 +139,15 @@ def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) ->
     title = "Sites, customers and deliveries"
     if at.sites.size > DRAWN_DELIVERIES:
         title += f" (largest {DRAWN_DELIVERIES:,})"
-    return Chart("scatter", title, tuple(made), 0, 0, number_format="0", x_limits=horizontal, y_limits=vertical,
+    return Chart("scatter", title, _in_sight(made), 0, 0, x_title="longitude (degrees)", y_title="latitude (degrees)",
+                 number_format="0", x_limits=horizontal, y_limits=vertical,
                  plot=PLOT, description="Sites and customers by longitude and latitude; lines show who serves whom")
+
+
+def _in_sight(series: list[Series]) -> tuple[Series, ...]:
+    """Sites in use drawn first and last: some programs put the first series on top, others the last."""
+    again = [replace(one, in_legend=False, point_labels=()) for one in series if one.marker_size >= IN_USE]
+    return (*again, *series)
 
 
 def _limits(places: Floats) -> tuple[tuple[float, float], tuple[float, float]]:

@@ -82,6 +82,21 @@ class SitePlaces:
         return self.measured and bool(np.isfinite(self.report.case.promised()).any())
 
     @cached_property
+    def straight(self) -> bool:
+        """Whether some distance of the plan follows from coordinates."""
+        return any(_distance_cell(self, k) is None for k in np.flatnonzero(np.isfinite(self.distances)).tolist())
+
+    @cached_property
+    def once(self) -> bool:
+        """Whether opening or closing some site costs something."""
+        return bool(self.report.case.opening_cost.any() or self.report.case.closing_cost.any())
+
+    @cached_property
+    def handled(self) -> bool:
+        """Whether handling costs something at some site."""
+        return bool(self.report.case.handling_cost.any())
+
+    @cached_property
     def ruled(self) -> bool:
         """Whether some site must be open or closed."""
         return bool((self.report.case.rule != FREE).any())
@@ -107,7 +122,8 @@ class SitePlaces:
         """Places of the table of deliveries."""
         keys = ["site", "site name", "customer", "customer name", "share", "volume", "cost"]
         keys += ["rate"] if self.compact else []
-        keys += ["distance", "straight"] if self.measured else []
+        keys += ["distance"] if self.measured else []
+        keys += ["straight"] if self.straight else []
         keys += ["allowed"] if self.promised else []
         keys += ["most"] if self.report.case.lane_most is not None else []
         return places(self.name(names.PLAN_DELIVERIES), keys, self.sites.size)
@@ -118,7 +134,8 @@ class SitePlaces:
         keys = ["site", "name", "open"] + (["today", "change"] if self.has_today else [])
         keys += ["customers", "load", "capacity", "use"]
         keys += ["least"] if self.report.case.least_volume.any() else []
-        keys += ["fixed", "once", "lane", "handling", "cost", "part"]
+        keys += ["fixed", *(["once"] if self.once else []), "lane", *(["handling"] if self.handled else [])]
+        keys += ["cost", "part"]
         keys += ["rule"] if self.ruled else []
         keys += ["group"] if self.grouped else []
         return places(self.name(names.PLAN_SITES), keys, self.report.case.m)
@@ -128,7 +145,8 @@ class SitePlaces:
         """Places of the table of customers."""
         keys = ["customer", "name", "demand", "delivered", "unmet", "sites", "main", "main name"]
         keys += ["single"] if self.report.case.single_source.any() else []
-        keys += ["farthest", "promise"] if self.measured else []
+        keys += ["farthest"] if self.measured else []
+        keys += ["promise"] if self.promised else []
         keys += ["today", "moves"] if self.report.today is not None else []
         return places(self.name(names.PLAN_CUSTOMERS), keys, self.report.case.n)
 
@@ -221,14 +239,18 @@ def _distance_rate(at: SitePlaces, delivery: int, value: float) -> Source | None
 
 def distance_source(at: SitePlaces, delivery: int) -> tuple[Figure, float | None]:
     """Distance of a delivery and, where it comes from coordinates, the straight-line figure behind it."""
-    case, workbook = at.report.case, at.report.workbook
-    j, i = int(at.sites[delivery]), int(at.customers[delivery])
-    key = (case.sites[j], case.customers[i])
+    workbook, ref = at.report.workbook, _distance_cell(at, delivery)
     value = float(at.distances[delivery])
-    ref = workbook.origins.number("Lanes", key, "Distance") or workbook.origins.matrix_number("Distances", *key)
     if ref is not None:
         return Figure(value, ref.formula), None
     straight = value / workbook.road_factor
     factor = workbook.origins.setting("Road factor")
     cell = at.deliveries_at.here("straight", delivery)
     return Figure(value, cell if factor is None else f"{cell}*{factor.formula}"), straight
+
+
+def _distance_cell(at: SitePlaces, delivery: int) -> CellRef | None:
+    """Cell that holds a delivery's distance; None where it follows from coordinates."""
+    case, origins = at.report.case, at.report.workbook.origins
+    key = (case.sites[int(at.sites[delivery])], case.customers[int(at.customers[delivery])])
+    return origins.number("Lanes", key, "Distance") or origins.matrix_number("Distances", *key)

@@ -116,7 +116,7 @@ def write_table(sheet: ResultSheet, row: int, columns: Sequence[Column], first_c
         right = column.style.align == "right"
         sheet.put(row, number, column.title, style.HEADER_RIGHT if right else style.HEADER)
         sheet.widths[number] = max(column.width, sheet.widths.get(number, 0.0))
-        tallest = max(tallest, _title_lines(column.title, column.width))
+        tallest = max(tallest, _title_lines(column.title, sheet.widths[number]))
         formulas, links = column.formulas, column.links
         for place, value in enumerate(column.values):
             formula = formulas[place] if formulas is not None else ""
@@ -124,16 +124,18 @@ def write_table(sheet: ResultSheet, row: int, columns: Sequence[Column], first_c
             sheet.put(row + 1 + place, number, value, column.look(place),
                       formula=f"={formula}" if formula else "",
                       link=link)
-    sheet.heights[row] = max(sheet.heights.get(row, 0.0), 13.0 * tallest + 4.0)
-    _fit_rows(sheet, row + 1, columns)
+    sheet.heights[row] = max(sheet.heights.get(row, 0.0), 12.0 * tallest + 5.0)
+    _fit_rows(sheet, row + 1, columns, first_column)
 
 
-def _fit_rows(sheet: ResultSheet, first: int, columns: Sequence[Column]) -> None:
+def _fit_rows(sheet: ResultSheet, first: int, columns: Sequence[Column], first_column: int) -> None:
     """Make rows as high as their wrapped texts need; rows of one line keep the standard height."""
-    wrapped = [column for column in columns if column.style.wrap]
+    wrapped = [(column, sheet.widths[number]) for number, column in enumerate(columns, start=first_column)
+               if column.style.wrap]
     for place in range(len(columns[0].values) if wrapped else 0):
-        texts = [(column, value) for column in wrapped if isinstance(value := column.values[place], str)]
-        height = max((text_height(text, column.width, column.style.size) for column, text in texts), default=0.0)
+        texts = [(value, width, column.style.size) for column, width in wrapped
+                 if isinstance(value := column.values[place], str)]
+        height = max((text_height(*text) for text in texts), default=0.0)
         if height > ONE_LINE:
             sheet.heights[first + place] = max(sheet.heights.get(first + place, 0.0), height)
 

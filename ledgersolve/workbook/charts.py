@@ -132,7 +132,8 @@ def _dress(drawn: Any, chart: Chart) -> None:
     else:
         drawn.set_plotarea({"fill": {"color": "#FFFFFF"}})
     if chart.legend:
-        drawn.set_legend({"position": chart.legend, "font": _FONT})
+        left_out = [place for place, series in enumerate(chart.series) if not series.in_legend]
+        drawn.set_legend({"position": chart.legend, "font": _FONT, "delete_series": left_out})
     else:
         drawn.set_legend({"none": True})
     drawn.set_chartarea({"border": {"none": True}, "fill": {"color": "#FFFFFF"}})
@@ -150,6 +151,7 @@ def _axis(title: str, limits: tuple[float, float] | None, number_format: str, gr
         given["name"] = title
     if limits is not None:
         given["min"], given["max"] = limits
+        given["crossing"] = "min"  # the other axis stands at the lower end, not at 0
     if number_format:
         given["num_format"] = number_format
     return given

@@ -76,6 +76,7 @@ class Series:
     labels: bool = False
     kind: str = ""  # "line" over a column chart; "" = the chart's own kind
     point_labels: tuple[str, ...] = ()  # own words at the points, in place of their values
+    in_legend: bool = True
 
 
 @dataclass(frozen=True)
