@@ -189,9 +189,9 @@ def test_bombs_are_refused_before_they_unfold(tmp_path: Path) -> None:
 
 
 def test_a_list_part_of_absurd_size_is_refused(tmp_path: Path) -> None:
-    """A workbook part with a hundred thousand names is read, one beyond the limit refused."""
+    """A workbook part with fifty thousand names is read, one beyond the limit refused."""
     names = "".join(f'<definedName name="n{number}">Sites!$A${number}</definedName>'
-                    for number in range(1, 100_001))
+                    for number in range(1, 50_001))
     path = zipped(tmp_path / "a.xlsx", parts(
         workbook=workbook_xml(["Sites"], inside=f"<definedNames>{names}</definedNames>")))
     with open_package(path) as package:
@@ -276,3 +276,26 @@ def test_prefixed_markup_is_read(tmp_path: Path) -> None:
     made["xl/workbook.xml"] = book
     with open_package(zipped(tmp_path / "a.xlsx", made)) as package:
         assert [(cell.address, cell.value) for cell in package.cells("Sites")] == [("B2", "HAM")]
+
+
+def test_a_sheet_far_too_large_is_refused_before_its_first_cell(tmp_path: Path) -> None:
+    """Rows and cells of a large part are counted on the way through the gate; a sheet nobody reads harms nobody."""
+    rows = "".join(f'<row r="{row}"><c r="A{row}"><v>1</v></c></row>' for row in range(1, 200_001))
+    path = zipped(tmp_path / "long.xlsx", parts_of({"Sites": sheet_xml(ROWS), "Raw data": sheet_xml(rows)}))
+    for limits, kind in ((Limits(rows=150_000), "too many rows"), (Limits(cells=150_000), "too many cells")):
+        with open_package(path, limits) as package:
+            assert len(list(package.cells("Sites"))) == 1
+            with pytest.raises(UnreadableWorkbookError) as caught:
+                next(package.cells("Raw data"))
+        assert caught.value.problem.kind == kind
+        assert "150,000" in caught.value.problem.found
+
+
+def test_names_without_end_are_refused(tmp_path: Path) -> None:
+    """More defined names than any workbook needs are refused; as many as allowed are read."""
+    names = "".join(f'<definedName name="n{number}">Sites!$A$1</definedName>' for number in range(11))
+    path = zipped(tmp_path / "names.xlsx", parts(workbook=workbook_xml(["Sites"], inside=f"<definedNames>{names}"
+                                                                       "</definedNames>")))
+    assert problem_of(path, Limits(names=10)).kind == "too many names"
+    with open_package(path, Limits(names=11)) as package:
+        assert len(package.sheets) == 1

@@ -188,6 +188,23 @@ def test_too_many_cells_are_refused(limits: Limits, rows: str) -> None:
         cells_of(rows, limits=limits)
 
 
+@pytest.mark.parametrize("size", [40, 100, 10_000])
+def test_too_many_filled_rows_are_refused_and_only_filled_ones_count(size: int) -> None:
+    """Three filled rows among empty ones pass a limit of three, wherever the pieces end; four do not."""
+    empty = "".join(f'<row r="{row}" s="1"><c r="A{row}" s="1"/></row>' for row in range(10, 200))
+    filled = ['<row r="{0}">' + "".join(f'<c r="{letter}{{0}}"><v>1</v></c>' for letter in "ABCDEF") + "</row>"] * 4
+    for count in (3, 4):
+        rows = "".join(row.format(number) for number, row in enumerate(filled[:count - 1], 1))
+        sheet = sheet_xml(rows + empty + filled[0].format(500)).encode()
+        pieces = [sheet[first:first + size] for first in range(0, len(sheet), size)]
+        stream = stream_cells("Sites", "s", pieces, Texts([], frozenset()), Limits(rows=3), Surroundings())
+        if count == 3:
+            assert len(list(stream)) == 18
+        else:
+            with pytest.raises(UnreadableWorkbookError, match="more than 3 filled rows"):
+                list(stream)
+
+
 def test_a_text_without_end_is_refused(tmp_path: Path) -> None:
     """A text of five million characters in one cell is refused while it is read."""
     letters = "".join(chr(97 + (number * number) % 23) for number in range(1000))

@@ -30,8 +30,9 @@ class Limits:
 
     Sizes in bytes. ``ratio`` is inflated to compressed size of a member, looked at only above
     ``ratio_floor`` (XML) or ``picture_floor`` (all else: pictures of one colour are dense by nature and are
-    never unpacked here). ``cells`` counts filled cells and ``cell_elements`` all cells of a sheet, empty
-    formatted ones included; ``part_size`` bounds the small parts that are read as lists (workbook, styles).
+    never unpacked here). ``cells`` counts filled cells, ``rows`` rows with a filled cell, and ``cell_elements``
+    all cells of a sheet, empty formatted ones included; ``names`` the defined names; ``part_size`` bounds the
+    small parts that are read as lists (workbook, styles).
     """
 
     file_size: int = 100_000_000
@@ -42,8 +43,10 @@ class Limits:
     picture_floor: int = 50_000_000
     strings: int = 5_000_000
     cells: int = 5_000_000
+    rows: int = 600_000
     cell_elements: int = 20_000_000
     cell_length: int = 1_000_000
+    names: int = 50_000
     part_size: int = 64_000_000
 
 
@@ -70,6 +73,8 @@ class Container:
         self.file = file
         self.members = members
         self.size = size
+        self.counts: dict[str, tuple[int, int]] = {}
+        """Cells with a value and rows that end with one, by member, as far as plain bytes show them."""
         self._by_name = {member.name.casefold(): member for member in members}
 
     def __enter__(self) -> Self:

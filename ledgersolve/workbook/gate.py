@@ -8,6 +8,8 @@ from ledgersolve.workbook.refusals import refusal
 
 OLE = b"\xd0\xcf\x11\xe0\xa1\xb1\x1a\xe1"
 HEAD = 4096
+LARGE = 8_000_000
+"""Parts above this size are counted on the way through: a sheet that is far too large is then refused at once."""
 
 
 def pass_gate(path: Path, limits: Limits | None = None) -> Container:
@@ -38,9 +40,16 @@ def _check_content(container: Container, name: str) -> None:
     if member is None:
         return
     prolog = PrologCheck(name) if is_xml(name) else None
+    counted = prolog is not None and member.size > LARGE
+    cells = rows = 0
     for piece in container.pieces(member):
         if prolog is not None and not prolog.done:
             prolog.feed(piece)
+        if counted:
+            cells += piece.count(b"</v>") - piece.count(b"<v></v>")
+            rows += piece.count(b"</v></c></row>")
+    if counted:
+        container.counts[member.name] = cells, rows
 
 
 def check_kind(path: Path, limits: Limits) -> None:

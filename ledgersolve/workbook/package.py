@@ -13,7 +13,7 @@ from ledgersolve.workbook.markup import MAIN, RELATIONS, STRICT, Attributes, wal
 from ledgersolve.workbook.ownership import OWN_SHEET, sheets_named
 from ledgersolve.workbook.parts import Relation, check_relations, relations, small_pieces, workbook_part
 from ledgersolve.workbook.refusals import refusal
-from ledgersolve.workbook.stream import Area, Surroundings, Texts, area_of, stream_cells
+from ledgersolve.workbook.stream import Area, Surroundings, Texts, area_of, refuse_too_much, stream_cells
 from ledgersolve.workbook.strings import shared_strings
 from ledgersolve.workbook.styles import number_styles
 
@@ -109,6 +109,7 @@ class Package:
             Where the sheet cannot be read or holds too much.
         """
         member = self._members[name]
+        refuse_too_much(name, *self.container.counts.get(member.name, (0, 0)), self.limits)
         around = Surroundings()
         yield from stream_cells(name, member.name, self.container.pieces(member), self._shared(), self.limits,
                                 around)
@@ -220,6 +221,8 @@ def read_outline(container: Container, part: str, limits: Limits) -> Outline:
         elif name == f"{MAIN} definedName":
             current = []
             names.append((attributes.get("name", ""), current))
+            if len(names) > limits.names:
+                raise refusal("too many names", f"{limits.names:,}")
 
     def text(piece: str) -> None:
         if current is not None:

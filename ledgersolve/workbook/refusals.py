@@ -50,6 +50,11 @@ REASONS: dict[str, tuple[str, str]] = {
     "packed too densely": ("the part {detail}, far more than a workbook has",
                            "save the workbook under a new name and drop that file"),
     "too many cells": ("the sheet {detail}", SMALLER),
+    "too many rows": ("the sheet {detail}",
+                      "leave out the rows that cannot matter, or give what is known for each pair as a matrix, and "
+                      "drop that file"),
+    "too many names": ("the workbook holds more than {detail} defined names",
+                       "delete the names that nothing needs (Formulas, Name Manager) and drop the workbook again"),
     "no content list": ("the list of contents of the workbook ([Content_Types].xml) is missing", SAVE_AS),
     "no workbook part": ("the file does not say where its workbook part is", SAVE_AS),
     "strict": ("the workbook is saved as Strict Open XML, which cannot be given back whole",

@@ -23,6 +23,7 @@ _GUIDE, _MERGE, _FILTER_COLUMN, _TABLE_PART, _COL = (
 _TEXTUAL = frozenset((_F, _T, _GUIDE))
 _TRUE = ("1", "true")
 _MOST_PERCENTS = 10_000  # cells shown as percentages that are remembered; only settings ask for them
+_COUNTED = 1 << 60  # more than any row gives: a row that goes on after it was counted is not counted again
 _MANY = 16  # pieces of text beyond which their length is looked at
 _NUMBER, _TEXT = Kind.NUMBER, Kind.TEXT
 _new = tuple.__new__  # a Cell without the detour through its constructor: a third of the time of a pass
@@ -75,8 +76,8 @@ def stream_cells(sheet: str, part: str, pieces: Iterable[bytes], texts: Texts, l
         scan.check_limits()
         if scan.out:
             filled += len(scan.out)
-            if filled > limits.cells:
-                raise refusal("too many cells", f"“{sheet}” has more than {limits.cells:,} filled cells")
+            scan.count_row()
+            refuse_too_much(sheet, filled, scan.rows, limits)
             yield from scan.out
             scan.out.clear()
     feed(reader, part, b"", last=True)
@@ -84,17 +85,26 @@ def stream_cells(sheet: str, part: str, pieces: Iterable[bytes], texts: Texts, l
     around.complete = True
 
 
+def refuse_too_much(sheet: str, cells: int, rows: int, limits: Limits) -> None:
+    """Refuse a sheet of more filled cells, or rows with any, than the limits allow."""
+    if cells > limits.cells:
+        raise refusal("too many cells", f"“{sheet}” has more than {limits.cells:,} filled cells")
+    if rows > limits.rows:
+        raise refusal("too many rows", f"“{sheet}” has more than {limits.rows:,} filled rows")
+
+
 class _Scan:
     """Handlers of one pass. The order of the tests in ``start`` and ``end`` is that of frequency."""
 
-    __slots__ = ("around", "cell", "column", "elements", "formula", "guide", "limits", "out", "raw", "row",
-                 "row_text", "sheet", "text", "texts")
+    __slots__ = ("around", "before", "cell", "column", "elements", "formula", "guide", "limits", "out", "raw",
+                 "row", "row_text", "rows", "sheet", "text", "texts")
 
     def __init__(self, sheet: str, texts: Texts, limits: Limits, around: Surroundings) -> None:
         self.sheet, self.texts, self.limits, self.around = sheet, texts, limits, around
         self.out: list[Cell] = []
         self.text: list[str] = []
         self.row, self.row_text, self.column, self.elements = 0, "0", 0, 0
+        self.rows, self.before = 0, 0  # filled rows; cells given out when the row at hand began
         self.cell: Attributes = {}
         self.raw: str | None = None
         self.formula: str | None = None
@@ -136,6 +146,9 @@ class _Scan:
         row = self.row + 1 if given is None else whole(given)
         if not self.row < row <= LAST_ROW:
             raise refusal("damaged", f"row {given} of the sheet “{self.sheet}” is not where it should be")
+        if len(self.out) > self.before:
+            self.rows += 1
+        self.before = len(self.out)
         self.row, self.row_text, self.column = row, str(row), 0
         if attributes.get("hidden") in _TRUE:
             _extend(self.around.hidden_rows, row)
@@ -220,6 +233,14 @@ class _Scan:
             serial = _serial(raw, self.texts.date1904)
             return (_TEXT, raw) if serial is None else (Kind.DATE, serial)
         return _TEXT, unescaped(raw)
+
+    def count_row(self) -> None:
+        """Count the row at hand where it is filled so far; called before ``out`` is emptied."""
+        if len(self.out) > self.before:
+            self.rows += 1
+            self.before = _COUNTED
+        elif self.before != _COUNTED:
+            self.before = 0
 
     def check_limits(self) -> None:
         """Refuse a sheet of too many cells, and a text that grows without end."""

@@ -26,6 +26,7 @@ LAUGHS = (
 )
 FETCHED = '<!DOCTYPE x [<!ENTITY a SYSTEM "file:///etc/hostname">]>'
 SITES = "xl/worksheets/sheet2.xml"
+LANES = "xl/worksheets/sheet4.xml"
 
 
 @dataclass(frozen=True)
@@ -138,6 +139,40 @@ def names_of_sheets(path: Path) -> None:
     write_book(path, good_sheets() | {"Decision": [["mine"]], "=1+1": [["a"]], "Z" * 31: [["b"]]} | more)
 
 
+def million_rows(path: Path) -> None:
+    """A sheet Lanes filled to its last row, each row a lane of a site and a customer that exist."""
+    rows = "".join(
+        f'<row r="{number}"><c r="A{number}" t="str"><v>HAM</v></c><c r="B{number}" t="str"><v>BER</v></c>'
+        f'<c r="C{number}"><v>{number % 97}</v></c></row>'
+        for number in range(2, 1_048_577)
+    )
+    parts = contents(good(path))
+    head, _, tail = parts[LANES].partition(b'<row r="2"')
+    parts[LANES] = head + rows.encode() + tail[tail.index(b"</sheetData>"):]
+    zipped(path, parts)
+
+
+def formatted_rows(path: Path) -> None:
+    """A sheet Sites whose rows are formatted, and otherwise empty, to the last one."""
+    rows = "".join(f'<row r="{number}" s="0" customFormat="1"/>' for number in range(4, 1_048_577))
+    replaced(SITES, b"</sheetData>", rows.encode() + b"</sheetData>")(path)
+
+
+def many_lanes(path: Path) -> None:
+    """Half a million lanes, one of them to a customer that is not there."""
+    sites = [f"S{number:03d}" for number in range(250)]
+    customers = [f"C{number:04d}" for number in range(2000)]
+    lanes = [
+        {"Site": site, "Customer": customer, "Unit cost": 1.0 + (left * 7 + right) % 50}
+        for left, site in enumerate(sites) for right, customer in enumerate(customers)
+    ]
+    lanes[300_000]["Customer"] = "C9999"
+    write_book(path, site_sheets(
+        [{"Site": site, "Fixed cost": 100.0} for site in sites],
+        [{"Customer": customer, "Demand": 5.0} for customer in customers], lanes=lanes,
+    ))
+
+
 CELL = b'<c r="B2"'
 INPUTS: dict[str, Input] = {
     "01 empty": Input(raw(lambda: b"")),
@@ -157,7 +192,7 @@ INPUTS: dict[str, Input] = {
     "12 strings bomb": Input(entries(lambda made: made.append(bomb(b"xl/sharedStrings9.xml")))),
     "13 names bomb": Input(replaced("xl/workbook.xml", b"</sheets>", b"</sheets><definedNames>" + b"".join(
         b'<definedName name="n%d">Sites!$A$%d</definedName>' % (number, number) for number in range(1, 100_001)
-    ) + b"</definedNames>"), EITHER),
+    ) + b"</definedNames>")),
     "14 members": Input(entries(lambda made: made.extend(Entry(b"x%d" % number) for number in range(60_000)))),
     "15 overlap": Input(entries(lambda made: made.append(
         Entry(b"xl/again.xml", made[0].content, offset=0, local_name=made[0].name)))),
@@ -219,3 +254,9 @@ INPUTS: dict[str, Input] = {
     "worksheet alone": Input(raw(lambda: sheet_xml("").encode())),
     "strict": Input(replaced("xl/workbook.xml", MAIN.encode(), b"http://purl.oclc.org/ooxml/spreadsheetml/main")),
 }  # fmt: skip
+
+HEAVY: dict[str, Input] = {
+    "32 million rows": Input(million_rows),
+    "32 formatted rows": Input(formatted_rows, SOLVED),
+    "32 half a million lanes": Input(many_lanes),
+}
