@@ -12,13 +12,15 @@ from datetime import datetime
 from importlib.metadata import version
 from pathlib import Path
 
-from ledgersolve import __version__, report
+from ledgersolve import __version__
 from ledgersolve.answer import Answer, Outcome
 from ledgersolve.contract import read_workbook
 from ledgersolve.contract.reading import Reading
 from ledgersolve.findings import Conflict
 from ledgersolve.mip import Limits, Progress, Verdict
 from ledgersolve.report.inputs import NoPlan, RunFacts
+from ledgersolve.report.names import wanted_names
+from ledgersolve.report.outcomes import failed_sheets, fix_sheets, no_plan_sheets, unreadable_sheets
 from ledgersolve.work import AuditError, Worked, work
 from ledgersolve.workbook.graft import fresh, graft, plan_names
 from ledgersolve.workbook.package import open_package
@@ -157,15 +159,15 @@ class _Run:
     def to_fix(self, reading: Reading) -> Answer:
         with self.step("write"):
             returned = self.write(
-                "to fix", report.wanted_names("to fix"),
-                lambda facts, names: report.fix_sheets(reading, facts, names), reading.problems,
+                "to fix", wanted_names("to fix"),
+                lambda facts, names: fix_sheets(reading, facts, names), reading.problems,
             )
         return replace(self.answer(Outcome.TO_FIX), returned=returned)
 
     def unreadable(self, problem: Problem) -> Answer:
         """A file that cannot carry its own list: a fresh workbook does."""
         with self.step("write"):
-            sheets = report.unreadable_sheets(problem, self.facts())
+            sheets = unreadable_sheets(problem, self.facts())
             returned = _publish(self.into, self.shown_name, "to fix", lambda path: fresh(path, sheets))
         return replace(self.answer(Outcome.TO_FIX), returned=returned, problems=(problem,))
 
@@ -183,12 +185,12 @@ class _Run:
 
     def write_failure(self, reason: str) -> Path:
         if self.reading is None:
-            sheets = report.failed_sheets(reason, self.facts())
+            sheets = failed_sheets(reason, self.facts())
             return _publish(self.into, self.shown_name, "failed", lambda path: fresh(path, sheets))
         given = NoPlan(self.reading, "failed", self.facts(), reason)
         return self.write(
-            "failed", report.wanted_names("no plan"),
-            lambda facts, names: report.no_plan_sheets(replace(given, run=facts), names), (),
+            "failed", wanted_names("no plan"),
+            lambda facts, names: no_plan_sheets(replace(given, run=facts), names), (),
         )
 
     def write(

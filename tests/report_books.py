@@ -7,7 +7,6 @@ from pathlib import Path
 
 import numpy as np
 
-from ledgersolve import report
 from ledgersolve.contract import Reading, read_workbook
 from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.lot_sizing.case import Case as LotCase
@@ -16,6 +15,9 @@ from ledgersolve.lot_sizing.plan import plan_from_made
 from ledgersolve.lot_sizing.solve import solve as solve_lots
 from ledgersolve.mip import Limits, Solved, Verdict
 from ledgersolve.report.inputs import LotReport, RunFacts, SiteReport, Today, VariantResult
+from ledgersolve.report.lot_book import lot_sheets
+from ledgersolve.report.names import wanted_names
+from ledgersolve.report.site_book import site_sheets
 from ledgersolve.site_selection.audit import audit as audit_sites
 from ledgersolve.site_selection.case import Case as SiteCase
 from ledgersolve.site_selection.plan import Plan as SitePlan
@@ -81,7 +83,7 @@ def _plan(solved: Solved) -> SitePlan | LotPlan:
 def returned(source: Path, target: Path, given: SiteReport | LotReport) -> Path:
     """Graft the sheets of a report into a copy of its workbook."""
     site = isinstance(given, SiteReport)
-    names = plan_names(source, report.wanted_names("site selection" if site else "lot sizing"))
+    names = plan_names(source, wanted_names("site selection" if site else "lot sizing"))
     graft(source, target, made(given, names))
     return target
 
@@ -89,5 +91,5 @@ def returned(source: Path, target: Path, given: SiteReport | LotReport) -> Path:
 def made(given: SiteReport | LotReport, names: Mapping[str, str] | None = None) -> list:
     """Sheets of a report."""
     if isinstance(given, SiteReport):
-        return report.site_sheets(given, names or {})
-    return report.lot_sheets(given, names or {})
+        return site_sheets(given, names or {})
+    return lot_sheets(given, names or {})

@@ -3,11 +3,12 @@
 import hashlib
 import os
 import zipfile
+from importlib import import_module
 
 import openpyxl
 import pytest
 
-from ledgersolve import Outcome, Verdict, check_workbook, job, solve_workbook, work
+from ledgersolve import Outcome, Verdict, check_workbook, job, solve_workbook
 from ledgersolve.work import AuditError
 from tests.books import lot_book, site_book
 
@@ -207,7 +208,7 @@ def test_switched_off_questions_are_not_asked_and_the_record_says_so(tmp_path, m
     def never(*_: object) -> tuple:
         raise AssertionError("asked although switched off")
 
-    monkeypatch.setattr("ledgersolve.work.answer_site_questions", never)
+    monkeypatch.setattr("ledgersolve.work.sites.answer_questions", never)
     answer = solve_workbook(good(tmp_path))
     assert "Questions answered" not in openpyxl.load_workbook(answer.returned).sheetnames
     assert run_record(answer)["Kept for questions"] == "nothing: Settings says that none are asked"
@@ -217,14 +218,14 @@ def test_switched_off_questions_are_not_asked_and_the_record_says_so(tmp_path, m
 def test_questions_get_their_share_of_the_time_limit_and_no_more(tmp_path, monkeypatch, job_kind) -> None:
     """A quarter of 40 seconds is 10, even where the plan took none; the record names share and times."""
     steering = {"Time limit (seconds)": 40, "Share of time for questions (%)": 25, "Questions": "yes"}
-    name = "answer_site_questions" if job_kind == "sites" else "answer_lot_questions"
-    asked, real = [], getattr(work, name)
+    work = import_module(f"ledgersolve.work.{job_kind}")
+    asked, real = [], work.answer_questions
 
     def spied(case, solved, limits, *more):
         asked.append(limits.seconds)
         return real(case, solved, limits, *more)
 
-    monkeypatch.setattr(work, name, spied)
+    monkeypatch.setattr(work, "answer_questions", spied)
     path = good(tmp_path, **steering) if job_kind == "sites" else lot_book(
         tmp_path / "lots.xlsx", [{"Item": "I", "Setup cost": 5, "Holding cost": 1}], [[3, 4]], settings=steering)
     answer = solve_workbook(path)

@@ -12,9 +12,10 @@ from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.lot_sizing.case import plain_case as plain_lots
 from ledgersolve.lot_sizing.plan import plan_from_made
 from ledgersolve.mip import Solved, Verdict
-from ledgersolve.report import lot_sheets, site_sheets
 from ledgersolve.report.decision import how_sure
 from ledgersolve.report.inputs import LotReport, RunFacts, SiteReport, Today
+from ledgersolve.report.lot_book import lot_sheets
+from ledgersolve.report.site_book import site_sheets
 from ledgersolve.site_selection.audit import audit as audit_sites
 from ledgersolve.site_selection.case import Case, plain_case
 from ledgersolve.site_selection.plan import Plan

@@ -67,7 +67,7 @@ from datetime import datetime
 from pathlib import Path
 from types import SimpleNamespace
 from ledgersolve.mip import Solved, Verdict
-from ledgersolve.report import site_sheets
+from ledgersolve.report.site_book import site_sheets
 from ledgersolve.report.inputs import RunFacts, SiteReport
 from ledgersolve.site_selection.audit import audit
 from ledgersolve.site_selection.case import plain_case

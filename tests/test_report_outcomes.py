@@ -5,11 +5,12 @@ from pathlib import Path
 
 import pytest
 
-from ledgersolve import report
 from ledgersolve.contract.reading import Job, Reading
 from ledgersolve.findings import Conflict, Subject
 from ledgersolve.lot_sizing.case import plain_case
 from ledgersolve.report.inputs import NoPlan, RunFacts
+from ledgersolve.report.names import wanted_names
+from ledgersolve.report.outcomes import failed_sheets, fix_sheets, no_plan_sheets, unreadable_sheets
 from ledgersolve.workbook.origins import MatrixMap, Origins, TableMap
 from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.render import render
@@ -34,7 +35,7 @@ def texts(sheet: ResultSheet) -> list[str]:
 
 def test_an_impossible_workbook_says_what_cannot_hold() -> None:
     """The first lines say that no plan exists; each conflict has its cell, what is at stake and what helps."""
-    sheets = report.no_plan_sheets(NoPlan(READING, "no plan exists", FACTS, "It nearly fits.", (SHORT,)), {})
+    sheets = no_plan_sheets(NoPlan(READING, "no plan exists", FACTS, "It nearly fits.", (SHORT,)), {})
     assert [sheet.name for sheet in sheets] == ["No plan", "Run record"]
     words = texts(sheets[0])
     assert words[:2] == ["May on one press", "No plan can keep all the rules of this workbook."]
@@ -47,7 +48,7 @@ def test_an_impossible_workbook_says_what_cannot_hold() -> None:
 
 def test_a_run_without_a_plan_is_not_called_impossible() -> None:
     """Nothing found in time is said to prove nothing; the bound is rounded down."""
-    sheet = report.no_plan_sheets(NoPlan(READING, "none found", FACTS, bound=1234.9), {})[0]
+    sheet = no_plan_sheets(NoPlan(READING, "none found", FACTS, bound=1234.9), {})[0]
     words = " ".join(texts(sheet))
     assert "No plan was found within the time limit." in words
     assert "does not mean that there is none" in words
@@ -56,7 +57,7 @@ def test_a_run_without_a_plan_is_not_called_impossible() -> None:
 
 def test_a_failure_is_not_laid_on_the_analyst() -> None:
     """A failed run says so, with the reason."""
-    sheet = report.no_plan_sheets(NoPlan(READING, "failed", FACTS, "the audit found another cost"), {})[0]
+    sheet = no_plan_sheets(NoPlan(READING, "failed", FACTS, "the audit found another cost"), {})[0]
     words = " ".join(texts(sheet))
     assert "for a reason that does not lie in it" in words
     assert "the audit found another cost" in words
@@ -65,7 +66,7 @@ def test_a_failure_is_not_laid_on_the_analyst() -> None:
 @pytest.mark.parametrize("what", ["no plan exists", "none found", "failed"])
 def test_no_figure_stands_where_none_exists(what: str, tmp_path: Path) -> None:
     """WB-12: there is no number at all on the first sheet, and all other rules hold."""
-    sheets = report.no_plan_sheets(NoPlan(READING, what, FACTS, conflicts=(SHORT,)), {})
+    sheets = no_plan_sheets(NoPlan(READING, what, FACTS, conflicts=(SHORT,)), {})
     assert not any(isinstance(cell.value, int | float) for cell in sheets[0].cells.values())
     render([*sheets, ResultSheet("Resources"), ResultSheet("Capacity")], tmp_path / "book.xlsx")
     assert check_workbook(tmp_path / "book.xlsx") == []
@@ -74,14 +75,14 @@ def test_no_figure_stands_where_none_exists(what: str, tmp_path: Path) -> None:
 def test_names_are_taken_as_settled() -> None:
     """Sheets carry the names they were given."""
     settled = {"No plan": "No plan (2)", "Run record": "Record"}
-    sheets = report.no_plan_sheets(NoPlan(READING, "none found", FACTS), settled)
+    sheets = no_plan_sheets(NoPlan(READING, "none found", FACTS), settled)
     assert [sheet.name for sheet in sheets] == ["No plan (2)", "Record"]
 
 
 def test_a_file_that_cannot_be_read_gets_a_list_of_its_own(tmp_path: Path) -> None:
     """A fresh workbook holds the one fault of the file."""
     problem = Problem("error", "empty file", "", "", "", "a file of 0 bytes", "a workbook", "Copy it again.")
-    sheets = report.unreadable_sheets(problem, FACTS)
+    sheets = unreadable_sheets(problem, FACTS)
     assert "Copy it again." in texts(sheets[0])
     render(sheets, tmp_path / "book.xlsx")
     assert check_workbook(tmp_path / "book.xlsx") == []
@@ -89,7 +90,7 @@ def test_a_file_that_cannot_be_read_gets_a_list_of_its_own(tmp_path: Path) -> No
 
 def test_a_failure_before_reading_has_a_sheet(tmp_path: Path) -> None:
     """A fault of ours before the workbook could be read is said in a fresh workbook."""
-    sheets = report.failed_sheets("The program met a fault of its own.", FACTS)
+    sheets = failed_sheets("The program met a fault of its own.", FACTS)
     assert "The program met a fault of its own." in texts(sheets[0])
     render(sheets, tmp_path / "book.xlsx")
     assert check_workbook(tmp_path / "book.xlsx") == []
@@ -101,7 +102,7 @@ def test_a_faulty_workbook_gets_its_list_and_record(tmp_path: Path) -> None:
                         recheck="number"),
                 Problem("notice", "k", "Resources", "A1", "", "a title like Capacity", "Capacity", "Rename it."))
     reading = Reading(Job.LOT_SIZING, "May", "EUR", None, problems, origins=ORIGINS)
-    sheets = report.fix_sheets(reading, FACTS, {})
+    sheets = fix_sheets(reading, FACTS, {})
     assert [sheet.name for sheet in sheets] == ["To fix", "Run record"]
     assert "Rename it." in texts(sheets[1])
     render([*sheets, ResultSheet("Resources")], tmp_path / "book.xlsx")
@@ -111,6 +112,6 @@ def test_a_faulty_workbook_gets_its_list_and_record(tmp_path: Path) -> None:
 @pytest.mark.parametrize("kind", ["site selection", "lot sizing", "to fix", "no plan"])
 def test_wanted_names_fit_every_program(kind: str) -> None:
     """WB-14: names of result sheets are short, plain and no two alike."""
-    names = report.wanted_names(kind)
+    names = wanted_names(kind)
     assert len({name.casefold() for name in names}) == len(names)
     assert all(len(name) <= 24 and name.replace(" ", "").isalpha() for name in names)

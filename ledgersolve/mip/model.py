@@ -1,18 +1,15 @@
-"""Linear and mixed-integer models built from arrays and run by OR-Tools' wrapper (pywraplp).
+"""Linear and mixed-integer models built from arrays, to be run by OR-Tools' wrapper.
 
-SCIP runs models with whole-number variables, GLOP those without. Everything is checked for finiteness
-before it reaches a solver: a NaN coefficient crashes SCIP and a NaN right-hand side is called optimal.
+Everything is checked for finiteness before it reaches a solver: a NaN coefficient crashes SCIP and a NaN
+right-hand side is called optimal.
 """
 
 import math
-import threading
-import time
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
-from ortools.linear_solver import linear_solver_pb2, pywraplp
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -65,9 +62,9 @@ class LinearModel:
         whole: bool = False,
     ) -> Ints:
         """Add ``count`` variables; bounds and costs are one figure or one a variable."""
-        self._lower.append(_vector(lower, count))
-        self._upper.append(_vector(upper, count))
-        self._cost.append(_vector(cost, count))
+        self._lower.append(vector(lower, count))
+        self._upper.append(vector(upper, count))
+        self._cost.append(vector(cost, count))
         self._whole.append(np.full(count, whole))
         numbers = np.arange(self.variables, self.variables + count, dtype=np.int64)
         self.variables += count
@@ -87,7 +84,7 @@ class LinearModel:
         values = np.broadcast_to(np.asarray(coefficient, dtype=np.float64), rows.shape).ravel()
         if rows.shape != columns.shape:
             raise ValueError("row and variable must have the same length")
-        self._blocks.append((_vector(lower, count), _vector(upper, count), rows, columns, values))
+        self._blocks.append((vector(lower, count), vector(upper, count), rows, columns, values))
         numbers = np.arange(self.rows, self.rows + count, dtype=np.int64)
         self.rows += count
         return numbers
@@ -125,34 +122,18 @@ class LinearModel:
         ValueError
             A coefficient is not finite, or SCIP does not know a parameter.
         """
-        return _Run(self, seconds, gap, hint, cancelled, parameters, log).result()
+        from ledgersolve.mip.wrapper import Run  # here, because many cases are settled without the wrapper
+
+        return Run(self, seconds, gap, hint, cancelled, parameters, log).result()
 
     def bounded(self, variables: ArrayLike, lower: ArrayLike, upper: ArrayLike) -> "LinearModel":
         """Give the same model with other bounds for these variables; this one stays as it is."""
         low, high, cost, whole = self.columns()
         which = np.asarray(variables, dtype=np.int64).ravel()
-        low[which], high[which] = _vector(lower, which.size), _vector(upper, which.size)
+        low[which], high[which] = vector(lower, which.size), vector(upper, which.size)
         return LinearModel(
             self.offset, [low], [high], [cost], [whole], list(self._blocks), self.variables, self.rows
         )
-
-    def to_proto(self) -> linear_solver_pb2.MPModelProto:
-        """Give the model as the wrapper's own message, checked for finiteness."""
-        lower, upper, cost, whole = self.columns()
-        proto = linear_solver_pb2.MPModelProto(objective_offset=self.offset)
-        add = proto.variable.add
-        for low, high, price, integer in zip(
-            lower.tolist(), upper.tolist(), cost.tolist(), whole.tolist(), strict=True
-        ):
-            add(lower_bound=low, upper_bound=high, objective_coefficient=price, is_integer=integer)
-        for low_rows, high_rows, starts, variables, values in self._sorted_blocks():
-            ends, indices, numbers = starts.tolist(), variables.tolist(), values.tolist()
-            for k, (low, high) in enumerate(zip(low_rows.tolist(), high_rows.tolist(), strict=True)):
-                part = slice(ends[k], ends[k + 1])
-                proto.constraint.add(
-                    lower_bound=low, upper_bound=high, var_index=indices[part], coefficient=numbers[part]
-                )
-        return proto
 
     def columns(self) -> tuple[Floats, Floats, Floats, NDArray[np.bool_]]:
         """Lower bounds, upper bounds, costs and whole-number flags, checked.
@@ -175,7 +156,14 @@ class LinearModel:
         lower, upper, cost, _ = self.columns()
         return not bool(((cost < 0) & np.isinf(upper) | (cost > 0) & np.isinf(lower)).any())
 
-    def _sorted_blocks(self) -> list[tuple[Floats, Floats, Ints, Ints, Floats]]:
+    def sorted_blocks(self) -> list[tuple[Floats, Floats, Ints, Ints, Floats]]:
+        """Blocks of rows: lower and upper sides, where each row starts, its variables and their coefficients.
+
+        Raises
+        ------
+        ValueError
+            A coefficient is not finite, or the sides of a row exclude each other.
+        """
         blocks = []
         for lower, upper, rows, variables, values in self._blocks:
             if not np.isfinite(values).all() or not (lower <= upper).all():
@@ -190,97 +178,7 @@ class LinearModel:
         return blocks
 
 
-class _Run:
-    """One call of the wrapper: load, limit, hint, interrupt, read back."""
-
-    def __init__(
-        self, model: LinearModel, seconds: float, gap: float, hint: ArrayLike | None,
-        cancelled: Callable[[], bool] | None, parameters: Sequence[str], log: bool,
-    ) -> None:
-        self.model, self.seconds, self.gap = model, seconds, gap
-        self.hint, self.cancelled, self.parameters, self.log = hint, cancelled, parameters, log
-        self.whole = bool(model.columns()[3].any())
-
-    def result(self) -> LinearResult:
-        if self.seconds <= 0 or (self.cancelled is not None and self.cancelled()):
-            return LinearResult("unknown", None, math.inf, -math.inf)
-        began = time.monotonic()
-        solver = pywraplp.Solver.CreateSolver("SCIP" if self.whole else "GLOP")
-        refusal = solver.LoadModelFromProto(self.model.to_proto())
-        if refusal:
-            raise ValueError(f"the wrapper refuses the model: {refusal}")
-        if self.whole:
-            self._prepare_scip(solver)
-        if self.log:
-            solver.EnableOutput()
-        solver.SetTimeLimit(max(1, int((self.seconds - (time.monotonic() - began)) * 1000)))
-        options = pywraplp.MPSolverParameters()
-        options.SetDoubleParam(pywraplp.MPSolverParameters.RELATIVE_MIP_GAP, self.gap)
-        return self._read(solver, self._interruptible(solver, options))
-
-    def _prepare_scip(self, solver: pywraplp.Solver) -> None:
-        if self.hint is not None:
-            given = _vector(self.hint, self.model.variables)
-            known = np.flatnonzero(np.isfinite(given))
-            variables = solver.variables()
-            solver.SetHint([variables[k] for k in known.tolist()], given[known].tolist())
-        text = "\n".join(self.parameters)
-        if text and not solver.SetSolverSpecificParametersAsString(text):
-            raise ValueError(f"SCIP does not take these parameters: {text!r}")
-
-    def _interruptible(self, solver: pywraplp.Solver, options: pywraplp.MPSolverParameters) -> int:
-        """Solve, and interrupt once ``cancelled`` says so (an early interrupt is lost, hence the loop)."""
-        if self.cancelled is None:
-            return int(solver.Solve(options))
-        ended = threading.Event()
-
-        def watch() -> None:
-            while not ended.wait(0.1):
-                if self.cancelled is not None and self.cancelled():
-                    solver.InterruptSolve()
-
-        watcher = threading.Thread(target=watch, daemon=True)
-        watcher.start()
-        try:
-            return int(solver.Solve(options))
-        finally:
-            ended.set()
-            watcher.join()
-
-    def _read(self, solver: pywraplp.Solver, code: int) -> LinearResult:
-        status = _STATUS.get(code, "unknown")
-        if status == "infeasible" and not self.model.surely_bounded():
-            status = "unbounded"  # presolve calls a model that can run away infeasible
-        if status in ("infeasible", "unbounded"):
-            return LinearResult(status, None, math.inf, math.inf if status == "infeasible" else -math.inf)
-        nodes = int(solver.nodes()) if self.whole else 0
-        bound = float(solver.Objective().BestBound()) if self.whole else -math.inf
-        if not math.isfinite(bound) or abs(bound) >= SCIP_INFINITY:
-            bound = -math.inf
-        if status == "unknown":
-            # without a plan the wrapper gives 0 whatever was proven, which is no bound where costs can be negative
-            return LinearResult(status, None, math.inf, -math.inf, nodes=nodes)
-        answer = linear_solver_pb2.MPSolutionResponse()
-        solver.FillSolutionResponseProto(answer)
-        values = np.array(answer.variable_value, dtype=np.float64)
-        if not np.isfinite(values).all():
-            return LinearResult("unknown", None, math.inf, -math.inf, nodes=nodes)
-        lower, upper, cost, whole = self.model.columns()
-        values[whole] = np.round(values[whole])
-        values = np.clip(values, lower, upper)
-        objective = float(cost @ values) + self.model.offset
-        if self.whole:
-            return LinearResult(status, values, objective, bound, nodes=nodes)
-        duals = np.array(answer.dual_value, dtype=np.float64)
-        reduced = np.array(answer.reduced_cost, dtype=np.float64)
-        return LinearResult(status, values, objective, objective if code == 0 else -math.inf, duals, reduced)
-
-
-SCIP_INFINITY = 1e19
-_STATUS = {0: "optimal", 1: "feasible", 2: "infeasible", 3: "unbounded"}
-
-
-def _vector(value: ArrayLike, count: int) -> Floats:
+def vector(value: ArrayLike, count: int) -> Floats:
     """One figure for each of ``count`` from one figure or ``count`` figures."""
     given = np.asarray(value, dtype=np.float64)
     if given.ndim and given.shape != (count,):

@@ -31,6 +31,7 @@ from ledgersolve.lot_sizing.model import whole_model
 from ledgersolve.lot_sizing.solve import solve
 from ledgersolve.lot_sizing.whole import solve_whole
 from ledgersolve.mip import Limits
+from ledgersolve.mip.wrapper import message
 from tests.bench.lot_cases import Recipe, consumer_goods, generated, trigeiro_set
 from tests.lot_oracle import whole_big_m
 
@@ -70,7 +71,7 @@ class Figures:
 
 def highs(case: Case, seconds: float) -> tuple[float | None, float | None]:
     """Run the strong model in HiGHS: cost and bound."""
-    proto = whole_model(case).model.to_proto()
+    proto = message(whole_model(case).model)
     solver = highspy.Highs()
     solver.setOptionValue("output_flag", False)
     solver.setOptionValue("time_limit", seconds)

@@ -24,6 +24,7 @@ import highspy
 import numpy as np
 
 from ledgersolve.mip import Limits
+from ledgersolve.mip.wrapper import message
 from ledgersolve.site_selection.audit import audit
 from ledgersolve.site_selection.case import Case
 from ledgersolve.site_selection.lanes import Lanes
@@ -88,7 +89,7 @@ def highs(case: Case, seconds: float) -> tuple[float | None, float | None]:
     """Run the strong model in HiGHS, filled in one go: cost and bound."""
     model = build(Lanes.of(case)).model
     lower, upper, cost, whole = model.columns()
-    proto = model.to_proto()
+    proto = message(model)
     rows = [(row.lower_bound, row.upper_bound, row.var_index, row.coefficient) for row in proto.constraint]
     solver = highspy.Highs()
     for option, value in (("output_flag", False), ("time_limit", seconds), ("threads", 1), ("mip_rel_gap", 1e-4)):

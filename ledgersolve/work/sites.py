@@ -1,0 +1,73 @@
+"""Site selection from a case to all that its sheets are made of."""
+
+from dataclasses import replace
+
+from ledgersolve.answer import VariantAnswer
+from ledgersolve.contract.reading import Reading
+from ledgersolve.findings import Answered
+from ledgersolve.report.inputs import SiteReport, Today, VariantResult
+from ledgersolve.report.names import wanted_names
+from ledgersolve.report.site_book import site_sheets
+from ledgersolve.site_selection.audit import audit
+from ledgersolve.site_selection.case import Case
+from ledgersolve.site_selection.explain import explain
+from ledgersolve.site_selection.questions import answer_questions
+from ledgersolve.site_selection.solve import solve
+from ledgersolve.work.shared import (
+    NO_FACTS,
+    Budget,
+    Worked,
+    confirmed,
+    main_part,
+    questions_part,
+    times,
+    without_plan,
+)
+
+BESIDE_SHARE = 0.3
+"""Share of the time limit kept for today's network and the variants, where there are any."""
+
+
+def work(reading: Reading, case: Case, budget: Budget) -> Worked:
+    """Solve, audit, compare with today, vary and question a case."""
+    beside = BESIDE_SHARE if case.compare_today or case.variants else 0.0
+    solved = solve(case, main_part(reading, budget, beside))
+    audited = confirmed(case, solved, audit)
+    if audited is None:
+        return without_plan(reading, case, solved, budget, explain)
+    today = None
+    if case.compare_today:
+        seconds = budget.left() / (2 + len(case.variants))
+        found = solve(case.as_today(), budget.part("today's network", seconds))
+        today = Today(found, confirmed(case.as_today(), found, audit))
+    variants = _variants(case, budget, reading.run.questions_share if reading.run.questions else 0.0)
+    answers: tuple[Answered, ...] = ()
+    if reading.run.questions:
+        answers = answer_questions(
+            case, solved, questions_part(reading, budget), None if today is None else today.solved)
+    given = SiteReport(reading, case, solved, audited, NO_FACTS, today, variants, answers)
+    return Worked(
+        solved,
+        {"open": solved.plan.open_codes(case.sites)} if solved.plan is not None else None,
+        wanted_names("site selection"),
+        lambda facts, names: site_sheets(replace(given, run=facts), names),
+        tuple(_variant_answer(case, result) for result in variants),
+        record=times(reading, answers),
+    )
+
+
+def _variants(case: Case, budget: Budget, questions_share: float) -> tuple[VariantResult, ...]:
+    results = []
+    for number, variant in enumerate(case.variants):
+        left = budget.left() - questions_share * budget.limits.seconds
+        part = budget.part(f"variant {variant.name}", left / (len(case.variants) - number))
+        changed = case.under(variant)
+        solved = solve(changed, part)
+        results.append(VariantResult(variant, solved, confirmed(changed, solved, audit)))
+    return tuple(results)
+
+
+def _variant_answer(case: Case, result: VariantResult) -> VariantAnswer:
+    solved = result.solved
+    opened = None if solved.plan is None else tuple(solved.plan.open_codes(case.sites))
+    return VariantAnswer(result.variant.name, solved.verdict, solved.cost, solved.bound, opened)
