@@ -109,10 +109,10 @@ def test_every_rule_says_what_was_checked() -> None:
         ("Most lot", everything, own, holds), ("Lot multiple", everything, own, holds),
         ("Capacity", "resource Press", "at most 7", "7 in period 1"),
         ("Overtime limit", "resource Press", "at most 0", "0 in period 1"),
-        ("No negative overtime", "resource Press", "at most 0", "-0 in period 1"),
+        ("No negative overtime", "resource Press", "0 or more", "0 in period 1"),
         ("Capacity", "resource Oven", "at most 10.5", "10.5 in period 2"),
         ("Overtime limit", "resource Oven", "at most 1.5", "1.5 in period 2"),
-        ("No negative overtime", "resource Oven", "at most 0", "-0 in period 1"),
+        ("No negative overtime", "resource Oven", "0 or more", "0 in period 1"),
     ]
     assert {check.worst for check in found} == {0.0}
 
@@ -167,7 +167,7 @@ def test_overtime_below_nothing() -> None:
     """Negative overtime is found even where it is not needed, and its period is named."""
     check = only(shared_case(), shared_plan(overtime=np.array([[0.0, -0.5], [0, 1.5]])))
     assert (check.rule, check.subject, check.required, check.got, check.worst) == (
-        "No negative overtime", "resource Press", "at most 0", "0.5 in period 2", 0.5)
+        "No negative overtime", "resource Press", "0 or more", "-0.5 in period 2", 0.5)
 
 
 def test_a_resource_without_any_limit_still_keeps_its_overtime() -> None:

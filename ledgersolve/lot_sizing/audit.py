@@ -176,7 +176,7 @@ class _Book:
             yield _resource(case, name, "Capacity", need[r], case.capacity[r] + overtime[r], size)
             limit = np.full(case.t, case.overtime_limit[r])
             yield _resource(case, name, "Overtime limit", overtime[r], limit, size)
-            yield _resource(case, name, "No negative overtime", -overtime[r], np.zeros(case.t), size)
+            yield _not_negative(case, name, "No negative overtime", overtime[r], size)
 
     def _items(self, rule: str, excess: Floats, required: Floats | str, got: Floats | Flags) -> Check:
         """Check an (N, T) rule, broken where ``excess`` is above the tolerance; names the worst cell."""
@@ -202,8 +202,24 @@ def _resource(case: Case, name: str, rule: str, need: Floats, limit: Floats, siz
         excess = need - limit
     t = int(np.argmax(excess))
     ok = bool(excess[t] <= TOLERANCE * size)
-    found = f"{need[t]:.10g} in {case.period_unit} {case.periods[t]}"
+    found = f"{_shown(need[t])} in {case.period_unit} {case.periods[t]}"
     return Check(rule, subject, f"at most {limit[t]:.10g}", found, 0.0 if ok else float(excess[t]), ok=ok)
+
+
+def _not_negative(case: Case, name: str, rule: str, time: Floats, size: float) -> Check:
+    """Check time >= 0 in all periods of one resource; names the period with the least."""
+    subject = f"resource {name}"
+    if not case.t:
+        return Check(rule, subject, "-", "-", 0.0, ok=True)
+    t = int(np.argmin(time))
+    ok = bool(time[t] >= -TOLERANCE * size)
+    found = f"{_shown(time[t])} in {case.period_unit} {case.periods[t]}"
+    return Check(rule, subject, "0 or more", found, 0.0 if ok else -float(time[t]), ok=ok)
+
+
+def _shown(figure: float) -> str:
+    """A figure without the rounding of the machine: no minus before 0, no 1e-14."""
+    return f"{round(float(figure), 9) + 0.0:.10g}"
 
 
 def _words(required: Floats | str, place: tuple[np.intp, np.intp] | None) -> str:

@@ -3,6 +3,8 @@
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field, replace
 
+import numpy as np
+
 from ledgersolve.lot_sizing.case import Floats
 from ledgersolve.report import style
 from ledgersolve.report.lot_places import CODE, FIRST_PERIOD, NAME, SUM, UNIT, Block, LotPlaces
@@ -12,6 +14,8 @@ from ledgersolve.workbook.sheets import LiveFormat, ResultSheet, Style
 
 MADE = Style(bold=True, colour=style.WHITE, fill=style.PETROL)
 SOME = Style(fill=style.PALE)
+NOISE = 1e-9
+"""Figures closer to 0 are rounding of the machine and shown as 0."""
 ALERT = Style(bold=True, colour=style.ALARM, fill=style.ALARM_GROUND)
 Formula = Callable[[int, int], str]
 
@@ -50,7 +54,7 @@ def write_periods(at: LotPlaces, sheet: ResultSheet, table: PeriodTable) -> None
         if table.sum_title:
             formula = f"=SUM({column_letters(FIRST_PERIOD + 1)}{row + 1}:{last}{row + 1})"
             sheet.put(row, SUM, float(table.values[r].sum()), total, formula=formula)
-        for t, value in enumerate(table.values[r].tolist()):
+        for t, value in enumerate(np.where(np.abs(table.values[r]) < NOISE, 0.0, table.values[r]).tolist()):
             formula = table.formula(r, t) if table.formula is not None else ""
             sheet.put(row, FIRST_PERIOD + t, value, look, formula=f"={formula}" if formula else "")
         for k, column in enumerate(table.side):
