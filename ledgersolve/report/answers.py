@@ -51,13 +51,17 @@ def _table(sheet: ResultSheet, row: int, answer: Answered, money: tuple[str, str
     """Write the figures behind an answer; gives the next free row."""
     if not answer.rows:
         return row
+    by_row = _unit_formats(answer, money[0])
     columns = []
     for number, given in enumerate(answer.columns):
         values = [line[number] for line in answer.rows]
         units = {"money": f" ({money[0]}{money[1]})", "percent": " (%)", "number": " (number)"}
-        unit = "" if "(" in given.title else units.get(given.kind, "")
+        unit = "" if "(" in given.title or by_row else units.get(given.kind, "")
         look = _look(given, money[0], [value for value in values if isinstance(value, int | float)])
-        styles = [WORDS if isinstance(value, str) else look for value in values]
+        looks = [look] * len(values)
+        if by_row and given.kind == "number":
+            looks = [style.number(shown) for shown in by_row]
+        styles = [WORDS if isinstance(value, str) else own for value, own in zip(values, looks, strict=True)]
         columns.append(Column(given.title, given.title + unit, values, look, sheet.widths[number], styles=styles))
     write_table(sheet, row, columns)
     last = row + len(answer.rows)
@@ -65,6 +69,20 @@ def _table(sheet: ResultSheet, row: int, answer: Answered, money: tuple[str, str
         return last + 1
     _picture(sheet, answer, row, last, money[0])
     return last + 2 + CHART_ROWS
+
+
+def _unit_formats(answer: Answered, currency: str) -> list[str]:
+    """Number format of each row where rows have units of their own, in a column ``Unit``; else nothing."""
+    titles = [column.title for column in answer.columns]
+    if "Unit" not in titles:
+        return []
+    numbers = [place for place, column in enumerate(answer.columns) if column.kind == "number"]
+    formats = []
+    for line in answer.rows:
+        figures = [value for place in numbers if isinstance(value := line[place], int | float)]
+        is_money = line[titles.index("Unit")] == currency
+        formats.append(style.money_format(currency) if is_money else style.figure_format(figures, most=1))
+    return formats
 
 
 WORDS = style.WRAPPED_CELL

@@ -11,7 +11,7 @@ from ledgersolve.workbook.cells import column_letters, column_number
 from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.sheets import LiveFormat, ResultSheet
 
-TO_FIX, DONE, DROP_AGAIN = "to fix", "done", "drop again"
+TO_FIX, DONE, DROP_AGAIN = "to fix", "done", "to fix (*)"
 WIDTHS = (17.0, 8.0, 19.0, 36.0, 32.0, 40.0, 8.0, 13.0, 9.0, 9.0)
 WATCHED_SPANS = 40
 """At most so many runs of cells of one entry are watched by its status."""
@@ -45,9 +45,10 @@ def _head(sheet: ResultSheet, errors: Sequence[Problem], run: RunFacts, title: s
                               "right. Nothing in your sheets was changed; the cells are marked where they "
                               "stand.", replace(style.TEXT, size=11.0))
     paragraph(sheet, 2, 0, 7, "What to do: go down the list (a click on the cell leads there), mend each cell, and "
-                              f"watch its status turn to \"{DONE}\" and its mark vanish. Entries that need other "
-                              "data turn green only after the next drop. Then save the workbook and drop it again: "
-                              "list and marks go by themselves.", replace(style.TEXT, size=11.0))
+                              f"watch its status turn to \"{DONE}\" and its mark vanish. An entry marked (*) is "
+                              "compared with other cells: it is looked at again at the next drop, and its status "
+                              "stays until then. Save the workbook and drop it again: list and marks go by "
+                              "themselves.", replace(style.TEXT, size=11.0))
     words = f"{run.file_name}, {run.when:%Y-%m-%d %H:%M}"
     sheet.put(3, 0, words, style.SMALL)
     return 5
@@ -66,10 +67,10 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
     ])
     span = f"H{list_row + 2}:H{list_row + 1 + max(1, len(errors))}"
     left = sum(1 for problem in errors if _status(problem, 0)[1])
-    sheet.put(row, 3, "Entries whose cell is mended (live)", style.BOLD)
+    sheet.put(row, 3, "Entries mended so far", style.BOLD)
     sheet.put(row, 4, 0, style.number(style.WHOLE), formula=f'=COUNTIF({span},"{DONE}")')
-    sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}; {left} of them show by themselves "
-                          "when they are mended", style.NOTE)
+    sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}, {left} of which count themselves "
+                          "as soon as the cell is right", style.NOTE)
     sheet.put(list_row - 1, 0, "Errors", style.SECTION)
     return list_row
 
@@ -96,11 +97,11 @@ def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bo
         live_ones = list(zip(problems, status, strict=True))
         low = [_low(problem) if formula else None for problem, (_, formula) in live_ones]
         high = [problem.high if formula else None for problem, (_, formula) in live_ones]
-        columns.append(Column("low", "Right from (value)", low, limits, WIDTHS[8]))
-        columns.append(Column("high", "Right up to (value)", high, limits, WIDTHS[9]))
+        columns.append(Column("low", "Smallest allowed (value)", low, limits, WIDTHS[8]))
+        columns.append(Column("high", "Largest allowed (value)", high, limits, WIDTHS[9]))
     write_table(sheet, row, columns)
     if live and problems:
-        for word, look in ((DONE, style.FINE), (TO_FIX, style.BAD)):
+        for word, look in ((DONE, style.FINE), (TO_FIX, style.BAD), (DROP_AGAIN, style.BAD)):
             sheet.live_formats.append(LiveFormat(row + 1, 7, row + len(problems), 7, f'=$H{row + 2}="{word}"', look))
 
 

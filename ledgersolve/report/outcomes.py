@@ -18,8 +18,9 @@ WIDTHS = (46.0, 16.0, 40.0, 46.0)
 _SAID = {
     "no plan exists": (
         "No plan can keep all the rules of this workbook.",
-        "This is proven, not a matter of time: the rows and rules below cannot hold together. Change one of them, "
-        "smallest change first, save the workbook and drop it again.",
+        "This is proven, not a matter of time: more of it would not help. Each line below says what cannot hold and "
+        "the smallest change that mends it; it may take more than one of them. Then save the workbook and drop it "
+        "again.",
     ),
     "none found": (
         "No plan was found within the time limit.",

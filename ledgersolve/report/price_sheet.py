@@ -20,7 +20,8 @@ COPIED_LANES = 200_000
 LINKED_LANES = 40_000
 """Sites x customers up to which each laid-out cost is a formula into its own cell."""
 MOST_CUSTOMERS = 16_000
-PRINTED_CUSTOMERS = 24
+PRINTED_CUSTOMERS = 10
+PRINTED_ROWS = 60
 CODE_ROW, DEMAND_ROW, PRICE_ROW, WHOLE_ROW, COST_ROW = range(FIRST_ROW, FIRST_ROW + 5)
 FIRST_COLUMN = 2
 
@@ -197,13 +198,12 @@ def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, 
         else:
             sheet.put(WHOLE_ROW, column, price, amounts)
         sheet.widths[column] = 14.0
-    sheet.widths |= {0: 24.0, 1: 26.0}
+    sheet.widths |= {0: 34.0, 1: 26.0}
     words = ("One price a customer, and what serving it costs from each site. The sheet Proof adds them up to a "
              "bound that no plan can undercut.")
     if case.n > PRINTED_CUSTOMERS:
-        sheet.print_area = (0, 0, CODE_ROW + 40, FIRST_COLUMN + PRINTED_CUSTOMERS - 1)
-        words += f" In print, only the first {PRINTED_CUSTOMERS} customers are shown."
+        sheet.print_area = (0, 0, PRINTED_ROWS - 1, FIRST_COLUMN + PRINTED_CUSTOMERS - 1)
+        words += f" In print, only the first {PRINTED_CUSTOMERS} customers are shown: the sheet is for the screen."
     heading(sheet, "Prices behind the proof", words, 8)
     sheet.frozen = (CODE_ROW + 1, 2)
-    sheet.pages_wide = 0
     sheet.footer = FOOTER

@@ -96,9 +96,19 @@ def _against_today(at: SitePlaces) -> str:
     part = style.percent_words(abs(saved) / today.solved.cost, "down") if today.solved.cost else ""
     if saved > 0:
         less = f"{_money(at, saved, 'down')} ({part}) less"
-        return f"That is {less} than today's {count} cost with deliveries at their best."
+        return f"That is {less} than today's {count} cost with deliveries at their best.{_paid_once(at, saved)}"
     return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count or "
             "group rule of this workbook that the plan keeps.")
+
+
+def _paid_once(at: SitePlaces, saved: float) -> str:
+    """What of the cost comes once, and what the plan saves when that is paid."""
+    case, running = at.report.case, at.report.plan.open
+    once = float(case.opening_cost[running & ~case.today].sum() + case.closing_cost[case.today & ~running].sum())
+    if once <= 0:
+        return ""
+    return (f" {_money(at, once)} of the cost is paid once, for opening and closing; without it the plan costs "
+            f"{_money(at, saved + once, 'down')} per {case.period_covered} less than today.")
 
 
 def _tiles(at: SitePlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:

@@ -17,6 +17,7 @@ LABELLED_SITES = 16
 DRAWN_SITES = 30
 IN_USE = 9
 """Size from which a mark stands for a site in use, today or in the plan."""
+PRINTED_POINTS = 40
 CROWDED = 600
 """Customers from which marks and lines are drawn finer."""
 PLOT = (0.08, 0.10, 0.89, 0.66)
@@ -112,9 +113,11 @@ def _sheet(at: SitePlaces, series: list[_Points]) -> ResultSheet:
     flat = [(points.name, *row) for points in series for row in points.rows]
     degrees = style.number("0.0000")
     columns: list[list[Scalar]] = [list(column) for column in zip(*flat, strict=True)]
-    return detail_sheet(
-        at.name(names.PLAN_MAP), "Figures behind the map",
-        "Where sites, customers and delivery lines of the picture on the first page stand.",
+    words = "Where sites, customers and delivery lines of the picture on the first page stand."
+    if len(flat) > PRINTED_POINTS:
+        words += f" In print, only the first {PRINTED_POINTS} rows are shown: the sheet is for the screen."
+    sheet = detail_sheet(
+        at.name(names.PLAN_MAP), "Figures behind the map", words,
         [
             Column("series", "Part of the picture", columns[0], width=20),
             Column("place", "Site or customer", columns[3], width=24),
@@ -122,6 +125,9 @@ def _sheet(at: SitePlaces, series: list[_Points]) -> ResultSheet:
             Column("latitude", "Latitude (degrees)", columns[2], degrees, 14),
         ], style.MOSS,
     )
+    if len(flat) > PRINTED_POINTS:
+        sheet.print_area = (0, 0, FIRST_ROW + PRINTED_POINTS - 1, 3)
+    return sheet
 
 
 def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) -> Chart:

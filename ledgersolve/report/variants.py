@@ -25,22 +25,22 @@ def plan_variants(at: SitePlaces) -> ResultSheet | None:
     base = report.audit.total
     columns = [
         Column("variant", "Variant", [OWN, *[result.variant.name for result in report.variants]],
-               style.WRAPPED_CELL, 26),
+               style.WRAPPED_CELL, 24),
         Column("change", "What it changes",
                ["nothing", *[changed(result.variant, case.distance_unit) for result in report.variants]],
-               style.WRAPPED_CELL, 40),
-        Column("verdict", "Verdict", [s.verdict.value for s in solved], style.WRAPPED_CELL, 16),
-        Column("cost", f"Cost ({at.money_unit})", [_cost(s) for s in solved], money, 18),
-        Column("against", f"Against the own case ({at.money_unit})",
+               style.WRAPPED_CELL, 28),
+        Column("verdict", "Verdict", [s.verdict.value for s in solved], style.WRAPPED_CELL, 14),
+        Column("cost", f"Cost ({at.money_unit})", [_cost(s) for s in solved], money, 16),
+        Column("against", f"Difference to the first row ({at.money_unit})",
                [None if s.cost is None else s.cost - base for s in solved],
-               style.number(f"+{money.number_format};-{money.number_format};0"), 18,
+               style.number(f"+{money.number_format};-{money.number_format};0"), 16,
                [f"D{row}-D${TITLE_ROW + 2}" if s.cost is not None else ""
                 for row, s in enumerate(solved, start=TITLE_ROW + 2)]),
-        Column("still", f"Could still be saved, at most ({at.money_unit})", [_still(s) for s in solved], money, 18),
+        Column("still", f"Could still be saved, at most ({at.money_unit})", [_still(s) for s in solved], money, 16),
         Column("count", "Open sites (number)", [_count(s) for s in solved], style.number(style.WHOLE), 11),
-        Column("open", "Open sites", [_open(at, s) for s in solved], style.WRAPPED_CELL, 40),
-        Column("differs", "Differs from the own case by",
-               ["", *[_difference(at, result) for result in report.variants]], style.WRAPPED_CELL, 36),
+        Column("open", "Open sites", [_open(at, s) for s in solved], style.WRAPPED_CELL, 30),
+        Column("differs", "Sites, against the first row",
+               ["nothing", *[_difference(at, result) for result in report.variants]], style.WRAPPED_CELL, 26),
     ]
     sheet = detail_sheet(at.name(names.PLAN_VARIANTS), "Variants", "Each variant was solved for itself; it changes "
                                                                    "only what its row in your sheet Variants "
