@@ -114,7 +114,6 @@ def generate(
         new = pool.add(point.schedules.made, relaxation.column_costs(point))
         if point.bound > best.bound:
             best = point
-            clock.note("columns", bound=best.bound)
         elif new == 0 and stay == 0.0:
             break
         stay = 0.5 if new else 0.0
