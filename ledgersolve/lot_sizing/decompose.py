@@ -19,10 +19,13 @@ from ledgersolve.lot_sizing.couplings import Runs, choose, held
 from ledgersolve.lot_sizing.pick import pick
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.quantities import best_quantities
+from ledgersolve.lot_sizing.responses import settled
 from ledgersolve.lot_sizing.start import find_start
 from ledgersolve.lot_sizing.windows import Best, improve
 from ledgersolve.mip import Clock, Limits, Solved, Verdict, judge
 
+RESPONSES_SHARE = 0.15
+"""Most of the time left that responses to the prices of the ascent may take."""
 _STEPS = 800
 _HELD_STEPS, _HELD_STEP = 60, 0.03
 _HOLDS = 16
@@ -87,6 +90,10 @@ class _Run:
         self.point = self.ascent.best
         self.clock.note("ascent", bound=self.point.bound)
         self.clock.end_stage("ascent", f"{self.ascent.steps} steps")
+        if not self.impossible and not self.clock.over():
+            made, prices = self.point.schedules.made, self.point.charges.prices
+            self.take(settled(self.case, made, prices, self.clock, RESPONSES_SHARE * self.clock.left()))
+            self.clock.end_stage("responses")
 
     def plan_by_columns(self) -> None:
         """Hold couplings, generate columns, pick schedules, re-optimise quantities."""
@@ -134,10 +141,13 @@ class _Run:
             self.take(best_quantities(self.case, made > 0, max(1.0, self.clock.left()), counts=made))
             self.take(plan_from_made(self.case, made))
         self.clock.end_stage("columns")
+        guess = self.point.schedules.made if made is None else made
+        prices = self.point.charges.prices
         if self.plan is None and not self.clock.over():
-            guess = self.point.schedules.made if made is None else made
-            prices, seconds = self.point.charges.prices, 0.5 * self.clock.left()
-            self.take(find_start(self.case, guess, prices, self.clock, seconds))
+            self.take(settled(self.case, guess, prices, self.clock, 0.3 * self.clock.left()))
+            self.clock.end_stage("responses")
+        if self.plan is None and not self.clock.over():
+            self.take(find_start(self.case, guess, prices, self.clock, 0.5 * self.clock.left()))
             self.clock.end_stage("first plan")
 
     def improve(self) -> None:

@@ -3,7 +3,8 @@
 Items without a tie to others go to the programmes of one item, exact where these carry the item's
 features; what they do not carry goes to the whole model, item by item. Items tied by a resource or a family
 are a case of their own each group: a small one goes to the whole model, others to the decomposition, and then,
-as far as their size allows, to the whole model with the plan found as a start.
+as far as their size allows, to the whole model with the plan found as a start. Before any group is solved at
+length, all of them get a first plan (``responses``), so that a run that is stopped early has one.
 """
 
 import math
@@ -17,18 +18,30 @@ from ledgersolve.lot_sizing.case import Case, Flags, Floats, Ints
 from ledgersolve.lot_sizing.groups import Group, groups, joined, part
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.programmes import ItemProgrammes
+from ledgersolve.lot_sizing.responses import first_plan
 from ledgersolve.lot_sizing.tied import solve_tied
 from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict, judge
+
+FIRST_SHARE = 0.5
+"""Most of the time that first plans may take; they end by themselves, most often within a second."""
 
 
 @dataclass
 class _Part:
-    """A group on its way: the best plan so far, its cost, and the bound."""
+    """A group on its way: the best plan so far, its cost, the bound, and whether nothing is left to do."""
 
     group: Group
     bound: float
     plan: Plan | None = None
     cost: float = math.inf
+    settled: bool = False
+
+    def take(self, plan: Plan | None) -> None:
+        """Take a plan that is sound and better."""
+        if plan is not None:
+            checked = audit(self.group.case, plan)
+            if checked.ok and checked.total < self.cost:
+                self.plan, self.cost = plan, checked.total
 
 
 def solve(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
@@ -40,6 +53,7 @@ def solve(case: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]
     run = _Run(case, clock, start)
     if not run.alone():
         return run.impossible()
+    run.first_plans()
     for number in range(len(run.parts)):
         if not run.tied(number):
             return run.impossible()
@@ -103,7 +117,8 @@ class _Run:
         checked = audit(group.case, plan)
         if not checked.ok:
             raise ArithmeticError(f"the programmes' plan breaks {[check.rule for check in checked.broken()]}")
-        self.parts.append(_Part(group, min(float(cost[items].sum()), checked.total), plan, checked.total))
+        bound = min(float(cost[items].sum()), checked.total)
+        self.parts.append(_Part(group, bound, plan, checked.total, settled=True))
 
     def _tell(self, programmes: ItemProgrammes, settled: Flags) -> None:
         """Note which method treated the lone items."""
@@ -114,13 +129,29 @@ class _Run:
             self.notes.append(f"{rest} items without shared capacity: whole model each ({features}).")
         self.clock.end_stage("dynamic programmes", f"{count} of {settled.size} items")
 
+    def first_plans(self) -> None:
+        """Give every group a plan soon: the one to begin with where it is sound, and one by responses."""
+        open_parts = [p for p in self.parts if not p.settled]
+        until = self.clock.elapsed() + FIRST_SHARE * self.clock.left()
+        for number, now in enumerate(open_parts):
+            case = now.group.case
+            if self.start is not None:
+                now.take(plan_from_made(case, self.start.made[now.group.items]))
+            if case.n > 1 and not self.clock.over():
+                seconds = (until - self.clock.elapsed()) / (len(open_parts) - number)
+                now.take(first_plan(case, self.clock, max(seconds, 1e-3)))
+        if open_parts:
+            found = sum(p.plan is not None for p in open_parts)
+            self.clock.note("first plans", sum(p.cost for p in self.parts), sum(p.bound for p in self.parts))
+            self.clock.end_stage("first plans", f"{found} of {len(open_parts)} groups")
+
     def tied(self, number: int) -> bool:
-        """One group that is still without a plan; False when it has none."""
+        """One group that is not settled yet; False when it has no plan."""
         now = self.parts[number]
-        if now.plan is not None:
+        if now.settled or (now.plan is not None and self.clock.over()):
             return True
-        begun = None if self.start is None else plan_from_made(now.group.case, self.start.made[now.group.items])
-        found = solve_tied(now.group.case, self._share(number), begun)
+        found = solve_tied(now.group.case, self._share(number), now.plan)
+        now.settled = True
         if found.prices is not None:
             self.prices[now.group.resources] = found.prices
         self.clock.stages.extend(_named(found.stages, now.group))
@@ -128,14 +159,13 @@ class _Run:
         if found.verdict is Verdict.NO_PLAN_EXISTS:
             return False
         now.bound = max(now.bound, -math.inf if found.bound is None else found.bound)
-        if found.plan is not None and found.cost is not None:
-            now.plan, now.cost = found.plan, found.cost
-            now.bound = min(now.bound, now.cost)
+        now.take(found.plan)
+        now.bound = min(now.bound, now.cost)
         return True
 
     def _share(self, number: int) -> Limits:
         """Time in proportion to size; progress of a part told as progress of the whole."""
-        sizes = [p.group.case.n for p in self.parts[number:] if p.plan is None]
+        sizes = [p.group.case.n for p in self.parts[number:] if not p.settled]
         seconds = max(self.clock.left() * sizes[0] / sum(sizes), 1e-3)
         return replace(self.clock.limits, seconds=seconds, progress=self._teller(number))
 
