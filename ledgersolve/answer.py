@@ -42,7 +42,8 @@ class VariantAnswer:
 class Answer:
     """The answer to one workbook; ``as_json`` gives the fixed keys of the machine-readable form.
 
-    ``seconds`` holds read, check, solve, write and total. ``reason`` says in words why a run failed.
+    ``seconds`` holds read, check, solve, write and total. ``reason`` says in words why a run failed, and
+    ``may_pass`` that it was the machine's doing: the same workbook may be answered at another try.
     Checking without solving gives the outcome ``solved`` with no verdict: the workbook is fit to be solved.
     """
 
@@ -60,6 +61,7 @@ class Answer:
     plan: dict[str, Any] | None = None
     variants: tuple[VariantAnswer, ...] = ()
     reason: str = ""
+    may_pass: bool = False
 
     def as_json(self) -> dict[str, Any]:
         """The object that ``--json`` prints."""

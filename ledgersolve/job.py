@@ -176,12 +176,16 @@ class _Run:
         reason = str(trouble) if isinstance(trouble, AuditError) else _FAULT
         if isinstance(trouble, MemoryError):
             reason = _TOO_BIG
+        # a full disk, too many open files, an upgrade of the program under way
+        may_pass = isinstance(trouble, OSError | ImportError)
+        if may_pass:
+            reason = _MACHINE.format(getattr(trouble, "strerror", None) or "a part of the program was missing")
         returned = None
         try:
             returned = self.write_failure(reason)
         except Exception:
             logger.exception("%s: no copy could be written", self.shown_name)
-        return replace(self.answer(Outcome.FAILED), returned=returned, reason=reason)
+        return replace(self.answer(Outcome.FAILED), returned=returned, reason=reason, may_pass=may_pass)
 
     def write_failure(self, reason: str) -> Path:
         if self.reading is None:
@@ -241,6 +245,10 @@ _FAULT = (
 _TOO_BIG = (
     "The workbook is too big for this machine: it needs more memory than one job may use. Leave out lanes, "
     "customers or periods that cannot matter, or ask the administrator for more memory."
+)
+_MACHINE = (
+    "The machine got in the way ({}). Nothing in the workbook needs to be mended for it; please drop it again, "
+    "and tell whoever looks after LedgerSolve if it comes back like this once more."
 )
 _RECORDED = (
     ("OR-Tools", "ortools"), ("NumPy", "numpy"), ("pydantic", "pydantic"), ("XlsxWriter", "xlsxwriter"),

@@ -1,5 +1,6 @@
 """One workbook from path to returned copy: outcomes, names, nothing overwritten, failures answered."""
 
+import errno
 import hashlib
 import os
 import zipfile
@@ -164,6 +165,19 @@ def test_a_fault_of_our_own_shows_no_traceback(tmp_path, monkeypatch) -> None:
     assert answer.outcome is Outcome.FAILED
     assert "division" not in answer.reason
     assert answer.returned is not None
+
+
+@pytest.mark.parametrize("trouble", [OSError(errno.ENOSPC, "No space left on device"), ImportError("numpy")])
+def test_a_machine_that_gets_in_the_way_is_told_from_a_fault_of_our_own(tmp_path, monkeypatch, trouble) -> None:
+    """A full disk or a program in mid-upgrade may pass: the answer says so and asks for another try."""
+    def stopped(*_: object) -> None:
+        raise trouble
+
+    monkeypatch.setattr(job, "work", stopped)
+    answer = solve_workbook(good(tmp_path))
+    assert (answer.outcome, answer.may_pass) == (Outcome.FAILED, True)
+    assert "drop it again" in answer.reason
+    assert ("No space left" in answer.reason) == isinstance(trouble, OSError)
 
 
 def test_no_plan_exists_goes_back_to_be_fixed(tmp_path) -> None:

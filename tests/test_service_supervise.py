@@ -112,6 +112,12 @@ def test_a_failure_without_a_workbook_gets_one(folder):
         assert b"The audit differs." in b"".join(package.read(name) for name in package.namelist())
 
 
+def test_the_log_says_why_a_workbook_came_back_as_failed(folder, caplog):
+    """A fault of the program's own is answered in general words; its cause is for the administrator."""
+    assert supervise(claimed(folder, "fault")).outcome == "failed"
+    assert "KeyError: 'the cause'" in caplog.text
+
+
 def test_megabytes_of_chatter_do_no_harm(folder):
     """Garbage on standard output and megabytes on standard error are read and passed over."""
     assert supervise(claimed(folder, "chatter")).outcome == "solved"

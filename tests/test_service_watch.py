@@ -77,6 +77,19 @@ def test_a_workbook_that_stops_the_program_comes_back_after_three_attempts(tmp_p
     assert len(list((tmp_path / ".ledgersolve/done").glob("*/failed.*"))) == 3
 
 
+@pytest.mark.parametrize(("tries", "outcome"), [(3, "solved"), (4, "failed")])
+def test_a_machine_that_gets_in_the_way_costs_attempts_not_the_answer(tmp_path, monkeypatch, tries, outcome):
+    """A full disk at the first two tries is tried again; at the third the workbook comes back with the reason."""
+    monkeypatch.setenv("PYTHONPATH", str(HANDLERS))
+    (tmp_path / "private").mkdir()
+    drop(tmp_path / "served", "plan.xlsx", f"passing {tries}")
+    settings = quick_settings(private_folder=tmp_path / "private")
+    assert serve(tmp_path / "served", once=True, settings=settings, handler="handlers:solve") == 0
+    assert returned(tmp_path / "served") == [f"plan {outcome}.xlsx"]
+    if outcome == "failed":
+        assert "got in the way (full)" in status(tmp_path / "served")["alerts"][0]["why"]
+
+
 def _service(folder: Path) -> subprocess.Popen:
     code = (
         "import sys; from pathlib import Path; from ledgersolve.service.watch import serve;"

@@ -57,7 +57,7 @@ def _handle(
         limit_known=lambda seconds: says({"limit": seconds}),
     )
     words: dict[str, Any] = answer.as_json()
-    return {**words, "reason": getattr(answer, "reason", "")}
+    return {**words, "reason": getattr(answer, "reason", ""), "may_pass": getattr(answer, "may_pass", False)}
 
 
 def _write_result(target: Path, result: dict[str, Any]) -> None:

@@ -121,7 +121,10 @@ class _Supervisor:
         if ended.cause:
             logger.warning("job %s: %s\n%s", self.order.job, ended.cause, ended.last_words)
             return Report("crashed", ended.cause)
-        return self._checked(snapshot, words)
+        report = self._checked(snapshot, words)
+        if words.get("outcome") == "failed":  # the workbook says that the program is at fault; the log says why
+            logger.error("job %s: came back as failed\n%s", self.order.job, ended.last_words)
+        return report
 
     def _in_child(self, snapshot: Snapshot) -> tuple[Ended, dict[str, Any]]:
         into = self.private / "out"
@@ -146,6 +149,8 @@ class _Supervisor:
         outcome = words.get("outcome")
         if outcome not in _OUTCOMES:
             return Report("crashed", "the job ended without a sound result")
+        if outcome == "failed" and words.get("may_pass") is True:
+            return Report("crashed", str(words.get("reason") or "the machine got in the way").partition(". ")[0])
         shown = _shown(words)
         if words.get("returned") is None:
             reason = str(words.get("reason") or "The program met a fault of its own.")

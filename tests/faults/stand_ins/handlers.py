@@ -92,7 +92,23 @@ def _without(source, into, word, progress, limit_known):
     return SimpleNamespace(as_json=lambda: {"outcome": "failed", "returned": None}, reason="The audit differs.")
 
 
+def _fault(source, into, word, progress, limit_known):
+    os.write(2, b"KeyError: 'the cause'\n")
+    return _answer(source, into, "failed", {})
+
+
+def _passing(source, into, word, progress, limit_known):
+    """The machine gets in the way at the first two tries; their number is kept beside the private folders."""
+    tries = into.parent.parent / "tries"
+    tries.write_text(tries.read_text() + "x" if tries.exists() else "x")
+    if len(tries.read_text()) >= int(word.split()[1]):
+        return _solved(source, into, word, progress, limit_known)
+    answer = _answer(source, into, "failed", {})
+    return SimpleNamespace(as_json=answer.as_json, reason="The machine got in the way (full). Go.", may_pass=True)
+
+
 WORDS = {
     "slow": _slow, "fix": _fix, "crash": _crash, "quit": _quit, "hang": _hang, "glutton": _glutton,
     "chatter": _chatter, "nonsense": _nonsense, "half": _half, "outside": _outside, "without": _without,
+    "fault": _fault, "passing": _passing,
 }
