@@ -25,6 +25,8 @@ RE_PLANNED = 3
 """Full periods for which one more hour is re-planned in whole, if the time allows."""
 MOST_RESOURCES = 5
 """Resources that are asked about, the fullest ones."""
+HOURS_SHARE = 0.4
+"""Share of the time for hours with the plan's setups; the rest is for re-planning."""
 MORE = 0.1
 """Part of a resource's time that is given to it, or allowed as overtime, in addition."""
 NO_TIME = "not answered in the time given"
@@ -52,7 +54,8 @@ def bottlenecks(case: Case, solved: Solved[Plan], clock: Clock) -> Answered:
     if not resources:
         return Answered(question, "There is time enough for every plan: more of it would save nothing.", COLUMNS)
     asker = _Asker(case, solved.plan, solved.cost, solved.prices, clock)
-    hours = [(cell, asker.same_setups(*cell)) for cell in cells[:MOST_PERIODS] if not clock.over()]
+    hours = [(cell, asker.same_setups(*cell)) for cell in cells[:MOST_PERIODS]
+             if clock.left() > (1 - HOURS_SHARE) * clock.limits.seconds]
     paid = [r for r in resources if case.overtime_limit[r] > 0]
     asker.asks = len(resources) + len(paid) + 1 + RE_PLANNED
     rows = [_row(*told) for r in resources for told in _more_time(case, asker, r)]

@@ -13,7 +13,7 @@ single sourcing and the share rule are left out, which can only lower the bound.
 
 import numpy as np
 
-from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Floats
+from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
 from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.selection import Selection
 
@@ -43,13 +43,30 @@ def price_bound(case: Case, prices: Floats) -> float:
 
 def price_bound_of(lanes: Lanes, prices: Floats) -> float:
     """As ``price_bound``, for lanes already prepared; inf where no set of sites is allowed."""
-    needs = lanes.needs
-    price = np.minimum(prices, lanes.unmet_cost)[needs]
+    value, rest = _values(lanes, prices)
+    return rest + allowed_sets(lanes).pick(value)[0]
+
+
+def flip_bounds(case: Case, prices: Floats, opened: Flags) -> Floats:
+    """Shape (m,): lower bounds on every plan in which a site is not as in ``opened``, one site at a time.
+
+    Valid for any prices; inf for sites that the case's rules decide.
+    """
+    lanes, given = Lanes.of(case), np.asarray(prices, dtype=np.float64)
+    value, rest = _values(lanes, given)
+    sets = allowed_sets(lanes)
+    least, picked = sets.pick(value)
+    rise = sets.flips(value, picked)
+    # a site that the bound's own set already has the other way costs that set nothing more
+    return rest + least + np.where(np.isinf(rise) | (picked == opened), rise, 0.0)
+
+
+def _values(lanes: Lanes, prices: Floats) -> tuple[Floats, float]:
+    """Value of each site at these prices, and what every plan pays beside the values, rounding taken off."""
+    price = np.minimum(prices, lanes.unmet_cost)[lanes.needs]
     gain = np.array([_gain(lanes, j, price) for j in range(lanes.m)])
-    value = lanes.site_cost - gain
-    least, _ = allowed_sets(lanes).pick(value)
     size = float(np.abs(price).sum() + gain.sum() + np.abs(lanes.site_cost).sum() + abs(lanes.offset))
-    return lanes.offset + float(price.sum()) + least - ROUNDING * size
+    return lanes.site_cost - gain, lanes.offset + float(price.sum()) - ROUNDING * size
 
 
 def allowed_sets(lanes: Lanes) -> Selection:
