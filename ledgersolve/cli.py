@@ -4,21 +4,17 @@ import json
 import logging
 import shutil
 import sys
-from collections.abc import Callable, Iterator
-from contextlib import contextmanager
 from pathlib import Path
-from typing import Annotated
+from typing import Annotated, NoReturn
 
 import typer
-from rich.console import Console
 from rich.markup import escape
-from rich.table import Table
 
 from ledgersolve import __version__
-from ledgersolve.answer import Answer, Outcome, exit_code
+from ledgersolve.answer import exit_code
 from ledgersolve.contract.reading import Job
-from ledgersolve.mip import Progress
 from ledgersolve.shipped import shipped
+from ledgersolve.telling import console, errors, progress_line, returning, tell
 
 app = typer.Typer(
     name="ledgersolve",
@@ -27,18 +23,18 @@ app = typer.Typer(
     help="Planning workbooks in, decisions out: site selection and lot sizing.",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-console = Console()
-errors = Console(stderr=True)
-
 Files = Annotated[
     list[Path],
-    typer.Argument(help="Filled workbooks (.xlsx or .xlsm).", exists=True, dir_okay=False, metavar="FILE..."),
+    typer.Argument(help="Filled workbooks (.xlsx or .xlsm).", metavar="FILE...", show_default=False),
 ]
 Into = Annotated[
     Path | None,
     typer.Option(help="Folder for the returned workbooks; beside each file when left out.", file_okay=False),
 ]
-AsJson = Annotated[bool, typer.Option("--json", help="Print one JSON object a workbook, and nothing else.")]
+AsJson = Annotated[
+    bool,
+    typer.Option("--json", help="Print JSON and nothing else: one object a workbook, or the folder's state."),
+]
 Served = Annotated[Path, typer.Argument(help="The folder to serve; made on first use.", file_okay=False)]
 
 
@@ -79,28 +75,58 @@ def check(files: Files, into: Into = None, as_json: AsJson = False) -> None:
     _answer_all(files, into, as_json, solving=False)
 
 
+def _job(given: str) -> Job:
+    """The job of this name, however it is written."""
+    for job in Job:
+        if " ".join(given.replace("_", " ").replace("-", " ").split()).casefold() == job.value:
+            return job
+    names = " or ".join(f"'{job.value}'" for job in Job)
+    hint = "; put it in quotes" if any(given.casefold() in job.value.split() for job in Job) else ""
+    raise typer.BadParameter(f"{given!r} is no job; expected {names}{hint}")
+
+
 @app.command()
 def template(
-    job: Annotated[Job, typer.Argument(help="The job the workbook is for.", metavar="JOB")],
-    file: Annotated[Path | None, typer.Argument(help="Where to write it; JOB.xlsx when left out.")] = None,
+    job: Annotated[Job, typer.Argument(
+        help="The job the workbook is for: 'site selection' or 'lot sizing'.", metavar="JOB", parser=_job,
+        autocompletion=lambda: [each.value for each in Job],
+    )],
+    file: Annotated[
+        Path | None, typer.Argument(help="Where to write it; JOB.xlsx when left out.", metavar="FILE")
+    ] = None,
 ) -> None:
-    """Write an empty workbook with notes and drop-down lists; JOB is 'site selection' or 'lot sizing'."""
+    """Write an empty workbook with notes and drop-down lists for one of the two jobs."""
     from ledgersolve.contract.templates import write_template
 
     target = file or Path(f"{job.value}.xlsx")
+    target = target if target.suffix else target.with_name(f"{target.name}.xlsx")
+    if target.suffix.lower() != ".xlsx":
+        _wrong(f"{target}: a template is a workbook; give it a name that ends in .xlsx.")
     if target.exists():
-        errors.print(f"{escape(str(target))} is there already; name another file or move it away.")
-        raise typer.Exit(2)
-    write_template(job, target)
-    shown = escape(str(target))
-    console.print(f"Wrote [bold]{shown}[/bold]. Fill it in, then: ledgersolve solve '{shown}'", soft_wrap=True)
+        _wrong(f"{target} is there already; name another file or move it away.")
+    try:
+        target.parent.mkdir(parents=True, exist_ok=True)
+        write_template(job, target)
+    except OSError as trouble:
+        _wrong(f"{target} cannot be written ({trouble.strerror or trouble}); name another place.")
+    console.print(f"Wrote [bold]{escape(str(target))}[/bold]. Fill it in, then: ledgersolve solve "
+                  f"'{escape(str(target))}'", soft_wrap=True, highlight=False)
+
+
+def _wrong(*troubles: str) -> NoReturn:
+    """Say what is wrong with how the command was used, and end with 2."""
+    for trouble in troubles:
+        errors.print(trouble, markup=False, highlight=False, soft_wrap=True)
+    raise typer.Exit(2)
 
 
 @app.command()
 def watch(
     folder: Served,
-    once: Annotated[bool, typer.Option(help="Empty the inbox, then end.")] = False,
-    workers: Annotated[int | None, typer.Option(help="Workbooks solved at a time.", min=1)] = None,
+    once: Annotated[bool, typer.Option("--once", help="Empty the inbox, then end.")] = False,
+    workers: Annotated[
+        int | None, typer.Option(help="Workbooks solved at a time; one more place is kept for small ones.", min=1)
+    ] = None,
     cluster: Annotated[
         str | None, typer.Option(help="Address of a dask scheduler that runs the solves.", metavar="ADDRESS")
     ] = None,
@@ -150,6 +176,7 @@ def demo(
     ] = None,
 ) -> None:
     """Drop the demo workbooks into a folder, serve it once and say where the results are."""
+    from ledgersolve.service import board
     from ledgersolve.service.config import load_settings
     from ledgersolve.service.watch import serve
 
@@ -159,11 +186,19 @@ def demo(
     drops = sorted(shipped("inbox_demo").glob("*.xlsx"))
     for drop in drops:
         shutil.copyfile(drop, inbox / drop.name)
-    console.print(f"Dropped {len(drops)} invented workbooks into {escape(str(inbox))}; solving them now.")
-    code = serve(served, once=True, cluster=None, settings=load_settings(None))
-    console.print(f"\nThe results are in [bold]{escape(str(served / 'Returned'))}[/bold]:")
-    for returned in sorted((served / "Returned").iterdir()):
-        console.print(f"  {escape(returned.name)}", highlight=False, soft_wrap=True)
+    console.print(f"Dropped {len(drops)} invented workbooks into {inbox}; solving them takes a minute or less.",
+                  markup=False, highlight=False, soft_wrap=True)
+    with returning(lambda: board.status(served), len(drops)):
+        code = serve(served, once=True, cluster=None, settings=load_settings(None, log_level="WARNING"))
+    returned = sorted((served / "Returned").iterdir())
+    console.print(f"The results are in [bold]{escape(str(served / 'Returned'))}[/bold]; open the first one first:",
+                  highlight=False, soft_wrap=True)
+    for each in returned:
+        console.print(f"  {each.name}", markup=False, highlight=False, soft_wrap=True)
+    if len(returned) < len(drops):
+        console.print(f"Stopped with {len(returned)} of {len(drops)} back. To go on: "
+                      f"ledgersolve watch '{served}' --once", markup=False, highlight=False, soft_wrap=True)
+        code = code or 1
     raise typer.Exit(code)
 
 
@@ -176,75 +211,31 @@ def _unused(folder: Path) -> Path:
 
 
 def _answer_all(files: list[Path], into: Path | None, as_json: bool, *, solving: bool) -> None:
+    troubles = [trouble for file in files if (trouble := _unfit(file))]
+    if troubles:
+        _wrong(*troubles)
     from ledgersolve.job import handle
 
     answers = []
-    for file in files:
-        with _progress_line(file, quiet=as_json) as progress:
-            answer = handle(file, into or file.parent, solve=solving, progress=progress)
-        answers.append(answer)
-        if not as_json:
-            _tell(answer, solving)
+    try:
+        for file in files:
+            with progress_line(file, quiet=as_json) as progress:
+                answer = handle(file, into or file.parent, solve=solving, progress=progress)
+            answers.append(answer)
+            if not as_json:
+                tell(answer, solving=solving)
+    except KeyboardInterrupt:
+        errors.print(f"Stopped at {file.name}; {len(answers)} of {len(files)} done, nothing half written.",
+                     markup=False, highlight=False, soft_wrap=True)
+        raise typer.Exit(130) from None
     if as_json:
         told = [answer.as_json() for answer in answers]
         print(json.dumps(told[0] if len(told) == 1 else told, indent=2))
     raise typer.Exit(exit_code(answers))
 
 
-@contextmanager
-def _progress_line(file: Path, *, quiet: bool) -> Iterator[Callable[[Progress], None] | None]:
-    """Show the running solve on one line of a terminal; nothing elsewhere."""
-    if quiet or not errors.is_terminal:
-        yield None
-        return
-    with errors.status(f"{escape(file.name)}: reading") as line:
-
-        def show(progress: Progress) -> None:
-            line.update(f"{escape(file.name)}: {escape(progress_words(progress))}")
-
-        yield show
-
-
-def progress_words(progress: Progress) -> str:
-    """One line on where a solve stands."""
-    words = f"{progress.stage}, {progress.seconds:.0f} s"
-    if progress.best is not None:
-        words += f", best {progress.best:,.0f}"
-        if progress.bound is not None and progress.best:
-            above = 100 * max(0.0, progress.best - progress.bound) / abs(progress.best)
-            words += f", at most {above:.2f} % dearer than the best"
-    return words
-
-
-def _tell(answer: Answer, solving: bool) -> None:
-    name = escape(Path(answer.file).name)
-    if answer.outcome is Outcome.FAILED:
-        console.print(f"[bold]{name}[/bold]: failed. {escape(answer.reason)}")
-    elif answer.outcome is Outcome.TO_FIX:
-        verdict = f", {answer.verdict.value}" if answer.verdict else ""
-        console.print(f"[bold]{name}[/bold]: to fix{verdict}")
-    elif not solving:
-        console.print(f"[bold]{name}[/bold]: fit to be solved")
-    else:
-        console.print(f"[bold]{name}[/bold]: {_solved_words(answer)}")
-    if answer.problems:
-        console.print(_problem_table(answer))
-    if answer.returned is not None:
-        console.print(f"  returned: {escape(str(answer.returned))}", soft_wrap=True, highlight=False)
-
-
-def _solved_words(answer: Answer) -> str:
-    verdict = answer.verdict.value if answer.verdict else "solved"
-    cost = "" if answer.total_cost is None else f", total cost {answer.total_cost:,.2f}"
-    bound = "" if answer.lower_bound is None else f", no plan costs less than {answer.lower_bound:,.2f}"
-    return verdict + cost + bound
-
-
-def _problem_table(answer: Answer) -> Table:
-    table = Table("", "where", "found", "expected", "what to do", box=None, pad_edge=False)
-    for problem in answer.problems:
-        told = problem.as_json()
-        where = f"{told['sheet']} {told['cell']} {told['title']}".strip()
-        table.add_row(*(escape(text) for text in (
-            told["severity"], where, told["found"], told["expected"], told["remedy"])))
-    return table
+def _unfit(file: Path) -> str:
+    """Why a path cannot be answered at all; empty where it can."""
+    if file.is_dir():
+        return f"{file} is a folder; name the workbooks in it, or serve it: ledgersolve watch '{file}'"
+    return "" if file.exists() else f"{file} is not there; check the name and the folder."

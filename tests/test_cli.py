@@ -60,6 +60,31 @@ def test_wrong_usage_is_two(tmp_path) -> None:
     assert run("template", "cooking").returncode == 2
 
 
+def test_paths_that_cannot_be_answered_are_all_named(tmp_path) -> None:
+    """A folder and a missing file: one line each, with what to do, and no workbook is touched."""
+    done = run("solve", tmp_path, tmp_path / "none.xlsx")
+    assert done.returncode == 2
+    assert len(done.stderr.splitlines()) == 2
+    assert "ledgersolve watch" in done.stderr and "is not there" in done.stderr
+
+
+def test_faults_are_one_line_each_for_programs(bad) -> None:
+    """Where output is no terminal a fault is one line with its place, not a folded table."""
+    (line,) = [line for line in run("check", bad).stdout.splitlines() if "Customers B2" in line]
+    assert line.strip().startswith("error: Customers B2 Demand: found")
+
+
+def test_a_template_goes_where_it_is_asked_for(tmp_path) -> None:
+    """A missing folder is made, a missing ending added, another ending and an unwritable place refused."""
+    assert run("template", "Lot-Sizing", tmp_path / "new" / "lots").returncode == 0
+    assert (tmp_path / "new" / "lots.xlsx").exists()
+    assert run("template", "lot sizing", tmp_path / "lots.csv").returncode == 2
+    done = run("template", "lot sizing", tmp_path / "new" / "lots.xlsx" / "x.xlsx")
+    assert done.returncode == 2
+    assert len(done.stderr.splitlines()) == 1
+    assert "quotes" in run("template", "lot").stderr
+
+
 def test_a_template_is_written_once(tmp_path) -> None:
     """The template appears under the name given and is not overwritten."""
     target = tmp_path / "empty.xlsx"
