@@ -60,6 +60,15 @@ def test_the_board_is_written_whole(layout):
     assert "at most 20.00 could be saved" in (layout.folder / "Status.html").read_text()
 
 
+def test_page_and_data_have_the_rights_of_the_folder(layout):
+    """In a folder for one group nobody else reads what workbooks cost."""
+    for mode, wanted in ((0o2770, 0o660), (0o2750, 0o640)):
+        layout.folder.chmod(mode)
+        write(layout)
+        for name in ("Status.html", "status.json"):
+            assert (layout.folder / name).stat().st_mode & 0o7777 == wanted
+
+
 def test_the_board_shows_all_services(layout):
     """Two processes on one folder: what each runs stands on the page of either, what both see only once."""
     alert = {"name": "x", "why": "a link"}

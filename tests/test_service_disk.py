@@ -56,13 +56,21 @@ def test_a_short_write_is_finished(tmp_path, monkeypatch):
     assert (tmp_path / "a").read_bytes() == b"0123456789"
 
 
-def test_returned_files_are_for_the_group(tmp_path):
-    """Mode 0664 and the group of the folder they go to; never executable, never set-id."""
-    (tmp_path / "a").write_bytes(b"x")
-    (tmp_path / "a").chmod(0o6755)
-    Disk().open_up(tmp_path / "a", tmp_path)
-    status = (tmp_path / "a").stat()
-    assert status.st_mode & 0o7777 == 0o664 and status.st_gid == tmp_path.stat().st_gid
+@pytest.mark.parametrize(("folder_mode", "umask", "mode"), [
+    (0o2775, 0o022, 0o664), (0o2770, 0o022, 0o660), (0o2775, 0o007, 0o660), (0o2770, 0o077, 0o660),
+    (0o755, 0o022, 0o644), (0o700, 0o022, 0o600), (0o3771, 0o022, 0o660),
+])  # fmt: skip
+def test_returned_files_have_the_rights_of_their_folder(tmp_path, monkeypatch, folder_mode, umask, mode):
+    """Group and rights of the folder they go to, others no more than the umask leaves; never executable or set-id."""
+    monkeypatch.setattr("ledgersolve.service.disk._UMASK", umask)
+    folder, path = tmp_path / "Returned", tmp_path / "a"
+    folder.mkdir()
+    folder.chmod(folder_mode)
+    path.write_bytes(b"x")
+    path.chmod(0o6755)
+    Disk().open_up(path, folder)
+    status = path.stat()
+    assert status.st_mode & 0o7777 == mode and status.st_gid == folder.stat().st_gid
 
 
 def test_everything_written_is_brought_to_the_disk_first(tmp_path, monkeypatch):

@@ -28,14 +28,16 @@ def write_board(layout: Layout, disk: Disk, beacon: Path, own: dict[str, Any]) -
     """Write this process's sign of life, then the page and its data from those of all processes."""
     _put(layout, disk, beacon, json.dumps(own).encode("ascii"))
     state = gather(layout, disk, own)
-    _put(layout, disk, layout.folder / "status.json", json.dumps(state, indent=1).encode("ascii"), 0o664)
-    _put(layout, disk, layout.folder / "Status.html", render(state).encode("utf-8"), 0o664)
+    _put(layout, disk, layout.folder / "status.json", json.dumps(state, indent=1).encode("ascii"), public=True)
+    _put(layout, disk, layout.folder / "Status.html", render(state).encode("utf-8"), public=True)
 
 
-def _put(layout: Layout, disk: Disk, target: Path, content: bytes, mode: int = 0o600) -> None:
+def _put(layout: Layout, disk: Disk, target: Path, content: bytes, *, public: bool = False) -> None:
     tmp = layout.new_tmp("page")
     try:
-        disk.write_new(tmp, content, mode)
+        disk.write_new(tmp, content)
+        if public:
+            disk.open_up(tmp, target.parent)
         disk.replace(tmp, target)
     except OSError:
         with suppress(OSError):

@@ -15,6 +15,8 @@ _BINARY = getattr(os, "O_BINARY", 0)
 _READ = os.O_RDONLY | _NO_FOLLOW | _NO_BLOCK | _BINARY | getattr(os, "O_CLOEXEC", 0)
 _CREATE = os.O_WRONLY | os.O_CREAT | os.O_EXCL | _NO_FOLLOW | _BINARY | getattr(os, "O_CLOEXEC", 0)
 _NO_SYNC_HERE = {errno.EINVAL, errno.ENOTSUP, errno.EOPNOTSUPP, errno.ENOSYS}
+_UMASK = os.umask(0o077)  # can only be read by setting it: done once, before there are threads
+os.umask(_UMASK)
 
 
 @dataclass(frozen=True)
@@ -78,6 +80,14 @@ class Disk:
         descriptor = self.open_to_read(path)
         with os.fdopen(descriptor, "rb") as stream:
             return stream.read(most)
+
+    def may_read(self, path: Path) -> bool:
+        """Whether the rights of a file let this account read it."""
+        return os.access(path, os.R_OK)
+
+    def may_change(self, folder: Path) -> bool:
+        """Whether the rights of a folder let this account take files out of it."""
+        return os.access(folder, os.W_OK | os.X_OK)
 
     def free_bytes(self, folder: Path) -> int:
         """Bytes that this account may still write there."""
@@ -153,10 +163,16 @@ class Disk:
             os.close(descriptor)
 
     def open_up(self, path: Path, like: Path) -> None:
-        """Give a returned file the mode 0664 and the group of the folder it goes to, as far as allowed."""
-        path.chmod(0o664)
+        """Give a file the group of the folder it goes to and that folder's rights to read and write.
+
+        Owner and group get what the folder gives them; others may read where the folder lets them in and
+        the umask does not forbid it. Never executable, never set-id.
+        """
+        folder = like.stat()
+        others = 0o004 if folder.st_mode & 0o005 == 0o005 else 0
+        path.chmod(0o600 | folder.st_mode & 0o060 | others & ~_UMASK)
         if hasattr(os, "chown"):
             try:
-                os.chown(path, -1, like.stat().st_gid)
+                os.chown(path, -1, folder.st_gid)
             except PermissionError:
                 return  # not a member of that group: the folder's own rights decide
