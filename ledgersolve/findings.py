@@ -8,6 +8,9 @@ from typing import Generic, TypeVar
 
 PlanT = TypeVar("PlanT")
 
+NOT_ANSWERED = "not answered in the time given"
+"""Words in a row of an answer that has no figure because the time ran out."""
+
 
 @dataclass(frozen=True)
 class Check:
@@ -85,12 +88,14 @@ class Explanation(Generic[PlanT]):
     """Why no plan exists: what cannot hold together, smallest change first, and the closest plan.
 
     ``closest`` breaks as few rules as can be, or is None where nothing sensible comes close;
-    ``closest_words`` says what it leaves open (``"leaves 400 pallets unmet at 3 customers"``).
+    ``closest_words`` says what it leaves open (``"leaves 400 pallets unmet at 3 customers"``); ``shown`` are
+    tables of the closest plan, of four columns at most.
     """
 
     conflicts: tuple[Conflict, ...]
     closest: PlanT | None = None
     closest_words: str = ""
+    shown: "tuple[Answered, ...]" = ()
 
 
 @dataclass(frozen=True)
@@ -116,8 +121,10 @@ class Answered:
     """A question a manager asks, answered ahead by solving.
 
     ``words`` is the answer in one to three sentences and says whether it is exact or an interval; ``rows``
-    are the figures behind it (None = no figure exists, with the reason in a text column). ``headline``
-    answers belong on the Decision page too. ``seconds`` is the time the answer took.
+    are the figures behind it (None = no figure exists, with the reason in a text column; a row that the time
+    did not suffice for has ``NOT_ANSWERED`` in a text column). The words speak of answered rows only.
+    ``headline`` answers belong on the Decision page too: never one of whose rows none is answered. ``seconds``
+    is the time the answer took.
     """
 
     question: str
@@ -127,3 +134,8 @@ class Answered:
     picture: Picture | None = None
     headline: bool = False
     seconds: float = 0.0
+
+    @property
+    def unanswered(self) -> int:
+        """Rows that were not answered, or not in whole, in the time given."""
+        return sum(any(isinstance(cell, str) and NOT_ANSWERED in cell for cell in row) for row in self.rows)

@@ -10,7 +10,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from ledgersolve.findings import Conflict, Explanation, Subject
+from ledgersolve.findings import Answered, Column, Conflict, Explanation, Subject
 from ledgersolve.lot_sizing.case import Case, Floats
 from ledgersolve.lot_sizing.elastic import (
     Slack,
@@ -23,17 +23,20 @@ from ledgersolve.lot_sizing.elastic import (
     without_ties,
 )
 from ledgersolve.lot_sizing.groups import part
-from ledgersolve.lot_sizing.plan import Plan, plan_from_made, resource_need
+from ledgersolve.lot_sizing.missing_time import figure, missing_time
+from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.solve import solve
-from ledgersolve.lot_sizing.totals import least_time, overdrawn
 from ledgersolve.mip import Clock, Limits
 
+MOST_LOTS = 400
+"""Lots of the closest plan that are shown."""
 MOST_LISTED = 40
 """Conflicts listed; the smallest ones come first."""
 TRIED_REMEDIES = 12
 """Items for which each rule is tried for whether lifting it alone would help."""
-SHORTFALL_SHARE = 0.6
-"""Share of the time for the least shortfall; the rest is for the cheapest plan that has it."""
+SHORTFALL_SHARE, CHEAP_SHARE = 0.5, 0.5
+"""Shares of the time left for the least shortfall, and then for the cheapest plan that has it; what they leave is for
+the capacity that would be enough."""
 
 
 def explain(case: Case, limits: Limits) -> Explanation[Plan]:
@@ -47,17 +50,31 @@ def explain(case: Case, limits: Limits) -> Explanation[Plan]:
     conflicts = [words for rank, item in enumerate(slacks)
                  for words in _item_conflicts(case, item, slacks[item], clock, rank < TRIED_REMEDIES)]
     possible = mended(case, slacks)
-    conflicts += _running_totals(possible)
     plan, short = _closest(case, possible, slacks, clock)
-    if plan is not None:
-        conflicts += _time_conflicts(case, plan, short)
+    if case.resources:
+        conflicts += missing_time(possible, plan, short, clock)
     conflicts.sort(key=lambda conflict: conflict.amount)
-    return Explanation(tuple(conflicts[:MOST_LISTED]), plan, _closest_words(case, plan, short, slacks))
+    words = _closest_words(case, plan, short, slacks)
+    shown = () if plan is None else (closest_lots(case, plan, short),)
+    return Explanation(tuple(conflicts[:MOST_LISTED]), plan, words, shown)
 
 
-def figure(value: float) -> str:
-    """A quantity in words: at most two decimals, thousands apart."""
-    return f"{value:,.2f}".rstrip("0").rstrip(".")
+def closest_lots(case: Case, plan: Plan, short: Floats) -> Answered:
+    """List the lots of the closest plan, with what is missing where and whom it leaves short."""
+    rows: list[tuple[str | float | None, ...]] = []
+    for t in range(case.t):
+        lacking = [case.resources[r] for r in np.flatnonzero(short[:, t] > 0)] if short.size else []
+        for k in np.flatnonzero(plan.setup[:, t] | (plan.lost[:, t] > 0)).tolist():
+            notes = []
+            if case.item_resource[k] >= 0 and case.resources[int(case.item_resource[k])] in lacking:
+                notes.append(f"{case.resources[int(case.item_resource[k])]} lacks time")
+            if plan.lost[k, t] > 0:
+                notes.append(f"{figure(float(plan.lost[k, t]))} of demand unmet")
+            rows.append((case.periods[t], case.items[k], float(plan.made[k, t]), "; ".join(notes)))
+    more = f" The first {MOST_LOTS} of {len(rows)} rows are shown." if len(rows) > MOST_LOTS else ""
+    columns = (Column("Period"), Column("Item"), Column("Lot", "number"), Column("What is not kept"))
+    return Answered("The plan that comes closest", f"It keeps every rule apart from what the last column says.{more}",
+                    columns, tuple(rows[:MOST_LOTS]))
 
 
 # ------------------------------------------------------------------ items
@@ -121,44 +138,6 @@ def _what_helps(case: Case, item: int, clock: Clock) -> list[tuple[str, Subject]
     return helps
 
 
-# ------------------------------------------------------------------ time
-
-
-def _running_totals(case: Case) -> Iterator[Conflict]:
-    """Resources whose time up to some period does not even suffice for the fewest setups; the worst period."""
-    need, excess = least_time(case), overdrawn(case)
-    for r in np.flatnonzero(excess.any(axis=1)).tolist():
-        name, t = case.resources[r], int(np.argmax(excess[r]))
-        code = case.periods[t]
-        extra = " with all overtime" if case.overtime_limit[r] > 0 else ""
-        yield Conflict(
-            f"{name} is {figure(excess[r, t])} short up to {case.period_unit} {code}: the demand until then "
-            f"needs at least {figure(need[r, t])} of its time, there are {figure(need[r, t] - excess[r, t])}{extra}.",
-            f"Give {name} {figure(excess[r, t])} more up to {case.period_unit} {code}, or move or drop demand.",
-            float(excess[r, t]), _capacity_cells(case, r, t),
-        )
-
-
-def _time_conflicts(case: Case, plan: Plan, short: Floats) -> Iterator[Conflict]:
-    need = resource_need(case, plan.made)
-    for r, t in zip(*np.nonzero(short > 0), strict=True):
-        name, period = case.resources[r], f"{case.period_unit} {case.periods[t]}"
-        have = case.capacity[r, t] + case.overtime_limit[r]
-        extra = " with all overtime" if case.overtime_limit[r] > 0 else ""
-        missing = figure(short[r, t])
-        yield Conflict(
-            f"Capacity of {name} is {missing} short in {period}: needs {figure(need[r, t])}, "
-            f"has {figure(have)}{extra}.",
-            f"Give {name} {missing} more in {period}; the plan with the least shortfall needs it there.",
-            float(short[r, t]), _capacity_cells(case, int(r), int(t)),
-        )
-
-
-def _capacity_cells(case: Case, resource: int, period: int) -> tuple[Subject, ...]:
-    name = case.resources[resource]
-    return Subject("Capacity", (name, case.periods[period]), ""), Subject("Resources", (name,), "Capacity")
-
-
 # ------------------------------------------------------------------ the closest plan
 
 
@@ -174,7 +153,7 @@ def _closest(
         return None, none
     short = none if least is None else shortfall(possible, least.made)
     given = with_time(possible, short)
-    cheap = solve(given, replace(clock.limits, seconds=max(0.5, clock.left()))).plan
+    cheap = solve(given, replace(clock.limits, seconds=max(0.5, CHEAP_SHARE * clock.left())), least).plan
     plan = cheap or least
     if plan is None:
         return None, none
@@ -192,8 +171,8 @@ def _closest_words(case: Case, plan: Plan | None, short: Floats, slacks: dict[in
     if short.any():
         names = [case.resources[r] for r in np.flatnonzero(short.any(axis=1))]
         count = int(np.count_nonzero(short))
-        cells = "1 period" if count == 1 else f"{count} resource periods"
-        parts.append(f"needs {figure(float(short.sum()))} more time in {cells} ({', '.join(names[:5])})")
+        cells = "1 period" if count == 1 else f"{count} periods"
+        parts.append(f"needs {figure(float(short.sum()))} more time units in {cells} ({', '.join(names[:5])})")
     unmet = sum(float(slack.unmet.sum()) for slack in slacks.values())
     if unmet > 0:
         parts.append(f"leaves {figure(unmet)} of demand unmet")

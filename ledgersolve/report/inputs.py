@@ -157,7 +157,8 @@ class NoPlan:
     """A workbook that was read well and has no plan to show.
 
     ``what`` is ``no plan exists``, ``none found`` or ``failed``; ``words`` add what is known (for
-    ``failed``: what went wrong, in the analyst's words). ``bound`` is proven, or None.
+    ``failed``: what went wrong, in the analyst's words). ``bound`` is proven, or None. ``closest`` are tables
+    of the plan that comes closest, of four columns at most.
     """
 
     workbook: Workbook
@@ -167,6 +168,7 @@ class NoPlan:
     conflicts: tuple[Conflict, ...] = ()
     bound: float | None = None
     stages: Sequence[tuple[str, float]] = field(default=())
+    closest: tuple[Answered, ...] = ()
 
 
 def _there(plan: PlanT | None) -> PlanT:

@@ -120,7 +120,7 @@ def without_plan(
     words = f"The plan that comes closest {why.closest_words}." if why.closest_words else ""
     given = NoPlan(
         reading, solved.verdict.value, NO_FACTS, words, why.conflicts, solved.bound,
-        tuple((stage.name, stage.seconds) for stage in solved.stages),
+        tuple((stage.name, stage.seconds) for stage in solved.stages), why.shown,
     )
     return Worked(
         solved, None, wanted_names("no plan"),
