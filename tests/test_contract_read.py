@@ -135,7 +135,7 @@ def test_thirty_planted_faults_of_a_site_workbook_are_reported_exactly(tmp_path)
     ("Lanes", "A3", "Did you mean “HAM”?"),
     ("Settings", "B3", "Did you mean EUR?"),
     ("Sites", "G15", "swapped"),
-    ("Sites", "B5", "without a thousands separator"),
+    ("Sites", "B5", "Type 1200.5 as a number"),
 ])
 def test_remedies_say_what_to_do(tmp_path, sheet, cell, word):
     """Remedies name the near miss or the way out."""

@@ -18,7 +18,9 @@ START = Entry("Start", "", Holds.DATE, "2027-01-04")
     ("1e3", (1000,)), ("0.125", (0.125,)), ("1200.500", (1200.5,)), ("\u22123", (-3,)), ("1 200", (1200,)),
     ("1\u202f200\u202f000.5", (1200000.5,)), ("1'200", (1200,)), ("007", (7,)),
     ("1,200", (1200, 1.2)), ("1.200,50", (1200.5, 1.2005)), ("1,200.50", (1200.5, 1.2005)), ("1.200", (1200, 1.2)),
-    ("12,5", (125, 12.5)), ("1,234,567", (1234567,)), ("1.234.567", (1234567,)), ("-1,5", (-1.5, -15)),
+    ("12,5", (12.5,)), ("1,234,567", (1234567,)), ("1.234.567", (1234567,)), ("-1,5", (-1.5,)), ("0,125", (0.125,)),
+    ("1234,567", (1234.567,)), (",5", (0.5,)), ("190.000,00", (190000, 190)), ("1.234.567,89", (1234567.89,)),
+    ("1,200,50", ()), ("1234,567.5", ()), ("1.2,345", ()), ("-1.200,5", (-1200.5, -1.2005)),
     ("abc", ()), ("", ()), ("nan", ()), ("inf", ()), ("0x10", ()), ("1_000", ()), ("12 km", ()), ("5 %", ()),
     ("1 2", ()), ("12-", ()), ("(5)", ()), ("\u0663", ()), ("1.2.3.4", ()), (",", ()), (".", ()), ("1 20", ()),
 ])
@@ -41,6 +43,28 @@ def test_a_text_with_separators_is_an_error_that_shows_its_readings(text):
     assert fault.kind == "ambiguous number"
     for meaning in values.readings(text):
         assert f"{meaning:g}" in fault.found or f"{meaning:.15g}" in fault.found
+
+
+LANE, ROAD = Entry("Unit cost", ""), Entry("Road factor", "", low=1, high=100)
+
+
+@pytest.mark.parametrize(("text", "entry", "found", "remedy"), [
+    ("7,35", LANE, "which means 7.35 with a decimal comma", "Type 7.35 as a number, with the decimal sign"),
+    ("1,25", ROAD, "which means 1.25 with a decimal comma", "Type 1.25 as a number, with the decimal sign"),
+    ("52,08", LATITUDE, "which means 52.08 with a decimal comma", "Type 52.08 as a number, with"),
+    ("1,234,567", LANE, "which means 1234567 with thousands commas", "Type 1234567 as a number."),
+    ("190.000,00", LANE, "which is 190000 with a decimal comma and 190 with a decimal point",
+     "Type 190000 as a number."),
+    ("1,250", ROAD, "which can be read as 1250 or 1.25", "Type 1.25 as a number, with the decimal sign of your own "
+     "program. The other reading is outside the limits."),
+    ("1,250", LANE, "which can be read as 1250 or 1.25", "Type the one that is meant as a number"),
+    ("1.250", LANE, "which can be read as 1250 or 1.25", "Type the one that is meant as a number"),
+])
+def test_the_advice_names_the_number_to_type_where_it_can_be_told(text, entry, found, remedy):
+    """Only what separators and limits leave open is left to the analyst; no impossible reading is shown."""
+    fault = values.text_number(text, entry)
+    assert fault.found == f"the text \u201c{text}\u201d, {found}"
+    assert fault.remedy.startswith(remedy)
 
 
 def test_limits_may_leave_one_reading():

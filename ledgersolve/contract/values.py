@@ -12,8 +12,7 @@ from ledgersolve.workbook.text import alike, cell_text, clean, nearest, serial_d
 
 _PLAIN = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
 _SPACED = re.compile(r"[+-]?\d{1,3}(?:[ \u00a0\u2009\u202f'’]\d{3})+(?:\.\d+)?", re.ASCII)
-_THOUSANDS = re.compile(r"[+-]?[1-9]\d{0,2}\.\d{3}", re.ASCII)
-_GROUPS = re.compile(r"\d{1,3}(?:\.\d{3})+", re.ASCII)
+_GROUPED = re.compile(r"[+-]?[1-9]\d{0,2}(?:(?:\.\d{3})+|(?:,\d{3})+)", re.ASCII)
 _SEPARATED = re.compile(r"[+-]?[\d.,]*\d[\d.,]*", re.ASCII)
 _LEADING = re.compile(r"\D{0,4}[\d.,]*\d[\d.,]*\s*\D{1,12}|\D{1,4}[\d.,]*\d[\d.,]*", re.ASCII)
 _DAY_TEXT = re.compile(r"\d{1,4}[./-]\d{1,2}[./-]\d{1,4}", re.ASCII)
@@ -24,30 +23,39 @@ _NOTHING = frozenset({"-", "–", "—", "n/a", "na", "none", "nil", "unlimited"
 
 
 def readings(text: str) -> tuple[float, ...]:
-    """The numbers a text can mean: none, one, or several where the separators leave it open.
+    """The numbers a text can mean: none, one, or two where the separators leave it open; the likelier first.
 
-    A comma is a decimal sign in some countries and a thousands separator in others, a point likewise where
-    three digits follow one to three; so ``1,200`` has two readings and ``12.5`` has one. A comma never
-    leaves only one reading: ``12,5`` is shown as 12.5 or 125.
+    A comma is a decimal sign in some countries and a thousands separator in others, a point likewise. Digits
+    behind the one separator of a text are thousands only where they are exactly three and one to three others,
+    no zero first, stand before: so ``1,200`` has two readings and ``7,35`` has one. Several equal separators are
+    thousands. Of two different ones the last is the decimal sign; what the text would be with the first one as
+    decimal sign is shown too, where that stands once.
     """
     text = text.replace("\u2212", "-")
-    if _THOUSANDS.fullmatch(text):
-        return (float(text.replace(".", "")), float(text))
-    if _PLAIN.fullmatch(text):
-        return (float(text),)
     if _SPACED.fullmatch(text):
         return (float(re.sub(r"[^\d.+-]", "", text)),)
+    if _PLAIN.fullmatch(text) and not _GROUPED.fullmatch(text):
+        return (float(text),)
     if not _SEPARATED.fullmatch(text):
         return ()
-    found: list[float] = []
-    for decimal, thousands in ((",", "."), (".", ",")):
-        whole = text.split(decimal)[0].lstrip("+-")
-        if whole.count(thousands) > 1 and not _GROUPS.fullmatch(whole.replace(thousands, ".")):
-            continue
-        candidate = text.replace(thousands, "").replace(decimal, ".")
-        if _PLAIN.fullmatch(candidate) and float(candidate) not in found:
-            found.append(float(candidate))
-    return tuple(sorted(found, reverse=True))
+    signs = sorted({character for character in text if character in ",."}, key=text.rfind)
+    if len(signs) == 2:
+        return _mixed(text, *signs)
+    found = [float(text.replace(signs[0], ""))] if _GROUPED.fullmatch(text) else []
+    if text.count(signs[0]) == 1:
+        found.append(float(text.replace(signs[0], ".")))
+    return tuple(found)
+
+
+def _mixed(text: str, thousands: str, decimal: str) -> tuple[float, ...]:
+    """Readings of a text with both separators, of which ``decimal`` stands last."""
+    whole, _, part = text.partition(decimal)
+    if not _GROUPED.fullmatch(whole) or not (part == "" or part.isdigit()):
+        return ()
+    found = [float(f"{whole.replace(thousands, '')}.{part}")]
+    if whole.count(thousands) == 1:
+        found.append(float(f"{whole.replace(thousands, '.')}{part}"))
+    return tuple(dict.fromkeys(found))
 
 
 def number_recheck(entry: Entry) -> tuple[Recheck, float | None, float | None]:
@@ -111,9 +119,7 @@ def text_number(words: str, entry: Entry) -> float | Fault:
         return fitting[0]
     found = f"the text {quoted(words)}"
     if meanings:
-        both = " or ".join(shown(value) for value in meanings)
-        return _number_fault(entry, "ambiguous number", f"{found}, which can be read as {both}",
-                             "Type the number into a number cell, without a thousands separator.")
+        return _separated(words, meanings, fitting, entry)
     if _DAY_TEXT.fullmatch(words):
         return _number_fault(entry, "date instead of number", found, "Type the number.")
     if words.casefold() in _NOTHING:
@@ -123,6 +129,34 @@ def text_number(words: str, entry: Entry) -> float | Fault:
     else:
         remedy = f"Type a number{or_empty(entry)}."
     return _number_fault(entry, "number expected", found, remedy)
+
+
+def _separated(words: str, meanings: tuple[float, ...], fitting: list[float], entry: Entry) -> Fault:
+    """The fault of a number typed with separators: which number to type, where one can be told."""
+    found, last = f"the text {quoted(words)}", words.rstrip("0123456789")[-1:] or "."
+    name, other = ("comma", "point") if last == "," else ("point", "comma")
+    if len(meanings) == 1:
+        use = f"thousands {name}s" if words.count(last) > 1 else f"a decimal {name}"
+        found += f", which means {shown(meanings[0])} with {use}"
+    elif "," in words and "." in words:
+        found += (f", which is {shown(meanings[0])} with a decimal {name} and {shown(meanings[1])} with a decimal "
+                  f"{other}")
+    else:
+        found += f", which can be read as {shown(meanings[0])} or {shown(meanings[1])}"
+    mixed = "," in words and "." in words and meanings[0] in fitting
+    if len(meanings) == 1 or mixed:
+        remedy = _typed(meanings[0])
+    elif len(fitting) == 1:
+        remedy = f"{_typed(fitting[0])} The other reading is outside the limits."
+    else:
+        remedy = "Type the one that is meant as a number, without a thousands separator."
+    return _number_fault(entry, "ambiguous number", found, remedy)
+
+
+def _typed(value: float) -> str:
+    """The advice to type a number, whose decimal sign depends on the analyst's program."""
+    sign = "" if value == int(value) else ", with the decimal sign of your own program"
+    return f"Type {shown(value)} as a number{sign}."
 
 
 def text(cell: Cell, entry: Entry, date1904: bool) -> str | Fault:
