@@ -3,6 +3,7 @@
 import hashlib
 import logging
 import os
+import re
 import secrets
 import time
 from collections.abc import Callable, Iterator, Sequence
@@ -250,6 +251,9 @@ _MACHINE = (
     "The machine got in the way ({}). Nothing in the workbook needs to be mended for it; please drop it again, "
     "and tell whoever looks after LedgerSolve if it comes back like this once more."
 )
+_FORMER = re.compile(r"(?<=\S)(?: (?:solved|to fix|failed)(?: (?:[2-9]|[1-9]\d{1,2}))?)+$")
+"""Endings of names that earlier answers gave; a number behind them is at most 999, so that a year stays."""
+
 _RECORDED = (
     ("OR-Tools", "ortools"), ("NumPy", "numpy"), ("pydantic", "pydantic"), ("XlsxWriter", "xlsxwriter"),
 )
@@ -293,11 +297,14 @@ def _sha256(path: Path) -> str:
 
 
 def _publish(into: Path, shown_name: str, word: str, write: Callable[[Path], None]) -> Path:
-    """Write under a hidden name, then put the finished file in place; nothing is ever overwritten."""
+    """Write under a hidden name, then put the finished file in place; nothing is ever overwritten.
+
+    A workbook that came back once keeps its own name: the ending it was given then is replaced.
+    """
     into.mkdir(parents=True, exist_ok=True)
     name = Path(shown_name)
     suffix = ".xlsm" if name.suffix.lower() == ".xlsm" else ".xlsx"
-    stem = name.stem if name.suffix.lower() in (".xlsx", ".xlsm") else name.name
+    stem = _FORMER.sub("", name.stem) if name.suffix.lower() in (".xlsx", ".xlsm") else name.name
     hidden = into / f".{secrets.token_hex(8)}{suffix}.tmp"
     try:
         write(hidden)

@@ -72,6 +72,20 @@ def test_nothing_is_overwritten(tmp_path) -> None:
     assert digest(first) == kept
 
 
+@pytest.mark.parametrize(("dropped", "returned"), [
+    ("plan to fix.xlsx", "plan solved.xlsx"), ("plan to fix to fix.xlsx", "plan solved.xlsx"),
+    ("plan solved 2.xlsx", "plan solved.xlsx"), ("plan solved.xlsx", "plan solved 2.xlsx"),
+    ("plan failed.xlsx", "plan solved.xlsx"), ("to fix.xlsx", "to fix solved.xlsx"),
+    ("plan solved 2027.xlsx", "plan solved 2027 solved.xlsx"), ("unsolved.xlsx", "unsolved solved.xlsx"),
+])
+def test_the_ending_of_a_former_answer_is_replaced(tmp_path, dropped, returned) -> None:
+    """Names do not grow from drop to drop, and the dropped file itself stays as it is."""
+    path = good(tmp_path).rename(tmp_path / dropped)
+    before = digest(path)
+    assert solve_workbook(path).returned.name == returned
+    assert digest(path) == before
+
+
 def test_a_folder_without_hard_links_is_served_too(tmp_path, monkeypatch) -> None:
     """Where links are refused, the answer still comes under an unused name."""
     def refuse(*_: object) -> None:
