@@ -1,10 +1,16 @@
 """Native charts of result sheets: explicit colours and patterns, readable in black and white."""
 
+from io import StringIO
 from typing import Any
 
 import xlsxwriter
+from xlsxwriter.chart_bar import ChartBar
+from xlsxwriter.chart_column import ChartColumn
+from xlsxwriter.chart_line import ChartLine
+from xlsxwriter.chart_scatter import ChartScatter
 from xlsxwriter.worksheet import Worksheet
 
+from ledgersolve.workbook.chart_part import spelled_out
 from ledgersolve.workbook.cleaning import clean_text
 from ledgersolve.workbook.sheets import Area, Chart, Series
 
@@ -21,9 +27,44 @@ _INK, _GREY, _FAINT = "#1F2933", "#52606D", "#D5DBE1"
 _FONT = {"name": "Arial", "size": 9, "color": _INK}
 
 
+class _SpelledOut:
+    """A chart of the library whose part says every switch in so many words."""
+
+    fh: Any
+    internal_fh: bool
+
+    def _assemble_xml_file(self) -> None:
+        target, ours = self.fh, self.internal_fh
+        self.fh, self.internal_fh = StringIO(), False  # the library closes a file of its own once it is done
+        super()._assemble_xml_file()  # type: ignore[misc]  # of the library's class beside this one
+        target.write(spelled_out(self.fh.getvalue()))
+        if ours:
+            target.close()
+
+
+class _Column(_SpelledOut, ChartColumn):  # type: ignore[misc]  # the library carries no types
+    pass
+
+
+class _Bar(_SpelledOut, ChartBar):  # type: ignore[misc]
+    pass
+
+
+class _Line(_SpelledOut, ChartLine):  # type: ignore[misc]
+    pass
+
+
+class _Scatter(_SpelledOut, ChartScatter):  # type: ignore[misc]
+    pass
+
+
+_CLASSES = {"column": _Column, "bar": _Bar, "line": _Line, "scatter": _Scatter}
+
+
 def insert_chart(book: xlsxwriter.Workbook, worksheet: Worksheet, chart: Chart) -> None:
     """Draw the chart on the worksheet at its place and size (pixels)."""
     drawn = book.add_chart(_KINDS[chart.kind])
+    drawn.__class__ = _CLASSES[_KINDS[chart.kind]["type"]]  # the library makes charts of its own classes only
     for series in chart.series:
         if series.kind != "line":
             drawn.add_series(_series(series, chart.kind))
