@@ -80,10 +80,13 @@ def test_names_are_taken_as_settled() -> None:
 
 
 def test_a_file_that_cannot_be_read_gets_a_list_of_its_own(tmp_path: Path) -> None:
-    """A fresh workbook holds the one fault of the file."""
+    """A fresh workbook holds the one fault of the file, and speaks of no cells, marks or sheets that were read."""
     problem = Problem("error", "empty file", "", "", "", "a file of 0 bytes", "a workbook", "Copy it again.")
     sheets = unreadable_sheets(problem, FACTS)
-    assert "Copy it again." in texts(sheets[0])
+    words = texts(sheets[0])
+    assert "To fix: book.xlsx cannot be read" in words
+    assert "Copy it again." in words
+    assert not any("marked" in text or "mended" in text for text in words)
     render(sheets, tmp_path / "book.xlsx")
     assert check_workbook(tmp_path / "book.xlsx") == []
 

@@ -29,11 +29,11 @@ def test_capacity_below_demand_is_counted_in_units() -> None:
     found = why(three_by_four(capacity=np.full(3, 12.0)))
     assert len(found.conflicts) == 1
     assert found.conflicts[0].amount == pytest.approx(4)
-    assert "4 unit short" in found.conflicts[0].words
+    assert "4 units short" in found.conflicts[0].words
     assert found.conflicts[0].subjects[0].title == "Capacity"
     assert found.closest is not None
     assert found.closest.unmet @ np.full(4, 10.0) == pytest.approx(4)
-    assert "leaves 4 unit unmet" in found.closest_words
+    assert "leaves 4 units unmet" in found.closest_words
 
 
 def test_closed_sites_that_take_the_capacity_are_named() -> None:

@@ -3,7 +3,7 @@
 import pytest
 
 from ledgersolve.workbook.currencies import MINOR_UNITS
-from ledgersolve.workbook.figures import figure_words, money_digits, money_words
+from ledgersolve.workbook.figures import figure_words, money_digits, money_words, unit_words
 
 
 @pytest.mark.parametrize(("codes", "digits"), [("USD EUR", 2), ("JPY XPF", 0), ("BHD KWD", 3), ("CLF UYW", 4)])
@@ -31,3 +31,15 @@ def test_amounts_are_rounded_as_asked(amount: float, rounding: str, words: str) 
 def test_a_negative_figure_has_a_minus_that_is_no_hyphen() -> None:
     """The minus sign is the typographic one, so that no line breaks behind it."""
     assert figure_words(-1234.5, 1) == "\u22121\u00a0234.5"
+
+
+@pytest.mark.parametrize(("amount", "unit", "words"), [
+    (1, "pallet", "pallet"), (6, "pallet", "pallets"), (0.5, "tonne", "tonnes"), (3, "box", "boxes"),
+    (2, "Palette", "Palettes"),
+    (2, "battery", "batteries"), (2, "tray", "trays"), (5, "kg", "kg"), (5, "m3", "m3"),
+    (5, "pallets", "pallets"),
+    (5, "Stück", "Stück"), (5, "EUR pallet", "EUR pallet"),
+])
+def test_units_are_words_in_the_plural_and_symbols_as_they_are(amount: float, unit: str, words: str) -> None:
+    """Words take the plural behind every amount but one; symbols and words of other alphabets are left alone."""
+    assert unit_words(amount, unit) == words

@@ -125,7 +125,7 @@ def _tiles(sheet: ResultSheet, page: Decision, row: int) -> int:
     grounds = (style.PALE, style.SAND, style.PALE, style.SAND)
     for columns, tile, ground in zip(places, page.tiles, grounds, strict=True):
         _tile(sheet, row + 1, columns, tile, (ground, page.currency))
-    sheet.heights |= {row + 1: 16.0, row + 2: 26.0, row + 3: 24.0, row + 4: 14.0}
+    sheet.heights |= {row + 1: 18.0, row + 2: 26.0, row + 3: 24.0, row + 4: 14.0}
     sheet.put(row + 4, LEFT, "", WARNING, formula=page.changed)
     sheet.merges.append((row + 4, LEFT, row + 4, LAST))
     return row + 5

@@ -12,7 +12,7 @@ from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.sheets import LiveFormat, ResultSheet
 
 TO_FIX, DONE, DROP_AGAIN = "to fix", "done", "to fix (*)"
-WIDTHS = (17.0, 8.0, 19.0, 36.0, 32.0, 40.0, 8.0, 13.0, 9.0, 9.0)
+WIDTHS = (17.0, 8.0, 19.0, 36.0, 32.0, 40.0, 8.0, 13.0, 12.0, 12.0)
 WATCHED_SPANS = 40
 """At most so many runs of cells of one entry are watched by its status."""
 _LETTERS = "ABCDEFGHIJKLMNOPQRSTUVWXYZ"
@@ -33,6 +33,24 @@ def fix_list(name: str, problems: Sequence[Problem], run: RunFacts, title: str) 
         _entries(sheet, notices, row + 2, live=False)
         row += 3 + len(notices)
     sheet.repeat_rows = (first - 1, first - 1)
+    sheet.footer = FOOTER
+    return sheet
+
+
+def unreadable(name: str, problem: Problem, run: RunFacts) -> ResultSheet:
+    """Write the one entry of a file that cannot be read: what it is, what is expected, what to do."""
+    sheet = ResultSheet(name, tab_colour=style.RUST, landscape=True, widths=dict(enumerate((30.0, *WIDTHS[3:6]))))
+    sheet.put(0, 0, f"To fix: {run.file_name} cannot be read", style.TITLE)
+    sheet.heights[0] = 26.0
+    paragraph(sheet, 1, 0, 3, "Nothing was solved. Your file is kept as it was dropped; this workbook beside it says "
+                              "why it could not be read and what to do.", replace(style.TEXT, size=11.0))
+    sheet.put(2, 0, f"{run.file_name}, {run.when:%Y-%m-%d %H:%M}", style.SMALL)
+    write_table(sheet, 4, [
+        Column(title, title, [words], style.WRAPPED_CELL, width)
+        for title, words, width in (
+            ("File", run.file_name, 30.0), ("Found", problem.found, WIDTHS[3]),
+            ("Expected", problem.expected, WIDTHS[4]), ("What to do", problem.remedy, WIDTHS[5]))
+    ])
     sheet.footer = FOOTER
     return sheet
 

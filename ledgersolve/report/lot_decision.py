@@ -23,6 +23,7 @@ from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.lot_details import lots_row
 from ledgersolve.report.lot_places import FIRST_PERIOD, LotPlaces
 from ledgersolve.report.tables import Figure
+from ledgersolve.workbook.figures import unit_words
 from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Series
 
 FULL = 0.9995
@@ -169,7 +170,8 @@ def _largest(at: LotPlaces) -> list[str]:
     for place in order:
         i, t = divmod(place, case.t)
         if plan.setup[i, t]:
-            points.append(f"{case.item_names[i]}: {style.quantity_words(float(plan.made[i, t]))} {case.units[i]} in "
+            made = float(plan.made[i, t])
+            points.append(f"{case.item_names[i]}: {style.quantity_words(made)} {unit_words(made, case.units[i])} in "
                           f"{case.period_unit} {case.periods[t]}.")
     return [f"Dearest lots: {' '.join(points)}"] if points else []
 

@@ -3,9 +3,9 @@
 from collections.abc import Mapping
 from dataclasses import replace
 
-from ledgersolve.findings import Conflict
+from ledgersolve.findings import Answered, Conflict
 from ledgersolve.report import names, style
-from ledgersolve.report.fix_list import fix_list
+from ledgersolve.report.fix_list import fix_list, unreadable
 from ledgersolve.report.inputs import NoPlan, RunFacts, Workbook
 from ledgersolve.report.run_record import Outcome, run_record
 from ledgersolve.report.tables import FOOTER, Column, paragraph, quoted, write_table
@@ -48,8 +48,11 @@ def no_plan_sheets(given: NoPlan, settled: Mapping[str, str]) -> list[ResultShee
         row += 1
     if given.conflicts:
         _conflicts(sheet, row + 1, given)
+    row = row + 3 + len(given.conflicts)
+    for table in given.closest:
+        row = _closest(sheet, row, table)
     made = f"{given.run.file_name}, {given.run.when:%Y-%m-%d %H:%M}."
-    sheet.put(row + 3 + len(given.conflicts), 0, f"{made} No cost is shown, because there is no plan to have one.",
+    sheet.put(row, 0, f"{made} No cost is shown, because there is no plan to have one.",
               style.SMALL)
     sheet.landscape = True
     sheet.footer = FOOTER
@@ -80,6 +83,21 @@ def _conflicts(sheet: ResultSheet, row: int, given: NoPlan) -> None:
     ])
 
 
+def _closest(sheet: ResultSheet, row: int, table: Answered) -> int:
+    """Write a table of the plan that comes closest; gives the next free row but one."""
+    sheet.put(row, 0, table.question, style.SECTION)
+    paragraph(sheet, row + 1, 0, 3, table.words, style.TEXT)
+    columns = []
+    for number, given in enumerate(table.columns):
+        values = [line[number] for line in table.rows]
+        figures = [value for value in values if isinstance(value, int | float)]
+        look = style.WRAPPED_CELL if given.kind == "text" else style.number(style.figure_format(figures))
+        unit = "" if given.kind == "text" or "(" in given.title else " (number)"
+        columns.append(Column(given.title, given.title + unit, values, look, WIDTHS[number]))
+    write_table(sheet, row + 2, columns)
+    return row + 4 + len(table.rows)
+
+
 def _place(origins: Origins, conflict: Conflict) -> CellRef | None:
     for subject in conflict.subjects:
         ref = origins.cell(subject.sheet, subject.key, subject.title)
@@ -107,7 +125,7 @@ def fix_sheets(workbook: Workbook, run: RunFacts, settled: Mapping[str, str]) ->
 
 def unreadable_sheets(problem: Problem, run: RunFacts) -> list[ResultSheet]:
     """The one sheet of a fresh workbook beside a file that cannot be read."""
-    return [fix_list(names.TO_FIX, [problem], run, "")]
+    return [unreadable(names.TO_FIX, problem, run)]
 
 
 def failed_sheets(reason: str, run: RunFacts) -> list[ResultSheet]:

@@ -127,6 +127,7 @@ def _sheet(at: SitePlaces, series: list[_Points]) -> ResultSheet:
     )
     if len(flat) > PRINTED_POINTS:
         sheet.print_area = (0, 0, FIRST_ROW + PRINTED_POINTS - 1, 3)
+        sheet.landscape = False
     return sheet
 
 

@@ -18,6 +18,7 @@ from ledgersolve.site_selection.deliveries import tidy
 from ledgersolve.site_selection.elastic import Loosened, least_unmet, loosen, loosen_all
 from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.plan import Plan
+from ledgersolve.workbook.figures import unit_words
 
 MOST_LISTED = 25
 """Customers listed one by one; the rest is counted."""
@@ -144,7 +145,7 @@ def _volume(case: Case) -> Iterator[Conflict]:
     """All that can be carried against all that must be."""
     if case.unmet_cost is not None:
         return
-    wanted, unit = float(case.demand.sum()), case.demand_unit
+    wanted = float(case.demand.sum())
     room = _room(case, case.rule != CLOSED)
     if room < wanted * (1 - 1e-9):
         short = wanted - room
@@ -153,28 +154,33 @@ def _volume(case: Case) -> Iterator[Conflict]:
         first = Subject("Sites", (case.sites[int(np.argmax(case.capacity))],), "Capacity")
         if closed and with_closed >= wanted * (1 - 1e-9):
             yield Conflict(
-                f"Sites set to closed leave {figure(short)} {unit} without capacity: wanted are "
+                f"Sites set to closed leave {_units(case, short)} without capacity: wanted are "
                 f"{figure(wanted)}, the other sites hold {figure(room)}.",
                 f"Set the rule of {_codes(closed)} to free, or raise a capacity by {figure(short)}.",
                 short, (Subject("Sites", (closed[0],), "Rule"), first),
             )
             return
         limit = case.most_sites is not None and np.isfinite(room)
-        words = f"{case.most_sites} sites hold {figure(room)} {unit} at most" if limit else (
-            f"all sites that may open hold {figure(room)} {unit}")
+        words = f"{case.most_sites} sites hold {_units(case, room)} at most" if limit else (
+            f"all sites that may open hold {_units(case, room)}")
         yield Conflict(
-            f"Capacity is {figure(short)} {unit} short: wanted are {figure(wanted)}, and {words}.",
-            f"Raise capacities by {figure(short)} {unit} in all, or give Unmet demand cost a value.",
+            f"Capacity is {_units(case, short)} short: wanted are {figure(wanted)}, and {words}.",
+            f"Raise capacities by {_units(case, short)} in all, or give Unmet demand cost a value.",
             short, (_setting("Most sites"), first) if limit else (first,),
         )
     forced_least = float(case.least_volume[case.rule == OPEN].sum())
     if forced_least > wanted * (1 + 1e-9):
         sites = [case.sites[j] for j in np.flatnonzero((case.rule == OPEN) & (case.least_volume > 0))]
         yield Conflict(
-            f"Sites that must be open need {figure(forced_least)} {unit} at least, and all demand is "
+            f"Sites that must be open need {_units(case, forced_least)} at least, and all demand is "
             f"{figure(wanted)}.", "Lower a least volume, or set the rule of a site to free.",
             forced_least - wanted, tuple(Subject("Sites", (code,), "Least volume") for code in sites),
         )
+
+
+def _units(case: Case, amount: float) -> str:
+    """An amount with the unit of demand."""
+    return f"{figure(amount)} {unit_words(amount, case.demand_unit)}"
 
 
 def _room(case: Case, may_open: Flags) -> float:
@@ -194,13 +200,13 @@ def _words(case: Case, found: Loosened) -> Conflict:
     amount = f"{at_least}{figure(found.total)}"
     sites = [case.sites[j] for j in found.where] if found.kind in _OF_SITES else []
     customers = [case.customers[i] for i in found.where] if found.kind == "promise" else []
-    unit = case.demand_unit
+    units = f"{at_least}{_units(case, found.total)}"
     shares = ", ".join(f"{figure(float(part))} at {code}" for part, code in zip(
         found.amounts[:5], [*sites, *customers][:5], strict=False))
     texts = {
-        "capacity": (f"Capacity is {amount} {unit} short: {shares}.",
+        "capacity": (f"Capacity is {units} short: {shares}.",
                      f"Raise Capacity by that much ({shares})."),
-        "least volume": (f"Least volumes ask for {amount} {unit} more than there is: {shares}.",
+        "least volume": (f"Least volumes ask for {units} more than there is: {shares}.",
                          f"Lower Least volume by that much ({shares})."),
         "most sites": (f"{case.most_sites} sites cannot serve all customers under the other rules.",
                        f"Raise Most sites by {amount}."),
@@ -213,7 +219,7 @@ def _words(case: Case, found: Loosened) -> Conflict:
         "promise": (f"The longest distance cannot be kept for {_codes(customers)}: {shares} "
                     f"{case.distance_unit} too far.",
                     f"Loosen Longest distance for {_codes(customers)} ({shares} {case.distance_unit})."),
-        "share within": (f"{amount} {unit} too little can be served within "
+        "share within": (f"{units} too little can be served within "
                          f"{figure(case.share_distance or 0.0)} {case.distance_unit}.",
                          "Lower Share within distance, or raise Distance for share."),
         "single source": ("Not every customer can be served whole from one site.",
@@ -258,5 +264,5 @@ def _closest(case: Case, clock: Clock) -> tuple[Plan | None, str]:
     plan = tidy(lanes, built.read_open(values), built.site, built.customer, values[built.x], unmet)
     left = plan.unmet * case.demand
     short = [case.customers[i] for i in np.flatnonzero(left > 1e-9 * max(1.0, float(case.demand.sum())))]
-    words = f"leaves {figure(float(left.sum()))} {case.demand_unit} unmet at {_codes(short)}" if short else ""
+    words = f"leaves {_units(case, float(left.sum()))} unmet at {_codes(short)}" if short else ""
     return plan, words

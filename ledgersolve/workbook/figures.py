@@ -1,6 +1,7 @@
 """Figures and money in sentences: readable in every country, rounded as the sentence needs it."""
 
 import math
+import re
 from typing import Literal
 
 from ledgersolve.workbook.currencies import MINOR_UNITS
@@ -28,3 +29,16 @@ def figure_words(value: float, digits: int = 0, rounding: Rounding = "nearest") 
     if abs(scaled - snapped) > 1e-6 * max(1.0, abs(scaled) * 1e-6):
         snapped = math.ceil(scaled) if rounding == "up" else math.floor(scaled) if rounding == "down" else snapped
     return f"{snapped / scale:,.{digits}f}".replace(",", NO_BREAK).replace("-", "\u2212")
+
+
+_SHORT_WORDS = frozenset(("bag", "bin", "box", "can", "keg", "lot", "pack", "set", "ton"))
+_WORD = re.compile(r"[A-Za-z][a-z]{3,}")
+
+
+def unit_words(amount: float, unit: str) -> str:
+    """The unit behind an amount: ``1 pallet``, ``6 pallets``; symbols (kg, m3) stay as they are."""
+    if abs(amount) == 1 or not (_WORD.fullmatch(unit) or unit in _SHORT_WORDS) or unit.endswith("s"):
+        return unit
+    if unit.endswith(("x", "ch", "sh")):
+        return f"{unit}es"
+    return f"{unit[:-1]}ies" if re.search("[^aeiou]y$", unit) else f"{unit}s"
