@@ -38,6 +38,17 @@ from tests.service_share import (
 DROPS = ["plan a.xlsx", "plan b.xlsx"]
 
 
+@pytest.fixture
+def told(capsys, request):
+    """Show the figures of a long test, whatever the runner hides."""
+
+    def show(figures: object) -> None:
+        with capsys.disabled():
+            print(f"\n{request.node.name}: {figures}", flush=True)
+
+    return show
+
+
 def program(name: str, *words: str, before: tuple[str, ...] = (), seconds: int = 280) -> dict:
     """Run a program of this folder and give what it prints."""
     command = [*before, sys.executable, "-m", f"tests.faults.{name}", *words]
@@ -80,9 +91,10 @@ def test_a_kill_at_system_calls_loses_nothing():
 
 @pytest.mark.long
 @pytest.mark.timeout(3600)
-def test_a_kill_before_every_changing_call_loses_nothing():
+def test_a_kill_before_every_changing_call_loses_nothing(told):
     """The long form: all of them."""
     result = program("service_crash_points", seconds=3500)
+    told(result)
     assert result["points"] > 80
     assert result["faults"] == []
 
@@ -90,10 +102,11 @@ def test_a_kill_before_every_changing_call_loses_nothing():
 @pytest.mark.long
 @pytest.mark.timeout(3600)
 @pytest.mark.parametrize("error", ["", "ENOSPC", "EIO"])
-def test_a_kill_or_error_at_every_system_call_loses_nothing(error):
+def test_a_kill_or_error_at_every_system_call_loses_nothing(error, told):
     """The long form: every call, killed or failed."""
     strace_or_skip()
     result = program("service_strace", "1", *filter(None, [error]), seconds=3500)
+    told(result)
     assert result["points"] > 200
     assert result["faults"] == []
 
@@ -113,9 +126,10 @@ def test_a_storm_of_kills_and_stops_loses_nothing(lease, rate):
 @pytest.mark.timeout(3600)
 @pytest.mark.parametrize("seed", range(3))
 @pytest.mark.parametrize(("lease", "rate"), [("0.15", "0"), ("0", "0"), ("0.15", "0.02"), ("0.15", "0.3")])
-def test_a_long_storm_loses_nothing(lease, rate, seed):
+def test_a_long_storm_loses_nothing(lease, rate, seed, told):
     """Six hundred drops in each storm."""
     result = program("service_storm", "600", lease, str(seed), rate, seconds=1500)
+    told(result)
     assert result["faults"] == []
 
 
@@ -168,13 +182,14 @@ def test_an_error_at_any_changing_call_is_survived(quick, code, lost):
     errno.ENOSPC, errno.EIO, errno.EDQUOT, errno.ESTALE, errno.EACCES, errno.EROFS, errno.EHOSTDOWN, errno.ENOENT,
     errno.EEXIST,
 ])  # fmt: skip
-def test_every_error_at_every_changing_call_is_survived(quick, code, lost):
+def test_every_error_at_every_changing_call_is_survived(quick, code, lost, told):
     """The long form: all calls, all errors of bad disks and networks."""
     number, calls = 1, 1
     while number <= calls:
         faults, calls = spoiled_run(ErrorAt(number, code, lost))
         assert faults == [], f"call {number}"
         number += 1
+    told({"calls": calls})
 
 
 @pytest.mark.slow
@@ -193,11 +208,15 @@ def test_a_share_that_fails_all_the_time_loses_nothing(quick, rate):
 @pytest.mark.long
 @pytest.mark.timeout(3600)
 @pytest.mark.parametrize("rate", [0.02, 0.1, 0.3])
-def test_a_share_that_fails_for_long_loses_nothing(quick, rate):
+def test_a_share_that_fails_for_long_loses_nothing(quick, rate, told):
     """The long form: a hundred and fifty folders."""
+    injected = 0
     for seed in range(150):
-        faults, _ = spoiled_run(RandomErrors(seed, rate), (*LOOKS, *CHANGES))
+        plan = RandomErrors(seed, rate)
+        faults, _ = spoiled_run(plan, (*LOOKS, *CHANGES))
         assert faults == [], f"seed {seed}"
+        injected += plan.count
+    told({"injected errors": injected})
 
 
 def stale_run(seed: int) -> list[str]:
@@ -258,6 +277,51 @@ def test_mounts_that_fill_up_turn_read_only_or_go_away_lose_nothing():
 
 
 @pytest.mark.slow
+def test_drops_that_may_not_be_read_or_moved_wait_and_are_told():
+    """Unreadable, somebody else's, in a closed folder, immutable: told once each, and returned when let go."""
+    if os.getuid() != 0:
+        pytest.skip("other accounts' files need root")
+    probe = Path(tempfile.mkdtemp()) / "probe"
+    probe.touch()
+    if subprocess.run(["chattr", "+i", str(probe)], capture_output=True, check=False).returncode:
+        pytest.skip("files cannot be made immutable here")
+    subprocess.run(["chattr", "-i", str(probe)], check=True)
+    result = program("service_rights")
+    assert len(result) == 4
+    assert not any(result.values()), result
+
+
+@pytest.mark.slow
+def test_lost_file_events_lose_no_drop():
+    """The system's queue of events runs over while forty drops come: the scans find them all."""
+    result = program("service_overflow")
+    assert result["overflowed"], "the queue did not run over, so nothing was proven"
+    assert result["returned"] == 40 and result["faults"] == []
+
+
+@pytest.mark.long
+def test_a_clock_ten_years_off_changes_nothing(told):
+    """Ahead, behind, stepped in mid-solve and over a restart: no state, lease or original follows the date."""
+    if shutil.which("cc") is None:
+        pytest.skip("no C compiler for the library that moves the clock")
+    result = program("service_clocks")
+    told(result)
+    assert len(set(result["years told"])) == 3, "the clock was not moved"
+    assert result["returned"] == result["originals"] == 12
+    assert (result["code"], result["faults"], result["attempts"]) == (0, [], 0)
+
+
+@pytest.mark.long
+def test_a_cluster_survives_a_new_scheduler(told):
+    """The scheduler is killed in mid-solve and comes back after seconds: all are answered, no solver is left."""
+    pytest.importorskip("distributed", reason="the cluster extra is not installed")
+    result = program("service_scheduler")
+    told(result)
+    assert result["restarts"] == 1 and result["returned"] == 6
+    assert result["faults"] == [] and result["left"] == 0
+
+
+@pytest.mark.slow
 def test_a_cluster_survives_the_death_of_a_worker():
     """A real scheduler and two workers; one is killed in mid-solve: all are answered once, no solver is left."""
     pytest.importorskip("distributed", reason="the cluster extra is not installed")
@@ -268,8 +332,18 @@ def test_a_cluster_survives_the_death_of_a_worker():
 
 @pytest.mark.long
 @pytest.mark.timeout(7200)
-def test_ten_thousand_drops_come_back():
+def test_a_small_drop_is_not_behind_long_ones(told):
+    """A drop of one second behind fifty of a minute is back within its own time and ten seconds."""
+    result = program("service_load", "behind")
+    told(result)
+    assert 0.0 < result["back after"] < result["own seconds"] + 10.0
+
+
+@pytest.mark.long
+@pytest.mark.timeout(7200)
+def test_ten_thousand_drops_come_back(told):
     """All are returned, and a scan of ten times as many takes about ten times as long, not a hundred."""
     result = program("service_load", "10000", seconds=7000)
+    told(result)
     assert result["returned"] == 10_000 and result["faults"] == []
     assert result["scan seconds at 10000"] < 40 * max(0.002, result["scan seconds at 1000"])

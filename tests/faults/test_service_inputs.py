@@ -13,7 +13,7 @@ from ledgersolve.service.disk import Disk
 from ledgersolve.service.layout import prepare
 from ledgersolve.service.verify import verify
 from ledgersolve.service.watch import serve
-from tests.faults.service_inputs import INPUTS, good
+from tests.faults.service_inputs import HEAVY, INPUTS, good
 from tests.service_share import names, quick_settings
 
 
@@ -28,11 +28,11 @@ SAMPLE = [*list(INPUTS)[::5], "25 macro", *(name for name in INPUTS if name.star
 
 @pytest.mark.parametrize("chosen", [
     pytest.param(SAMPLE, id="a sample", marks=[pytest.mark.slow, pytest.mark.timeout(300)]),
-    pytest.param(list(INPUTS), id="all", marks=[pytest.mark.long, pytest.mark.timeout(900)]),
+    pytest.param(list(INPUTS | HEAVY), id="all", marks=[pytest.mark.long, pytest.mark.timeout(1800)]),
 ])  # fmt: skip
 def test_bad_inputs_come_back_and_harm_nobody(tmp_path, chosen):
     """Hostile and broken files at once: each ends as it should, the good ones between are solved."""
-    inputs = {name: INPUTS[name] for name in chosen}
+    inputs = {name: (INPUTS | HEAVY)[name] for name in chosen}
     folder = tmp_path / "served"
     folder.mkdir()
     prepare(folder, Disk())
