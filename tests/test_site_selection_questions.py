@@ -7,10 +7,11 @@ import numpy as np
 import pytest
 
 from ledgersolve.mip import Limits, Solved
-from ledgersolve.site_selection.alternatives import how_many, promising, runner_up, why_closed, why_open
+from ledgersolve.site_selection.alternatives import promising, runner_up, why_closed, why_open
 from ledgersolve.site_selection.asker import Asker
 from ledgersolve.site_selection.binding import today_against_plan, what_binds
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, plain_case
+from ledgersolve.site_selection.counts import how_many
 from ledgersolve.site_selection.firmness import changed, demand_off, how_firm
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.questions import QUESTIONS, answer_questions
@@ -163,7 +164,7 @@ def test_today_against_the_plan_counts_who_moves() -> None:
     today, today_cost = planned(case.as_today())
     answer = today_against_plan(case, plan, today, today_cost, cost)
     assert "Opens: S2" in answer.words
-    assert "1 customers get another site, with 5 unit" in answer.words
+    assert "1 customer gets another site, with 5 unit" in answer.words
     figures = {row[0]: row[1:3] for row in answer.rows}
     assert figures["Mean distance per unit"] == pytest.approx(((4 * 10 + 5 * 90) / 9, (4 * 10 + 5 * 20) / 9))
     assert figures["Longest distance"] == (90.0, 20.0)

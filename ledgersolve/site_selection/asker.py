@@ -1,6 +1,7 @@
 """Re-solving for questions: changed cases under a shared clock, exact or as a proven interval."""
 
-from collections.abc import Iterable
+from collections.abc import Hashable, Iterable, Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -11,8 +12,13 @@ from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.solve import solve
 from ledgersolve.workbook.figures import Rounding, money_words
 
-SHARE_OF_LEFT = 0.34
-"""A single re-solve takes at most this share of the time that is left."""
+LEAST_SHARE = 0.2
+"""A re-solve may take its part of the time of its question, and at least this share of what is left of it."""
+LEAST_SECONDS = 0.05
+"""With less time left than this, nothing is asked any more."""
+ASK_AGAIN = 2.0
+"""What stayed open is asked again where there is so many times the time that it had."""
+GAP = 1e-4
 
 
 @dataclass(frozen=True)
@@ -30,35 +36,90 @@ class Found:
         return self.low is not None and self.low == self.high
 
     @property
-    def known(self) -> bool:
-        """Whether anything was found out."""
-        return self.impossible or self.low is not None or self.high is not None
+    def settled(self) -> bool:
+        """Whether asking again would not tell more."""
+        within = self.low is not None and self.high is not None and self.high - self.low <= GAP * abs(self.high)
+        return self.impossible or self.exact or within
+
+    def joined(self, other: "Found") -> "Found":
+        """Give what two outcomes of the same case tell together."""
+        if self.impossible or other.impossible:
+            return Found(None, None, None, impossible=True)
+        lows = [found.low for found in (self, other) if found.low is not None]
+        best = min((self, other), key=lambda found: np.inf if found.high is None else found.high)
+        low = max(lows, default=None)
+        return Found(low if low is None or best.high is None else min(low, best.high), best.high, best.plan)
+
+
+NOTHING = Found(None, None, None)
 
 
 @dataclass
 class Asker:
-    """Asks the engine about changed cases; remembers what it asked, so that answers share re-solves."""
+    """Asks the engine about changed cases; remembers what it asked, so that answers share re-solves.
+
+    ``base_bound`` is what no plan of the workbook's own case undercuts, where it is known. ``asks`` counts the
+    re-solves that the question at hand still has to make, so that each gets its part of the time. ``plans``
+    are those found on the way that keep the workbook's own rules, with their cost: each is a plan that some
+    other question looks for.
+    """
 
     case: Case
     base: Plan
     base_cost: float
     clock: Clock
-    _flips: dict[int, Found] = field(default_factory=dict)
+    base_bound: float | None = None
+    asks: int = 1
+    plans: list[tuple[float, Plan]] = field(default_factory=list)
+    _known: dict[Hashable, tuple[Found, float]] = field(default_factory=dict)
 
-    def ask(self, changed: Case, seconds: float | None = None) -> Found:
-        """Re-solve a changed case, for at most a share of the time left."""
+    @contextmanager
+    def part(self, share: float, asks: int = 1) -> Iterator[None]:
+        """Keep to a share of the time left, for about so many re-solves; what is not used stays."""
+        whole, clock = self.clock, self.clock.limits
+        self.clock = replace(clock, seconds=max(share * whole.left(), 1e-3)).start()
+        self.asks = asks
+        try:
+            yield
+        finally:
+            self.clock = whole
+
+    def ask(self, changed: Case, key: Hashable = None) -> Found:
+        """Re-solve a changed case within its part of the time; a ``key`` stands for the change and is remembered."""
+        before, had = self._known.get(key, (NOTHING, 0.0))
         left = self.clock.left()
-        if left <= 0.05:
-            return Found(None, None, None)
-        most = left * SHARE_OF_LEFT if seconds is None else min(seconds, left)
-        limits = Limits(max(most, 0.05), 1e-4, self.clock.limits.cancelled)
-        return found(solve(changed, limits))
+        seconds = left * max(1.0 / max(self.asks, 1), LEAST_SHARE)
+        self.asks -= 1
+        if before.settled or left <= LEAST_SECONDS or seconds < ASK_AGAIN * had:
+            return before
+        seconds = max(seconds, LEAST_SECONDS)
+        told = found(solve(changed, Limits(seconds, GAP, self.clock.limits.cancelled))).joined(before)
+        if key is not None:
+            self._known[key] = (told, seconds)
+        return told
+
+    def ask_within(self, narrowed: Case, key: Hashable = None) -> Found:
+        """Ask about the workbook's own case with a rule added: what it finds keeps the workbook's rules."""
+        told = self.ask(narrowed, key)
+        if told.plan is not None and told.high is not None:
+            self.plans.append((told.high, told.plan))
+        return told
 
     def flip(self, j: int) -> Found:
         """Do without site j if it is open in the plan, insist on it if it is not."""
-        if j not in self._flips:
-            self._flips[j] = self.ask(self.flipped(self.case, j))
-        return self._flips[j]
+        return self.ask_within(self.flipped(self.case, j), ("flip", j))
+
+    def known_flip(self, j: int) -> Found:
+        """Give what is known about flipping a site, by what was asked about it and by all plans found so far."""
+        told, _ = self._known.get(("flip", j), (NOTHING, 0.0))
+        return self.with_plans(told, [pair for pair in self.plans if pair[1].open[j] != self.base.open[j]])
+
+    def with_plans(self, told: Found, plans: Iterable[tuple[float, Plan]]) -> Found:
+        """Add plans found on the way to what re-solving told."""
+        for cost, plan in plans:
+            if not told.settled:
+                told = told.joined(Found(None, cost, plan))
+        return told
 
     def flipped(self, case: Case, j: int) -> Case:
         """Give the case in which site j is the other way round than in the plan."""
@@ -66,18 +127,21 @@ class Asker:
         rule[j] = CLOSED if self.base.open[j] else OPEN
         return replace(case, rule=rule, variants=())
 
-    def kept(self, case: Case, open_sites: Flags | None = None) -> Found:
+    def kept(self, case: Case, key: Hashable = None) -> Found:
         """Cost a changed case with the plan's sites open, and no others."""
-        sites = self.base.open if open_sites is None else open_sites
-        fixed = replace(
-            case, rule=np.where(sites, OPEN, CLOSED).astype(np.int64), fewest_sites=None, most_sites=None,
-            group=np.full(case.m, -1, dtype=np.int64), variants=(),
-        )
-        return self.ask(fixed)
+        return self.ask(only(case, self.base.open), None if key is None else ("kept", key))
 
     def may_flip(self, j: int) -> bool:
         """Whether the workbook leaves site j to us."""
         return bool(self.case.rule[j] == 0)
+
+
+def only(case: Case, sites: Flags) -> Case:
+    """Give the case with these sites open, and no others."""
+    return replace(
+        case, rule=np.where(sites, OPEN, CLOSED).astype(np.int64), fewest_sites=None, most_sites=None,
+        group=np.full(case.m, -1, dtype=np.int64), variants=(),
+    )
 
 
 def found(solved: Solved[Plan]) -> Found:
@@ -110,22 +174,16 @@ def service_part(case: Case, plan: Plan) -> Floats:
 
 def codes(case: Case, numbers: Iterable[int]) -> str:
     """Site codes in words: ``HAM, MUC and 3 more``."""
-    listed = [case.sites[j] for j in numbers]
-    return ", ".join(listed[:6]) + (f" and {len(listed) - 6} more" if len(listed) > 6 else "") or "none"
+    return listed([case.sites[j] for j in numbers]) or "none"
+
+
+def listed(words: Sequence[str], last: str = "") -> str:
+    """Up to six words, the rest counted; ``last`` joins the last one where all are named."""
+    if last and 1 < len(words) <= 6:
+        return f"{', '.join(words[:-1])} {last} {words[-1]}"
+    return ", ".join(words[:6]) + (f" and {len(words) - 6} more" if len(words) > 6 else "")
 
 
 def money(case: Case, value: float, rounding: Rounding = "nearest") -> str:
     """An amount in words."""
     return money_words(value, case.currency, rounding)
-
-
-def interval(case: Case, answer: Found, base: float = 0.0) -> str:
-    """An amount above ``base`` in words, saying whether it is exact."""
-    if answer.low is not None and answer.high is not None:
-        if answer.exact:
-            return money(case, answer.high - base)
-        low, high = money(case, max(answer.low - base, 0.0), "down"), money(case, answer.high - base, "up")
-        return f"between {low} and {high}"
-    if answer.high is not None:
-        return f"at most {money(case, answer.high - base, 'up')}"
-    return f"at least {money(case, max(answer.low - base, 0.0), 'down')}" if answer.low is not None else "not known"

@@ -1,19 +1,22 @@
 """Questions 3 and 6: today against the plan, and what binds."""
 
 from collections.abc import Callable, Iterator
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from ledgersolve.findings import Answered, Column
-from ledgersolve.site_selection.asker import Asker, codes, money
-from ledgersolve.site_selection.case import Case, Floats
+from ledgersolve.findings import NOT_ANSWERED, Answered, Column
+from ledgersolve.site_selection.asker import Asker, codes, listed, money
+from ledgersolve.site_selection.case import Case, Floats, Ints
+from ledgersolve.site_selection.extra_cost import MOST_NAMED, Extra, extra
 from ledgersolve.site_selection.plan import Plan
 
 FULL = 0.999
 """A site counts as full from this share of its capacity."""
 MOST_FULL = 5
 """Full sites that are asked about."""
+
+Row = tuple[str | float | None, ...]
 
 
 def today_against_plan(case: Case, plan: Plan, today: Plan, today_cost: float, cost: float) -> Answered:
@@ -33,7 +36,8 @@ def today_against_plan(case: Case, plan: Plan, today: Plan, today_cost: float, c
     less = today_cost - cost
     words = (f"The plan costs {money(case, abs(less))} {'less' if less >= 0 else 'more'} than today's network. "
              f"Opens: {codes(case, opens)}. Closes: {codes(case, closes)}. Stays: {codes(case, stays)}. "
-             f"{moved} customers get another site, with {volume:,.0f} {case.demand_unit}{share}.")
+             f"{'1 customer gets' if moved == 1 else f'{moved} customers get'} another site, with {volume:,.0f} "
+             f"{case.demand_unit}{share}.")
     columns = (Column("Figure"), Column("Today", "number"), Column("Plan", "number"), Column("Unit"))
     return Answered("What changes against today?", words, columns, tuple(rows), headline=True)
 
@@ -83,29 +87,92 @@ def _service_figures(case: Case) -> list[tuple[str, str, Callable[[Plan], float]
 def what_binds(asker: Asker) -> Answered:
     """Full sites, counts and promises at their limit, and what a looser rule would save, re-solved."""
     case = asker.case
-    rows: list[tuple[str | float | None, ...]] = []
-    for rule, loosened, changed in _looser(case, asker.base):
-        answer = asker.ask(changed)
-        saved = None if answer.high is None else max(0.0, asker.base_cost - answer.high)
-        most = None if answer.low is None else max(0.0, asker.base_cost - answer.low)
-        sure = "not answered in the time given" if not answer.known else (
-            "exact" if answer.exact else "a proven range")
-        rows.append((rule, loosened, saved, most, sure))
-    useful = [row for row in rows if isinstance(row[2], float) and row[2] > 1e-6 * asker.base_cost]
-    words = "Nothing binds: no rule or capacity holds the plan back." if not rows else (
-        "Rules are at their limit, and loosening any one of them a little saves nothing.")
-    if useful:
-        best = max(useful, key=lambda row: float(str(row[2])))
-        words = f"Most is saved by this: {best[0]}, {best[1]}: {money(case, float(str(best[2])))} less."
+    asked = list(_looser(case, asker.base))
+    asker.asks = len(asked)
+    told = [_saving(rule, loosened, extra(asker, asker.ask(changed, ("looser", rule)), within=False))
+            for rule, loosened, changed in asked]
+    rows: tuple[Row, ...] = tuple((one.rule, one.loosened, one.least, one.most, one.words()) for one in told)
     columns = (Column("What is at its limit"), Column("Loosened to"), Column("Saves at least", "money"),
                Column("and at most", "money"), Column("How sure"))
-    return Answered("What holds the plan back?", words, columns, tuple(rows))
+    return Answered("What holds the plan back?", _binding_words(case, asker.base, told), columns, rows)
+
+
+@dataclass(frozen=True)
+class _Saving:
+    """What a looser rule saves; the plan as it is keeps it, so that nothing less than 0 is saved.
+
+    ``least`` and ``most`` are None where nothing is known but that.
+    """
+
+    rule: str
+    loosened: str
+    least: float | None
+    most: float | None
+
+    @property
+    def exact(self) -> bool:
+        return self.least is not None and self.least == self.most
+
+    def words(self) -> str:
+        if self.exact:
+            return "exact"
+        if self.most is not None:
+            return "a proven range" if self.least else "not known yet: between nothing and that"
+        return NOT_ANSWERED if self.least is None else "at least that; the most is not known yet"
+
+
+def _saving(rule: str, loosened: str, above: Extra) -> _Saving:
+    """Turn a cost above the plan into a saving."""
+    if above.exact:
+        saved = max(0.0, -(above.high or 0.0))
+        return _Saving(rule, loosened, saved, saved)
+    least = None if above.high is None or above.high >= 0 else -above.high
+    if above.low is not None or (above.floor is not None and above.floor >= 0):
+        return _Saving(rule, loosened, 0.0, 0.0)  # no plan under the looser rule is below the plan's cost
+    return _Saving(rule, loosened, least, None if above.floor is None else -above.floor)
+
+
+def _binding_words(case: Case, plan: Plan, told: list[_Saving]) -> str:
+    if not told:
+        return "No capacity, count, distance, share, single source or least volume is at its limit in this plan."
+    sentences = []
+    exact = [one for one in told if one.exact]
+    useful = [(one.least, one) for one in told if one.least is not None and one.least > 0]
+    if useful:
+        most, best = max(useful, key=lambda pair: pair[0])
+        surely = all(one is best or (one.most is not None and one.most <= most) for one in told)
+        sentences.append(f"{'Most' if surely else 'Most, as far as is known,'} is saved by this: {best.rule}, "
+                         f"{best.loosened}: {money(case, most, 'nearest' if best.exact else 'down')} less"
+                         f"{'' if best.exact else ' at least'}.")
+    elif len(exact) == len(told):
+        one = f"{told[0].rule}, but that rule" if len(told) == 1 else "Each of these is at its limit, but any of them"
+        sentences.append(f"{one} a little looser saves nothing.")
+    elif exact:
+        sentences.append(f"Nothing is saved by this: {listed([one.rule for one in exact])}.")
+    ranges = [one for one in told if not one.exact and one.most is not None]
+    if ranges:
+        named = "; ".join(f"{one.rule}, {one.loosened}: "
+                          f"{money(case, one.most or 0.0, 'up')} at most" for one in ranges[:MOST_NAMED])
+        more = f"; and so for {len(ranges) - MOST_NAMED} more" if len(ranges) > MOST_NAMED else ""
+        sentences.append(f"How much is saved is not known exactly: {named}{more}.")
+    missing = [one.rule for one in told if one.least is None and one.most is None]
+    if missing:
+        sentences.append(f"{NOT_ANSWERED.capitalize()}: {listed(missing)}.")
+    others = _full(case, plan).size - MOST_FULL
+    if others > 0:
+        sentences.append(f"{others} more full {'site was' if others == 1 else 'sites were'} not asked about.")
+    return " ".join(sentences)
+
+
+def _full(case: Case, plan: Plan) -> Ints:
+    """Full sites, the largest load first."""
+    load = np.bincount(plan.site, weights=plan.share * case.demand[plan.customer], minlength=case.m)
+    full = np.flatnonzero(plan.open & np.isfinite(case.capacity) & (load >= FULL * case.capacity) & (load > 0))
+    return full[np.argsort(-load[full], kind="stable")]
 
 
 def _looser(case: Case, plan: Plan) -> Iterator[tuple[str, str, Case]]:
-    load = np.bincount(plan.site, weights=plan.share * case.demand[plan.customer], minlength=case.m)
-    full = np.flatnonzero(plan.open & np.isfinite(case.capacity) & (load >= FULL * case.capacity) & (load > 0))
-    for j in full[np.argsort(-load[full], kind="stable")][:MOST_FULL]:
+    for j in _full(case, plan)[:MOST_FULL]:
         capacity = case.capacity.copy()
         capacity[j] *= 1.1
         yield (f"{case.sites[j]} is full", f"a tenth more capacity ({capacity[j]:,.0f} {case.demand_unit})",

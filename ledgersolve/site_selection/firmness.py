@@ -1,57 +1,173 @@
 """Question 5: how firm the plan is when demand, lane rates or fixed costs turn out otherwise."""
 
-from ledgersolve.findings import Answered, Column
-from ledgersolve.site_selection.asker import Asker, money
+from dataclasses import dataclass
+
+import numpy as np
+
+from ledgersolve.findings import NOT_ANSWERED, Answered, Column
+from ledgersolve.site_selection.asker import Asker, Found, listed, money
 from ledgersolve.site_selection.case import Case, Variant
 
-STEPS = tuple(range(-50, 0, 5)), tuple(range(5, 55, 5))
+STEP, WIDEST = 5, 50
+STEPS = tuple(range(-WIDEST, 0, STEP)), tuple(range(STEP, WIDEST + STEP, STEP))
 """Changes tried, in percent, downwards and upwards."""
 SAME = 1e-4
 """The sites stay best where keeping them costs at most this much more than the best known plan (0.01 %)."""
-DEMAND_OFF = (-20, -10, 10, 20)
+ASKS = 10
+"""Re-solves that one lever takes about."""
+DEMAND_OFF = (10, -10, 20, -20)
 
 LEVERS = ("demand", "lane rates", "fixed costs")
 
+Row = tuple[str | float | None, ...]
 
-def how_firm(asker: Asker) -> Answered:
-    """Range of each lever over which the same sites stay best, in steps of five percent."""
-    rows: list[tuple[str | float | None, ...]] = []
-    told = []
-    for lever in LEVERS:
-        low, low_sure = _reach(asker, lever, tuple(reversed(STEPS[0])))
-        high, high_sure = _reach(asker, lever, STEPS[1])
-        sure = "checked by solving" if low_sure and high_sure else "as far as the time allowed"
-        rows.append((lever.capitalize(), low / 100, high / 100, sure))
-        told.append(f"{lever} from {low:+d} % to {high:+d} %")
-    words = "The same sites stay best, one figure changed at a time, for " + ", ".join(told) + "."
-    columns = (Column("What changes"), Column("Same sites best from", "percent"), Column("to", "percent"),
-               Column("How sure"))
-    return Answered("How firm is the choice of sites?", words, columns, tuple(rows), headline=True)
+
+# ------------------------------------------------------------------ demand off
+
+
+@dataclass(frozen=True)
+class _Off:
+    """Demand off by so many percent: the plan's sites against the best ones."""
+
+    percent: int
+    kept: Found
+    best: Found
+
+    @property
+    def regret(self) -> float | None:
+        """What keeping the sites costs more than the best, at most; None = not known, or no such plan."""
+        return None if self.kept.high is None or self.best.low is None else max(0.0, self.kept.high - self.best.low)
+
+    def words(self) -> str:
+        if self.best.impossible:
+            return "no plan keeps the rules then, with whatever sites"
+        if self.kept.impossible:
+            other = "" if self.best.high is not None else f"; whether others can: {NOT_ANSWERED}"
+            return f"{_fail(self.percent)}{other}"
+        if self.regret is None:
+            return NOT_ANSWERED
+        return "exact" if self.best.exact and self.kept.exact else "at most; the figure itself is not known yet"
+
+
+def _fail(percent: int) -> str:
+    return "these sites cannot carry it" if percent > 0 else "these sites cannot keep the rules then"
 
 
 def demand_off(asker: Asker) -> Answered:
     """What following this plan's sites costs against the best when demand is off."""
-    rows: list[tuple[str | float | None, ...]] = []
-    worst = 0.0
-    for percent in DEMAND_OFF:
-        case = changed(asker.case, "demand", percent)
-        kept, best = asker.kept(case), asker.ask(case)
-        if kept.impossible:
-            rows.append((percent / 100, None, best.high, None, "these sites cannot carry it"))
-            continue
-        if kept.high is None or best.high is None or best.low is None:
-            rows.append((percent / 100, kept.high, best.high, None, "not answered in the time given"))
-            continue
-        regret = max(0.0, kept.high - best.low)
-        worst = max(worst, regret)
-        exact = "exact" if best.exact and kept.exact else "at most"
-        rows.append((percent / 100, kept.high, best.high, regret, exact))
-    words = f"Keeping these sites when demand is off costs up to {money(asker.case, worst)} more than the best."
-    if any(row[3] is None for row in rows):
-        words += " Not every case has a figure; see the last column."
+    asker.asks = 2 * len(DEMAND_OFF)
+    told = sorted((_off(asker, percent) for percent in DEMAND_OFF), key=lambda one: one.percent)
+    rows: list[Row] = [(one.percent / 100, one.kept.high, one.best.high, one.regret, one.words()) for one in told]
     columns = (Column("Demand", "percent"), Column("With these sites", "money"),
-               Column("With the best sites", "money"), Column("Regret", "money"), Column("How sure"))
-    return Answered("What if demand is off?", words, columns, tuple(rows), headline=True)
+               Column("With the best sites found", "money"), Column("These sites cost more, by at most", "money"),
+               Column("How sure"))
+    answered = any(one.regret is not None or one.kept.impossible or one.best.impossible for one in told)
+    return Answered("What if demand is off?", _off_words(asker.case, told), columns, tuple(rows), headline=answered)
+
+
+def _off(asker: Asker, percent: int) -> _Off:
+    case = changed(asker.case, "demand", percent)
+    kept, best = asker.kept(case, ("demand", percent)), asker.ask(case, ("demand", percent))
+    if kept.plan is not None and (best.high is None or (kept.high is not None and kept.high < best.high)):
+        best = best.joined(Found(None, kept.high, kept.plan))
+    return _Off(percent, kept, best)
+
+
+def _off_words(case: Case, told: list[_Off]) -> str:
+    """Name first what the sites cannot carry, then what keeping them costs, then what is not known."""
+    nobody = [one for one in told if one.best.impossible]
+    unable = [one for one in told if one.kept.impossible and one not in nobody]
+    costed = [one for one in told if one.regret is not None and one not in [*nobody, *unable]]
+    missing = [one for one in told if one not in [*nobody, *unable, *costed]]
+    sentences = []
+    for group in ([one for one in unable if one.percent > 0], [one for one in unable if one.percent < 0]):
+        if group:
+            other = "; other sites can" if all(one.best.high is not None for one in group) else ""
+            sentences.append(f"With demand {_percents(group)} {_fail(group[0].percent)}{other}.")
+    if nobody:
+        sentences.append(f"With demand {_percents(nobody)} no sites can keep the rules.")
+    if costed:
+        worst = max(one.regret or 0.0 for one in costed)
+        sentences.append(f"With demand {_percents(costed)} these sites stay the best." if worst == 0 else (
+            f"With demand {_percents(costed)} keeping these sites costs at most {money(case, worst, 'up')} more than "
+            "the best ones would."))
+    if missing:
+        sentences.append(f"{NOT_ANSWERED.capitalize()}: demand {_percents(missing)}.")
+    return " ".join(sentences)
+
+
+def _percents(told: list[_Off]) -> str:
+    return listed([f"{_signed(one.percent)}" for one in told], "and")
+
+
+def _signed(percent: int) -> str:
+    return "0 %" if percent == 0 else f"{percent:+d} %".replace("-", "\u2212")
+
+
+# ------------------------------------------------------------------ ranges
+
+
+@dataclass(frozen=True)
+class _Reach:
+    """Over how many steps the sites were seen to stay best, and whether the step after that was seen to end it."""
+
+    percent: int
+    ended: bool
+    widest: bool
+
+    @property
+    def known(self) -> bool:
+        """Whether the end of the range is known, as far as it is looked for."""
+        return self.ended or self.widest
+
+
+def how_firm(asker: Asker) -> Answered:
+    """Range of each lever over which the same sites stay best, in steps of five percent."""
+    rows: list[Row] = []
+    ranges, missing = [], []
+    for number, lever in enumerate(LEVERS):
+        with asker.part(1 / (len(LEVERS) - number), ASKS):
+            down, up = (_reach(asker, lever, steps) for steps in (tuple(reversed(STEPS[0])), STEPS[1]))
+        none = not any(end.known or end.percent for end in (down, up))
+        low, high = (end.percent / 100 if end.known or end.percent else None for end in (down, up))
+        rows.append((lever.capitalize(), low, high, _sure(down, up)))
+        if none:
+            missing.append(lever)
+        else:
+            ranges.append(_range_words(lever, down, up))
+    words = "The same sites stay best, one figure changed at a time by steps of 5 %: " if ranges else ""
+    words += "; ".join(ranges) + ("." if ranges else "")
+    if any("at least" in told for told in ranges):
+        words += f" What lies beyond \"at least\" was {NOT_ANSWERED}."
+    if missing:
+        words += f" {NOT_ANSWERED.capitalize()}: {', '.join(missing)}."
+    columns = (Column("What changes"), Column("Same sites best from", "percent"), Column("to", "percent"),
+               Column("How sure"))
+    return Answered("How firm is the choice of sites?", words.strip(), columns, tuple(rows), headline=bool(ranges))
+
+
+def _range_words(lever: str, down: _Reach, up: _Reach) -> str:
+    if all(end.known and end.percent for end in (down, up)):
+        return f"{lever} from {_signed(down.percent)} to {_signed(up.percent)}"
+    return f"{lever}: downwards {_side(down, -STEP)}, upwards {_side(up, STEP)}"
+
+
+def _side(end: _Reach, step: int) -> str:
+    """One direction in words: as far as it is known, never farther."""
+    if end.percent:
+        return f"{'' if end.known else 'at least '}to {_signed(end.percent)}"
+    return f"not even at {_signed(step)}" if end.ended else NOT_ANSWERED
+
+
+def _sure(down: _Reach, up: _Reach) -> str:
+    told = [f"{side}: {NOT_ANSWERED}{' beyond that' if end.percent else ''}"
+            for side, end in (("downwards", down), ("upwards", up)) if not end.known]
+    if told:
+        return "; ".join(told)
+    ended = [_signed(end.percent + side * STEP) for side, end in ((-1, down), (1, up)) if end.ended]
+    widest = [_signed(end.percent) for end in (down, up) if end.widest]
+    words = [f"other sites are better at {listed(ended, 'and')}"] if ended else []
+    return "; ".join([*words, *([f"nothing beyond {listed(widest, 'and')} was tried"] if widest else [])])
 
 
 def changed(case: Case, lever: str, percent: int) -> Case:
@@ -65,36 +181,51 @@ def changed(case: Case, lever: str, percent: int) -> Case:
     return case.under(variant)
 
 
-def _reach(asker: Asker, lever: str, steps: tuple[int, ...]) -> tuple[int, bool]:
-    """Last step at which the sites are still best, by bisection.
+def _reach(asker: Asker, lever: str, steps: tuple[int, ...]) -> _Reach:
+    """Last step up to which the sites are seen to be best.
 
-    For rates and fixed costs the steps at which they are best form one range: their cost is linear in the
-    lever, the best cost concave.
+    Bisection finds the end where the steps at which they are best form one range; else each step is asked
+    about. A step that time did not suffice for ends the range that is told.
     """
-    kept, lost = -1, len(steps)
-    sure = True
+    kept, lost, ended = -1, len(steps), False
+    halve = _one_range(asker.case, lever)
     while lost - kept > 1:
-        middle = (kept + lost) // 2
-        best = _still_best(asker, changed(asker.case, lever, steps[middle]))
-        if best is None:
-            sure = False
+        middle = (kept + lost) // 2 if halve else kept + 1
+        best = _still_best(asker, lever, steps[middle])
         if best:
             kept = middle
         else:
-            lost = middle
-    return (steps[kept] if kept >= 0 else 0), sure
+            lost, ended = middle, best is not None
+    return _Reach(steps[kept] if kept >= 0 else 0, ended, kept == len(steps) - 1)
 
 
-def _still_best(asker: Asker, case: Case) -> bool | None:
+def _one_range(case: Case, lever: str) -> bool:
+    """Whether the plan's sites are best over one range of the lever.
+
+    So it is where their cost is linear in it, because the best cost is concave: where no volume is limited and
+    lane, handling and unmet costs keep their proportions, or where the lever leaves deliveries as they are.
+    """
+    if lever == "fixed costs":
+        return True
+    if lever == "lane rates":
+        return bool(np.ptp(case.handling_cost) == 0) and case.unmet_cost is None
+    free = not np.isfinite(case.capacity).any() and not (case.least_volume > 0).any()
+    return free and case.lane_most is None
+
+
+def _still_best(asker: Asker, lever: str, percent: int) -> bool | None:
     """Whether the plan's sites are best for a changed case; None where the time did not allow to tell."""
-    answer = asker.ask(case)
+    case = changed(asker.case, lever, percent)
+    answer = asker.ask(case, (lever, percent))
     if answer.plan is not None and bool((answer.plan.open == asker.base.open).all()) and answer.exact:
         return True
-    kept = asker.kept(case)
-    if kept.impossible or answer.impossible:
+    if answer.impossible or (answer.low is None and answer.high is None):
+        return False if answer.impossible else None
+    kept = asker.kept(case, (lever, percent))
+    if kept.impossible:
         return False
-    if kept.high is None or answer.low is None or answer.high is None:
-        return None
-    if kept.high <= answer.low * (1 + SAME):
+    if kept.high is not None and answer.low is not None and kept.high <= answer.low + SAME * abs(answer.low):
         return True
-    return False if kept.low is not None and kept.low > answer.high * (1 + SAME) else None
+    least, best = kept.low, answer.high
+    return False if least is not None and best is not None and least > best + SAME * abs(best) else None
+

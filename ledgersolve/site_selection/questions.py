@@ -1,31 +1,45 @@
 """The questions a manager asks of a choice of sites, answered ahead by solving, within the time given.
 
 Each answer is checked by re-solving and says whether it is exact, a proven interval, or not answered in the time
-given. The order is the order of need: what comes later gets the time that is left.
+given. Each question has its part of the time; what it leaves goes to the next ones, and what is left in the end
+to those that stayed open.
 """
 
 import time
 from collections.abc import Callable
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 from ledgersolve.findings import Answered
 from ledgersolve.mip import Limits, Solved
-from ledgersolve.site_selection.alternatives import how_many, runner_up, why_closed, why_open
-from ledgersolve.site_selection.asker import Asker
+from ledgersolve.site_selection.alternatives import runner_up, why_closed, why_open
+from ledgersolve.site_selection.asker import LEAST_SECONDS, Asker
 from ledgersolve.site_selection.binding import today_against_plan, what_binds
 from ledgersolve.site_selection.case import Case
+from ledgersolve.site_selection.counts import how_many
 from ledgersolve.site_selection.firmness import demand_off, how_firm
 from ledgersolve.site_selection.plan import Plan
 
-QUESTIONS: tuple[tuple[str, Callable[[Asker], Answered]], ...] = (
-    ("why open", why_open),
-    ("how many", how_many),
-    ("demand off", demand_off),
-    ("why closed", why_closed),
-    ("runner-up", runner_up),
-    ("what binds", what_binds),
-    ("how firm", how_firm),
+
+@dataclass(frozen=True)
+class Question:
+    """A question, the order in which it is asked (the cheap ones first), and its part of the time."""
+
+    name: str
+    ask: Callable[[Asker], Answered]
+    turn: int
+    weight: float
+
+
+QUESTIONS = (
+    Question("why open", why_open, 3, 1.0),
+    Question("why closed", why_closed, 5, 1.5),
+    Question("how many", how_many, 4, 1.0),
+    Question("demand off", demand_off, 1, 1.0),
+    Question("runner-up", runner_up, 6, 0.5),
+    Question("how firm", how_firm, 7, 1.5),
+    Question("what binds", what_binds, 2, 1.0),
 )
+"""In the order in which the answers are shown."""
 
 
 def answer_questions(
@@ -34,14 +48,24 @@ def answer_questions(
     """Answer the questions about a plan, each with the time it took."""
     if solved.plan is None or solved.cost is None:
         return ()
-    clock = limits.start()
-    asker = Asker(case, solved.plan, solved.cost, clock)
-    answers = []
+    asker = Asker(case, solved.plan, solved.cost, limits.start(), solved.bound)
+    answers: dict[str, Answered] = {}
+    by_turn = sorted(QUESTIONS, key=lambda question: question.turn)
+    _ask(asker, by_turn, answers)
+    if asker.clock.left() > LEAST_SECONDS:  # what is settled is not solved again
+        _ask(asker, by_turn, answers)
+    first: tuple[Answered, ...] = ()
     if today is not None and today.plan is not None and today.cost is not None:
-        answers.append(today_against_plan(case, solved.plan, today.plan, today.cost, solved.cost))
-    for name, question in QUESTIONS:
+        first = (today_against_plan(case, solved.plan, today.plan, today.cost, solved.cost),)
+    return (*first, *(answers[question.name] for question in QUESTIONS))
+
+
+def _ask(asker: Asker, questions: list[Question], answers: dict[str, Answered]) -> None:
+    """Ask one after the other, each within its part of the time left; seconds of an earlier round count too."""
+    for number, question in enumerate(questions):
         began = time.monotonic()
-        answer = question(asker)
-        answers.append(replace(answer, seconds=time.monotonic() - began))
-        clock.note(name)
-    return tuple(answers)
+        with asker.part(question.weight / sum(one.weight for one in questions[number:])):
+            answer = question.ask(asker)
+        before = answers[question.name].seconds if question.name in answers else 0.0
+        answers[question.name] = replace(answer, seconds=before + time.monotonic() - began)
+        asker.clock.note(question.name)
