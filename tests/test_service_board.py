@@ -8,10 +8,22 @@ import shutil
 import subprocess
 import time
 from html import escape, unescape
+from pathlib import Path
+from urllib.parse import unquote
 
 import pytest
 
-from ledgersolve.service.board import as_text, boot, gather, health, stale_after, status, sweep_beacons, write_board
+from ledgersolve.service.board import (
+    as_text,
+    boot,
+    exit_code,
+    gather,
+    health,
+    stale_after,
+    status,
+    sweep_beacons,
+    write_board,
+)
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.holder import describe
 from ledgersolve.service.layout import Layout, prepare
@@ -107,6 +119,67 @@ def test_health_does_not_rest_on_the_date(layout):
     assert health(layout.folder) == 0
 
 
+def test_the_state_of_a_killed_service_follows_its_silence(layout):
+    """What it last said of itself no longer counts: no sign of life, its jobs start again, the code is 1."""
+    write(layout, monotonic=time.monotonic() - 73.0, last_scan_unix=time.time() - 73.0)
+    state = status(layout.folder)
+    assert state["state"] == "no sign of life" and state["running"] == [] and exit_code(state) == 1
+    assert [one["name"] for one in state["waiting"]] == ["plan.xlsx", "next.xlsx"] and state["waiting_count"] == 2
+    assert as_text(state).startswith("Service: no sign of life (the last complete look at Inbox was 73 s ago)")
+    assert "plan.xlsx: taken; starts again when the service does" in as_text(state)
+
+
+def test_a_service_that_stopped_does_not_hide_one_that_lives(layout):
+    """Of two, the one that looked last was stopped: the folder is at work all the same."""
+    write(layout, id="live", last_scan_unix=time.time() - 3.0)
+    write(layout, id="stopped", state="stopped", running=[])
+    state = status(layout.folder)
+    assert state["state"] == "at work" and state["well"]
+
+
+def test_what_another_service_runs_does_not_wait(layout):
+    """A job that one service holds is listed once: as running there, not as taken and waiting here."""
+    taken = {"name": "plan.xlsx", "owner": "ann", "why": "taken by h", "job": "J"}
+    write(layout, id="two")
+    write(layout, id="one", running=[], waiting=[taken], waiting_count=1, last_scan_unix=time.time() + 1.0)
+    state = gather(layout, Disk())
+    assert [one["job"] for one in state["running"]] == ["J"]
+    assert state["waiting"] == [] and state["waiting_count"] == 0
+
+
+def test_an_account_without_rights_reads_the_file_for_everybody(layout, monkeypatch):
+    """The service's own folder is closed to it: status.json tells, judged by the time of now."""
+
+    def closed(self, *, follow_symlinks=True):
+        if ".ledgersolve" in self.parts:
+            raise PermissionError(13, "Permission denied", str(self))
+        return real(self, follow_symlinks=follow_symlinks)
+
+    real = Path.stat
+    write(layout)
+    monkeypatch.setattr(Path, "stat", closed)
+    state = status(layout.folder)
+    assert exit_code(state) == 0 and [one["name"] for one in state["running"]] == ["plan.xlsx"]
+    old = json.loads((layout.folder / "status.json").read_text())
+    old["services"][0] |= {"monotonic": time.monotonic() - 90.0, "last_scan_unix": time.time() - 90.0}
+    (layout.folder / "status.json").write_text(json.dumps(old))
+    state = status(layout.folder)
+    assert exit_code(state) == 1 and state["state"] == "no sign of life" and state["running"] == []
+    (layout.folder / "status.json").unlink()
+    state = status(layout.folder)
+    assert exit_code(state) == 3 and "this account may not read" in as_text(state)
+    json.dumps(state)
+
+
+def test_each_state_has_its_exit_code(layout):
+    """0 looked after, 1 not, or out of reach, 2 never served, 3 not for this account; the same with --health."""
+    assert exit_code(status(layout.folder / "gone")) == 1
+    assert "is not there" in as_text(status(layout.folder / "gone"))
+    assert exit_code(status(layout.folder / "Inbox")) == 2
+    write(layout)
+    assert exit_code(status(layout.folder)) == health(layout.folder) == 0
+
+
 def test_another_machines_service_is_judged_by_date(layout):
     """Elsewhere only the dates can be compared."""
     write(layout, boot="another", monotonic=0.0)
@@ -159,19 +232,74 @@ def test_hostile_names_are_shown_literally(text):
     page = render(told)
     assert "<script" not in page and "<img" not in page
     tags = set(re.findall(r"<([a-z0-9]+)", page))
-    assert tags <= {"html", "head", "meta", "title", "style", "body", "h1", "h2", "div", "p", "b", "ul", "li", "span"}
-    assert unescape(page).count(text) >= 10
+    known = {"html", "head", "meta", "title", "style", "body", "h1", "h2", "div", "p", "b", "ul", "li", "span", "a"}
+    assert tags <= known
+    assert unescape(page).lower().count(text.lower()) >= 10
+    (link,) = re.findall(r'<a href="([^"]*)">', page)
+    assert re.fullmatch(r"Returned/[\w.~%-]+", link) and unquote(link) == f"Returned/{text}"
 
 
 def test_the_page_allows_nothing_but_its_own_style():
-    """The policy names the hash of the one style sheet and forbids everything else; nothing is linked."""
+    """The policy names the hash of the one style sheet and forbids all else; only returned files are linked."""
     page = render(picture())
     policy = re.search(r'Content-Security-Policy" content="([^"]*)"', page)[1]
     style = re.search(r"<style>(.*?)</style>", page, re.DOTALL)[1]
     digest = base64.b64encode(hashlib.sha256(style.encode()).digest()).decode()
     assert policy.startswith(f"default-src 'none'; style-src 'sha256-{digest}'")
     assert "unsafe" not in policy
-    assert not re.search(r"\b(src|href|style|on\w+)=", page)
+    assert not re.search(r"\b(src|style|on\w+)=", page)
+    assert re.findall(r"href=\S*", page) == ['href="Returned/old%20%5BX%5D%20solved.xlsx">old']
+
+
+def test_nothing_is_said_of_savings_while_nothing_is_proven():
+    """A job without a bound has a best cost and no word on what could be saved, on the page and the terminal."""
+    told = picture()
+    told["running"][0]["saving"] = None
+    for text in (render(told), as_text(told)):
+        assert "best cost so far 120.00" in text and "could be saved" not in text
+
+
+def test_whose_a_workbook_is_stands_everywhere():
+    """Two files of one name: sub-folder or account tell them apart where they wait, run, came back or are stuck."""
+    told = picture()
+    for key in ("running", "waiting", "returned"):
+        told[key][0]["owner"] = "north"
+    told["alerts"] = [{"name": "x", "owner": "north", "why": "a link"}]
+    page = render(told)
+    assert page.count("from north") == 3 and page.count("for north, 2026-01-02") == 1
+    assert as_text(told).count("(north)") == 4
+
+
+def test_what_is_to_be_fixed_is_listed_once_and_pushes_nothing_away():
+    """Thirty faulty workbooks: six of them with their first fault, then the solved ones."""
+    fault = {"sheet": "Resources", "cell": "B4", "found": "needs 44.6, has 42.", "remedy": "give Press more."}
+    broken = {"returned": "b [X] to fix.xlsx", "outcome": "to fix", "faults": 2, "first_fault": fault,
+              "at": "2026-01-02T03:00:00+00:00"}
+    told = picture()
+    told["returned"] += [broken] * 30
+    page = render(told)
+    assert page.count("b [X] to fix.xlsx") == 6 and "and 24 more" in page
+    assert "2 to fix, the first: Resources B4: needs 44.6, has 42. Give Press more." in page
+
+
+def test_texts_on_the_page_are_sentences():
+    """No leading colon, no double stop; a proven plan is not said to be above the best possible."""
+    fault = {"sheet": "", "cell": "", "found": "the file is empty (0 bytes)", "remedy": "copy the file again"}
+    told = picture()
+    told["returned"][0] |= {"gap_pct": 0.001}
+    told["returned"].append({"returned": "e.xlsx", "outcome": "to fix", "faults": 1, "first_fault": fault})
+    page = render(told)
+    assert "The file is empty (0 bytes). Copy the file again.</div>" in page
+    assert "proven best, total cost 1,234.50<" in page
+    told["returned"][0]["verdict"] = "best found"
+    assert "at most 0.001 % above the best possible" in render(told)
+
+
+def test_the_page_does_not_say_that_all_is_well_by_its_colour():
+    """A dead service leaves its last page behind: only trouble has a colour, the time tells the rest."""
+    page = render(picture())
+    assert '<div class="pulse"><p><b>At work</b> at the last complete look at Inbox: <b>2026-01-02' in page
+    assert "border-left: .4rem solid var(--soft)" in page
 
 
 def test_the_page_tells_when_it_is_stale():
@@ -225,5 +353,8 @@ def test_the_terminal_gets_the_same_facts(layout):
     """The text of the command names what runs, waits and came back."""
     write(layout)
     text = as_text(status(layout.folder))
-    for words in ("plan.xlsx: search, 12 s, best 120.00", "next.xlsx: number 1 in the queue", "old [X] solved.xlsx"):
+    for words in (
+        "plan.xlsx: search, for 12 s, best cost so far 120.00", "next.xlsx (ann): number 1 in the queue",
+        "old [X] solved.xlsx",
+    ):  # fmt: skip
         assert words in text

@@ -6,7 +6,7 @@ from zoneinfo import ZoneInfo
 import pytest
 
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.intake import Intake, is_paused, quiet_until
+from ledgersolve.service.intake import Intake, pause_file, quiet_until
 from ledgersolve.service.layout import Layout, prepare
 from tests.service_share import FaultyDisk, Plan, names
 
@@ -35,12 +35,31 @@ def test_quiet_hours_follow_the_clocks_of_the_zone():
 
 
 def test_a_pause_file_pauses(tmp_path):
-    """PAUSE or PAUSE.txt, in any case; nothing else."""
-    assert not is_paused(Disk(), tmp_path)
+    """PAUSE or PAUSE.txt, in any case; nothing else. The words name the file that is there."""
+    prepare(tmp_path, Disk())
+    assert not pause_file(Disk(), tmp_path)
     (tmp_path / "paused").touch()
-    assert not is_paused(Disk(), tmp_path)
+    assert not pause_file(Disk(), tmp_path)
     (tmp_path / "Pause.TXT").touch()
-    assert is_paused(Disk(), tmp_path)
+    assert pause_file(Disk(), tmp_path) == "Pause.TXT"
+    state, why = Intake(Layout(tmp_path), Disk(), 0).state()
+    assert state == "paused" and "a file Pause.TXT" in why
+
+
+def test_a_folder_of_jobs_that_is_gone_holds_new_work(tmp_path):
+    """It is tried once a minute, and at once when a job met trouble; the words name it and the setting."""
+    now = [0.0]
+    prepare(tmp_path, Disk())
+    root = tmp_path / "work"
+    root.mkdir()
+    intake = Intake(Layout(tmp_path), Disk(), 0, private_root=root, clock=lambda: now[0])
+    assert intake.state() == ("at work", "")
+    root.rmdir()
+    assert intake.state() == ("at work", "")
+    state, why = intake.state(doubts=True)
+    assert state == "held" and str(root) in why and "private_folder" in why
+    root.mkdir()
+    assert intake.state() == ("at work", "")
 
 
 def test_returned_is_tried_once_a_minute_and_at_once_while_it_fails(tmp_path):

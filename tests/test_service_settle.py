@@ -10,7 +10,7 @@ from pathlib import Path
 import pytest
 
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.settle import DEEPEST, Patience, Settler
+from ledgersolve.service.settle import ALERT_AFTER, DEEPEST, Patience, Settler, account
 from ledgersolve.service.whole import Shape, nobody_writes, shape
 from tests.service_share import package
 
@@ -208,8 +208,92 @@ def test_sub_folders_are_queues_of_their_owners(tmp_path, settler, clock):
     (tmp_path / "north" / "march" / "a.xlsx").write_bytes(package())
     (tmp_path / "b.xlsx").write_bytes(package())
     assert {drop.name: drop.owner for drop in settler.look()} == {
-        "a.xlsx": "north", "b.xlsx": f"account {os.getuid()}",
+        "a.xlsx": "north", "b.xlsx": account((tmp_path / "b.xlsx").lstat()),
     }
+
+
+def test_an_account_has_its_name_where_the_machine_knows_it(tmp_path):
+    """People read a name; a number that no account has stays a number."""
+    (tmp_path / "a").touch()
+    root = os.stat_result((0o100644, 0, 0, 1, 0, 0, 0, 0, 0, 0))
+    nobody_there = os.stat_result((0o100644, 0, 0, 1, 3_999_999_999, 0, 0, 0, 0, 0))
+    assert account(root) == "account root"
+    assert account(nobody_there) == "account 3999999999"
+
+
+class Closed(Disk):
+    """A disk on which some names are not for this account."""
+
+    shut = ("north",)
+    unreadable = ()
+    unlisted = ()
+
+    def may_change(self, folder):
+        return folder.name not in self.shut
+
+    def may_read(self, path):
+        return path.name not in self.unreadable
+
+    def entries(self, folder):
+        if folder.name in self.unlisted:
+            raise PermissionError(13, "Permission denied")
+        return super().entries(folder)
+
+
+def test_drops_in_a_sub_folder_without_rights_are_told_at_once_and_all(tmp_path, clock):
+    """Each of them, in every look, with the sub-folder and the remedy; drops elsewhere go on."""
+    (tmp_path / "north").mkdir()
+    for name in ("north/a.xlsx", "north/b.xlsx", "north/c.xlsx", "d.xlsx"):
+        (tmp_path / name).write_bytes(package())
+    settler = Settler(Closed(), tmp_path, PATIENCE, clock, sure=False)
+    for _ in range(5):
+        stuck = [found for found in settler.look() if found.alert]
+        assert [found.name for found in stuck] == ["a.xlsx", "b.xlsx", "c.xlsx"]
+        assert all("out of the sub-folder north" in found.why and "chmod g+rwx" in found.why for found in stuck)
+        assert all(found.blocked and not found.ready for found in stuck)
+        clock.now += 1.0
+    assert [found.name for found in settler.look() if found.ready] == ["d.xlsx"]
+
+
+def test_a_sub_folder_that_cannot_be_listed_is_told(tmp_path, clock):
+    """What is in it nobody knows; the folder itself is named."""
+    (tmp_path / "north").mkdir()
+    disk = Closed()
+    disk.unlisted = ("north",)
+    (found,) = Settler(disk, tmp_path, PATIENCE, clock).look()
+    assert found.alert and found.name == "north" and "may not look into" in found.why
+
+
+def test_a_file_without_rights_is_never_called_being_copied(tmp_path, clock):
+    """Its words are right from the first look; the administrator is told once it stayed so for the quiet time."""
+    (tmp_path / "plan.xlsx").write_bytes(package())
+    disk = Closed()
+    disk.unreadable = ("plan.xlsx",)
+    settler = Settler(disk, tmp_path, PATIENCE, clock)
+    found = one(settler)
+    assert "may not read" in found.why and not found.alert and found.look_in == PATIENCE.quiet
+    clock.now += 2.0
+    assert one(settler).alert and one(settler).blocked
+    disk.unreadable = ()
+    (tmp_path / "plan.xlsx").chmod(0o660)  # changes the file's status: it is looked at anew
+    settler.look()
+    clock.now += 2.1
+    assert one(settler).ready
+
+
+def test_a_file_refused_again_and_again_stays_an_alert_while_it_is_tried(tmp_path, settler, clock):
+    """The list for the administrator does not change with each try."""
+    path = tmp_path / "plan.xlsx"
+    path.write_bytes(package())
+    settler.look()
+    clock.now += 3.0
+    counts = []
+    for _ in range(ALERT_AFTER):
+        counts.append(settler.refused(path, PermissionError(13, "Permission denied")))
+        clock.now += 100.0
+    assert counts == [1, 2, 3]
+    found = one(settler)
+    assert found.ready and found.alert and "cannot be read or moved" in found.why
 
 
 def test_folders_too_deep_are_told_not_walked(tmp_path, settler):

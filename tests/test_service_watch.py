@@ -219,6 +219,78 @@ def test_pause_holds_new_work_and_keeps_drops(tmp_path, quick):
     assert len(names(tmp_path / "Returned")) == 1
 
 
+def test_what_was_taken_is_shown_until_it_is_back(tmp_path, quick):
+    """Out of Inbox and not running: after a failed attempt, given back, paused, and when the service stopped."""
+    watcher = quick_watcher(tmp_path, beat_seconds=100.0)
+    clerk = watcher.desk.protocol
+    job = clerk.claim(drop(tmp_path, "north/plan.xlsx"))
+    clerk.fail(job, clerk.lease(clerk.view(job), {"owner": "north"}), "it was ended by the system (SIGSEGV)")
+    watcher.desk.wait_for(job, 100.0)
+    watcher.step()
+    (told,) = watcher.picture()["waiting"]
+    assert told == {
+        "name": "plan.xlsx", "owner": "north", "job": job, "why": "taken; attempt 1 of 3 failed, starts again"
+    }
+    clerk.release(job, clerk.lease(clerk.view(job), {"owner": "north"}))
+    (tmp_path / "PAUSE").touch()
+    watcher.desk.not_before.clear()
+    watcher._next_scan = 0.0
+    watcher.step()
+    assert [one["why"] for one in watcher.picture()["waiting"]] == [
+        "taken and given back, starts again: held back by PAUSE"
+    ]
+    path = drop(tmp_path, "next.xlsx")
+    watcher._next_scan = 0.0
+    watcher.step()
+    watcher.leave()
+    left = {one["name"]: one["why"] for one in status(tmp_path)["waiting"]}
+    assert left == {
+        "plan.xlsx": "taken and given back, starts again: waits until the service is started again",
+        "next.xlsx": "waits until the service is started again",
+    }
+    assert path.exists() and status(tmp_path)["waiting_count"] == 2
+
+
+def test_a_job_that_another_process_holds_names_it(tmp_path, quick):
+    """No lease of ours, no sign that it is left behind: taken by that machine."""
+    watcher = quick_watcher(tmp_path, beat_seconds=100.0)
+    other = Protocol(Layout(tmp_path), Disk(), {"host": "planner2"})
+    job = other.claim(drop(tmp_path, "plan.xlsx"))
+    other.lease(other.view(job), {"owner": "north"})
+    watcher.step()
+    (told,) = watcher.picture()["waiting"]
+    assert told["why"].startswith("taken by planner2") and told["owner"] == "north"
+
+
+def test_the_owner_is_told_with_each_returned_workbook(tmp_path, quick):
+    """Two of one name from two sub-folders, one of them taken over from a process that died: none is mixed up."""
+    watcher = quick_watcher(tmp_path, beat_seconds=0.001)
+    other = Protocol(Layout(tmp_path), Disk(), {"host": "other"})
+    job = other.claim(drop(tmp_path, "north/plan.xlsx", content="1"))
+    other.lease(other.view(job), {"owner": "north"})
+    drop(tmp_path, "south/plan.xlsx", content="2")
+    assert run_until_empty(watcher)
+    watcher.write_board()
+    told = status(tmp_path)["returned"]
+    assert {one["owner"]: one["job"] == job for one in told} == {"north": True, "south": False}
+
+
+def test_a_drop_while_paused_is_told_as_held_back_soon(tmp_path, quick):
+    """The page follows within its pace, not at the next turn of a quarter minute."""
+    watcher = quick_watcher(tmp_path)
+    now = [1000.0]
+    watcher.clock = lambda: now[0]
+    (tmp_path / "PAUSE").touch()
+    for _ in range(4):
+        watcher.step()
+        now[0] += 3.0
+    drop(tmp_path, "plan.xlsx")
+    for _ in range(2):
+        watcher.step()
+        now[0] += 3.0
+    assert [one["why"] for one in status(tmp_path)["waiting"]] == ["held back by PAUSE"]
+
+
 def test_quiet_hours_hold_new_work(tmp_path, quick):
     """A window that covers the whole day starts nothing."""
     watcher = quick_watcher(tmp_path, quiet_hours=("00:00-00:00",))

@@ -11,9 +11,13 @@ from typing import Any
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.holder import is_gone
 from ledgersolve.service.layout import Layout
-from ledgersolve.service.page import render
+from ledgersolve.service.page import local_time, render, running_words
+from ledgersolve.service.waiting import as_waiting
 
 NEVER_SERVED = "never served"
+NOT_READABLE = "not readable"
+NO_SIGN_OF_LIFE = "no sign of life"
+_TELLS_ITSELF = ("starting", "stopped", "suspended", "held")
 MOST_SHOWN = 200
 MOST_RETURNED = 50
 _SERVICE = (
@@ -59,8 +63,13 @@ def gather(layout: Layout, disk: Disk, own: dict[str, Any] | None = None) -> dic
             if isinstance(found, dict) and (own is None or found.get("id") != own.get("id")):
                 beacons.append(found)
     beacons.sort(key=lambda beacon: -float(beacon.get("last_scan_unix") or 0.0))
-    newest = beacons[0] if beacons else {}
-    live = [beacon for beacon in beacons if beacon is own or not _trouble(beacon)] or beacons[:1]
+    live = [beacon for beacon in beacons if beacon is own or not _trouble(beacon)]
+    told = live or beacons[:1]
+    newest = next((beacon for beacon in live if not _trouble(beacon)), told[0] if told else {})
+    running = _all(live, "running")
+    taken = {one.get("job") for one in running}
+    seen = [one for one in newest.get("waiting", []) if one.get("job", "") not in taken]
+    left = [] if live else [as_waiting(one) for one in newest.get("running", [])]
     returned = sorted(_all(beacons, "returned"), key=lambda one: str(one.get("at", "")), reverse=True)
     return {
         "state": newest.get("state", "not running"),
@@ -70,11 +79,11 @@ def gather(layout: Layout, disk: Disk, own: dict[str, Any] | None = None) -> dic
         "last_scan_unix": newest.get("last_scan_unix"),
         "stale_after_seconds": newest.get("stale_after_seconds", stale_after(0.0)),
         "services": [{key: beacon.get(key) for key in _SERVICE} for beacon in beacons],
-        "waiting": newest.get("waiting", [])[:MOST_SHOWN],
-        "waiting_count": newest.get("waiting_count", 0),
-        "running": _all(live, "running"),
+        "waiting": [*left, *seen][:MOST_SHOWN],
+        "waiting_count": newest.get("waiting_count", 0) + len(left) + len(seen) - len(newest.get("waiting", [])),
+        "running": running,
         "returned": returned[:MOST_RETURNED],
-        "alerts": _all(live, "alerts")[:MOST_SHOWN],
+        "alerts": _all(told, "alerts")[:MOST_SHOWN],
     }
 
 
@@ -100,20 +109,49 @@ def _all(beacons: Iterable[dict[str, Any]], key: str) -> list[dict[str, Any]]:
 def status(folder: Path) -> dict[str, Any]:
     """The state of a served folder, ready for JSON.
 
-    ``well`` says whether a service looks after it, ``trouble`` in words why not.
+    ``well`` says whether a service looks after it, ``trouble`` in words why not. An account that may not
+    look into the service's own folder is told what ``status.json`` says.
     """
     layout = Layout(folder)
-    if not layout.share_id.exists():
-        return _nothing(NEVER_SERVED, "the folder was never served, or its share is not mounted")
     try:
-        state = gather(layout, Disk())
+        if not folder.is_dir():
+            return _nothing("out of reach", f"{folder} is not there; is its share mounted?")
+        layout.share_id.stat()
+        return _judged(gather(layout, Disk()))
+    except (FileNotFoundError, NotADirectoryError):
+        return _nothing(NEVER_SERVED, "the folder was never served, or its share is not mounted")
+    except PermissionError:
+        return _public(folder)
     except OSError as error:
         return _nothing("out of reach", f"the share is out of reach ({error})")
+
+
+def _public(folder: Path) -> dict[str, Any]:
+    """The state as the file for everybody has it."""
+    file = folder / "status.json"
+    try:
+        found = json.loads(file.read_bytes())
+        return _judged(_nothing("", "") | found)
+    except (OSError, ValueError, TypeError, AttributeError):
+        sentence = (
+            f"this account may not read {file}: ask as a member of the folder's group, as the service's account "
+            "or as root"
+        )
+        return _nothing(NOT_READABLE, sentence)
+
+
+def _judged(state: dict[str, Any]) -> dict[str, Any]:
+    """The state with the verdict of now: whether any of the services lives."""
     troubles = [_trouble(service) for service in state["services"]]
     if not troubles:
-        state["trouble"] = "no service is running"
+        state |= {"state": "not running", "trouble": "no service is running"}
     elif all(troubles):
         state["trouble"] = troubles[0]
+        if state["state"] not in _TELLS_ITSELF or "ago" in troubles[0]:
+            waiting = [*map(as_waiting, state["running"]), *state["waiting"]]
+            count = state["waiting_count"] + len(state["running"])
+            state |= {"state": NO_SIGN_OF_LIFE, "why": troubles[0], "running": []}
+            state |= {"waiting": waiting, "waiting_count": count}
     else:
         state["trouble"] = ""
     state["well"] = not state["trouble"]
@@ -127,12 +165,21 @@ def _nothing(state: str, trouble: str) -> dict[str, Any]:
     return told | lists
 
 
-def health(folder: Path) -> int:
-    """0 where a service looks after the folder, 1 where none does, 2 where it was never served."""
-    state = status(folder)
+def exit_code(state: dict[str, Any]) -> int:
+    """The exit code of the command ``status``, with and without ``--health``.
+
+    0 where a service looks after the folder (also paused or in quiet hours), 1 where none does, it can take
+    nothing in, or the share is out of reach, 2 where the folder was never served, 3 where this account may
+    not know.
+    """
     if state["well"]:
         return 0
-    return 2 if state["state"] == NEVER_SERVED else 1
+    return {NEVER_SERVED: 2, NOT_READABLE: 3}.get(str(state["state"]), 1)
+
+
+def health(folder: Path) -> int:
+    """The exit code for a folder; see ``exit_code``."""
+    return exit_code(status(folder))
 
 
 def _trouble(service: dict[str, Any]) -> str:
@@ -170,30 +217,25 @@ def now_words() -> str:
 
 
 def as_text(state: dict[str, Any]) -> str:
-    """The state as lines for a terminal."""
-    head = f"Service: {state['state']}" + (f" ({state['why']})" if state["why"] else "")
-    lines = [head, f"Last complete look at Inbox: {state['last_scan'] or 'never'}"]
-    if state.get("trouble"):
+    """The state as lines for a terminal; times are this machine's."""
+    why = state["why"] or state.get("trouble", "")
+    lines = [f"Service: {state['state']}" + (f" ({why})" if why else "")]
+    lines.append(f"Last complete look at Inbox: {local_time(state['last_scan']) or 'never'}")
+    if state.get("trouble") and state["trouble"] != why:
         lines.append(f"Trouble: {state['trouble']}")
-    lines += _section("Needs the administrator", [f"{one['name']}: {one['why']}" for one in state["alerts"]])
-    lines += _section("Running", [_running_line(one) for one in state["running"]])
-    waiting = [f"{one['name']}: {one['why']}" for one in state["waiting"]]
+    lines += _section("Needs the administrator", [_line(one, one["why"]) for one in state["alerts"]])
+    lines += _section("Running", [_line(one, ", ".join(running_words(one))) for one in state["running"]])
+    waiting = [_line(one, one["why"]) for one in state["waiting"]]
     more = state["waiting_count"] - len(waiting)
-    lines += _section("Waiting", waiting + ([f"and {more} more"] if more > 0 else []))
-    lines += _section("Came back", [f"{one['returned']}" for one in state["returned"]])
+    lines += _section("Waiting", waiting + ([f"and {more} more"] if more > 0 else []), state["waiting_count"])
+    lines += _section("Came back", [_line({**one, "name": one["returned"]}, "") for one in state["returned"]])
     return "\n".join(lines)
 
 
-def _section(title: str, lines: list[str]) -> list[str]:
-    return [f"{title}: {len(lines) or 'nothing'}", *(f"  {line}" for line in lines)]
+def _section(title: str, lines: list[str], count: int | None = None) -> list[str]:
+    return [f"{title}: {(len(lines) if count is None else count) or 'nothing'}", *(f"  {line}" for line in lines)]
 
 
-def _running_line(one: dict[str, Any]) -> str:
-    words = [f"{one['name']}: {one.get('stage') or 'reading'}, {one.get('elapsed') or 0:.0f} s"]
-    if one.get("best") is not None:
-        words.append(f"best {one['best']:,.2f}")
-    if one.get("saving") is not None:
-        words.append(f"at most {one['saving']:,.2f} could be saved")
-    if one.get("left") is not None:
-        words.append(f"{one['left']:.0f} s left")
-    return ", ".join(words)
+def _line(one: dict[str, Any], words: str) -> str:
+    owner = f" ({one['owner']})" if one.get("owner") else ""
+    return f"{one['name']}{owner}" + (f": {words}" if words else "")

@@ -83,6 +83,12 @@ class Desk:
     returned: list[dict[str, Any]] = field(default_factory=list)
     not_before: dict[str, float] = field(default_factory=dict)
     alerts: dict[str, dict[str, str]] = field(default_factory=dict)
+    doubts: bool = False
+
+    def take_doubts(self) -> bool:
+        """Whether a job met trouble with folders since the last time this was asked."""
+        doubts, self.doubts = self.doubts, False
+        return doubts
 
     def running(self) -> list[Running]:
         """What runs, for the choice of the next."""
@@ -125,7 +131,7 @@ class Desk:
             tray.report = Report("share lost", str(error))
             return True
         tray.future.add_done_callback(lambda _: self.ring())
-        logger.info("job %s: %s started (attempt %d)", tray.job, tray.name, generation)
+        logger.info("job %s: %s of %s started (attempt %d)", tray.job, tray.name, show(owner), generation)
         return True
 
     def _order(self, tray: Tray) -> Order:
@@ -154,7 +160,8 @@ class Desk:
             "The administrator was told. Send them this file, or change the workbook and drop it again.",
         ]
         logger.error("job %s: %s is given up: %s", tray.job, tray.name, "; ".join(reasons))
-        self.alerts[tray.job] = {"name": tray.name, "why": f"stops the program: {last} (job {tray.job})"}
+        why = f"stops the program: {last} (job {tray.job})"
+        self.alerts[tray.job] = {"name": tray.name, "owner": show(tray.owner), "why": why}
         made = flagged_workbook(tray.name, "This workbook stops the program", sentences, tray.job)
         finished = self.protocol.layout.new_tmp("flagged")
         self.protocol.disk.write_new(finished, made)
@@ -199,7 +206,10 @@ class Desk:
         else:
             self.protocol.release(tray.job, tray.generation)
             self.wait_for(tray.job, self.settings.retry_seconds)
-            logger.info("job %s: given back (%s: %s)", tray.job, report.end, report.reason)
+            lost = report.end == "share lost"
+            self.doubts |= lost
+            level = logging.WARNING if lost else logging.INFO
+            logger.log(level, "job %s: given back (%s: %s)", tray.job, report.end, report.reason)
 
     def _answer(self, tray: Tray, report: Report) -> None:
         if tray.handover is None and report.finished is not None:
@@ -210,7 +220,9 @@ class Desk:
                 name=name,
                 outcome=report.outcome,
                 input_sha256=report.input_sha256,
-                report={**report.words, "size": report.size, "took": round(report.seconds, 3)},
+                report={
+                    **report.words, "owner": show(tray.owner), "size": report.size, "took": round(report.seconds, 3),
+                },
             )
             tray.handover = Handover(reply, report.finished)
             self.estimates.learn(report.size, report.seconds)
@@ -232,6 +244,7 @@ class Desk:
             self.wait_for(view.job, _PUBLISH_WAIT)
             self.alerts[view.job] = {
                 "name": view.reply.name,
+                "owner": show(str(view.reply.report.get("owner") or "")),
                 "why": f"answered, but cannot be put into Returned ({error.strerror or error}); tried again",
             }
             logger.error("job %s: not published yet (%s)", view.job, error)
@@ -249,7 +262,7 @@ class Desk:
         entry |= {"at": now_words(), "job": view.job}
         entry |= {key: reply.report[key] for key in _TOLD if reply.report.get(key) is not None}
         self.returned = [entry, *self.returned][:_RETURNED_KEPT]
-        logger.info("job %s: returned %s", view.job, show(name))
+        logger.info("job %s: returned %s to %s", view.job, show(name), entry.get("owner") or "its owner")
 
     # ---- signs of life and the end -----------------------------------------------------------------
 
@@ -270,11 +283,12 @@ class Desk:
             best, bound = words.get("best"), words.get("bound")
             yield {
                 "name": tray.name,
+                "owner": show(tray.owner),
                 "job": tray.job,
                 "since": tray.since,
                 "stage": words.get("stage"),
                 "best": best,
-                "saving": None if best is None or bound is None else max(0.0, best - bound),
+                "saving": _saving(best, bound),
                 "elapsed": round(self.clock() - tray.started, 1),
                 "left": words.get("left"),
             }
@@ -291,4 +305,9 @@ class Desk:
             time.sleep(0.05)
 
 
-_TOLD = ("title", "verdict", "total_cost", "lower_bound", "gap_pct", "faults", "first_fault", "reason")
+def _saving(best: float | None, bound: float | None) -> float | None:
+    """How much a better plan could save at most; None where nothing is proven yet, or nothing is left."""
+    return best - bound if best is not None and bound is not None and best > bound else None
+
+
+_TOLD = ("owner", "title", "verdict", "total_cost", "lower_bound", "gap_pct", "faults", "first_fault", "reason")

@@ -1,6 +1,7 @@
 """When nothing new is started: PAUSE, quiet hours, no space, no way back. What runs ends as usual."""
 
 import math
+import tempfile
 import time
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
@@ -14,6 +15,7 @@ from ledgersolve.service.layout import SELFTEST, Layout, discard
 
 _PAUSE_NAMES = ("pause", "pause.txt")
 _PROBE_SECONDS = 60.0
+_PROBE_BYTES = 1 << 16
 _MEGABYTE = 1 << 20
 
 
@@ -26,14 +28,22 @@ class Intake:
     free_bytes: int = 500 << 20
     quiet_hours: tuple[str, ...] = ()
     time_zone: str = ""
+    private_root: Path | None = None
+    """Where jobs of this machine work; not looked at where None."""
     clock: Callable[[], float] = time.monotonic
     _next_probe: float = -math.inf
     _trouble: str = ""
 
-    def state(self) -> tuple[str, str]:
-        """``at work``, or ``paused``, ``quiet hours`` or ``held`` with the reason."""
-        if is_paused(self.disk, self.layout.folder):
-            return "paused", "There is a file PAUSE in the folder; remove it to go on."
+    def state(self, *, doubts: bool = False) -> tuple[str, str]:
+        """``at work``, or ``paused``, ``quiet hours`` or ``held`` with the reason.
+
+        ``doubts``: a job met trouble with folders, so they are tried now and not when the minute is over.
+        """
+        if doubts:
+            self._next_probe = -math.inf
+        pause = pause_file(self.disk, self.layout.folder)
+        if pause:
+            return "paused", f"There is a file {pause} in the folder; remove it to go on."
         until = quiet_until(self.quiet_hours, local_now(self.time_zone))
         if until is not None:
             return "quiet hours", f"Nothing new is started before {until:%Y-%m-%d %H:%M}."
@@ -48,7 +58,7 @@ class Intake:
         return self.disk.free_bytes(self.layout.private) >= max(self.free_bytes, 5 * size)
 
     def _probe(self) -> str:
-        """Whether Returned takes files: tried at most once a minute, and at each look while it does not."""
+        """Whether Returned and the jobs' folder take files: tried once a minute, at each look while they do not."""
         now = self.clock()
         if now >= self._next_probe or self._trouble:
             self._next_probe = now + _PROBE_SECONDS
@@ -59,12 +69,27 @@ class Intake:
             except OSError as error:
                 self._trouble = f"Returned takes no files ({error.strerror}); nothing new is taken in."
             discard(self.disk, probe)
+            if self.private_root is not None and not self._trouble:
+                self._trouble = private_trouble(self.private_root)
         return self._trouble
 
 
-def is_paused(disk: Disk, folder: Path) -> bool:
-    """Whether the operator put a file PAUSE (or PAUSE.txt) into the served folder."""
-    return any(name.lower() in _PAUSE_NAMES for name in disk.names(folder))
+def private_trouble(root: Path) -> str:
+    """Why jobs cannot work in a folder of this machine; empty where they can."""
+    try:
+        with tempfile.TemporaryFile(dir=root) as probe:
+            probe.write(bytes(_PROBE_BYTES))
+    except OSError as error:
+        return (
+            f"Jobs cannot work in {root} ({error.strerror or error}). Make that folder one that the service may "
+            "write to, or name another one in the setting private_folder."
+        )
+    return ""
+
+
+def pause_file(disk: Disk, folder: Path) -> str:
+    """Name of the file PAUSE (or PAUSE.txt) that the operator put into the served folder; empty where none is."""
+    return next((name for name in disk.names(folder) if name.lower() in _PAUSE_NAMES), "")
 
 
 def quiet_until(windows: Sequence[str], now: datetime) -> datetime | None:

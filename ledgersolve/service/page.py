@@ -3,8 +3,10 @@
 import base64
 import hashlib
 import math
+from datetime import datetime
 from html import escape
 from typing import Any
+from urllib.parse import quote
 
 _STYLE = """
 :root { --ink: #17324d; --soft: #5a6b7b; --line: #d7dee5; --paper: #fbfaf7; --card: #ffffff;
@@ -18,7 +20,7 @@ body { margin: 0 auto; max-width: 76rem; padding: 1rem; background: var(--paper)
 h1 { font-size: 1.35rem; margin: 0 0 .25rem; }
 h2 { font-size: 1.05rem; margin: 1.75rem 0 .5rem; }
 .count { color: var(--soft); font-weight: normal; }
-.pulse { background: var(--card); border: 1px solid var(--line); border-left: .4rem solid var(--good);
+.pulse { background: var(--card); border: 1px solid var(--line); border-left: .4rem solid var(--soft);
   border-radius: .4rem; padding: .75rem 1rem; }
 .pulse.held { border-left-color: var(--fix); }
 .pulse p { margin: .2rem 0; }
@@ -31,21 +33,22 @@ li { border-bottom: 1px solid var(--line); padding: .55rem 0; }
 .what { overflow-wrap: anywhere; }
 .mark { display: inline-block; min-width: 4.6rem; font-weight: 600; }
 .solved { color: var(--good); } .fix { color: var(--fix); } .failed { color: var(--bad); }
-.runs { color: var(--run); }
+.runs, a { color: var(--run); }
 """
 _REFRESH_SECONDS = 10
 _MOST_WAITING = 25
+_MOST_TO_FIX = 6
+_MOST_SOLVED = 15
+_PROVEN = "proven best"
 
 
 def render(state: dict[str, Any]) -> str:
     """The whole page; every text from outside is escaped, nothing is loaded, nothing can run."""
     digest = base64.b64encode(hashlib.sha256(_STYLE.encode("utf-8")).digest()).decode("ascii")
     policy = f"default-src 'none'; style-src 'sha256-{digest}'; base-uri 'none'; form-action 'none'"
+    solved = [one for one in state["returned"] if one.get("outcome") == "solved"]
     fixes = [one for one in state["returned"] if one.get("outcome") != "solved"]
     waits = [_plain(one) for one in state["waiting"][:_MOST_WAITING]]
-    more = int(state["waiting_count"]) - len(waits)
-    if more > 0:
-        waits.append(f'<span class="soft">and {more:,} more</span>')
     alerts = [_plain(one) for one in state["alerts"]]
     parts = [
         _pulse(state),
@@ -54,8 +57,8 @@ def render(state: dict[str, Any]) -> str:
         _section("Running now", [_running(one) for one in state["running"]]),
         _section("Waiting", waits, int(state["waiting_count"])),
         "</div><div>",
-        _section("Needs fixing", [_fix(one) for one in fixes]) if fixes else "",
-        _section("Came back", [_returned(one) for one in state["returned"]]),
+        _section("Came back to be fixed", [_fix(one) for one in fixes[:_MOST_TO_FIX]], len(fixes)),
+        _section("Came back solved", [_solved(one) for one in solved[:_MOST_SOLVED]], len(solved)),
         "</div></div>",
     ]
     return (
@@ -84,8 +87,8 @@ def _pulse(state: dict[str, Any]) -> str:
     return (
         f"<h1>{_text(_headline(state))}</h1>"
         f'<div class="pulse{"" if at_work else " held"}">'
-        f"<p><b>{_text(str(state['state']).capitalize())}</b></p>{why}"
-        f"<p>Last complete look at Inbox: <b>{_text(_time(state['last_scan']))}</b></p>"
+        f"<p><b>{_text(str(state['state']).capitalize())}</b> at the last complete look at Inbox: "
+        f"<b>{_text(_time(state['last_scan']))}</b></p>{why}"
         f'<p class="soft">If that is more than {minutes} {unit} ago, the service is not running: tell the '
         "administrator. Nothing that was dropped is lost. This page loads itself anew every "
         f"{_REFRESH_SECONDS} seconds.</p></div>"
@@ -94,51 +97,76 @@ def _pulse(state: dict[str, Any]) -> str:
 
 def _section(title: str, entries: list[str], count: int | None = None) -> str:
     number = len(entries) if count is None else count
-    body = "".join(f"<li>{entry}</li>" for entry in entries) or '<li class="soft">nothing</li>'
+    body = "".join(f"<li>{entry}</li>" for entry in entries)
+    if number > len(entries):
+        body += f'<li class="soft">and {number - len(entries):,} more</li>'
+    body = body or '<li class="soft">nothing</li>'
     return f'<h2>{_text(title)} <span class="count">{number:,}</span></h2><ul>{body}</ul>'
 
 
 def _plain(one: dict[str, Any]) -> str:
-    return f'<div class="name">{_text(one.get("name"))}</div><div class="what">{_text(one.get("why"))}</div>'
+    owner = f'<div class="soft">from {_text(one["owner"])}</div>' if one.get("owner") else ""
+    return f'<div class="name">{_text(one.get("name"))}</div><div class="what">{_text(one.get("why"))}</div>{owner}'
+
+
+def running_words(one: dict[str, Any]) -> list[str]:
+    """Where a running job stands. Nothing is said of what could be saved while nothing is proven."""
+    words = [str(one.get("stage") or "reading"), f"for {_duration(float(one.get('elapsed') or 0.0))}"]
+    if one.get("best") is not None:
+        words.append(f"best cost so far {float(one['best']):,.2f}")
+        if one.get("saving"):
+            words.append(f"at most {_up(float(one['saving']), 2):,.2f} could be saved")
+    if one.get("left") is not None:
+        words.append(f"at most {_duration(float(one['left']))} left")
+    return words
 
 
 def _running(one: dict[str, Any]) -> str:
-    words = [f'<span class="runs">{_text(one.get("stage") or "reading")}</span>']
-    if one.get("best") is not None:
-        words.append(f"best cost so far {float(one['best']):,.2f}")
-    if one.get("saving") is not None:
-        words.append(f"at most {_up(float(one['saving']), 2):,.2f} could be saved")
-    if one.get("left") is not None:
-        words.append(f"at most {_duration(float(one['left']))} left")
-    elapsed = _duration(float(one.get("elapsed") or 0.0))
+    stage, *rest = running_words(one)
+    words = ", ".join([f'<span class="runs">{_text(stage)}</span>', *map(_text, rest)])
+    place = f"from {one['owner']}, on {one.get('host')}" if one.get("owner") else f"on {one.get('host')}"
     return (
-        f'<div class="name">{_text(one.get("name"))}</div><div class="what">{", ".join(words)}</div>'
-        f'<div class="soft">for {elapsed} on {_text(one.get("host"))}</div>'
+        f'<div class="name">{_text(one.get("name"))}</div><div class="what">{words}</div>'
+        f'<div class="soft">{_text(place)}</div>'
     )
 
 
-def _returned(one: dict[str, Any]) -> str:
-    outcome = str(one.get("outcome"))
-    style = {"solved": "solved", "to fix": "fix"}.get(outcome, "failed")
+def _solved(one: dict[str, Any]) -> str:
     words = [str(one["verdict"])] if one.get("verdict") else []
     if one.get("total_cost") is not None:
         words.append(f"total cost {float(one['total_cost']):,.2f}")
-    if one.get("gap_pct"):
+    if one.get("gap_pct") and one.get("verdict") != _PROVEN:
         words.append(f"at most {_up(float(one['gap_pct']), 3):.3f} % above the best possible")
-    if one.get("faults"):
-        words.append(f"{int(one['faults']):,} to fix")
-    return (
-        f'<div class="name">{_text(one.get("returned"))}</div><div class="what">'
-        f'<span class="mark {style}">{_text(outcome)}</span> {_text(", ".join(words))}</div>'
-        f'<div class="soft">{_text(_time(one.get("at")))}</div>'
-    )
+    return _returned(one, "solved", ", ".join(words))
 
 
 def _fix(one: dict[str, Any]) -> str:
     first = one.get("first_fault") or {}
-    where = " ".join(filter(None, (str(first.get("sheet") or ""), str(first.get("cell") or ""))))
-    what = f"{where}: {first.get('found')}. {first.get('remedy')}" if first else str(one.get("reason") or "")
-    return f'<div class="name">{_text(one.get("name"))}</div><div class="what">{_text(what)}</div>'
+    words = [f"{int(one['faults']):,} to fix, the first:"] if int(one.get("faults") or 0) > 1 else []
+    if first:
+        where = " ".join(filter(None, (str(first.get("sheet") or ""), str(first.get("cell") or ""))))
+        found = str(first.get("found") or "")
+        words += [_sentence(f"{where}: {found}" if where else found), _sentence(str(first.get("remedy") or ""))]
+    elif one.get("reason") or one.get("verdict"):
+        words.append(_sentence(str(one.get("reason") or one["verdict"])))
+    return _returned(one, "fix" if one.get("outcome") == "to fix" else "failed", " ".join(words))
+
+
+def _returned(one: dict[str, Any], style: str, words: str) -> str:
+    """A returned file: a link to it, how it came out, whose it is and since when it is there."""
+    name = str(one.get("returned") or "")
+    place = ", ".join(filter(None, (f"for {one['owner']}" if one.get("owner") else "", _time(one.get("at")))))
+    return (
+        f'<div class="name"><a href="Returned/{quote(name, safe="")}">{_text(name)}</a></div><div class="what">'
+        f'<span class="mark {style}">{_text(one.get("outcome"))}</span> {_text(words)}</div>'
+        f'<div class="soft">{_text(place)}</div>'
+    )
+
+
+def _sentence(text: str) -> str:
+    """With a capital letter and one stop."""
+    bare = text.strip().rstrip(".")
+    return f"{bare[0].upper()}{bare[1:]}." if bare else ""
 
 
 def _up(figure: float, digits: int) -> float:
@@ -159,6 +187,14 @@ def _time(value: Any) -> str:
     if not value or len(text) < 20:
         return "not yet" if not value else text
     return f"{text[:10]} {text[11:19]} (UTC{text[19:]})"
+
+
+def local_time(value: Any) -> str:
+    """A time of ISO 8601 in this machine's zone, as people read it; empty where there is none."""
+    try:
+        return _time(datetime.fromisoformat(str(value)).astimezone().isoformat(timespec="seconds"))
+    except ValueError:
+        return ""
 
 
 def _text(value: Any) -> str:

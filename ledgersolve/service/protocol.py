@@ -134,6 +134,14 @@ class Protocol:
         self.beat(view.job, generation)
         return generation
 
+    def lease_words(self, view: JobView) -> dict[str, Any]:
+        """What the holder of the newest lease wrote: its host, the owner of the drop; empty where unknown."""
+        try:
+            words = json.loads(self.disk.read(view.home / f"lease.{view.generation}"))
+        except (OSError, ValueError):
+            return {}
+        return words if isinstance(words, dict) else {}
+
     def beat(self, job: str, generation: int) -> None:
         """Show that the holder lives; others watch the content change on their own clock."""
         self.disk.refresh(self.home(job) / f"beat.{generation}", secrets.token_hex(8).encode("ascii"))

@@ -6,21 +6,29 @@ the date of their original. There is no last try: what is not ready now is looke
 
 import errno
 import math
+import os
 import stat
+import sys
 import time
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
-from functools import partial
+from functools import lru_cache, partial
 from pathlib import Path
 
 from ledgersolve.service.disk import Disk, Entry
-from ledgersolve.service.names import is_temporary, owner_marks
+from ledgersolve.service.names import is_temporary, owner_marks, show
 from ledgersolve.service.whole import Shape, nobody_writes, shape
+
+if sys.platform != "win32":
+    import pwd
 
 DEEPEST = 8
 """Levels of sub-folders below Inbox that are served."""
 _FIRST_WAIT, _LONGEST_WAIT = 2.0, 300.0
-_ALERT_AFTER = 3
+ALERT_AFTER = 3
+"""Refusals in a row after which the administrator is told."""
+_REMEDY = "its group needs the right to read, write and enter it (chmod g+rwx), see ADMINISTRATION.md"
+_UNREADABLE = "the service may not read this file; its group needs the right to (chmod g+r)"
 Signature = tuple[int, int, int, int, int]
 
 
@@ -62,6 +70,7 @@ class _Watched:
     signature: Signature
     unchanged_since: float
     first_seen: float
+    readable: bool = True
     shape: Shape | None = None
     trouble: str = ""
     refusals: int = 0
@@ -78,6 +87,7 @@ class Settler:
     clock: Callable[[], float] = time.monotonic
     sure: bool = True
     """Whether the system's word that nobody writes to a file may be taken (never on network folders)."""
+    _unlisted: list[Drop] = field(default_factory=list)
     _watched: dict[Path, _Watched] = field(default_factory=dict)
     _marks: dict[Path, tuple[Signature, float]] = field(default_factory=dict)
 
@@ -87,34 +97,53 @@ class Settler:
         seen: set[Path] = set()
         for folder, owner, entries in self._folders(self.inbox, "", 0):
             marks = self._marks_in(folder, entries)
+            shut = "" if self.disk.may_change(folder) else self._shut_words(folder)
             for entry in entries:
                 if is_temporary(entry.name) or (entry.is_folder and not self._is_strange(entry)):
                     continue
                 seen.add(entry.path)
-                drops.append(self._judge(entry, owner or f"account {entry.status.st_uid}", marks))
+                drops.append(self._judge(entry, owner or account(entry.status), marks, shut))
+        drops += self._unlisted
         for gone in self._watched.keys() - seen:
             del self._watched[gone]
         return drops
 
     def _folders(self, folder: Path, owner: str, depth: int) -> Iterator[tuple[Path, str, list[Entry]]]:
+        """Inbox and its sub-folders with what is in them; those that cannot be listed are noted."""
+        if depth == 0:
+            self._unlisted = []
         entries = self.disk.entries(folder)
         yield folder, owner, entries
         for entry in entries:
             if entry.is_folder and not is_temporary(entry.name) and depth < DEEPEST:
                 try:
                     yield from self._folders(entry.path, owner or entry.name, depth + 1)
-                except (FileNotFoundError, NotADirectoryError, PermissionError):
-                    continue  # gone again, or not ours to read: the next look tells
+                except (FileNotFoundError, NotADirectoryError):
+                    continue  # gone again
+                except PermissionError:
+                    why = f"the service may not look into this sub-folder; {_REMEDY}"
+                    shown = owner or entry.name
+                    self._unlisted.append(
+                        Drop(entry.path, shown, 0, self.clock(), False, why, alert=True, blocked=True)
+                    )
 
-    def refused(self, path: Path, error: OSError) -> None:
-        """Note that a drop could not be moved; it is tried again after 2 s, 4 s, ... up to 5 minutes."""
+    def _shut_words(self, folder: Path) -> str:
+        place = "Inbox" if folder == self.inbox else f"the sub-folder {show(str(folder.relative_to(self.inbox)))}"
+        return f"the service may not take files out of {place}; {_REMEDY}"
+
+    def refused(self, path: Path, error: OSError) -> int:
+        """Note that a drop could not be moved; it is tried again after 2 s, 4 s, ... up to 5 minutes.
+
+        Returns how many times that happened.
+        """
         watched = self._watched.get(path)
         if watched is None:
-            return
+            return 0
         wait = min(_LONGEST_WAIT, _FIRST_WAIT * 2.0 ** min(watched.refusals, 20))
         watched.refusals += 1
         watched.next_try = self.clock() + wait
         watched.trouble = _refusal_words(error)
+        return watched.refusals
 
     def forget(self) -> None:
         """Start all observations over, as after a share outage."""
@@ -143,24 +172,35 @@ class Settler:
             del self._marks[path]
         return marks
 
-    def _judge(self, entry: Entry, owner: str, marks: dict[str, float]) -> Drop:
-        now = self.clock()
+    def _known(self, entry: Entry, now: float) -> _Watched:
+        """What is known of a file; all anew where it changed."""
         signature = _signature(entry)
         watched = self._watched.get(entry.path)
         if watched is None or watched.signature != signature:
             first = now if watched is None else watched.first_seen
-            watched = _Watched(signature, now, first)
+            readable = not entry.is_file or self.disk.may_read(entry.path)
+            watched = _Watched(signature, now, first, readable)
             self._watched[entry.path] = watched
+        return watched
 
+    def _judge(self, entry: Entry, owner: str, marks: dict[str, float], shut: str) -> Drop:
+        now = self.clock()
+        watched = self._known(entry, now)
         found = partial(Drop, entry.path, owner, entry.status.st_size, watched.first_seen)
         if not entry.is_file:
             return found(False, f"{_kind_words(entry)}; it is never read", alert=True, blocked=True)
+        if shut:
+            return found(False, shut, alert=True, blocked=True)
+        quiet = now - watched.unchanged_since
+        if not watched.readable:  # a copy program may give the rights last
+            tell = quiet >= self.patience.quiet
+            left = math.inf if tell else self.patience.quiet - quiet
+            return found(False, _UNREADABLE, alert=tell, blocked=tell, look_in=left)
         if now < watched.next_try:
             return _held_back(found, watched, now)
         for mark in owner_marks(entry.name):
             if marks.get(mark, self.patience.open_elsewhere) < self.patience.open_elsewhere:
-                return found(False, "open in a spreadsheet program")
-        quiet = now - watched.unchanged_since
+                return found(False, "open in a spreadsheet program", blocked=True)
         shortest = min(self.patience.quiet, self.patience.sure_quiet)
         if quiet < shortest:
             return found(False, "still being copied", look_in=shortest - quiet)
@@ -180,19 +220,33 @@ class Settler:
         if watched.shape is Shape.PARTIAL:
             left = self.patience.long_quiet - quiet
             if left <= 0:
-                return found(True)
+                return found(True, watched.trouble, alert=watched.refusals >= ALERT_AFTER)
             what = "empty so far" if entry.status.st_size == 0 else "not complete yet"
             return found(False, f"{what}; returned as damaged if nothing comes in {left:.0f} s", look_in=left)
         left = self.patience.quiet - quiet
         if left <= 0 or (self.sure and nobody_writes(self.disk, entry.path)):
-            return found(True)
+            return found(True, watched.trouble, alert=watched.refusals >= ALERT_AFTER)
         return found(False, "still being copied", look_in=left)
 
 
 def _held_back(found: Callable[..., Drop], watched: _Watched, now: float) -> Drop:
     """A drop that could not be read or moved, until its next try."""
-    alert = watched.refusals >= _ALERT_AFTER
+    alert = watched.refusals >= ALERT_AFTER
     return found(False, watched.trouble, alert=alert, blocked=alert, look_in=watched.next_try - now)
+
+
+def account(status: os.stat_result) -> str:
+    """Who put a file into Inbox itself, as a name for the queue and the page."""
+    return "Inbox" if sys.platform == "win32" else _account(status.st_uid)
+
+
+@lru_cache(maxsize=4096)
+def _account(number: int) -> str:
+    """The account's name where this machine knows it; asked once, because a directory service may be slow."""
+    try:
+        return f"account {pwd.getpwuid(number).pw_name}"
+    except KeyError:
+        return f"account {number}"
 
 
 def _signature(entry: Entry) -> Signature:
@@ -211,7 +265,10 @@ def _kind_words(entry: Entry) -> str:
 
 def _refusal_words(error: OSError) -> str:
     if error.errno in (errno.EACCES, errno.EPERM, errno.EROFS):
-        return "cannot be read or moved by the service: its rights do not allow it, or it is open elsewhere"
+        return (
+            "cannot be read or moved by the service: it is open elsewhere, or the rights of the file or of its "
+            "folder do not allow it"
+        )
     if error.errno in (errno.EBUSY, errno.ETXTBSY):
         return "open in another program"
     if error.errno in (errno.ENOSPC, errno.EDQUOT):

@@ -20,9 +20,10 @@ from ledgersolve.service.intake import Intake
 from ledgersolve.service.keeper import Keeper
 from ledgersolve.service.layout import Layout, guard
 from ledgersolve.service.leases import LeaseWatch
-from ledgersolve.service.names import is_conflict_copy, show
-from ledgersolve.service.settle import Drop, Settler
+from ledgersolve.service.names import show
+from ledgersolve.service.settle import ALERT_AFTER, Drop, Settler
 from ledgersolve.service.states import JobView, State
+from ledgersolve.service.waiting import Held, entries, hold
 
 logger = logging.getLogger(__name__)
 _SCAN_SHARE = 5.0
@@ -31,7 +32,6 @@ _LONG_LINE = 50
 """With so many in the queue nothing is gained by looking before the next scan is due."""
 _BOARD_SECONDS = 15.0
 _SHORTEST_WAIT, _BUSY_WAIT = 0.02, 2.0
-_MOST_SHOWN = 200
 
 
 @dataclass(frozen=True)
@@ -67,6 +67,7 @@ class Watcher:
     line: Line | None = None
     scans: int = 0
     left_in_jobs: int = 0
+    held: list[Held] = field(default_factory=list)
     _beacon: str = field(default_factory=lambda: secrets.token_hex(8))
     _last_scan: tuple[str, float, float] | None = None
     _scan_took: float = 0.0
@@ -74,7 +75,7 @@ class Watcher:
     _next_beat: float = -math.inf
     _seen_all: bool = False
     _told: float = -math.inf
-    _told_state: str = ""
+    _told_gist: tuple[Any, ...] = ()
     _news: bool = False
 
     # ---- one step ----------------------------------------------------------------------------------
@@ -136,6 +137,13 @@ class Watcher:
             earliest = -math.inf if self._last_scan is None else self._last_scan[1]
             self._next_scan = min(self._next_scan, earliest + _SCAN_SHARE * self._scan_took)
 
+    def _enter(self, state: str, why: str) -> None:
+        """Note the state, and log that it changed."""
+        if state != self.state:
+            level = logging.WARNING if state == "held" else logging.INFO
+            logger.log(level, "%s%s", state, f": {why}" if why else "")
+        self.state, self.why = state, why
+
     # ---- looking -----------------------------------------------------------------------------------
 
     def _scan(self) -> None:
@@ -145,7 +153,7 @@ class Watcher:
         waiting += self._look_at_jobs()
         guard(self.layout, self.disk, self.mark)
         self.line = self.turns.line_up(waiting)
-        self.state, self.why = self.intake.state()
+        self._enter(*self.intake.state(doubts=self.desk.take_doubts()))
         ended = self.clock()
         self.scans += 1
         self._seen_all = True
@@ -159,6 +167,7 @@ class Watcher:
         """Jobs that no process has in hand: claimed and left, answered and not handed on."""
         waiting = []
         self.left_in_jobs = 0
+        self.held = []
         jobs = self.disk.names(self.layout.jobs)
         self.leases.forget_others(set(jobs))
         self.desk.forget_others(set(jobs))
@@ -180,23 +189,34 @@ class Watcher:
         self.left_in_jobs += view.state not in (State.BROKEN, State.EMPTY)
         if view.state is State.EMPTY:
             self.keeper.empty(job)
-        elif view.state is State.BROKEN:
-            self._alert_broken(view)
-        elif not self.desk.may_try(job):
             return []
-        elif view.reply is not None:
+        if view.state is State.BROKEN:
+            self._alert_broken(view)
+            return []
+        left_behind = self.leases.left_behind(view)
+        owner = self._hold(view, left_behind=left_behind)
+        if not self.desk.may_try(job):
+            return []
+        if view.reply is not None:
             self.desk.hand_on(view)
-        elif view.input is not None and self.leases.left_behind(view):
-            status = self.disk.status(view.input)
-            return [Waiting(f"account {status.st_uid}", status.st_size, -math.inf, view)]
-        return []
+            return []
+        if view.input is None or not left_behind:
+            return []
+        return [Waiting(owner, self.disk.status(view.input).st_size, -math.inf, view)]
+
+    def _hold(self, view: JobView, *, left_behind: bool) -> str:
+        """Keep in mind for the page a workbook that is out of Inbox; gives its owner."""
+        attempts = self.desk.settings.attempts
+        self.held.append(hold(self.desk.protocol, view, attempts, left_behind=left_behind))
+        return self.held[-1].owner
 
     def _alert_broken(self, view: JobView) -> None:
         if view.job not in self.desk.alerts:
             logger.critical("job %s: its folder is damaged and is left alone", view.job)
         name = view.job if view.input is None else show(view.input.name)
         why = f"the folder of job {view.job} is damaged (answer or input unreadable); it is left alone"
-        self.desk.alerts[view.job] = {"name": name, "why": why}
+        owner = show(str(self.desk.protocol.lease_words(view).get("owner") or ""))
+        self.desk.alerts[view.job] = {"name": name, "owner": owner, "why": why}
 
     # ---- taking ------------------------------------------------------------------------------------
 
@@ -235,19 +255,28 @@ class Watcher:
             job = self.desk.protocol.claim(drop.path)
             return None if job is None else self.desk.protocol.view(job)
         except OSError as error:
-            self.settler.refused(drop.path, error)
-            logger.info("%s is not taken yet (%s)", show(drop.name), error)
+            times = self.settler.refused(drop.path, error)
+            level = logging.WARNING if times in (1, ALERT_AFTER) else logging.DEBUG
+            name, owner = show(drop.name), show(drop.owner)
+            logger.log(level, "%s of %s is not taken yet (%s), refusal %d", name, owner, error, times)
             return None
 
     # ---- telling -----------------------------------------------------------------------------------
 
     def _tell(self, changed: bool) -> None:
         """Write page and sign of life: soon after a change, else now and then."""
-        self._news |= changed or self.state != self._told_state
+        gist = self._gist()
+        self._news |= changed or gist != self._told_gist
         busy = self._news or bool(self.desk.trays)
         if self.clock() - self._told >= (self.pace.board if busy else _BOARD_SECONDS):
-            self._told, self._told_state, self._news = self.clock(), self.state, False
+            self._told, self._told_gist, self._news = self.clock(), gist, False
             self.write_board()
+
+    def _gist(self) -> tuple[Any, ...]:
+        """What must be on the page soon once it changes; cheap also with ten thousand drops."""
+        ready = sum(drop.ready for drop in self.drops)
+        alerts = sum(drop.alert for drop in self.drops) + len(self.desk.alerts)
+        return self.state, len(self.drops), ready, alerts, len(self.held), len(self.desk.trays)
 
     def write_board(self) -> None:
         """Write page and sign of life now; that it fails stops nothing."""
@@ -260,9 +289,12 @@ class Watcher:
     def picture(self) -> dict[str, Any]:
         """What this process knows, as plain values."""
         words, monotonic, unix = self._last_scan or (None, None, None)
-        waiting, count = self._waiting()
+        held = [one for one in self.held if one.view.job not in self.desk.trays]
+        waiting, count = entries(self.drops, held, self.line, self.state)
         holder = describe()
-        alerts = [{"name": show(drop.name), "why": drop.why} for drop in self.drops if drop.alert]
+        alerts = [
+            {"name": show(drop.name), "owner": show(drop.owner), "why": drop.why} for drop in self.drops if drop.alert
+        ]
         return {
             "id": self._beacon,
             "host": holder["host"],
@@ -286,18 +318,6 @@ class Watcher:
             "alerts": [*alerts[:100], *list(self.desk.alerts.values())[-100:]],
         }
 
-    def _waiting(self) -> tuple[list[dict[str, str]], int]:
-        """The first of what waits, with the reason, and how many there are."""
-        line = self.line.in_order() if self.line is not None else []
-        position = {id(one.item): number for number, one in enumerate(line, 1)}
-        waits = [drop for drop in self.drops if not drop.alert and (not drop.ready or id(drop) in position)]
-        waits.sort(key=lambda drop: position.get(id(drop), 0))
-        shown = [
-            {"name": show(drop.name), "owner": show(drop.owner), "why": _why(drop, position.get(id(drop)))}
-            for drop in waits[:_MOST_SHOWN]
-        ]
-        return shown, len(waits)
-
     # ---- ending ------------------------------------------------------------------------------------
 
     def is_empty(self) -> bool:
@@ -310,14 +330,24 @@ class Watcher:
         )
 
     def leave(self, seconds: float = 10.0) -> None:
-        """Stop what runs, give leases back, say so."""
+        """Stop what runs, give leases back, say so, and what is left."""
         self.stopping = True
         self.desk.stop(seconds)
         self.bell.silence()
-        self.state, self.why = "stopped", "The service was stopped in good order."
+        self.line = None
+        try:
+            guard(self.layout, self.disk, self.mark)
+            self._look_at_what_is_left()
+        except OSError as error:
+            logger.info("what is left is not listed (%s)", error)
+        self._enter("stopped", "The service was stopped in good order.")
         self.write_board()
 
-
-def _why(drop: Drop, position: int | None) -> str:
-    words = drop.why if position is None else f"number {position} in the queue"
-    return f"{words}; looks like a sync program's conflict copy" if is_conflict_copy(drop.name) else words
+    def _look_at_what_is_left(self) -> None:
+        """Drops and jobs as they stand at the end, for the page alone."""
+        self.drops = [drop for drop in self.drops if drop.path.exists()]
+        self.held = []
+        for job in self.disk.names(self.layout.jobs):
+            view = self.desk.protocol.view(job)
+            if view is not None and view.input is not None:
+                self._hold(view, left_behind=True)
