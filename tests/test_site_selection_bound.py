@@ -10,6 +10,7 @@ from scipy.optimize import linprog
 
 from ledgersolve.site_selection.bound import flip_bounds, price_bound
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, plain_case
+from tests.site_reference import brute_force
 from tests.site_strategies import FEATURES, random_case
 
 INF = np.inf
@@ -188,21 +189,22 @@ def test_against_trying_every_set_of_sites(feature: str) -> None:
         random = np.random.default_rng(seed)
         chosen = {name for name in FEATURES if random.random() < 0.4} if feature == "mixed" else {feature}
         case = random_case(random, 3, 4, chosen)
-        prices = random.uniform(-5, 60, 4)
-        expected = reference(case, prices)
-        found = price_bound(case, prices)
+        prices, share = random.uniform(-5, 60, 4), float(random.choice([0.0, 0.5, 3.0]))
+        expected = reference(case, prices, share)
+        found = price_bound(case, prices, share)
         assert found == (expected if math.isinf(expected) else pytest.approx(expected, rel=1e-7, abs=1e-6))
 
 
-def reference(case: Case, prices: np.ndarray) -> float:
+def reference(case: Case, prices: np.ndarray, share: float) -> float:
     """Weak duality written out: prices, and the least of site costs and savings over the allowed sets."""
+    near_least = share * case.demand.sum() * (case.share_within or 0.0) if case.share_distance is not None else 0.0
     needs = np.ones(case.n, bool) if case.cost_is_whole else case.demand > 0
     unmet = np.full(case.n, INF)
     if case.unmet_cost is not None:
         unmet = np.where(case.demand > 0, case.unmet_cost * case.demand, INF)
     price = np.where(needs, np.minimum(prices, unmet), 0.0)
     least_count = max(case.fewest_sites or 0, int((needs & np.isinf(unmet)).any()))
-    saved = [site_programme(case, j, price, needs, np.isinf(unmet)) for j in range(case.m)]
+    saved = [site_programme(case, j, (price, share), needs, np.isinf(unmet)) for j in range(case.m)]
     best = INF
     for chosen in itertools.product([False, True], repeat=case.m):
         groups = [g for g, is_open in zip(case.group.tolist(), chosen, strict=True) if is_open and g >= 0]
@@ -218,13 +220,17 @@ def reference(case: Case, prices: np.ndarray) -> float:
             elif case.today[j]:
                 cost += case.closing_cost[j]
         best = min(best, float(cost))
-    return float(price.sum()) + best
+    return float(price.sum()) + float(near_least) + best
 
 
 def site_programme(
-    case: Case, j: int, price: np.ndarray, needs: np.ndarray, must: np.ndarray
+    case: Case, j: int, prices: tuple[np.ndarray, float], needs: np.ndarray, must: np.ndarray
 ) -> float:
-    """Least of sum (cost - price) x over shares within the lanes' limits and the site's capacity."""
+    """Least of sum (cost - price) x over shares within the lanes' limits and the site's volumes.
+
+    A site that cannot reach its least volume is filled as far as it goes: it can be in no plan anyway.
+    """
+    price, share = prices
     cost, upper = np.zeros(case.n), np.zeros(case.n)
     for i in np.flatnonzero(needs):
         longest = case.customer_longest[i]
@@ -236,14 +242,66 @@ def site_programme(
         size = case.demand[i]
         cost[i] = case.lane_cost[j, i] * (1.0 if case.cost_is_whole else size) + case.handling_cost[j] * size
         upper[i] = 1.0
+        if case.share_within and case.share_distance is not None and case.distance is not None:
+            cost[i] -= share * size if case.distance[j, i] <= case.share_distance else 0.0
         if case.lane_most is not None and size > 0:
             upper[i] = min(1.0, case.lane_most[j, i] / size)
         if case.single_source[i] and must[i] and upper[i] < 1.0:
             upper[i] = 0.0
     capacity = min(float(case.capacity[j]), 1e9)
+    least = min(float(case.least_volume[j]), capacity, float(case.demand @ upper))
     bounds = [(0.0, most) for most in upper]
-    found = linprog(cost - price, A_ub=case.demand[None, :], b_ub=[capacity], bounds=bounds)
+    found = linprog(np.where(upper > 0, cost - price, 0.0), A_ub=np.vstack([case.demand, -case.demand]),
+                    b_ub=[capacity, -least], bounds=bounds)
     return float(found.fun)
+
+
+@pytest.mark.parametrize("seed", range(60))
+def test_no_plan_undercuts_the_bound_with_a_share_rule_and_least_volumes(seed: int) -> None:
+    """Any prices, every feature beside a share rule: the bound stays at or below the best plan by trying all."""
+    rng = np.random.default_rng([11, seed])
+    features = {"share within", *(name for name in FEATURES if rng.random() < 0.4)}
+    case = random_case(rng, 3, 4, features)
+    best = brute_force(case)
+    for share in (None, 0.0, float(rng.uniform(0, 20))):
+        bound = price_bound(case, rng.uniform(-30, 60, case.n), share)
+        assert bound <= best + 1e-6 * abs(best) or math.isinf(best)
+
+
+@pytest.mark.parametrize("seed", range(30))
+def test_the_share_price_found_is_the_best(seed: int) -> None:
+    """No share price tried gives a higher bound than the one that is looked up."""
+    rng = np.random.default_rng([12, seed])
+    features = {"share within", *(name for name in FEATURES if rng.random() < 0.3)}
+    case, prices = random_case(rng, 4, 6, features), rng.uniform(-30, 60, 6)
+    found = price_bound(case, prices)
+    for share in [0.0, *(10.0 ** rng.uniform(-3, 3, 30))]:
+        assert price_bound(case, prices, share) <= found + 1e-5 * (1 + abs(found)) or math.isinf(found)
+
+
+def test_the_share_rule_by_hand() -> None:
+    """All of 10 units near, at 5 more a unit than from afar: prices of the far costs and a share price of 5 prove it.
+
+    Near site: fixed 0, 8 a unit; far site: fixed 0, 3 a unit. Without a share price only 30 of the 80 is proven.
+    """
+    case = plain_case([0.0, 0.0], [[8.0], [3.0]], [10.0], distance=np.array([[10.0], [90.0]]), share_within=1.0,
+                      share_distance=50.0)
+    assert price_bound(case, np.array([30.0]), 0.0) == near(30.0)
+    assert price_bound(case, np.array([30.0]), 5.0) == near(80.0)
+    assert price_bound(case, np.array([30.0])) == pytest.approx(80.0, abs=1e-5)
+
+
+def test_a_least_volume_is_filled_at_a_loss() -> None:
+    """Prices of 10 against costs of 12 save nothing; a site that must move 6 of 8 units then adds 3/4 of 4 lost."""
+    case = plain_case([1.0], [[12.0, 14.0]], [4.0, 4.0], cost_is_whole=True, least_volume=np.array([6.0]))
+    assert price_bound(case, np.array([10.0, 10.0])) == near(20 + 1 + 2 + 4 * 2 / 4)
+
+
+@pytest.mark.parametrize("share", [-1.0, np.nan, np.inf])
+def test_a_share_price_below_nothing_is_refused(share: float) -> None:
+    """A share price is finite and 0 or more, or the sum would be no bound."""
+    with pytest.raises(ValueError, match="share price of 0 or more"):
+        price_bound(two_sites(), np.zeros(2), share)
 
 
 @pytest.mark.parametrize("seed", range(40))
