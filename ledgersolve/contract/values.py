@@ -5,6 +5,7 @@ import math
 import re
 
 from ledgersolve.contract.columns import LARGEST, Entry, Holds, quoted, shown
+from ledgersolve.contract.degrees import LATITUDE, LONGITUDE, coordinates
 from ledgersolve.contract.faults import Fault
 from ledgersolve.workbook.cells import Cell, Kind
 from ledgersolve.workbook.problems import Recheck
@@ -17,6 +18,8 @@ _SEPARATED = re.compile(r"[+-]?[\d.,]*\d[\d.,]*", re.ASCII)
 _LEADING = re.compile(r"\D{0,4}[\d.,]*\d[\d.,]*\s*\D{1,12}|\D{1,4}[\d.,]*\d[\d.,]*", re.ASCII)
 _DAY_TEXT = re.compile(r"\d{1,4}[./-]\d{1,2}[./-]\d{1,4}", re.ASCII)
 
+DEGREES = "degrees"
+"""Unit of the columns that hold coordinates."""
 YES = frozenset({"yes", "y", "true", "1"})
 NO = frozenset({"no", "n", "false", "0"})
 _NOTHING = frozenset({"-", "–", "—", "n/a", "na", "none", "nil", "unlimited", "null", "nan", "inf", "."})
@@ -113,11 +116,14 @@ def text_number(words: str, entry: Entry) -> float | Fault:
     meanings = readings(words)
     fitting = [value for value in meanings if entry.low <= value <= entry.high]
     separated = "," in words or words.count(".") > 1
-    if len(meanings) == 1 and not separated:
+    compact = entry.unit == DEGREES and not fitting  # ISO 6709 writes 52°31.2' as +5231.2
+    if len(meanings) == 1 and not separated and not compact:
         return meanings[0]
     if len(fitting) == 1 and not separated:
         return fitting[0]
     found = f"the text {quoted(words)}"
+    if entry.unit == DEGREES and not fitting:
+        return _degrees_fault(words, entry)
     if meanings:
         return _separated(words, meanings, fitting, entry)
     if _DAY_TEXT.fullmatch(words):
@@ -151,6 +157,27 @@ def _separated(words: str, meanings: tuple[float, ...], fitting: list[float], en
     else:
         remedy = "Type the one that is meant as a number, without a thousands separator."
     return _number_fault(entry, "ambiguous number", found, remedy)
+
+
+def _degrees_fault(words: str, entry: Entry) -> Fault:
+    """The fault of a coordinate that is no decimal number: what it is in decimal degrees, where that can be told."""
+    kind, found = "decimal degrees expected", f"the text {quoted(words)}"
+    meant = coordinates(words, entry.title)
+    if len(meant) == 2:
+        here, there = meant if entry.title == LATITUDE else meant[::-1]
+        other = LONGITUDE if entry.title == LATITUDE else LATITUDE
+        found += ", which holds latitude and longitude"
+        remedy = f"{_typed(here.degrees)} The other one, {shown(there.degrees)}, belongs into the column {other}."
+    elif meant and meant[0].axis in ("", entry.title):
+        found += f", which is {shown(meant[0].degrees)} in decimal degrees"
+        remedy = _typed(meant[0].degrees)
+    elif meant:
+        found += f", which is a {meant[0].axis.lower()}: {shown(meant[0].degrees)} in decimal degrees"
+        remedy = f"Type the {entry.title.lower()} here; this one belongs into the column {meant[0].axis}."
+    else:
+        remedy = (f"Type decimal degrees as a number, such as {shown(entry.example)}; south and west are negative"
+                  f"{or_empty(entry)}.")
+    return _number_fault(entry, kind, found, remedy)
 
 
 def _typed(value: float) -> str:
@@ -187,7 +214,7 @@ def choice(words: str, entry: Entry) -> str | Fault:
         if alike(word) == wanted:
             return word
     near = nearest(words, entry.choices)
-    remedy = f"Did you mean `{near}`?" if near else f"Type one of these words{or_empty(entry)}."
+    remedy = f"Did you mean {quoted(near)}?" if near else f"Type one of these words{or_empty(entry)}."
     return Fault("unknown word", f"{quoted(words)}", entry.expected(), remedy)
 
 

@@ -238,6 +238,12 @@ FAULTS: tuple[Fault, ...] = (
         put("Sites", "H2", 95),
         put("Sites", "I2", 9)),
           (("Sites", "H2", "number too large"),)),
+    Fault("degrees, minutes and seconds", site, both(
+        put("Sites", "H1", "Latitude"),
+        put("Sites", "I1", "Longitude"),
+        put("Sites", "H2", "53°33'N"),
+        put("Sites", "I2", 9.99)),
+          (("Sites", "H2", "decimal degrees expected"),)),
     Fault("latitude alone", site, both(
         put("Sites", "H1", "Latitude"),
         put("Sites", "I1", "Longitude"),
