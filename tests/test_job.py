@@ -259,5 +259,5 @@ def test_questions_get_their_share_of_the_time_limit_and_no_more(tmp_path, monke
     answer = solve_workbook(path)
     assert asked == [10.0]
     record = run_record(answer)
-    assert record["Kept for questions"] == "25 % of 40 seconds: 10 at most"
+    assert record["Kept for questions"] == "25 % of 40 seconds: 10 at most, a part of the step solve"
     assert sum(str(label).startswith("Question: ") for label in record) >= 4

@@ -7,11 +7,12 @@ from types import SimpleNamespace
 import numpy as np
 import pytest
 
-from ledgersolve.findings import Answered
+from ledgersolve.findings import NOT_ANSWERED, Answered, Column
 from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.lot_sizing.case import plain_case as plain_lots
 from ledgersolve.lot_sizing.plan import plan_from_made
 from ledgersolve.mip import Solved, Verdict
+from ledgersolve.report.answers import answers_sheet
 from ledgersolve.report.decision import how_sure
 from ledgersolve.report.inputs import LotReport, RunFacts, SiteReport, Today
 from ledgersolve.report.lot_book import lot_sheets
@@ -65,6 +66,29 @@ def test_the_headline_names_sites_and_money() -> None:
     """By hand: Hamburg and Turin cost 100 + 90 + 10 x 1 + 20 x 1 = 220."""
     assert "Run 2 of 3 sites: Hamburg and Turin. All together that costs 220.00\u00a0EUR per year." in words(
         site_page(CASE, [0, 2]))
+
+
+def test_one_site_is_counted_too() -> None:
+    """A single site is one of so many; without any, only a proven plan says that no site is cheaper."""
+    assert "Run 1 of 3 sites: Lyon." in words(site_page(CASE, [1, 1]))
+    none = replace(CASE, unmet_cost=1.0)
+    plan = Plan(np.zeros(3, dtype=bool), np.zeros(0, dtype=np.int64), np.zeros(0, dtype=np.int64), np.zeros(0),
+                np.ones(2))
+    audit = audit_sites(none, plan)
+    for verdict, said in ((Verdict.PROVEN_BEST, True), (Verdict.BEST_FOUND, False)):
+        solved = Solved(verdict, plan, audit.total, audit.total if said else None)
+        page = words(site_sheets(SiteReport(WORKBOOK, none, solved, audit, FACTS), {})[0])
+        assert ("no site makes that cheaper" in page) == said
+
+
+def test_the_sheet_of_answers_says_how_many_lines_have_none_and_what_to_do() -> None:
+    """Two lines ran out of time: counted at the top, with the settings that give more; else no such words."""
+    rows = (("S1", None, NOT_ANSWERED), ("S2", 5.0, "exact"), ("S3", None, f"upwards: {NOT_ANSWERED}"))
+    columns = (Column("Site"), Column("More", "money"), Column("How sure"))
+    for given, said in ((rows, True), (rows[1:2], False)):
+        sheet = answers_sheet("Answers", (Answered("Why?", "So.", columns, given),), "EUR", " per year")
+        assert ('2 lines say "not answered in the time given"' in words(sheet)) == said
+        assert ("Share of time for questions (%)" in words(sheet)) == said
 
 
 def test_against_today_in_one_sentence() -> None:

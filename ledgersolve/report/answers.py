@@ -2,7 +2,7 @@
 
 from collections.abc import Sequence
 
-from ledgersolve.findings import Answered
+from ledgersolve.findings import NOT_ANSWERED, Answered
 from ledgersolve.findings import Column as AnswerColumn
 from ledgersolve.report import names, style
 from ledgersolve.report.tables import FOOTER, Column, heading, paragraph, write_table
@@ -21,9 +21,8 @@ def answers_sheet(name: str, answers: Sequence[Answered], currency: str, per: st
         return None
     sheet = ResultSheet(name, tab_colour=style.MOSS, landscape=True, widths=_widths(answers))
     last = len(sheet.widths) - 1
-    heading(sheet, names.ANSWERS, "Questions that come up when a plan is discussed. Every answer was found by "
-                                  "solving again, not by guessing; where time was short, the words say how far it "
-                                  "is certain.", last + 1)
+    heading(sheet, names.ANSWERS, "Questions that come up when a plan is discussed. Every figure comes from solving "
+                                  f"or costing your workbook again; none is a guess. {_missing(answers)}", last + 1)
     row = 3
     for answer in answers:
         for column in range(last + 1):
@@ -33,6 +32,16 @@ def answers_sheet(name: str, answers: Sequence[Answered], currency: str, per: st
         row = _table(sheet, row + 2, answer, (currency, per)) + 1
     sheet.footer = FOOTER
     return sheet
+
+
+def _missing(answers: Sequence[Answered]) -> str:
+    """What was not answered, and what to do about it."""
+    count = sum(answer.unanswered for answer in answers)
+    if not count:
+        return "Where only a range is proven, the words say so."
+    rows = style.counted(count, "line says", "lines say")
+    return (f'{rows} "{NOT_ANSWERED}": to have more answered, raise "Time limit (seconds)" or "Share of time for '
+            'questions (%)" in Settings, and drop the workbook again.')
 
 
 def _widths(answers: Sequence[Answered]) -> dict[int, float]:

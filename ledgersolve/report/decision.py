@@ -286,7 +286,7 @@ def cost_tile(cost: float, currency: str, ledger: Ledger, note: str) -> Tile:
 
 def against_tile(saved: float, unit: str) -> Tile:
     """What the plan saves against today, or costs more."""
-    return Tile("Saved against today" if saved >= 0 else "Dearer than today", abs(saved), unit)
+    return Tile("Saved against today" if saved >= 0 else "Costs more than today", abs(saved), unit)
 
 
 def still_tile(solved: Solved[Any], currency: str) -> Tile:

@@ -4,6 +4,7 @@ from collections.abc import Sequence
 
 import numpy as np
 
+from ledgersolve.mip import Verdict
 from ledgersolve.report import names, style
 from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.decision import (
@@ -76,10 +77,9 @@ def _headline(at: SitePlaces) -> str:
     running = int(plan.open.sum())
     cost = _money(at, at.report.audit.total)
     if running == 0:
-        return (f"Run no site at all: leaving all demand unmet costs {cost} per {case.period_covered}, and no site "
-                "makes that cheaper.")
-    sites = f"Run {_names(at, plan.open)}" if running == 1 else (
-        f"Run {running} of {style.counted(case.m, 'site')}: {_names(at, plan.open)}")
+        cheapest = ", and no site makes that cheaper" if at.report.solved.verdict is Verdict.PROVEN_BEST else ""
+        return f"Run no site at all: leaving all demand unmet costs {cost} per {case.period_covered}{cheapest}."
+    sites = f"Run {running} of {style.counted(case.m, 'site')}: {_names(at, plan.open)}"
     return f"{sites}. All together that costs {cost} per {case.period_covered}."
 
 

@@ -54,7 +54,8 @@ def _lanes(at: SitePlaces) -> Part:
     whole = case.cost_is_whole
     groups = []
     bounds = np.flatnonzero(np.diff(at.sites, prepend=-1))
-    for first, last in zip(bounds.tolist(), [*bounds[1:].tolist(), at.sites.size], strict=True):
+    ends = [*bounds[1:].tolist(), at.sites.size][: bounds.size]  # without deliveries, no group
+    for first, last in zip(bounds.tolist(), ends, strict=True):
         j = int(at.sites[first])
         count = style.counted(last - first, "delivery", "deliveries")
         if at.compact:
