@@ -1,5 +1,9 @@
-"""The commands; see ``ledgersolve --help``."""
+"""The commands; see ``ledgersolve --help``.
 
+Each command loads what it needs itself: help and version answer at once.
+"""
+
+import gc
 import json
 import logging
 import shutil
@@ -8,13 +12,10 @@ from pathlib import Path
 from typing import Annotated, NoReturn
 
 import typer
+from rich.console import Console
 from rich.markup import escape
 
 from ledgersolve import __version__
-from ledgersolve.answer import exit_code
-from ledgersolve.contract.reading import Job
-from ledgersolve.shipped import shipped
-from ledgersolve.telling import console, errors, progress_line, returning, tell
 
 app = typer.Typer(
     name="ledgersolve",
@@ -23,6 +24,14 @@ app = typer.Typer(
     help="Planning workbooks in, decisions out: site selection and lot sizing.",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
+console = Console()
+errors = Console(stderr=True)
+
+JOBS = ("site selection", "lot sizing")
+
+FEW_COLLECTIONS = (100_000, 50, 100)
+"""Thresholds of the garbage collector: a run makes hundreds of thousands of values that live to its end."""
+
 Files = Annotated[
     list[Path],
     typer.Argument(help="Filled workbooks (.xlsx or .xlsm).", metavar="FILE...", show_default=False),
@@ -40,6 +49,7 @@ Served = Annotated[Path, typer.Argument(help="The folder to serve; made on first
 
 def main() -> None:
     """Run the command line."""
+    gc.set_threshold(*FEW_COLLECTIONS)
     app()
 
 
@@ -75,30 +85,31 @@ def check(files: Files, into: Into = None, as_json: AsJson = False) -> None:
     _answer_all(files, into, as_json, solving=False)
 
 
-def _job(given: str) -> Job:
+def _job(given: str) -> str:
     """The job of this name, however it is written."""
-    for job in Job:
-        if " ".join(given.replace("_", " ").replace("-", " ").split()).casefold() == job.value:
-            return job
-    names = " or ".join(f"'{job.value}'" for job in Job)
-    hint = "; put it in quotes" if any(given.casefold() in job.value.split() for job in Job) else ""
+    plain = " ".join(given.replace("_", " ").replace("-", " ").split()).casefold()
+    if plain in JOBS:
+        return plain
+    names = " or ".join(f"'{job}'" for job in JOBS)
+    hint = "; put it in quotes" if any(plain in job.split() for job in JOBS) else ""
     raise typer.BadParameter(f"{given!r} is no job; expected {names}{hint}")
 
 
 @app.command()
 def template(
-    job: Annotated[Job, typer.Argument(
+    job: Annotated[str, typer.Argument(
         help="The job the workbook is for: 'site selection' or 'lot sizing'.", metavar="JOB", parser=_job,
-        autocompletion=lambda: [each.value for each in Job],
+        autocompletion=lambda: list(JOBS),
     )],
     file: Annotated[
         Path | None, typer.Argument(help="Where to write it; JOB.xlsx when left out.", metavar="FILE")
     ] = None,
 ) -> None:
     """Write an empty workbook with notes and drop-down lists for one of the two jobs."""
+    from ledgersolve.contract.reading import Job
     from ledgersolve.contract.templates import write_template
 
-    target = file or Path(f"{job.value}.xlsx")
+    target = file or Path(f"{job}.xlsx")
     target = target if target.suffix else target.with_name(f"{target.name}.xlsx")
     if target.suffix.lower() != ".xlsx":
         _wrong(f"{target}: a template is a workbook; give it a name that ends in .xlsx.")
@@ -106,7 +117,7 @@ def template(
         _wrong(f"{target} is there already; name another file or move it away.")
     try:
         target.parent.mkdir(parents=True, exist_ok=True)
-        write_template(job, target)
+        write_template(Job(job), target)
     except OSError as trouble:
         _wrong(f"{target} cannot be written ({trouble.strerror or trouble}); name another place.")
     console.print(f"Wrote [bold]{escape(str(target))}[/bold]. Fill it in, then: ledgersolve solve "
@@ -179,6 +190,8 @@ def demo(
     from ledgersolve.service import board
     from ledgersolve.service.config import load_settings
     from ledgersolve.service.watch import serve
+    from ledgersolve.shipped import shipped
+    from ledgersolve.telling import returning
 
     served = _unused(folder or Path("ledgersolve_demo"))
     inbox = served / "Inbox"
@@ -214,7 +227,9 @@ def _answer_all(files: list[Path], into: Path | None, as_json: bool, *, solving:
     troubles = [trouble for file in files if (trouble := _unfit(file))]
     if troubles:
         _wrong(*troubles)
+    from ledgersolve.answer import exit_code
     from ledgersolve.job import handle
+    from ledgersolve.telling import progress_line, tell
 
     answers = []
     try:

@@ -95,6 +95,21 @@ def test_a_template_is_written_once(tmp_path) -> None:
     assert run("check", target).returncode == 3
 
 
+def test_the_commands_know_every_job() -> None:
+    """The names that the command takes without loading a job are those of the jobs."""
+    from ledgersolve.cli import JOBS
+    from ledgersolve.contract.reading import Job
+
+    assert tuple(job.value for job in Job) == JOBS
+
+
+def test_help_loads_no_engine() -> None:
+    """Help answers without numpy, readers and solvers."""
+    heavy = "any(name in sys.modules for name in ('numpy', 'pydantic', 'ortools'))"
+    code = f"import sys, ledgersolve.cli; sys.exit({heavy})"
+    assert subprocess.run([sys.executable, "-c", code]).returncode == 0
+
+
 def test_version_and_help() -> None:
     """Both answer at once, without an error."""
     from ledgersolve import __version__
