@@ -3,7 +3,7 @@
 import pytest
 
 from ledgersolve.contract.columns import Entry
-from ledgersolve.contract.degrees import LATITUDE, LONGITUDE, Coordinate, coordinates
+from ledgersolve.contract.degrees import LATITUDE, LONGITUDE, coordinates
 from ledgersolve.contract.faults import Fault
 from ledgersolve.contract.values import number
 from ledgersolve.workbook.cells import Cell, Kind
@@ -86,4 +86,5 @@ def test_plain_numbers_and_commas_are_no_matter_of_degrees():
     """A number as text is a number, and a decimal comma is told as such."""
     assert number(Cell(2, 1, Kind.TEXT, "+52.5"), NORTH) == 52.5
     assert fault_of("52,5", NORTH).kind == "ambiguous number"
-    assert isinstance(coordinates("52.5N", LATITUDE)[0], Coordinate)
+    assert number(Cell(2, 1, Kind.TEXT, "95"), NORTH) == 95, "the limits tell what is wrong with it"
+    assert fault_of("95,5", NORTH).kind == "ambiguous number"

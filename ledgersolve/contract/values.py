@@ -5,7 +5,7 @@ import math
 import re
 
 from ledgersolve.contract.columns import LARGEST, Entry, Holds, quoted, shown
-from ledgersolve.contract.degrees import LATITUDE, LONGITUDE, coordinates
+from ledgersolve.contract.degrees import LATITUDE, LONGITUDE, Coordinate, coordinates
 from ledgersolve.contract.faults import Fault
 from ledgersolve.workbook.cells import Cell, Kind
 from ledgersolve.workbook.problems import Recheck
@@ -116,14 +116,15 @@ def text_number(words: str, entry: Entry) -> float | Fault:
     meanings = readings(words)
     fitting = [value for value in meanings if entry.low <= value <= entry.high]
     separated = "," in words or words.count(".") > 1
-    compact = entry.unit == DEGREES and not fitting  # ISO 6709 writes 52°31.2' as +5231.2
-    if len(meanings) == 1 and not separated and not compact:
+    # looked for before numbers outside the limits are taken as such: ISO 6709 writes 52°31.2' as +5231.2
+    meant = coordinates(words, entry.title) if entry.unit == DEGREES and not fitting else ()
+    if len(meanings) == 1 and not separated and not meant:
         return meanings[0]
     if len(fitting) == 1 and not separated:
         return fitting[0]
     found = f"the text {quoted(words)}"
-    if entry.unit == DEGREES and not fitting:
-        return _degrees_fault(words, entry)
+    if meant or (entry.unit == DEGREES and not meanings):
+        return _degrees_fault(words, meant, entry)
     if meanings:
         return _separated(words, meanings, fitting, entry)
     if _DAY_TEXT.fullmatch(words):
@@ -159,10 +160,9 @@ def _separated(words: str, meanings: tuple[float, ...], fitting: list[float], en
     return _number_fault(entry, "ambiguous number", found, remedy)
 
 
-def _degrees_fault(words: str, entry: Entry) -> Fault:
+def _degrees_fault(words: str, meant: tuple[Coordinate, ...], entry: Entry) -> Fault:
     """The fault of a coordinate that is no decimal number: what it is in decimal degrees, where that can be told."""
     kind, found = "decimal degrees expected", f"the text {quoted(words)}"
-    meant = coordinates(words, entry.title)
     if len(meant) == 2:
         here, there = meant if entry.title == LATITUDE else meant[::-1]
         other = LONGITUDE if entry.title == LATITUDE else LATITUDE
