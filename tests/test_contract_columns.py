@@ -104,7 +104,7 @@ def test_words_for_what_is_expected():
     assert Entry("x", "").expected() == "a number of 0 or more"
     assert Entry("x", "", unit="km", low=1, high=5).expected() == "a number from 1 to 5 (km)"
     assert Entry("x", "", Holds.WHOLE, above=True).expected() == "a whole number above 0"
-    assert Entry("x", "", Holds.CHOICE, choices=("a", "b")).expected() == "`a` or `b`"
+    assert Entry("x", "", Holds.CHOICE, choices=("a", "b")).expected() == "\u201ca\u201d or \u201cb\u201d"
 
 
 def test_values_in_words():

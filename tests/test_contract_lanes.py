@@ -123,7 +123,7 @@ def test_lanes_need_one_of_cost_and_distance_as_a_title(tmp_path):
     """Without both columns the title row is incomplete, and the error names the alternatives."""
     reading = read(tmp_path, lane_costs=[[1, 2], [3, 4]], lanes=[lane("A", "X", Most=2)])
     assert errors(reading) == [("missing column", "Lanes", "A1")]
-    assert "`Unit cost` or `Distance`" in reading.problems[0].expected
+    assert "\u201cUnit cost\u201d or \u201cDistance\u201d" in reading.problems[0].expected
 
 
 def test_a_distance_without_a_rate_is_no_cost(tmp_path):

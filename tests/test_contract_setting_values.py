@@ -113,3 +113,15 @@ def test_percent_cells_are_read_as_they_are_shown(tmp_path):
     assert dict(reading.settings)["Road factor"] == "1.3"
     assert errors(read(tmp_path, [*RIGHT, ["Accepted gap (%)", Percent(2)]])) == [("number too large", "Settings",
                                                                                    "B4")]
+
+
+def test_a_value_that_could_not_be_read_is_shown_as_typed(tmp_path):
+    """The record of a faulty workbook shows what stands in the cell, never a default that was not asked for."""
+    sheets = {"Settings": [["Setting", "Value"], ["Job", "site selection"], ["Currency", "\u20ac"],
+                           ["Single sourcing", "ja"], ["Most sites", 2]]}
+    shown = dict(read_sheets(tmp_path, sheets).settings)
+    assert shown["Currency"] == "the text \u201c\u20ac\u201d, which could not be read"
+    assert shown["Single sourcing"] == "the text \u201cja\u201d, which could not be read"
+    assert shown["Most sites"] == "2"
+    sheets["Settings"][2] = ["Currency", None]
+    assert dict(read_sheets(tmp_path, sheets).settings)["Currency"] == "not given"

@@ -1,5 +1,6 @@
 """Templates: current, answered when dropped untouched, right when filled in."""
 
+import textwrap
 from pathlib import Path
 
 import openpyxl
@@ -127,6 +128,33 @@ def test_the_guide_has_ten_lines(job):
     """The sheet that explains is ten numbered lines."""
     sheet = openpyxl.load_workbook(COMMITTED / f"{job}.xlsx")[GUIDE]
     assert [row[0].value for row in sheet.iter_rows(min_row=3)] == list(range(1, 11))
+
+
+@pytest.mark.parametrize("job", list(Job))
+def test_no_folded_text_is_cut(job):
+    """Every text that folds stands in a row as high as its lines, at some 14 points a line."""
+    book = openpyxl.load_workbook(COMMITTED / f"{job}.xlsx")
+    folded = 0
+    for sheet in book:
+        for cell in (cell for row in sheet.iter_rows() for cell in row if cell.alignment.wrap_text and cell.value):
+            sizes = sheet.column_dimensions.values()
+            width = next(size.width for size in sizes if size.min <= cell.column <= size.max)
+            lines = len(textwrap.wrap(str(cell.value), int(width)))
+            small = 12 if cell.font.sz < 11 else 14
+            folded += lines > 1
+            height = sheet.row_dimensions[cell.row].height or 15
+            assert lines == 1 or height >= lines * small, f"{sheet.title}!{cell.coordinate}"
+    assert folded > 5
+
+
+def test_examples_of_settings_are_those_of_the_job():
+    """The example of Job is the template's own job, that of Title a title of such a workbook."""
+    examples = {}
+    for job in Job:
+        sheet = openpyxl.load_workbook(COMMITTED / f"{job}.xlsx")["Settings"]
+        examples[job] = {row[0].value: row[4].value for row in sheet.iter_rows(min_row=FIRST + 1)}
+        assert examples[job]["Job"] == job
+    assert examples[Job.SITE_SELECTION]["Title"] != examples[Job.LOT_SIZING]["Title"]
 
 
 @pytest.mark.parametrize("job", list(Job))

@@ -117,7 +117,7 @@ def test_choices_are_found_whatever_the_case_and_name_near_misses():
     """`OPEN` is open; `opne` is asked about."""
     rule = Entry("Rule", "", Holds.CHOICE, choices=("free", "open", "closed"))
     assert values.choice("OPEN", rule) == "open"
-    assert "`closed`" in values.choice("close", rule).remedy
+    assert "\u201cclosed\u201d" in values.choice("close", rule).remedy
     assert values.choice("never", rule).kind == "unknown word"
 
 

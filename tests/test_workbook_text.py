@@ -120,6 +120,16 @@ def test_near_misses(word, meant):
     assert nearest(word, ["Hamburg", "Bremen", "0012"]) == meant
 
 
+@pytest.mark.parametrize(("word", "known", "meant"), [
+    ("EIM", ("EIN", "AMS"), "EIN"), ("HMA", ("HAM", "LEJ"), "HAM"), ("EI", ("EIN", "AMS"), "EIN"),
+    ("EIX", ("EIN", "EIM"), None), ("S99", ("S09", "S01"), None), ("P300", ("P200", "X1"), None),
+    ("XY", ("XZ", "AB"), None), ("C9", ("C1", "C2"), None),
+])
+def test_a_single_wrong_letter_of_a_short_code_is_a_slip(word, known, meant):
+    """One letter off names the code that was meant, unless two are that near or the code differs in a digit."""
+    assert nearest(word, known) == meant
+
+
 def test_alike_ignores_case_and_spacing_only():
     """Codes that differ in case or inner spacing are alike; others are not."""
     assert alike("Ham 1") == alike("HAM1") == alike("h\u200bam 1")

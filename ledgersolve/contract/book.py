@@ -78,7 +78,7 @@ def report_sheets(package: Package, contract: JobContract, other: JobContract, f
             missing_sheet(sheet.name, slip, faults)
         elif slip is not None:
             faults.notice(slip, None, "", "sheet like a known one", f"the sheet {quoted(slip)}; it was not used",
-                          f"`{sheet.name}`, if that is what it means",
+                          f"{quoted(sheet.name)}, if that is what it means",
                           "Rename the sheet if it should be used.")
     foreign = {plain(sheet.name) for sheet in other.sheets}
     theirs = [name for name in spare if plain(name) in foreign]
@@ -184,7 +184,7 @@ def _read_list(package: Package, info: SheetInfo, sheet: ListSheet, book: Book) 
 
 
 def _no_titles(name: str, sheet: ListSheet, faults: Faults) -> None:
-    wanted = listed(" or ".join(f"`{title}`" for title in titles) for titles in sheet.required_titles())
+    wanted = listed(" or ".join(map(quoted, titles)) for titles in sheet.required_titles())
     faults.add(name, None, "", Fault(
         "no title row", "no row with the titles within the first 30 rows", f"a title row with {wanted}",
         f"Put the titles above the columns; the template shows how {sheet.name} looks."))

@@ -6,7 +6,7 @@ are made from the descriptions.
 """
 
 import math
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
 
@@ -50,7 +50,7 @@ class Entry:
     example
         A value that is right.
     unit
-        Unit in words (``money``, ``units``, ``degrees``); "" where none.
+        Unit in words (``currency``, ``time units``, ``degrees``); "" where none.
     required
         Whether a cell must be filled.
     default
@@ -107,7 +107,7 @@ class Entry:
             Holds.CODE: f"a code of the sheet {self.refers}" if self.refers else "a code",
             Holds.TEXT: "text",
             Holds.YES_NO: "yes or no",
-            Holds.CHOICE: " or ".join(f"`{choice}`" for choice in self.choices),
+            Holds.CHOICE: alternatives(self.choices),
             Holds.DATE: "a date",
             Holds.CODES: f"codes of the sheet {self.refers}, with commas between them",
             Holds.CURRENCY: "a currency code of three letters (ISO 4217), such as EUR",
@@ -210,6 +210,12 @@ def shown(value: object) -> str:
             return "unlimited"
         return f"{value:.15g}"
     return str(value)
+
+
+def alternatives(words: Sequence[str]) -> str:
+    """Words of which one is to be typed, in quotes: ``“free”, “open” or “closed”``."""
+    given = [quoted(word) for word in words]
+    return " or ".join([", ".join(given[:-1]), given[-1]] if len(given) > 1 else given)
 
 
 def listed(words: Iterable[str], most: int = 6) -> str:

@@ -280,7 +280,7 @@ def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults)
     near = {cell: nearest(str(cell.value), absent, plain) for cell in titles.strangers}
     for names in titles.missing:
         slip = next((cell for cell, name in near.items() if name in names), None)
-        wanted = " or ".join(f"`{name}`" for name in names)
+        wanted = " or ".join(map(quoted, names))
         place = (slip.row, slip.column) if slip else (titles.row, min(titles.headings))
         known = listed(str(text) for text in titles.headings.values())
         found = f"the title {quoted(slip.value)}" if slip else f"a title row with {known}"
@@ -291,9 +291,9 @@ def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults)
         if name is not None and name not in missing:
             faults.notice(sheet, (cell.row, cell.column), name, "title like a known one",
                           f"the title {quoted(cell.value)}; the column was not used",
-                          f"`{name}`, if that is what it means",
+                          f"{quoted(name)}, if that is what it means",
                           "Change the title if the column should be used.")
     for name, cell in titles.twice:
         faults.add(sheet, (cell.row, cell.column), name, Fault(
-            "title twice", f"the title {quoted(cell.value)} a second time", f"one column `{name}`",
+            "title twice", f"the title {quoted(cell.value)} a second time", f"one column {quoted(name)}",
             "Rename or take out one of the two columns."))

@@ -26,8 +26,8 @@ SETTINGS = (
           default_words="yes if the sheet Today plan is filled"),
 )
 
-_MONEY, _UNITS, _PER_UNIT, _TIME = "money", "units", "money per unit", "time units"
-_HOLDING = "money per unit and period"
+_MONEY, _UNITS, _PER_UNIT, _TIME = "currency", "item's units", "currency per unit", "time units"
+_HOLDING = "currency per unit and period"
 
 PERIODS_SHEET = ListSheet(
     PERIODS, "One row a period, in order.",
@@ -93,7 +93,7 @@ RESOURCES_SHEET = ListSheet(
               unit=_TIME, required=True, instead=CAPACITY),
         Entry("Overtime limit", "Most time above the capacity in a period.", example=12, unit=_TIME,
               default=0.0),
-        Entry("Overtime cost", "Cost of a time unit of overtime.", example=55, unit="money per time unit",
+        Entry("Overtime cost", "Cost of a time unit of overtime.", example=55, unit="currency per time unit",
               default=0.0),
         Entry("Use cost", "Paid for each period in which the resource is used, e.g. a rented machine.",
               example=0, unit=_MONEY, default=0.0),

@@ -2,15 +2,7 @@
 
 from pathlib import PurePath
 
-from ledgersolve.contract import (
-    lot_case,
-    lot_judgement,
-    lot_sizing,
-    settings,
-    site_case,
-    site_judgement,
-    site_selection,
-)
+from ledgersolve.contract import lot_sizing, settings, site_selection
 from ledgersolve.contract.book import Book, find_sheets, missing_sheet, read_sheets, report_sheets
 from ledgersolve.contract.columns import JobContract
 from ledgersolve.contract.faults import Fault, Faults
@@ -71,13 +63,15 @@ def read_workbook(package: Package, file_name: str) -> Reading:
 
 
 def _reading(book: Book, named: Job | None, file_name: str, order: list[str]) -> Reading:
-    """Build the case and everything that travels beside it."""
+    """Build the case and everything that travels beside it; what builds the other job's is not loaded."""
     values = book.settings
     title = values.text("Title") or PurePath(file_name).stem
     values.values["Title"] = title
     case: SiteCase | LotCase | None
     road_cost, road_factor = None, 1.0
     if book.contract.job is Job.SITE_SELECTION:
+        from ledgersolve.contract import site_case, site_judgement
+
         data = site_case.build(book, title)
         case = data.case
         if data.case is not None and data.lanes is not None:
@@ -86,6 +80,8 @@ def _reading(book: Book, named: Job | None, file_name: str, order: list[str]) ->
             road_cost = values.number(site_selection.RATE)
             road_factor = values.number(site_selection.ROAD_FACTOR) or 1.0
     else:
+        from ledgersolve.contract import lot_case, lot_judgement
+
         case = lot = lot_case.build(book, title)
         if lot is not None:
             lot_judgement.judge(book, lot)
@@ -119,7 +115,7 @@ def _settings_rows(package: Package, faults: Faults) -> tuple[TitleRow | None, l
     if read is None or read[0].missing:
         faults.add(info.name, None, "", Fault(
             "no title row", "no row with the titles Setting and Value within the first 30 rows",
-            "a title row with `Setting` and `Value`",
+            "a title row with “Setting” and “Value”",
             "Put the titles Setting and Value above the two columns."))
         return None, [], info.name
     return read[0], read[1], info.name

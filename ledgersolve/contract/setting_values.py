@@ -27,7 +27,7 @@ class SettingValues:
     """Values of the settings by name: given ones, else defaults.
 
     ``given`` holds the cell of each filled value, ``rows`` the row of each setting named, ``bad`` names at
-    fault, ``as_text`` names whose number stands as text. ``value_column`` is the column of values.
+    fault and ``typed`` what stands there, ``as_text`` names whose number stands as text.
     """
 
     sheet: str = settings.SHEET
@@ -35,6 +35,7 @@ class SettingValues:
     given: dict[str, Place] = field(default_factory=dict)
     rows: dict[str, int] = field(default_factory=dict)
     bad: set[str] = field(default_factory=set)
+    typed: dict[str, str] = field(default_factory=dict)
     as_text: set[str] = field(default_factory=set)
     columns: dict[str, int] = field(default_factory=dict)
     readable: bool = True
@@ -67,8 +68,13 @@ class SettingValues:
         return None
 
     def shown(self, entries: Sequence[Entry]) -> tuple[tuple[str, str], ...]:
-        """Every setting with the value used, as text."""
-        return tuple((entry.title, shown(self.values.get(entry.title))) for entry in entries)
+        """Every setting with the value used, as text; where a value could not be read, what stands there."""
+        return tuple((entry.title, self._shown(entry.title)) for entry in entries)
+
+    def _shown(self, name: str) -> str:
+        if name in self.typed:
+            return f"{self.typed[name]}, which could not be read"
+        return "not given" if name in self.bad else shown(self.values.get(name))
 
 
 def find_settings(rows: Sequence[Mapping[str, Cell]], entries: Sequence[Entry],
@@ -134,6 +140,7 @@ def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: 
     unit = unit_in(str(name.value))
     if unit_in(entry.title) and unit.casefold() in _OTHER_UNITS:
         result.bad.add(entry.title)
+        result.typed[entry.title] = "nothing" if cell is None else values.found_in(cell)
         faults.add(result.sheet, (name.row, name.column), entry.title, Fault(
             "unit differs", f"the unit {quoted(unit)}", f"the unit {unit_in(entry.title)}",
             f"Give the value in {unit_in(entry.title)} and name the setting {entry.title}."))
@@ -143,6 +150,7 @@ def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: 
     value = _value(cell, entry, date1904)
     if isinstance(value, Fault):
         result.bad.add(entry.title)
+        result.typed[entry.title] = values.found_in(cell)
         faults.add(result.sheet, (cell.row, cell.column), entry.title, value)
     elif value != "":
         result.values[entry.title] = value
@@ -159,6 +167,7 @@ def _take_percentage(entry: Entry, result: SettingValues, faults: Faults) -> Non
     place = result.given[entry.title]
     if fault is not None:
         result.bad.add(entry.title)
+        result.typed[entry.title] = f"{shown(shown_value)} %"
         faults.add(result.sheet, place, entry.title, fault)
         return
     result.values[entry.title] = shown_value
@@ -217,7 +226,7 @@ def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[E
         elif name:
             faults.notice(sheet, where, name, "setting like a known one",
                           f"the setting {quoted(cell.value)}; it was not used",
-                          f"`{name}`, if that is what it means",
+                          f"{quoted(name)}, if that is what it means",
                           "Change the name if the setting should be used.")
     return near
 

@@ -1,6 +1,7 @@
 """The settings that both jobs share."""
 
 from ledgersolve.contract.columns import Entry, Holds, ListSheet
+from ledgersolve.contract.reading import Job
 
 SHEET = "Settings"
 """Name of the sheet; its two columns are Setting and Value, further columns are notes."""
@@ -20,9 +21,15 @@ QUESTIONS = Entry("Questions", "yes: the returned workbook also answers why, why
                   Holds.YES_NO,
                   "yes", default=True)
 QUESTIONS_SHARE = Entry("Share of time for questions (%)",
-                        "Share of the time limit that may go into these answers, on top of solving.",
+                        "Share of the time limit that is kept for these answers; solving has the rest.",
                         example=20, unit="%", default=20.0, low=0, high=100)
 COMPARE = "Compare with today"
+
+EXAMPLES: dict[tuple[Job, str], str] = {
+    (Job.LOT_SIZING, TITLE.title): "Filling line, weeks 1 to 12",
+    **{(job, JOB.title): job.value for job in Job},
+}
+"""Examples of common settings that differ between the jobs."""
 
 FIRST = (JOB, TITLE, CURRENCY, TIME_LIMIT, ACCEPTED_GAP, QUESTIONS, QUESTIONS_SHARE)
 """Settings of both jobs, in the order of the contract."""

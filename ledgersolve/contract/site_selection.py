@@ -27,27 +27,27 @@ SETTINGS = (
     Entry("Distance unit", "Unit of all distances.", Holds.CHOICE, "km", default="km", choices=("km", "mi")),
     Entry(RATE, "Cost of one unit over one unit of distance, for lanes without a cost of their own; on the "
           "whole-demand basis it is multiplied by the customer's demand.", example=0.12,
-          unit="money per unit and distance"),
+          unit="currency per demand unit and distance unit"),
     Entry(ROAD_FACTOR, "Road distance over great-circle distance; used for distances from coordinates only.",
           example=1.3, default=1.0, low=1.0, high=100.0),
     Entry("Fewest sites", "Least number of open sites.", Holds.WHOLE, 2),
     Entry("Most sites", "Largest number of open sites.", Holds.WHOLE, 6),
     Entry(LONGEST, "Service promise for every customer: no delivery over a longer distance.", example=250,
-          unit="distance unit"),
+          unit="distance units"),
     Entry(SHARE, "At least this share of all demand is served within Distance for share.", example=90,
           unit="%", low=0, high=100),
     Entry(SHARE_DISTANCE, "The distance that Share within distance (%) counts.", example=150,
-          unit="distance unit"),
+          unit="distance units"),
     Entry("Single sourcing", "yes: every customer is served from one site.", Holds.YES_NO, "no",
           default=False),
     Entry("Unmet demand cost", "Cost of a unit that is not delivered; when empty all demand must be met.",
-          example=40, unit="money per unit"),
+          example=40, unit="currency per demand unit"),
     Entry(settings.COMPARE, "yes: today's network, from Today in Sites, is costed too.", Holds.YES_NO, "yes",
           default_words="yes if any Today is yes"),
 )
 
 _SWAPPED = "Are latitude and longitude swapped?"
-_MONEY, _UNITS, _PER_UNIT, _DISTANCE = "money", "units", "money per unit", "distance unit"
+_MONEY, _UNITS, _PER_UNIT, _DISTANCE = "currency", "demand units", "currency per demand unit", "distance units"
 
 SITES_SHEET = ListSheet(
     SITES, "One row a possible site, or a size of one.",
@@ -105,7 +105,7 @@ LANES_SHEET = ListSheet(
         Entry("Site", "Code of the site.", Holds.CODE, "HAM", required=True, refers=SITES),
         Entry("Customer", "Code of the customer.", Holds.CODE, "C001", required=True, refers=CUSTOMERS),
         Entry("Unit cost", "Cost of the lane by the Lane cost basis: for a unit, or for all of the demand.",
-              example=6.4, unit="money by the basis", default_words="from the distance"),
+              example=6.4, unit="currency by the basis", default_words="from the distance"),
         Entry("Distance", "Length of the lane.", example=118, unit=_DISTANCE,
               default_words="from Distances or coordinates"),
         Entry("Allowed", "no: the lane must not be used.", Holds.YES_NO, "yes", default=True),
@@ -119,7 +119,7 @@ LANE_COSTS_SHEET = MatrixSheet(
     LANE_COSTS,
     "Lane costs by the Lane cost basis: a row a site, a column a customer; an empty cell = no lane.",
     SITES, CUSTOMERS, "Site", "Customer",
-    Entry("Lane cost", "Cost of the lane.", example=6.4, unit="money by the basis",
+    Entry("Lane cost", "Cost of the lane.", example=6.4, unit="currency by the basis",
           default_words="no lane"),
 )
 

@@ -5,6 +5,8 @@ the titles, so the example is never taken for data.
 """
 
 import datetime
+import textwrap
+from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -22,7 +24,15 @@ HEADING, MEANING, NEEDED, EXAMPLE, TITLES, FIRST = range(6)
 LIST_ROWS, LANE_ROWS, MATRIX_ROWS, MATRIX_COLUMNS = 5000, 100_000, 1000, 500
 """How far validation reaches; rows below it are read all the same."""
 
+LINE = 16.0
+"""Height of a line of text in points."""
+
 GUIDE = "How to fill this in"
+
+_UNIT_WORDS = {
+    Job.SITE_SELECTION: ": demand units are those of Demand unit in Settings, distance units those of Distance unit",
+    Job.LOT_SIZING: ": an item's units are those of Unit in its row; time units, such as hours, are one and the same",
+}
 
 _ISSUED = datetime.datetime(2026, 1, 1, tzinfo=datetime.UTC)
 _INK, _PETROL, _QUIET, _PALE = "#1F2933", "#0B4F5C", "#52606D", "#E6EEF0"
@@ -34,7 +44,8 @@ _GUIDE_LINES = (
     "named above its title.",
     "Titles may stand in any order. Do not rename them; your own further columns and sheets are left alone.",
     "Codes tie the sheets together: write each one in the same way everywhere.",
-    "All money is in the one currency, all figures cover the same period; units are named in the titles.",
+    "All money is in the one Currency of Settings, all figures cover the same period. Units stand in brackets in "
+    "the titles{units}.",
     "Numbers are plain numbers: no thousands separators typed as text, no units behind them.",
     "Sheets you do not need stay empty: {optional}.",
     "No totals rows below a list; empty rows do no harm.",
@@ -111,12 +122,14 @@ def _write_guide(book: Any, contract: JobContract, formats: _Formats) -> None:
     sheet = book.add_worksheet(GUIDE)
     sheet.hide_gridlines(2)
     sheet.set_column(0, 0, 4)
-    sheet.set_column(1, 1, 110, book.add_format({"text_wrap": True, "valign": "top"}))
+    sheet.set_column(1, 1, 110, book.add_format({"text_wrap": True, "valign": "vcenter"}))
     sheet.write_string(0, 0, f"Template: {contract.job}", formats.heading)
     optional = ", ".join(each.name for each in contract.sheets if not each.required)
     for number, line in enumerate(_GUIDE_LINES, start=1):
         sheet.write_number(number + 1, 0, number, formats.meaning)
-        sheet.write_string(number + 1, 1, line.format(optional=optional))
+        words = line.format(optional=optional, units=_UNIT_WORDS[contract.job])
+        sheet.write_string(number + 1, 1, words)
+        _fold(sheet, number + 1, [(words, 110)])
     _print_setup(sheet)
 
 
@@ -135,17 +148,25 @@ def _write_settings(book: Any, contract: JobContract, formats: _Formats) -> None
     for column, title in enumerate(("Setting", "Value", "Meaning", "If empty", "Example")):
         sheet.write_string(TITLES, column, title, formats.title if column < 2 else formats.title_optional)
     for row, entry in enumerate(contract.settings, start=FIRST):
+        default = "required" if entry.required else entry.default_text()
         sheet.write_string(row, 0, entry.title, formats.title if entry.required else formats.number)
         if entry is settings.JOB:
             sheet.write_string(row, 1, contract.job.value, formats.text)
         else:
             sheet.write_blank(row, 1, None, formats.number if entry.numeric else formats.text)
         sheet.write_string(row, 2, entry.meaning, formats.wrapped)
-        sheet.write_string(row, 3, "required" if entry.required else entry.default_text(), formats.meaning)
-        sheet.write_string(row, 4, example_text(entry), formats.example)
+        sheet.write_string(row, 3, default, formats.wrapped)
+        example = settings.EXAMPLES.get((contract.job, entry.title), example_text(entry))
+        sheet.write_string(row, 4, example, formats.example)
+        _fold(sheet, row, [(entry.title, 34), (entry.meaning, 90), (default, 34)])
         sheet.data_validation(row, 1, row, 1, _validation(entry, ""))
     sheet.freeze_panes(FIRST, 1)
     _print_setup(sheet)
+
+
+def _height(texts: Sequence[tuple[str, float]], line: float = LINE) -> float:
+    """Height in points of a row that shows each (text, column width) whole, folded between words."""
+    return line * max(len(textwrap.wrap(text, max(int(width) - 2, 8))) for text, width in texts)
 
 
 def example_text(entry: Entry) -> str:
@@ -158,8 +179,9 @@ def _write_list(book: Any, contract: ListSheet, job: JobContract, formats: _Form
     sheet = book.add_worksheet(contract.name)
     sheet.write_string(HEADING, 0, contract.name, formats.heading)
     sheet.write_string(MEANING, 0, contract.meaning, formats.meaning)
-    sheet.set_row(NEEDED, 36)
-    sheet.set_row(TITLES, 32)
+    columns = [(entry, _width(entry)) for entry in contract.entries]
+    sheet.set_row(NEEDED, _height([(needed_text(entry, contract), width) for entry, width in columns], 13.0))
+    sheet.set_row(TITLES, _height([(title_of(entry), width) for entry, width in columns]))
     last = FIRST + (LANE_ROWS if len(contract.key) > 1 else LIST_ROWS) - 1
     for column, entry in enumerate(contract.entries):
         _write_column(sheet, column, entry, contract, job, last, formats)
@@ -171,13 +193,25 @@ def _write_list(book: Any, contract: ListSheet, job: JobContract, formats: _Form
 def _write_column(sheet: Any, column: int, entry: Entry, contract: ListSheet, job: JobContract, last: int,
                   formats: _Formats) -> None:
     body = formats.date if entry.holds is Holds.DATE else formats.number if entry.numeric else formats.text
-    sheet.set_column(column, column, max(13, min(len(entry.title) + 4, 22)), body)
+    sheet.set_column(column, column, _width(entry), body)
     sheet.write_string(NEEDED, column, needed_text(entry, contract), formats.needed)
     lead = "Example: " if column == 0 else ""
     sheet.write_string(EXAMPLE, column, lead + example_text(entry), formats.example)
     look = formats.title if entry.required else formats.title_optional
     sheet.write_string(TITLES, column, title_of(entry), look)
     sheet.data_validation(FIRST, column, last, column, _validation(entry, _code_range(entry, job)))
+
+
+def _fold(sheet: Any, row: int, texts: Sequence[tuple[str, float]]) -> None:
+    """Give a row the height that its texts need; one of a single line fits itself to whatever font is there."""
+    height = _height(texts)
+    if height > LINE:
+        sheet.set_row(row, height)
+
+
+def _width(entry: Entry) -> float:
+    """Width of a column in characters."""
+    return float(max(13, min(len(entry.title) + 4, 22)))
 
 
 def needed_text(entry: Entry, contract: ListSheet) -> str:

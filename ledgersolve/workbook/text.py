@@ -6,6 +6,7 @@ import unicodedata
 from collections.abc import Callable, Iterable
 
 from rapidfuzz import fuzz, process
+from rapidfuzz.distance import OSA
 
 from ledgersolve.workbook.cells import Cell, Kind
 
@@ -112,8 +113,10 @@ def cell_text(cell: Cell, date1904: bool = False) -> str | None:
 def nearest(word: str, known: Iterable[str], form: Callable[[str], str] = alike) -> str | None:
     """The known word that ``word`` is most likely a slip of; None where none is close.
 
-    A difference in case, spacing or leading zeros only always counts as close. ``form`` is what is compared:
-    ``plain`` for titles, whose units do not count.
+    A difference in case, spacing or leading zeros only always counts as close; so does, in words of three or
+    more characters, a single letter that is wrong, missing, too many or swapped with its neighbour (the optimal
+    string alignment distance is 1), where one known word alone is that near. Digits that differ make other codes,
+    not slips. ``form`` is what is compared: ``plain`` for titles, whose units do not count.
     """
     choices = {each: form(each) for each in known}
     wanted = form(word)
@@ -122,4 +125,11 @@ def nearest(word: str, known: Iterable[str], form: Callable[[str], str] = alike)
         if shape == wanted or (bare.isdigit() and shape.lstrip("0") == bare):
             return each
     best = process.extractOne(wanted, choices, scorer=fuzz.ratio, score_cutoff=CLOSE)
-    return None if best is None else str(best[2])
+    if best is not None or len(wanted) < 3:
+        return None if best is None else str(best[2])
+    slips = [each for _, _, each in process.extract(wanted, choices, scorer=OSA.distance, score_cutoff=1, limit=2)]
+    return slips[0] if len(slips) == 1 and _digits(choices[slips[0]]) == _digits(wanted) else None
+
+
+def _digits(text: str) -> str:
+    return "".join(filter(str.isdigit, text))
