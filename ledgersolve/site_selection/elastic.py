@@ -16,23 +16,34 @@ from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.model import SiteModel, build
 
 LARGE = 150_000
-"""Lanes from which on whole-number conditions are left out: the least slack is then "at least" so much."""
+"""Lanes from which on whole-number conditions are left out at first: the slack is then a lower limit, and the run
+with them is there to find what is enough."""
 TINY = 1e-7
 
 
 @dataclass(frozen=True)
 class Loosened:
-    """Least slack of one kind. ``amounts`` has one figure for each of ``where`` (sites or customers)."""
+    """Least slack of one kind. ``amounts`` has one figure for each of ``where`` (sites or customers).
+
+    ``enough``: a plan exists once the amounts are given. ``least`` is what every plan asks for together, proven;
+    of kinds loosened together it is the amount where the sum of all is the least, and else 0.
+    """
 
     kind: str
     where: Ints
     amounts: Floats
-    exact: bool
+    enough: bool
+    least: float
 
     @property
     def total(self) -> float:
         """Slack in all."""
         return float(self.amounts.sum())
+
+    @property
+    def exact(self) -> bool:
+        """Whether the amounts are enough, and no plan needs less."""
+        return self.enough and self.least >= self.total * (1 - 1e-6) - TINY
 
 
 @dataclass
@@ -44,6 +55,7 @@ class _Elastic:
     built: SiteModel
     exact: bool
     slacks: list[tuple[str, Ints, Ints]]
+    too_far: Floats | None = None
 
     def slack(self, kind: str, where: Ints, *, whole: bool = False) -> Ints:
         """Add one slack variable for each of ``where``, at a price of one."""
@@ -76,16 +88,47 @@ def loosen(case: Case, clock: Clock) -> list[Loosened]:
 
 
 def loosen_all(case: Case, clock: Clock) -> list[Loosened]:
-    """Give the least slack of all kinds together, for cases that no single rule mends."""
+    """Give the least slack of all kinds together, for cases that no single rule mends.
+
+    Rules that hold or do not, without an amount between, are given up only where the others are not enough.
+    """
     kinds = tuple(kind for kind in KINDS if kind != "unmet" and _applies(case, kind))
-    return [part for part in _least(case, kinds, clock.left() / 2, clock) or [] if part.total > TINY]
+    measured = tuple(kind for kind in kinds if kind not in _YES_NO)
+    found = _least(case, measured, clock.left() / 3, clock)
+    if found is None and len(measured) < len(kinds):
+        found = _least(case, kinds, clock.left() / 2, clock)
+    return [part for part in found or [] if part.total > TINY or part.kind in _YES_NO]
 
 
-def least_unmet(case: Case, seconds: float, clock: Clock) -> tuple[SiteModel, Lanes, LinearResult] | None:
+@dataclass(frozen=True)
+class Bent:
+    """A plan of the elastic model, and the slack that it takes besides demand left unmet."""
+
+    built: SiteModel
+    lanes: Lanes
+    result: LinearResult
+    loosened: tuple[Loosened, ...] = ()
+
+
+def least_unmet(case: Case, seconds: float, clock: Clock) -> Bent | None:
     """Solve for the least demand that stays unmet when all other rules hold; None if they cannot."""
     elastic = _model(case, ("unmet",))
     result = elastic.built.model.solve(seconds, cancelled=clock.limits.cancelled)
-    return None if result.values is None else (elastic.built, elastic.lanes, result)
+    return None if result.values is None else Bent(elastic.built, elastic.lanes, result)
+
+
+def least_bent(case: Case, seconds: float, clock: Clock) -> Bent | None:
+    """Solve for the least slack of all kinds together, demand left unmet among them."""
+    kinds = tuple(kind for kind in KINDS if _applies(case, kind))
+    measured = tuple(kind for kind in kinds if kind not in _YES_NO)
+    for tried in dict.fromkeys((measured, kinds)):
+        elastic = _model(case, tried)
+        result = elastic.built.model.solve(seconds / 2, cancelled=clock.limits.cancelled)
+        if result.values is not None:
+            found = _loosened(elastic, tried, result, 0.0)
+            return Bent(elastic.built, elastic.lanes, result,
+                        tuple(part for part in found if part.total > TINY or part.kind in _YES_NO))
+    return None
 
 
 _YES_NO = ("single source", "lane most")
@@ -110,24 +153,51 @@ def _applies(case: Case, kind: Kind) -> bool:
 
 def _least(case: Case, kinds: tuple[Kind, ...], seconds: float, clock: Clock) -> list[Loosened] | None:
     elastic = _model(case, kinds)
-    result = elastic.built.model.solve(max(seconds, 0.2), cancelled=clock.limits.cancelled)
+    result = elastic.built.model.solve(max(seconds / 2, 0.2), cancelled=clock.limits.cancelled)
+    if result.status == "infeasible":
+        return None
+    least = max(float(result.bound), 0.0)
+    if not elastic.exact:
+        whole = _model(case, kinds, large=True)
+        again = whole.built.model.solve(max(seconds / 2, 0.2), cancelled=clock.limits.cancelled)
+        if again.status == "infeasible":
+            return None
+        least = max(least, float(again.bound))
+        if again.values is not None:
+            elastic, result = whole, again
     if result.values is None:
         return None
-    exact = elastic.exact and result.status == "optimal"
-    found = [
-        Loosened(kind, where[result.values[numbers] > TINY], _used(result.values[numbers]), exact)
-        for kind, where, numbers in elastic.slacks
-    ]
+    return _loosened(elastic, kinds, result, least)
+
+
+def _loosened(elastic: _Elastic, kinds: tuple[Kind, ...], result: LinearResult, least: float) -> list[Loosened]:
+    """Read the slack of every kind from a solved model; ``least`` is proven for all of them together."""
+    if result.values is None:
+        return []
+    enough = elastic.exact
+    joint = least >= float(result.objective) * (1 - 1e-6) - TINY
+    found = []
+    for kind, where, numbers in elastic.slacks:
+        amounts = _too_far(elastic, where, result.values) if kind == "promise" else result.values[numbers]
+        used = amounts > TINY
+        low = least if len(elastic.slacks) == 1 else float(amounts[used].sum()) if joint else 0.0
+        found.append(Loosened(kind, where[used], amounts[used], enough, low))
     nowhere = np.zeros(0, dtype=np.int64)
-    found += [Loosened(kind, nowhere, np.zeros(0), exact) for kind in kinds if kind in _YES_NO]
+    found += [Loosened(kind, nowhere, np.zeros(0), enough, 0.0) for kind in kinds if kind in _YES_NO]
     return found
 
 
-def _used(values: Floats) -> Floats:
-    return values[values > TINY]
+def _too_far(elastic: _Elastic, customers: Ints, values: Floats) -> Floats:
+    """How far each customer's longest delivery goes beyond its promise; a split one weighs as its longest part."""
+    beyond = np.zeros(elastic.case.n)
+    if elastic.too_far is not None:
+        there = values[elastic.built.x] > TINY
+        np.maximum.at(beyond, elastic.built.customer[there], elastic.too_far[there])
+    return beyond[customers]
 
 
-def _model(case: Case, kinds: tuple[Kind, ...]) -> _Elastic:
+def _model(case: Case, kinds: tuple[Kind, ...], *, large: bool = False) -> _Elastic:
+    """Build the model with slack of some kinds; whole-number conditions also where it is ``large``, if so asked."""
     loose = _without(case, kinds)
     lanes = Lanes.of(loose)
     # with every cost gone, only slack is paid for
@@ -138,7 +208,7 @@ def _model(case: Case, kinds: tuple[Kind, ...]) -> _Elastic:
     )
     if "unmet" in kinds:
         free = replace(free, unmet_cost=np.where(np.isfinite(lanes.unmet_cost), 0.0, case.demand))
-    exact = int(np.isfinite(free.cost).sum()) <= LARGE
+    exact = large or int(np.isfinite(free.cost).sum()) <= LARGE
     elastic = _Elastic(case, lanes, build(free, relaxed=not exact), exact, [])
     for kind in kinds:
         if kind in _ROWS:
@@ -245,6 +315,7 @@ def _promise_rows(elastic: _Elastic) -> None:
         return
     promised = case.promised()
     over = np.maximum(0.0, distance[built.site, built.customer] - promised[built.customer])
+    elastic.too_far = over
     far = np.flatnonzero(over > 0)
     customers, place = np.unique(built.customer[far], return_inverse=True)
     beyond = elastic.slack("promise", customers.astype(np.int64))

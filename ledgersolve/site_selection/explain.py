@@ -12,16 +12,17 @@ from dataclasses import replace
 import numpy as np
 
 from ledgersolve.findings import Conflict, Explanation, Subject
-from ledgersolve.mip import Clock, Limits
+from ledgersolve.mip import Limits
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
-from ledgersolve.site_selection.deliveries import tidy
-from ledgersolve.site_selection.elastic import Loosened, least_unmet, loosen, loosen_all
+from ledgersolve.site_selection.closest import closest, figure
+from ledgersolve.site_selection.elastic import Loosened, loosen, loosen_all
 from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.workbook.figures import unit_words
 
 MOST_LISTED = 25
 """Customers listed one by one; the rest is counted."""
+TOGETHER = " No single change is enough: these {} rows belong together."
 
 
 def explain(case: Case, limits: Limits) -> Explanation[Plan]:
@@ -29,15 +30,18 @@ def explain(case: Case, limits: Limits) -> Explanation[Plan]:
     clock = limits.start()
     conflicts = list(_counted(case))
     if not conflicts:
-        found = loosen(case, clock) or loosen_all(case, clock)
-        conflicts = sorted((_words(case, part) for part in found), key=lambda conflict: conflict.amount)
-    plan, words = _closest(case, clock)
-    return Explanation(tuple(conflicts), plan, words)
+        alone = loosen(case, clock)
+        conflicts = [_words(case, part) for part in alone or loosen_all(case, clock)]
+        if not alone and len(conflicts) > 1:
+            conflicts = [replace(one, remedy=f"{one.remedy}{TOGETHER.format(len(conflicts))}") for one in conflicts]
+        conflicts.sort(key=lambda conflict: conflict.amount)
+    plan, words, shown = closest(case, clock)
+    return Explanation(tuple(conflicts), plan, words, shown)
 
 
-def figure(value: float) -> str:
-    """A quantity in words: at most two decimals, thousands apart."""
-    return f"{value:,.2f}".rstrip("0").rstrip(".")
+def raised(value: float) -> str:
+    """An amount that must be enough as it is told: rounded up."""
+    return figure(np.ceil(value * 100 - 1e-6) / 100)
 
 
 def _setting(name: str) -> Subject:
@@ -133,11 +137,16 @@ def _beyond_promise(case: Case, i: int, listed: Flags, promise: float, own: Subj
     distance = np.full(case.m, np.inf) if case.distance is None else np.where(
         listed, case.distance[:, i], np.inf)
     j = int(np.argmin(distance))
-    nearest = f"the nearest, {case.sites[j]}, is {figure(float(distance[j]))} {unit} away"
+    needed = raised(float(distance[j]))
+    nearest = f"the nearest, {case.sites[j]}, is {needed} {unit} away"
+    if title.sheet == "Customers":
+        remedy = f"Raise its Longest distance from {figure(promise)} to {needed}, or add a site nearer to it."
+    else:
+        remedy = (f"Give this customer a Longest distance of {needed} in Customers, raise the setting from "
+                  f"{figure(promise)} to {needed}, or add a site nearer to it.")
     return Conflict(
         f"Customer {code} has no allowed site within {figure(promise)} {unit}; {nearest}.",
-        f"Allow {figure(float(distance[j]))} {unit} for this customer, or add a site nearer to it.",
-        float(distance[j] - promise), (title, own),
+        remedy, float(distance[j] - promise), (title, own),
     )
 
 
@@ -165,7 +174,8 @@ def _volume(case: Case) -> Iterator[Conflict]:
             f"all sites that may open hold {_units(case, room)}")
         yield Conflict(
             f"Capacity is {_units(case, short)} short: wanted are {figure(wanted)}, and {words}.",
-            f"Raise capacities by {_units(case, short)} in all, or give Unmet demand cost a value.",
+            f"{_more_sites(case, wanted)}Raise capacities by {raised(short)} in all, or give Unmet demand cost "
+            "a value.",
             short, (_setting("Most sites"), first) if limit else (first,),
         )
     forced_least = float(case.least_volume[case.rule == OPEN].sum())
@@ -176,6 +186,16 @@ def _volume(case: Case) -> Iterator[Conflict]:
             f"{figure(wanted)}.", "Lower a least volume, or set the rule of a site to free.",
             forced_least - wanted, tuple(Subject("Sites", (code,), "Least volume") for code in sites),
         )
+
+
+def _more_sites(case: Case, wanted: float) -> str:
+    """Say how many sites would hold all demand, where their number is what stands in the way."""
+    if case.most_sites is None:
+        return ""
+    for count in range(case.most_sites + 1, case.m + 1):
+        if _room(replace(case, most_sites=count), case.rule != CLOSED) >= wanted * (1 - 1e-9):
+            return f"Raise Most sites from {case.most_sites} to {count}. Or: "
+    return ""
 
 
 def _units(case: Case, amount: float) -> str:
@@ -196,32 +216,32 @@ def _room(case: Case, may_open: Flags) -> float:
 
 
 def _words(case: Case, found: Loosened) -> Conflict:
-    at_least = "" if found.exact else "at least "
-    amount = f"{at_least}{figure(found.total)}"
     sites = [case.sites[j] for j in found.where] if found.kind in _OF_SITES else []
     customers = [case.customers[i] for i in found.where] if found.kind == "promise" else []
-    units = f"{at_least}{_units(case, found.total)}"
-    shares = ", ".join(f"{figure(float(part))} at {code}" for part, code in zip(
-        found.amounts[:5], [*sites, *customers][:5], strict=False))
+    units, unsure, count = f"{_said(found)}{_units(case, found.total)}", _unsure(found), round(found.total)
     texts = {
-        "capacity": (f"Capacity is {units} short: {shares}.",
-                     f"Raise Capacity by that much ({shares})."),
-        "least volume": (f"Least volumes ask for {units} more than there is: {shares}.",
-                         f"Lower Least volume by that much ({shares})."),
-        "most sites": (f"{case.most_sites} sites cannot serve all customers under the other rules.",
-                       f"Raise Most sites by {amount}."),
-        "fewest sites": (f"{case.fewest_sites} sites cannot all be open under the other rules.",
-                         f"Lower Fewest sites by {amount}."),
+        "capacity": (f"Capacity is {units} short, at {_codes(sites)}.",
+                     f"Raise Capacity: {_steps(sites, case.capacity, found, 1)}{unsure}."),
+        "least volume": (f"Least volumes ask for {units} more than there is, at {_codes(sites)}.",
+                         f"Lower Least volume: {_steps(sites, case.least_volume, found, -1)}{unsure}."),
+        "most sites": (f"{_sites(case.most_sites)} cannot serve all customers under the other rules.",
+                       f"Raise Most sites from {case.most_sites} to {(case.most_sites or 0) + count}{unsure}."),
+        "fewest sites": (f"{_sites(case.fewest_sites)} cannot all be open under the other rules.",
+                         f"Lower Fewest sites from {case.fewest_sites} to {(case.fewest_sites or 0) - count}"
+                         f"{unsure}."),
         "closed": (f"With {_codes(sites)} closed, not all customers can be served.",
                    f"Set the rule of {_codes(sites)} to free."),
         "open": (f"With {_codes(sites)} open, the other rules cannot hold.",
                  f"Set the rule of {_codes(sites)} to free."),
-        "promise": (f"The longest distance cannot be kept for {_codes(customers)}: {shares} "
-                    f"{case.distance_unit} too far.",
-                    f"Loosen Longest distance for {_codes(customers)} ({shares} {case.distance_unit})."),
+        "promise": (f"Longest distance cannot be kept for {_codes(customers)} under the other rules: "
+                    f"{_said(found)}{figure(found.total)} {case.distance_unit} too far"
+                    f"{' in all' if len(customers) > 1 else ''}.",
+                    f"Raise Longest distance, in Customers or for all in Settings: "
+                    f"{_steps(customers, case.promised(), found, 1)}{unsure}."),
         "share within": (f"{units} too little can be served within "
                          f"{figure(case.share_distance or 0.0)} {case.distance_unit}.",
-                         "Lower Share within distance, or raise Distance for share."),
+                         f"Lower Share within distance (%) from {100 * (case.share_within or 0.0):g} to "
+                         f"{_share_left(case, found):g}{unsure}, or raise Distance for share."),
         "single source": ("Not every customer can be served whole from one site.",
                           "Let some customers be served from two sites, or raise a capacity."),
         "lane most": ("The most that lanes may carry leaves customers unserved.",
@@ -229,6 +249,43 @@ def _words(case: Case, found: Loosened) -> Conflict:
     }
     words, remedy = texts[found.kind]
     return Conflict(words, remedy, found.total, _subjects(case, found))
+
+
+def _sites(count: int | None) -> str:
+    return "1 site" if count == 1 else f"{count} sites"
+
+
+def _steps(codes: list[str], figures: Floats, found: Loosened, sign: int) -> str:
+    """Say for each place from what to what its figure changes; rounded so that the change is enough."""
+    steps = []
+    for code, k, amount in zip(codes[:5], found.where, found.amounts, strict=False):
+        now = float(figures[k])
+        if sign > 0:
+            steps.append(f"{code} from {figure(now)} to {raised(now + float(amount))}")
+        else:
+            lower = np.floor(max(now - float(amount), 0.0) * 100 + 1e-6) / 100
+            steps.append(f"{code} from {figure(now)} to {figure(lower)}")
+    return ", ".join(steps) + (f" and {len(codes) - 5} more alike" if len(codes) > 5 else "")
+
+
+def _unsure(found: Loosened) -> str:
+    """Say of a remedy whether less, or more, may be needed."""
+    return "" if found.exact else " (less may do)" if found.enough else " at least"
+
+
+def _share_left(case: Case, found: Loosened) -> float:
+    """Percentage within distance that can be kept, rounded down."""
+    left = (case.share_within or 0.0) - found.total / max(float(case.demand.sum()), 1e-12)
+    return float(np.floor(max(left, 0.0) * 1e4 + 1e-6) / 100)
+
+
+def _said(found: Loosened) -> str:
+    """Say how sure an amount is: nothing where it is the least, or between which figures the least lies."""
+    if found.exact:
+        return ""
+    if not found.enough:
+        return "at least "
+    return f"between {figure(found.least)} and " if found.least > 1e-6 * found.total else "at most "
 
 
 _OF_SITES = ("capacity", "least volume", "closed", "open")
@@ -248,21 +305,3 @@ def _subjects(case: Case, found: Loosened) -> tuple[Subject, ...]:
         own = [Subject("Customers", (case.customers[i],), "Longest distance") for i in found.where]
         return (*own, _setting("Longest distance"))
     return (Subject("Lanes", (), "Most"),)
-
-
-def _closest(case: Case, clock: Clock) -> tuple[Plan | None, str]:
-    """Give the plan that leaves the least demand unmet and keeps every other rule, if there is one."""
-    found = least_unmet(case, max(clock.left(), 1.0), clock)
-    if found is None:
-        return None, ""
-    built, lanes, result = found
-    values = result.values
-    if values is None:
-        return None, ""
-    unmet = np.zeros(case.n)
-    unmet[built.unmet] = values[built.u]
-    plan = tidy(lanes, built.read_open(values), built.site, built.customer, values[built.x], unmet)
-    left = plan.unmet * case.demand
-    short = [case.customers[i] for i in np.flatnonzero(left > 1e-9 * max(1.0, float(case.demand.sum())))]
-    words = f"leaves {_units(case, float(left.sum()))} unmet at {_codes(short)}" if short else ""
-    return plan, words
