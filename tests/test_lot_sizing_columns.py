@@ -10,7 +10,7 @@ from ledgersolve.lot_sizing.case import Case, plain_case
 from ledgersolve.lot_sizing.columns import Pool, generate
 from ledgersolve.lot_sizing.couplings import Runs, choose, held
 from ledgersolve.lot_sizing.decompose import climb
-from ledgersolve.lot_sizing.pick import pick
+from ledgersolve.lot_sizing.pick import picks
 from ledgersolve.lot_sizing.plan import family_setups, resource_need
 from ledgersolve.mip import Limits
 from tests.bench.lot_cases import Recipe, generated
@@ -64,18 +64,19 @@ def test_generation_meets_the_bound(seed: int) -> None:
 
 @pytest.mark.parametrize("features", [("overtime",), ("overtime", "family"), ("overtime", "use", "family")])
 def test_pick_is_one_schedule_an_item_within_the_time(features: tuple[str, ...]) -> None:
-    """What is picked serves every item and keeps the capacities, couplings included."""
+    """Whatever is picked serves every item and keeps the capacities, couplings included."""
     case = random_shared(np.random.default_rng(11), 8, 6, *features)
     case = replace(case, overtime_limit=np.full(2, 200.0))
     relaxation, pool, charges = climbed(case)
     clock = Limits(60.0).start()
     point, mix = generate(relaxation, pool, relaxation.at(charges), clock, 1e4)
     assert mix is not None
-    made = pick(relaxation, pool, point, mix, 1e4, 20.0, clock, 1e-4)
-    assert made is not None
-    short = np.maximum(np.cumsum(case.demand - made, axis=1), 0.0)
-    assert short.max() <= 1e-6
-    assert (resource_need(case, made) <= case.capacity + case.overtime_limit[:, None] + 1e-6).all()
+    picked = list(picks(relaxation, pool, point, mix, 1e4, 20.0, clock, 1e-4))
+    assert picked
+    for made in picked:
+        short = np.maximum(np.cumsum(case.demand - made, axis=1), 0.0)
+        assert short.max() <= 1e-6
+        assert (resource_need(case, made) <= case.capacity + case.overtime_limit[:, None] + 1e-6).all()
 
 
 def test_held_choice_is_a_case_without_couplings() -> None:

@@ -120,6 +120,18 @@ def generate(
     return best, mix
 
 
+def rounded(pool: Pool, mix: Mix, seed: int) -> Floats:
+    """Quantities (N, T): of every item one schedule of the mix, drawn by its share (seed 0: the largest)."""
+    rng = np.random.default_rng(seed)
+    noise = rng.gumbel(size=mix.shares.size) * (seed > 0)
+    draw = np.log(np.maximum(mix.shares, 1e-12)) + noise
+    order = np.lexsort((draw, pool.items[mix.columns]))
+    quantities = np.zeros((pool.case.n, pool.case.t))
+    chosen = mix.columns[order]
+    quantities[pool.items[chosen]] = pool.made[chosen]
+    return quantities
+
+
 def solve_master(
     relaxation: Relaxation, pool: Pool, charges: Charges, dear: float, clock: Clock
 ) -> Mix | None:

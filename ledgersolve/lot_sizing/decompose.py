@@ -8,24 +8,29 @@ improve the plan until time is over or the gap is accepted.
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 from ledgersolve.lot_sizing.ascent import Ascent
 from ledgersolve.lot_sizing.audit import audit
 from ledgersolve.lot_sizing.bound import Charges, Point, Relaxation
 from ledgersolve.lot_sizing.case import Case, Floats
-from ledgersolve.lot_sizing.columns import Pool, generate
+from ledgersolve.lot_sizing.columns import Pool, generate, rounded
 from ledgersolve.lot_sizing.couplings import Runs, choose, held
-from ledgersolve.lot_sizing.pick import pick
+from ledgersolve.lot_sizing.pick import picks
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.quantities import best_quantities
 from ledgersolve.lot_sizing.responses import settled
 from ledgersolve.lot_sizing.start import find_start
 from ledgersolve.lot_sizing.windows import Best, improve
-from ledgersolve.mip import Clock, Limits, Solved, Verdict, judge
+from ledgersolve.mip import Clock, Limits, Progress, Solved, Verdict, judge
 
 RESPONSES_SHARE = 0.15
 """Most of the time left that responses to the prices of the ascent may take."""
+ROUNDING_SHARE = 0.4
+"""Share of the time for whole choices in which mixes of schedules are rounded, before the wrapper picks."""
+_ROUNDINGS, _FEW_ROUNDINGS = 12, 2
+_MIXED = 1.3
+"""Schedules an item in the mix above which roundings differ enough to draw many."""
 _STEPS = 800
 _HELD_STEPS, _HELD_STEP = 60, 0.03
 _HOLDS = 16
@@ -99,7 +104,7 @@ class _Run:
         """Hold couplings, generate columns, pick schedules, re-optimise quantities."""
         if not self.relaxation.coupled:
             self.point, made = plan_held(
-                self.relaxation, self.pool, self.point, self.clock, 0.3 * self.clock.left()
+                self.relaxation, self.pool, self.point, self.clock, 0.3 * self.clock.left(), self._found
             )
             self._finish(made)
         else:
@@ -132,20 +137,31 @@ class _Run:
             return
         relaxation, pool, ascent = best
         climb_exactly(relaxation, pool, ascent, self.clock, self.clock.elapsed() + 0.1 * self.clock.left())
-        _, made = plan_held(relaxation, pool, ascent.best, self.clock, 0.4 * self.clock.left())
+        apart = replace(self.clock.limits, seconds=max(self.clock.left(), 1e-3), progress=_unheard).start()
+        _, made = plan_held(relaxation, pool, ascent.best, apart, 0.4 * self.clock.left(), self._found)
         self._finish(made)
 
-    def _finish(self, made: Floats | None) -> None:
-        self.clock.note("columns", bound=self.point.bound)
-        if made is not None:
-            self.take(best_quantities(self.case, made > 0, max(1.0, self.clock.left()), counts=made))
+    def _found(self, made: Floats, rounding: bool) -> bool:
+        """Take quantities as they are, re-optimised, or, of a rounding, after responses; True: near enough."""
+        if rounding:
+            seconds = RESPONSES_SHARE * self.clock.left()
+            self.take(settled(self.case, made, self.point.charges.prices, self.clock, seconds))
+        else:
             self.take(plan_from_made(self.case, made))
+            self.take(best_quantities(self.case, made > 0, max(1.0, self.clock.left()), counts=made))
+        return self.clock.close_enough()
+
+    def _finish(self, made: Floats | None) -> None:
+        """Let items answer once more to the best plan; where there is none yet, mend what was picked."""
+        self.clock.note("columns", bound=self.point.bound)
         self.clock.end_stage("columns")
+        if self.clock.over() or self.clock.close_enough():
+            return
         guess = self.point.schedules.made if made is None else made
         prices = self.point.charges.prices
-        if self.plan is None and not self.clock.over():
-            self.take(settled(self.case, guess, prices, self.clock, 0.3 * self.clock.left()))
-            self.clock.end_stage("responses")
+        start = guess if self.plan is None else self.plan.made
+        self.take(settled(self.case, start, prices, self.clock, RESPONSES_SHARE * self.clock.left()))
+        self.clock.end_stage("responses")
         if self.plan is None and not self.clock.over():
             self.take(find_start(self.case, guess, prices, self.clock, 0.5 * self.clock.left()))
             self.clock.end_stage("first plan")
@@ -209,9 +225,14 @@ def _keeper(
 
 
 def plan_held(
-    relaxation: Relaxation, pool: Pool, point: Point, clock: Clock, seconds: float
+    relaxation: Relaxation, pool: Pool, point: Point, clock: Clock, seconds: float,
+    take: Callable[[Floats, bool], bool],
 ) -> tuple[Point, Floats | None]:
-    """Columns to the bound, and one schedule an item: quantities (N, T), or None."""
+    """Columns to the bound, and one schedule an item: the last quantities (N, T) found, or None.
+
+    First the mix of the master is rounded at random, then the wrapper picks. ``take`` sees everything that is
+    found, with whether it is only a rounding, and ends the search by saying True.
+    """
     case = relaxation.case
     if not math.isfinite(point.bound):
         return point, None
@@ -222,7 +243,22 @@ def plan_held(
     if mix is None:
         return point, None
     clock.end_stage("column generation", f"{pool.items.size} schedules")
-    return point, pick(relaxation, pool, point, mix, dear, seconds, clock, max(clock.limits.gap / 2, 1e-5))
+    made, until = None, clock.elapsed() + ROUNDING_SHARE * seconds
+    for seed in range(_ROUNDINGS if mix.columns.size > _MIXED * case.n else _FEW_ROUNDINGS):
+        if clock.over() or (seed and clock.elapsed() > until):
+            break
+        made = rounded(pool, mix, seed)
+        if take(made, True):
+            return point, made
+    left = seconds - (clock.elapsed() - until + ROUNDING_SHARE * seconds)
+    for made in picks(relaxation, pool, point, mix, dear, left, clock, max(clock.limits.gap / 2, 1e-5)):
+        if take(made, False):
+            break
+    return point, made
+
+
+def _unheard(_: Progress) -> None:
+    """Keep bounds of a case with its couplings held, which are none of the case itself, out of the stream."""
 
 
 def _sunk(case: Case, runs: Runs) -> float:

@@ -6,6 +6,8 @@ quantities are re-optimised afterwards with the setups fixed, which gives back m
 waste.
 """
 
+from collections.abc import Iterator
+
 import numpy as np
 
 from ledgersolve.lot_sizing.bound import Point, Relaxation
@@ -16,31 +18,47 @@ from ledgersolve.mip import Clock, LinearModel
 MOST_COLUMNS = 12_000
 """Largest number of schedules given to the wrapper."""
 
+ROUNDS = ((8, 0.2), (24, 0.5), (60, 1.0))
+"""Schedules an item, and the share of the time left, of each choice: few are chosen from soon, many well."""
+
 MIXED_SETUPS, MIXED_ITEMS = 1500, 40
 """Items x periods, and items, up to which setups, not schedules, are the whole-number choice."""
 
 
-def pick(
+def picks(
     relaxation: Relaxation, pool: Pool, point: Point, mix: Mix, dear: float, seconds: float, clock: Clock,
     gap: float,
-) -> Floats | None:
-    """Give quantities (N, T), one schedule an item, or None where time ran out before any choice.
+) -> Iterator[Floats]:
+    """Give quantities (N, T), one schedule an item, chosen from more and more schedules as long as there is time.
 
     ``point`` holds the charges by which schedules are ranked.
     """
-    case = relaxation.case
-    per_item = int(np.clip(MOST_COLUMNS // max(case.n, 1), 3, 60))
-    chosen = np.union1d(pool.promising(point.charges, per_item), mix.columns)
-    items, made = pool.items[chosen], pool.made[chosen]
-    few = case.n <= MIXED_ITEMS and case.n * case.t <= MIXED_SETUPS
-    if few and not relaxation.coupled:
-        return _mixed(relaxation, pool, chosen, dear, min(seconds, clock.left()), clock, gap)
+    case, until, before = relaxation.case, clock.elapsed() + seconds, 0
+    few = case.n <= MIXED_ITEMS and case.n * case.t <= MIXED_SETUPS and not relaxation.coupled
+    for count, share in ROUNDS:
+        per_item = min(count, max(MOST_COLUMNS // max(case.n, 1), 3))
+        chosen = np.union1d(pool.promising(point.charges, per_item), mix.columns)
+        left = min(until - clock.elapsed(), clock.left())
+        if left <= 0 or chosen.size == before:
+            return
+        before = chosen.size
+        way = _mixed if few and count == ROUNDS[-1][0] else _whole
+        made = way(relaxation, pool, chosen, dear, share * left, clock, gap)
+        if made is not None:
+            yield made
+
+
+def _whole(
+    relaxation: Relaxation, pool: Pool, chosen: Ints, dear: float, seconds: float, clock: Clock, gap: float
+) -> Floats | None:
+    """One schedule an item; None where time ran out before any choice."""
+    case, items, made = relaxation.case, pool.items[chosen], pool.made[chosen]
     model = LinearModel()
     columns = model.add_variables(chosen.size, upper=1.0, cost=pool.costs[chosen], whole=True)
     model.add_rows(case.n, items, columns, 1.0, lower=1.0, upper=1.0)
     family, used = _couplings(relaxation, model, items, made > 0, columns)
     _time(relaxation, model, items, made, columns, family, used, dear)
-    result = model.solve(min(seconds, clock.left()), gap=gap, cancelled=clock.limits.cancelled)
+    result = model.solve(seconds, gap=gap, cancelled=clock.limits.cancelled)
     if result.values is None:
         return None
     taken = np.flatnonzero(result.values[columns] > 0.5)
