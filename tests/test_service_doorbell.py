@@ -1,5 +1,6 @@
 """The doorbell and the choice between events and a timer."""
 
+import logging
 from pathlib import Path
 
 import pytest
@@ -93,3 +94,11 @@ def test_a_folder_that_cannot_be_watched_costs_only_promptness(tmp_path):
     bell.keep_alive()
     assert not bell.wait(0.01)
     bell.silence()
+
+
+def test_an_observer_that_is_stopped_logs_no_error(tmp_path, caplog):
+    """Stopping in mid-look is no trouble; real errors of the observer still reach the log."""
+    log = logging.getLogger("watchdog.observers.inotify")
+    log.error("InotifyEmitter.queue_events() called when the thread is inactive")
+    log.error("something else")
+    assert [record.getMessage() for record in caplog.records] == ["something else"]

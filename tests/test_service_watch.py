@@ -12,6 +12,7 @@ from pathlib import Path
 
 import pytest
 
+from ledgersolve import __version__
 from ledgersolve.service import settle
 from ledgersolve.service.board import health, status
 from ledgersolve.service.disk import Disk
@@ -449,6 +450,61 @@ def test_a_share_that_is_not_there_at_the_start_ends_once_with_words(tmp_path, c
     assert names(tmp_path) == []
     (tmp_path / "file").touch()
     assert serve(tmp_path / "file", once=True, settings=quick_settings()) == 2
+
+
+def test_a_folder_for_jobs_that_is_not_there_is_told_at_the_start(tmp_path, capsys):
+    """Nothing is taken that could not be worked on; the sentence names the folder and the setting."""
+    served = tmp_path / "served"
+    path = drop(served, "plan.xlsx")
+    settings = quick_settings(private_folder=tmp_path / "no" / "such")
+    assert serve(served, once=True, settings=settings) == 2
+    assert path.exists()
+    told = capsys.readouterr().err
+    assert f"Jobs cannot work in {tmp_path}/no/such" in told and "private_folder" in told and "Traceback" not in told
+
+
+def test_a_folder_for_jobs_that_goes_away_holds_new_work(tmp_path):
+    """A job that finds no place to work goes back without an attempt, and the next look takes nothing new."""
+    work = tmp_path / "work"
+    work.mkdir()
+    watcher = quick_watcher(tmp_path / "served", private_folder=work)
+    work.rmdir()
+    watcher.intake._next_probe = 1e99
+    drop(tmp_path / "served", "plan.xlsx")
+    for _ in range(20):
+        watcher.step()
+        watcher.wait()
+    assert watcher.state == "held" and str(work) in watcher.why
+    (job,) = (tmp_path / "served/.ledgersolve/jobs").iterdir()
+    assert len(list(job.glob("lease.*"))) == len(list(job.glob("released.*"))) == 1
+    assert not list(job.glob("failed.*"))
+
+
+def test_a_wrong_address_of_a_cluster_is_told_at_the_start(tmp_path, capsys):
+    """Also where nothing waits: code 2 and a sentence, nothing is laid out."""
+    assert serve(tmp_path, once=True, cluster="nonsense", settings=quick_settings()) == 2
+    assert "'nonsense' is no scheduler's address" in capsys.readouterr().err
+    assert names(tmp_path) == []
+
+
+def test_a_workbook_open_elsewhere_does_not_keep_once_from_ending(tmp_path, quick, capsys):
+    """It is left where it is, named with its reason, and the code says so."""
+    drop(tmp_path, "plan.xlsx")
+    (tmp_path / "Inbox" / "~$plan.xlsx").write_bytes(b"Ann")
+    assert serve(tmp_path, once=True, settings=quick_settings(open_elsewhere_seconds=900.0)) == 1
+    assert names(tmp_path / "Inbox") == ["plan.xlsx", "~$plan.xlsx"]
+    assert "left in Inbox: plan.xlsx" in (told := capsys.readouterr().err) and "open in a spreadsheet program" in told
+
+
+def test_the_log_tells_version_limits_and_every_change_of_state(tmp_path, quick, capsys):
+    """What an administrator asks for later: which version, how much at a time, when it was paused."""
+    drop(tmp_path, "plan.xlsx")
+    (tmp_path / "PAUSE").touch()
+    assert serve(tmp_path, once=True, settings=quick_settings(quiet_hours=("02:00-02:01",))) == 1
+    told = capsys.readouterr().err
+    assert f"LedgerSolve {__version__} serves {tmp_path}: 1 place and one more" in told
+    assert "quiet hours: 02:00-02:01; originals are kept for 90 days" in told
+    assert "paused: There is a file PAUSE" in told and "stopped: The service was stopped" in told
 
 
 def test_a_log_that_cannot_be_written_stops_nothing(tmp_path, quick):

@@ -22,6 +22,8 @@ from pydantic_settings import (
     TomlConfigSettingsSource,
 )
 
+from ledgersolve.service.machine import processors
+
 logger = logging.getLogger(__name__)
 LEAST_MEMORY_MB = 1024
 """Address space below which the program itself does not start, whatever the workbook."""
@@ -62,8 +64,8 @@ class ServiceSettings(BaseSettings):
 
     model_config = SettingsConfigDict(env_prefix=_PREFIX, extra="forbid", frozen=True)
 
-    workers: int = Field(default_factory=lambda: max(1, os.cpu_count() or 1), ge=1, le=1024)
-    """Workbooks solved at a time."""
+    workers: int = Field(default_factory=processors, ge=1, le=1024)
+    """Workbooks solved at a time, and one more that is small; the processors of the machine where not set."""
     small_seconds: float = Field(60.0, ge=0)
     """One more place is kept for workbooks that are expected back within this time."""
     age_seconds: float = Field(900.0, gt=0)

@@ -55,6 +55,17 @@ def is_remote(folder: Path, mounts: Path = _MOUNTS) -> bool:
     return kind in _REMOTE or kind.startswith("fuse")
 
 
+class _NoErrorAtTheEnd(logging.Filter):
+    """An observer that is stopped in mid-look calls that an error; it is none."""
+
+    def filter(self, record: logging.LogRecord) -> bool:
+        """Whether a record is worth a line."""
+        return "thread is inactive" not in record.getMessage()
+
+
+logging.getLogger("watchdog.observers.inotify").addFilter(_NoErrorAtTheEnd())
+
+
 class Doorbell(FileSystemEventHandler):
     """Rings on any event below Inbox; rebuilt when it died, after an outage, and every hour.
 

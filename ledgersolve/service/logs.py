@@ -1,14 +1,18 @@
-"""The service's log: one JSON object a line, turned over by size; a full disk never stops the service."""
+"""The service's log: text on standard error, or JSON in a file that is turned over; a full disk stops nothing."""
 
 import json
 import logging
 import sys
+from collections.abc import Iterator
+from contextlib import contextmanager, suppress
 from logging.handlers import RotatingFileHandler
 from pathlib import Path
 
 from ledgersolve.service.config import ServiceSettings
+from ledgersolve.service.names import show
 
 _OLDER = 5
+_TIME = "%Y-%m-%dT%H:%M:%S%z"
 
 
 class JsonLines(logging.Formatter):
@@ -17,7 +21,7 @@ class JsonLines(logging.Formatter):
     def format(self, record: logging.LogRecord) -> str:
         """Lay the record out."""
         line = {
-            "at": self.formatTime(record, "%Y-%m-%dT%H:%M:%S%z"),
+            "at": self.formatTime(record, _TIME),
             "level": record.levelname,
             "from": record.name,
             "says": record.getMessage(),
@@ -27,6 +31,17 @@ class JsonLines(logging.Formatter):
         return json.dumps(line)
 
 
+class TextLines(logging.Formatter):
+    """Lines for people: what belongs to one record is indented, and nothing in it can steer a terminal."""
+
+    def __init__(self) -> None:
+        super().__init__("%(asctime)s %(levelname)s %(message)s", _TIME)
+
+    def format(self, record: logging.LogRecord) -> str:
+        """Lay the record out."""
+        return "\n    ".join(map(show, super().format(record).splitlines()))
+
+
 class _Patient(RotatingFileHandler):
     """Goes on where a record could not be written: the log is the least important thing here."""
 
@@ -34,19 +49,45 @@ class _Patient(RotatingFileHandler):
         """Let the record go."""
 
 
-def set_up_log(settings: ServiceSettings) -> None:
-    """Send the package's log where the settings say; to standard error where that cannot be opened."""
+@contextmanager
+def service_log(settings: ServiceSettings) -> Iterator[None]:
+    """Send the package's log where the settings say, for as long as the service runs.
+
+    Without ``log_file`` every record is text on standard error. With it every record is JSON in the file,
+    and standard error has the errors alone. A file that cannot be opened is told, and counts as none.
+    """
     package = logging.getLogger("ledgersolve")
-    package.setLevel(settings.log_level)
+    verbose = logging.getLogger().level == logging.DEBUG
+    before = package.level, package.propagate
+    package.setLevel(logging.DEBUG if verbose else settings.log_level)
+    package.propagate = False
+    handlers = list(_handlers(settings, verbose))
+    for handler in handlers:
+        package.addHandler(handler)
+    if settings.log_file is not None and len(handlers) == 1:
+        package.error("the log file %s cannot be written; the log goes here", settings.log_file)
+    try:
+        yield
+    finally:
+        for handler in handlers:
+            package.removeHandler(handler)
+            with suppress(OSError):  # what could not be written fails once more here
+                handler.close()
+        package.level, package.propagate = before
+
+
+def _handlers(settings: ServiceSettings, verbose: bool) -> Iterator[logging.Handler]:
+    screen = logging.StreamHandler(sys.stderr)
+    screen.setFormatter(TextLines())
+    yield screen
     if settings.log_file is None:
         return
     try:
-        package.addHandler(_file_handler(settings.log_file, settings.log_mb << 20))
-    except OSError as error:
-        handler = logging.StreamHandler(sys.stderr)
-        handler.setFormatter(JsonLines())
-        package.addHandler(handler)
-        package.error("the log file %s cannot be written (%s)", settings.log_file, error)
+        file = _file_handler(settings.log_file, settings.log_mb << 20)
+    except OSError:
+        return
+    screen.setLevel(logging.DEBUG if verbose else logging.ERROR)
+    yield file
 
 
 def _file_handler(file: Path, most_bytes: int) -> logging.Handler:

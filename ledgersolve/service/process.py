@@ -89,7 +89,7 @@ def run_child(
             over = time.monotonic() - started - _allowed(heard, limits)
             stopped = stop()
             if over > limits.grace_seconds:
-                cause = f"it did not end within {_allowed(heard, limits) + limits.grace_seconds:.0f} s"
+                cause = _overdue_words(heard, limits)
             elif over > 0:
                 _ask_to_end(child)
             tell(heard)
@@ -108,6 +108,16 @@ def _allowed(heard: Heard, limits: ChildLimits) -> float:
     """Seconds after which the child should have ended by itself."""
     own = limits.reading_seconds if heard.limit is None else limits.reading_seconds + 1.1 * heard.limit
     return min(own, limits.longest_seconds)
+
+
+def _overdue_words(heard: Heard, limits: ChildLimits) -> str:
+    """That a child did not end, with the settings that an administrator may raise."""
+    allowed = _allowed(heard, limits)
+    if allowed >= limits.longest_seconds:
+        names = "longest_job_seconds"
+    else:
+        names = "reading_seconds" if heard.limit is None else "its time limit, reading_seconds"
+    return f"it did not end within {allowed + limits.grace_seconds:.0f} s ({names} and grace_seconds)"
 
 
 def _ask_to_end(child: "subprocess.Popen[bytes]") -> None:

@@ -53,7 +53,11 @@ def supervise(order: Order, halt: threading.Event | None = None, disk: Disk | No
     """
     started = time.monotonic()
     root = order.private_root or None
-    private = Path(tempfile.mkdtemp(prefix=f"{PRIVATE_PREFIX}{process_words()}-", dir=root))
+    try:
+        private = Path(tempfile.mkdtemp(prefix=f"{PRIVATE_PREFIX}{process_words()}-", dir=root))
+    except OSError as error:
+        place = root or "the folder for temporary files"
+        return Report("share lost", f"no job can work in {place} ({error.strerror or error})")
     try:
         report = _Supervisor(order, disk or Disk(), private, halt or threading.Event()).run()
     finally:

@@ -12,20 +12,21 @@ from contextlib import contextmanager, suppress
 from pathlib import Path
 from types import FrameType
 
-import psutil
-
+from ledgersolve import __version__
 from ledgersolve.service.board import gather, sweep_beacons
-from ledgersolve.service.config import ServiceSettings
+from ledgersolve.service.config import ServiceSettings, SettingsError, check_cluster, load_settings
 from ledgersolve.service.desk import Desk, DeskSettings
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.doorbell import Doorbell, is_remote
 from ledgersolve.service.fair import Turns
 from ledgersolve.service.holder import describe, is_of_dead_process
-from ledgersolve.service.intake import Intake
+from ledgersolve.service.intake import Intake, private_trouble
 from ledgersolve.service.keeper import Keeper
 from ledgersolve.service.layout import Layout, UnfitFolderError, prepare, self_test
 from ledgersolve.service.leases import LeaseWatch
-from ledgersolve.service.logs import set_up_log
+from ledgersolve.service.logs import service_log
+from ledgersolve.service.machine import memory_bytes
+from ledgersolve.service.names import show
 from ledgersolve.service.order import ChildLimits
 from ledgersolve.service.pool import ClusterPool, LocalPool, Pool
 from ledgersolve.service.protocol import Protocol
@@ -57,7 +58,7 @@ def serve(
     folder
         The served folder; laid out on first use.
     once
-        End when every drop is answered. What cannot be taken (see the status page) is left.
+        End when every drop is answered. What cannot be taken, or is open in a spreadsheet program, is left.
     cluster
         Address of a dask scheduler whose workers see the folder at the same path.
     settings
@@ -68,25 +69,27 @@ def serve(
     Returns
     -------
     int
-        0 in good order; 1 when ``once`` left something, or the share went away; 2 where the folder
-        cannot be served at all.
+        0 in good order, whatever came of the workbooks; 1 when ``once`` left something, or the share went
+        away; 2 where the folder cannot be served at all, or not with these settings.
     """
-    settings = settings or ServiceSettings()
-    set_up_log(settings)
-    try:
-        opened = _open_when_there(folder.absolute(), cluster, settings, handler, once=once)
-    except UnfitFolderError as error:
-        logger.error("%s", error)
-        return 2
-    if opened is None:
-        return 1
-    watcher, pool = opened
-    with _stopped_by_signals(watcher):
+    settings = settings or load_settings()
+    with service_log(settings):
         try:
-            return _serve(watcher, once=once)
-        finally:
-            watcher.leave()
-            pool.close()
+            if cluster:
+                check_cluster(cluster)
+            opened = _open_when_there(folder.absolute(), cluster, settings, handler, once=once)
+        except (UnfitFolderError, SettingsError) as error:
+            logger.error("%s", error)
+            return 2
+        if opened is None:
+            return 1
+        watcher, pool = opened
+        with _stopped_by_signals(watcher):
+            try:
+                return _serve(watcher, once=once)
+            finally:
+                watcher.leave()
+                pool.close()
 
 
 def _open_when_there(
@@ -111,13 +114,16 @@ def open_shop(
     Raises
     ------
     UnfitFolderError
-        The folder cannot be served.
+        The folder cannot be served, or jobs cannot work on this machine.
     OSError
         The share is out of reach.
     """
     disk = disk or Disk()
     if not folder.exists() and not settings.share_id and folder.parent.is_dir():
         folder.mkdir(mode=0o775)
+    private = None if cluster else settings.private_folder or Path(tempfile.gettempdir())
+    if private is not None and (trouble := private_trouble(private)):
+        raise UnfitFolderError(trouble)
     mark = prepare(folder, disk, settings.share_id)
     layout = Layout(folder)
     self_test(layout, disk)
@@ -149,11 +155,22 @@ def open_shop(
         turns=turns,
         desk=desk,
         keeper=keeper,
-        intake=Intake(layout, disk, settings.free_mb * _MB, settings.quiet_hours, settings.time_zone),
+        intake=Intake(layout, disk, settings.free_mb * _MB, settings.quiet_hours, settings.time_zone, private),
         bell=bell,
     )
-    logger.info("serving %s with %d places (%s)", folder, settings.workers, "timer" if remote else "events")
+    _tell_start(folder, settings, desk_settings.limits, looks="by a timer" if remote else "by events")
     return watcher, pool
+
+
+def _tell_start(folder: Path, settings: ServiceSettings, limits: ChildLimits, looks: str) -> None:
+    """Put into the log what an administrator asks for later."""
+    places = "1 place" if settings.workers == 1 else f"{settings.workers} places"
+    logger.info(
+        "LedgerSolve %s serves %s: %s and one more for small workbooks, %d MB of memory a job, looks %s",
+        __version__, folder, places, limits.memory_bytes // _MB, looks,
+    )
+    quiet = ", ".join(settings.quiet_hours) or "none"
+    logger.info("quiet hours: %s; originals are kept for %g days", quiet, settings.keep_days)
 
 
 def _desk_settings(settings: ServiceSettings, mark: str, quiet: float, handler: str) -> DeskSettings:
@@ -177,8 +194,8 @@ def _desk_settings(settings: ServiceSettings, mark: str, quiet: float, handler: 
 
 
 def _fair_memory_mb(workers: int) -> int:
-    """Four fifths of the machine's memory, shared by the places."""
-    return max(_LEAST_MEMORY_MB, int(0.8 * psutil.virtual_memory().total / _MB / (workers + 1)))
+    """Four fifths of the memory that the service may use, shared by the places and the one more."""
+    return max(_LEAST_MEMORY_MB, int(0.8 * memory_bytes() / _MB / (workers + 1)))
 
 
 def _serve(watcher: Watcher, *, once: bool) -> int:
@@ -187,6 +204,8 @@ def _serve(watcher: Watcher, *, once: bool) -> int:
     while not watcher.stopping:
         watcher.step()
         if once and watcher.is_empty():
+            for drop in watcher.drops:
+                logger.warning("left in Inbox: %s of %s: %s", show(drop.name), show(drop.owner), drop.why)
             return 1 if watcher.drops else 0
         if watcher.state == "at work" or watcher.desk.trays:
             stuck_since = time.monotonic()
