@@ -1,13 +1,21 @@
 """The administrator's files say what the program does."""
 
 import re
+import shutil
+import subprocess
+import sys
 import tomllib
 from pathlib import Path
 
+import pytest
+
 import ledgersolve.service
 from ledgersolve.service.config import ServiceSettings
+from tests.faults.service_inputs import good
+from tests.service_share import ROOT, names
 
 FOLDER = Path(ledgersolve.service.__file__).parent / "packaging"
+UNIT = FOLDER / "ledgersolve.service"
 
 
 def test_the_settings_file_shows_every_setting_with_its_default():
@@ -25,12 +33,60 @@ def test_the_settings_file_shows_every_setting_with_its_default():
 
 def test_the_unit_starts_the_command_and_hardens_it():
     """Every line of the unit is a section, a comment or a setting; the limits that matter are there."""
-    text = (FOLDER / "ledgersolve.service").read_text("utf-8")
+    text = UNIT.read_text("utf-8")
     for line in filter(None, text.splitlines()):
         assert re.match(r"(#|\[\w+\]$|[A-Z]\w+=)", line), line
     for setting in ("Restart=always", "NoNewPrivileges=yes", "ProtectSystem=strict", "MemoryMax="):
         assert setting in text
     assert "ledgersolve watch /srv/planning" in text
+
+
+def test_the_unit_is_one_that_systemd_takes(tmp_path):
+    """The system's own checker has nothing to say, once the program is where the unit says."""
+    if shutil.which("systemd-analyze") is None:
+        pytest.skip("systemd is not installed")
+    unit = tmp_path / "ledgersolve.service"
+    unit.write_text(UNIT.read_text("utf-8").replace("/opt/ledgersolve/bin/ledgersolve", "/bin/true"))
+    checked = subprocess.run(["systemd-analyze", "verify", str(unit)], capture_output=True, text=True, check=False)
+    assert (checked.returncode, checked.stderr) == (0, "")
+
+
+@pytest.mark.slow
+def test_the_unit_allows_every_system_call_that_a_served_workbook_takes(tmp_path):
+    """A workbook served under a tracer: each of its calls is within the filter of the unit."""
+    if shutil.which("systemd-analyze") is None or shutil.which("strace") is None:
+        pytest.skip("systemd and strace are needed")
+    if subprocess.run(["strace", "-qq", "-o", "/dev/null", "true"], capture_output=True, check=False).returncode:
+        pytest.skip("processes may not be traced here")
+    (tmp_path / "served" / "Inbox").mkdir(parents=True)
+    good(tmp_path / "served" / "Inbox" / "plan.xlsx")
+    traced = ["strace", "-f", "-qq", "-o", str(tmp_path / "calls"), sys.executable, "-m", "ledgersolve", "watch"]
+    done = subprocess.run([*traced, str(tmp_path / "served"), "--once"], capture_output=True, cwd=ROOT, check=False)
+    assert done.returncode == 0, done.stderr
+    assert any(name.endswith("solved.xlsx") for name in names(tmp_path / "served" / "Returned"))
+    used = set(re.findall(r"^\d+ +(\w+)\(", (tmp_path / "calls").read_text("utf-8", "replace"), re.MULTILINE))
+    assert {"openat", "link", "rename"} <= used | {"linkat", "renameat"}
+    assert used - _allowed_calls() == set()
+
+
+def _allowed_calls() -> set[str]:
+    """System calls that the filters of the unit leave, its lines taken one after the other as systemd does."""
+    told = subprocess.run(["systemd-analyze", "syscall-filter"], capture_output=True, text=True, check=True).stdout
+    sets: dict[str, list[str]] = {}
+    for line in re.sub(r"\x1b\[[0-9;]*m", "", told).splitlines():
+        if line.startswith("@"):
+            sets[line.strip()] = members = []
+        elif line.strip() and not line.strip().startswith("#"):
+            members.append(line.strip())
+
+    def calls(name: str) -> set[str]:
+        return set().union(*map(calls, sets[name])) if name in sets else {name}
+
+    allowed: set[str] = set()
+    for line in re.findall(r"^SystemCallFilter=(.*)", UNIT.read_text("utf-8"), re.MULTILINE):
+        named = set().union(*map(calls, line.lstrip("~").split()))
+        allowed = allowed - named if line.startswith("~") else allowed | named
+    return allowed
 
 
 def test_the_pages_name_files_and_commands_that_exist():
