@@ -134,7 +134,9 @@ def _wrong(*troubles: str) -> NoReturn:
 @app.command()
 def watch(
     folder: Served,
-    once: Annotated[bool, typer.Option("--once", help="Empty the inbox, then end.")] = False,
+    once: Annotated[
+        bool, typer.Option("--once", help="Empty the inbox, then end; 1 where something is left in it.")
+    ] = False,
     workers: Annotated[
         int | None, typer.Option(help="Workbooks solved at a time; one more place is kept for small ones.", min=1)
     ] = None,
@@ -149,35 +151,37 @@ def watch(
     ] = None,
 ) -> None:
     """Serve a folder: drops in Inbox/ come back in Returned/."""
-    from ledgersolve.service.config import SettingsError, load_settings
+    from ledgersolve.service.config import SettingsError, check_cluster, load_settings
     from ledgersolve.service.watch import serve
 
     try:
         settings = load_settings(config, workers=workers, polling=polling)
+        if cluster is not None:
+            check_cluster(cluster)
     except SettingsError as trouble:
-        errors.print(escape(str(trouble)))
-        raise typer.Exit(2) from trouble
+        _wrong(str(trouble))
     raise typer.Exit(serve(folder, once=once, cluster=cluster, settings=settings))
 
 
 @app.command()
 def status(
-    folder: Annotated[Path, typer.Argument(help="A served folder.", exists=True, file_okay=False)],
+    folder: Annotated[Path, typer.Argument(help="A served folder.")],
     as_json: AsJson = False,
-    health: Annotated[
-        bool, typer.Option("--health", help="Only tell, by exit code, whether the service is well.")
-    ] = False,
+    health: Annotated[bool, typer.Option("--health", help="Print nothing, only end with the code.")] = False,
 ) -> None:
-    """List what waits, runs and is done in a served folder."""
+    """List what waits, runs and came back in a served folder.
+
+    Ends with 0 while a service looks after it, 1 while none does or it can take nothing in, 2 where the
+    folder was never served, 3 where this account may not know.
+    """
     from ledgersolve.service import board
 
-    if health:
-        raise typer.Exit(board.health(folder))
     state = board.status(folder)
-    if as_json:
+    if as_json and not health:
         print(json.dumps(state, indent=2))
-    else:
+    elif not health:
         print(board.as_text(state))
+    raise typer.Exit(board.exit_code(state))
 
 
 @app.command()
@@ -188,11 +192,15 @@ def demo(
 ) -> None:
     """Drop the demo workbooks into a folder, serve it once and say where the results are."""
     from ledgersolve.service import board
-    from ledgersolve.service.config import load_settings
+    from ledgersolve.service.config import SettingsError, load_settings
     from ledgersolve.service.watch import serve
     from ledgersolve.shipped import shipped
     from ledgersolve.telling import returning
 
+    try:
+        settings = load_settings(None, log_level="WARNING")
+    except SettingsError as trouble:
+        _wrong(str(trouble))
     served = _unused(folder or Path("ledgersolve_demo"))
     inbox = served / "Inbox"
     inbox.mkdir(parents=True)
@@ -202,7 +210,7 @@ def demo(
     console.print(f"Dropped {len(drops)} invented workbooks into {inbox}; solving them takes a minute or less.",
                   markup=False, highlight=False, soft_wrap=True)
     with returning(lambda: board.status(served), len(drops)):
-        code = serve(served, once=True, cluster=None, settings=load_settings(None, log_level="WARNING"))
+        code = serve(served, once=True, cluster=None, settings=settings)
     returned = sorted((served / "Returned").iterdir())
     console.print(f"The results are in [bold]{escape(str(served / 'Returned'))}[/bold]; open the first one first:",
                   highlight=False, soft_wrap=True)

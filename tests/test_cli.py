@@ -119,3 +119,25 @@ def test_version_and_help() -> None:
     assert told.returncode == 0
     for command in ("solve", "check", "watch", "template", "demo", "status"):
         assert command in told.stdout
+
+
+def test_status_tells_by_words_and_code(tmp_path) -> None:
+    """A folder that is not there, and one never served: a sentence, no usage box, the same code with --health."""
+    for folder, code, words in ((tmp_path / "gone", 1, "is not there"), (tmp_path, 2, "never served")):
+        told = run("status", folder)
+        assert (told.returncode, words in told.stdout) == (code, True), told.stderr
+        assert json.loads(run("status", folder, "--json").stdout)["well"] is False
+        silent = run("status", folder, "--health")
+        assert (silent.returncode, silent.stdout, silent.stderr) == (code, "", "")
+
+
+def test_a_wrong_setting_or_address_is_one_sentence(tmp_path, monkeypatch) -> None:
+    """From the environment or the command line: code 2, no traceback, nothing laid out."""
+    told = run("watch", tmp_path, "--once", "--cluster", "nonsense")
+    assert told.returncode == 2 and "write it like tcp://planner:8786" in told.stderr
+    monkeypatch.setenv("LEDGERSOLVE_WOKERS", "1")
+    for command in (("watch", tmp_path, "--once"), ("demo", tmp_path / "demo")):
+        told = run(*command)
+        assert told.returncode == 2 and "did you mean LEDGERSOLVE_WORKERS?" in told.stderr
+        assert "Traceback" not in told.stderr
+    assert list(tmp_path.iterdir()) == []
