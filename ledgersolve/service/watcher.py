@@ -3,19 +3,18 @@
 import errno
 import logging
 import math
+import os
 import secrets
 import time
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from typing import Any
 
-from ledgersolve import __version__
-from ledgersolve.service.board import boot, now_words, stale_after, write_board
+from ledgersolve.service.board import now_words, stale_after, this_process, write_board
 from ledgersolve.service.desk import Desk
 from ledgersolve.service.disk import Disk
 from ledgersolve.service.doorbell import Doorbell
 from ledgersolve.service.fair import Line, Turns, Waiting
-from ledgersolve.service.holder import describe
 from ledgersolve.service.intake import Intake
 from ledgersolve.service.keeper import Keeper
 from ledgersolve.service.layout import Layout, guard
@@ -23,7 +22,7 @@ from ledgersolve.service.leases import LeaseWatch
 from ledgersolve.service.names import show
 from ledgersolve.service.settle import ALERT_AFTER, Drop, Settler
 from ledgersolve.service.states import JobView, State
-from ledgersolve.service.waiting import Held, entries, hold
+from ledgersolve.service.waiting import Held, entries, hold, stuck_entries
 
 logger = logging.getLogger(__name__)
 _SCAN_SHARE = 5.0
@@ -77,6 +76,7 @@ class Watcher:
     _told: float = -math.inf
     _told_gist: tuple[Any, ...] = ()
     _news: bool = False
+    _alerted: set[tuple[str, ...]] = field(default_factory=set)
 
     # ---- one step ----------------------------------------------------------------------------------
 
@@ -149,6 +149,7 @@ class Watcher:
     def _scan(self) -> None:
         started = self.clock()
         self.drops = self.settler.look()
+        self._log_alerts()
         waiting = [Waiting(drop.owner, drop.size, drop.since, drop) for drop in self.drops if drop.ready]
         waiting += self._look_at_jobs()
         guard(self.layout, self.disk, self.mark)
@@ -162,6 +163,13 @@ class Watcher:
         soonest = min((drop.look_in for drop in self.drops if not drop.ready), default=math.inf)
         pause = max(_SHORTEST_WAIT, _SCAN_SHARE * self._scan_took, min(self.pace.scan, soonest))
         self._next_scan = ended + pause
+
+    def _log_alerts(self) -> None:
+        """A line for each drop that began to need the administrator; one look later it is no news."""
+        stuck = {tuple(entry.values()) for entry in stuck_entries(self.drops)}
+        for name, owner, why in sorted(stuck - self._alerted):
+            logger.warning("needs the administrator: %s of %s: %s", name, owner, why)
+        self._alerted = stuck
 
     def _look_at_jobs(self) -> list[Waiting]:
         """Jobs that no process has in hand: claimed and left, answered and not handed on."""
@@ -291,17 +299,10 @@ class Watcher:
         words, monotonic, unix = self._last_scan or (None, None, None)
         held = [one for one in self.held if one.view.job not in self.desk.trays]
         waiting, count = entries(self.drops, held, self.line, self.state)
-        holder = describe()
-        alerts = [
-            {"name": show(drop.name), "owner": show(drop.owner), "why": drop.why} for drop in self.drops if drop.alert
-        ]
+        process = this_process()
         return {
+            **process,
             "id": self._beacon,
-            "host": holder["host"],
-            "pid": holder["pid"],
-            "boot": boot(),
-            "holder": holder,
-            "version": __version__,
             "workers": self.pace.workers,
             "state": self.state,
             "why": self.why,
@@ -313,9 +314,9 @@ class Watcher:
             "stale_after_seconds": stale_after(self.pace.scan),
             "waiting": waiting,
             "waiting_count": count,
-            "running": [{**one, "host": holder["host"]} for one in self.desk.progress()],
+            "running": [{**one, "host": process["host"]} for one in self.desk.progress()],
             "returned": self.desk.returned,
-            "alerts": [*alerts[:100], *list(self.desk.alerts.values())[-100:]],
+            "alerts": [*stuck_entries(self.drops)[:100], *list(self.desk.alerts.values())[-100:]],
         }
 
     # ---- ending ------------------------------------------------------------------------------------
@@ -345,7 +346,7 @@ class Watcher:
 
     def _look_at_what_is_left(self) -> None:
         """Drops and jobs as they stand at the end, for the page alone."""
-        self.drops = [drop for drop in self.drops if drop.path.exists()]
+        self.drops = [drop for drop in self.drops if os.path.lexists(drop.path)]  # a link that leads nowhere is there
         self.held = []
         for job in self.disk.names(self.layout.jobs):
             view = self.desk.protocol.view(job)
