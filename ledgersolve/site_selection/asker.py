@@ -3,10 +3,12 @@
 from collections.abc import Hashable, Iterable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field, replace
+from functools import cached_property
 
 import numpy as np
 
 from ledgersolve.mip import Clock, Limits, Solved, Verdict
+from ledgersolve.site_selection.bound import flip_bounds
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.solve import solve
@@ -18,7 +20,10 @@ LEAST_SECONDS = 0.05
 """With less time left than this, nothing is asked any more."""
 ASK_AGAIN = 2.0
 """What stayed open is asked again where there is so many times the time that it had."""
-GAP = 1e-4
+GAP = 1e-8
+"""Accepted gap of re-solves: differences of costs are asked for, so that costs must be known well."""
+EXACT = 1e-7
+"""Relative width up to which bound and cost count as one figure."""
 
 
 @dataclass(frozen=True)
@@ -38,8 +43,7 @@ class Found:
     @property
     def settled(self) -> bool:
         """Whether asking again would not tell more."""
-        within = self.low is not None and self.high is not None and self.high - self.low <= GAP * abs(self.high)
-        return self.impossible or self.exact or within
+        return self.impossible or self.exact
 
     def joined(self, other: "Found") -> "Found":
         """Give what two outcomes of the same case tell together."""
@@ -47,8 +51,14 @@ class Found:
             return Found(None, None, None, impossible=True)
         lows = [found.low for found in (self, other) if found.low is not None]
         best = min((self, other), key=lambda found: np.inf if found.high is None else found.high)
-        low = max(lows, default=None)
-        return Found(low if low is None or best.high is None else min(low, best.high), best.high, best.plan)
+        return interval(max(lows, default=None), best.high, best.plan)
+
+
+def interval(low: float | None, high: float | None, plan: Plan | None) -> Found:
+    """Cost between two figures; one figure where they lie so close that no more is told of them."""
+    if low is not None and high is not None and high - low <= EXACT * abs(high):
+        return Found(high, high, plan)
+    return Found(low, high, plan)
 
 
 NOTHING = Found(None, None, None)
@@ -58,10 +68,12 @@ NOTHING = Found(None, None, None)
 class Asker:
     """Asks the engine about changed cases; remembers what it asked, so that answers share re-solves.
 
-    ``base_bound`` is what no plan of the workbook's own case undercuts, where it is known. ``asks`` counts the
-    re-solves that the question at hand still has to make, so that each gets its part of the time. ``plans``
-    are those found on the way that keep the workbook's own rules, with their cost: each is a plan that some
-    other question looks for.
+    ``base_bound`` is what no plan of the workbook's own case undercuts, ``prices`` (one a customer) are what
+    that rests on, where they are known. ``asks`` counts the re-solves that the question at hand still has to
+    make, so that each gets its part of the time; ``whole`` are the seconds in which the plan itself was proven
+    best (0 = it was not): with so many left, a re-solve has them, because one exact answer says more than many
+    wide ranges. ``plans`` are those found on the way that keep the workbook's own rules, with their cost: each
+    is a plan that some other question looks for.
     """
 
     case: Case
@@ -69,6 +81,8 @@ class Asker:
     base_cost: float
     clock: Clock
     base_bound: float | None = None
+    prices: Floats | None = None
+    whole: float = 0.0
     asks: int = 1
     plans: list[tuple[float, Plan]] = field(default_factory=list)
     _known: dict[Hashable, tuple[Found, float]] = field(default_factory=dict)
@@ -89,6 +103,8 @@ class Asker:
         before, had = self._known.get(key, (NOTHING, 0.0))
         left = self.clock.left()
         seconds = left * max(1.0 / max(self.asks, 1), LEAST_SHARE)
+        if self.whole <= left:
+            seconds = max(seconds, self.whole)
         self.asks -= 1
         if before.settled or left <= LEAST_SECONDS or seconds < ASK_AGAIN * had:
             return before
@@ -110,9 +126,19 @@ class Asker:
         return self.ask_within(self.flipped(self.case, j), ("flip", j))
 
     def known_flip(self, j: int) -> Found:
-        """Give what is known about flipping a site, by what was asked about it and by all plans found so far."""
+        """Give what is known about flipping a site: by asking, by all plans found so far, and by prices."""
         told, _ = self._known.get(("flip", j), (NOTHING, 0.0))
+        low = float(self.flip_lows[j])
+        if np.isfinite(low) and not told.settled:
+            told = told.joined(Found(low, None, None))
         return self.with_plans(told, [pair for pair in self.plans if pair[1].open[j] != self.base.open[j]])
+
+    @cached_property
+    def flip_lows(self) -> Floats:
+        """Shape (m,): what the prices of the plan's bound say of every flip; -inf where there are none."""
+        if self.prices is None or self.prices.shape != (self.case.n,) or not np.isfinite(self.prices).all():
+            return np.full(self.case.m, -np.inf)
+        return flip_bounds(self.case, self.prices, self.base.open)
 
     def with_plans(self, told: Found, plans: Iterable[tuple[float, Plan]]) -> Found:
         """Add plans found on the way to what re-solving told."""
@@ -131,6 +157,14 @@ class Asker:
         """Cost a changed case with the plan's sites open, and no others."""
         return self.ask(only(case, self.base.open), None if key is None else ("kept", key))
 
+    def rivals(self, most: int) -> list[Flags]:
+        """Other sets of sites that keep the workbook's own rules, those of the cheapest plans found so far."""
+        sets: dict[bytes, Flags] = {}
+        for _, plan in sorted(self.plans, key=lambda pair: pair[0]):
+            if bool((plan.open != self.base.open).any()):
+                sets.setdefault(plan.open.tobytes(), plan.open)
+        return list(sets.values())[:most]
+
     def may_flip(self, j: int) -> bool:
         """Whether the workbook leaves site j to us."""
         return bool(self.case.rule[j] == 0)
@@ -145,12 +179,10 @@ def only(case: Case, sites: Flags) -> Case:
 
 
 def found(solved: Solved[Plan]) -> Found:
-    """Turn the end of a run into an interval; proven best counts as one figure."""
+    """Turn the end of a run into an interval."""
     if solved.verdict is Verdict.NO_PLAN_EXISTS:
         return Found(None, None, None, impossible=True)
-    if solved.verdict is Verdict.PROVEN_BEST:
-        return Found(solved.cost, solved.cost, solved.plan)
-    return Found(solved.bound, solved.cost, solved.plan)
+    return interval(solved.bound, solved.cost, solved.plan)
 
 
 def site_part(case: Case, plan: Plan) -> float:

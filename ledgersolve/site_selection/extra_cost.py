@@ -11,7 +11,7 @@ from ledgersolve.findings import NOT_ANSWERED
 from ledgersolve.site_selection.asker import Asker, Found, listed, money
 from ledgersolve.site_selection.case import Case
 
-TINY = 1e-6
+TINY = 1e-7
 """Differences below this share of the plan's cost are rounding."""
 MOST_NAMED = 3
 """Sites named in a sentence with their figures; the rest is counted."""

@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ledgersolve.findings import NOT_ANSWERED, Answered, Column
-from ledgersolve.site_selection.asker import Asker, Found, listed, money
+from ledgersolve.site_selection.asker import Asker, Found, listed, money, only
 from ledgersolve.site_selection.case import Case, Variant
 
 STEP, WIDEST = 5, 50
@@ -13,6 +13,8 @@ STEPS = tuple(range(-WIDEST, 0, STEP)), tuple(range(STEP, WIDEST + STEP, STEP))
 """Changes tried, in percent, downwards and upwards."""
 SAME = 1e-4
 """The sites stay best where keeping them costs at most this much more than the best known plan (0.01 %)."""
+RIVALS = 3
+"""Other sets of sites that are costed for a changed case before it is re-planned."""
 ASKS = 10
 """Re-solves that one lever takes about."""
 DEMAND_OFF = (10, -10, 20, -20)
@@ -214,18 +216,27 @@ def _one_range(case: Case, lever: str) -> bool:
 
 
 def _still_best(asker: Asker, lever: str, percent: int) -> bool | None:
-    """Whether the plan's sites are best for a changed case; None where the time did not allow to tell."""
+    """Whether the plan's sites are best for a changed case; None where the time did not allow to tell.
+
+    Sets of sites of other plans come first: fixed sites are costed quickly, and one that is cheaper decides.
+    """
     case = changed(asker.case, lever, percent)
-    answer = asker.ask(case, (lever, percent))
-    if answer.plan is not None and bool((answer.plan.open == asker.base.open).all()) and answer.exact:
-        return True
-    if answer.impossible or (answer.low is None and answer.high is None):
-        return False if answer.impossible else None
     kept = asker.kept(case, (lever, percent))
     if kept.impossible:
         return False
-    if kept.high is not None and answer.low is not None and kept.high <= answer.low + SAME * abs(answer.low):
+    for number, sites in enumerate(asker.rivals(RIVALS)):
+        other = asker.ask(only(case, sites), (lever, percent, number, sites.tobytes()))
+        if _cheaper(other, kept):
+            return False
+    answer = asker.ask(case, (lever, percent))
+    if answer.impossible or _cheaper(answer, kept):
+        return False
+    if answer.plan is not None and bool((answer.plan.open == asker.base.open).all()) and answer.exact:
         return True
-    least, best = kept.low, answer.high
-    return False if least is not None and best is not None and least > best + SAME * abs(best) else None
+    known = kept.high is not None and answer.low is not None
+    return True if known and (kept.high or 0.0) <= (answer.low or 0.0) + SAME * abs(answer.low or 0.0) else None
 
+
+def _cheaper(other: Found, kept: Found) -> bool:
+    """Whether another plan surely costs less than the plan's sites, by more than what counts as the same."""
+    return other.high is not None and kept.low is not None and kept.low > other.high + SAME * abs(other.high)

@@ -10,7 +10,7 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 from ledgersolve.findings import Answered
-from ledgersolve.mip import Limits, Solved
+from ledgersolve.mip import Limits, Solved, Verdict
 from ledgersolve.site_selection.alternatives import runner_up, why_closed, why_open
 from ledgersolve.site_selection.asker import LEAST_SECONDS, Asker
 from ledgersolve.site_selection.binding import today_against_plan, what_binds
@@ -48,7 +48,8 @@ def answer_questions(
     """Answer the questions about a plan, each with the time it took."""
     if solved.plan is None or solved.cost is None:
         return ()
-    asker = Asker(case, solved.plan, solved.cost, limits.start(), solved.bound)
+    whole = sum(stage.seconds for stage in solved.stages) if solved.verdict is Verdict.PROVEN_BEST else 0.0
+    asker = Asker(case, solved.plan, solved.cost, limits.start(), solved.bound, solved.prices, whole)
     answers: dict[str, Answered] = {}
     by_turn = sorted(QUESTIONS, key=lambda question: question.turn)
     _ask(asker, by_turn, answers)
