@@ -507,6 +507,21 @@ def test_the_log_tells_version_limits_and_every_change_of_state(tmp_path, quick,
     assert "paused: There is a file PAUSE" in told and "stopped: The service was stopped" in told
 
 
+def test_the_log_tells_once_what_needs_the_administrator(tmp_path, quick, caplog):
+    """Not at every look, and again when it comes back."""
+    watcher = quick_watcher(tmp_path)
+    link = tmp_path / "Inbox" / "north" / "link.xlsx"
+    link.parent.mkdir()
+    for _ in range(2):
+        link.symlink_to("/etc/hostname")
+        for _ in range(3):
+            watcher._scan()
+        link.unlink()
+        watcher._scan()
+    told = [record.getMessage() for record in caplog.records if "needs the administrator" in record.getMessage()]
+    assert told == ["needs the administrator: link.xlsx of north: a link, not a file; it is never read"] * 2
+
+
 def test_a_log_that_cannot_be_written_stops_nothing(tmp_path, quick):
     """A full log disk, and a folder that is not there: the work is done all the same."""
     for number, log in enumerate((Path("/dev/full"), tmp_path / "no" / "such" / "x.log")):

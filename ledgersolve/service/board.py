@@ -8,8 +8,9 @@ from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
+from ledgersolve import __version__
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.holder import is_gone
+from ledgersolve.service.holder import describe, is_gone
 from ledgersolve.service.layout import Layout
 from ledgersolve.service.page import local_time, render, running_words
 from ledgersolve.service.waiting import as_waiting
@@ -209,6 +210,13 @@ def boot() -> str:
     with suppress(OSError):
         return Path("/proc/sys/kernel/random/boot_id").read_text("ascii").strip()
     return ""
+
+
+def this_process() -> dict[str, Any]:
+    """Words on this process for its sign of life."""
+    holder = describe()
+    words = {"host": holder["host"], "pid": holder["pid"], "boot": boot(), "holder": holder}
+    return words | {"version": __version__}
 
 
 def now_words() -> str:

@@ -89,6 +89,11 @@ def _entry(one: Held | Drop, place: int, back: str) -> dict[str, str]:
     return {"name": show(one.name), "owner": show(one.owner), "why": words}
 
 
+def stuck_entries(drops: list[Drop]) -> list[dict[str, str]]:
+    """Drops that need the administrator, with the reason."""
+    return [{"name": show(one.name), "owner": show(one.owner), "why": one.why} for one in drops if one.alert]
+
+
 def as_waiting(running: dict[str, Any]) -> dict[str, Any]:
     """What a dead service ran, as what it is now."""
     kept = {key: running[key] for key in ("name", "owner", "job") if key in running}
