@@ -207,7 +207,7 @@ def runner_up(answer: Answered, case: Case, sets: SETS, base: frozenset[int]) ->
     """The runner-up that is said to be the best is; one that was found costs what its set costs."""
     one, two = answer.rows
     for row, least in ((one, 1), (two, 2)):
-        best = min(cost for chosen, cost in sets.items() if len(chosen ^ base) >= least) - sets[base]
+        best = min(cost for chosen, cost in sets.items() if exchanged(chosen, base) >= least) - sets[base]
         assert row[1] is None or row[1] <= best + 1e-3, row
         assert row[2] is None or row[2] >= best - 1e-3, row
         if str(row[5]).startswith("proven"):
@@ -215,6 +215,11 @@ def runner_up(answer: Answered, case: Case, sets: SETS, base: frozenset[int]) ->
     if answer.words.startswith("The best plan with other sites costs"):
         assert str(one[5]).startswith("proven")
     assert "No other set" not in answer.words
+
+
+def exchanged(chosen: frozenset[int], base: frozenset[int]) -> int:
+    """Sites that are others: so many opened, or so many closed, whatever is more."""
+    return max(len(chosen - base), len(base - chosen))
 
 
 def demand(answer: Answered, case: Case, base: frozenset[int]) -> None:

@@ -5,14 +5,16 @@ from collections.abc import Sequence
 import numpy as np
 
 from ledgersolve.findings import NOT_ANSWERED, Answered, Column
-from ledgersolve.site_selection.asker import NOTHING, Asker, Found, codes, service_part
+from ledgersolve.site_selection.asker import Asker, Found, codes, interval, service_part
 from ledgersolve.site_selection.case import CLOSED, OPEN, Ints
 from ledgersolve.site_selection.extra_cost import Extra, Told, exact_ones, extra, more, not_exact
+from ledgersolve.site_selection.plan import Plan
 
-MOST_ASKED = 60
-"""Closed sites asked about at most, the most promising first."""
-MOST_SECOND = 5
-"""Second changes tried after a first one that leads to a plan with one site different."""
+MOST_LISTED = 200
+"""Closed sites listed at most, those that come nearest first."""
+
+MOST_PAIRED = 150
+"""Sites in each direction that are paired for the plan that differs in two."""
 
 Row = tuple[str | float | None, ...]
 
@@ -61,16 +63,16 @@ def why_closed(asker: Asker) -> Answered:
     """For each closed site: the cost of insisting on it, and the fixed cost at which it would pay."""
     case = asker.case
     order = [int(j) for j in promising(asker)]
-    told = _flips(asker, order[:MOST_ASKED])
+    told = dict(sorted(_flips(asker, order).items(), key=lambda pair: _nearness(pair[1])))
     rows: list[Row] = []
-    for j, one in told.items():
+    for j, one in list(told.items())[:MOST_LISTED]:
         fixed, meaning = float(case.fixed_cost[j]), one.words(case)
         worth = fixed - one.low if one.low is not None else None
         if worth is not None and worth <= 0:
             meaning += "; not worth opening even at no fixed cost"
         pays = worth if one.exact and worth is not None and worth > 0 else None
         rows.append((case.sites[j], case.site_names[j], one.low, one.high, fixed, pays, meaning))
-    words = _with_words(asker, [(case.sites[j], one) for j, one in told.items()], len(order) - len(told))
+    words = _with_words(asker, [(case.sites[j], one) for j, one in told.items()])
     columns = (Column("Site"), Column("Name"), Column("With it, more by at least", "money"),
                Column("and at most", "money"), Column("Its fixed cost", "money"),
                Column("Would pay at a fixed cost of", "money"), Column("What that means"))
@@ -78,14 +80,19 @@ def why_closed(asker: Asker) -> Answered:
     return Answered("Why not another site?", words, columns, tuple(rows), headline=answered)
 
 
-def _with_words(asker: Asker, told: Told, not_asked: int) -> str:
+def _nearness(one: Extra) -> float:
+    """Order of the list: by what the site costs more, as far as it is known."""
+    known = one.low if one.low is not None else one.high
+    return np.inf if known is None else known
+
+
+def _with_words(asker: Asker, told: Told) -> str:
     case, exact, sentences = asker.case, exact_ones(told), []
     if not told:
         sentences.append("Every site that its rule leaves open or closed at will is open in the plan.")
     if exact:
         least, near = exact[0]
-        nearest = not not_asked and all(
-            one.impossible or (one.low is not None and one.low >= least) for _, one in told)
+        nearest = all(one.impossible or (one.low is not None and one.low >= least) for _, one in told)
         who = "The closed site that comes nearest" if nearest else (
             "Of the closed sites with an exact figure, the one that comes nearest")
         if len(told) == 1 and nearest:
@@ -93,8 +100,8 @@ def _with_words(asker: Asker, told: Told, not_asked: int) -> str:
         sentences.append(f"{who} is {near}: insisting on it costs {more(case, least)}.")
     sentences += not_exact(case, told, "with")
     ruled = int((case.rule == CLOSED).sum())
-    if not_asked > 0:
-        sentences.append(f"{_sites(not_asked)} with less promise {_were(not_asked)} not asked about.")
+    if len(told) > MOST_LISTED:
+        sentences.append(f"The {MOST_LISTED} nearest of {len(told)} are listed.")
     if ruled:
         sentences.append(f"{_sites(ruled)} {'is' if ruled == 1 else 'are'} closed by rule.")
     return " ".join(sentences)
@@ -102,10 +109,6 @@ def _with_words(asker: Asker, told: Told, not_asked: int) -> str:
 
 def _sites(count: int) -> str:
     return "1 site" if count == 1 else f"{count} sites"
-
-
-def _were(count: int) -> str:
-    return "was" if count == 1 else "were"
 
 
 def promising(asker: Asker) -> Ints:
@@ -123,37 +126,86 @@ def promising(asker: Asker) -> Ints:
 
 
 def runner_up(asker: Asker) -> Answered:
-    """Best plan that differs in at least one site, then in at least two.
+    """Best plan that differs in one site at least, then in two; another site in place of one counts as one.
 
-    A plan that differs either lacks a site of the plan or has one more: the cheapest of all flips is the
-    cheapest plan that differs in one. Of those that differ in exactly one, the next best is found by flipping
-    a second site.
+    A plan that differs lacks a site of the plan or has one more: the cheapest of all flips is the cheapest plan
+    that differs. One that differs in two lacks two sites of the plan, or has two more: the cheapest of all pairs of
+    flips in one direction. What the prices of the bound, or a flip already solved, put above a plan found needs no
+    asking.
     """
-    free = [j for j in range(asker.case.m) if asker.may_flip(j)]
-    order = [j for j in free if asker.base.open[j]] + [int(j) for j in promising(asker)[:MOST_ASKED]]
-    asker.asks = len(order) + MOST_SECOND
-    flips = {j: asker.flip(j) for j in order}
-    _second(asker, flips)
-    lows = [told.low for told in flips.values() if not told.impossible]
-    proven = len(order) == len(free) and all(low is not None for low in lows)
-    low = min((low for low in lows if low is not None), default=None) if proven else None
-    none = len(order) == len(free) and not lows
-    one, two = (_best_differing(asker, least, low, none) for least in (1, 2))
-    rows = (_row(asker, "at least one site", *one), _row(asker, "at least two sites", *two))
+    free = sorted((j for j in range(asker.case.m) if asker.may_flip(j)), key=lambda j: _low(asker, j))
+    asker.asks = 2 * len(free)
+    first = _search(asker, [(j,) for j in free], 1)
+    second = _search(asker, _pairs(asker, free), 2)
+    rows = (_row(asker, "one site or more", *first), _row(asker, "two sites or more", *second))
     columns = (Column("Differs in"), Column("Costs more, by at least", "money"), Column("and at most", "money"),
                Column("Opens"), Column("Closes"), Column("How sure"))
-    words = _runner_up_words(asker, *one)
-    return Answered("What is the runner-up?", words, columns, rows, headline=one[1].answered)
+    words = _runner_up_words(asker, *first)
+    if not second[1].answered and first[1].answered:
+        words += f" One that differs in two sites: {NOT_ANSWERED}."
+    return Answered("What is the runner-up?", words, columns, rows, headline=first[1].answered)
 
 
-def _best_differing(asker: Asker, least: int, low: float | None, none: bool) -> tuple[Found, Extra]:
-    """Give the cheapest plan found that differs in so many sites; the least any flip costs holds for it too."""
-    if none:
-        told = Found(None, None, None, impossible=True)
+def _low(asker: Asker, *flips: int) -> float:
+    """What every plan with these sites flipped costs at least, by what is known."""
+    told = [asker.known_flip(j) for j in flips]
+    if any(one.impossible for one in told):
+        return np.inf
+    return max(-np.inf if one.low is None else one.low for one in told)
+
+
+def _pairs(asker: Asker, free: list[int]) -> list[tuple[int, ...]]:
+    """Pairs of sites that are both closed, or both opened, the ones that may be cheapest first."""
+    pairs: list[tuple[float, tuple[int, ...]]] = []
+    lows = {j: _low(asker, j) for j in free}
+    for way in (True, False):
+        there = sorted((j for j in free if bool(asker.base.open[j]) is way), key=lambda j: lows[j])[:MOST_PAIRED]
+        pairs += [(max(lows[j], lows[k]), (j, k)) for n, k in enumerate(there) for j in there[:n]]
+    return [pair for _, pair in sorted(pairs)]
+
+
+def _search(asker: Asker, changes: list[tuple[int, ...]], least: int) -> tuple[Found, Extra]:
+    """Give the cheapest plan that differs in so many sites, asking about changes in the order of their lows."""
+    lows = [_low(asker, *change) for change in changes]
+    for number, change in enumerate(changes):
+        best = _cheapest(asker, least)
+        if lows[number] >= best[0] or asker.clock.over():
+            break
+        changed = asker.case
+        for j in change:
+            changed = asker.flipped(changed, j)
+        told = asker.ask_within(changed, ("flip", *change) if len(change) == 1 else ("flips", *sorted(change)))
+        lows[number] = np.inf if told.impossible else max(lows[number], -np.inf if told.low is None else told.low)
+    cost, plan = _cheapest(asker, least)
+    beyond = _beyond(asker, changes)
+    low = min([*lows, beyond], default=np.inf)
+    if plan is None:
+        told = Found(None, None, None, impossible=True) if low == np.inf else Found(
+            low if np.isfinite(low) else None, None, None)
     else:
-        others = [pair for pair in asker.plans if int((pair[1].open != asker.base.open).sum()) >= least]
-        told = asker.with_plans(NOTHING, others).joined(Found(low, None, None))
+        told = interval(min(low, cost) if low > -np.inf else None, cost, plan)
     return told, extra(asker, told)
+
+
+def _beyond(asker: Asker, changes: list[tuple[int, ...]]) -> float:
+    """Lows of pairs that were left out of the list because there are too many of them."""
+    free = [j for j in range(asker.case.m) if asker.may_flip(j)]
+    if not changes or len(changes[0]) == 1 or len(free) <= MOST_PAIRED:
+        return np.inf
+    listed = {j for change in changes for j in change}
+    return min((_low(asker, j) for j in free if j not in listed), default=np.inf)
+
+
+def _cheapest(asker: Asker, least: int) -> tuple[float, Plan | None]:
+    """Cheapest plan found so far that differs in so many sites."""
+    found = [(cost, plan) for cost, plan in asker.plans if _differs(asker, plan) >= least]
+    return min(found, key=lambda pair: pair[0]) if found else (np.inf, None)
+
+
+def _differs(asker: Asker, plan: Plan) -> int:
+    """Sites that are others: so many are opened, or so many closed, whatever is more."""
+    opened = int((plan.open & ~asker.base.open).sum())
+    return max(opened, int((asker.base.open & ~plan.open).sum()))
 
 
 def _runner_up_words(asker: Asker, told: Found, one: Extra) -> str:
@@ -170,25 +222,6 @@ def _runner_up_words(asker: Asker, told: Found, one: Extra) -> str:
     return words
 
 
-def _second(asker: Asker, flips: dict[int, Found]) -> None:
-    """Look for plans that differ in two or more sites: flips that lead to one only are flipped again."""
-    def two() -> float:
-        return min((cost for cost, plan in asker.plans if int((plan.open != asker.base.open).sum()) >= 2),
-                   default=np.inf)
-
-    for j, told in sorted(flips.items(), key=lambda pair: _high(pair[1])):
-        if _high(told) >= two() or told.plan is None or int((told.plan.open != asker.base.open).sum()) >= 2:
-            continue
-        others = sorted((k for k in flips if k != j and asker.may_flip(k)), key=lambda k: _high(flips[k]))
-        for k in others[:MOST_SECOND]:
-            both = asker.flipped(asker.flipped(asker.case, j), k)
-            asker.ask_within(both, ("flip", min(j, k), max(j, k)))
-
-
-def _high(told: Found) -> float:
-    return np.inf if told.high is None else told.high
-
-
 def _row(asker: Asker, label: str, told: Found, one: Extra) -> Row:
     if told.plan is None:
         return (label, one.low, None, "", "", one.words(asker.case))
@@ -196,5 +229,3 @@ def _row(asker: Asker, label: str, told: Found, one: Extra) -> Row:
     closes = codes(asker.case, np.flatnonzero(asker.base.open & ~told.plan.open).tolist())
     sure = "proven: none is cheaper" if one.exact else "the best found; a cheaper one is possible"
     return (label, one.low, one.high, opens, closes, sure)
-
-
