@@ -1,6 +1,8 @@
 """Whole returned workbooks: rules for good sheets, recalculation elsewhere, schema, changed and doctored cells."""
 
+import re
 import shutil
+import subprocess
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -17,7 +19,8 @@ from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.report.inputs import LotReport, SiteReport
 from ledgersolve.site_selection.audit import audit as audit_sites
 from tests import report_cases
-from tests.recalculation import OFFICE, differences, recalculated_all
+from tests.packages import contents, zipped
+from tests.recalculation import OFFICE, convert, differences, recalculated_all
 from tests.report_books import lot_report, reading_of, returned, site_report
 from tests.sheet_rules import check_workbook, values_of
 
@@ -246,6 +249,28 @@ def test_the_decision_is_one_page(made) -> None:
         assert (sheet.page_setup.fitToWidth, sheet.page_setup.fitToHeight) in ((None, None), (1, 1))
         assert sheet.page_setup.orientation != "landscape"
         assert sheet.page_setup.paperSize in (None, 0)
+
+
+PAPERS = {"A4": "9", "Letter": "1"}
+
+
+@needs_office
+@pytest.mark.skipif(shutil.which("pdftotext") is None, reason="poppler is not installed")
+@pytest.mark.parametrize("paper", PAPERS)
+def test_the_decision_prints_on_one_page(paper: str, made, tmp_path: Path) -> None:
+    """On either paper exactly one page is the Decision's, and it holds all of it, from the title to the last line."""
+    books = []
+    for kind in ("sites", "lots"):
+        parts = contents(made(kind)[1])
+        part = "xl/worksheets/ledgersolve1.xml"
+        parts[part] = parts[part].replace(b"<pageSetup ", f'<pageSetup paperSize="{PAPERS[paper]}" '.encode())
+        books.append(zipped(tmp_path / f"{kind}.xlsx", parts))
+    for pdf in convert(books, tmp_path, "pdf"):
+        words = subprocess.run(["pdftotext", "-layout", str(pdf), "-"], check=True, capture_output=True, text=True)
+        pages = [page for page in words.stdout.split("\f") if re.search(r"Decision\s+Page \d+ of", page)]
+        assert len(pages) == 1
+        for text in ("All together that costs", "Check before you act", "Words used here", "The run record lists"):
+            assert text in pages[0], (pdf.name, text)
 
 
 def test_links_lead_to_filled_cells(made) -> None:
