@@ -3,21 +3,28 @@
 For any price v_i a customer's demand (at most its unmet cost) every plan costs at least
 
     sum_i v_i + sum_j term_j + constants,
-    term_j = fixed_j + charge_j - capacity_j w_j - gain_j   (at most 0 unless the site must open),
-    gain_j = sum_i max(0, v_i - cost_ij - w_j demand_i),
+    term_j = fixed_j + charge_j - volume_j w_j - gain_j   (at most 0 unless the site must open),
+    gain_j = sum_i limit_ij max(0, v_i + p demand_i near_ij - cost_ij - w_j demand_i),
 
 by weak duality of the problem whose assignment rows are relaxed (Cornuejols, Fisher & Nemhauser 1977); the
-price w_j of a site's capacity makes its knapsack a sum of single terms without loss (the knapsack's own dual),
-and charges stand for rules that tie sites together: counts, groups, capacity for all demand. Any non-negative
-charges keep the bound valid; the ones chosen here make it as high as these rules alone allow.
+price w_j of a site's volume makes its knapsack a sum of single terms without loss (the knapsack's own dual):
+above 0 it stands for the capacity, below 0 for the least volume, and volume_j is the one of the two. The share
+price p stands for the share-within-distance rule, whose units come back among the constants. Charges stand for
+rules that tie sites together: counts, groups, capacity for all demand. Any non-negative charges and share
+price keep the bound valid; the ones chosen here make it as high as these rules alone allow.
 """
 
 from dataclasses import dataclass, replace
 
 import numpy as np
 
+from ledgersolve.site_selection.bound import share_price
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
 from ledgersolve.site_selection.lanes import Lanes
+
+SHARE_BACK = "Demand to be served near x price per unit delivered near"
+SUPPLY_BACK = "All demand x price per unit of capacity"
+"""What constants of the sum stand for."""
 
 
 @dataclass(frozen=True)
@@ -30,8 +37,15 @@ class Certificate:
         Shape (n,): money for the customer's whole demand; 0 where nothing is needed.
     usable
         Shape (m, n): lanes that count.
-    volume_price
-        Shape (m,): money per unit of the site's capacity.
+    near
+        Shape (m, n): usable lanes whose deliveries count for the share rule; None where it has no price.
+    limit
+        Shape (m, n): largest share each usable lane carries; None = the whole on every lane.
+    share_price
+        Money per unit delivered near.
+    volume_price, volume
+        Shape (m,): money per unit of the site's capacity, below 0 of its least volume; the one that is priced,
+        0 where neither is.
     fixed
         Shape (m,): fixed cost with opening cost, less closing cost saved.
     gain, charge, term
@@ -47,7 +61,11 @@ class Certificate:
 
     price: Floats
     usable: Flags
+    near: Flags | None
+    limit: Floats | None
+    share_price: float
     volume_price: Floats
+    volume: Floats
     fixed: Floats
     gain: Floats
     charge: Floats
@@ -66,21 +84,32 @@ class Certificate:
 def certify(case: Case, lanes: Lanes, prices: Floats) -> Certificate:
     """Make the certificate of any prices, shape (n,), money for each customer's whole demand."""
     price = np.where(lanes.needs, np.minimum(prices, lanes.unmet_cost), 0.0)
-    closed = lanes.rule == CLOSED
-    usable = np.isfinite(lanes.cost) & lanes.needs & ~closed[:, None]
-    capacity = np.where(np.isfinite(lanes.capacity), lanes.capacity, 0.0)
-    volume_price, gain = np.zeros(case.m), np.zeros(case.m)
-    for j in np.flatnonzero(~closed).tolist():
-        own = usable[j]
-        surplus = price[own] - lanes.cost[j, own]
-        demand = case.demand[own]
-        if np.isfinite(lanes.capacity[j]):
-            volume_price[j] = _volume_price(surplus, demand, lanes.capacity[j])
-        gain[j] = np.maximum(surplus - volume_price[j] * demand, 0.0).sum()
-    bare = Certificate(price, usable, volume_price, lanes.site_cost, gain, gain, gain, (), 0.0, 0.0, gain)
-    reduced = lanes.site_cost - capacity * volume_price - gain
+    usable = np.isfinite(lanes.cost) & lanes.needs & (lanes.rule != CLOSED)[:, None]
+    share = share_price(lanes, prices)
+    near = lanes.near & usable if lanes.near is not None and share > 0 else None
+    limit = lanes.limit if lanes.limit is not None and bool((lanes.limit[usable] < 1).any()) else None
+    none = np.zeros(case.m)
+    bare = Certificate(price, usable, near, limit, share, none, none, lanes.site_cost, none, none, none, (), 0.0,
+                       0.0, none)
+    bare = _filled(case, lanes, bare)
+    reduced = bare.fixed - bare.volume * bare.volume_price - bare.gain
     supplies = {0.0, _supply_price(case, lanes, reduced)}
     return max((_charged(case, lanes, bare, reduced, supply) for supply in sorted(supplies)), key=lambda c: c.bound)
+
+
+def _filled(case: Case, lanes: Lanes, bare: Certificate) -> Certificate:
+    """Give the certificate with each site's price of volume and gain."""
+    volume_price, volume, gain = np.zeros(case.m), np.zeros(case.m), np.zeros(case.m)
+    for j in np.flatnonzero(bare.usable.any(axis=1)).tolist():
+        own = bare.usable[j]
+        surplus, demand = bare.price[own] - lanes.cost[j, own], case.demand[own]
+        if bare.near is not None:
+            surplus += bare.share_price * demand * bare.near[j, own]
+        share = np.ones(demand.size) if bare.limit is None else bare.limit[j, own]
+        volume_price[j] = w = _volume_price(surplus * share, demand * share, lanes.capacity[j], lanes.least[j])
+        volume[j] = case.capacity[j] if w > 0 else lanes.least[j] if w < 0 else 0.0
+        gain[j] = (share * np.maximum(surplus - w * demand, 0.0)).sum()
+    return replace(bare, volume_price=volume_price, volume=volume, gain=gain)
 
 
 def _charged(case: Case, lanes: Lanes, bare: Certificate, reduced: Floats, supply: float) -> Certificate:
@@ -93,19 +122,25 @@ def _charged(case: Case, lanes: Lanes, bare: Certificate, reduced: Floats, suppl
     charge = np.where(closed, 0.0, group + count - supply * every)
     full = reduced + charge
     term = np.where(closed, 0.0, np.where(lanes.rule == OPEN, full, np.minimum(full, 0.0)))
-    rules = _rules(case, lanes, supply, count, group)
+    rules = _rules(case, lanes, bare, supply, count, group)
     return replace(bare, charge=charge, term=term, rules=rules, supply_price=supply, count_charge=count,
                    group_charge=group)
 
 
-def _volume_price(surplus: Floats, demand: Floats, capacity: float) -> float:
-    """Best price of a unit of capacity: surplus per unit of the first delivery that no longer fits whole."""
-    worth = (surplus > 0) & (demand > 0)
-    ratio = surplus[worth] / demand[worth]
+def _volume_price(surplus: Floats, demand: Floats, capacity: float, least: float) -> float:
+    """Best price of a unit of volume: surplus per unit of the delivery that the site's volumes stop at.
+
+    That is the first one that no longer fits whole, or below 0 the last one that the least volume asks for.
+    """
+    carried = demand > 0
+    ratio, units = surplus[carried] / demand[carried], demand[carried]
     order = np.argsort(-ratio)
-    filled = np.cumsum(demand[worth][order])
+    filled, worth = np.cumsum(units[order]), int((ratio > 0).sum())
     beyond = int(np.searchsorted(filled, capacity * (1 + 1e-12), side="right"))
-    return float(ratio[order[beyond]]) if beyond < order.size else 0.0
+    if beyond < worth:
+        return float(ratio[order[beyond]])
+    asked = int(np.searchsorted(filled, least * (1 - 1e-12), side="left"))
+    return min(0.0, float(ratio[order[min(asked, order.size - 1)]])) if least > 0 and order.size else 0.0
 
 
 def _supply_price(case: Case, lanes: Lanes, reduced: Floats) -> float:
@@ -156,12 +191,15 @@ def _count_charge(lanes: Lanes, balance: Floats) -> float:
     return 0.0
 
 
-def _rules(case: Case, lanes: Lanes, supply: float, count: float, group: Floats) -> tuple[tuple[str, float], ...]:
+def _rules(case: Case, lanes: Lanes, bare: Certificate, supply: float, count: float,
+           group: Floats) -> tuple[tuple[str, float], ...]:
     rows = []
+    if bare.near is not None:
+        rows.append((SHARE_BACK, bare.share_price * lanes.near_least))
     if lanes.offset:
         rows.append(("Closing costs of all sites in use today (a site kept open gives its own back)", lanes.offset))
     if supply:
-        rows.append(("All demand x price per unit of capacity", supply * float(case.demand[lanes.needs].sum())))
+        rows.append((SUPPLY_BACK, supply * float(case.demand[lanes.needs].sum())))
     if count > 0:
         rows.append(("Charge per site x most sites, handed back", -count * lanes.most))
     if count < 0:

@@ -13,34 +13,40 @@ from ledgersolve.report.certificate import Certificate
 from ledgersolve.report.site_places import SitePlaces
 from ledgersolve.report.tables import FIRST_ROW, Column, quoted, write_table
 from ledgersolve.site_selection.case import Floats
+from ledgersolve.site_selection.lanes import DISTANCE_SLACK
 from ledgersolve.workbook.cells import column_letters
 from ledgersolve.workbook.origins import CellRef
 from ledgersolve.workbook.sheets import ResultSheet
 
 DEMAND_ROW, PRICE_ROW = FIRST_ROW + 1, FIRST_ROW + 2
 X_ROW, Y_ROW, Z_ROW = range(FIRST_ROW + 4, FIRST_ROW + 7)
-HALF_ROW, DIAMETER_ROW, COST_ROW = range(FIRST_ROW + 8, FIRST_ROW + 11)
-SITES_ROW = FIRST_ROW + 12
+HALF_ROW, DIAMETER_ROW, COST_ROW, NEAR_ROW = range(FIRST_ROW + 8, FIRST_ROW + 12)
+SITES_ROW = FIRST_ROW + 13
 FIRST_COLUMN = 2
 DIAMETER_KM = 2 * 6371.0088
 KM_PER_MILE = 1.609344
+NEAR_FACTOR = 1 + DISTANCE_SLACK
 
 
 def coordinate_gains(
-    at: SitePlaces, sheet: ResultSheet, certificate: Certificate, charges: Sequence[str]
+    at: SitePlaces, sheet: ResultSheet, certificate: Certificate, charges: Sequence[str], share_cell: str
 ) -> tuple[str, ...] | None:
     """Write places and gains on the sheet of prices; gives the cells of the gains, as formulas for another sheet.
 
-    ``charges`` are formulas of what a unit costs at each site apart from its lane. None where some lane does not
-    follow from coordinates alone, or is forbidden by a rule.
+    ``charges`` are formulas of what a unit costs at each site apart from its lane; ``share_cell`` holds the price
+    of a unit delivered near. None where some lane does not follow from coordinates alone, is forbidden by a
+    rule, or has a limit.
     """
     diameter = DIAMETER_KM / (1.0 if at.report.case.distance_unit == "km" else KM_PER_MILE)
     refs = _coordinates(at)
     if refs is None or not _all_by_coordinates(at, certificate, diameter):
         return None
     _write_figures(at, sheet, diameter)
+    if certificate.near is not None:
+        _write_reach(at, sheet, diameter)
     _write_places(at, sheet, refs["Customers"])
-    return _write_sites(at, sheet, certificate, refs["Sites"], charges)
+    near = "" if certificate.near is None else share_cell
+    return _write_sites(at, sheet, certificate, refs["Sites"], charges, near)
 
 
 def _coordinates(at: SitePlaces) -> dict[str, list[tuple[CellRef, CellRef]]] | None:
@@ -64,15 +70,23 @@ def _all_by_coordinates(at: SitePlaces, certificate: Certificate, diameter: floa
     given = (case.site_latitude, case.site_longitude, case.customer_latitude, case.customer_longitude)
     if book.road_cost is None or book.origins.setting("Cost per unit and distance") is None or case.cost_is_whole:
         return False
-    if any(figures is None for figures in given):
+    if any(figures is None for figures in given) or certificate.limit is not None:
         return False
     live = np.asarray(certificate.usable.any(axis=1)).reshape(-1, 1) & (case.demand > 0)
     if bool((live & ~certificate.usable).any()):
         return False
     sites, customers = (half_vectors(given[k], given[k + 1]) for k in (0, 2))
     chord = np.sqrt(((sites[:, None, :] - customers[None, :, :]) ** 2).sum(axis=2))
-    cost = diameter * np.arcsin(np.minimum(chord, 1.0)) * book.road_cost * book.road_factor
+    arc = np.arcsin(np.minimum(chord, 1.0))
+    if certificate.near is not None and bool((certificate.near != (arc <= _reach(at, diameter)))[live].any()):
+        return False
+    cost = diameter * arc * book.road_cost * book.road_factor
     return bool(np.allclose(cost[live], case.lane_cost[live], rtol=1e-9, atol=1e-9))
+
+
+def _reach(at: SitePlaces, diameter: float) -> float:
+    """Distance of the share rule, as the part of the earth's diameter that an arc is."""
+    return (at.report.case.share_distance or 0.0) * NEAR_FACTOR / (diameter * at.report.workbook.road_factor)
 
 
 def half_vectors(latitude: Floats | None, longitude: Floats | None) -> Floats:
@@ -106,6 +120,17 @@ def _write_figures(at: SitePlaces, sheet: ResultSheet, diameter: float) -> None:
         sheet.put(row, 2, value, style.number(shown), formula=how)
 
 
+def _write_reach(at: SitePlaces, sheet: ResultSheet, diameter: float) -> None:
+    """How far a delivery counts as near."""
+    origins = at.report.workbook.origins
+    reach, factor = origins.setting("Distance for share"), origins.setting("Road factor")
+    formula = "" if reach is None else (
+        f"={reach.formula}*{NEAR_FACTOR!r}/$C${DIAMETER_ROW + 1}" + (f"/{factor.formula}" if factor else ""))
+    sheet.put(NEAR_ROW, 0, "Distance that counts as near over that distance", style.BOLD)
+    sheet.put(NEAR_ROW, 1, "number", style.NOTE)
+    sheet.put(NEAR_ROW, 2, _reach(at, diameter), style.number("0.000000000000"), formula=formula)
+
+
 def _write_places(at: SitePlaces, sheet: ResultSheet, refs: Sequence[tuple[CellRef, CellRef]]) -> None:
     case, look = at.report.case, style.number("0.00000000")
     places = half_vectors(case.customer_latitude, case.customer_longitude)
@@ -120,7 +145,7 @@ def _write_places(at: SitePlaces, sheet: ResultSheet, refs: Sequence[tuple[CellR
 
 def _write_sites(
     at: SitePlaces, sheet: ResultSheet, certificate: Certificate, refs: Sequence[tuple[CellRef, CellRef]],
-    charges: Sequence[str],
+    charges: Sequence[str], share_cell: str,
 ) -> tuple[str, ...]:
     case = at.report.case
     places = half_vectors(case.site_latitude, case.site_longitude)
@@ -137,14 +162,17 @@ def _write_sites(
         Column("charge", f"Capacity price and handling ({case.currency} per {case.demand_unit})", charge.tolist(),
                style.number(style.rate_format(case.currency, charge.tolist())), 16, list(charges)),
         Column("gain", f"Gain ({at.money_unit})", certificate.gain.tolist(), money, 16,
-               [_gain(at, row) if on else "" for row, on in zip(rows, live, strict=True)]),
+               [_gain(at, row, share_cell) if on else "" for row, on in zip(rows, live, strict=True)]),
     ])
     name = quoted(sheet.name)
     return tuple(f"{name}!$G${row}" if on else "" for row, on in zip(rows, live, strict=True))
 
 
-def _gain(at: SitePlaces, row: int) -> str:
-    """Sum over the customers of max(0, price - lane cost - charge) x demand, all by formulas on this sheet."""
+def _gain(at: SitePlaces, row: int, share_cell: str) -> str:
+    """Sum over the customers of max(0, price - lane cost - charge) x demand, all by formulas on this sheet.
+
+    With ``share_cell``, a near delivery counts for more by the price in it.
+    """
     last = column_letters(FIRST_COLUMN + at.report.case.n)
 
     def across(place: int) -> str:
@@ -152,5 +180,6 @@ def _gain(at: SitePlaces, row: int) -> str:
 
     apart = "+".join(f"({across(place)}-${letter}{row})*({across(place)}-${letter}{row})"
                      for place, letter in ((X_ROW, "C"), (Y_ROW, "D"), (Z_ROW, "E")))
-    left = f"{across(PRICE_ROW)}-$C${COST_ROW + 1}*ASIN(SQRT({apart}))-$F{row}"
+    near = f"+{share_cell}*(ASIN(SQRT({apart}))<=$C${NEAR_ROW + 1})" if share_cell else ""
+    left = f"{across(PRICE_ROW)}-$C${COST_ROW + 1}*ASIN(SQRT({apart}))-$F{row}{near}"
     return f"SUMPRODUCT(({left}>0)*({left})*{across(DEMAND_ROW)})"

@@ -6,7 +6,7 @@ import numpy as np
 
 from ledgersolve.mip import Verdict
 from ledgersolve.report import names, style
-from ledgersolve.report.certificate import Certificate, certify
+from ledgersolve.report.certificate import SHARE_BACK, SUPPLY_BACK, Certificate, certify
 from ledgersolve.report.checks import ChecksAt, checks_at, write_audit, write_checks
 from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.price_sheet import PriceSheet, price_sheet
@@ -19,6 +19,10 @@ from ledgersolve.workbook.sheets import ResultSheet
 
 TOLERANCE_ROW = 3
 CHECKS_ROW = 6
+SUMMARY = 4
+"""Rows from the title of the bound to its summary, which begins with the share price where there is one."""
+WEAK = 0.1
+"""Part of the plan's cost from which the checkable bound is told to be weak where it falls short by more."""
 
 
 @dataclass(frozen=True)
@@ -45,7 +49,7 @@ def site_proof(at: SitePlaces, ledger: Ledger) -> SiteProof:
     if certificate is not None:
         first = _sites_row(at, certificate, row)
         cells = [f"{name}!$E${first + 2 + j}" for j in range(at.report.case.m)]
-        prices = price_sheet(at, certificate, cells)
+        prices = price_sheet(at, certificate, cells, f"{name}!$C${row + SUMMARY + 1}")
     sheets = [sheet]
     if certificate is not None and prices is not None:
         row = _write_bound(at, ledger, sheet, row, certificate, prices)
@@ -56,7 +60,19 @@ def site_proof(at: SitePlaces, ledger: Ledger) -> SiteProof:
     heading(sheet, "Proof", "What you can check yourself: that the plan keeps every rule, and that no plan can cost "
             "much less. Change a plan cell in a Plan sheet and a check turns BROKEN.", 6)
     return SiteProof(tuple(sheets), checks_at(name, CHECKS_ROW, len(checks)),
-                     None if certificate is None else certificate.bound)
+                     None if certificate is None or prices is None else checkable(at, certificate))
+
+
+def checkable(at: SitePlaces, certificate: Certificate) -> float:
+    """The bound of the certificate; 0 where it is lower and nothing in the workbook costs less than nothing."""
+    return max(0.0, certificate.bound) if _never_negative(at) else certificate.bound
+
+
+def _never_negative(at: SitePlaces) -> bool:
+    case = at.report.case
+    costs = (case.fixed_cost, case.handling_cost, case.opening_cost, case.closing_cost,
+             case.lane_cost[np.isfinite(case.lane_cost)], np.array([case.unmet_cost or 0.0]))
+    return all(bool((cost >= 0).all()) for cost in costs)
 
 
 def tolerance_row(sheet: ResultSheet) -> None:
@@ -81,7 +97,7 @@ def _certificate(at: SitePlaces) -> Certificate | None:
 
 def _sites_row(at: SitePlaces, certificate: Certificate, row: int) -> int:
     """Row (from 0) of the titles of the table of sites, where the bound begins at ``row``."""
-    return row + 11 + len(_charge_rows(at, certificate)) + len(certificate.rules)
+    return row + SUMMARY + 7 + len(_charge_rows(at, certificate)) + len(certificate.rules)
 
 
 def _no_prices(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Certificate | None) -> int:
@@ -103,9 +119,11 @@ EXPLANATION = (
     "plan, serving a customer costs its price or more, except from an open site that does it for less; what a site "
     "saves against the prices, on all customers together, is its gain. A site whose gain exceeds its cost lowers "
     "the sum by the difference. So the sum of all prices + the terms of all sites + the constants below is at most "
-    "the cost of EVERY plan that keeps the rules. How the prices were found does not matter: with any other "
-    "prices, or charges and prices of capacity of 0 or more, the sum is still a bound (a price above a cost of "
-    "unmet demand aside)."
+    "the cost of EVERY plan that keeps the rules. Rules that tie sites together (counts, groups, room for all "
+    "demand, a share to be served near) have a price or charge as well: each site or delivery that a rule concerns "
+    "is charged for it, and the constants hand it back once, so that large amounts on both sides cancel out. How "
+    "prices and charges were found does not matter: with any other prices, or charges of the same sign, the sum is "
+    "still a bound. (A price above a cost of unmet demand aside; a price of capacity above 0 needs a capacity.)"
 )
 
 
@@ -116,18 +134,20 @@ def _write_bound(at: SitePlaces, ledger: Ledger, sheet: ResultSheet, row: int, c
     sheet.put(row, 0, "No plan can cost less than", style.SECTION)
     paragraph(sheet, row + 1, 0, 5, EXPLANATION, style.TEXT)
     paragraph(sheet, row + 2, 0, 5, prices.words, style.NOTE)
-    first = row + 4
+    first = row + SUMMARY
     charges = _charge_rows(at, certificate)
     sites_row = _sites_row(at, certificate, row)
     money = style.number(style.money_format(case.currency))
-    cells = _Cells(at, first, sites_row, len(charges))
-    summary = [*charges, ("Sum of all customers' prices", Figure(float(certificate.price.sum()), prices.total)),
+    cells = _Cells(at, first, sites_row, tuple(charges))
+    summary = [*charges.values(),
+               ("Sum of all customers' prices", Figure(float(certificate.price.sum()), prices.total)),
                ("Sum of the sites' terms", Figure(float(certificate.term.sum()), cells.terms()))]
     summary += [(words, Figure(amount, cells.rule(words))) for words, amount in certificate.rules]
     start = first + len(charges) + 1
     end = start + 1 + len(certificate.rules)
-    bound, cost = certificate.bound, at.report.audit.total
-    summary.append(("No plan can cost less than (checked here)", Figure(bound, f"SUM(C{start}:C{end})")))
+    bound, cost = checkable(at, certificate), at.report.audit.total
+    total = f"MAX(0,SUM(C{start}:C{end}))" if _never_negative(at) else f"SUM(C{start}:C{end})"
+    summary.append(("No plan can cost less than (checked here)", Figure(bound, total)))
     summary.append(("Cost of this plan", Figure(cost, ledger.total)))
     summary.append(("So a better plan could save at most", Figure(cost - bound, f"C{end + 2}-C{end + 1}")))
     for place, (words, figure) in enumerate(summary):
@@ -142,13 +162,15 @@ def _write_bound(at: SitePlaces, ledger: Ledger, sheet: ResultSheet, row: int, c
     return sites_row + case.m + 1
 
 
-def _charge_rows(at: SitePlaces, certificate: Certificate) -> list[tuple[str, Figure]]:
-    rows = []
+def _charge_rows(at: SitePlaces, certificate: Certificate) -> dict[str, tuple[str, Figure]]:
+    """Prices and charges of rules, by what they are for; the share price first."""
+    rows, unit = {}, at.report.case.demand_unit
+    if certificate.near is not None:
+        rows["share"] = (f"Price per {unit} delivered near (share within distance)", Figure(certificate.share_price))
     if certificate.supply_price:
-        label = f"Price per {at.report.case.demand_unit} of capacity, all sites"
-        rows.append((label, Figure(certificate.supply_price)))
+        rows["supply"] = (f"Price per {unit} of capacity, all sites", Figure(certificate.supply_price))
     if certificate.count_charge:
-        rows.append(("Charge per open site (count of sites)", Figure(certificate.count_charge)))
+        rows["count"] = ("Charge per open site (count of sites)", Figure(certificate.count_charge))
     return rows
 
 
@@ -159,7 +181,7 @@ class _Cells:
     at: SitePlaces
     first: int
     sites_row: int
-    charges: int
+    charges: tuple[str, ...]
 
     def terms(self) -> str:
         """Sum over the column of terms."""
@@ -167,13 +189,17 @@ class _Cells:
 
     def charge(self, label: str) -> str:
         """Cell of a charge that stands in the summary."""
-        return f"$C${self.first + 1}" if label == "supply" or self.charges == 1 else f"$C${self.first + 2}"
+        return f"$C${self.first + 1 + self.charges.index(label)}"
 
     def rule(self, words: str) -> str:
         """Formula of a constant, where it follows from a charge and a cell."""
         at, origins = self.at, self.at.report.workbook.origins
-        if words.startswith("All demand"):
+        if words == SUPPLY_BACK:
             return f"{self.charge('supply')}*SUM({at.customers_at.span('demand')})"
+        if words == SHARE_BACK:
+            part = origins.setting("Share within distance (%)")
+            return "" if part is None else (
+                f"{self.charge('share')}*{part.formula}/100*SUM({at.customers_at.span('demand')})")
         name = "Most sites" if "most sites" in words else "Fewest sites" if "fewest sites" in words else ""
         ref = origins.setting(name) if name else None
         return "" if ref is None else f"-{self.charge('count')}*{ref.formula}"
@@ -185,7 +211,12 @@ def _rest_on_search(at: SitePlaces, checked: float) -> str:
     cost, proven = report.audit.total, report.solved.bound
     possible = style.money_words(max(0.0, cost - checked), currency, "up")
     words = "What you can check in this sheet: no plan costs less."
-    if cost - checked > 1e-9 * abs(cost):
+    if cost - checked > WEAK * abs(cost):
+        least = style.money_words(checked, currency, "down")
+        part = style.percent_words(checked / cost, "down") if cost > 0 else "a part"
+        words = ("For this workbook prices alone prove little: what you can check in this sheet is that no plan "
+                 f"costs less than {least}, {part} of the cost of this plan.")
+    elif cost - checked > 1e-9 * abs(cost):
         words = f"What you can check in this sheet: no plan is cheaper by more than {possible}."
     if proven is None or proven <= checked + 1e-9 * abs(cost):
         return f"{words} Nothing more is claimed than this sheet shows."
@@ -207,8 +238,8 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
     rows = [row + 2 + j for j in range(case.m)]
     live = [r != CLOSED for r in rule.tolist()]
     capacity = np.where(np.isfinite(case.capacity), case.capacity, 0.0)
-    priced = np.where(certificate.volume_price > 0, capacity, 0.0)
-    balance = certificate.fixed + certificate.charge - priced * certificate.volume_price - certificate.gain
+    volume = np.where(live, np.where(certificate.volume_price < 0, case.least_volume, capacity), 0.0)
+    balance = certificate.fixed + certificate.charge - volume * certificate.volume_price - certificate.gain
     balance = np.where(np.array(live), balance, 0.0)
     charge = [_charge_formula(at, certificate, cells, j) if live[j] else "" for j in range(case.m)]
     columns = [
@@ -217,11 +248,11 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
         Column("fixed", f"Fixed and opening cost, less closing cost saved ({at.money_unit})",
                certificate.fixed.tolist(), money, 22, [_fixed_formula(at, j) for j in range(case.m)]),
         Column("charge", f"Charges of rules ({at.money_unit})", certificate.charge.tolist(), money, 16, charge),
-        Column("price", f"Price per {case.demand_unit} of its capacity ({case.currency})",
-               certificate.volume_price.tolist(), per_unit, 13),
-        Column("capacity", f"Capacity priced ({case.demand_unit}{at.per})", priced.tolist(),
+        Column("price", f"Price per {case.demand_unit} of its capacity; below 0: of its least volume "
+                        f"({case.currency})", certificate.volume_price.tolist(), per_unit, 18),
+        Column("volume", f"Capacity, or least volume ({case.demand_unit}{at.per})", volume.tolist(),
                style.number(at.demand_format), 12,
-               [at.sites_at.cell("capacity", j) if priced[j] else "" for j in range(case.m)]),
+               [_volume_formula(at, j, r) if on else "" for j, (r, on) in enumerate(zip(rows, live, strict=True))]),
         Column("gain", f"Gain: what it can save on all customers ({at.money_unit})", certificate.gain.tolist(),
                money, 18, [prices.gains[j] if live[j] else "" for j in range(case.m)]),
         Column("balance", f"Cost less gain ({at.money_unit})", balance.tolist(), money, 16,
@@ -231,6 +262,14 @@ def _write_sites(at: SitePlaces, sheet: ResultSheet, row: int, certificate: Cert
                [f'IF(B{r}="open",H{r},MIN(0,H{r}))' if on else "" for r, on in zip(rows, live, strict=True)]),
     ]
     write_table(sheet, row, columns)
+
+
+def _volume_formula(at: SitePlaces, j: int, row: int) -> str:
+    """Capacity of a site, or its least volume where the price of its volume is below 0; "" where it has neither."""
+    case, where = at.report.case, at.sites_at
+    capacity = where.cell("capacity", j) if np.isfinite(case.capacity[j]) else ""
+    least = where.cell("least", j) if case.least_volume[j] > 0 else ""
+    return f"IF(E{row}<0,{least or 0},{capacity or 0})" if capacity or least else ""
 
 
 def _fixed_formula(at: SitePlaces, j: int) -> str:
