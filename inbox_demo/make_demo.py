@@ -54,8 +54,13 @@ def write(name: str, sheets: dict[str, Rows]) -> None:
                 if value is not None:
                     plain = isinstance(value, str) or abs(float(str(value))) < 1000
                     sheet.write(r, column, value, None if plain else number)
-        sheet.set_column(0, 0, 26 if sheet_name == "Settings" else 14)
-        sheet.set_column(1, max(1, len(rows[0]) - 1), 22 if sheet_name == "Settings" else 12)
+        for column in range(len(rows[0])):
+            texts = [len(str(row[column])) for row in rows[1:] if column < len(row) and row[column] is not None]
+            longest_word = max(len(word) for word in str(rows[0][column]).split())
+            sheet.set_column(column, column, 1.1 * max([*texts, longest_word, 6]) + 2)
+        sheet.set_row(2, 30)
+        sheet.set_landscape()
+        sheet.fit_to_pages(1, 0)
         sheet.freeze_panes(3, 1)
     book.close()
 
