@@ -291,6 +291,8 @@ def test_texts_on_the_page_are_sentences():
     page = render(told)
     assert "The file is empty (0 bytes). Copy the file again.</div>" in page
     assert "proven best, total cost 1,234.50<" in page
+    told["returned"][1]["first_fault"] = fault | {"found": "word " * 100, "remedy": "Did you mean EUR?"}
+    assert f"Word {'word ' * 42}word … Did you mean EUR?</div>" in render(told)
     told["returned"][0]["verdict"] = "best found"
     assert "at most 0.001 % above the best possible" in render(told)
 

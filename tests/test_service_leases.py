@@ -1,5 +1,6 @@
 """Whether the holder of a lease still lives."""
 
+import errno
 import json
 import os
 import subprocess
@@ -9,7 +10,7 @@ from pathlib import Path
 import pytest
 
 from ledgersolve.service.disk import Disk
-from ledgersolve.service.holder import describe, is_gone
+from ledgersolve.service.holder import describe, is_gone, is_of_dead_process, process_words
 from ledgersolve.service.layout import Layout, prepare
 from ledgersolve.service.leases import LeaseWatch
 from ledgersolve.service.protocol import Protocol
@@ -98,6 +99,25 @@ def test_only_what_can_be_known_is_called_gone():
     assert not is_gone({"host": "x", "pid": 999_999_999})
     if "place" in here:
         assert is_gone(here | {"started": "1"})
+
+
+def test_a_system_that_does_not_tell_proves_nobody_dead(monkeypatch):
+    """No file descriptor left, or a hidden process: neither lease nor private folder of a living one is touched."""
+    here, mine = describe(), process_words()
+    if "place" not in here:
+        pytest.skip("this system does not tell of processes")
+    gone = f"999999999-{mine.partition('-')[2]}"
+    assert is_of_dead_process(gone) and not is_of_dead_process(mine)
+    real = Path.read_text
+
+    def failing(self, *args, **kwargs):
+        if self.name == "stat":
+            raise OSError(errno.EMFILE, "Too many open files")
+        return real(self, *args, **kwargs)
+
+    monkeypatch.setattr(Path, "read_text", failing)
+    assert not is_of_dead_process(gone) and not is_of_dead_process(mine) and not is_gone(here)
+    assert not is_gone(describe())
 
 
 def test_a_lease_that_cannot_be_read_is_waited_for(scene):

@@ -246,8 +246,8 @@ def test_what_was_taken_is_shown_until_it_is_back(tmp_path, quick):
     watcher.leave()
     left = {one["name"]: one["why"] for one in status(tmp_path)["waiting"]}
     assert left == {
-        "plan.xlsx": "taken and given back, starts again: waits until the service is started again",
-        "next.xlsx": "waits until the service is started again",
+        "plan.xlsx": "taken and given back, starts again: waits for the service to start",
+        "next.xlsx": "waits for the service to start",
     }
     assert path.exists() and status(tmp_path)["waiting_count"] == 2
 
@@ -371,8 +371,10 @@ def test_what_cannot_be_taken_does_not_keep_once_from_ending(tmp_path, quick):
     """A link in Inbox is told and left; the code says that something is left."""
     prepare(tmp_path, Disk())
     (tmp_path / "Inbox" / "link.xlsx").symlink_to("/etc/hostname")
+    (tmp_path / "Inbox" / "loop.xlsx").symlink_to(tmp_path / "Inbox" / "loop.xlsx")
     assert serve(tmp_path, once=True, settings=quick_settings()) == 1
-    assert names(tmp_path / "Inbox") == ["link.xlsx"]
+    assert names(tmp_path / "Inbox") == ["link.xlsx", "loop.xlsx"]
+    assert [alert["name"] for alert in status(tmp_path)["alerts"]] == ["link.xlsx", "loop.xlsx"]
 
 
 def test_a_damaged_answer_alerts_and_stops_nobody_else(tmp_path, quick):

@@ -39,6 +39,7 @@ _REFRESH_SECONDS = 10
 _MOST_WAITING = 25
 _MOST_TO_FIX = 6
 _MOST_SOLVED = 15
+_LONGEST_SENTENCE = 220
 _PROVEN = "proven best"
 
 
@@ -57,7 +58,7 @@ def render(state: dict[str, Any]) -> str:
         _section("Running now", [_running(one) for one in state["running"]]),
         _section("Waiting", waits, int(state["waiting_count"])),
         "</div><div>",
-        _section("Came back to be fixed", [_fix(one) for one in fixes[:_MOST_TO_FIX]], len(fixes)),
+        _section("Needs fixing", [_fix(one) for one in fixes[:_MOST_TO_FIX]], len(fixes)),
         _section("Came back solved", [_solved(one) for one in solved[:_MOST_SOLVED]], len(solved)),
         "</div></div>",
     ]
@@ -164,9 +165,12 @@ def _returned(one: dict[str, Any], style: str, words: str) -> str:
 
 
 def _sentence(text: str) -> str:
-    """With a capital letter and one stop."""
+    """With a capital letter and one stop, cut where it is long."""
     bare = text.strip().rstrip(".")
-    return f"{bare[0].upper()}{bare[1:]}." if bare else ""
+    if len(bare) > _LONGEST_SENTENCE:
+        bare = bare[:_LONGEST_SENTENCE].rsplit(" ", 1)[0] + " …"
+    stop = "" if bare.endswith(("?", "!", "…")) else "."
+    return f"{bare[0].upper()}{bare[1:]}{stop}" if bare else ""
 
 
 def _up(figure: float, digits: int) -> float:

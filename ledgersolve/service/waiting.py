@@ -15,7 +15,7 @@ _HELD_BACK = {
     "quiet hours": "held back by the quiet hours",
     "held": "held back, see above",
     "suspended": "held back: the share is out of reach",
-    "stopped": "waits until the service is started again",
+    "stopped": "waits for the service to start",
 }
 
 
