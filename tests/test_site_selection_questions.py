@@ -10,12 +10,13 @@ from ledgersolve.mip import Limits, Solved
 from ledgersolve.site_selection.alternatives import promising, runner_up, why_closed, why_open
 from ledgersolve.site_selection.asker import Asker
 from ledgersolve.site_selection.binding import today_against_plan, what_binds
-from ledgersolve.site_selection.case import CLOSED, OPEN, Case, plain_case
+from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Variant, plain_case
 from ledgersolve.site_selection.counts import how_many
 from ledgersolve.site_selection.firmness import changed, demand_off, how_firm
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.questions import QUESTIONS, answer_questions
 from ledgersolve.site_selection.solve import solve
+from ledgersolve.site_selection.variants_regret import variants_regret
 
 LIMITS = Limits(seconds=60)
 
@@ -136,9 +137,10 @@ def test_a_full_site_is_asked_about() -> None:
     """S1 is full at 10; one more tenth of capacity saves one unit's detour of 5."""
     case = plain_case([0, 0], [[1, 1], [6, 6]], [8, 8], capacity=np.array([10.0, 20.0]))
     asker = Asker(case, *planned(case), LIMITS.start())
-    rows = what_binds(asker).rows
-    assert [row[0] for row in rows] == ["S1 is full"]
-    assert rows[0][2] == pytest.approx(5)
+    one, tenth = what_binds(asker).rows
+    assert (one[0], one[1], tenth[0]) == ("S1 is full", "one unit more", "S1 is full")
+    assert one[2] == pytest.approx(5)
+    assert tenth[2] == pytest.approx(5)
 
 
 def planned(case: Case) -> tuple[Plan, float]:
@@ -156,6 +158,45 @@ def test_a_count_at_its_limit_is_asked_about() -> None:
     assert rows[0][2] == pytest.approx(35)
 
 
+@pytest.mark.parametrize("seed", range(6))
+def test_what_a_looser_rule_saves_is_what_every_set_says(seed) -> None:
+    """Counts, closed and open sites: the saving is the difference of the best sets under both rules."""
+    case = random_case(seed)
+    rule = np.array([CLOSED, OPEN, 0, 0, CLOSED])
+    case = replace(case, rule=rule, most_sites=2)
+
+    def best(most: int, closed: set[int], opened: set[int]) -> float:
+        return min(cost for chosen, cost in every_set(case).items()
+                   if len(chosen) <= most and not chosen & closed and opened <= chosen)
+
+    own = best(2, {0, 4}, {1})
+    truth = {"one more site": best(3, {0, 4}, {1}), "free": None}
+    asker, _, _ = asked(case)
+    assert asker.base_cost == pytest.approx(own)
+    free = {"2 sites set to closed": best(2, set(), {1}), "1 sites set to open": best(2, {0, 4}, set())}
+    for row in what_binds(asker).rows:
+        cost = free.get(row[0], truth.get(row[1]))
+        assert row[2:4] == (pytest.approx(own - cost, abs=1e-6), pytest.approx(own - cost, abs=1e-6))
+
+
+def test_regret_under_variants_is_that_of_every_set() -> None:
+    """Keeping the sites under each variant against the best set; a variant that closes one of them is told."""
+    case = random_case(3)
+    asker, best, sets = asked(case)
+    shut = case.sites[min(best)]
+    case = replace(case, variants=(Variant("dear", lane_cost_factor=2.0), Variant("shut", closed=(shut,)),
+                                   Variant("few", most_sites=1)))
+    asker = Asker(case, asker.base, asker.base_cost, LIMITS.start())
+    solved = [solve(case.under(variant), LIMITS) for variant in case.variants]
+    dear, closed, few = variants_regret(asker, solved).rows
+    twice = every_set(case.under(case.variants[0]))
+    assert dear[1] == pytest.approx(twice[best])
+    assert dear[3] == pytest.approx(twice[best] - min(twice.values()), abs=1e-6)
+    assert closed[4] == f"not with these sites: it closes {shut}"
+    assert closed[2] == pytest.approx(min(cost for chosen, cost in sets.items() if min(best) not in chosen))
+    assert (few[3] is None) == (len(best) > 1)
+
+
 def test_today_against_the_plan_counts_who_moves() -> None:
     """Today S1 serves both; the plan moves C2 with its 5 units to S2."""
     case = plain_case([5, 5], [[1, 41], [41, 1]], [4, 5], today=np.array([True, False]),
@@ -168,6 +209,9 @@ def test_today_against_the_plan_counts_who_moves() -> None:
     figures = {row[0]: row[1:3] for row in answer.rows}
     assert figures["Mean distance per unit"] == pytest.approx(((4 * 10 + 5 * 90) / 9, (4 * 10 + 5 * 20) / 9))
     assert figures["Longest distance"] == (90.0, 20.0)
+    assert figures["of which for sites"] == (5.0, 10.0)
+    assert figures["of which for service"] == (4 * 1 + 5 * 41, 4 * 1 + 5 * 1)
+    assert figures["Demand within 20 km"] == (pytest.approx(400 / 9), 100.0)
 
 
 def test_forced_and_closed_sites_are_not_asked_about() -> None:

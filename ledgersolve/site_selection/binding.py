@@ -6,10 +6,11 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from ledgersolve.findings import NOT_ANSWERED, Answered, Column
-from ledgersolve.site_selection.asker import Asker, codes, listed, money
-from ledgersolve.site_selection.case import Case, Floats, Ints
+from ledgersolve.site_selection.asker import Asker, codes, listed, money, site_part
+from ledgersolve.site_selection.case import CLOSED, FREE, OPEN, Case, Floats, Ints
 from ledgersolve.site_selection.extra_cost import MOST_NAMED, Extra, extra
 from ledgersolve.site_selection.plan import Plan
+from ledgersolve.workbook.figures import unit_words
 
 FULL = 0.999
 """A site counts as full from this share of its capacity."""
@@ -26,8 +27,11 @@ def today_against_plan(case: Case, plan: Plan, today: Plan, today_cost: float, c
     stays = np.flatnonzero(today.open & plan.open).tolist()
     moved, volume = _moves(case, plan, today)
     total = float(case.demand.sum())
+    sites = [site_part(case, one) for one in (today, plan)]
     rows: list[tuple[str | float | None, ...]] = [
         ("Cost", today_cost, cost, case.currency),
+        ("of which for sites", *sites, case.currency),
+        ("of which for service", today_cost - sites[0], cost - sites[1], case.currency),
         ("Open sites", float(today.open.sum()), float(plan.open.sum()), "sites"),
     ]
     for label, unit, of in _service_figures(case):
@@ -73,10 +77,8 @@ def _service_figures(case: Case) -> list[tuple[str, str, Callable[[Plan], float]
         ("Mean distance per unit", case.distance_unit, mean),
         ("Longest distance", case.distance_unit, longest),
     ]
-    if case.share_distance is not None:
-        near = case.share_distance
-
-        def within(plan: Plan) -> float:
+    for near in _steps_of_distance(case):
+        def within(plan: Plan, near: float = near) -> float:
             volume, far = volumes(plan)
             return 100 * float(volume[far <= near].sum() / case.demand.sum())
 
@@ -84,12 +86,27 @@ def _service_figures(case: Case) -> list[tuple[str, str, Callable[[Plan], float]
     return figures
 
 
+def _steps_of_distance(case: Case) -> list[float]:
+    """Distances within which demand is counted: the workbook's own, or else the like of 50, 100, 200."""
+    if case.share_distance is not None:
+        return [case.share_distance]
+    if case.distance is None or not np.isfinite(case.distance).any():
+        return []
+    nearest = np.where(np.isfinite(case.distance), case.distance, np.inf).min(axis=0)
+    middle = float(np.median(nearest[np.isfinite(nearest)], axis=0)) if np.isfinite(nearest).any() else 0.0
+    if not middle > 0:
+        return []
+    power = 10.0 ** np.floor(np.log10(middle))
+    first = next(step for step in (power, 2 * power, 5 * power, 10 * power) if step >= middle)
+    return [first, 2 * first, 4 * first]
+
+
 def what_binds(asker: Asker) -> Answered:
     """Full sites, counts and promises at their limit, and what a looser rule would save, re-solved."""
     case = asker.case
     asked = list(_looser(case, asker.base))
     asker.asks = len(asked)
-    told = [_saving(rule, loosened, extra(asker, asker.ask(changed, ("looser", rule)), within=False))
+    told = [_saving(rule, loosened, extra(asker, asker.ask(changed, ("looser", rule, loosened)), within=False))
             for rule, loosened, changed in asked]
     rows: tuple[Row, ...] = tuple((one.rule, one.loosened, one.least, one.most, one.words()) for one in told)
     columns = (Column("What is at its limit"), Column("Loosened to"), Column("Saves at least", "money"),
@@ -108,6 +125,11 @@ class _Saving:
     loosened: str
     least: float | None
     most: float | None
+
+    @property
+    def name(self) -> str:
+        """Rule and what it is loosened to."""
+        return f"{self.rule} ({self.loosened})"
 
     @property
     def exact(self) -> bool:
@@ -148,14 +170,14 @@ def _binding_words(case: Case, plan: Plan, told: list[_Saving]) -> str:
         one = f"{told[0].rule}, but that rule" if len(told) == 1 else "Each of these is at its limit, but any of them"
         sentences.append(f"{one} a little looser saves nothing.")
     elif exact:
-        sentences.append(f"Nothing is saved by this: {listed([one.rule for one in exact])}.")
+        sentences.append(f"Nothing is saved by this: {listed([one.name for one in exact])}.")
     ranges = [one for one in told if not one.exact and one.most is not None]
     if ranges:
         named = "; ".join(f"{one.rule}, {one.loosened}: "
                           f"{money(case, one.most or 0.0, 'up')} at most" for one in ranges[:MOST_NAMED])
         more = f"; and so for {len(ranges) - MOST_NAMED} more" if len(ranges) > MOST_NAMED else ""
         sentences.append(f"How much is saved is not known exactly: {named}{more}.")
-    missing = [one.rule for one in told if one.least is None and one.most is None]
+    missing = [one.name for one in told if one.least is None and one.most is None]
     if missing:
         sentences.append(f"{NOT_ANSWERED.capitalize()}: {listed(missing)}.")
     others = _full(case, plan).size - MOST_FULL
@@ -173,10 +195,13 @@ def _full(case: Case, plan: Plan) -> Ints:
 
 def _looser(case: Case, plan: Plan) -> Iterator[tuple[str, str, Case]]:
     for j in _full(case, plan)[:MOST_FULL]:
-        capacity = case.capacity.copy()
-        capacity[j] *= 1.1
-        yield (f"{case.sites[j]} is full", f"a tenth more capacity ({capacity[j]:,.0f} {case.demand_unit})",
-               replace(case, capacity=capacity, variants=()))
+        more, tenth = case.capacity.copy(), case.capacity.copy()
+        more[j] += 1.0
+        tenth[j] *= 1.1
+        yield (f"{case.sites[j]} is full", f"one {unit_words(1.0, case.demand_unit)} more", replace(
+            case, capacity=more, variants=()))
+        yield (f"{case.sites[j]} is full", f"a tenth more capacity: {tenth[j]:,.0f} {unit_words(float(tenth[j]), case.demand_unit)}",
+               replace(case, capacity=tenth, variants=()))
     count = int(plan.open.sum())
     if case.most_sites is not None and count >= case.most_sites:
         yield (f"{case.most_sites} sites at most", "one more site", replace(
@@ -195,5 +220,12 @@ def _looser(case: Case, plan: Plan) -> Iterator[tuple[str, str, Case]]:
     if bool(case.single_source.any()):
         yield ("one site for each customer", "customers may be split", replace(
             case, single_source=np.zeros(case.n, dtype=bool), variants=()))
+    for rule, word in ((CLOSED, "closed"), (OPEN, "open")):
+        if bool((case.rule == rule).any()):
+            freed = np.where(case.rule == rule, FREE, case.rule).astype(np.int64)
+            yield (f"{int((case.rule == rule).sum())} sites set to {word}", "free", replace(
+                case, rule=freed, variants=()))
+    if case.lane_most is not None and bool(np.isfinite(case.lane_most).any()):
+        yield ("the most that lanes carry", "no limit", replace(case, lane_most=None, variants=()))
     if bool((case.least_volume[plan.open] > 0).any()):
         yield ("least volumes", "none", replace(case, least_volume=np.zeros(case.m), variants=()))

@@ -6,7 +6,7 @@ to those that stayed open.
 """
 
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 
 from ledgersolve.findings import Answered
@@ -18,6 +18,7 @@ from ledgersolve.site_selection.case import Case
 from ledgersolve.site_selection.counts import how_many
 from ledgersolve.site_selection.firmness import demand_off, how_firm
 from ledgersolve.site_selection.plan import Plan
+from ledgersolve.site_selection.variants_regret import variants_regret
 
 
 @dataclass(frozen=True)
@@ -40,24 +41,32 @@ QUESTIONS = (
     Question("what binds", what_binds, 2, 1.0),
 )
 """In the order in which the answers are shown."""
+VARIANTS_PART = 0.1
+"""Part of the time for keeping the plan's sites under the variants, which are solved beside the questions."""
 
 
 def answer_questions(
-    case: Case, solved: Solved[Plan], limits: Limits, today: Solved[Plan] | None = None
+    case: Case, solved: Solved[Plan], limits: Limits, today: Solved[Plan] | None = None,
+    variants: Sequence[Solved[Plan]] = (),
 ) -> tuple[Answered, ...]:
-    """Answer the questions about a plan, each with the time it took."""
+    """Answer the questions about a plan, each with the time it took; ``variants`` as they were solved already."""
     if solved.plan is None or solved.cost is None:
         return ()
     whole = sum(stage.seconds for stage in solved.stages) if solved.verdict is Verdict.PROVEN_BEST else 0.0
     asker = Asker(case, solved.plan, solved.cost, limits.start(), solved.bound, solved.prices, whole)
+    first: tuple[Answered, ...] = ()
+    if variants:
+        began = time.monotonic()
+        with asker.part(VARIANTS_PART):
+            answer = variants_regret(asker, variants)
+        first = (replace(answer, seconds=time.monotonic() - began),)
     answers: dict[str, Answered] = {}
     by_turn = sorted(QUESTIONS, key=lambda question: question.turn)
     _ask(asker, by_turn, answers)
     if asker.clock.left() > LEAST_SECONDS:  # what is settled is not solved again
         _ask(asker, by_turn, answers)
-    first: tuple[Answered, ...] = ()
     if today is not None and today.plan is not None and today.cost is not None:
-        first = (today_against_plan(case, solved.plan, today.plan, today.cost, solved.cost),)
+        first = (today_against_plan(case, solved.plan, today.plan, today.cost, solved.cost), *first)
     return (*first, *(answers[question.name] for question in QUESTIONS))
 
 

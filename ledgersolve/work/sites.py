@@ -44,7 +44,8 @@ def work(reading: Reading, case: Case, budget: Budget) -> Worked:
     answers: tuple[Answered, ...] = ()
     if reading.run.questions:
         answers = answer_questions(
-            case, solved, questions_part(reading, budget), None if today is None else today.solved)
+            case, solved, questions_part(reading, budget), None if today is None else today.solved,
+            tuple(result.solved for result in variants))
     given = SiteReport(reading, case, solved, audited, NO_FACTS, today, variants, answers)
     return Worked(
         solved,
