@@ -165,7 +165,7 @@ def watch(
 
 @app.command()
 def status(
-    folder: Annotated[Path, typer.Argument(help="A served folder.")],
+    folder: Annotated[Path, typer.Argument(help="A served folder.", readable=False)],
     as_json: AsJson = False,
     health: Annotated[bool, typer.Option("--health", help="Print nothing, only end with the code.")] = False,
 ) -> None:

@@ -18,6 +18,8 @@ from ledgersolve.service.waiting import as_waiting
 NEVER_SERVED = "never served"
 NOT_READABLE = "not readable"
 NO_SIGN_OF_LIFE = "no sign of life"
+OUT_OF_REACH = "out of reach"
+_TELLS_NOTHING = (NEVER_SERVED, NOT_READABLE, OUT_OF_REACH)
 _TELLS_ITSELF = ("starting", "stopped", "suspended", "held")
 MOST_SHOWN = 200
 MOST_RETURNED = 50
@@ -116,7 +118,7 @@ def status(folder: Path) -> dict[str, Any]:
     layout = Layout(folder)
     try:
         if not folder.is_dir():
-            return _nothing("out of reach", f"{folder} is not there; is its share mounted?")
+            return _nothing(OUT_OF_REACH, f"{folder} is not there; is its share mounted?")
         layout.share_id.stat()
         return _judged(gather(layout, Disk()))
     except (FileNotFoundError, NotADirectoryError):
@@ -124,7 +126,7 @@ def status(folder: Path) -> dict[str, Any]:
     except PermissionError:
         return _public(folder)
     except OSError as error:
-        return _nothing("out of reach", f"the share is out of reach ({error})")
+        return _nothing(OUT_OF_REACH, f"the share is out of reach ({error})")
 
 
 def _public(folder: Path) -> dict[str, Any]:
@@ -228,6 +230,8 @@ def as_text(state: dict[str, Any]) -> str:
     """The state as lines for a terminal; times are this machine's."""
     why = state["why"] or state.get("trouble", "")
     lines = [f"Service: {state['state']}" + (f" ({why})" if why else "")]
+    if state["state"] in _TELLS_NOTHING:
+        return lines[0]
     lines.append(f"Last complete look at Inbox: {local_time(state['last_scan']) or 'never'}")
     if state.get("trouble") and state["trouble"] != why:
         lines.append(f"Trouble: {state['trouble']}")

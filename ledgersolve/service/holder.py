@@ -3,6 +3,7 @@
 import hashlib
 import os
 import socket
+from contextlib import suppress
 from pathlib import Path
 from typing import Any
 
@@ -13,8 +14,9 @@ def describe() -> dict[str, Any]:
     """Words on this process for its leases and its sign of life."""
     words: dict[str, Any] = {"host": socket.gethostname(), "pid": os.getpid()}
     place = _place()
-    if place is not None:
-        words |= {"place": place, "started": _started(os.getpid())}
+    with suppress(OSError):
+        if place is not None:
+            words |= {"started": _started(os.getpid()), "place": place}
     return words
 
 
@@ -26,7 +28,10 @@ def is_gone(words: dict[str, Any]) -> bool:
     place, pid = words.get("place"), words.get("pid")
     if place is None or place != _place() or not isinstance(pid, int):
         return False
-    return _started(pid) != words.get("started")
+    try:
+        return _started(pid) != words.get("started")
+    except OSError:
+        return False
 
 
 def process_words() -> str:
@@ -38,7 +43,10 @@ def is_of_dead_process(words: str) -> bool:
     """Whether such words name a process of this place that runs no more."""
     pid, _, rest = words.partition("-")
     ours = rest.partition("-")[0] == _place_digest()
-    return ours and pid.isdigit() and _place() is not None and _started(int(pid)) is None
+    try:
+        return ours and pid.isdigit() and _place() is not None and _started(int(pid)) is None
+    except OSError:
+        return False
 
 
 def _place_digest() -> str:
@@ -54,9 +62,12 @@ def _place() -> str | None:
 
 
 def _started(pid: int) -> str | None:
-    """When a process started, in clock ticks since the boot; None where there is no such process."""
+    """When a process started, in clock ticks since the boot; None where there is no such process.
+
+    Raises OSError where the system does not tell (no file descriptor is left, say): that is no proof of death.
+    """
     try:
         stat = Path(f"/proc/{pid}/stat").read_text("utf-8", "replace")
-    except OSError:
+    except (FileNotFoundError, ProcessLookupError):
         return None
     return stat.rpartition(")")[2].split()[19]
