@@ -25,7 +25,7 @@ def site_sheets(report: SiteReport, settled: Mapping[str, str]) -> list[ResultSh
     ledger = site_ledger(at)
     proof = site_proof(at, ledger)
     drawn = site_map(at)
-    decision = site_decision(at, ledger, proof.checks, load_picture(at) if drawn is None else drawn[1])
+    decision = site_decision(at, ledger, proof, load_picture(at) if drawn is None else drawn[1])
     record = run_record(at.name(names.RUN_RECORD), report.workbook, report.run,
                         outcome_of(report.solved, report.case.currency, at.per))
     sheets = [

@@ -24,6 +24,7 @@ from ledgersolve.report.decision import (
 from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.site_details import main_sites
 from ledgersolve.report.site_places import SitePlaces
+from ledgersolve.report.site_proof import WEAK, SiteProof
 from ledgersolve.report.tables import Figure
 from ledgersolve.site_selection.case import CLOSED, OPEN
 from ledgersolve.site_selection.plan import Plan
@@ -41,19 +42,19 @@ GLOSSARY = (
 )
 
 
-def site_decision(at: SitePlaces, ledger: Ledger, checks: ChecksAt, picture: Chart | None) -> ResultSheet:
+def site_decision(at: SitePlaces, ledger: Ledger, proof: SiteProof, picture: Chart | None) -> ResultSheet:
     """Write the page."""
     report, case = at.report, at.report.case
     name = at.name(names.DECISION)
     parts = [(part, Figure(_part(at, part), ledger.part(part))) for part in ledger.parts]
     page = Decision(
         kicker="Site selection", title=report.workbook.title, headline=_headline(at), second=_against_today(at),
-        tiles=_tiles(at, ledger, checks),
+        tiles=_tiles(at, ledger, proof.checks),
         changed=changed_since(ledger, at.name(names.RUN_RECORD), at.name(names.PROOF)),
         comparison=_comparison(at, ledger), compared=report.today is not None, parts=parts,
         total=Figure(report.audit.total, ledger.total),
         changes=_changes(at), changes_title="What changes" if at.has_today else "What each site does",
-        sure=_sure(at), binding=_binding(at), check=_check(at),
+        sure=_sure(at, proof.bound), binding=_binding(at), check=_check(at),
         asked=asked_ahead(report.answers), glossary=GLOSSARY,
         provenance=provenance(report.workbook, report.run), currency=case.currency, per=at.per,
     )
@@ -220,12 +221,16 @@ def _tasks(at: SitePlaces, most: int = 6) -> list[str]:
     return points
 
 
-def _sure(at: SitePlaces) -> list[str]:
-    report = at.report
+def _sure(at: SitePlaces, checkable: float | None) -> list[str]:
+    """How good the plan is; ``checkable`` is what the sheet Proof shows by itself that no plan can cost less than."""
+    report, cost = at.report, at.report.audit.total
     points = how_sure(report.solved, report.case.currency, report.workbook.run.accepted_gap)
-    if report.solved.prices is not None:
-        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, what "
-                      "no plan can undercut.")
+    if checkable is not None and cost - checkable <= WEAK * abs(cost):
+        points.append(f"You can check most of this yourself: {at.name(names.PROOF)} shows, by prices and sums, that "
+                      f"no plan costs less than {_money(at, checkable, 'down')}.")
+    elif checkable is not None:
+        points.append(f"What you can check yourself, in {at.name(names.PROOF)}: no plan costs less than "
+                      f"{_money(at, checkable, 'down')}. The rest of this certainty rests on the program's search.")
     points.append("The plan was recomputed by a second, separate part of the program: every rule holds, and the "
                   "costs agree.")
     return points
