@@ -89,6 +89,20 @@ def _allowed_calls() -> set[str]:
     return allowed
 
 
+def test_the_container_file_copies_all_that_the_package_is_built_from():
+    """What pyproject.toml names for the wheel is copied, nothing else is, and the start command is the program's."""
+    text = (FOLDER / "Containerfile").read_text("utf-8")
+    copied = {name for line in re.findall(r"^COPY (.*)", text, re.MULTILINE) for name in line.split()[:-1]}
+    project = tomllib.loads((ROOT / "pyproject.toml").read_text("utf-8"))
+    wheel = project["tool"]["hatch"]["build"]["targets"]["wheel"]
+    wanted = {"pyproject.toml", project["project"]["readme"], *project["project"]["license-files"],
+              *wheel["packages"], *wheel["force-include"]}
+    assert copied == wanted
+    assert all((ROOT / name).exists() for name in copied)
+    assert 'ENTRYPOINT ["ledgersolve"]\nCMD ["watch", "/served"]' in text
+    assert "--format docker" in text, "other formats leave the health check out"
+
+
 def test_the_pages_name_files_and_commands_that_exist():
     """The page for administrators speaks of the files beside it, and of settings that there are."""
     page = (FOLDER / "ADMINISTRATION.md").read_text("utf-8")
