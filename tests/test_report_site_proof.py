@@ -63,7 +63,8 @@ def share_book(path: Path, **how: object) -> Path:
              for j, (fixed, least, longitude) in enumerate(
                  ((900.0, None, 7.0), (150.0, 60.0, 9.0), (1000.0, None, 8.0)))]
     customers = [{"Customer": f"C{i}", "Demand": float(rng.integers(10, 30)),
-                  "Latitude": 50.0 + rng.uniform(-0.3, 0.3), "Longitude": 7.0 + rng.uniform(0, 1.2)} for i in range(10)]
+                  "Latitude": 50.0 + rng.uniform(-0.3, 0.3), "Longitude": 7.0 + rng.uniform(0, 1.2)}
+                 for i in range(10)]
     settings = {"Cost per unit and distance": 0.02, "Road factor": 1.2, "Share within distance (%)": 90,
                 "Distance for share": 60, "Demand unit": "crate", "Currency": "EUR"}
     return books.site_book(path, sites, customers, settings=settings | how)
@@ -109,6 +110,7 @@ def proofs(tmp_path_factory: pytest.TempPathFactory) -> dict[str, tuple[Path, ob
 
 
 @needs_office
+@pytest.mark.slow
 def test_formulas_of_the_proof_give_its_figures(proofs, tmp_path: Path) -> None:
     """LibreOffice calculates every figure of the proof again: share prices, least volumes, limits on lanes."""
     paths = [path for path, _ in proofs.values()]
@@ -158,6 +160,7 @@ def test_no_bound_is_below_nothing(tmp_path: Path) -> None:
 
 
 @needs_office
+@pytest.mark.slow
 def test_other_charges_still_give_a_bound(proofs, tmp_path: Path) -> None:
     """The share price doubled or gone, a price of volume changed: the sum stays below the cost of the best plan."""
     changed, cost = [], {}

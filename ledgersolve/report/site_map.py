@@ -1,5 +1,6 @@
 """The map-like picture: sites and customers by coordinates, deliveries as lines, on a sheet of its own figures."""
 
+import math
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -18,6 +19,11 @@ DRAWN_SITES = 30
 IN_USE = 9
 """Size from which a mark stands for a site in use, today or in the plan."""
 PRINTED_POINTS = 40
+SMALLEST_MAP = 0.02
+"""Degrees of latitude that the picture shows at least."""
+MARGIN = 0.06
+"""Room around the points, as a part of the picture."""
+MARKS_ACROSS, MARKS_UP = 7, 5
 CROWDED = 600
 """Customers from which marks and lines are drawn finer."""
 PLOT = (0.08, 0.10, 0.89, 0.66)
@@ -142,12 +148,13 @@ def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) ->
             point_labels=tuple(label for _, _, label in points.rows) if points.labelled else (),
         ))
         row = last + 1
-    horizontal, vertical = _limits(places)
+    scale = map_scale(places)
     title = "Sites, customers and deliveries"
     if at.sites.size > DRAWN_DELIVERIES:
         title += f" (largest {DRAWN_DELIVERIES:,})"
     return Chart("scatter", title, _in_sight(made), 0, 0, x_title="longitude (degrees)", y_title="latitude (degrees)",
-                 number_format="0", x_limits=horizontal, y_limits=vertical,
+                 number_format=scale.number_format, x_limits=scale.across, y_limits=scale.up,
+                 x_step=scale.step_across, step=scale.step_up,
                  plot=PLOT, description="Sites and customers by longitude and latitude; lines show who serves whom")
 
 
@@ -157,17 +164,46 @@ def _in_sight(series: list[Series]) -> tuple[Series, ...]:
     return (*again, *series)
 
 
-def _limits(places: Floats) -> tuple[tuple[float, float], tuple[float, float]]:
-    """Axis limits that show every point, with the same length for a mile in both directions."""
+@dataclass(frozen=True)
+class MapScale:
+    """Where the two axes begin and end, how far their marks stand apart, and how their degrees are written."""
+
+    across: tuple[float, float]
+    up: tuple[float, float]
+    step_across: float
+    step_up: float
+
+    @property
+    def number_format(self) -> str:
+        """As many decimals as the finer marks need, so that every mark stands where its figure says."""
+        decimals = max(_decimals(self.step_across), _decimals(self.step_up))
+        return "0" + ("." + "0" * decimals if decimals else "")
+
+
+def map_scale(places: Floats) -> MapScale:
+    """Axes that show every point (longitude, latitude), a mile as long sideways as upwards, marks on round degrees.
+
+    Each axis begins at a mark; it ends where the picture ends.
+    """
     known = places[np.isfinite(places).all(axis=1)]
     low, high = known.min(axis=0), known.max(axis=0)
-    middle = (low + high) / 2
-    squeeze = max(0.05, float(np.cos(np.radians(middle[1]))))
-    tall = max(float(high[1] - low[1]), float(high[0] - low[0]) * squeeze / PLOT_RATIO, 0.05) * 1.12
-    wide = tall * PLOT_RATIO / squeeze
-    def around(centre: float, size: float) -> tuple[float, float]:
-        return round(float(centre) - size / 2, 2), round(float(centre) + size / 2, 2)
-    return around(middle[0], wide), around(middle[1], tall)
+    squeeze = max(0.05, float(np.cos(np.radians((low[1] + high[1]) / 2))))
+    sideways = PLOT_RATIO / squeeze  # degrees of longitude across for a degree of latitude up
+    tall = max(float(high[1] - low[1]), float(high[0] - low[0]) / sideways, SMALLEST_MAP)
+    margin = MARGIN * tall
+    size = np.array([tall * sideways, tall]) + 2 * margin * np.array([sideways, 1.0])
+    first = (low + high) / 2 - size / 2
+    steps = [style.axis_step(float(size[0]), MARKS_ACROSS) or 1.0, style.axis_step(float(size[1]), MARKS_UP) or 1.0]
+    starts = [math.floor(round(float(start) / step, 9)) * step for start, step in zip(first, steps, strict=True)]
+    starts = [round(start, _decimals(step)) for start, step in zip(starts, steps, strict=True)]
+    reach = first + size
+    tall = max(float(reach[1]) - starts[1], (float(reach[0]) - starts[0]) / sideways)
+    return MapScale((starts[0], starts[0] + tall * sideways), (starts[1], starts[1] + tall), *steps)
+
+
+def _decimals(step: float) -> int:
+    """Decimals that a round step needs."""
+    return next(digits for digits in range(9) if abs(step * 10**digits - round(step * 10**digits)) < 1e-6)
 
 
 def load_picture(at: SitePlaces) -> Chart | None:

@@ -157,6 +157,8 @@ def _dress(drawn: Any, chart: Chart) -> None:
         up["min"] = 0
     if chart.step is not None:
         up["major_unit"] = chart.step
+    if chart.x_step is not None:
+        across["major_unit"] = chart.x_step
     if bar:
         across["reverse"] = True  # first category on top
         across, up = up, across  # the library names the axes of bars by where they are drawn

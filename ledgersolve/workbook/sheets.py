@@ -98,6 +98,7 @@ class Chart:
     legend: str = "bottom"
     from_zero: bool = False  # the value axis starts at 0
     step: float | None = None  # distance of the marks on the value axis
+    x_step: float | None = None  # the same across, in a scatter chart
     plot: tuple[float, float, float, float] | None = None  # left, top, width, height as parts of the chart
     description: str = ""
 
