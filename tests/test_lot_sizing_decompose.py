@@ -72,3 +72,17 @@ def test_joint_moves_tell_their_cost() -> None:
     ended, cost = search.descended(choice, Limits(10.0).start())
     assert (cost <= search.costs(choice) + 1e-9).all()
     assert search.costs(ended) == pytest.approx(cost)
+
+
+def test_the_record_names_what_the_bound_leaves_out() -> None:
+    """Whole quantities leave nothing out; thirds with a most lot and lost sales are named, and so are families."""
+    case = generated(Recipe(6, 6, 1, 0.8, families=3, overtime=1.0), 1)
+    whole = solve_decomposed(case, Limits(3.0, 0.2)).notes
+    assert any("every rule of the items exactly" in note for note in whole)
+    assert any("Families" in note for note in whole)
+    thirds = replace(
+        case, demand=case.demand * 4.0 / 3.0, most_lot=np.full(6, 3.0 * case.demand.max()), lost_cost=np.full(6, 1e3),
+        most_stock=np.full(6, 5.0 * case.demand.max()),
+    )
+    notes = solve_decomposed(thirds, Limits(3.0, 0.2)).notes
+    assert any("leaves out most lot, most stock, lost sales" in note for note in notes)

@@ -206,11 +206,9 @@ class _Members:
 
     def __init__(self, group: Ints, count: int) -> None:
         sizes = np.bincount(group[group >= 0], minlength=count)
-        self.total = group.size
         self.table = np.full((count, int(sizes.max(initial=0))), -1, dtype=np.int64)
         for g in range(count):
             self.table[g, : sizes[g]] = np.flatnonzero(group == g)
-        self.sizes = sizes
 
     def project(self, values: Floats, owed: Floats) -> Floats:
         """Nearest payments (members, T), 0 or more, that add up to ``owed`` (groups, T) in each group.

@@ -47,6 +47,7 @@ def solve_decomposed(case: Case, limits: Limits, start: Plan | None = None) -> S
     ``Solved.prices`` are those of the bound, for ``price_bound``.
     """
     run = _Run(case, limits.start())
+    run.tell()
     run.take(start)
     run.ascend()
     if run.impossible:
@@ -74,6 +75,21 @@ class _Run:
     def impossible(self) -> bool:
         """Whether some item has no schedule even alone."""
         return not math.isfinite(self.point.bound)
+
+    def tell(self) -> None:
+        """Note what the bound leaves out, and what the plan needs beyond schedules of single items."""
+        left_out = self.relaxation.programmes.relaxed()
+        self.notes.append(
+            "Decomposition: the programmes of single items carry every rule of the items exactly; capacity is priced."
+            if not left_out else
+            f"Decomposition: the bound leaves out {', '.join(left_out)} of some items (no common step, or "
+            "too many); the plan keeps these rules, by responses in coarser steps and by models."
+        )
+        if self.relaxation.coupled:
+            self.notes.append(
+                "Families and rented periods: shared out among the items in the bound; in the plan their periods are "
+                "chosen first and held while schedules are chosen, and opened again in windows and responses."
+            )
 
     def take(self, plan: Plan | None) -> bool:
         """Take a plan that is sound and better."""

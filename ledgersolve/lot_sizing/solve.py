@@ -75,7 +75,7 @@ class _Run:
     def _begun(self, group: Group) -> _Part:
         """Give a tied group with its first bound: each item alone, with all the time in the world."""
         programmes = ItemProgrammes(group.case)
-        self.notes.append(f"{_words(group)} tied by {_ties(group.case)}: {_left_out(programmes)}")
+        self.notes.append(f"{_words(group)} tied by {_ties(group.case)}.")
         return _Part(group, float(programmes.best().cost.sum()))
 
     def alone(self) -> bool:
@@ -210,14 +210,6 @@ def _ties(case: Case) -> str:
     """Name what ties the items of a group."""
     names = (*(f"resource {name}" for name in case.resources), *(f"family {name}" for name in case.families))
     return ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
-
-
-def _left_out(programmes: ItemProgrammes) -> str:
-    """Say which features the bound treats exactly."""
-    relaxed = programmes.relaxed()
-    if not relaxed:
-        return "the bound treats every feature of the items exactly."
-    return f"the bound leaves out {', '.join(relaxed)} of some items, the wrapper keeps them in the plan."
 
 
 def _named(stages: tuple[Stage, ...], group: Group) -> list[Stage]:

@@ -20,8 +20,9 @@ from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict, jud
 
 WHOLE_AT_ONCE = 60
 """Setups up to which the whole model needs no help."""
-SMALL, FIRST_SHARE_SMALL = 250, 0.2
-"""Setups up to which the decomposition gets a short share of the time, and that share."""
+SMALL, FIRST_SHARE_SMALL, SMALL_START_SHARE = 250, 0.1, 0.6
+"""Setups up to which the whole model has nearly all the time, the decomposition's share of it before, and the share
+of the rest in which the whole model has to find a plan where there is none yet."""
 WHOLE_AFTER, FIRST_SHARE = 400, 0.5
 """Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
 WHOLE_AT_LAST = 2000
@@ -48,20 +49,43 @@ def solve_tied(case: Case, limits: Limits, start: Plan | None = None) -> Solved[
     enough = first.gap is not None and first.gap <= limits.gap
     if first.verdict is Verdict.NO_PLAN_EXISTS or enough or clock.over():
         return first
+    if cells <= SMALL:
+        return _small(case, first, clock)
+    return _large(case, first, clock, cells)
+
+
+def _small(case: Case, first: Solved[Plan], clock: Clock) -> Solved[Plan]:
+    """The whole model in one run; the search for the least time missing only where half the time finds no plan."""
+    limits = clock.limits
+    seconds = clock.left() * (SMALL_START_SHARE if first.plan is None else 1.0)
+    first = _after(first, solve_whole(case, replace(limits, seconds=seconds), first.plan, first.bound))
+    if first.verdict is not Verdict.NONE_FOUND or clock.over():
+        return first
+    if case.resources:
+        first = _rescued(case, first, clock, 1.0)
+    return first if first.plan is None or clock.over() else _closed(case, first, clock)
+
+
+def _large(case: Case, first: Solved[Plan], clock: Clock, cells: int) -> Solved[Plan]:
+    """First of all a plan; then windows, and the whole model where its size allows."""
     if first.plan is None and case.resources:
         first = _rescued(case, first, clock, RESCUE_SHARE if cells <= WHOLE_AT_LAST else 1.0)
     fits = cells <= WHOLE_AFTER or (first.plan is None and cells <= WHOLE_AT_LAST)
     if first.verdict is Verdict.NO_PLAN_EXISTS or not fits or clock.over():
         return first
     if first.plan is None:
-        limits = replace(limits, seconds=START_SHARE * clock.left())
+        limits = replace(clock.limits, seconds=START_SHARE * clock.left())
         first = _after(first, solve_whole(case, limits, floor=first.bound))
         if first.verdict in (Verdict.NO_PLAN_EXISTS, Verdict.PROVEN_BEST) or clock.over():
             return first
     first = _improved(case, first, clock)
-    if cells > WHOLE_AFTER or clock.over():
-        return first
-    return _after(first, solve_whole(case, replace(limits, seconds=clock.left()), first.plan, first.bound))
+    return first if cells > WHOLE_AFTER or clock.over() else _closed(case, first, clock)
+
+
+def _closed(case: Case, found: Solved[Plan], clock: Clock) -> Solved[Plan]:
+    """The whole model from the plan found, in all the time that is left."""
+    limits = replace(clock.limits, seconds=max(clock.left(), 1e-3))
+    return _after(found, solve_whole(case, limits, found.plan, found.bound))
 
 
 def _improved(case: Case, found: Solved[Plan], clock: Clock) -> Solved[Plan]:
@@ -101,7 +125,8 @@ def _unheard(_: Progress) -> None:
 def _after(first: Solved[Plan], second: Solved[Plan]) -> Solved[Plan]:
     """Give the second run's answer with the stages of both, and the prices of the first."""
     prices = first.prices if second.prices is None else second.prices
-    return replace(second, stages=first.stages + second.stages, notes=first.notes + second.notes, prices=prices)
+    notes = tuple(dict.fromkeys(first.notes + second.notes))
+    return replace(second, stages=first.stages + second.stages, notes=notes, prices=prices)
 
 
 def _impossible(clock: Clock, reason: str) -> Solved[Plan]:
