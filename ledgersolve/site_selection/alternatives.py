@@ -133,10 +133,10 @@ def runner_up(asker: Asker) -> Answered:
     flips in one direction. What the prices of the bound, or a flip already solved, put above a plan found needs no
     asking.
     """
-    free = sorted((j for j in range(asker.case.m) if asker.may_flip(j)), key=lambda j: _low(asker, j))
-    asker.asks = 2 * len(free)
-    first = _search(asker, [(j,) for j in free], 1)
-    second = _search(asker, _pairs(asker, free), 2)
+    lows = _lows(asker)
+    asker.asks = 2 * len(lows)
+    first = _search(asker, sorted((low, (j,)) for j, low in lows.items()), 1)
+    second = _search(asker, _pairs(asker, _lows(asker)), 2)
     rows = (_row(asker, "one site or more", *first), _row(asker, "two sites or more", *second))
     columns = (Column("Differs in"), Column("Costs more, by at least", "money"), Column("and at most", "money"),
                Column("Opens"), Column("Closes"), Column("How sure"))
@@ -146,30 +146,32 @@ def runner_up(asker: Asker) -> Answered:
     return Answered("What is the runner-up?", words, columns, rows, headline=first[1].answered)
 
 
-def _low(asker: Asker, *flips: int) -> float:
-    """What every plan with these sites flipped costs at least, by what is known."""
-    told = [asker.known_flip(j) for j in flips]
-    if any(one.impossible for one in told):
-        return np.inf
-    return max(-np.inf if one.low is None else one.low for one in told)
+Changes = list[tuple[float, tuple[int, ...]]]
+"""Sites to flip together, with what every plan in which they are flipped costs at least; the least first."""
 
 
-def _pairs(asker: Asker, free: list[int]) -> list[tuple[int, ...]]:
-    """Pairs of sites that are both closed, or both opened, the ones that may be cheapest first."""
-    pairs: list[tuple[float, tuple[int, ...]]] = []
-    lows = {j: _low(asker, j) for j in free}
+def _lows(asker: Asker) -> dict[int, float]:
+    """What every plan with a site flipped costs at least, for each site that may be."""
+    told = {j: asker.known_flip(j) for j in range(asker.case.m) if asker.may_flip(j)}
+    return {j: np.inf if one.impossible else -np.inf if one.low is None else one.low for j, one in told.items()}
+
+
+def _pairs(asker: Asker, lows: dict[int, float]) -> Changes:
+    """Pairs of sites that are both closed, or both opened."""
+    pairs: Changes = []
     for way in (True, False):
-        there = sorted((j for j in free if bool(asker.base.open[j]) is way), key=lambda j: lows[j])[:MOST_PAIRED]
-        pairs += [(max(lows[j], lows[k]), (j, k)) for n, k in enumerate(there) for j in there[:n]]
-    return [pair for _, pair in sorted(pairs)]
+        there = sorted((j for j in lows if bool(asker.base.open[j]) is way), key=lambda j: lows[j])
+        pairs += [(lows[k], (j, k)) for n, k in enumerate(there[:MOST_PAIRED]) for j in there[:n]]
+        if len(there) > MOST_PAIRED:  # stands for all pairs with a site beyond; it is never asked about
+            pairs.append((lows[there[MOST_PAIRED]], ()))
+    return sorted(pairs)
 
 
-def _search(asker: Asker, changes: list[tuple[int, ...]], least: int) -> tuple[Found, Extra]:
+def _search(asker: Asker, changes: Changes, least: int) -> tuple[Found, Extra]:
     """Give the cheapest plan that differs in so many sites, asking about changes in the order of their lows."""
-    lows = [_low(asker, *change) for change in changes]
-    for number, change in enumerate(changes):
-        best = _cheapest(asker, least)
-        if lows[number] >= best[0] or asker.clock.over():
+    lows = [low for low, _ in changes]
+    for number, (_, change) in enumerate(changes):
+        if not change or lows[number] >= _cheapest(asker, least)[0] or asker.clock.over():
             break
         changed = asker.case
         for j in change:
@@ -177,23 +179,13 @@ def _search(asker: Asker, changes: list[tuple[int, ...]], least: int) -> tuple[F
         told = asker.ask_within(changed, ("flip", *change) if len(change) == 1 else ("flips", *sorted(change)))
         lows[number] = np.inf if told.impossible else max(lows[number], -np.inf if told.low is None else told.low)
     cost, plan = _cheapest(asker, least)
-    beyond = _beyond(asker, changes)
-    low = min([*lows, beyond], default=np.inf)
+    low = min(lows, default=np.inf)
     if plan is None:
         told = Found(None, None, None, impossible=True) if low == np.inf else Found(
             low if np.isfinite(low) else None, None, None)
     else:
         told = interval(min(low, cost) if low > -np.inf else None, cost, plan)
     return told, extra(asker, told)
-
-
-def _beyond(asker: Asker, changes: list[tuple[int, ...]]) -> float:
-    """Lows of pairs that were left out of the list because there are too many of them."""
-    free = [j for j in range(asker.case.m) if asker.may_flip(j)]
-    if not changes or len(changes[0]) == 1 or len(free) <= MOST_PAIRED:
-        return np.inf
-    listed = {j for change in changes for j in change}
-    return min((_low(asker, j) for j in free if j not in listed), default=np.inf)
 
 
 def _cheapest(asker: Asker, least: int) -> tuple[float, Plan | None]:

@@ -200,8 +200,9 @@ def _looser(case: Case, plan: Plan) -> Iterator[tuple[str, str, Case]]:
         tenth[j] *= 1.1
         yield (f"{case.sites[j]} is full", f"one {unit_words(1.0, case.demand_unit)} more", replace(
             case, capacity=more, variants=()))
-        yield (f"{case.sites[j]} is full", f"a tenth more capacity: {tenth[j]:,.0f} {unit_words(float(tenth[j]), case.demand_unit)}",
-               replace(case, capacity=tenth, variants=()))
+        units = unit_words(float(tenth[j]), case.demand_unit)
+        yield (f"{case.sites[j]} is full", f"a tenth more capacity: {tenth[j]:,.0f} {units}", replace(
+            case, capacity=tenth, variants=()))
     count = int(plan.open.sum())
     if case.most_sites is not None and count >= case.most_sites:
         yield (f"{case.most_sites} sites at most", "one more site", replace(
