@@ -35,7 +35,7 @@ def test_the_environment_may_name_the_file(tmp_path, monkeypatch):
     ("time_zone = 'Mars/Base'", "no time zone is called Mars/Base; write one like Europe/Paris"),
     ("log_level = 'LOUD'", "cannot be 'LOUD': it must be one of 'DEBUG', 'INFO', 'WARNING' or 'ERROR'."),
     ("keep_days = -1", "The setting keep_days in {} cannot be -1: it must be at least 0."),
-    ("memory_mb = 50", "50 MB do not even start the program; write at least 1024"),
+    ("memory_mb = 50", "50 MB are too few for any workbook; write at least 512"),
     ("workers =", "The settings file {} cannot be read"),
     ('log_file = "C:\\Users\\log"', "a Windows path in single ones"),
 ])  # fmt: skip

@@ -11,8 +11,11 @@ import pytest
 
 import ledgersolve.service
 from ledgersolve.service.config import ServiceSettings
+from ledgersolve.service.names import MOST_BYTES
+from ledgersolve.service.states import new_job
+from ledgersolve.service.watch import serve
 from tests.faults.service_inputs import good
-from tests.service_share import ROOT, names
+from tests.service_share import HANDLERS, ROOT, drop, names, quick_settings
 
 FOLDER = Path(ledgersolve.service.__file__).parent / "packaging"
 UNIT = FOLDER / "ledgersolve.service"
@@ -38,6 +41,9 @@ def test_the_unit_starts_the_command_and_hardens_it():
         assert re.match(r"(#|\[\w+\]$|[A-Z]\w+=)", line), line
     for setting in ("Restart=always", "NoNewPrivileges=yes", "ProtectSystem=strict", "MemoryMax="):
         assert setting in text
+    assert "RestartPreventExitStatus=2" in text, "a wrong setting would be tried again every five seconds for ever"
+    logs = re.search(r"^LogsDirectory=(\w+)$", text, re.MULTILINE)[1]
+    assert f'log_file = "/var/log/{logs}/' in (FOLDER / "service.toml").read_text("utf-8")
     assert "ledgersolve watch /srv/planning" in text
 
 
@@ -111,3 +117,31 @@ def test_the_pages_name_files_and_commands_that_exist():
         assert (FOLDER / name).is_file()
     for setting in re.findall(r"`(\w+_\w+)`", page):
         assert setting in ServiceSettings.model_fields, setting
+    for codes in ("| 0 |", "| 1 |", "| 2 |", "| 3 |"):
+        assert codes in page
+
+
+def test_the_folders_of_the_page_serve_a_group_and_nobody_else(tmp_path, monkeypatch):
+    """The modes that the page gives: the service takes and returns, results are the group's alone."""
+    page = (FOLDER / "ADMINISTRATION.md").read_text("utf-8")
+    for mode, name in re.findall(r"install -d -o ledgersolve -g planning -m (\d+) /srv/(\S+)", page):
+        (tmp_path / name).mkdir()
+        (tmp_path / name).chmod(int(mode, 8))
+    served = tmp_path / "planning"
+    assert names(served) == ["Inbox", "Returned"]
+    monkeypatch.setenv("PYTHONPATH", str(HANDLERS))
+    drop(served, "plan.xlsx")
+    assert serve(served, once=True, settings=quick_settings(), handler="handlers:solve") == 0
+    (returned,) = (served / "Returned").iterdir()
+    assert returned.stat().st_mode & 0o7777 == 0o660
+    assert (served / "status.json").stat().st_mode & 0o7777 == 0o640
+
+
+def test_paths_on_windows_fit():
+    """A folder of the length that the page allows leaves room for returned names, drops and the jobs' folders."""
+    page = " ".join((FOLDER / "WINDOWS.md").read_text("utf-8").split())
+    sentence = r"to (\d+) characters and names of drops to (\d+): the service adds up to (\d+) and (\d+)"
+    folder, longest, returned, job = map(int, re.search(sentence, page).groups())
+    assert returned == len("\\Returned\\") + MOST_BYTES
+    assert job == len(f"\\.ledgersolve\\jobs\\{new_job()}\\in\\")
+    assert max(folder + returned, folder + job + longest) <= 259

@@ -25,8 +25,8 @@ from pydantic_settings import (
 from ledgersolve.service.machine import processors
 
 logger = logging.getLogger(__name__)
-LEAST_MEMORY_MB = 1024
-"""Address space below which the program itself does not start, whatever the workbook."""
+LEAST_MEMORY_MB = 512
+"""Address space below which also small workbooks fail: they take up to 350 MB of it."""
 _PREFIX = "LEDGERSOLVE_"
 _FILE_VARIABLE = f"{_PREFIX}SETTINGS"
 _DAYS = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
@@ -93,7 +93,7 @@ class ServiceSettings(BaseSettings):
     grace_seconds: float = Field(30.0, gt=0)
     """Time after the limit for writing the results, then the job is killed."""
     memory_mb: int = Field(0, ge=0)
-    """Most memory of one job, at least 1024; 0 means a fair share of the machine (or of the cgroup's limit)."""
+    """Most memory of one job, at least 512; 0 means a fair share of the machine (or of the cgroup's limit)."""
     file_mb: int = Field(100, gt=0)
     """Largest workbook that is taken."""
     nice: int = Field(10, ge=0, le=19)
@@ -129,7 +129,7 @@ class ServiceSettings(BaseSettings):
     def _enough(cls, megabytes: int) -> int:
         if 0 < megabytes < LEAST_MEMORY_MB:
             raise ValueError(
-                f"{megabytes} MB do not even start the program; write at least {LEAST_MEMORY_MB}, "
+                f"{megabytes} MB are too few for any workbook; write at least {LEAST_MEMORY_MB}, "
                 "or 0 for a fair share of the machine"
             )
         return megabytes
