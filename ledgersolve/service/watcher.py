@@ -74,6 +74,7 @@ class Watcher:
     _next_beat: float = -math.inf
     _seen_all: bool = False
     _told: float = -math.inf
+    _seen: tuple[int, int, int] = (0, 0, 0)
     _told_gist: tuple[Any, ...] = ()
     _news: bool = False
     _alerted: set[tuple[str, ...]] = field(default_factory=set)
@@ -158,6 +159,8 @@ class Watcher:
         ended = self.clock()
         self.scans += 1
         self._seen_all = True
+        ready = sum(drop.ready for drop in self.drops)
+        self._seen = (len(self.drops), ready, len(self._alerted))
         self._scan_took = ended - started
         self._last_scan = (now_words(), ended, time.time())
         soonest = min((drop.look_in for drop in self.drops if not drop.ready), default=math.inf)
@@ -281,10 +284,8 @@ class Watcher:
             self.write_board()
 
     def _gist(self) -> tuple[Any, ...]:
-        """What must be on the page soon once it changes; cheap also with ten thousand drops."""
-        ready = sum(drop.ready for drop in self.drops)
-        alerts = sum(drop.alert for drop in self.drops) + len(self.desk.alerts)
-        return self.state, len(self.drops), ready, alerts, len(self.held), len(self.desk.trays)
+        """What must be on the page soon once it changes; drops are counted once a scan, as there may be many."""
+        return self.state, self._seen, len(self.desk.alerts), len(self.held), len(self.desk.trays)
 
     def write_board(self) -> None:
         """Write page and sign of life now; that it fails stops nothing."""
