@@ -1,7 +1,8 @@
-"""Many drops at once, and a small one behind long ones; prints figures and what went wrong.
+"""Many drops at once, a small one behind long ones, and nothing at all; prints figures and what went wrong.
 
 Run as a program of its own: ``python -m tests.faults.service_load COUNT`` (real child processes with a
-stand-in that answers at once) or ``... service_load behind`` (fifty long ones, then a small one).
+stand-in that answers at once), ``... service_load behind`` (fifty long ones, then a small one) or ``...
+service_load idle`` (what an empty folder costs in a minute).
 """
 
 import json
@@ -9,10 +10,13 @@ import logging
 import os
 import resource
 import shutil
+import subprocess
 import sys
 import tempfile
 import time
 from pathlib import Path
+
+import psutil
 
 from ledgersolve.service.config import ServiceSettings
 from ledgersolve.service.verify import verify
@@ -26,7 +30,9 @@ def main() -> None:
     logging.disable(logging.CRITICAL)
     folder = Path(tempfile.mkdtemp(dir=memory_root()))
     try:
-        print(json.dumps(_behind(folder) if sys.argv[1] == "behind" else _many(folder, int(sys.argv[1]))))
+        ways = {"behind": _behind, "idle": _idle}
+        way = ways.get(sys.argv[1])
+        print(json.dumps(_many(folder, int(sys.argv[1])) if way is None else way(folder)))
     finally:
         shutil.rmtree(folder)
 
@@ -89,6 +95,30 @@ def _behind(folder: Path) -> dict:
     watcher.leave()
     pool.close()
     return {"own seconds": 1.0, "back after": round(back - dropped, 2), "running meanwhile": running}
+
+
+def _idle(folder: Path) -> dict:
+    """The command itself on a folder with a few jobs done, a minute long, once it has come to rest."""
+    for number in range(20):
+        drop(folder, f"plan {number}.xlsx", content=str(number))
+    watcher, pool = open_shop(folder, None, ServiceSettings(workers=2), "handlers:solve")
+    while not watcher.is_empty():
+        watcher.step()
+        watcher.wait()
+    watcher.leave()
+    pool.close()
+    command = [sys.executable, "-m", "ledgersolve", "watch", str(folder)]
+    service = subprocess.Popen(command, cwd=ROOT, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL)
+    process = psutil.Process(service.pid)
+    time.sleep(15.0)
+    before, began = process.cpu_times(), time.monotonic()
+    time.sleep(60.0)
+    after, took = process.cpu_times(), time.monotonic() - began
+    memory = process.memory_info().rss / (1 << 20)
+    service.terminate()
+    service.wait(20)
+    spent = after.user + after.system - before.user - before.system
+    return {"cpu percent of a core": round(100.0 * spent / took, 2), "memory MB": round(memory)}
 
 
 if __name__ == "__main__":
