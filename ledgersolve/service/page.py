@@ -37,9 +37,9 @@ li { border-bottom: 1px solid var(--line); padding: .55rem 0; }
 """
 _REFRESH_SECONDS = 10
 _MOST_WAITING = 25
-_MOST_TO_FIX = 6
+_MOST_TO_FIX = 4
 _MOST_SOLVED = 15
-_LONGEST_SENTENCE = 220
+_LONGEST_SENTENCE = 160
 _PROVEN = "proven best"
 
 
@@ -90,7 +90,7 @@ def _pulse(state: dict[str, Any]) -> str:
         f'<div class="pulse{"" if at_work else " held"}">'
         f"<p><b>{_text(str(state['state']).capitalize())}</b> at the last complete look at Inbox: "
         f"<b>{_text(_time(state['last_scan']))}</b></p>{why}"
-        f'<p class="soft">If that is more than {minutes} {unit} ago, the service is not running: tell the '
+        f'<p class="soft">If that look is more than {minutes} {unit} ago, the service is not running: tell the '
         "administrator. Nothing that was dropped is lost. This page loads itself anew every "
         f"{_REFRESH_SECONDS} seconds.</p></div>"
     )

@@ -122,8 +122,8 @@ def open_shop(
     if not folder.exists() and not settings.share_id and folder.parent.is_dir():
         folder.mkdir(mode=0o775)
     private = None if cluster else settings.private_folder or Path(tempfile.gettempdir())
-    if private is not None and (trouble := private_trouble(private)):
-        raise UnfitFolderError(trouble)
+    if private is not None and not disk.may_change(private):  # a full disk is waited for, as later on
+        raise UnfitFolderError(private_trouble(private) or f"Jobs cannot work in {private}.")
     mark = prepare(folder, disk, settings.share_id)
     layout = Layout(folder)
     self_test(layout, disk)
