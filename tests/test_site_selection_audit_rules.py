@@ -96,9 +96,9 @@ def test_a_plan_that_uses_up_every_rule_passes() -> None:
         ("Longest distance", "all 4 deliveries under a promise"),
         ("Share within distance", "all demand (70 unit)"),
         ("Single source", "all 3 customers with a single source"),
-        ("Capacity", "all 2 sites with a capacity"), ("Least volume", "all 1 open sites with a least volume"),
+        ("Capacity", "all 2 sites with a capacity"), ("Least volume", "the only open site with a least volume"),
         ("Most on a lane", "all 4 deliveries"), ("Site rule", "all 2 sites with a rule"),
-        ("Fewest sites", "all sites"), ("Most sites", "all sites"), ("Group", "all 1 groups"),
+        ("Fewest sites", "all sites"), ("Most sites", "all sites"), ("Group", "the only group"),
     ]
     assert {check.worst for check in found.checks} == {0.0}
     own = "each its own figure"

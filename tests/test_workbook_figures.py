@@ -3,7 +3,7 @@
 import pytest
 
 from ledgersolve.workbook.currencies import MINOR_UNITS
-from ledgersolve.workbook.figures import figure_words, money_digits, money_words, unit_words
+from ledgersolve.workbook.figures import all_words, figure_words, money_digits, money_words, unit_words
 
 
 @pytest.mark.parametrize(("codes", "digits"), [("USD EUR", 2), ("JPY XPF", 0), ("BHD KWD", 3), ("CLF UYW", 4)])
@@ -43,3 +43,9 @@ def test_a_negative_figure_has_a_minus_that_is_no_hyphen() -> None:
 def test_units_are_words_in_the_plural_and_symbols_as_they_are(amount: float, unit: str, words: str) -> None:
     """Words take the plural behind every amount but one; symbols and words of other alphabets are left alone."""
     assert unit_words(amount, unit) == words
+
+
+def test_one_is_not_all() -> None:
+    """``all 12 items``, but ``the only item``."""
+    assert (all_words(12, "item"), all_words(1, "item")) == ("all 12 items", "the only item")
+    assert (all_words(2, "delivery", "deliveries"), all_words(0, "item")) == ("all 2 deliveries", "all 0 items")

@@ -187,7 +187,8 @@ class _Book:
         i, t = np.unravel_index(int(np.argmax(relative)), relative.shape)
         if relative[i, t] <= TOLERANCE:
             wanted = _words(required, None)
-            return Check(rule, f"all {case.n} items", wanted, "holds in every period", 0.0, ok=True)
+            everyone = "the only item" if case.n == 1 else f"all {case.n} items"
+            return Check(rule, everyone, wanted, "holds in every period", 0.0, ok=True)
         where = f"item {case.items[i]}, {case.period_unit} {case.periods[t]}"
         wanted, found = _words(required, (i, t)), f"{float(got[i, t]):.10g}"
         return Check(rule, where, wanted, found, float(excess[i, t]), ok=False)

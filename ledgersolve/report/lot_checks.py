@@ -31,13 +31,13 @@ def _sum_check(at: LotPlaces, ledger: Ledger) -> LiveCheck:
 def _stock_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
     case, stock = at.report.case, at.stock
     slack = f"{tolerance}*(1+{at.made.sums()})"
-    everyone = f"{case.n:,} items in {case.t:,} {case.period_unit}s"
+    everyone = f"{style.counted(case.n, 'item')} in {style.counted(case.t, case.period_unit)}"
     if case.t > 1:
         below = f"{stock.before_last()}<{stock.side(SAFETY)}-{slack}"
         yield count_check("Safety stock", everyone, "stock at or above it, before the last period: never below",
                           f"SUMPRODUCT(({below})*1)")
     below = f"{stock.column(case.t - 1)}<{stock.side(CLOSING)}-{slack}"
-    yield count_check("Closing stock", f"{case.n:,} items", "at the end of the last period: none below",
+    yield count_check("Closing stock", style.counted(case.n, "item"), "at the end of the last period: none below",
                       f"SUMPRODUCT(({below})*1)")
     if np.isfinite(case.most_stock).any():
         above = f"ISNUMBER({stock.side(MOST_STOCK)})*({stock.whole()}>{stock.side(MOST_STOCK)}+{slack})"
@@ -47,7 +47,7 @@ def _stock_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
 
 def _lot_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
     case, made = at.report.case, at.made
-    everyone = f"{at.report.plan.setups:,} lots"
+    everyone = style.counted(at.report.plan.setups, "lot")
     whole = made.whole()
     if (case.least_lot > 0).any():
         below = f"({whole}>0)*({whole}<{made.side(LEAST)}*(1-{tolerance}))"
@@ -65,12 +65,12 @@ def _lot_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
 def _service_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
     case, slack = at.report.case, f"{tolerance}*(1+{at.made.sums()})"
     if at.may_wait:
-        yield count_check("All met by the end", f"{case.n:,} items", "nothing late after the last period",
+        yield count_check("All met by the end", style.counted(case.n, "item"), "nothing late after the last period",
                           f"SUMPRODUCT(({at.late.column(case.t - 1)}>{slack})*1)")
     for allowed, block, rule in ((at.may_wait, at.late, "No negative late quantity"),
                                  (at.may_lose, at.lost, "No negative lost quantity")):
         if allowed:
-            yield count_check(rule, f"{case.n:,} items", "none below 0", f'COUNTIF({block.whole()},"<0")')
+            yield count_check(rule, style.counted(case.n, "item"), "none below 0", f'COUNTIF({block.whole()},"<0")')
 
 
 def _load_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
@@ -78,7 +78,7 @@ def _load_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
     if not case.resources:
         return
     load, available, overtime = (at.load_block(k) for k in range(3))
-    places = f"{len(case.resources):,} resources in {case.t:,} {case.period_unit}s"
+    places = f"{style.counted(len(case.resources), 'resource')} in {style.counted(case.t, case.period_unit)}"
     beyond = f"{load.whole()}>{available.whole()}+{tolerance}*(1+{available.whole()})"
     yield count_check("Capacity", places, "load within the time available: never above", f"SUMPRODUCT(({beyond})*1)")
     for r, code in enumerate(case.resources):

@@ -30,7 +30,7 @@ _SAID = {
     "failed": (
         "This workbook could not be solved, for a reason that does not lie in it.",
         "Nothing in your sheets has to be changed. Drop the workbook again; if the same happens, hand this copy to "
-        "whoever looks after the service: the run record says what is known.",
+        "whoever looks after the service.",
     ),
 }
 

@@ -10,6 +10,7 @@ from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.site_details import SERVED_CELLS
 from ledgersolve.report.site_places import SitePlaces
 from ledgersolve.report.tables import Figure
+from ledgersolve.workbook.figures import all_words
 
 
 def site_checks(at: SitePlaces, ledger: Ledger, tolerance: str) -> list[LiveCheck]:
@@ -37,18 +38,18 @@ def _service_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:
         off = f"ABS({where.span('delivered')}+{where.span('unmet')}-1)>{tolerance}"
         needed = "" if case.cost_is_whole else f"({where.span('demand')}>0)*"
         met = f"SUMPRODUCT({needed}({off}))"
-        yield count_check("Demand", f"all {case.n:,} customers", "delivered and unmet make up all: none off", met)
+        yield count_check("Demand", all_words(case.n, "customer"), "delivered and unmet make up all: none off", met)
         if case.single_source.any():
-            yield count_check("Single source", f"{int(case.single_source.sum()):,} "
-                                               "customers", "one site each: none off",
+            everyone = style.counted(int(case.single_source.sum()), "customer")
+            yield count_check("Single source", everyone, "one site each: none off",
                               f'COUNTIFS({where.span("single")},"yes",{where.span("sites")},">1")')
     if case.unmet_cost is None:
-        yield count_check("Unmet demand", f"all {case.n:,} customers", "none", f"SUM({where.span('unmet')})")
+        yield count_check("Unmet demand", all_words(case.n, "customer"), "none", f"SUM({where.span('unmet')})")
 
 
 def _delivery_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:
     case, where, sites = at.report.case, at.deliveries_at, at.sites_at
-    everyone = f"all {at.sites.size:,} deliveries"
+    everyone = all_words(at.sites.size, "delivery", "deliveries")
     yield count_check("Open site", everyone, "from open sites only: no closed site delivers",
                       f'COUNTIFS({sites.span("open")},"no",{sites.span("customers")},">0")')
     yield count_check("Delivered share", everyone, "none below 0", f'COUNTIF({where.span("share")},"<0")')
@@ -87,7 +88,8 @@ def _volume_checks(at: SitePlaces, tolerance: str) -> Iterator[LiveCheck]:
     case, where = at.report.case, at.sites_at
     capped = int(np.isfinite(case.capacity).sum())
     if capped:
-        yield count_check("Capacity", f"{capped:,} sites with a capacity", "load within capacity: none above",
+        yield count_check("Capacity", style.counted(capped, "site with a capacity", "sites with a capacity"),
+                          "load within capacity: none above",
                           f'COUNTIF({where.span("use")},">"&(1+{tolerance}))')
     if (case.least_volume > 0).any():
         below = f"{where.span('load')}<{where.span('least')}*(1-{tolerance})"

@@ -27,7 +27,7 @@ def plan_sites(at: SitePlaces, ledger: Ledger) -> ResultSheet:
     deliveries = at.deliveries_at
     columns = [
         Column("site", "Site", case.sites, width=fitting_width(case.sites)),
-        Column("name", "Name", case.site_names, width=fitting_width(case.site_names)),
+        *_names(at.sites_named, "name", "Name", case.site_names),
         Column("open", "Open in the plan (yes/no)", ["yes" if o else "no" for o in plan.open], width=11),
         *_today_columns(at),
         Column("customers", "Customers served (number)", served.tolist(), style.number(style.WHOLE), 12,
@@ -46,6 +46,11 @@ def plan_sites(at: SitePlaces, ledger: Ledger) -> ResultSheet:
     sheet = detail_sheet(at.name(names.PLAN_SITES), "Sites in the plan", words, columns, style.MOSS)
     _shade(sheet, where.letters["open"], len(columns), case.m, "yes", OPEN_ROW)
     return sheet
+
+
+def _names(given: bool, key: str, title: str, names_: Sequence[str]) -> list[Column]:
+    """A column of names; none where the workbook gives codes only."""
+    return [Column(key, title, names_, width=fitting_width(names_, 14))] if given else []
 
 
 def _today_columns(at: SitePlaces) -> list[Column]:
@@ -147,11 +152,10 @@ def plan_deliveries(at: SitePlaces, ledger: Ledger) -> ResultSheet:
     site_names, customer_names = case.site_names, case.customer_names
     columns = [
         Column("site", "Site", [case.sites[j] for j, _ in pairs], width=fitting_width(case.sites)),
-        Column("site name", "Site name", [site_names[j] for j, _ in pairs], width=fitting_width(site_names)),
+        *_names(at.sites_named, "site name", "Site name", [site_names[j] for j, _ in pairs]),
         Column("customer", "Customer", [case.customers[i] for _, i in pairs],
                width=fitting_width(case.customers, 10)),
-        Column("customer name", "Customer name", [customer_names[i] for _, i in pairs],
-               width=fitting_width(customer_names, 14)),
+        *_names(at.customers_named, "customer name", "Customer name", [customer_names[i] for _, i in pairs]),
         Column("share", "Share of the customer's demand (%)", at.shares.tolist(), style.number(style.PERCENT), 14),
         Column("volume", f"Volume ({case.demand_unit}{at.per})", at.volumes.tolist(), style.number(at.demand_format),
                14, [f"{where.here('share', k)}*{at.customers_at.cell('demand', i)}" for k, (_, i) in
@@ -253,7 +257,7 @@ def plan_customers(at: SitePlaces) -> ResultSheet:
     figures = style.number(at.demand_format)
     columns = [
         Column("customer", "Customer", case.customers, width=fitting_width(case.customers, 10)),
-        Column("name", "Name", case.customer_names, width=fitting_width(case.customer_names, 14)),
+        *_names(at.customers_named, "name", "Name", case.customer_names),
         Column("demand", f"Demand ({case.demand_unit}{at.per})", case.demand.tolist(), figures, 14,
                [at.demand(i).formula for i in rows]),
         Column("delivered", "Delivered (% of demand)", delivered.tolist(), style.number(style.PERCENT), 12,
@@ -264,8 +268,8 @@ def plan_customers(at: SitePlaces) -> ResultSheet:
                [f"COUNTIF({deliveries.span('customer')},{where.here('customer', i)})" for i in rows]
                if live else None),
         Column("main", "Main site", [case.sites[j] if j >= 0 else "" for j in main], width=12),
-        Column("main name", "Name of main site", [case.site_names[j] if j >= 0 else "" for j in main],
-               width=fitting_width(case.site_names, 12)),
+        *_names(at.sites_named, "main name", "Name of main site",
+                [case.site_names[j] if j >= 0 else "" for j in main]),
         *_single_columns(at),
         *_reach_columns(at),
         *_move_columns(at, main),

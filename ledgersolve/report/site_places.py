@@ -82,6 +82,16 @@ class SitePlaces:
         return self.measured and bool(np.isfinite(self.report.case.promised()).any())
 
     @cached_property
+    def sites_named(self) -> bool:
+        """Whether some site has a name that is not its code."""
+        return self.report.case.site_names != self.report.case.sites
+
+    @cached_property
+    def customers_named(self) -> bool:
+        """Whether some customer has a name that is not its code."""
+        return self.report.case.customer_names != self.report.case.customers
+
+    @cached_property
     def straight(self) -> bool:
         """Whether some distance of the plan follows from coordinates."""
         return any(_distance_cell(self, k) is None for k in np.flatnonzero(np.isfinite(self.distances)).tolist())
@@ -120,7 +130,8 @@ class SitePlaces:
     @cached_property
     def deliveries_at(self) -> Places:
         """Places of the table of deliveries."""
-        keys = ["site", "site name", "customer", "customer name", "share", "volume", "cost"]
+        keys = ["site", *(["site name"] if self.sites_named else []), "customer",
+                *(["customer name"] if self.customers_named else []), "share", "volume", "cost"]
         keys += ["rate"] if self.compact else []
         keys += ["distance"] if self.measured else []
         keys += ["straight"] if self.straight else []
@@ -131,7 +142,8 @@ class SitePlaces:
     @cached_property
     def sites_at(self) -> Places:
         """Places of the table of sites."""
-        keys = ["site", "name", "open"] + (["today", "change"] if self.has_today else [])
+        keys = ["site", *(["name"] if self.sites_named else []), "open"]
+        keys += ["today", "change"] if self.has_today else []
         keys += ["customers", "load", "capacity", "use"]
         keys += ["least"] if self.report.case.least_volume.any() else []
         keys += ["fixed", *(["once"] if self.once else []), "lane", *(["handling"] if self.handled else [])]
@@ -143,7 +155,8 @@ class SitePlaces:
     @cached_property
     def customers_at(self) -> Places:
         """Places of the table of customers."""
-        keys = ["customer", "name", "demand", "delivered", "unmet", "sites", "main", "main name"]
+        keys = ["customer", *(["name"] if self.customers_named else []), "demand", "delivered", "unmet", "sites"]
+        keys += ["main", *(["main name"] if self.sites_named else [])]
         keys += ["single"] if self.report.case.single_source.any() else []
         keys += ["farthest"] if self.measured else []
         keys += ["promise"] if self.promised else []

@@ -79,7 +79,7 @@ def _deliveries(case: Case, plan: Plan) -> list[Check]:
     again = np.ones(plan.site.size)
     again[first] = 0.0
     small = np.where(plan.share > 0, 0.0, 1.0)
-    everyone = f"all {plan.site.size} deliveries"
+    everyone = _all(plan.site.size, "delivery", "deliveries")
     return [
         *_each("Open site", everyone, shut, lane, "from an open site", "the site is closed"),
         *_each("Lane", everyone, missing, lane, "a lane that exists and is allowed", "no such lane"),
@@ -93,14 +93,14 @@ def _service(case: Case, plan: Plan) -> list[Check]:
     total = np.bincount(plan.customer, weights=plan.share, minlength=len(case.customers)) + plan.unmet
     wanted = np.full(len(case.customers), True) if case.cost_is_whole else case.demand > 0
     off = np.where(wanted, np.abs(total - 1.0), np.maximum(total - 1.0, 0.0))
-    everyone = f"all {len(case.customers)} customers"
+    everyone = _all(len(case.customers), "customer")
     required = "delivered and unmet together the whole demand"
     got = _figures(100 * total, " %")
     return _each("Demand", everyone, _beyond(off, 1.0), _customer(case), required, got)
 
 
 def _unmet(case: Case, plan: Plan) -> list[Check]:
-    everyone = f"all {len(case.customers)} customers"
+    everyone = _all(len(case.customers), "customer")
     got = _figures(100 * plan.unmet, " % unmet")
     if case.unmet_cost is None:
         off = _beyond(np.abs(plan.unmet), 1.0)
@@ -122,7 +122,7 @@ def _promises(case: Case, plan: Plan) -> list[Check]:
         known = case.distance[plan.site, plan.customer]
     beyond = np.where(np.isnan(known) & np.isfinite(promise), np.inf, 0.0)
     np.subtract(known, promise, out=beyond, where=~np.isnan(known) & np.isfinite(promise))
-    everyone = f"all {int(np.isfinite(promise).sum())} deliveries under a promise"
+    everyone = _all(int(np.isfinite(promise).sum()), "delivery under a promise", "deliveries under a promise")
     unit = f" {case.distance_unit}"
     required = _figures(promise, unit, "at most ")
     off = _beyond(beyond, np.where(np.isfinite(promise), promise, 1.0))
@@ -152,7 +152,8 @@ def _single_sourcing(case: Case, plan: Plan) -> list[Check]:
         return []
     sources = np.bincount(plan.customer, minlength=len(case.customers))
     extra = np.where(case.single_source, np.maximum(sources - 1.0, 0.0), 0.0)
-    everyone = f"all {int(case.single_source.sum())} customers with a single source"
+    everyone = _all(
+        int(case.single_source.sum()), "customer with a single source", "customers with a single source")
     return _each("Single source", everyone, extra, _customer(case), "one site", _figures(sources, " sites"))
 
 
@@ -163,7 +164,7 @@ def _capacities(case: Case, plan: Plan) -> list[Check]:
     volume = _site_volume(case, plan)
     limit = np.where(capped, case.capacity, 0.0)
     over = _beyond(np.where(capped, volume - limit, 0.0), limit)
-    everyone = f"all {int(capped.sum())} sites with a capacity"
+    everyone = _all(int(capped.sum()), "site with a capacity", "sites with a capacity")
     required = _figures(case.capacity, _unit(case), "at most ")
     return _each("Capacity", everyone, over, _site(case), required, _figures(volume, _unit(case)))
 
@@ -174,7 +175,8 @@ def _least_volumes(case: Case, plan: Plan) -> list[Check]:
         return []
     volume = _site_volume(case, plan)
     under = _beyond(np.where(asked, case.least_volume - volume, 0.0), case.least_volume)
-    everyone = f"all {int(asked.sum())} open sites with a least volume"
+    everyone = _all(
+        int(asked.sum()), "open site with a least volume", "open sites with a least volume")
     required = _figures(case.least_volume, _unit(case), "at least ")
     return _each("Least volume", everyone, under, _site(case), required, _figures(volume, _unit(case)))
 
@@ -186,7 +188,7 @@ def _lane_most(case: Case, plan: Plan) -> list[Check]:
     units = plan.share * case.demand[plan.customer]
     finite = np.where(np.isfinite(most), most, 0.0)
     over = _beyond(np.where(np.isfinite(most), units - finite, 0.0), finite)
-    everyone = f"all {plan.site.size} deliveries"
+    everyone = _all(plan.site.size, "delivery", "deliveries")
     required = _figures(most, _unit(case), "at most ")
     got = _figures(units, _unit(case))
     return _each("Most on a lane", everyone, over, _lane_names(case, plan), required, got)
@@ -205,7 +207,7 @@ def _rules(case: Case, plan: Plan) -> list[Check]:
         return "open" if plan.open[k] else "closed"
 
     off = wrong.astype(np.float64)
-    return _each("Site rule", f"all {ruled} sites with a rule", off, _site(case), required, got)
+    return _each("Site rule", _all(ruled, "site with a rule", "sites with a rule"), off, _site(case), required, got)
 
 
 def _counts(case: Case, plan: Plan) -> list[Check]:
@@ -233,7 +235,7 @@ def _groups(case: Case, plan: Plan) -> list[Check]:
 
     off = np.maximum(running - 1.0, 0.0)
     got = _figures(running, " open")
-    return _each("Group", f"all {count} groups", off, name, "at most one site open", got)
+    return _each("Group", _all(count, "group"), off, name, "at most one site open", got)
 
 
 def _each(
@@ -270,6 +272,11 @@ def _beyond(excess: Floats, scale: ArrayLike) -> Floats:
 def _site_volume(case: Case, plan: Plan) -> Floats:
     units = plan.share * case.demand[plan.customer]
     return np.bincount(plan.site, weights=units, minlength=len(case.sites)).astype(np.float64)
+
+
+def _all(count: int, one: str, many: str = "") -> str:
+    """``all 12 customers``, and ``the only customer`` where there is one."""
+    return f"the only {one}" if count == 1 else f"all {count} {many or one + 's'}"
 
 
 def _unit(case: Case) -> str:

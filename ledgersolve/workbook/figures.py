@@ -42,3 +42,8 @@ def unit_words(amount: float, unit: str) -> str:
     if unit.endswith(("x", "ch", "sh")):
         return f"{unit}es"
     return f"{unit[:-1]}ies" if re.search("[^aeiou]y$", unit) else f"{unit}s"
+
+
+def all_words(count: int, one: str, many: str = "") -> str:
+    """``all 12 items``, and ``the only item`` where there is one."""
+    return f"the only {one}" if count == 1 else f"all {count:,} {many or one + 's'}"
