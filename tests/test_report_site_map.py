@@ -19,10 +19,11 @@ def test_marks_stand_where_their_figures_say(extent: float) -> None:
         middle = np.array([rng.uniform(-120, 120), rng.uniform(-20, 60)])
         places = middle + rng.uniform(-0.5, 0.5, (9, 2)) * np.array([extent, extent / 3])
         scale = map_scale(places)
-        decimals = len(scale.number_format.partition(".")[2])
-        for (start, end), step in ((scale.across, scale.step_across), (scale.up, scale.step_up)):
+        axes = ((scale.across, scale.step_across), (scale.up, scale.step_up))
+        for ((start, end), step), shown in zip(axes, scale.formats, strict=True):
+            decimals = len(shown.partition(".")[2])
             marks = np.arange(start, end, step)
-            assert 2 <= marks.size <= 9
+            assert 3 <= marks.size <= 12
             assert np.abs(marks - np.array([float(f"{mark:.{decimals}f}") for mark in marks])).max() < 1e-9 * 180
             assert abs(start / step - round(start / step)) < 1e-6
 
@@ -47,9 +48,9 @@ def test_round_degrees_by_hand() -> None:
     """A country of some degrees: marks at whole degrees, written without decimals."""
     scale = map_scale(np.array([[6.0, 47.5], [14.8, 54.9]]))
     assert (scale.step_up, scale.up[0] % 2) == (2.0, 0.0)
-    assert scale.number_format == "0"
+    assert scale.formats == ("0", "0")
     town = map_scale(np.array([[2.30, 48.84], [2.40, 48.88]]))
-    assert town.number_format == "0.00"
+    assert town.formats == ("0.00", "0.00")
 
 
 def test_the_chart_says_where_its_marks_are(tmp_path: Path) -> None:
@@ -65,4 +66,5 @@ def test_the_chart_says_where_its_marks_are(tmp_path: Path) -> None:
     assert f'<c:majorUnit val="{scale.step_across}"/>' in chart
     assert f'<c:majorUnit val="{scale.step_up}"/>' in chart
     assert f'<c:min val="{scale.across[0]}"/>' in chart
-    assert chart.count(f'<c:numFmt formatCode="{scale.number_format}" sourceLinked="0"/>') == 2
+    for shown in scale.formats:
+        assert f'<c:numFmt formatCode="{shown}" sourceLinked="0"/>' in chart

@@ -23,10 +23,10 @@ SMALLEST_MAP = 0.02
 """Degrees of latitude that the picture shows at least."""
 MARGIN = 0.06
 """Room around the points, as a part of the picture."""
-MARKS_ACROSS, MARKS_UP = 7, 5
+MARKS_ACROSS, MARKS_UP = 10, 7
 CROWDED = 600
-"""Customers from which marks and lines are drawn finer."""
-PLOT = (0.08, 0.10, 0.89, 0.66)
+"""Customers beyond which they are drawn as fine dots, without lines to them."""
+PLOT = (0.10, 0.10, 0.87, 0.66)
 """Where the plot stands in the picture: left, top, width, height as parts of it."""
 PLOT_RATIO = PLOT[2] * PICTURE_WIDTH / (PLOT[3] * PICTURE_HEIGHT)
 """Width over height of the plot, so that a mile is as long sideways as upwards."""
@@ -68,7 +68,7 @@ def _deliveries(at: SitePlaces, sites: Floats, customers: Floats) -> _Points:
     """For each site, in turn: out to a customer and back; an empty row lifts the pen."""
     rows: list[tuple[float | None, float | None, str]] = []
     before = -1
-    for j, i in _drawn(at):
+    for j, i in _drawn(at) if at.report.case.n <= CROWDED else ():
         if not (np.isfinite(sites[j]).all() and np.isfinite(customers[i]).all()):
             continue
         if j != before:
@@ -77,7 +77,7 @@ def _deliveries(at: SitePlaces, sites: Floats, customers: Floats) -> _Points:
             before = j
         rows.append((*customers[i].tolist(), at.report.case.customers[i]))
         rows.append((*sites[j].tolist(), at.report.case.sites[j]))
-    return _Points("Deliveries", rows, style.LINE if at.report.case.n <= CROWDED else "D5DBE1", line="solid")
+    return _Points("Deliveries", rows, style.LINE, line="solid")
 
 
 def _drawn(at: SitePlaces) -> list[tuple[int, int]]:
@@ -90,7 +90,7 @@ def _customers(at: SitePlaces, customers: Floats) -> _Points:
     kept = np.argsort(-at.report.case.demand, kind="stable")[:DRAWN_DELIVERIES]
     size = 4 if at.report.case.n <= 300 else 3 if at.report.case.n <= CROWDED else 2
     points = _listed(customers, np.sort(kept), at.report.case.customers)
-    return _Points("Customer", points, style.QUIET, "circle", size)
+    return _Points("Customer", points, style.QUIET if at.report.case.n <= CROWDED else style.LINE, "circle", size)
 
 
 def _site_kinds(at: SitePlaces, sites: Floats) -> list[_Points]:
@@ -144,18 +144,20 @@ def _chart(sheet: str, series: list[_Points], places: Floats, at: SitePlaces) ->
         made.append(Series(
             points.name, Area(sheet, row, 2, last, 2), Area(sheet, row, 3, last, 3), points.colour,
             pattern="open" if points.hollow else "", marker=points.marker, marker_size=points.size,
-            line_width=0.75 if at.report.case.n <= CROWDED else 0.25, dash=points.line,
+            line_width=0.75, dash=points.line,
             point_labels=tuple(label for _, _, label in points.rows) if points.labelled else (),
         ))
         row = last + 1
     scale = map_scale(places)
-    title = "Sites, customers and deliveries"
-    if at.sites.size > DRAWN_DELIVERIES:
+    crowded = at.report.case.n > CROWDED
+    title = "Sites and customers" if crowded else "Sites, customers and deliveries"
+    if not crowded and at.sites.size > DRAWN_DELIVERIES:
         title += f" (largest {DRAWN_DELIVERIES:,})"
+    lines = "" if crowded else "; lines show who serves whom"
     return Chart("scatter", title, _in_sight(made), 0, 0, x_title="longitude (degrees)", y_title="latitude (degrees)",
-                 number_format=scale.number_format, x_limits=scale.across, y_limits=scale.up,
-                 x_step=scale.step_across, step=scale.step_up,
-                 plot=PLOT, description="Sites and customers by longitude and latitude; lines show who serves whom")
+                 number_format=scale.formats[1], x_number_format=scale.formats[0], x_limits=scale.across,
+                 y_limits=scale.up, x_step=scale.step_across, step=scale.step_up, plot=PLOT,
+                 description=f"Sites and customers by longitude and latitude{lines}")
 
 
 def _in_sight(series: list[Series]) -> tuple[Series, ...]:
@@ -174,10 +176,10 @@ class MapScale:
     step_up: float
 
     @property
-    def number_format(self) -> str:
-        """As many decimals as the finer marks need, so that every mark stands where its figure says."""
-        decimals = max(_decimals(self.step_across), _decimals(self.step_up))
-        return "0" + ("." + "0" * decimals if decimals else "")
+    def formats(self) -> tuple[str, str]:
+        """Formats across and up: as many decimals as the marks need to stand where their figures say."""
+        across, up = (_decimals(step) for step in (self.step_across, self.step_up))
+        return "0" + "." * bool(across) + "0" * across, "0" + "." * bool(up) + "0" * up
 
 
 def map_scale(places: Floats) -> MapScale:
@@ -189,16 +191,26 @@ def map_scale(places: Floats) -> MapScale:
     low, high = known.min(axis=0), known.max(axis=0)
     squeeze = max(0.05, float(np.cos(np.radians((low[1] + high[1]) / 2))))
     sideways = PLOT_RATIO / squeeze  # degrees of longitude across for a degree of latitude up
-    tall = max(float(high[1] - low[1]), float(high[0] - low[0]) / sideways, SMALLEST_MAP)
-    margin = MARGIN * tall
-    size = np.array([tall * sideways, tall]) + 2 * margin * np.array([sideways, 1.0])
-    first = (low + high) / 2 - size / 2
-    steps = [style.axis_step(float(size[0]), MARKS_ACROSS) or 1.0, style.axis_step(float(size[1]), MARKS_UP) or 1.0]
-    starts = [math.floor(round(float(start) / step, 9)) * step for start, step in zip(first, steps, strict=True)]
-    starts = [round(start, _decimals(step)) for start, step in zip(starts, steps, strict=True)]
-    reach = first + size
-    tall = max(float(reach[1]) - starts[1], (float(reach[0]) - starts[0]) / sideways)
-    return MapScale((starts[0], starts[0] + tall * sideways), (starts[1], starts[1] + tall), *steps)
+    tall = max(float(high[1] - low[1]), float(high[0] - low[0]) / sideways, SMALLEST_MAP) * (1 + 2 * MARGIN)
+    middle, size = (low + high) / 2, np.array([tall * sideways, tall])
+    step_up = _step(tall / MARKS_UP)
+    up = _mark_below(float(middle[1]) - tall / 2, step_up)
+    tall = float(middle[1] + size[1] / 2) - up
+    step_across = _step(tall * sideways / MARKS_ACROSS)
+    across = _mark_below(float(middle[0]) - tall * sideways / 2, step_across)
+    tall = max(tall, (float(middle[0] + size[0] / 2) - across) / sideways)
+    return MapScale((across, across + tall * sideways), (up, up + tall), step_across, step_up)
+
+
+def _step(least: float) -> float:
+    """Smallest of the figures 1, 2, 5 and their tenfolds and tenths that is not below ``least``."""
+    size = 10.0 ** math.floor(math.log10(least))
+    return next(size * part for part in (1.0, 2.0, 5.0, 10.0) if size * part >= least * (1 - 1e-12))
+
+
+def _mark_below(start: float, step: float) -> float:
+    """Last mark at or below a figure."""
+    return round(math.floor(round(start / step, 9)) * step, _decimals(step))
 
 
 def _decimals(step: float) -> int:

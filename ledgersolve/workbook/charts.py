@@ -151,7 +151,8 @@ def _dress(drawn: Any, chart: Chart) -> None:
         "name_font": {"name": "Arial", "size": 11, "bold": True, "color": _INK},
     })
     scatter, bar = chart.kind == "scatter", "bar" in chart.kind
-    across = _axis(chart.x_title, chart.x_limits, chart.number_format if scatter else "", not scatter)
+    figures = chart.x_number_format or chart.number_format
+    across = _axis(chart.x_title, chart.x_limits, figures if scatter else "", not scatter)
     up = _axis(chart.y_title, chart.y_limits, chart.number_format, not scatter)
     if chart.from_zero:
         up["min"] = 0

@@ -93,6 +93,7 @@ class Chart:
     x_title: str = ""
     y_title: str = ""
     number_format: str = ""
+    x_number_format: str = ""  # across in a scatter chart, where it differs
     x_limits: tuple[float, float] | None = None
     y_limits: tuple[float, float] | None = None
     legend: str = "bottom"
