@@ -467,15 +467,15 @@ def test_a_folder_for_jobs_that_is_not_there_is_told_at_the_start(tmp_path, caps
 
 def test_a_folder_for_jobs_that_is_full_at_the_start_is_waited_for(tmp_path, quick, monkeypatch):
     """A full disk passes: the service starts, holds new work, and goes on once there is room."""
-    full = [True]
-    monkeypatch.setattr("ledgersolve.service.intake.private_trouble", lambda root: "No space left." if full[0] else "")
+    full = ["No space left."]
+    monkeypatch.setattr("ledgersolve.service.intake.private_trouble", lambda root: full[0])
     watcher = quick_watcher(tmp_path)
     drop(tmp_path, "plan.xlsx")
     for _ in range(3):
         watcher.step()
         watcher.wait()
     assert watcher.state == "held" and names(tmp_path / "Inbox") == ["plan.xlsx"]
-    full[0] = False
+    full[0] = ""
     assert run_until_empty(watcher)
 
 
