@@ -76,7 +76,6 @@ def test_limits_may_leave_one_reading():
 @pytest.mark.parametrize(("cell", "kind", "word"), [
     (Cell(1, 1, Kind.ERROR, "#N/A"), "error value", "#N/A"),
     (Cell(1, 1, Kind.UNCALCULATED, "A1*2"), "formula never calculated", "A1*2"),
-    (Cell(1, 1, Kind.DATE, 46387.0), "date instead of number", "2026-12-31"),
     (Cell(1, 1, Kind.TEXT, "31.12.2026"), "date instead of number", "31.12.2026"),
     (Cell(1, 1, Kind.BOOLEAN, True), "number expected", "TRUE"),
     (Cell(1, 1, Kind.TEXT, "12 km"), "number expected", "12 km"),
@@ -88,6 +87,15 @@ def test_what_is_no_number_is_told_apart(cell, kind, word):
     fault = values.number(cell, COST)
     assert (fault.kind, fault.recheck) == (kind, "not negative")
     assert word in fault.found
+
+
+def test_a_date_for_a_number_waits_for_the_next_drop():
+    """No formula tells a date from its number, so none may say that it is mended."""
+    fault = values.number(Cell(1, 1, Kind.DATE, 46387.0), COST)
+    assert (fault.kind, fault.recheck, fault.test) == ("date instead of number", "static", "")
+    assert "2026-12-31" in fault.found
+    bare = values.bare_serial(46387, START)
+    assert (bare.recheck, bare.test) == ("static", "")
 
 
 def test_remedies_know_the_column():

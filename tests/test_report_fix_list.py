@@ -6,8 +6,9 @@ from pathlib import Path
 import openpyxl
 import pytest
 
-from ledgersolve.report.fix_list import DONE, DROP_AGAIN, TO_FIX, fix_list
+from ledgersolve.report.fix_list import fix_list
 from ledgersolve.report.inputs import RunFacts
+from ledgersolve.report.live_status import DONE, DROP_AGAIN, TO_FIX
 from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.render import render
 from ledgersolve.workbook.sheets import ResultSheet

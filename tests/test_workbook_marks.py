@@ -197,15 +197,18 @@ def test_the_selection_of_a_tab_is_taken_and_given_back() -> None:
 
 # What stands in the cell -> for which kinds it is still wrong.
 CONTENTS: Sequence[tuple[str, object, set[str]]] = [
-    ("a number", 5, {"empty", "static"}),
-    ("zero", 0, {"empty", "static"}),
-    ("below", -1, {"empty", "static", "not negative", "within"}),
-    ("above", 101, {"empty", "static", "within"}),
-    ("text", "abc", {"empty", "static", "number", "not negative", "within", "date"}),
-    ("text of a number", "12", {"empty", "static", "number", "not negative", "within", "date"}),
-    ("blank text", "  ", {"empty", "static", "number", "not negative", "within", "date", "filled"}),
-    ("empty", None, {"static", "number", "not negative", "within", "date", "filled"}),
-    ("error", "=NA()", {"empty", "static", "number", "not negative", "within", "date", "no error"}),
+    ("a number", 5, {"empty", "static", "word"}),
+    ("zero", 0, {"empty", "static", "word", "above 0"}),
+    ("below", -1, {"empty", "static", "not negative", "within", "word", "above 0", "optional"}),
+    ("above", 101, {"empty", "static", "within", "word"}),
+    ("text", "abc", {"empty", "static", "number", "not negative", "within", "date", "above 0", "optional", "typed"}),
+    ("text of a number", "12", {"empty", "static", "number", "not negative", "within", "date", "word",
+     "above 0", "optional"}),
+    ("blank text", "  ", {"empty", "static", "number", "not negative", "within", "date", "filled", "word",
+     "above 0", "optional"}),
+    ("empty", None, {"static", "number", "not negative", "within", "date", "filled", "word", "above 0"}),
+    ("error", "=NA()", {"empty", "static", "number", "not negative", "within", "date", "no error", "word",
+     "above 0", "optional", "typed"}),
 ]
 KINDS: Sequence[tuple[str, Problem]] = [
     ("number", problem("A1")),
@@ -216,6 +219,10 @@ KINDS: Sequence[tuple[str, Problem]] = [
     ("date", problem("A1", recheck="date")),
     ("static", problem("A1", recheck="static")),
     ("within", problem("A1", low=0.0, high=100.0)),
+    ("above 0", problem("A1", low=0.0, above=True)),
+    ("optional", problem("A1", recheck="not negative", may_be_empty=True)),
+    ("word", problem("A1", recheck="static", test='IFERROR(TRIM({cell})="abc",FALSE)')),
+    ("typed", problem("A1", recheck="static", test="COUNTIF('Other'!$A$1:$A$9,{cell})>0", typed="abc")),
 ]
 
 

@@ -7,13 +7,19 @@ from functools import partial
 import numpy as np
 from numpy.typing import NDArray
 
+from ledgersolve.contract import mended
 from ledgersolve.contract.columns import quoted
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.lists import CheckedList
 from ledgersolve.workbook.cells import address
+from ledgersolve.workbook.ownership import quoted as sheet_quoted
+from ledgersolve.workbook.problems import OWN
 from ledgersolve.workbook.text import alike, nearest
 
 Ints = NDArray[np.int64]
+
+LONGEST_TYPED = 200
+"""A longer code is not compared with by marks."""
 
 NAMED = 20
 """So many unknown codes of a column are looked up for near misses and listed apart; more become one entry."""
@@ -26,6 +32,7 @@ class Codes:
     ``rows`` are the places in the list where each first stands; without faults 0, 1, 2, ...
     ``whole`` is False where the list has rows whose code is broken: an unknown code may be one of them.
     ``doubled`` counts rows that repeat another's code: one of them may be a code lost to a slip.
+    ``cells`` are the cells of the codes as formulas name them; "" where they are too many or not known.
     """
 
     sheet: str
@@ -34,6 +41,7 @@ class Codes:
     rows: tuple[int, ...] = ()
     whole: bool = True
     doubled: int = 0
+    cells: str = ""
 
 
 def codes_of(table: CheckedList, faults: Faults) -> Codes:
@@ -57,14 +65,21 @@ def codes_of(table: CheckedList, faults: Faults) -> Codes:
             rows[code] = row
             forms[form] = code
     number = {code: place for place, code in enumerate(rows)}
-    return Codes(table.sheet, tuple(rows), number, tuple(rows.values()), table.whole, doubled)
+    cells = _cells(table, title).replace(OWN, f"{sheet_quoted(table.sheet)}!")
+    return Codes(table.sheet, tuple(rows), number, tuple(rows.values()), table.whole, doubled,
+                 "" if "{" in table.sheet else cells)
+
+
+def _cells(table: CheckedList, title: str) -> str:
+    """Cells under a title, from the sheet itself."""
+    return mended.down(table.columns[title].column, table.title_row + 1, int(table.rows[-1]))
 
 
 def _report_twice(table: CheckedList, title: str, row: int, first: int, code: str, faults: Faults) -> None:
     where = address(*table.place(first, title))
     faults.add(table.sheet, table.place(row, title), title, Fault(
         "duplicate code", f"{quoted(code)}, which stands in {where} already", "each code once",
-        "Take one of the two rows out, or rename it."))
+        "Take one of the two rows out, or rename it.", test=mended.unique(_cells(table, title))))
 
 
 def report_alike(table: CheckedList, title: str, faults: Faults) -> None:
@@ -78,9 +93,11 @@ def report_alike(table: CheckedList, title: str, faults: Faults) -> None:
 
 def _report_alike(table: CheckedList, title: str, row: int, first: str, first_row: int, faults: Faults) -> None:
     where, code = address(*table.place(first_row, title)), table.texts(title)[row]
+    test = mended.unique(_cells(table, title)) if title == table.contract.key[0] else ""
     faults.add(table.sheet, table.place(row, title), title, Fault(
         "codes alike", f"{quoted(code)}, which differs from {quoted(first)} in {where} in case or spacing only",
-        "codes that differ clearly", f"Write {quoted(first)} in both cells if they are one, or rename one."))
+        "codes that differ clearly", f"Write {quoted(first)} in both cells if they are one, or rename one.",
+        test=test))
 
 
 def resolve(sheet: str, title: str, texts: Sequence[str], place: Callable[[int], Place], known: Codes | None,
@@ -116,13 +133,13 @@ def _report_unknown(sheet: str, title: str, lost: Mapping[str, Sequence[Place]],
             slips -= 1  # used again and again: most likely the code that a repeated row has lost
             continue
         if one_by_one:
-            faults.many(sheet, places, title, partial(_same, unknown_code(code, near, known.sheet)),
+            faults.many(sheet, places, title, partial(_same, unknown_code(code, near, known, alone=True)),
                         group=code)
         else:
             gathered.extend((place, code) for place in places)
     if gathered:
         faults.many(sheet, [place for place, _ in gathered], title, lambda i: unknown_code(
-            gathered[i][1], nearest(gathered[i][1], known.codes), known.sheet))
+            gathered[i][1], nearest(gathered[i][1], known.codes), known))
 
 
 def resolve_column(table: CheckedList, title: str, known: Codes | None, faults: Faults) -> Ints:
@@ -134,10 +151,13 @@ def _same(fault: Fault, _: int) -> Fault:
     return fault
 
 
-def unknown_code(code: str, near: str | None, sheet: str) -> Fault:
-    """The fault of a code that its list does not hold."""
+def unknown_code(code: str, near: str | None, known: Codes, *, alone: bool = False) -> Fault:
+    """The fault of a code that its list does not hold; ``alone``: the entry is about cells with this code only."""
+    sheet = known.sheet
     remedy = f"Did you mean {quoted(near)}?" if near else f"Correct the code, or add it to {sheet}."
-    return Fault("unknown code", f"{quoted(code)}, which is not in {sheet}", f"a code of the sheet {sheet}", remedy)
+    return Fault("unknown code", f"{quoted(code)}, which is not in {sheet}", f"a code of the sheet {sheet}", remedy,
+                 test=mended.listed(known.cells), tally=mended.count_listed(known.cells, code, near),
+                 typed=code if alone and len(code) < LONGEST_TYPED and code.isprintable() else "")
 
 
 def report_pairs(table: CheckedList, first: Ints, second: Ints, faults: Faults) -> None:
@@ -152,11 +172,13 @@ def report_pairs(table: CheckedList, first: Ints, second: Ints, faults: Faults) 
              if original.get(key, row) != row]
     titles = table.contract.key
     texts = [table.texts(title) for title in titles]
+    test = mended.unique_pair(*(part for title in titles for part in (
+        _cells(table, title), mended.beside(table.columns[title].column))))
 
     def describe(i: int) -> Fault:
         row, earlier = again[i]
         pair = " and ".join(f"{quoted(column[row])}" for column in texts)
         return Fault("duplicate pair", f"{pair}, a pair that stands in row {table.rows[earlier]} already",
-                     "each pair once", "Take one of the two rows out.")
+                     "each pair once", "Take one of the two rows out.", test=test)
 
     faults.many(table.sheet, [table.place(row, titles[0]) for row, _ in again], titles[0], describe)

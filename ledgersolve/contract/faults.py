@@ -26,6 +26,11 @@ class Fault:
     recheck: Recheck = "static"
     low: float | None = None
     high: float | None = None
+    above: bool = False
+    may_be_empty: bool = False
+    test: str = ""
+    tally: str = ""
+    typed: str = ""
 
 
 class Faults:
@@ -46,7 +51,8 @@ class Faults:
         if len(entries) <= FEW or place is None:
             entries.append((place, Problem(
                 severity, fault.kind, sheet, address(*place) if place else "", title, fault.found, fault.expected,
-                fault.remedy, recheck=fault.recheck, low=fault.low, high=fault.high)))
+                fault.remedy, recheck=fault.recheck, low=fault.low, high=fault.high, above=fault.above,
+                may_be_empty=fault.may_be_empty, test=fault.test, tally=fault.tally, typed=fault.typed)))
         if place is not None:
             self._bulk.setdefault(key, []).append(place)
 

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from ledgersolve.contract import mended
 from ledgersolve.contract import site_selection as c
 from ledgersolve.contract.book import Book
 from ledgersolve.contract.codes import Codes, report_pairs, resolve_column
@@ -209,9 +210,13 @@ def check_rows(book: Book, rows: LaneRows | None) -> None:
     asked = allowed & ~unclear & ~priced
     title = "Unit cost" if "Unit cost" in table.columns or "Distance" not in table.columns else "Distance"
     empty = rows.row[asked & ~measured]
+    named = [column.column for name, column in table.columns.items() if name in ("Unit cost", "Distance")]
+    test = mended.any_number(*map(mended.beside, named))
+    if "Allowed" in table.columns:
+        test = mended.any_of(test, mended.is_no(mended.beside(table.columns["Allowed"].column)))
     faults.many(table.sheet, [table.place(row, title) for row in empty.tolist()], title, lambda _: Fault(
         "required cell empty", "neither Unit cost nor Distance", "one of Unit cost and Distance",
-        "Fill in one of the two, or write no under Allowed.", "filled"))
+        "Fill in one of the two, or write no under Allowed.", "filled", test=test))
     if book.settings.number(c.RATE) is None and c.RATE not in book.settings.bad and book.settings.readable:
         unpriced = rows.row[asked & measured]
         places = [table.place(row, title) for row in unpriced.tolist()]

@@ -6,7 +6,7 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from ledgersolve.contract import values
+from ledgersolve.contract import mended, values
 from ledgersolve.contract.columns import Entry, Holds, ListSheet, listed, quoted, shown
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.models import outside
@@ -267,10 +267,9 @@ def _report_empty(checked: CheckedList, title: str, faults: Faults) -> None:
     column = checked.columns[title]
     empty = np.flatnonzero(~column.good & ~column.bad)
     entry = column.entry
-    recheck, low, high = values.number_recheck(entry) if entry.numeric else ("filled", None, None)
-    faults.many(checked.sheet, [checked.place(n, title) for n in empty.tolist()], title, lambda _: Fault(
-        "required cell empty", "an empty cell", entry.expected(),
-        "Fill the cell, or clear the whole row.", recheck, low, high))
+    fault = mended.watched(Fault(
+        "required cell empty", "an empty cell", entry.expected(), "Fill the cell, or clear the whole row."), entry)
+    faults.many(checked.sheet, [checked.place(n, title) for n in empty.tolist()], title, lambda _: fault)
 
 
 def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults) -> None:
@@ -285,7 +284,8 @@ def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults)
         known = listed(str(text) for text in titles.headings.values())
         found = f"the title {quoted(slip.value)}" if slip else f"a title row with {known}"
         remedy = f"Did you mean {wanted}? Change the title." if slip else f"Add a column {wanted}."
-        faults.add(sheet, place, names[0], Fault("missing column", found, f"a column {wanted}", remedy))
+        test = mended.any_of(*map(mended.title, names)) if slip else ""
+        faults.add(sheet, place, names[0], Fault("missing column", found, f"a column {wanted}", remedy, test=test))
     missing = {name for names in titles.missing for name in names}
     for cell, name in near.items():
         if name is not None and name not in missing:
@@ -296,4 +296,5 @@ def report_titles(sheet: str, contract: ListSheet, raw: RawList, faults: Faults)
     for name, cell in titles.twice:
         faults.add(sheet, (cell.row, cell.column), name, Fault(
             "title twice", f"the title {quoted(cell.value)} a second time", f"one column {quoted(name)}",
-            "Rename or take out one of the two columns."))
+            "Rename or take out one of the two columns.",
+            test=mended.unique(mended.along(titles.row, min(titles.headings), max(titles.headings)))))

@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ledgersolve.contract import lot_sizing as c
-from ledgersolve.contract import settings
+from ledgersolve.contract import mended, settings
 from ledgersolve.contract.book import Book, is_too_large
 from ledgersolve.contract.codes import Codes, report_pairs, resolve_column
 from ledgersolve.contract.columns import quoted, shown
@@ -103,7 +103,8 @@ def _check_order(book: Book, periods: CheckedList) -> None:
             book.faults.add(periods.sheet, periods.place(row, "Start"), "Start", Fault(
                 "periods out of order", f"{start}, after {last} in row {periods.rows[last_row]}",
                 "periods in order, each starting after the one before",
-                "Correct the date, or sort the rows by Start."))
+                "Correct the date, or sort the rows by Start.", test=mended.after_those_above(
+                    periods.columns["Start"].column, periods.title_row + 1)))
         else:
             last, last_row = start, row
 
@@ -151,7 +152,8 @@ def _check_lots(book: Book, items: CheckedList) -> None:
         if least[row] > most[row]:
             book.faults.add(items.sheet, items.place(row, "Least lot"), "Least lot", Fault(
                 "rules conflict", f"a Least lot of {shown(least[row])} above the Most lot {shown(most[row])}",
-                "a Least lot of at most the Most lot", "Change one of the two."))
+                "a Least lot of at most the Most lot", "Change one of the two.",
+                test=mended.at_most(mended.beside(items.columns["Most lot"].column))))
         elif multiple[row] > 0 and not _fits(least[row], most[row], multiple[row]):
             book.faults.add(items.sheet, items.place(row, "Lot multiple"), "Lot multiple", Fault(
                 "rules conflict", f"no multiple of {shown(multiple[row])} from Least lot {shown(least[row])} "
@@ -173,7 +175,8 @@ def _check_stock(book: Book, items: CheckedList) -> None:
         for row in np.flatnonzero(least > most).tolist():
             book.faults.add(items.sheet, items.place(row, title), title, Fault(
                 "rules conflict", f"a {title} of {shown(least[row])} above the Most stock {shown(most[row])}",
-                f"a {title} of at most the Most stock", "Change one of the two."))
+                f"a {title} of at most the Most stock", "Change one of the two.",
+                test=mended.at_most(mended.beside(items.columns["Most stock"].column))))
 
 
 def _check_holding(book: Book, items: CheckedList, costs: PairRows | None) -> None:
@@ -193,17 +196,20 @@ def _check_holding(book: Book, items: CheckedList, costs: PairRows | None) -> No
             "not negative" if title == "Holding cost" else "static"))
         return
     if values.number(c.PERIODS_A_YEAR) is None and c.PERIODS_A_YEAR not in values.bad:
-        faults.add(values.sheet, values.place(c.PERIODS_A_YEAR) or values.place(c.HOLDING_RATE),
-                   c.PERIODS_A_YEAR,
-                   Fault("half a rule", f"{c.HOLDING_RATE} without {c.PERIODS_A_YEAR}",
-                         "the number of periods in a year", f"Give {c.PERIODS_A_YEAR} too (12 for months)."))
+        empty, given = values.place(c.PERIODS_A_YEAR), values.place(c.HOLDING_RATE)
+        entry = next(entry for entry in book.contract.settings if entry.title == c.PERIODS_A_YEAR)
+        test = mended.number_or_none(entry, mended.at(*given)) if empty and given else ""
+        faults.add(values.sheet, empty or given, c.PERIODS_A_YEAR, Fault(
+            "half a rule", f"{c.HOLDING_RATE} without {c.PERIODS_A_YEAR}", "the number of periods in a year",
+            f"Give {c.PERIODS_A_YEAR} too (12 for months).", test=test))
     unvalued = missing & ~items.good("Unit value") & ~items.bad("Unit value")
     title = _first(items, "Unit value", "Holding cost", "Item")
     rows = np.flatnonzero(unvalued).tolist()
+    named = [column.column for name, column in items.columns.items() if name in ("Unit value", "Holding cost")]
     faults.many(items.sheet, [items.place(row, title) for row in rows], title, lambda _: Fault(
         "holding cost not known", "neither a Holding cost nor a Unit value for the yearly rate",
         "a Unit value, or a Holding cost", "Fill in one of the two.",
-        "not negative" if title == "Unit value" else "static"))
+        test=mended.any_number(*map(mended.beside, named)) if named else ""))
 
 
 def _costed(book: Book, items: CheckedList, costs: PairRows | None) -> Flags:

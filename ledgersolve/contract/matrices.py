@@ -6,7 +6,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from ledgersolve.contract import values
+from ledgersolve.contract import mended, values
 from ledgersolve.contract.codes import Codes, resolve
 from ledgersolve.contract.columns import Entry, Holds, MatrixSheet, quoted
 from ledgersolve.contract.faults import Fault, Faults, Place
@@ -97,11 +97,19 @@ def _side(sheet: str, title: str, cells: Sequence[Cell], lines: Sequence[int], f
         if code in met:
             faults.add(sheet, (cell.row, cell.column), title, Fault(
                 "duplicate code", f"{quoted(code)}, which stands in {met[code].address} already", "each code once",
-                "Take one of the two out, or rename it."))
+                "Take one of the two out, or rename it.", test=mended.unique(_range(cells))))
         elif number >= 0:
             met[code] = cell
             found[line] = number
     return found
+
+
+def _range(cells: Sequence[Cell]) -> str:
+    """The cells of the codes along one side, as formulas name them."""
+    first, last = cells[0], cells[-1]
+    if first.column == last.column:
+        return mended.down(first.column, first.row, last.row)
+    return mended.along(first.row, first.column, last.column)
 
 
 def _named_lines(sheet: str, title: str, cells: Sequence[Cell], lines: Sequence[int], filled: set[int],

@@ -4,7 +4,7 @@ import re
 from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass, field
 
-from ledgersolve.contract import settings, values
+from ledgersolve.contract import mended, settings, values
 from ledgersolve.contract.columns import Entry, Holds, Value, quoted, shown
 from ledgersolve.contract.faults import Fault, Faults, Place
 from ledgersolve.contract.models import outside
@@ -119,7 +119,7 @@ def read_settings(sheet: str, titles: TitleRow, rows: Sequence[Mapping[str, Cell
     for name, cell in twice:
         faults.add(sheet, (cell.row, cell.column), name, Fault(
             "setting twice", f"the setting {quoted(cell.value)} a second time", f"one row for {name}",
-            "Take one of the two rows out."))
+            "Take one of the two rows out.", test=mended.unique(mended.down(cell.column, titles.row + 1, cell.row))))
     for entry in entries:
         if entry.title in found:
             _take(entry, found[entry.title], result, faults, date1904)
@@ -143,7 +143,8 @@ def _take(entry: Entry, row: Mapping[str, Cell], result: SettingValues, faults: 
         result.typed[entry.title] = "nothing" if cell is None else values.found_in(cell)
         faults.add(result.sheet, (name.row, name.column), entry.title, Fault(
             "unit differs", f"the unit {quoted(unit)}", f"the unit {unit_in(entry.title)}",
-            f"Give the value in {unit_in(entry.title)} and name the setting {entry.title}."))
+            f"Give the value in {unit_in(entry.title)} and name the setting {entry.title}.",
+            test=mended.title(entry.title)))
         return
     if cell is None:
         return
@@ -202,7 +203,7 @@ def _currency(words: str, entry: Entry) -> str | Fault:
     meant = _SIGNS.get(words.casefold()) or (re.sub(r"[^A-Z]", "", code) or None)
     known = meant if meant in MINOR_UNITS else nearest(code, MINOR_UNITS)
     remedy = f"Did you mean {known}?" if known else "Look the code up; euro is EUR, US dollar is USD."
-    return Fault("currency expected", f"{quoted(words)}", entry.expected(), remedy)
+    return mended.watched(Fault("currency expected", f"{quoted(words)}", entry.expected(), remedy), entry)
 
 
 def _report_strangers(sheet: str, strangers: Sequence[Cell], entries: Sequence[Entry],
@@ -236,12 +237,12 @@ def _report_missing(entry: Entry, result: SettingValues, titles: TitleRow, slip:
     if slip is not None:
         faults.add(result.sheet, (slip.row, slip.column), entry.title, Fault(
             "missing setting", f"the setting {quoted(slip.value)}", f"a setting {entry.title}",
-            f"Did you mean {entry.title}? Change the name."))
+            f"Did you mean {entry.title}? Change the name.", test=mended.title(entry.title)))
         return
     place = result.place(entry.title)
     if place is not None:
-        faults.add(result.sheet, place, entry.title, Fault(
-            "required cell empty", "an empty cell", entry.expected(), "Fill the cell.", "filled"))
+        faults.add(result.sheet, place, entry.title, mended.watched(Fault(
+            "required cell empty", "an empty cell", entry.expected(), "Fill the cell."), entry))
     else:
         faults.add(result.sheet, (titles.row, min(titles.headings)), entry.title, Fault(
             "missing setting", f"no row for {entry.title}", f"{entry.title}: {entry.expected()}",

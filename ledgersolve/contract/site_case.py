@@ -1,13 +1,13 @@
 """Checks across the sheets of a site-selection workbook, and its case."""
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
 from ledgersolve.contract import lanes as lane_sources
-from ledgersolve.contract import settings
+from ledgersolve.contract import mended, settings
 from ledgersolve.contract import site_selection as c
 from ledgersolve.contract.book import Book, is_too_large
 from ledgersolve.contract.codes import Codes, report_alike, unknown_code
@@ -85,22 +85,35 @@ def _check_coordinates(book: Book, table: CheckedList) -> None:
             table.sheet, [table.place(row, title) for row in np.flatnonzero(half).tolist()], title,
             lambda _, other=other: Fault(  # type: ignore[misc]  # the default binds the loop's title
                 "half a coordinate", f"an empty cell beside a {other}", "both coordinates or neither",
-                f"Fill in the other half, or clear the {other}.", "filled"))
+                f"Fill in the other half, or clear the {other}.",
+                test=mended.both_or_neither(mended.beside(table.columns[other].column))))
 
 
 def _check_settings(book: Book) -> None:
     """Report settings that cannot hold together."""
     values = book.settings
     fewest, most = values.number("Fewest sites"), values.number("Most sites")
+    other_place = values.place("Most sites")
     if fewest is not None and most is not None and fewest > most:
         book.faults.add(values.sheet, values.place("Fewest sites"), "Fewest sites", Fault(
             "rules conflict", f"Fewest sites {shown(fewest)} above Most sites {shown(most)}",
-            "Fewest sites of at most Most sites", "Change one of the two."))
+            "Fewest sites of at most Most sites", "Change one of the two.",
+            test=mended.at_most(mended.at(*other_place)) if other_place else ""))
     for name, other in ((c.SHARE, c.SHARE_DISTANCE), (c.SHARE_DISTANCE, c.SHARE)):
         if values.number(name) is not None and values.number(other) is None and other not in values.bad:
-            book.faults.add(values.sheet, values.place(name), name, Fault(
-                "half a rule", f"{name} without {other}", f"both {name} and {other}, or neither",
-                f"Give {other} too, or clear this value."))
+            report_half(book, name, other)
+
+
+def report_half(book: Book, given: str, missing: str) -> None:
+    """Report a setting without the one that it needs, at the empty cell where the sheet has a row for it."""
+    values = book.settings
+    empty, place = values.place(missing), values.place(given)
+    entry = next(entry for entry in book.contract.settings if entry.title == missing)
+    test = mended.number_or_none(entry, mended.at(*place)) if empty and place else ""
+    way = f"Give {missing} here" if empty else f"Give {missing} too"
+    book.faults.add(values.sheet, empty or place, missing if empty else given, Fault(
+        "half a rule", f"{given} without {missing}", f"both {given} and {missing}, or neither",
+        f"{way}, or clear {given}.", test=test))
 
 
 def _check_sites(book: Book, sites: CheckedList) -> None:
@@ -111,7 +124,8 @@ def _check_sites(book: Book, sites: CheckedList) -> None:
     book.faults.many(sites.sheet, places, "Least volume", lambda i: Fault(
         "rules conflict",
         f"a Least volume of {shown(least[over[i]])} above the Capacity {shown(capacity[over[i]])}",
-        "a Least volume of at most the Capacity", "Change one of the two."))
+        "a Least volume of at most the Capacity", "Change one of the two.",
+        test=mended.at_most(mended.beside(sites.columns["Capacity"].column))))
     report_alike(sites, "Group", book.faults)
     first_open: dict[str, int] = {}
     for row, (group, rule) in enumerate(zip(sites.texts("Group"), sites.texts("Rule"), strict=True)):
@@ -164,7 +178,7 @@ def _codes(book: Book, table: CheckedList, row: int, title: str, known: Codes | 
             near = nearest(code, known.codes)
             if near is not None or known.whole:
                 book.faults.add(table.sheet, table.place(row, title), title,
-                                unknown_code(code, near, known.sheet), group=code)
+                                replace(unknown_code(code, near, known), test="", tally=""), group=code)
     return tuple(dict.fromkeys(code for code in codes if code in known.number))
 
 

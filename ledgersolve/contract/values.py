@@ -4,11 +4,11 @@ import datetime
 import math
 import re
 
+from ledgersolve.contract import mended
 from ledgersolve.contract.columns import LARGEST, Entry, Holds, quoted, shown
 from ledgersolve.contract.degrees import LATITUDE, LONGITUDE, Coordinate, coordinates
 from ledgersolve.contract.faults import Fault
 from ledgersolve.workbook.cells import Cell, Kind
-from ledgersolve.workbook.problems import Recheck
 from ledgersolve.workbook.text import alike, cell_text, clean, nearest, serial_date
 
 _PLAIN = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?", re.ASCII)
@@ -20,8 +20,7 @@ _DAY_TEXT = re.compile(r"\d{1,4}[./-]\d{1,2}[./-]\d{1,4}", re.ASCII)
 
 DEGREES = "degrees"
 """Unit of the columns that hold coordinates."""
-YES = frozenset({"yes", "y", "true", "1"})
-NO = frozenset({"no", "n", "false", "0"})
+YES, NO = frozenset(mended.YES), frozenset(mended.NO)
 _NOTHING = frozenset({"-", "–", "—", "n/a", "na", "none", "nil", "unlimited", "null", "nan", "inf", "."})
 
 
@@ -61,16 +60,8 @@ def _mixed(text: str, thousands: str, decimal: str) -> tuple[float, ...]:
     return tuple(dict.fromkeys(found))
 
 
-def number_recheck(entry: Entry) -> tuple[Recheck, float | None, float | None]:
-    """How a number cell of this column can show that it is mended."""
-    if entry.low == 0 and not entry.above and entry.high >= LARGEST:
-        return "not negative", None, None
-    return "number", entry.low, entry.high
-
-
 def _number_fault(entry: Entry, kind: str, found: str, remedy: str) -> Fault:
-    recheck, low, high = number_recheck(entry)
-    return Fault(kind, found, entry.expected(), remedy, recheck, low, high)
+    return mended.watched(Fault(kind, found, entry.expected(), remedy), entry)
 
 
 def or_empty(entry: Entry) -> str:
@@ -80,19 +71,17 @@ def or_empty(entry: Entry) -> str:
 
 def cell_fault(cell: Cell, entry: Entry) -> Fault | None:
     """The fault of a cell that holds an error value or a formula without a value; None for others."""
-    recheck: tuple[Recheck, float | None, float | None] = (
-        number_recheck(entry) if entry.numeric else ("no error", None, None)
-    )
     if cell.kind is Kind.ERROR:
-        return Fault("error value", f"the error value {cell.value}", entry.expected(),
-                     f"Mend the formula, or type the value{or_empty(entry)}.", *recheck)
-    if cell.kind is Kind.UNCALCULATED:
-        return Fault(
+        fault = Fault("error value", f"the error value {cell.value}", entry.expected(),
+                      f"Mend the formula, or type the value{or_empty(entry)}.", "no error")
+    elif cell.kind is Kind.UNCALCULATED:
+        fault = Fault(
             "formula never calculated", f"a formula without a result: {quoted(cell.value)}",
             entry.expected(),
-            "Open the workbook in a spreadsheet program, let it calculate, save, and drop it again.",
-            *recheck)
-    return None
+            "Open the workbook in a spreadsheet program, let it calculate, save, and drop it again.", "no error")
+    else:
+        return None
+    return fault if entry.holds in (Holds.TEXT, Holds.CODE, Holds.CODES) else mended.watched(fault, entry)
 
 
 def number(cell: Cell, entry: Entry) -> float | Fault:
@@ -103,8 +92,9 @@ def number(cell: Cell, entry: Entry) -> float | Fault:
         return text_number(clean(str(cell.value)), entry)
     if cell.kind is Kind.DATE:
         day = serial_date(float(cell.value)) or "a date"
-        return _number_fault(entry, "date instead of number", f"the date {day} (number {shown(cell.value)})",
-                             "Type the number and give the cell a number format.")
+        return Fault(  # a formula cannot tell a date from its number: only the next drop can
+            "date instead of number", f"the date {day} (number {shown(cell.value)})", entry.expected(),
+            "Type the number and give the cell a number format.")
     if cell.kind is Kind.BOOLEAN:
         return _number_fault(entry, "number expected", "TRUE" if cell.value else "FALSE", "Type a number.")
     fault = cell_fault(cell, entry)
@@ -203,8 +193,8 @@ def yes_no(word: str, entry: Entry) -> bool | Fault:
         return True
     if word.casefold() in NO:
         return False
-    return Fault("yes or no expected", f"{quoted(word)}", entry.expected(),
-                 f"Type yes or no{or_empty(entry)}.")
+    return mended.watched(Fault("yes or no expected", f"{quoted(word)}", entry.expected(),
+                                f"Type yes or no{or_empty(entry)}."), entry)
 
 
 def choice(words: str, entry: Entry) -> str | Fault:
@@ -215,7 +205,7 @@ def choice(words: str, entry: Entry) -> str | Fault:
             return word
     near = nearest(words, entry.choices)
     remedy = f"Did you mean {quoted(near)}?" if near else f"Type one of these words{or_empty(entry)}."
-    return Fault("unknown word", f"{quoted(words)}", entry.expected(), remedy)
+    return mended.watched(Fault("unknown word", f"{quoted(words)}", entry.expected(), remedy), entry)
 
 
 def date(cell: Cell, entry: Entry, date1904: bool) -> str | Fault:
@@ -230,7 +220,8 @@ def date(cell: Cell, entry: Entry, date1904: bool) -> str | Fault:
         except ValueError:
             pass
     remedy = f"Type a date, or its text as year-month-day such as {entry.example}{or_empty(entry)}."
-    return cell_fault(cell, entry) or Fault("date expected", found_in(cell), entry.expected(), remedy, "date")
+    return cell_fault(cell, entry) or mended.watched(
+        Fault("date expected", found_in(cell), entry.expected(), remedy), entry)
 
 
 def bare_serial(serial: float, entry: Entry, date1904: bool = False) -> Fault:
@@ -238,7 +229,8 @@ def bare_serial(serial: float, entry: Entry, date1904: bool = False) -> Fault:
     day = serial_date(serial, date1904)
     meant = f"Give the cell a date format if {day[:10]} is meant." if day and day > "1950" else ""
     remedy = meant or "Type a date."
-    return Fault("date expected", f"the number {shown(serial)}", entry.expected(), remedy, "date")
+    # a formula cannot tell a date from its number: only the next drop can
+    return Fault("date expected", f"the number {shown(serial)}", entry.expected(), remedy)
 
 
 def found_in(cell: Cell) -> str:

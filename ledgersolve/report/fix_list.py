@@ -6,16 +6,12 @@ from dataclasses import replace
 
 from ledgersolve.report import style
 from ledgersolve.report.inputs import RunFacts
+from ledgersolve.report.live_status import DONE, DROP_AGAIN, TO_FIX, status
 from ledgersolve.report.tables import FOOTER, Column, paragraph, quoted, write_table
-from ledgersolve.workbook.cells import column_letters, column_number
 from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.sheets import LiveFormat, ResultSheet
 
-TO_FIX, DONE, DROP_AGAIN = "to fix", "done", "to fix (*)"
-WIDTHS = (17.0, 8.0, 19.0, 36.0, 32.0, 40.0, 8.0, 13.0, 12.0, 12.0)
-WATCHED_SPANS = 40
-"""At most so many runs of cells of one entry are watched by its status."""
-_LETTERS = "ABCDEFGHIJKLMNOPQRSTUVWXYZ"
+WIDTHS = (17.0, 8.0, 19.0, 38.0, 34.0, 44.0, 8.0, 13.0)
 
 
 def fix_list(name: str, problems: Sequence[Problem], run: RunFacts, title: str) -> ResultSheet:
@@ -84,7 +80,7 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
         Column("count", "Places (number)", [count for _, count in listed], style.number(style.WHOLE), WIDTHS[1]),
     ])
     span = f"H{list_row + 2}:H{list_row + 1 + max(1, len(errors))}"
-    left = sum(1 for problem in errors if _status(problem, 0)[1])
+    left = sum(1 for problem in errors if status(problem)[1])
     sheet.put(row, 3, "Entries mended so far", style.BOLD)
     sheet.put(row, 4, 0, style.number(style.WHOLE), formula=f'=COUNTIF({span},"{DONE}")')
     sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}, {left} of which count themselves "
@@ -95,7 +91,7 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
 
 def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bool) -> None:
     wrapped = style.WRAPPED_CELL
-    status = [_status(problem, place) for place, problem in enumerate(problems, start=row + 1)]
+    live_ones = [status(problem) for problem in problems]
     columns = [
         Column("sheet", "Sheet", [p.sheet or "the workbook" for p in problems], wrapped, WIDTHS[0]),
         Column("cell", "Cell", [p.cell or None for p in problems], style.LINK, WIDTHS[1],
@@ -108,15 +104,9 @@ def _entries(sheet: ResultSheet, problems: Sequence[Problem], row: int, live: bo
                style.number(style.WHOLE), WIDTHS[6]),
     ]
     if live:
-        columns.append(Column("status", "Status", [value for value, _ in status],
+        columns.append(Column("status", "Status", [value for value, _ in live_ones],
                               replace(style.BOLD, align="center"), WIDTHS[7],
-                              [formula for _, formula in status]))
-        limits = replace(style.number("General"), size=9.0, colour=style.QUIET)
-        live_ones = list(zip(problems, status, strict=True))
-        low = [_low(problem) if formula else None for problem, (_, formula) in live_ones]
-        high = [problem.high if formula else None for problem, (_, formula) in live_ones]
-        columns.append(Column("low", "Smallest allowed (value)", low, limits, WIDTHS[8]))
-        columns.append(Column("high", "Largest allowed (value)", high, limits, WIDTHS[9]))
+                              [formula for _, formula in live_ones]))
     write_table(sheet, row, columns)
     if live and problems:
         for word, look in ((DONE, style.FINE), (TO_FIX, style.BAD), (DROP_AGAIN, style.BAD)):
@@ -134,44 +124,3 @@ def _found(problem: Problem) -> str:
 
 def _link(problem: Problem) -> str:
     return f"{quoted(problem.sheet)}!{problem.cell}" if problem.sheet and problem.cell else ""
-
-
-def _status(problem: Problem, row: int) -> tuple[str, str]:
-    """Cached status and its formula for the entry in ``row`` (from 0); "" where only a new drop can tell."""
-    watched = [problem.cell, *problem.more]
-    if problem.recheck == "static" or not problem.sheet or not problem.cell or problem.count != len(watched):
-        return DROP_AGAIN, ""
-    spans = _spans(watched)
-    if len(spans) > WATCHED_SPANS:
-        return DROP_AGAIN, ""
-    counted = "+".join(_count(problem, f"{quoted(problem.sheet)}!{span}", row + 1) for span in spans)
-    wanted = "0" if problem.recheck in ("empty", "no error") else f"$G{row + 1}"
-    return TO_FIX, f'IF({counted}={wanted},"{DONE}","{TO_FIX}")'
-
-
-def _count(problem: Problem, span: str, row: int) -> str:
-    """Count of the span's cells that are right (for ``empty`` and ``no error``: that are still wrong)."""
-    if problem.recheck in ("filled", "empty"):
-        return f"COUNTA({span})"
-    if problem.recheck == "no error":
-        return f"SUMPRODUCT(ISERROR({span})*1)"
-    tests = [f'{span},"{sign}"&${letter}{row}' for sign, letter, limit in
-             ((">=", "I", _low(problem)), ("<=", "J", problem.high)) if limit is not None]
-    return f"COUNTIFS({','.join(tests)})" if tests else f"COUNT({span})"
-
-
-def _low(problem: Problem) -> float | None:
-    return 0.0 if problem.recheck == "not negative" else problem.low
-
-
-def _spans(cells: Sequence[str]) -> list[str]:
-    """Cells as runs of one column, in sheet order: ``D8``, ``D10:D14``."""
-    parsed = sorted((column_number(cell.rstrip("0123456789")), int(cell.lstrip(_LETTERS))) for cell in set(cells))
-    runs: list[list[int]] = []
-    for column, row in parsed:
-        if runs and runs[-1][0] == column and runs[-1][2] + 1 == row:
-            runs[-1][2] = row
-        else:
-            runs.append([column, row, row])
-    return [f"${column_letters(c)}${first}" + ("" if first == last else f":${column_letters(c)}${last}")
-            for c, first, last in runs]

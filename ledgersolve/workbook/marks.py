@@ -12,7 +12,7 @@ from typing import NamedTuple
 from ledgersolve.workbook import splice
 from ledgersolve.workbook.cells import column_letters
 from ledgersolve.workbook.markup import MAIN, whole
-from ledgersolve.workbook.problems import Problem, Recheck
+from ledgersolve.workbook.problems import Problem, Recheck, asked
 from ledgersolve.workbook.splice import Edits, Element
 from ledgersolve.workbook.stream import corner_of
 
@@ -57,6 +57,10 @@ class _Rule(NamedTuple):
     recheck: Recheck
     low: float | None
     high: float | None
+    above: bool
+    may_be_empty: bool
+    test: str
+    typed: str
 
 
 def by_sheet(problems: Iterable[Problem]) -> dict[str, list[Problem]]:
@@ -141,7 +145,8 @@ def _rules(problems: Sequence[Problem]) -> Mapping[_Rule, list[list[tuple[int, i
         for cell in (problem.cell, *problem.more):
             place = corner_of(cell)
             if place is not None:
-                rule = _Rule(not problem.is_error, place[1], problem.recheck, problem.low, problem.high)
+                rule = _Rule(not problem.is_error, place[1], problem.recheck, problem.low, problem.high,
+                             problem.above, problem.may_be_empty, problem.test, problem.typed)
                 rows.setdefault(rule, set()).add(place[0])
     found = {}
     for rule in sorted(rows, key=lambda rule: (rule.notice, rule.column, rule.recheck, str(rule[3:]))):
@@ -170,20 +175,27 @@ def _written(rules: Mapping[_Rule, list[list[tuple[int, int]]]], first: int, pre
             area = " ".join(f"{letters}{start}" if start == end else f"{letters}{start}:{letters}{end}"
                             for start, end in ranges)
             formula = splice.escaped(
-                f'AND({_condition(rule, f"{letters}{ranges[0][0]}")},"{FLAG}"="{FLAG}")')
+                f'AND({_condition(rule, letters, ranges[0][0])},"{FLAG}"="{FLAG}")')
             style = notice_format if rule.notice else error_format
             yield (f'<conditionalFormatting{spaced} sqref="{area}"><cfRule type="expression" dxfId="{style}" '
                    f'priority="{priority}"><formula>{formula}</formula></cfRule></conditionalFormatting>')
             priority += 1
 
 
-def _condition(rule: _Rule, cell: str) -> str:
+def _condition(rule: _Rule, letters: str, row: int) -> str:
     """Formula that is true while the cell is wrong, and never an error value (that would hide the mark)."""
-    if rule.recheck != "number" or (rule.low is None and rule.high is None):
-        return _CONDITIONS[rule.recheck].format(cell=cell)
-    limits = [f"{cell}<{rule.low:.15g}"] if rule.low is not None else []
-    limits += [f"{cell}>{rule.high:.15g}"] if rule.high is not None else []
-    return f"IF(ISNUMBER({cell}),OR({','.join(limits)}),TRUE)"
+    cell = f"{letters}{row}"
+    if rule.test and "!" not in rule.test:
+        return f"NOT({asked(rule.test, '', letters, row)})"
+    if rule.typed:
+        typed = rule.typed.replace('"', '""')
+        return f'IFERROR(EXACT(TRIM({cell}),"{typed}"),TRUE)'
+    wrong = _CONDITIONS[rule.recheck].format(cell=cell)
+    if rule.recheck == "number" and (rule.low is not None or rule.high is not None):
+        limits = [f"{cell}<{'=' if rule.above else ''}{rule.low:.15g}"] if rule.low is not None else []
+        limits += [f"{cell}>{rule.high:.15g}"] if rule.high is not None else []
+        wrong = f"IF(ISNUMBER({cell}),OR({','.join(limits)}),TRUE)"
+    return f"IF(ISBLANK({cell}),FALSE,{wrong})" if rule.may_be_empty else wrong
 
 
 def _shifted(tail: str, place: int, shift: int) -> tuple[str, int]:

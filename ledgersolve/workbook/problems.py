@@ -1,5 +1,6 @@
 """A fault or a notice as a value: where, what was found, what is expected, what to do."""
 
+import re
 from dataclasses import dataclass
 from typing import Literal
 
@@ -15,6 +16,11 @@ Recheck = Literal[
     "static",        # needs other data: only a new drop can tell
 ]
 """How the cell itself can show, without us, that the fault is mended."""
+
+CELL, ROW, ABOVE, OWN = "{cell}", "{row}", "{above}", "{own}"
+"""In ``Problem.test``: the cell, its row, the row above it, and what stands before references to its own sheet."""
+
+_BLANKS = re.compile("|".join(map(re.escape, (CELL, ROW, ABOVE, OWN))))
 
 
 @dataclass(frozen=True)
@@ -40,6 +46,19 @@ class Problem:
         See ``Recheck``.
     low, high
         Limits for ``recheck == "number"``: the cell is right once it holds a number within them.
+    above
+        Whether ``low`` itself is too small.
+    may_be_empty
+        Whether an empty cell is right as well.
+    test
+        A formula that is true once a cell is right and never an error; "" where ``recheck`` says it all. It is
+        asked in place of ``recheck`` where the entry has few cells.
+    tally
+        A formula that counts the right cells of a run of cells, which stands in it as ``CELL``; "" where ``recheck``
+        says how.
+    typed
+        Where the test looks at other sheets, which marks cannot do: the text that is wrong. The mark stays as
+        long as it stands there.
     """
 
     severity: Severity
@@ -55,6 +74,11 @@ class Problem:
     recheck: Recheck = "static"
     low: float | None = None
     high: float | None = None
+    above: bool = False
+    may_be_empty: bool = False
+    test: str = ""
+    tally: str = ""
+    typed: str = ""
 
     @property
     def is_error(self) -> bool:
@@ -72,6 +96,12 @@ class Problem:
             "expected": self.expected,
             "remedy": self.remedy,
         }
+
+
+def asked(test: str, own: str, column: str, row: int, mark: str = "") -> str:
+    """The test of one cell. ``own`` stands before references to its sheet, ``mark`` before row and column."""
+    meant = {CELL: f"{own}{mark}{column}{mark}{row}", ROW: f"{mark}{row}", ABOVE: f"{mark}{row - 1}", OWN: own}
+    return _BLANKS.sub(lambda match: meant[match[0]], test)
 
 
 class UnreadableWorkbookError(Exception):
