@@ -11,7 +11,7 @@ import stat
 import sys
 import time
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from functools import lru_cache, partial
 from pathlib import Path
 
@@ -184,23 +184,28 @@ class Settler:
         return watched
 
     def _judge(self, entry: Entry, owner: str, marks: dict[str, float], shut: str) -> Drop:
+        """One drop. What rights say is only told: the rename is the test, and it is tried all the same."""
+        watched = self._known(entry, self.clock())
+        drop = self._judge_file(entry, owner, marks, watched)
+        warning = shut or ("" if watched.readable else _UNREADABLE)
+        if not warning or not entry.is_file:
+            return drop
+        # a copy program may give a file its rights last, so that is told once it stays so
+        stays = self.clock() - watched.unchanged_since >= self.patience.quiet
+        tried = watched.refusals > 0 and not drop.ready
+        return replace(drop, why=warning, alert=bool(shut) or stays, blocked=tried)
+
+    def _judge_file(self, entry: Entry, owner: str, marks: dict[str, float], watched: _Watched) -> Drop:
         now = self.clock()
-        watched = self._known(entry, now)
         found = partial(Drop, entry.path, owner, entry.status.st_size, watched.first_seen)
         if not entry.is_file:
             return found(False, f"{_kind_words(entry)}; it is never read", alert=True, blocked=True)
-        if shut:
-            return found(False, shut, alert=True, blocked=True)
-        quiet = now - watched.unchanged_since
-        if not watched.readable:  # a copy program may give the rights last
-            tell = quiet >= self.patience.quiet
-            left = math.inf if tell else self.patience.quiet - quiet
-            return found(False, _UNREADABLE, alert=tell, blocked=tell, look_in=left)
         if now < watched.next_try:
             return _held_back(found, watched, now)
         for mark in owner_marks(entry.name):
             if marks.get(mark, self.patience.open_elsewhere) < self.patience.open_elsewhere:
                 return found(False, "open in a spreadsheet program", blocked=True)
+        quiet = now - watched.unchanged_since
         shortest = min(self.patience.quiet, self.patience.sure_quiet)
         if quiet < shortest:
             return found(False, "still being copied", look_in=shortest - quiet)
