@@ -159,8 +159,8 @@ def test_late_stretches_and_losses_are_listed_with_their_cost() -> None:
         ("I1", "I1", "late", "1", "2", 5.0, pytest.approx(5 / 14), 20.0),
         ("I2", "I2", "lost", "1", "1", 3.0, pytest.approx(3 / 4), 12.0),
     )
-    assert answer.words == ("Demand is late for 1 item (I1), at a cost of EUR 20. "
-                            "Demand is lost for 1 item (I2), at a cost of EUR 12.")
+    assert answer.words == ("Demand is late for 1 item (I1), at a cost of 20.00\u00a0EUR. "
+                            "Demand is lost for 1 item (I2), at a cost of 12.00\u00a0EUR.")
     assert answer.headline
 
 

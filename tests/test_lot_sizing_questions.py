@@ -90,7 +90,7 @@ def test_a_plan_that_is_not_the_best_is_told_what_a_dropped_lot_saves() -> None:
     """A needless second setup of 8 against 3 of stock: the words say that 5 could be saved, and where."""
     case = plain_case([[10, 3]], 8.0, 1.0)
     answer = why_this_lot(case, plan_from_made(case, [[10, 3]]), LIMITS.start())
-    assert "EUR 5 less without the lot of I1 in 2: it is not yet the best" in answer.words
+    assert "5.00\u00a0EUR less without the lot of I1 in 2: it is not yet the best" in answer.words
     assert answer.rows[0][5] == pytest.approx(-5)
 
 

@@ -21,12 +21,24 @@ def against_rules(case: Case, plan: Plan, cost: float) -> Answered:
         fits = "yes" if checked.ok else "no: " + ", ".join(broken).lower()
         hours = float(resource_need(case, other.made).sum()) if case.resources else None
         rows.append((name, checked.total, checked.total - cost, float(other.setups), hours, fits))
-    kept = [row for row in rows[1:] if row[5] == "yes"]
-    words = "None of the rules of thumb keeps all rules of the workbook."
+    thumbs = {name for name, _ in RULES}
+    kept = [row for row in rows if row[0] in thumbs and row[5] == "yes"]
+    words = _breaking(case, rows)
     if kept:
         best = min(kept, key=lambda row: float(str(row[1])))
-        words = (f"The best rule of thumb that keeps every rule ({best[0]}) costs "
-                 f"{money(case, float(str(best[2])))} more than this plan.")
+        extra = float(str(best[2]))
+        words = (f"The best rule of thumb that keeps every rule ({best[0]}) costs {money(case, abs(extra))} "
+                 f"{'more' if extra >= 0 else 'less'} than this plan.")
     columns = (Column("Plan"), Column("Cost", "money"), Column("More than this plan", "money"),
                Column("Setups", "number"), Column("Time on resources", "number"), Column("Keeps every rule"))
-    return Answered("What would rules of thumb cost?", words, columns, tuple(rows), headline=True)
+    return Answered("What would rules of thumb cost?", words, columns, tuple(rows), headline=bool(kept))
+
+
+def _breaking(case: Case, rows: list[tuple[str | float | None, ...]]) -> str:
+    """Say of plans of which none keeps every rule what the cheapest rule of thumb breaks all the same."""
+    rules = [row for row in rows[1:] if row[0] != "Today's plan"]
+    name, _, more, _, _, fits = min(rules, key=lambda row: float(str(row[1])))
+    extra = float(str(more))
+    cost = f"{money(case, abs(extra))} {'more' if extra >= 0 else 'less'} than this plan"
+    return (f"No rule of thumb keeps all rules of the workbook. The cheapest one ({name}) costs {cost} and breaks "
+            f"{str(fits).removeprefix('no: ')}.")

@@ -5,7 +5,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from ledgersolve.findings import Answered, Column
+from ledgersolve.findings import NOT_ANSWERED, Answered, Column
 from ledgersolve.lot_sizing.audit import audit
 from ledgersolve.lot_sizing.bound import price_bound
 from ledgersolve.lot_sizing.case import Case, Floats
@@ -29,7 +29,8 @@ HOURS_SHARE = 0.4
 """Share of the time for hours with the plan's setups; the rest is for re-planning."""
 MORE = 0.1
 """Part of a resource's time that is given to it, or allowed as overtime, in addition."""
-NO_TIME = "not answered in the time given"
+TINY = 1e-6
+"""Savings below this share of the plan's cost are rounding."""
 
 COLUMNS = (Column("What"), Column("Saves at least", "money"), Column("and at most", "money"),
            Column("How it was found"))
@@ -52,32 +53,69 @@ def bottlenecks(case: Case, solved: Solved[Plan], clock: Clock) -> Answered:
         return Answered(question, "No resource limits the plan.", COLUMNS)
     cells, resources = _full_cells(case, solved.plan, solved), _short(case, solved.plan)
     if not resources:
-        return Answered(question, "There is time enough for every plan: more of it would save nothing.", COLUMNS)
+        enough = "There is time enough for every plan: more of it would save nothing."
+        part = "Not asked: the resources that may limit the plan have no limit in some periods."
+        words = part if binding(case).any() else enough
+        return Answered(question, words, COLUMNS)
     asker = _Asker(case, solved.plan, solved.cost, solved.prices, clock)
     hours = [(cell, asker.same_setups(*cell)) for cell in cells[:MOST_PERIODS]
              if clock.left() > (1 - HOURS_SHARE) * clock.limits.seconds]
     paid = [r for r in resources if case.overtime_limit[r] > 0]
     asker.asks = len(resources) + len(paid) + 1 + RE_PLANNED
-    rows = [_row(*told) for r in resources for told in _more_time(case, asker, r)]
-    rows.append(_row(*_earlier(case, asker)))
-    whole = [_best(saving, asker.one_more(*cell)) if k < RE_PLANNED else saving
-             for k, (cell, saving) in enumerate(hours)]
-    rows += [_row(f"one more time unit of {case.resources[r]} in {case.periods[t]}", saving)
-             for ((r, t), _), saving in zip(hours, whole, strict=True)]
-    return Answered(question, _words(case, cells, rows), COLUMNS, tuple(rows), headline=True)
+    told = [one for r in resources for one in _more_time(case, asker, r)]
+    told.append(_earlier(case, asker))
+    told += [(f"one more time unit of {case.resources[r]} in {case.periods[t]}",
+              _best(saving, asker.one_more(r, t)) if k < RE_PLANNED else saving)
+             for k, ((r, t), saving) in enumerate(hours)]
+    shown = [(what, _worth_telling(saving, TINY * abs(solved.cost))) for what, saving in told]
+    words = " ".join([_full_words(case, cells), *_saving_words(case, shown, len(cells) - len(hours))])
+    answered = bool(cells) or any(saving.low is not None or saving.high is not None for _, saving in shown)
+    return Answered(question, words, COLUMNS, tuple(_row(*one) for one in shown), headline=answered)
 
 
-def _words(case: Case, cells: list[tuple[int, int]], rows: list[Row]) -> str:
-    words = "No resource is full in any period."
-    if cells:
-        r, t = min(cells, key=lambda cell: cell[1])
-        count = "1 period of a resource is" if len(cells) == 1 else f"{len(cells)} periods of resources are"
-        words = f"{count} full, the first one {case.resources[r]} in {case.periods[t]}."
-    gains = [(row[1], str(row[0])) for row in rows if isinstance(row[1], float)]
+def _worth_telling(saving: _Saving, tiny: float) -> _Saving:
+    """Drop a saving of nothing at least, which says nothing: as much holds before any re-planning."""
+    if saving.low is None or saving.low > tiny:
+        return saving
+    if saving.high is None:
+        return replace(saving, low=None, how=NOT_ANSWERED)
+    if saving.high <= tiny:
+        return replace(saving, low=0.0, high=0.0)
+    return replace(saving, low=None, how=f"not known yet: between nothing and that; {saving.how}")
+
+
+def _full_words(case: Case, cells: list[tuple[int, int]]) -> str:
+    if not cells:
+        return "No resource is full in any period."
+    r, t = min(cells, key=lambda cell: cell[1])
+    count = "1 period of a resource is" if len(cells) == 1 else f"{len(cells)} periods of resources are"
+    return f"{count} full, the first one {case.resources[r]} in {case.periods[t]}."
+
+
+def _saving_words(case: Case, shown: list[tuple[str, _Saving]], not_asked: int) -> list[str]:
+    """Sentences about what the changes save: of all of them only where all are known, and of what is missing."""
+    gains = [(saving.low, what, saving) for what, saving in shown if saving.low is not None and saving.low > 0]
+    missing = [what for what, saving in shown if saving.how == NOT_ANSWERED]
+    unknown = [(saving.high, what) for what, saving in shown if saving.low is None and saving.high is not None]
+    nothing = [what for what, saving in shown if saving.low == 0.0]
+    words = []
     if gains:
-        most, what = max(gains)
-        words += (f" Most is saved by {what}: {money(case, most)} at least." if most >= 0.5 else
-                  " No change that was asked about is known to save anything.")
+        most, what, best = max(gains, key=lambda gain: gain[0])
+        least = "" if best.high == best.low else " at least"
+        surely = all(one is best or (one.high is not None and one.high <= most) for _, one in shown)
+        rank = "Most" if surely else "Most, as far as is known,"
+        words.append(f"{rank} is saved by {what}: {money(case, most, 'down' if least else 'nearest')}{least}.")
+    elif nothing and len(nothing) == len(shown):
+        words.append("No change that was asked about saves anything.")
+    elif unknown:
+        most, what = max(unknown)
+        words.append(f"How much the changes save is not known yet; the most it can be is {money(case, most, 'up')} "
+                     f"({what}).")
+    if missing:
+        words.append(f"{NOT_ANSWERED.capitalize()}: {'; '.join(missing[:3])}"
+                     f"{f'; and {len(missing) - 3} more' if len(missing) > 3 else ''}.")
+    if not_asked > 0:
+        words.append(f"{not_asked} of the full periods {'was' if not_asked == 1 else 'were'} not asked about.")
     return words
 
 
@@ -149,9 +187,11 @@ class _Asker:
         seconds = self.clock.left() / max(self.asks, 1)
         self.asks -= 1
         if seconds <= 0.02:
-            return _Saving(None, None, NO_TIME)
+            return _Saving(None, None, NOT_ANSWERED)
         begun = start or self._begun(changed, seconds / 4)
         found = solve(changed, Limits(0.75 * seconds, 1e-6, self.clock.limits.cancelled), begun)
+        if found.cost is None and found.bound is None:
+            return _Saving(None, None, NOT_ANSWERED)
         low = None if found.cost is None else max(0.0, self.cost - (found.cost - anyway))
         high = None if found.bound is None else max(low or 0.0, self.cost - (found.bound - anyway))
         exact = low is not None and high is not None and high - low <= 1e-6 * self.cost
@@ -181,7 +221,7 @@ def _more_time(case: Case, asker: _Asker, resource: int) -> Iterator[tuple[str, 
     what = f"a tenth more time of {name} in every period"
     if not case.overtime_limit[resource] > 0:
         what += ", or as much overtime before its pay"
-    yield what, _per_hour(case, resource, saving)
+    yield what, _per_hour(asker, resource, saving)
     if case.overtime_limit[resource] > 0:
         limit = case.overtime_limit.copy()
         limit[resource] += MORE * float(finite.mean())
@@ -190,15 +230,19 @@ def _more_time(case: Case, asker: _Asker, resource: int) -> Iterator[tuple[str, 
                asker.re_planned(replace(case, overtime_limit=limit)))
 
 
-def _per_hour(case: Case, resource: int, saving: _Saving) -> _Saving:
+def _per_hour(asker: _Asker, resource: int, saving: _Saving) -> _Saving:
     """Add what a time unit of the additional time is worth on average: the most that overtime may cost."""
     if saving.plan is None or saving.low is None:
         return saving
+    case = asker.case
     over = resource_need(case, saving.plan.made)[resource] - case.capacity[resource]
     used = float(np.clip(over, 0.0, MORE * case.capacity[resource]).sum())
     if not used > 1e-6:
         return saving
-    worth = f"{used:,.1f} time units of it are used, worth {case.currency} {saving.low / used:,.2f} each"
+    if saving.low <= TINY * asker.cost:
+        return saving
+    least = "" if saving.low == saving.high or saving.how.endswith("exact") else "at least "
+    worth = f"{used:,.1f} time units of it are used, worth {least}{case.currency} {saving.low / used:,.2f} each"
     return replace(saving, how=f"{saving.how}; {worth}")
 
 

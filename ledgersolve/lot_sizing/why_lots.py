@@ -2,11 +2,12 @@
 
 import numpy as np
 
-from ledgersolve.findings import Answered, Column
+from ledgersolve.findings import NOT_ANSWERED, Answered, Column
 from ledgersolve.lot_sizing.case import Case, Floats
 from ledgersolve.lot_sizing.lot_moves import Change, LotMoves
 from ledgersolve.lot_sizing.plan import Plan
 from ledgersolve.mip import Clock
+from ledgersolve.workbook.figures import Rounding, money_words
 
 MOST_LOTS = 200
 """Lots asked about: half of them the easiest to do without at a guess, half the largest by value."""
@@ -18,9 +19,9 @@ SAME = 1e-6
 Row = tuple[str | float | None, ...]
 
 
-def money(case: Case, value: float) -> str:
-    """An amount in words, whole units of the currency."""
-    return f"{case.currency} {value:,.0f}"
+def money(case: Case, value: float, rounding: Rounding = "nearest") -> str:
+    """An amount in words."""
+    return money_words(value, case.currency, rounding)
 
 
 def why_this_lot(case: Case, plan: Plan, clock: Clock) -> Answered:
@@ -30,13 +31,16 @@ def why_this_lot(case: Case, plan: Plan, clock: Clock) -> Answered:
     for item, period in _worth_asking(case, plan):
         if clock.over():
             break
-        tried.append((item, period, moves.without(item, period), moves.split(item, period)))
+        without, split = moves.without(item, period), moves.split(item, period)
+        if clock.over() and (without is None or split is None):
+            break  # that no way was found may be for want of time
+        tried.append((item, period, without, split))
     tried.sort(key=lambda one: np.inf if one[2] is None else one[2].extra)
     rows = tuple(_row(case, plan, *one) for one in tried)
     columns = (
         Column("Item"), Column("Period"), Column("Lot", "number"), Column("Covers demand of"),
-        Column("Setup cost", "money"), Column("Without it, dearer by", "money"), Column("What could change then"),
-        Column("In two lots, dearer by", "money"), Column("Second lot in"),
+        Column("Setup cost", "money"), Column("Without it, costs more by", "money"), Column("What could change then"),
+        Column("In two lots, costs more by", "money"), Column("Second lot in"),
     )
     return Answered("Why this lot?", _words(case, plan, moves.cost, tried), columns, rows)
 
@@ -67,7 +71,7 @@ def _row(case: Case, plan: Plan, item: int, period: int, without: Change | None,
     return (
         case.items[item], case.periods[period], float(plan.made[item, period]), _covers(case, plan, item, period),
         float(case.setup_cost[item, period]), None if without is None else without.extra,
-        "no other lot can take it over" if without is None else without.free,
+        "no other lot was found to take it over" if without is None else without.free,
         None if split is None else split.extra, second,
     )
 
@@ -76,7 +80,7 @@ def _words(
     case: Case, plan: Plan, cost: float, tried: list[tuple[int, int, Change | None, Change | None]]
 ) -> str:
     if not tried:
-        return "No lot was asked about in the time given."
+        return f"{NOT_ANSWERED.capitalize()}." if plan.setups else "The plan makes no lot."
     said = [f"{len(tried)} of {plan.setups} lots were tried: without their setup, and in two setups."]
     known = [(way.extra, _lot(case, k, t)) for k, t, way, _ in tried if way is not None]
     better = []
@@ -88,14 +92,17 @@ def _words(
         said.append(f"The plan would cost {money(case, most)} less {lot}: it is not yet the best; give it more time.")
     elif known:
         (least, easy), (most, hard) = known[0], known[-1]
-        said.append(f"The easiest to do without is {easy} ({money(case, max(least, 0.0))} more), the hardest of "
-                    f"those that others can take over {hard} ({money(case, most)} more).")
+        said.append(f"Of these, the easiest to do without is {easy} ({money(case, max(least, 0.0))} more), the "
+                    f"hardest of those that others can take over {hard} ({money(case, most)} more).")
     kept = len(tried) - len(known)
     if kept:
-        said.append(f"For {kept} no way was found: no other lot can take them over.")
+        said.append(f"For {kept} no other lot was found to take them over.")
     hardly = _hardly(case, plan, tried)
-    said.append(f"Lots of {_names(hardly)} hardly matter: none is worth more than {100 * HARDLY:.0f} % of what the "
-                "item's setups and stock cost." if hardly else "There is no item whose lots hardly matter.")
+    if hardly:
+        said.append(f"Lots of {_names(hardly)} hardly matter: none is worth more than {100 * HARDLY:.0f} % of what "
+                    "the item's setups and stock cost.")
+    elif len(tried) == plan.setups:
+        said.append("There is no item whose lots hardly matter.")
     return " ".join(said)
 
 
@@ -111,13 +118,14 @@ def _lot(case: Case, item: int, period: int) -> str:
 def _hardly(
     case: Case, plan: Plan, tried: list[tuple[int, int, Change | None, Change | None]]
 ) -> list[str]:
-    """Items of whose lots that others can take over none is worth much, and at least one can be taken over."""
+    """Items all of whose lots were tried: of those that others can take over, one at least, none is worth much."""
     own = (case.setup_cost * plan.setup + case.holding_cost * plan.stock).sum(axis=1)
     most: Floats = np.full(case.n, -np.inf)
     for item, _, without, _ in tried:
         if without is not None:
             most[item] = max(most[item], without.extra)
-    return [case.items[k] for k in np.flatnonzero((most > -np.inf) & (most <= HARDLY * own))]
+    whole = np.bincount([item for item, *_ in tried], minlength=case.n) == plan.setup.sum(axis=1)
+    return [case.items[k] for k in np.flatnonzero(whole & (most > -np.inf) & (most <= HARDLY * own))]
 
 
 def _last(plan: Plan, item: int, period: int) -> int:
