@@ -121,6 +121,20 @@ def test_rules_that_only_clash_together_are_said_to_belong_together() -> None:
     assert any(conflict.remedy.startswith("Raise Capacity: S1 from ") for conflict in found.conflicts)
 
 
+def test_what_still_clashes_once_a_far_customer_is_let_in_is_told_at_once() -> None:
+    """C3 is 60 from its nearest site and promised 50; even then one site cannot reach all three within theirs."""
+    distance = np.array([[10, 90, 90], [90, 10, 90], [90, 90, 60]], dtype=float)
+    case = plain_case([1, 1, 1], np.ones((3, 3)), [1, 1, 1], distance=distance, longest_distance=50.0, most_sites=1)
+    far, *still = explain(case, LIMITS).conflicts
+    assert far.words == "Customer C3 has no allowed site within 50 km; the nearest, S3, is 60 km away."
+    assert "raise the setting from 50 to 60" in far.remedy
+    assert still[0].words == (
+        "Even then: 1 site cannot serve all customers under the other rules.")
+    assert still[0].remedy == "Raise Most sites from 1 to 3."
+    alone = explain(replace(case, most_sites=3), LIMITS).conflicts
+    assert len(alone) == 1
+
+
 def test_where_other_rules_clash_the_closest_plan_bends_them_least() -> None:
     """Sites that must open and a share within distance that nothing reaches: the share is bent, by its amount."""
     distance = np.full((2, 4), 50.0)

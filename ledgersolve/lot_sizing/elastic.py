@@ -126,7 +126,8 @@ class _ItemModel:
         self.lost = add(t, upper=case.demand[0] if np.isfinite(case.lost_cost[0]) else 0.0)
         later = (t - np.arange(t)) / max(t, 1)
         self.unmet = add(t, upper=case.demand[0], cost=1.0 + HELD * later)
-        self.safety, self.closing, self.room = (int(k) for k in add(3, cost=1.0))
+        # where stock cannot be both high and low enough, the limit upwards gives way, not a part of each
+        self.safety, self.closing, self.room = (int(k) for k in add(3, cost=[1.001, 1.001, 1.0]))
         self._balance()
         self._lots(big)
         self._limits()

@@ -12,16 +12,17 @@ from dataclasses import replace
 import numpy as np
 
 from ledgersolve.findings import Conflict, Explanation, Subject
-from ledgersolve.mip import Limits
+from ledgersolve.mip import Clock, Limits
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Flags, Floats
 from ledgersolve.site_selection.closest import closest, figure
-from ledgersolve.site_selection.elastic import Loosened, loosen, loosen_all
+from ledgersolve.site_selection.elastic import Loosened, least_unmet, loosen, loosen_all
 from ledgersolve.site_selection.lanes import Lanes
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.workbook.figures import unit_words
 
 MOST_LISTED = 25
 """Customers listed one by one; the rest is counted."""
+STILL = "Even then: "
 TOGETHER = " No single change is enough: these {} rows belong together."
 
 
@@ -30,13 +31,38 @@ def explain(case: Case, limits: Limits) -> Explanation[Plan]:
     clock = limits.start()
     conflicts = list(_counted(case))
     if not conflicts:
-        alone = loosen(case, clock)
-        conflicts = [_words(case, part) for part in alone or loosen_all(case, clock)]
-        if not alone and len(conflicts) > 1:
-            conflicts = [replace(one, remedy=f"{one.remedy}{TOGETHER.format(len(conflicts))}") for one in conflicts]
-        conflicts.sort(key=lambda conflict: conflict.amount)
+        conflicts = _loosened(case, clock)
+    elif not list(_counted(nearer := _with_nearest(case))) and not _fits(nearer, clock):
+        conflicts += [replace(one, words=f"{STILL}{one.words}") for one in _loosened(nearer, clock)]
     plan, words, shown = closest(case, clock)
     return Explanation(tuple(conflicts), plan, words, shown)
+
+
+def _loosened(case: Case, clock: Clock) -> list[Conflict]:
+    """What the elastic model finds, smallest change first."""
+    alone = loosen(case, clock)
+    conflicts = [_words(case, part) for part in alone or loosen_all(case, clock)]
+    if not alone and len(conflicts) > 1:
+        conflicts = [replace(one, remedy=f"{one.remedy}{TOGETHER.format(len(conflicts))}") for one in conflicts]
+    return sorted(conflicts, key=lambda conflict: conflict.amount)
+
+
+def _with_nearest(case: Case) -> Case:
+    """Give the case in which every customer may be served from its nearest allowed site, however far that is."""
+    if case.distance is None:
+        return case
+    usable = np.isfinite(case.lane_cost) & (case.rule != CLOSED)[:, None]
+    nearest = np.where(usable, case.distance, np.inf).min(axis=0, initial=np.inf)
+    longest = np.maximum(case.promised(), np.where(np.isfinite(nearest), nearest, 0.0))
+    return replace(case, longest_distance=None, customer_longest=np.where(np.isinf(longest), np.nan, longest))
+
+
+def _fits(case: Case, clock: Clock) -> bool:
+    """Whether a plan was found that leaves nothing unmet."""
+    found = least_unmet(case, max(clock.left() / 4, 0.5), clock)
+    if found is None or found.result.values is None:
+        return False
+    return float(found.result.objective) <= 1e-6 * max(1.0, float(case.demand.sum()))
 
 
 def raised(value: float) -> str:
