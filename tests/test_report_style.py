@@ -77,6 +77,14 @@ def test_lists_read_as_sentences(words: list[str], expected: str) -> None:
     assert style.listed(words, 3) == expected
 
 
+def test_long_names_give_way_to_codes() -> None:
+    """A name too long for a sentence is replaced by its code, and cut with a mark where the code is long too."""
+    assert style.short("HAM", "Depot Hamburg") == "Depot Hamburg"
+    assert style.short("HAM", "x" * 41) == "HAM"
+    assert style.short("y" * 50, "x" * 41) == "y" * 39 + "\u2026"
+    assert style.short("HAM", "Depot Hamburg", 8) == "HAM"
+
+
 @pytest.mark.parametrize(("largest", "step"), [(0.0, None), (7.0, 2.0), (4763662.0, 2e6), (95.0, 25.0), (0.03, 0.01)])
 def test_axis_marks_are_round(largest: float, step: float | None) -> None:
     """Marks of an axis stand at round figures, at most four of them to the largest."""

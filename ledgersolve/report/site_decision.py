@@ -70,7 +70,9 @@ def _money(at: SitePlaces, amount: float, rounding: style.Rounding = "nearest") 
 
 
 def _names(at: SitePlaces, which: np.ndarray, most: int = 8) -> str:
-    return style.listed([at.report.case.site_names[j] for j in np.flatnonzero(which).tolist()], most)
+    case = at.report.case
+    which_ones = np.flatnonzero(which).tolist()
+    return style.listed([style.short(case.sites[j], case.site_names[j]) for j in which_ones], most)
 
 
 def _headline(at: SitePlaces) -> str:
@@ -194,7 +196,7 @@ def _changes(at: SitePlaces) -> list[str]:
     movers = _movers(at)
     if movers:
         largest = sorted(movers, key=lambda i: -case.demand[i])[:4]
-        who = style.listed([case.customer_names[i] for i in largest])
+        who = style.listed([style.short(case.customers[i], case.customer_names[i]) for i in largest])
         moved = style.counted(len(movers), "customer gets", "customers get")
         points.append(f"{moved} another main site; the largest: {who}. All of them are shaded in "
                       f"{at.name(names.PLAN_CUSTOMERS)}.")
@@ -215,7 +217,8 @@ def _tasks(at: SitePlaces, most: int = 6) -> list[str]:
     points = []
     for j in sorted(running, key=lambda j: -at.load[j])[:most]:
         part = f", {style.percent_words(at.load[j] / total)} of the demand" if total else ""
-        points.append(f"{case.site_names[j]}: {style.counted(int(served[j]), 'customer')}{part}.")
+        site = style.short(case.sites[j], case.site_names[j])
+        points.append(f"{site}: {style.counted(int(served[j]), 'customer')}{part}.")
     if len(running) > most:
         points.append(f"{len(running) - most} more in {at.name(names.PLAN_SITES)}.")
     return points

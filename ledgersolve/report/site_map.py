@@ -15,6 +15,7 @@ from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Scalar, Series
 
 DRAWN_DELIVERIES = 3000
 LABELLED_SITES = 16
+LONGEST_LABEL = 24
 DRAWN_SITES = 30
 IN_USE = 9
 """Size from which a mark stands for a site in use, today or in the plan."""
@@ -103,8 +104,10 @@ def _site_kinds(at: SitePlaces, sites: Floats) -> list[_Points]:
         ("Site that opens", running & ~was, style.RUST, "triangle", 11, False),
     )
     labelled = int(running.sum()) <= LABELLED_SITES
+    labels = tuple(style.short(code, name, LONGEST_LABEL)
+                   for code, name in zip(case.sites, case.site_names, strict=True))
     return [
-        _Points(name, _listed(sites, np.flatnonzero(which), case.site_names), colour, marker, size, hollow,
+        _Points(name, _listed(sites, np.flatnonzero(which), labels), colour, marker, size, hollow,
                 labelled=labelled and not hollow)
         for name, which, colour, marker, size, hollow in kinds
     ]

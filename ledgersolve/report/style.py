@@ -130,6 +130,12 @@ def listed(words: list[str], most: int = 12) -> str:
     return f"{mark.join(words[:-1])}{';' if mark == '; ' else ''} and {words[-1]}"
 
 
+def short(code: str, name: str, most: int = 40) -> str:
+    """A thing by its name, or by its code where the name is longer than a sentence bears."""
+    shown = name if len(name) <= most else code
+    return shown if len(shown) <= most else f"{shown[:most - 1]}\u2026"
+
+
 def named(code: str, name: str) -> str:
     """A thing by name and code; the code alone where it is the name."""
     return code if not name or name == code else f"{name} ({code})"
