@@ -77,10 +77,12 @@ def _load_checks(at: LotPlaces, tolerance: str) -> Iterator[LiveCheck]:
     case = at.report.case
     if not case.resources:
         return
-    load, available, overtime = (at.load_block(k) for k in range(3))
+    load, capacity, overtime = (at.load_block(key) for key in ("load", "capacity", "overtime"))
     places = f"{style.counted(len(case.resources), 'resource')} in {style.counted(case.t, case.period_unit)}"
-    beyond = f"{load.whole()}>{available.whole()}+{tolerance}*(1+{available.whole()})"
-    yield count_check("Capacity", places, "load within the time available: never above", f"SUMPRODUCT(({beyond})*1)")
+    worked = f"{capacity.whole()}+{overtime.whole()}"
+    beyond = f"{load.whole()}>{worked}+{tolerance}*(1+{worked})"
+    yield count_check("Capacity", places, "load within capacity and the plan's overtime: never above",
+                      f"SUMPRODUCT(({beyond})*1)")
     for r, code in enumerate(case.resources):
         limit = at.figure("Resources", (code,), "Overtime limit", float(case.overtime_limit[r]))
         most = float(at.report.plan.overtime[r].max(initial=0.0))

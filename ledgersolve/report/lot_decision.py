@@ -1,8 +1,10 @@
 """The Decision page of a lot-sizing plan, in words."""
 
+from dataclasses import replace
+
 import numpy as np
 
-from ledgersolve.lot_sizing.case import Floats
+from ledgersolve.lot_sizing.case import Flags, Floats
 from ledgersolve.report import names, style
 from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.decision import (
@@ -20,13 +22,12 @@ from ledgersolve.report.decision import (
     write_decision,
 )
 from ledgersolve.report.ledger import Ledger
-from ledgersolve.report.lot_details import lots_row
+from ledgersolve.report.lot_details import FULL, lots_row
 from ledgersolve.report.lot_places import FIRST_PERIOD, LotPlaces
 from ledgersolve.report.tables import Figure
 from ledgersolve.workbook.figures import unit_words
 from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Series
 
-FULL = 0.9995
 GLOSSARY = (
     ("Cost of the plan", "everything in the ledger, over all periods"),
     ("Lot", "the quantity of an item made in one period, with one setup"),
@@ -198,15 +199,14 @@ def _sure(at: LotPlaces) -> list[str]:
 
 def _binding(at: LotPlaces) -> list[str]:
     case, plan, points = at.report.case, at.report.plan, []
-    hours = case.capacity + plan.overtime
     for r, code in enumerate(case.resources):
-        full = np.flatnonzero(at.need[r] >= FULL * hours[r])
-        if full.size:
-            when = style.listed([case.periods[t] for t in full.tolist()], 8)
-            points.append(f"{code} is full in {case.period_unit} {when}.")
-        over = np.flatnonzero(plan.overtime[r] > 1e-9)
-        if over.size:
-            points.append(f"{code} needs overtime in {style.counted(int(over.size), case.period_unit)}.")
+        full = at.need[r] >= FULL * at.available[r]
+        if full.any():
+            spent = ", with all the overtime allowed" if case.overtime_limit[r] > 0 else ""
+            points.append(f"{code} is full in {case.period_unit} {_when(at, full)}{spent}.")
+        over = (plan.overtime[r] > 1e-9) & ~full
+        if over.any():
+            points.append(f"{code} needs some overtime in {case.period_unit} {_when(at, over)}.")
     for label, which in (
         ("Most stock reached", plan.stock >= FULL * case.most_stock[:, None]),
         ("Least lot reached", plan.setup & (plan.made <= case.least_lot[:, None] / FULL)),
@@ -216,6 +216,11 @@ def _binding(at: LotPlaces) -> list[str]:
         if items:
             points.append(f"{label}: {style.listed([case.item_names[i] for i in items], 6)}.")
     return points[:8] or ["No capacity, stock or lot rule holds the plan back: costs alone decide."]
+
+
+def _when(at: LotPlaces, which: Flags, most: int = 8) -> str:
+    """Periods as a list in a sentence."""
+    return style.listed([at.report.case.periods[t] for t in np.flatnonzero(which).tolist()], most)
 
 
 def _check(at: LotPlaces) -> list[str]:
@@ -243,17 +248,22 @@ def picture(at: LotPlaces) -> Chart:
                          Area(at.made.sheet, row, FIRST_PERIOD, row, last), style.PETROL),)
         return Chart("column", f"Lots by {case.period_unit}", series, 0, 0, x_title=case.period_unit, y_title="lots",
                      legend="", number_format="0", description="Number of lots in each period")
-    hours = case.capacity + at.report.plan.overtime
+    hours = at.available
     r = int(np.argmax((at.need / np.where(hours > 0, hours, np.inf)).mean(axis=1)))
-    load, available = at.load_block(0), at.load_block(1)
+    load, available, capacity = (at.load_block(key) for key in ("load", "available", "capacity"))
     titles = Area(load.sheet, load.first_row - 1, FIRST_PERIOD, load.first_row - 1, last)
-    both = (
+    lines = [
         Series("Load", titles, Area(load.sheet, load.first_row + r, FIRST_PERIOD, load.first_row + r, last),
                style.PETROL),
         Series("Time available", titles,
                Area(load.sheet, available.first_row + r, FIRST_PERIOD, available.first_row + r, last), style.RUST,
                kind="line", marker="square", marker_size=5),
-    )
-    return Chart("column", f"Load of {case.resources[r]} by {case.period_unit}", both, 0, 0, x_title=case.period_unit,
-                 y_title="time units", number_format="#,##0", from_zero=True,
+    ]
+    if case.overtime_limit[r] > 0:
+        lines[1] = replace(lines[1], name="Time available with all overtime")
+        lines.append(Series(
+            "Capacity", titles, Area(load.sheet, capacity.first_row + r, FIRST_PERIOD, capacity.first_row + r, last),
+            style.QUIET, kind="line", dash="dash", marker="circle", marker_size=4))
+    return Chart("column", f"Load of {case.resources[r]} by {case.period_unit}", tuple(lines), 0, 0,
+                 x_title=case.period_unit, y_title="time units", number_format="#,##0", from_zero=True,
                  description="Columns of the load and a line of the time available in each period")

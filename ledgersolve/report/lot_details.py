@@ -64,6 +64,8 @@ def _lot_columns(at: LotPlaces) -> list[Column]:
 
 
 PERIODS_A_PAGE = 22
+FULL = 0.9995
+"""Part of the time available from which a period counts as full."""
 RESOURCE, TIME, SETUP_TIME, FAMILY, LEAST, MOST, MULTIPLE = range(7)
 """Columns to the right of the periods of the lots."""
 SAFETY, CLOSING, MOST_STOCK, OPENING = range(4)
@@ -143,20 +145,23 @@ def plan_load(at: LotPlaces) -> ResultSheet:
     sheet = ResultSheet(at.name(names.PLAN_LOAD), tab_colour=style.MOSS, landscape=True)
     resources = case.resources
     time = ["time units"] * len(resources)
-    load, available, overtime, in_use, part = (at.load_block(k) for k in range(5))
-    hours = np.where(np.isfinite(case.capacity), case.capacity, 0.0) + at.report.plan.overtime
-    share = np.divide(at.need, hours, out=np.zeros_like(at.need), where=hours > 0)
+    load, capacity, overtime, available, part, in_use = (
+        at.load_block(key) for key in ("load", "capacity", "overtime", "available", "part", "in use"))
+    share = np.divide(at.need, at.available, out=np.zeros_like(at.need), where=at.available > 0)
     blocks = [
         ("Load (time units)", load, at.need, at.time_format, lambda r, t: _load_formula(at, r, t), time, "Sum"),
-        ("Time available with overtime (time units)", available, hours, at.time_format,
+        ("Capacity (time units)", capacity, case.capacity, at.time_format,
          lambda r, t: _capacity_formula(at, r, t), time, "Sum"),
-        ("Overtime (time units)", overtime, at.report.plan.overtime, at.time_format, None, time, "Sum"),
-        (f"In use (1 = a setup in the {case.period_unit})", in_use, at.used, style.WHOLE,
-         lambda r, t: _use_formula(at, r, t), ["1 or 0"] * len(resources), "Sum"),
+        ("Overtime in the plan (time units)", overtime, at.report.plan.overtime, at.time_format, None, time, "Sum"),
         ("Load of the time available (%)", part, share, "0%",
          lambda r, t: f"IF({available.here(r, t)}>0,{load.here(r, t)}/{available.here(r, t)},0)",
          ["%"] * len(resources), ""),
+        (f"In use (1 = a setup in the {case.period_unit})", in_use, at.used, style.WHOLE,
+         lambda r, t: _use_formula(at, r, t), ["1 or 0"] * len(resources), "Sum"),
     ]
+    if at.may_overrun:
+        blocks.insert(3, ("Time available: capacity and all overtime allowed (time units)", available, at.available,
+                          at.time_format, lambda r, t: _available_formula(at, r, t), time, "Sum"))
     for title, block, values, number_format, formula, units, total in blocks if resources else []:
         sheet.put(block.first_row - 2, 0, title, style.SECTION)
         write_periods(at, sheet, PeriodTable(block, resources, [""] * len(resources), units, values, number_format,
@@ -164,14 +169,15 @@ def plan_load(at: LotPlaces) -> ResultSheet:
     if case.families:
         _families(at, sheet)
     if resources:
-        shade(sheet, part, "{cell}>=1", MADE)
+        shade(sheet, part, f"{{cell}}>={FULL}", MADE)
         shade(sheet, overtime, "{cell}>0", SOME)
-    words = "Time that lots and setups need on each resource, against its capacity. Full periods are dark."
+    words = ("Time that lots and setups need on each resource, against the time that can be had. Dark periods are "
+             f"full{': all overtime allowed is worked' if at.may_overrun else ''}.")
     return _finished(at, sheet, "Load of resources in the plan", words, frozen_row=0)
 
 
 def _families(at: LotPlaces, sheet: ResultSheet) -> None:
-    case, block = at.report.case, at.load_block(5)
+    case, block = at.report.case, at.load_block("families")
     resource = [case.resources[r] if r >= 0 else None for r in case.family_resource.tolist()]
     time = [at.figure("Families", (code,), "Setup time", float(case.family_time[f]))
             for f, code in enumerate(case.families)]
@@ -193,22 +199,22 @@ def _families(at: LotPlaces, sheet: ResultSheet) -> None:
 
 
 def _load_formula(at: LotPlaces, r: int, t: int) -> str:
-    made, block = at.made, at.load_block(0)
+    made, block = at.made, at.load_block("load")
     code = f"$A{block.first_row + r + 1}"
     own = (f"SUMPRODUCT(({made.side(RESOURCE)}={code})*({made.side(TIME)}*{made.column(t)}"
            f"+{made.side(SETUP_TIME)}*({made.column(t)}>0)))")
     if not at.report.case.families:
         return own
-    family = at.load_block(5)
+    family = at.load_block("families")
     return f"{own}+SUMPRODUCT(({family.side(0)}={code})*{family.side(1)}*{family.column(t)})"
 
 
 def _use_formula(at: LotPlaces, r: int, t: int) -> str:
-    made, block = at.made, at.load_block(3)
+    made, block = at.made, at.load_block("in use")
     code = f"$A{block.first_row + r + 1}"
     counted = f"SUMPRODUCT(({made.side(RESOURCE)}={code})*({made.column(t)}>0))"
     if at.report.case.families:
-        family = at.load_block(5)
+        family = at.load_block("families")
         counted += f"+SUMPRODUCT(({family.side(0)}={code})*{family.column(t)})"
     return f"IF({counted}>0,1,0)"
 
@@ -217,7 +223,16 @@ def _capacity_formula(at: LotPlaces, r: int, t: int) -> str:
     case, origins = at.report.case, at.report.workbook.origins
     ref = origins.matrix_number("Capacity", case.resources[r], case.periods[t])
     ref = ref or origins.number("Resources", (case.resources[r],), "Capacity")
-    return "" if ref is None else f"{ref.formula}+{at.load_block(2).here(r, t)}"
+    return "" if ref is None else ref.formula
+
+
+def _available_formula(at: LotPlaces, r: int, t: int) -> str:
+    case = at.report.case
+    own = at.load_block("capacity").here(r, t)
+    if not case.overtime_limit[r]:
+        return own
+    limit = at.figure("Resources", (case.resources[r],), "Overtime limit", 0.0).formula
+    return f"{own}+{limit}" if limit else ""
 
 
 def _finished(at: LotPlaces, sheet: ResultSheet, title: str, words: str, frozen_row: int = FIRST_ROW) -> ResultSheet:

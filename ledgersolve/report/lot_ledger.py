@@ -143,7 +143,7 @@ def _resource_part(at: LotPlaces, part: str, title: str) -> Part:
     case = at.report.case
     overtime = part == OVERTIME
     costs = case.overtime_cost if overtime else case.use_cost
-    block = at.load_block(2 if overtime else 3)
+    block = at.load_block("overtime" if overtime else "in use")
     amounts = at.report.plan.overtime.sum(axis=1) if overtime else at.used.sum(axis=1)
     unit = "time units" if overtime else f"{case.period_unit}s in use"
     rate = "per time unit" if overtime else f"per {case.period_unit} in use"
@@ -154,7 +154,7 @@ def _resource_part(at: LotPlaces, part: str, title: str) -> Part:
 def _family_part(at: LotPlaces) -> Part:
     case = at.report.case
     group = _listed(at, FAMILY, "Families", "Setup cost", case.families, case.family_cost,
-                    at.family_runs.sum(axis=1), at.load_block(5).total)
+                    at.family_runs.sum(axis=1), at.load_block("families").total)
     return Part(FAMILY, "family setups", f"{case.currency} per family setup", style.WHOLE, [group])
 
 

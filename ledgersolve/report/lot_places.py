@@ -129,12 +129,28 @@ class LotPlaces:
         """Demand of each period that is never met."""
         return self._items(names.PLAN_LOST)
 
-    def load_block(self, number: int) -> Block:
-        """Block on the load sheet: 0 load, 1 time available, 2 overtime, 3 in use, 4 used part, 5 family setups."""
+    @cached_property
+    def may_overrun(self) -> bool:
+        """Whether some resource may work overtime."""
+        return bool((self.report.case.overtime_limit > 0).any())
+
+    @cached_property
+    def available(self) -> Floats:
+        """Shape (R, T): time that can be had: capacity with all overtime that is allowed."""
+        return self.report.case.capacity + self.report.case.overtime_limit[:, None]
+
+    def load_block(self, key: str) -> Block:
+        """Block on the load sheet: load, capacity, overtime, available, part, in use, families.
+
+        Where no overtime is allowed, the time available is the capacity.
+        """
         case = self.report.case
-        height = len(case.resources) + 4
-        first = FIRST_ROW + 1 + number * height
-        rows = len(case.families) if number == 5 else len(case.resources)
+        if key == "available" and not self.may_overrun:
+            key = "capacity"
+        keys = ["load", "capacity", "overtime", *(["available"] if self.may_overrun else []), "part", "in use",
+                "families"]
+        first = FIRST_ROW + 1 + keys.index(key) * (len(case.resources) + 4)
+        rows = len(case.families if key == "families" else case.resources)
         return Block(self.name(names.PLAN_LOAD), first, rows, case.t)
 
     @cached_property
