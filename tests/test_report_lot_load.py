@@ -56,11 +56,11 @@ def test_available_is_what_can_be_had(line) -> None:
 
 
 def test_full_is_full_with_all_overtime(line) -> None:
-    """Only the week with all overtime is full; the one with a little needs overtime, the one at capacity neither."""
+    """Only the week with all overtime is full; one with a little needs it, one at capacity has no regular time left."""
     words = points(line[0])
     assert "LINE is full in week W3, with all the overtime allowed." in words
     assert "LINE needs some overtime in week W2." in words
-    assert "W4" not in words
+    assert "LINE has no regular time left in week W4; the overtime allowed is not used." in words
 
 
 def test_without_overtime_capacity_is_the_limit(tmp_path: Path) -> None:

@@ -89,7 +89,9 @@ def _full_words(case: Case, cells: list[tuple[int, int]]) -> str:
         return "No resource is full in any period."
     r, t = min(cells, key=lambda cell: cell[1])
     count = "1 period of a resource is" if len(cells) == 1 else f"{len(cells)} periods of resources are"
-    return f"{count} full, the first one {case.resources[r]} in {case.periods[t]}."
+    spare = any(case.overtime_limit[resource] > 0 for resource, _ in cells)
+    how = "full in regular time" if spare else "full"
+    return f"{count} {how}, the first one {case.resources[r]} in {case.periods[t]}."
 
 
 def _saving_words(case: Case, shown: list[tuple[str, _Saving]], not_asked: int) -> list[str]:

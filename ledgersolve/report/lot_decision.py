@@ -207,6 +207,10 @@ def _binding(at: LotPlaces) -> list[str]:
         over = (plan.overtime[r] > 1e-9) & ~full
         if over.any():
             points.append(f"{code} needs some overtime in {case.period_unit} {_when(at, over)}.")
+        regular = (at.need[r] >= FULL * case.capacity[r]) & (at.need[r] > 0) & ~full & ~over
+        if regular.any():
+            points.append(f"{code} has no regular time left in {case.period_unit} {_when(at, regular)}; the overtime "
+                          "allowed is not used.")
     for label, which in (
         ("Most stock reached", plan.stock >= FULL * case.most_stock[:, None]),
         ("Least lot reached", plan.setup & (plan.made <= case.least_lot[:, None] / FULL)),
