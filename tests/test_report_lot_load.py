@@ -56,7 +56,7 @@ def test_available_is_what_can_be_had(line) -> None:
 
 
 def test_full_is_full_with_all_overtime(line) -> None:
-    """Only the week with all overtime is full; one with a little needs it, one at capacity has no regular time left."""
+    """Only the week with all overtime is full; one with a little needs it, one at capacity has none to spare."""
     words = points(line[0])
     assert "LINE is full in week W3, with all the overtime allowed." in words
     assert "LINE needs some overtime in week W2." in words
