@@ -149,7 +149,9 @@ class _Run:
         trouble = [] if solved.verdict.has_plan else _trouble(reading, worked)
         with self.step("write"):
             word = "to fix" if trouble else "solved"
-            returned = self.write(word, worked.wanted_names, worked.sheets, trouble)
+            # what only looked wrong may be why there is no plan
+            marks = [*trouble, *reading.problems] if trouble else []
+            returned = self.write(word, worked.wanted_names, worked.sheets, marks)
         return replace(
             self.answer(Outcome.TO_FIX if trouble else Outcome.SOLVED),
             verdict=solved.verdict, total_cost=solved.cost, lower_bound=solved.bound, gap=solved.gap,

@@ -14,6 +14,8 @@ from ledgersolve.workbook.problems import Problem
 from ledgersolve.workbook.sheets import ResultSheet, Style
 
 WIDTHS = (46.0, 16.0, 40.0, 46.0)
+MOST_NOTICES = 12
+"""Notices on the first page of a copy without a plan."""
 
 _SAID = {
     "no plan exists": (
@@ -46,6 +48,7 @@ def no_plan_sheets(given: NoPlan, settled: Mapping[str, str]) -> list[ResultShee
     for words in filter(None, (advice, given.words, _bound(given))):
         paragraph(sheet, row, 0, 3, words, replace(style.TEXT, size=11.0))
         row += 1
+    row = _looks_wrong(sheet, row, given)
     if given.conflicts:
         _conflicts(sheet, row + 1, given)
     row = row + 3 + len(given.conflicts)
@@ -66,6 +69,33 @@ def _bound(given: NoPlan) -> str:
         return ""
     least = style.money_words(given.bound, given.workbook.currency, "down")
     return f"Any plan, if there is one, costs at least {least}."
+
+
+def _looks_wrong(sheet: ResultSheet, row: int, given: NoPlan) -> int:
+    """Cells that looked wrong when the workbook was read: they may be why no plan came of it. Next free row."""
+    notices = [problem for problem in given.workbook.problems if not problem.is_error and problem.cell]
+    if given.what == "failed" or not notices:
+        return row
+    sheet.put(row + 1, 0, "Look at these cells first: they may be the cause", style.SECTION)
+    shown = notices[:MOST_NOTICES]
+    look = style.WRAPPED_CELL
+    write_table(sheet, row + 2, [
+        Column("title", "Column or setting", [p.title or None for p in shown], look, WIDTHS[0]),
+        Column("cell", "Cell", [f"{p.sheet}, {p.cell}" for p in shown], replace(style.LINK, wrap=True), WIDTHS[1],
+               links=[f"{quoted(p.sheet)}!{p.cell}" for p in shown]),
+        Column("found", "What was found", [_found(p) for p in shown], look, WIDTHS[2]),
+        Column("remedy", "What to do, if it is wrong", [p.remedy for p in shown], look, WIDTHS[3]),
+    ])
+    row += 3 + len(shown)
+    if len(notices) > len(shown):
+        sheet.put(row, 0, f"{len(notices) - len(shown)} more stand in the run record.", style.NOTE)
+        row += 1
+    return row + 1
+
+
+def _found(problem: Problem) -> str:
+    more = f" (and {style.counted(problem.count - 1, 'more cell')})" if problem.count > 1 else ""
+    return f"{problem.found}{more}"
 
 
 def _conflicts(sheet: ResultSheet, row: int, given: NoPlan) -> None:
