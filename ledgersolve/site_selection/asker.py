@@ -43,7 +43,13 @@ class Found:
     @property
     def settled(self) -> bool:
         """Whether asking again would not tell more."""
-        return self.impossible or self.exact
+        return self.within(0.0)
+
+    def within(self, gap: float) -> bool:
+        """Whether low and high are so close, as a share of the cost, or no plan exists."""
+        if self.impossible or self.exact:
+            return True
+        return self.low is not None and self.high is not None and self.high - self.low <= gap * abs(self.high)
 
     def joined(self, other: "Found") -> "Found":
         """Give what two outcomes of the same case tell together."""
@@ -98,18 +104,21 @@ class Asker:
         finally:
             self.clock = whole
 
-    def ask(self, changed: Case, key: Hashable = None) -> Found:
-        """Re-solve a changed case within its part of the time; a ``key`` stands for the change and is remembered."""
+    def ask(self, changed: Case, key: Hashable = None, gap: float = GAP) -> Found:
+        """Re-solve a changed case within its part of the time, to a gap that is enough.
+
+        A ``key`` stands for the change and is remembered.
+        """
         before, had = self._known.get(key, (NOTHING, 0.0))
         left = self.clock.left()
         seconds = left * max(1.0 / max(self.asks, 1), LEAST_SHARE)
         if self.whole <= left:
             seconds = max(seconds, self.whole)
         self.asks -= 1
-        if before.settled or left <= LEAST_SECONDS or seconds < ASK_AGAIN * had:
+        if before.within(gap) or left <= LEAST_SECONDS or seconds < ASK_AGAIN * had:
             return before
         seconds = max(seconds, LEAST_SECONDS)
-        told = found(solve(changed, Limits(seconds, GAP, self.clock.limits.cancelled))).joined(before)
+        told = found(solve(changed, Limits(seconds, gap, self.clock.limits.cancelled))).joined(before)
         if key is not None:
             self._known[key] = (told, seconds)
         return told

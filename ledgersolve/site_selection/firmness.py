@@ -228,7 +228,7 @@ def _still_best(asker: Asker, lever: str, percent: int) -> bool | None:
         other = asker.ask(only(case, sites), (lever, percent, number, sites.tobytes()))
         if _cheaper(other, kept):
             return False
-    answer = asker.ask(case, (lever, percent))
+    answer = asker.ask(case, (lever, percent), SAME / 2)
     if answer.impossible or _cheaper(answer, kept):
         return False
     if answer.plan is not None and bool((answer.plan.open == asker.base.open).all()) and answer.exact:
