@@ -169,6 +169,68 @@ def test_the_same_name_a_hundred_times_is_a_hundred_jobs(tmp_path, quick):
     assert faults_after_recovery(tmp_path, ["plan.xlsx"] * 100) == []
 
 
+class Vanishing(Disk):
+    """Takes a drop away right before a look or a change of it, as an analyst does who thinks again."""
+
+    def __init__(self, number: int) -> None:
+        self.left, self.taken = number, False
+
+    def _maybe(self, path: Path) -> None:
+        if path.name == "plan.xlsx" and path.parent.name == "Inbox" and not self.taken:
+            self.left -= 1
+            if self.left < 0:
+                self.taken = True
+                path.unlink()
+
+    def may_read(self, path: Path) -> bool:
+        self._maybe(path)
+        return super().may_read(path)
+
+    def open_to_read(self, path: Path) -> int:
+        self._maybe(path)
+        return super().open_to_read(path)
+
+    def rename(self, source: Path, target: Path) -> None:
+        self._maybe(source)
+        super().rename(source, target)
+
+
+def test_a_drop_taken_away_again_leaves_no_trace(tmp_path, quick, caplog):
+    """Deleted before it is looked at, read or moved: no job, no alert, no storm of errors; others come back."""
+    for number in range(10):
+        folder = tmp_path / str(number)
+        disk = Vanishing(number)
+        watcher = quick_watcher(folder, disk)
+        drop(folder, "plan.xlsx")
+        drop(folder, "good.xlsx")
+        assert run_until_empty(watcher)
+        assert returned(folder) == ["good solved.xlsx"] if disk.taken else ["good solved.xlsx", "plan solved.xlsx"]
+        assert watcher.picture()["alerts"] == []
+        assert names(folder / ".ledgersolve" / "jobs") == []
+        assert verify(folder, settled=True) == []
+        if not disk.taken:
+            break
+    assert number > 2, "the drop must have been looked at several times"
+    assert not disk.taken, "the last folder shows that all moments were gone through"
+    assert [record for record in caplog.records if record.levelname in ("ERROR", "CRITICAL")] == []
+
+
+def test_a_returned_file_dropped_back_is_one_more_job_and_no_loop(tmp_path, quick):
+    """Whoever drops the answer gets an answer to it, under a name that does not grow; nothing goes round."""
+    watcher = quick_watcher(tmp_path)
+    drop(tmp_path, "plan.xlsx")
+    assert run_until_empty(watcher)
+    (answer,) = (tmp_path / "Returned").iterdir()
+    (tmp_path / "Inbox" / answer.name).write_bytes(answer.read_bytes())
+    while names(tmp_path / "Inbox"):
+        watcher.step()
+        watcher.wait()
+    assert run_until_empty(watcher)
+    assert returned(tmp_path) == ["plan solved.xlsx", "plan solved.xlsx"]
+    assert names(tmp_path / "Inbox") == []
+    assert faults_after_recovery(tmp_path, ["plan.xlsx", answer.name]) == []
+
+
 def test_a_drop_replaced_in_mid_solve_is_two_jobs_each_from_its_own_input(tmp_path, quick, monkeypatch):
     """While the first is being solved the second one arrives under the same name."""
 
