@@ -6,10 +6,12 @@ import os
 import zipfile
 from importlib import import_module
 
+import numpy as np
 import openpyxl
 import pytest
 
 from ledgersolve import Outcome, Verdict, check_workbook, job, solve_workbook
+from ledgersolve.mip import Solved
 from ledgersolve.work import AuditError
 from tests.books import lot_book, site_book
 
@@ -261,3 +263,19 @@ def test_questions_get_their_share_of_the_time_limit_and_no_more(tmp_path, monke
     record = run_record(answer)
     assert record["Kept for questions"] == "25 % of 40 seconds: 10 at most, a part of the step solve"
     assert sum(str(label).startswith("Question: ") for label in record) >= 4
+
+
+def test_questions_without_any_answer_stay_off_the_first_page(tmp_path, monkeypatch) -> None:
+    """Every re-solve runs out of time: no "Asked ahead", and the sheet says how many lines have no answer."""
+    out_of_time = Solved(Verdict.NONE_FOUND, None, None, None)
+    monkeypatch.setattr("ledgersolve.site_selection.asker.solve", lambda *_: out_of_time)
+    monkeypatch.setattr("ledgersolve.site_selection.asker.Asker.flip_lows", np.full(2, -np.inf))
+    book = openpyxl.load_workbook(solve_workbook(good(tmp_path, Questions="yes")).returned)
+    texts = {sheet: [str(cell.value) for row in book[sheet].iter_rows() for cell in row if cell.value is not None]
+             for sheet in ("Decision", "Questions answered")}
+    assert "Asked ahead" not in texts["Decision"]
+    assert not any("0.00" in text or "No closed site" in text for text in texts["Questions answered"])
+    said = next(text for text in texts["Questions answered"] if "lines say" in text)
+    count = sum("not answered in the time given" in text for text in texts["Questions answered"])
+    assert int(said.partition(" lines say")[0].rpartition(" ")[2]) <= count
+    assert "Share of time for questions (%)" in said
