@@ -23,7 +23,7 @@ def test_marks_stand_where_their_figures_say(extent: float) -> None:
         for ((start, end), step), shown in zip(axes, scale.formats, strict=True):
             decimals = len(shown.partition(".")[2])
             marks = np.arange(start, end, step)
-            assert 3 <= marks.size <= 12
+            assert 3 <= marks.size <= 14
             assert np.abs(marks - np.array([float(f"{mark:.{decimals}f}") for mark in marks])).max() < 1e-9 * 180
             assert abs(start / step - round(start / step)) < 1e-6
 

@@ -61,6 +61,7 @@ def test_small_amounts_keep_their_minor_units() -> None:
 
 @pytest.mark.parametrize(("values", "expected"), [
     ([1.0, 20.0], "#,##0"), ([1.5], "#,##0.0"), ([0.25, 3.0], "#,##0.00"), ([1 / 3], "#,##0.000"), ([], "#,##0"),
+    ([299.99996, 410.00002], "#,##0"), ([0.12504], "#,##0.000"),
 ])
 def test_figures_show_the_decimals_they_need(values: list[float], expected: str) -> None:
     """A column of quantities has as many decimals as its figures need, at most three."""

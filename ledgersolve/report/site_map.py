@@ -24,7 +24,7 @@ SMALLEST_MAP = 0.02
 """Degrees of latitude that the picture shows at least."""
 MARGIN = 0.06
 """Room around the points, as a part of the picture."""
-MARKS_ACROSS, MARKS_UP = 10, 7
+MARKS_ACROSS, MARKS_UP = 12, 8
 CROWDED = 600
 """Customers beyond which they are drawn as fine dots, without lines to them."""
 PLOT = (0.10, 0.10, 0.87, 0.66)

@@ -71,7 +71,8 @@ def rate_format(currency: str, rates: Iterable[float] = ()) -> str:
 def figure_format(values: Iterable[float], most: int = 3) -> str:
     """Number format for a column of quantities: as many decimals as they need, at most ``most``."""
     needed = 0
-    for value in values:
+    for given in values:
+        value = round(given, most)  # what lies beyond is not shown anyway
         while needed < most and abs(value * 10**needed - round(value * 10**needed)) > 1e-6:
             needed += 1
         if needed == most:
