@@ -156,7 +156,8 @@ def _saving(rule: str, loosened: str, above: Extra) -> _Saving:
 
 def _binding_words(case: Case, plan: Plan, told: list[_Saving]) -> str:
     if not told:
-        return "No capacity, count, distance, share, single source or least volume is at its limit in this plan."
+        return ("No rule of these kinds is at its limit in this plan: capacities, counts, distances, shares, single "
+                "sources, lane limits, least volumes, sites set to open or closed.")
     sentences = []
     exact = [one for one in told if one.exact]
     useful = [(one.least, one) for one in told if one.least is not None and one.least > 0]
@@ -167,8 +168,8 @@ def _binding_words(case: Case, plan: Plan, told: list[_Saving]) -> str:
                          f"{best.loosened}: {money(case, most, 'nearest' if best.exact else 'down')} less"
                          f"{'' if best.exact else ' at least'}.")
     elif len(exact) == len(told):
-        one = f"{told[0].rule}, but that rule" if len(told) == 1 else "Each of these is at its limit, but any of them"
-        sentences.append(f"{one} a little looser saves nothing.")
+        sentences.append(f"Nothing is saved by this: {told[0].name}." if len(told) == 1 else
+                         "Nothing is saved by any of these rules loosened alone.")
     elif exact:
         sentences.append(f"Nothing is saved by this: {listed([one.name for one in exact])}.")
     ranges = [one for one in told if not one.exact and one.most is not None]
