@@ -8,7 +8,7 @@ import pytest
 
 from ledgersolve.mip import Limits, Solved
 from ledgersolve.site_selection.alternatives import promising, runner_up, why_closed, why_open
-from ledgersolve.site_selection.asker import Asker
+from ledgersolve.site_selection.asker import Asker, spoken
 from ledgersolve.site_selection.binding import today_against_plan, what_binds
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Variant, plain_case
 from ledgersolve.site_selection.counts import how_many
@@ -234,3 +234,13 @@ def test_no_time_gives_words_and_no_figures() -> None:
     for row in told["Why each of these sites?"].rows:
         assert row[2] is None
         assert "not answered" in row[4]
+
+
+def test_sentences_name_sites_as_people_do() -> None:
+    """A site goes by its name; by its code where the name is long or would read as two."""
+    case = random_case(1)
+    names = ("Hamburg", "Halls, small", "x" * 41, "Leipzig: old", "Munich")
+    case = replace(case, site_names=names)
+    assert [spoken(case, j) for j in range(5)] == ["Hamburg", case.sites[1], case.sites[2], case.sites[3], "Munich"]
+    asker, best, _ = asked(case)
+    assert any(spoken(case, j) in why_open(asker).words for j in best)

@@ -5,7 +5,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from ledgersolve.findings import NOT_ANSWERED, Answered, Column
-from ledgersolve.site_selection.asker import Asker, Found, codes, interval, service_part
+from ledgersolve.site_selection.asker import Asker, Found, codes, interval, listed, service_part, spoken
 from ledgersolve.site_selection.case import CLOSED, OPEN, Ints
 from ledgersolve.site_selection.extra_cost import Extra, Told, exact_ones, extra, more, not_exact
 from ledgersolve.site_selection.plan import Plan
@@ -31,7 +31,7 @@ def why_open(asker: Asker) -> Answered:
         rows.append((case.sites[j], case.site_names[j], *figures))
     columns = (Column("Site"), Column("Name"), Column("Without it, more by at least", "money"),
                Column("and at most", "money"), Column("What that means"))
-    words = _without_words(asker, [(case.sites[j], one) for j, one in told.items()])
+    words = _without_words(asker, [(spoken(case, j), one) for j, one in told.items()])
     answered = any(one.answered for one in told.values())
     return Answered("Why each of these sites?", words, columns, tuple(rows), headline=answered)
 
@@ -72,7 +72,7 @@ def why_closed(asker: Asker) -> Answered:
             meaning += "; not worth opening even at no fixed cost"
         pays = worth if one.exact and worth is not None and worth > 0 else None
         rows.append((case.sites[j], case.site_names[j], one.low, one.high, fixed, pays, meaning))
-    words = _with_words(asker, [(case.sites[j], one) for j, one in told.items()])
+    words = _with_words(asker, [(spoken(case, j), one) for j, one in told.items()])
     columns = (Column("Site"), Column("Name"), Column("With it, more by at least", "money"),
                Column("and at most", "money"), Column("Its fixed cost", "money"),
                Column("Would pay at a fixed cost of", "money"), Column("What that means"))
@@ -206,7 +206,7 @@ def _runner_up_words(asker: Asker, told: Found, one: Extra) -> str:
     if told.plan is None:
         return f"{NOT_ANSWERED.capitalize()}: no plan with other sites was found yet." if not one.answered else (
             f"A plan with other sites costs {one.amount(asker.case)}; none was found yet.")
-    opened = codes(asker.case, np.flatnonzero(told.plan.open).tolist())
+    opened = listed([spoken(asker.case, j) for j in np.flatnonzero(told.plan.open).tolist()])
     which = "The best plan with other sites" if one.exact else "The best plan found with other sites"
     words = f"{which} costs {more(asker.case, one.high or 0.0)}: {opened}."
     if (one.high or 0.0) < 0:

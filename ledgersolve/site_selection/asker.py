@@ -22,6 +22,8 @@ ASK_AGAIN = 2.0
 """What stayed open is asked again where there is so many times the time that it had."""
 GAP = 1e-8
 """Accepted gap of re-solves: differences of costs are asked for, so that costs must be known well."""
+LONGEST_NAME = 40
+"""Letters of the longest name that a sentence bears."""
 EXACT = 1e-7
 """Relative width up to which bound and cost count as one figure."""
 
@@ -211,6 +213,12 @@ def service_part(case: Case, plan: Plan) -> Floats:
     cost = lane + volume * case.handling_cost[plan.site]
     unmet = plan.unmet * case.demand * (case.unmet_cost or 0.0)
     return np.bincount(plan.customer, weights=cost, minlength=case.n) + unmet
+
+
+def spoken(case: Case, site: int) -> str:
+    """A site as a sentence names it: by its name, by its code where the name is long or holds marks of its own."""
+    name = case.site_names[site]
+    return name if len(name) <= LONGEST_NAME and not set(name) & set(",;:") else case.sites[site]
 
 
 def codes(case: Case, numbers: Iterable[int]) -> str:
