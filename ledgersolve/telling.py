@@ -89,7 +89,17 @@ def _outcome_words(answer: Answer, solving: bool) -> str:
         return f"failed. {answer.reason}"
     if answer.outcome is Outcome.TO_FIX:
         return "to fix" + (f", {answer.verdict.value}" if answer.verdict else "")
-    return _solved_words(answer) if solving else "fit to be solved"
+    return _solved_words(answer) if solving else _fit_words(answer)
+
+
+def _fit_words(answer: Answer) -> str:
+    """What checking alone can say of a workbook without errors: its notices, and whether a plan is out of reach."""
+    lost = sum(problem.count for problem in answer.problems if problem.kind == "demand no site can serve")
+    if lost:
+        return (f"complete, but no plan can exist: {lost:,} {'customer' if lost == 1 else 'customers'} that no site "
+                "can serve")
+    notices = len(answer.problems)
+    return "fit to be solved" + (f"; {notices} {'notice' if notices == 1 else 'notices'}" if notices else "")
 
 
 def _solved_words(answer: Answer) -> str:

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from tests.books import notices, read_sheets, site_sheets
+from tests.books import errors, notices, read_sheets, site_sheets
 
 RNG = np.random.default_rng(3)
 SITES = [{"Site": f"S{j}", "Fixed cost": 100 + j} for j in range(6)]
@@ -123,3 +123,15 @@ def test_a_share_that_looks_like_a_fraction_is_noticed(tmp_path):
     reading = read(tmp_path, distances=COSTS, settings={"Share within distance (%)": 0.9, "Distance for share": 50})
     assert notices(reading) == [("percent or fraction", "Settings", "B4")]
     assert "Type 90" in reading.problems[0].remedy
+
+
+def test_slips_in_settings_are_noticed_beside_errors(tmp_path):
+    """A share that looks like a fraction is said at once, also where another cell is at fault."""
+    sheets = site_sheets(
+        [{"Site": "A", "Fixed cost": "dear"}], [{"Customer": "x", "Demand": 1}], lane_costs=[[1]],
+        settings={"Share within distance (%)": 0.9})
+    sheets["Settings"].append(["Distance for share", None])
+    reading = read_sheets(tmp_path, sheets)
+    assert [kind for kind, _, _ in errors(reading)] == ["half a rule", "number expected"]
+    assert ("percent or fraction", "Settings") in [(kind, sheet) for kind, sheet, _ in notices(reading)]
+    assert ("half a rule", "Settings", f"B{len(sheets['Settings'])}") in errors(reading)

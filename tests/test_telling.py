@@ -2,8 +2,9 @@
 
 import pytest
 
-from ledgersolve import telling
+from ledgersolve import check_workbook, telling
 from ledgersolve.mip import Progress
+from tests.books import site_sheets, write_book
 
 
 @pytest.mark.parametrize(("best", "bound", "words"), [
@@ -41,3 +42,18 @@ def test_a_run_nobody_watches_is_told_in_plain_lines(monkeypatch, capsys, tmp_pa
     assert capsys.readouterr().err.splitlines() == ["x.xlsx: search, 11 s, best 5"]
     with telling.progress_line(tmp_path / "x.xlsx", quiet=True) as show:
         assert show is None
+
+
+@pytest.mark.parametrize(("lanes", "settings", "words"), [
+    ([[1, 1]], {}, "book.xlsx: fit to be solved\n"),
+    ([[1, 1]], {"Most site": 1}, "book.xlsx: fit to be solved; 1 notice\n"),
+    ([[1, None]], {}, "book.xlsx: complete, but no plan can exist: 1 customer that no site can serve\n"),
+])
+def test_a_check_says_what_it_noticed_and_whether_a_plan_can_exist(tmp_path, capsys, lanes, settings, words) -> None:
+    """Notices are counted and listed, and a workbook with a customer that no site can serve is not called fit."""
+    customers = [{"Customer": "x", "Demand": 4}, {"Customer": "y", "Demand": 5}]
+    sheets = site_sheets([{"Site": "A", "Fixed cost": 7}], customers, lane_costs=lanes, settings=settings)
+    telling.tell(check_workbook(write_book(tmp_path / "book.xlsx", sheets)), solving=False)
+    said = capsys.readouterr().out
+    assert said.startswith(words)
+    assert said.count("notice: ") == ("notice" in words or "no plan" in words)

@@ -215,7 +215,8 @@ def check_rows(book: Book, rows: LaneRows | None) -> None:
     if "Allowed" in table.columns:
         test = mended.any_of(test, mended.is_no(mended.beside(table.columns["Allowed"].column)))
     faults.many(table.sheet, [table.place(row, title) for row in empty.tolist()], title, lambda _: Fault(
-        "required cell empty", "neither Unit cost nor Distance", "one of Unit cost and Distance",
+        "required cell empty", "neither Unit cost nor Distance",
+        "one of Unit cost and Distance in each row of Lanes, also where coordinates could give the distance",
         "Fill in one of the two, or write no under Allowed.", "filled", test=test))
     if book.settings.number(c.RATE) is None and c.RATE not in book.settings.bad and book.settings.readable:
         unpriced = rows.row[asked & measured]

@@ -1,7 +1,7 @@
 """Checks a list sheet: every cell under a known title, and nothing that follows from another fault."""
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -269,6 +269,8 @@ def _report_empty(checked: CheckedList, title: str, faults: Faults) -> None:
     entry = column.entry
     fault = mended.watched(Fault(
         "required cell empty", "an empty cell", entry.expected(), "Fill the cell, or clear the whole row."), entry)
+    known = [each.column for each in checked.columns.values()]
+    fault = replace(fault, test=mended.or_cleared(mended.test_of(entry), min(known), max(known)))
     faults.many(checked.sheet, [checked.place(n, title) for n in empty.tolist()], title, lambda _: fault)
 
 

@@ -21,13 +21,18 @@ USUAL_YEARLY_RATES = (5.0, 60.0)
 _SORTABLE = re.compile(r"\d{4}-(?:W\d{2}|\d{2}(?:-\d{2})?)|\d{1,9}")
 
 
-def judge(book: Book, case: Case) -> None:
-    """Add notices for inputs that look like slips."""
-    items = book.tables[c.ITEMS]
-    judgement.odd_figures(book.faults, items, ("Setup cost", "Holding cost", "Backlog cost",
-                                               "Lost sale cost"))
+def judge_inputs(book: Book) -> None:
+    """Add notices for inputs that look like slips whatever else is wrong, so that they need no second drop."""
+    if c.ITEMS in book.tables:
+        judgement.odd_figures(book.faults, book.tables[c.ITEMS], ("Setup cost", "Holding cost", "Backlog cost",
+                                                                  "Lost sale cost"))
     judgement.other_currencies(book.faults, book.settings, list(book.tables.values()))
     _yearly_rate(book)
+
+
+def judge(book: Book, case: Case) -> None:
+    """Add notices for inputs that look like slips beside each other."""
+    items = book.tables[c.ITEMS]
     _holding_against_value(book, case, items)
     _late(book, case, items)
     _order(book, case)

@@ -52,6 +52,11 @@ def watched(fault: Fault, entry: Entry) -> Fault:
     return replace(fault, recheck="no error" if empty else "filled")
 
 
+def test_of(entry: Entry) -> str:
+    """The test that a cell of a required column is filled rightly."""
+    return number(entry) if entry.numeric else watched(Fault("", "", "", ""), entry).test or _safe(_FILLED)
+
+
 def _count_of(words: Sequence[str]) -> str:
     return "+".join(f'COUNTIF({CELL},"{word}")' for word in words)
 
@@ -110,6 +115,11 @@ def currency() -> str:
 def title(name: str) -> str:
     """The cell holds a title or the name of a setting, with or without a unit in brackets behind it."""
     return _safe(f'OR({_SHORT}="{name}",LEFT({_SHORT},{len(name) + 2})="{name} (")')
+
+
+def or_cleared(test: str, first: int, last: int) -> str:
+    """The test is true, or the whole row is empty from one column to another."""
+    return any_of(test, f"COUNTA({beside(first)}:${column_letters(last)}{ROW})=0")
 
 
 def any_of(*tests: str) -> str:

@@ -74,6 +74,7 @@ def _reading(book: Book, named: Job | None, file_name: str, order: list[str]) ->
 
         data = site_case.build(book, title)
         case = data.case
+        site_judgement.judge_inputs(book)
         if data.case is not None and data.lanes is not None:
             site_judgement.judge(book, data.case, data.lanes, data.rows)
         if data.lanes is not None and data.lanes.by_distance:
@@ -83,6 +84,7 @@ def _reading(book: Book, named: Job | None, file_name: str, order: list[str]) ->
         from ledgersolve.contract import lot_case, lot_judgement
 
         case = lot = lot_case.build(book, title)
+        lot_judgement.judge_inputs(book)
         if lot is not None:
             lot_judgement.judge(book, lot)
     if case is not None:

@@ -19,7 +19,8 @@ first 30 rows that holds all required titles, so headings and examples above it 
 - Codes are text, trimmed; `7` and `7.0` are one code. Codes that differ in case or inner spacing only are an
   error.
 - A number is a number cell, or text that can mean one number only: `" 12 "`, `"12.5"`, `"1 200"`. Text with a comma,
-  and text such as `"1.200"`, is an error that shows how it can be read. No figure may be larger than 1e12.
+  and text such as `"1.200"`, is an error that shows how it can be read: `"7,35"` as 7.35, `"1,200"` as 1200 or 1.2.
+  No figure may be larger than 1e12.
 - yes/no cells take yes, no, y, n, true, false, 1, 0 and Boolean cells. Dates are date cells or year-month-day texts.
 - A cell with a percent format in a setting in % is read as it is shown.
 - Each code, and each pair of codes, stands once in its list. An empty optional cell takes the default named below.
@@ -33,6 +34,9 @@ _NOTES = {
   distance (x the customer's demand, where costs are for the whole demand).
 - Its distance is the one in `Lanes`, else in `Distances`, else great circle (sphere of radius 6371.0088 km) x Road
   factor. The road factor does not touch distances that are given.
+- Each row of `Lanes` needs a Unit cost or a Distance, its own or that of the pair in `Lane costs` or `Distances`; a
+  row with Allowed = no needs neither. Coordinates do not stand in for them: a row without a figure is more often
+  forgotten than meant.
 - An empty cell of `Lane costs` is no lane, unless a row of `Lanes` names the pair. A row with Allowed = no is no
   lane.
 - Without Cost per unit and distance, pairs that are not listed do not exist; with it, they are costed from

@@ -28,15 +28,20 @@ _MILES = frozenset({"mi", "mile", "miles"})
 _KILOMETRES = frozenset({"km", "kms", "kilometre", "kilometres", "kilometer", "kilometers"})
 
 
-def judge(book: Book, case: Case, lanes: Lanes, rows: LaneRows | None) -> None:
-    """Add notices for inputs that look like slips."""
-    sites, customers = book.tables[c.SITES], book.tables[c.CUSTOMERS]
+def judge_inputs(book: Book) -> None:
+    """Add notices for inputs that look like slips whatever else is wrong, so that they need no second drop."""
     tables = list(book.tables.values())
-    judgement.odd_figures(book.faults, sites, ("Fixed cost", "Handling cost"))
+    if c.SITES in book.tables:
+        judgement.odd_figures(book.faults, book.tables[c.SITES], ("Fixed cost", "Handling cost"))
     judgement.other_currencies(book.faults, book.settings, tables)
     judgement.looks_like_fraction(book.faults, book.settings, c.SHARE, 1.0,
                                   "a share in percent, such as 90")
-    _other_distance_units(book, case, tables)
+    _other_distance_units(book, tables)
+
+
+def judge(book: Book, case: Case, lanes: Lanes, rows: LaneRows | None) -> None:
+    """Add notices for inputs that look like slips beside each other."""
+    sites, customers = book.tables[c.SITES], book.tables[c.CUSTOMERS]
     _odd_lanes(book, rows, case)
     if case.site_latitude is not None:
         _odd_places(book, [sites, customers])
@@ -79,14 +84,15 @@ def _odd_cost(cost: float) -> Fault:
                  "costs of one size", "Check the decimal sign and the unit.")
 
 
-def _other_distance_units(book: Book, case: Case, tables: list[CheckedList]) -> None:
-    foreign = _MILES if case.distance_unit == "km" else _KILOMETRES
+def _other_distance_units(book: Book, tables: list[CheckedList]) -> None:
+    unit = book.settings.text("Distance unit")
+    foreign = _MILES if unit == "km" else _KILOMETRES
     for table in tables:
         for column, heading in table.headings.items():
             if set(unit_in(heading).casefold().replace("/", " ").split()) & foreign:
                 book.faults.notice(
                     table.sheet, (table.title_row, column), "", "another distance unit",
-                    f"the title {quoted(heading)}", f"distances in {case.distance_unit}, as Settings says",
+                    f"the title {quoted(heading)}", f"distances in {unit}, as Settings says",
                     "The figures were taken as they are; set Distance unit, or correct the title.")
 
 

@@ -105,7 +105,7 @@ LANES_SHEET = ListSheet(
         Entry("Site", "Code of the site.", Holds.CODE, "HAM", required=True, refers=SITES),
         Entry("Customer", "Code of the customer.", Holds.CODE, "C001", required=True, refers=CUSTOMERS),
         Entry("Unit cost", "Cost of the lane by the Lane cost basis: for a unit, or for all of the demand.",
-              example=6.4, unit="currency by the basis", default_words="from the distance"),
+              example=6.4, unit="currency, by Lane cost basis", default_words="from the distance"),
         Entry("Distance", "Length of the lane.", example=118, unit=_DISTANCE,
               default_words="from Distances or coordinates"),
         Entry("Allowed", "no: the lane must not be used.", Holds.YES_NO, "yes", default=True),
@@ -119,7 +119,7 @@ LANE_COSTS_SHEET = MatrixSheet(
     LANE_COSTS,
     "Lane costs by the Lane cost basis: a row a site, a column a customer; an empty cell = no lane.",
     SITES, CUSTOMERS, "Site", "Customer",
-    Entry("Lane cost", "Cost of the lane.", example=6.4, unit="currency by the basis",
+    Entry("Lane cost", "Cost of the lane.", example=6.4, unit="currency, by Lane cost basis",
           default_words="no lane"),
 )
 

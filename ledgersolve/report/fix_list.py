@@ -58,11 +58,11 @@ def _head(sheet: ResultSheet, errors: Sequence[Problem], run: RunFacts, title: s
     paragraph(sheet, 1, 0, 7, "This workbook was not solved, because something in it is missing or cannot be "
                               "right. Nothing in your sheets was changed; the cells are marked where they "
                               "stand.", replace(style.TEXT, size=11.0))
-    paragraph(sheet, 2, 0, 7, "What to do: go down the list (a click on the cell leads there), mend each cell, and "
-                              f"watch its status turn to \"{DONE}\" and its mark vanish. An entry marked (*) is "
-                              "compared with other cells: it is looked at again at the next drop, and its status "
-                              "stays until then. Save the workbook and drop it again: list and marks go by "
-                              "themselves.", replace(style.TEXT, size=11.0))
+    waiting = (" An entry marked (*) is looked at again at the next drop only, and its status stays until then."
+               if any(not status(problem)[1] for problem in errors) else "")
+    paragraph(sheet, 2, 0, 7, "What to do: go down the list (a click on the cell leads there), mend each cell or "
+                              f"take its row out, and watch its status turn to “{DONE}”.{waiting} Save the workbook "
+                              "and drop it again: list and marks go by themselves.", replace(style.TEXT, size=11.0))
     words = f"{run.file_name}, {run.when:%Y-%m-%d %H:%M}"
     sheet.put(3, 0, words, style.SMALL)
     return 5
@@ -83,8 +83,8 @@ def _counts(sheet: ResultSheet, errors: Sequence[Problem], row: int) -> int:
     left = sum(1 for problem in errors if status(problem)[1])
     sheet.put(row, 3, "Entries mended so far", style.BOLD)
     sheet.put(row, 4, 0, style.number(style.WHOLE), formula=f'=COUNTIF({span},"{DONE}")')
-    sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}, {left} of which count themselves "
-                          "as soon as the cell is right", style.NOTE)
+    counted = "" if left == len(errors) else f", {left} of which count themselves as soon as the cell is right"
+    sheet.put(row + 1, 3, f"of {style.counted(len(errors), 'entry', 'entries')}{counted}", style.NOTE)
     sheet.put(list_row - 1, 0, "Errors", style.SECTION)
     return list_row
 
