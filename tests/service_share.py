@@ -40,6 +40,15 @@ def names(folder: Path) -> list[str]:
     return sorted(path.name for path in folder.iterdir())
 
 
+def returned(folder: Path) -> list[str]:
+    """Returned files without their ids."""
+    whole = [name for name in names(folder / "Returned") if not name.startswith(".")]
+    return sorted(name[: name.index(" [")] + name[name.index("]") + 1 :] for name in whole)
+
+
+# ---- with real child processes ----------------------------------------------------------------------
+
+
 def memory_root() -> str | None:
     """A folder in memory, where bringing files to the disk costs nothing; the usual one where there is none."""
     shared = Path("/dev/shm")
