@@ -7,19 +7,20 @@ from types import SimpleNamespace
 import numpy as np
 import pytest
 
-from ledgersolve.findings import NOT_ANSWERED, Answered, Column
+from ledgersolve.findings import NOT_ANSWERED, Answered, Audit, Column, CostPart
 from ledgersolve.lot_sizing.audit import audit as audit_lots
 from ledgersolve.lot_sizing.case import plain_case as plain_lots
 from ledgersolve.lot_sizing.plan import plan_from_made
 from ledgersolve.mip import Solved, Verdict
 from ledgersolve.report.answers import answers_sheet
-from ledgersolve.report.decision import how_sure
+from ledgersolve.report.certainty import how_sure, made_of, most_saved
 from ledgersolve.report.inputs import LotReport, RunFacts, SiteReport, Today
 from ledgersolve.report.lot_book import lot_sheets
 from ledgersolve.report.site_book import site_sheets
 from ledgersolve.site_selection.audit import audit as audit_sites
 from ledgersolve.site_selection.case import Case, plain_case
 from ledgersolve.site_selection.plan import Plan
+from ledgersolve.workbook.figures import unit_words
 from ledgersolve.workbook.origins import Origins
 from ledgersolve.workbook.sheets import ResultSheet
 
@@ -189,3 +190,116 @@ def test_the_lot_headline_and_today() -> None:
     assert "That is 20.00\u00a0EUR (33.3\u00a0%) less than today's plan with 2 lots costs." in page
     assert "Press is full in week 1." in page
     assert "Start now (week 1): Spade." in page
+
+
+def test_the_headline_says_what_is_not_delivered() -> None:
+    """By hand: 5 of 20 units at 3 stay unmet, a quarter of one customer, 16.7 % of all 30."""
+    case = replace(CASE, unmet_cost=3.0, demand_unit="roll cage")
+    plan = plan_of(case, [0, 2])
+    plan = replace(plan, share=np.array([1.0, 0.75]), unmet=np.array([0.0, 0.25]))
+    audit = audit_sites(case, plan)
+    report = SiteReport(WORKBOOK, case, Solved(Verdict.PROVEN_BEST, plan, audit.total, audit.total), audit, FACTS)
+    page = words(site_sheets(report, {})[0])
+    assert ("5\u00a0roll cages (16.7\u00a0% of the demand) will not be delivered: 1 customer does not get everything."
+            in page)
+    assert "will not be delivered" not in words(site_page(CASE, [0, 2]))
+
+
+def test_the_headline_says_what_is_paid_once() -> None:
+    """By hand: opening Turin once for 50 and closing Lyon once for 7 are part of 220 + 57."""
+    case = replace(CASE, today=np.array([True, True, False]), opening_cost=np.full(3, 50.0),
+                   closing_cost=np.full(3, 7.0))
+    page = words(site_page(case, [0, 2]))
+    assert ("All together that costs 277.00\u00a0EUR in the first year, 57.00\u00a0EUR of it once, for opening and "
+            "closing." in page)
+    assert "in the first year; line by line" in page
+
+
+def test_sizes_of_one_site_count_once() -> None:
+    """Three sites, two of them sizes of one, are two to choose from."""
+    case = replace(CASE, group=np.array([0, 0, -1]), group_names=("big or small",))
+    assert "Run 2 of 2 sites (sizes of one site counted once): Hamburg and Turin." in words(site_page(case, [0, 2]))
+
+
+def test_why_today_cannot_be() -> None:
+    """Without a cost of today the page says which rule today's sites break, and the customers have no such column."""
+    case = replace(CASE, today=np.array([False, True, False]))
+    plan = plan_of(case, [0, 2])
+    audit = audit_sites(case, plan)
+    today = Today(Solved(Verdict.NO_PLAN_EXISTS, None, None, None), None, "Lyon is 20 units too small")
+    solved = Solved(Verdict.PROVEN_BEST, plan, audit.total, audit.total)
+    report = SiteReport(WORKBOOK, case, solved, audit, FACTS, today)
+    sheets = {sheet.name: sheet for sheet in site_sheets(report, {})}
+    assert "cannot keep the rules of this workbook, so that they have no cost here. Lyon is 20 units too small." in (
+        words(sheets["Decision"]))
+    assert "Main site today" not in words(sheets["Plan customers"])
+
+
+def looser(rule: str, loosened: str, least: float | None, most: float | None) -> tuple[Answered, ...]:
+    """The answer that says what a looser rule saves."""
+    columns = (Column("What is at its limit"), Column("Loosened to"), Column("Saves at least", "money"),
+               Column("and at most", "money"))
+    return (Answered("What holds the plan back?", "", columns, ((rule, loosened, least, most),)),)
+
+
+@pytest.mark.parametrize(("least", "most", "said"), [
+    (0.0, 0.0, "; a looser rule (one more site) would save nothing."),
+    (12.5, 12.5, "; a looser rule (one more site) would save 12.50\u00a0EUR."),
+    (12.5, None, "; a looser rule (one more site) would save 12.50\u00a0EUR or more."),
+    (None, 80.0, "."),
+])
+def test_a_rule_at_its_limit_says_what_a_looser_one_saves(least: float | None, most: float | None, said: str) -> None:
+    """What was asked ahead stands beside the rule; what is not known is not claimed."""
+    page = words(site_page(replace(CASE, most_sites=2), [0, 2], answers=looser("2 sites at most", "one more site",
+                                                                               least, most)))
+    assert f"The most sites allowed (2) are open{said}" in page
+
+
+def test_lanes_at_their_most_are_named() -> None:
+    """A lane that carries all it may limits the plan; one with room to spare does not."""
+    most = np.full((3, 2), np.inf)
+    most[0, 0], most[2, 1] = 10.0, 25.0
+    case = replace(CASE, lane_most=most)
+    assert "Lanes that carry the most they may: Hamburg to C1." in words(site_page(case, [0, 2]))
+
+
+def test_barred_lanes_name_who_misses_deliveries() -> None:
+    """A promise that keeps a customer from an open site is told with the customer that goes short."""
+    distance = np.array([[1.0, 90.0], [1.0, 90.0], [90.0, 90.0]])
+    case = replace(CASE, distance=distance, longest_distance=50.0, unmet_cost=2.0)
+    plan = replace(plan_of(case, [0]), unmet=np.array([0.0, 1.0]))
+    audit = audit_sites(case, plan)
+    report = SiteReport(WORKBOOK, case, Solved(Verdict.PROVEN_BEST, plan, audit.total, audit.total), audit, FACTS)
+    assert "The longest distance allowed rules out 4 lanes, among them C2 that miss deliveries" in words(
+        site_sheets(report, {})[0])
+
+
+def test_a_saving_says_what_it_is_made_of() -> None:
+    """Parts that move against each other are named; a saving in one part alone needs no list."""
+    was = Audit((CostPart("Setup cost", 60.0), CostPart("Holding cost", 0.0)), ())
+    now = Audit((CostPart("Setup cost", 30.0), CostPart("Holding cost", 10.0)), ())
+    assert made_of(was, now, "EUR") == (
+        " The difference: setup cost 30.00\u00a0EUR less, holding cost 10.00\u00a0EUR more.")
+    assert made_of(was, replace(was, parts=(CostPart("Setup cost", 40.0),)), "EUR") == ""
+    assert made_of(None, now, "EUR") == ""
+
+
+@pytest.mark.parametrize(("cost", "bound", "most"), [(100.0, 98.474, 1.53), (100.0, 100.0, 0.0), (100.0, 99.99, 0.01),
+                                                     (1e6, 1e6 - 1e-9, 0.0), (100.0, 101.0, 0.0)])
+def test_one_figure_for_what_could_be_saved(cost: float, bound: float, most: float) -> None:
+    """Tile and sentence show the same figure, in whole cents, never rounded in our favour."""
+    assert most_saved(cost, bound, "EUR") == pytest.approx(most)
+
+
+def test_the_lot_headline_says_what_is_late_or_lost() -> None:
+    """By hand: of 10 units 4 are made too late for one week, and 3 of the second item never."""
+    case = plain_lots([[10.0, 0.0, 5.0], [3.0, 0.0, 0.0]], 5.0, 1.0, backlog_cost=np.array([1.0, np.nan]),
+                      lost_cost=np.array([np.nan, 2.0]))
+    plan = plan_from_made(case, np.array([[6.0, 4.0, 5.0], [0.0, 0.0, 0.0]]))
+    audit = audit_lots(case, plan)
+    assert audit.ok
+    page = words(lot_sheets(LotReport(WORKBOOK, case, Solved(Verdict.PROVEN_BEST, plan, audit.total, audit.total),
+                                      audit, FACTS), {})[0])
+    unit = unit_words(3.0, case.units[1])
+    assert f"3\u00a0{unit} of {case.item_names[1]} will never be delivered." in page
+    assert f"Up to 4\u00a0{unit} of {case.item_names[0]} will be late at a time." in page

@@ -38,7 +38,8 @@ def test_a_negative_figure_has_a_minus_that_is_no_hyphen() -> None:
     (2, "Palette", "Palettes"),
     (2, "battery", "batteries"), (2, "tray", "trays"), (5, "kg", "kg"), (5, "m3", "m3"),
     (5, "pallets", "pallets"),
-    (5, "Stück", "Stück"), (5, "EUR pallet", "EUR pallet"),
+    (5, "Stück", "Stück"), (5, "EUR pallet", "EUR pallets"), (5, "roll cage", "roll cages"),
+    (5, "pallet of cement", "pallet of cement"), (1, "roll cage", "roll cage"),
 ])
 def test_units_are_words_in_the_plural_and_symbols_as_they_are(amount: float, unit: str, words: str) -> None:
     """Words take the plural behind every amount but one; symbols and words of other alphabets are left alone."""
@@ -49,3 +50,10 @@ def test_one_is_not_all() -> None:
     """``all 12 items``, but ``the only item``."""
     assert (all_words(12, "item"), all_words(1, "item")) == ("all 12 items", "the only item")
     assert (all_words(2, "delivery", "deliveries"), all_words(0, "item")) == ("all 2 deliveries", "all 0 items")
+
+
+@pytest.mark.parametrize(("value", "words"), [(25_310.5, "25\u00a0311"), (1_153.5, "1\u00a0154"), (0.5, "1"),
+                                              (-2.5, "\u22123"), (1.49, "1"), (2.4999999, "2")])
+def test_halves_are_rounded_as_sheets_round_them(value: float, words: str) -> None:
+    """A half goes up in words as it does in the cell beside them, whichever digit stands before it."""
+    assert figure_words(value) == words

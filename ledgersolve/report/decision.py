@@ -5,9 +5,9 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 from ledgersolve.findings import Answered
-from ledgersolve.mip import Verdict
 from ledgersolve.mip.run import Solved
 from ledgersolve.report import style
+from ledgersolve.report.certainty import most_saved, saving_note
 from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.inputs import RunFacts, Workbook
 from ledgersolve.report.ledger import Ledger
@@ -256,29 +256,6 @@ def _foot(sheet: ResultSheet, page: Decision, row: int) -> int:
     return row + 3
 
 
-def how_sure(solved: Solved[Any], currency: str, accepted_gap: float) -> list[str]:
-    """Say in words how good the plan is, and the most that could still be saved; never in our favour."""
-    cost, bound = solved.cost, solved.bound
-    if cost is None or bound is None:
-        return ["This is the best plan found. How much a better one could save is not known."]
-    rest = max(0.0, cost - bound)
-    most = style.money_words(rest, currency, "up")
-    least = 10.0 ** -style.money_digits(currency)
-    if solved.verdict is Verdict.PROVEN_BEST and rest < least:
-        smallest = style.figure_words(least, style.money_digits(currency))
-        return [f"Proven: no plan that keeps the rules of the workbook is cheaper, not even by {smallest} "
-                f"{currency}."]
-    gap = f" ({style.percent_words(rest / cost, 'up')})" if cost > 0 else ""
-    if solved.verdict is Verdict.PROVEN_BEST:
-        return [f"Proven, as far as it matters: no plan that keeps the rules is cheaper by more than {most}{gap}."]
-    if solved.verdict is Verdict.WITHIN_GAP:
-        stop = style.percent_words(accepted_gap)
-        return ["Good enough by your own setting: the search stopped once no plan could be cheaper by more than "
-                f"{stop}. At most {most}{gap} could still be saved."]
-    return ["The time limit ended the search. This is the best plan found; a better one could save at most "
-            f"{most}{gap}. Whether there is one is not known: a higher time limit may tell."]
-
-
 def cost_tile(cost: float, currency: str, ledger: Ledger, note: str) -> Tile:
     """Cost of the plan, as the ledger has it."""
     return Tile(f"Cost of this plan ({currency})", cost, f"{note}; line by line in the ledger", f"={ledger.total}")
@@ -294,22 +271,13 @@ def still_tile(solved: Solved[Any], currency: str) -> Tile:
     if solved.cost is None or solved.bound is None:
         return Tile("Could still be saved", "not known", "no bound is known")
     note = f"{currency}; {saving_note(solved)}"
-    return Tile("Could still be saved, at most", max(0.0, solved.cost - solved.bound), note)
+    return Tile("Could still be saved, at most", most_saved(solved.cost, solved.bound, currency), note)
 
 
 def checks_tile(checks: ChecksAt) -> Tile:
     """The master check."""
     note = f"{style.counted(checks.count, 'rule')} watched in Proof"
     return Tile("Checks", "All checks hold", note, f"={checks.master()}")
-
-
-def saving_note(solved: Solved[Any]) -> str:
-    """Small print under the most that could still be saved."""
-    return {
-        Verdict.PROVEN_BEST: "proven for every plan that keeps the rules",
-        Verdict.WITHIN_GAP: "within the gap that the workbook accepts",
-        Verdict.BEST_FOUND: "the time limit ended the search",
-    }.get(solved.verdict, "")
 
 
 def changed_since(ledger: Ledger, record: str, proof: str) -> str:
@@ -319,7 +287,8 @@ def changed_since(ledger: Ledger, record: str, proof: str) -> str:
     """
     solved, tolerance = f"{quoted(record)}!{RECORDED_COST}", f"{quoted(proof)}!$C$4"
     same = f"ABS({ledger.total}-{solved})<={tolerance}*(1+ABS({solved}))"
-    words = "Inputs or plan cells were changed after the run: costs follow, the decision and its proof do not."
+    words = ("Inputs or plan cells were changed after the run: costs, counts and checks follow; the sentences, what "
+             "is saved and what could still be saved are those of the run.")
     return f'=IF({same},"","{words}")'
 
 

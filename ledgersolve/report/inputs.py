@@ -109,10 +109,11 @@ class VariantResult:
 
 @dataclass(frozen=True)
 class Today(Generic[PlanT]):
-    """Today's network or plan, costed; ``audit`` is None where it cannot be run at all."""
+    """Today's network or plan, costed; ``audit`` is None where it cannot be run at all, and ``why`` may say why."""
 
     solved: Solved[PlanT]
     audit: Audit | None
+    why: str = ""
 
 
 @dataclass(frozen=True)

@@ -4,8 +4,11 @@ from dataclasses import replace
 
 import numpy as np
 
+from ledgersolve.findings import Audit
 from ledgersolve.lot_sizing.case import Flags, Floats
+from ledgersolve.lot_sizing.plan import Plan as LotPlan
 from ledgersolve.report import names, style
+from ledgersolve.report.certainty import how_sure, made_of
 from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.decision import (
     Decision,
@@ -16,7 +19,6 @@ from ledgersolve.report.decision import (
     changed_since,
     checks_tile,
     cost_tile,
-    how_sure,
     provenance,
     still_tile,
     write_decision,
@@ -25,9 +27,13 @@ from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.lot_details import FULL, lots_row
 from ledgersolve.report.lot_places import FIRST_PERIOD, LotPlaces
 from ledgersolve.report.tables import Figure
-from ledgersolve.workbook.figures import unit_words
+from ledgersolve.workbook.figures import NO_BREAK, unit_words
 from ledgersolve.workbook.sheets import Area, Chart, ResultSheet, Series
 
+NOISE = 1e-6
+"""Quantities below this are rounding of the machine."""
+MOST_SHORT = 3
+"""Items that the first sentence names as late or not delivered."""
 GLOSSARY = (
     ("Cost of the plan", "everything in the ledger, over all periods"),
     ("Lot", "the quantity of an item made in one period, with one setup"),
@@ -67,7 +73,23 @@ def _headline(at: LotPlaces) -> str:
     cost = _money(at, at.report.audit.total)
     span = f"{case.period_unit} {case.periods[0]} to {case.periods[-1]}"
     items = style.counted(case.n, "item")
-    return f"Make {style.counted(plan.setups, 'lot')} of {items}, {span}. All together that costs {cost}."
+    made = f"Make {style.counted(plan.setups, 'lot')} of {items}, {span}. All together that costs {cost}."
+    never = _undelivered(at, plan.lost.sum(axis=1), "{} will never be delivered.")
+    return f"{made}{never}{_undelivered(at, plan.late.max(axis=1), 'Up to {} will be late at a time.')}"
+
+
+def _undelivered(at: LotPlaces, by_item: Floats, sentence: str) -> str:
+    """What the plan delivers late or never, item by item; "" where that is nothing."""
+    case = at.report.case
+    items = np.flatnonzero(by_item > NOISE).tolist()
+    if not items:
+        return ""
+    if len(items) > MOST_SHORT:
+        return f" {sentence.format(f'some of {len(items)} items').capitalize()}"
+    units = [f"{style.quantity_words(float(by_item[i]))}{NO_BREAK}{unit_words(float(by_item[i]), case.units[i])}"
+             for i in items]
+    amounts = [f"{amount} of {case.item_names[i]}" for amount, i in zip(units, items, strict=True)]
+    return f" {sentence.format(style.listed(amounts))}"
 
 
 def _against_today(at: LotPlaces) -> str:
@@ -77,8 +99,9 @@ def _against_today(at: LotPlaces) -> str:
     saved = today.solved.cost - at.report.audit.total
     part = f" ({style.percent_words(abs(saved) / today.solved.cost, 'down')})" if today.solved.cost else ""
     lots = "" if today.solved.plan is None else f" with {style.counted(today.solved.plan.setups, 'lot')}"
-    words = f"That is {_money(at, saved, 'down')}{part} less than today's plan{lots} costs." if saved >= 0 else (
-        f"That is {_money(at, -saved, 'up')}{part} more than today's plan{lots} costs on paper.")
+    of = made_of(today.audit, at.report.audit, at.report.case.currency)
+    words = f"That is {_money(at, saved, 'down')}{part} less than today's plan{lots} costs.{of}" if saved >= 0 else (
+        f"That is {_money(at, -saved, 'up')}{part} more than today's plan{lots} costs on paper.{of}")
     broken = today.audit.broken()
     if broken:
         words += (f" Today's plan breaks {style.counted(len(broken), 'rule')} of this workbook, first of all: "
@@ -104,34 +127,48 @@ def _comparison(at: LotPlaces, ledger: Ledger) -> list[Today]:
     before = report.today.solved.plan if report.today is not None else None
     cost = report.today.solved.cost if report.today is not None else None
     missing = None
-    value = _average_stock_value
     rows = [
         Today(f"Cost ({case.currency})", missing if cost is None else cost, report.audit.total,
               style.money_format(case.currency), f"={ledger.total}"),
         Today("Lots (number)", missing if before is None else before.setups, report.plan.setups, style.WHOLE,
               f'=COUNTIF({at.made.whole()},">0")'),
-        Today(f"Stock on average ({_one_unit(at)})", missing if before is None else value(before.stock),
-              value(report.plan.stock), "#,##0.0", f"=SUM({at.stock.whole()})/COLUMNS({at.stock.line(0)})"),
+        _stock_row(at, before),
     ]
     if at.may_wait:
         late = None if before is None else before.late
-        rows.append(_sum_row(f"Late (units x {case.period_unit}s)", late, report.plan.late))
+        rows.append(_sum_row(f"Late (units x {case.period_unit}s)", late, report.plan.late, at.late.whole()))
     if at.may_lose:
-        rows.append(_sum_row("Never delivered (units)", None if before is None else before.lost, report.plan.lost))
+        lost = None if before is None else before.lost
+        rows.append(_sum_row("Never delivered (units)", lost, report.plan.lost, at.lost.whole()))
     if case.resources:
         overtime = None if before is None else before.overtime
-        rows.append(_sum_row("Overtime (time units)", overtime, report.plan.overtime))
+        block = at.load_block("overtime").whole()
+        rows.append(_sum_row("Overtime (time units)", overtime, report.plan.overtime, block))
     return rows
 
 
-def _sum_row(label: str, before: Floats | None, now: Floats) -> Today:
+def _stock_row(at: LotPlaces, before: LotPlan | None) -> Today:
+    """Stock on average; what holding it costs, where items are counted in different units."""
+    case, report = at.report.case, at.report
+    units = set(case.units)
+    if len(units) > 1:
+        was, now = (None if audit is None else _holding(audit)
+                    for audit in (None if report.today is None else report.today.audit, report.audit))
+        return Today(f"Cost of holding stock ({case.currency})", was, now, style.money_format(case.currency))
+    mean = _average_stock_value
+    return Today(f"Stock on average ({units.pop()})", None if before is None else mean(before.stock),
+                 mean(report.plan.stock), "#,##0.0", f"=SUM({at.stock.whole()})/COLUMNS({at.stock.line(0)})")
+
+
+def _holding(audit: Audit) -> float:
+    return next((part.amount for part in audit.parts if part.name == "Holding cost"), 0.0)
+
+
+def _sum_row(label: str, before: Floats | None, now: Floats, cells: str) -> Today:
+    """Sums of today and of the plan; ``cells`` are those of the plan."""
     figures = [float(now.sum())] + ([] if before is None else [float(before.sum())])
-    return Today(label, None if before is None else figures[1], figures[0], style.figure_format(figures))
-
-
-def _one_unit(at: LotPlaces) -> str:
-    units = set(at.report.case.units)
-    return units.pop() if len(units) == 1 else "units of all items"
+    look = style.figure_format(figures)
+    return Today(label, None if before is None else figures[1], figures[0], look, f"=SUM({cells})")
 
 
 def _average_stock_value(stock: np.ndarray) -> float:
@@ -156,9 +193,14 @@ def _changes(at: LotPlaces) -> list[str]:
     fewer = before.setups - plan.setups
     if fewer:
         points.append(f"{style.counted(abs(fewer), 'setup')} {'fewer' if fewer > 0 else 'more'} than today.")
-    late = int(np.count_nonzero(plan.late.sum(axis=1) > 1e-9))
+    stock = _stock_row(at, before)
+    if isinstance(stock.today, float) and isinstance(stock.plan, float) and abs(stock.plan - stock.today) > NOISE:
+        was, now = (style.quantity_words(figure) for figure in (stock.today, stock.plan))
+        points.append(f"{stock.label}: {now}, today {was}.")
+    late = int(np.count_nonzero(plan.late.max(axis=1) > NOISE))
     if late:
-        points.append(f"{style.counted(late, 'item')} are late at some time: see {at.name(names.PLAN_LATE)}.")
+        points.append(f"{style.counted(late, 'item is', 'items are')} late at some time: see "
+                      f"{at.name(names.PLAN_LATE)}.")
     return points
 
 

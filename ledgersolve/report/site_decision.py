@@ -6,6 +6,7 @@ import numpy as np
 
 from ledgersolve.mip import Verdict
 from ledgersolve.report import names, style
+from ledgersolve.report.certainty import how_sure, made_of
 from ledgersolve.report.checks import ChecksAt
 from ledgersolve.report.decision import (
     Decision,
@@ -16,21 +17,22 @@ from ledgersolve.report.decision import (
     changed_since,
     checks_tile,
     cost_tile,
-    how_sure,
     provenance,
     still_tile,
     write_decision,
 )
 from ledgersolve.report.ledger import Ledger
 from ledgersolve.report.site_details import main_sites
+from ledgersolve.report.site_limits import site_limits, site_words
 from ledgersolve.report.site_places import SitePlaces
 from ledgersolve.report.site_proof import WEAK, SiteProof
 from ledgersolve.report.tables import Figure
-from ledgersolve.site_selection.case import CLOSED, OPEN
 from ledgersolve.site_selection.plan import Plan
+from ledgersolve.workbook.figures import NO_BREAK, unit_words
 from ledgersolve.workbook.sheets import Chart, ResultSheet
 
-FULL = 0.9995
+NOISE = 1e-9
+"""Parts of the demand below this are rounding of the machine."""
 GLOSSARY = (
     ("Cost of the plan", "everything in the ledger, for the period covered; one-off opening and closing costs in "
                          "full"),
@@ -54,7 +56,7 @@ def site_decision(at: SitePlaces, ledger: Ledger, proof: SiteProof, picture: Cha
         comparison=_comparison(at, ledger), compared=report.today is not None, parts=parts,
         total=Figure(report.audit.total, ledger.total),
         changes=_changes(at), changes_title="What changes" if at.has_today else "What each site does",
-        sure=_sure(at, proof.bound), binding=_binding(at), check=_check(at),
+        sure=_sure(at, proof.bound), binding=site_limits(at), check=_check(at),
         asked=asked_ahead(report.answers), glossary=GLOSSARY,
         provenance=provenance(report.workbook, report.run), currency=case.currency, per=at.per,
     )
@@ -69,12 +71,6 @@ def _money(at: SitePlaces, amount: float, rounding: style.Rounding = "nearest") 
     return style.money_words(amount, at.report.case.currency, rounding)
 
 
-def _names(at: SitePlaces, which: np.ndarray, most: int = 8) -> str:
-    case = at.report.case
-    which_ones = np.flatnonzero(which).tolist()
-    return style.listed([style.short(case.sites[j], case.site_names[j]) for j in which_ones], most)
-
-
 def _headline(at: SitePlaces) -> str:
     case, plan = at.report.case, at.report.plan
     running = int(plan.open.sum())
@@ -82,8 +78,35 @@ def _headline(at: SitePlaces) -> str:
     if running == 0:
         cheapest = ", and no site makes that cheaper" if at.report.solved.verdict is Verdict.PROVEN_BEST else ""
         return f"Run no site at all: leaving all demand unmet costs {cost} per {case.period_covered}{cheapest}."
-    sites = f"Run {running} of {style.counted(case.m, 'site')}: {_names(at, plan.open)}"
-    return f"{sites}. All together that costs {cost} per {case.period_covered}."
+    sites = f"Run {running} of {_choices(at)}: {site_words(at, plan.open)}"
+    return f"{sites}. All together that costs {cost} {_covered(at)}.{_undelivered(at)}"
+
+
+def _choices(at: SitePlaces) -> str:
+    """How many sites there are to choose from, sizes of one site counted once."""
+    group = at.report.case.group
+    count = int((group < 0).sum()) + np.unique(group[group >= 0]).size
+    return style.counted(count, "site") + (" (sizes of one site counted once)" if count < group.size else "")
+
+
+def _covered(at: SitePlaces) -> str:
+    """What the cost covers: a period, and what is paid once."""
+    period, once = at.report.case.period_covered, _once(at)
+    if once <= 0:
+        return f"per {period}"
+    return f"in the first {period}, {_money(at, once)} of it once, for opening and closing"
+
+
+def _undelivered(at: SitePlaces) -> str:
+    """What the plan leaves undelivered, as a sentence; "" where that is nothing."""
+    case, unmet = at.report.case, at.report.plan.unmet
+    units, total = float(unmet @ case.demand), float(case.demand.sum())
+    if not units > NOISE * total:
+        return ""
+    short = style.counted(int((unmet > NOISE).sum()), "customer does", "customers do")
+    amount = f"{style.quantity_words(units)}{NO_BREAK}{unit_words(units, case.demand_unit)}"
+    return (f" {amount} ({style.percent_words(units / total)} of the demand) will not be delivered: {short} not get "
+            "everything.")
 
 
 def _against_today(at: SitePlaces) -> str:
@@ -91,7 +114,8 @@ def _against_today(at: SitePlaces) -> str:
     if today is None:
         return ""
     if today.solved.cost is None:
-        return "Today's sites alone cannot keep the rules of this workbook: there is no cost of today to compare."
+        why = f" {today.why}." if today.why else ""
+        return f"Today's sites alone cannot keep the rules of this workbook, so that they have no cost here.{why}"
     saved = today.solved.cost - at.report.audit.total
     count = style.counted(int(at.report.case.today.sum()), "site")
     if abs(saved) < 0.5 * 10.0 ** -style.money_digits(at.report.case.currency):
@@ -99,29 +123,35 @@ def _against_today(at: SitePlaces) -> str:
     part = style.percent_words(abs(saved) / today.solved.cost, "down") if today.solved.cost else ""
     if saved > 0:
         less = f"{_money(at, saved, 'down')} ({part}) less"
-        return f"That is {less} than today's {count} cost with deliveries at their best.{_paid_once(at, saved)}"
+        of = made_of(today.audit, at.report.audit, at.report.case.currency)
+        return f"That is {less} than today's {count} cost with deliveries at their best.{of}{_paid_once(at, saved)}"
     return (f"That is {_money(at, -saved, 'up')} ({part}) more than today's {count}: today's sites break a count or "
             "group rule of this workbook that the plan keeps.")
 
 
-def _paid_once(at: SitePlaces, saved: float) -> str:
-    """What of the cost comes once, and what the plan saves when that is paid."""
+def _once(at: SitePlaces) -> float:
+    """What opening and closing sites costs, which comes once."""
     case, running = at.report.case, at.report.plan.open
-    once = float(case.opening_cost[running & ~case.today].sum() + case.closing_cost[case.today & ~running].sum())
+    return float(case.opening_cost[running & ~case.today].sum() + case.closing_cost[case.today & ~running].sum())
+
+
+def _paid_once(at: SitePlaces, saved: float) -> str:
+    """What the plan saves when all that is paid once is paid."""
+    once = _once(at)
     if once <= 0:
         return ""
-    return (f" {_money(at, once)} of the cost is paid once, for opening and closing; without it the plan costs "
-            f"{_money(at, saved + once, 'down')} per {case.period_covered} less than today.")
+    return (f" Once opening and closing are paid, it costs {_money(at, saved + once, 'down')} per "
+            f"{at.report.case.period_covered} less than today.")
 
 
 def _tiles(at: SitePlaces, ledger: Ledger, checks: ChecksAt) -> list[Tile]:
     report = at.report
     cost, currency = report.audit.total, report.case.currency
-    per = f"per {report.case.period_covered}"
+    per = f"{'in the first' if _once(at) > 0 else 'per'} {report.case.period_covered}"
     today = report.today
     if today is None:
         count = f'=COUNTIF({at.sites_at.span("open")},"yes")'
-        against = Tile("Open sites", int(report.plan.open.sum()), f"of {style.counted(report.case.m, 'site')}", count,
+        against = Tile("Open sites", int(report.plan.open.sum()), f"of {_choices(at)}", count,
                        style.WHOLE)
     elif today.solved.cost is None:
         against = Tile("Against today", "no figure", "today's sites cannot keep the rules")
@@ -144,11 +174,13 @@ def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
     ]
     if at.measured:
         rows.append(Today(f"Average distance ({case.distance_unit})", missing if before is None else
-                          _average_distance(at, before), _average_distance(at, report.plan), "#,##0.0"))
+                          _average_distance(at, before), _average_distance(at, report.plan), "#,##0.0",
+                          _average_formula(at)))
     if case.unmet_cost is not None:
         was = missing if before is None else float(before.unmet @ case.demand)
+        where = at.customers_at
         rows.append(Today(f"Unmet demand ({case.demand_unit})", was, float(report.plan.unmet @ case.demand),
-                          at.demand_format))
+                          at.demand_format, f"=SUMPRODUCT({where.span('unmet')}*{where.span('demand')})"))
     moved, volume = _moved(at)
     if before is not None:
         total = float(case.demand.sum())
@@ -166,6 +198,13 @@ def _average_distance(at: SitePlaces, plan: Plan) -> float | str:
     volume = np.where(np.isfinite(far), plan.share * case.demand[plan.customer], 0.0)
     total = float(volume.sum())
     return float((np.where(np.isfinite(far), far, 0.0) * volume).sum() / total) if total > 0 else "not known"
+
+
+def _average_formula(at: SitePlaces) -> str:
+    """Formula of the average distance over the sheet of deliveries; deliveries without a distance do not count."""
+    where = at.deliveries_at
+    far, volume = where.span("distance"), where.span("volume")
+    return f"=SUMPRODUCT({far},{volume})/SUMPRODUCT(ISNUMBER({far})*{volume})"
 
 
 def _moved(at: SitePlaces) -> tuple[int, float]:
@@ -190,7 +229,7 @@ def _changes(at: SitePlaces) -> list[str]:
         for word, which in (("Opens", plan.open & ~case.today), ("Closes", case.today & ~plan.open),
                             ("Stays open", plan.open & case.today)):
             if which.any():
-                points.append(f"{word}: {_names(at, which)}.")
+                points.append(f"{word}: {site_words(at, which)}.")
     else:
         points += _tasks(at)
     movers = _movers(at)
@@ -202,10 +241,6 @@ def _changes(at: SitePlaces) -> list[str]:
                       f"{at.name(names.PLAN_CUSTOMERS)}.")
     elif at.report.today is not None and at.report.today.solved.plan is not None:
         points.append("No customer gets another main site.")
-    unmet = plan.unmet > 0
-    if unmet.any():
-        short = style.counted(int(unmet.sum()), "customer does", "customers do")
-        points.append(f"{short} not get all of the demand.")
     return points
 
 
@@ -237,41 +272,6 @@ def _sure(at: SitePlaces, checkable: float | None) -> list[str]:
     points.append("The plan was recomputed by a second, separate part of the program: every rule holds, and the "
                   "costs agree.")
     return points
-
-
-def _binding(at: SitePlaces) -> list[str]:
-    """What keeps the plan from being cheaper, as far as the plan itself shows it."""
-    case, plan, points = at.report.case, at.report.plan, []
-    with np.errstate(divide="ignore", invalid="ignore"):
-        full = plan.open & np.isfinite(case.capacity) & (at.load >= FULL * case.capacity)
-    if full.any():
-        points.append(f"Full to capacity: {_names(at, full)}.")
-    least = plan.open & (case.least_volume > 0) & (at.load <= case.least_volume / FULL)
-    if least.any():
-        points.append(f"Held up to the least volume: {_names(at, least)}.")
-    running = int(plan.open.sum())
-    if case.most_sites is not None and running == case.most_sites:
-        points.append(f"The most sites allowed ({case.most_sites}) are open.")
-    if case.fewest_sites is not None and running == case.fewest_sites:
-        points.append(f"No fewer sites are allowed than the {case.fewest_sites} that are open.")
-    for rule, word in ((OPEN, "Open by rule"), (CLOSED, "Closed by rule")):
-        if (case.rule == rule).any():
-            points.append(f"{word}: {_names(at, case.rule == rule)}.")
-    if at.promised:
-        points.append(_promise_words(at))
-    if case.share_within is not None and case.share_distance is not None:
-        points.append(f"At least {style.percent_words(case.share_within)} of the demand is kept within "
-                      f"{style.quantity_words(case.share_distance)} {case.distance_unit}.")
-    return points or ["No capacity, count or distance rule holds the plan back: costs alone decide."]
-
-
-def _promise_words(at: SitePlaces) -> str:
-    case = at.report.case
-    barred = np.zeros((case.m, case.n), dtype=bool)
-    if case.distance is not None:
-        barred = (case.distance > case.promised()) & np.isfinite(case.lane_cost)
-    far = int(barred.sum())
-    return f"The longest distance allowed rules out {style.counted(far, 'lane')}."
 
 
 def _check(at: SitePlaces) -> Sequence[str]:

@@ -130,7 +130,8 @@ def _cost_columns(at: SitePlaces, ledger: Ledger) -> list[Column]:
         title = titles[name]
         cells = [next(filter(None, (ledger.amount((key, j, 0)) for key in keys[name])), "") for j in rows]
         shown = [value if cell else None for value, cell in zip(values[name], cells, strict=True)]
-        columns.append(Column(name, f"{title} ({at.money_unit})", shown, money, 16, cells))
+        unit = case.currency if name == "once" else at.money_unit
+        columns.append(Column(name, f"{title} ({unit})", shown, money, 16, cells))
     together = [sum(values[name][j] for name in kept) for j in rows]
     span = [f"SUM({where.here('fixed', j)}:{where.here(kept[-1], j)})" for j in rows]
     look = replace(money, bold=True, number_format=style.without_zeros(money.number_format))
@@ -316,15 +317,13 @@ def _reach_columns(at: SitePlaces) -> list[Column]:
 
 
 def _move_columns(at: SitePlaces, main: list[int]) -> list[Column]:
-    if at.report.today is None:
-        return []
-    case, today = at.report.case, at.report.today.solved.plan
+    today = None if at.report.today is None else at.report.today.solved.plan
     if today is None:
-        before, moves = ["no plan possible"] * case.n, [""] * case.n
-    else:
-        was = main_sites(today.site, today.customer, today.share, case.n)
-        before = [case.sites[j] if j >= 0 else "" for j in was]
-        moves = ["yes" if old != new else "no" for old, new in zip(was, main, strict=True)]
+        return []
+    case = at.report.case
+    was = main_sites(today.site, today.customer, today.share, case.n)
+    before = [case.sites[j] if j >= 0 else "" for j in was]
+    moves = ["yes" if old != new else "no" for old, new in zip(was, main, strict=True)]
     return [
         Column("today", "Main site today", before, width=12),
         Column("moves", "Changes its main site (yes/no)", moves, width=12),

@@ -160,7 +160,8 @@ class SitePlaces:
         keys += ["single"] if self.report.case.single_source.any() else []
         keys += ["farthest"] if self.measured else []
         keys += ["promise"] if self.promised else []
-        keys += ["today", "moves"] if self.report.today is not None else []
+        compared = self.report.today is not None and self.report.today.solved.plan is not None
+        keys += ["today", "moves"] if compared else []
         return places(self.name(names.PLAN_CUSTOMERS), keys, self.report.case.n)
 
     @cached_property

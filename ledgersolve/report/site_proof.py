@@ -210,14 +210,15 @@ def _rest_on_search(at: SitePlaces, checked: float) -> str:
     report, currency = at.report, at.report.case.currency
     cost, proven = report.audit.total, report.solved.bound
     possible = style.money_words(max(0.0, cost - checked), currency, "up")
-    words = "What you can check in this sheet: no plan costs less."
+    words = "For the workbook as it was solved, you can check in this sheet: no plan costs less."
     if cost - checked > WEAK * abs(cost):
         least = style.money_words(checked, currency, "down")
         part = style.percent_words(checked / cost, "down") if cost > 0 else "a part"
         words = ("For this workbook prices alone prove little: what you can check in this sheet is that no plan "
                  f"costs less than {least}, {part} of the cost of this plan.")
     elif cost - checked > 1e-9 * abs(cost):
-        words = f"What you can check in this sheet: no plan is cheaper by more than {possible}."
+        words = ("For the workbook as it was solved, you can check in this sheet: no plan is cheaper by more than "
+                 f"{possible}.")
     if proven is None or proven <= checked + 1e-9 * abs(cost):
         return f"{words} Nothing more is claimed than this sheet shows."
     rest = style.money_words(max(0.0, cost - proven), currency, "up")

@@ -5,12 +5,14 @@ from dataclasses import replace
 from ledgersolve.answer import VariantAnswer
 from ledgersolve.contract.reading import Reading
 from ledgersolve.findings import Answered
+from ledgersolve.mip import Solved, Verdict
 from ledgersolve.report.inputs import SiteReport, Today, VariantResult
 from ledgersolve.report.names import wanted_names
 from ledgersolve.report.site_book import site_sheets
 from ledgersolve.site_selection.audit import audit
 from ledgersolve.site_selection.case import Case
 from ledgersolve.site_selection.explain import explain
+from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.questions import answer_questions
 from ledgersolve.site_selection.solve import solve
 from ledgersolve.work.shared import (
@@ -39,7 +41,7 @@ def work(reading: Reading, case: Case, budget: Budget) -> Worked:
     if case.compare_today:
         seconds = budget.left() / (2 + len(case.variants))
         found = solve(case.as_today(), budget.part("today's network", seconds))
-        today = Today(found, confirmed(case.as_today(), found, audit))
+        today = Today(found, confirmed(case.as_today(), found, audit), _why(case.as_today(), found, budget))
     variants = _variants(case, budget, reading.run.questions_share if reading.run.questions else 0.0)
     answers: tuple[Answered, ...] = ()
     if reading.run.questions:
@@ -55,6 +57,14 @@ def work(reading: Reading, case: Case, budget: Budget) -> Worked:
         tuple(_variant_answer(case, result) for result in variants),
         record=times(reading, answers),
     )
+
+
+def _why(case: Case, found: Solved[Plan], budget: Budget) -> str:
+    """Which rule today's network cannot keep, in one sentence without a stop; "" where that is not known."""
+    if found.verdict is not Verdict.NO_PLAN_EXISTS:
+        return ""
+    conflicts = explain(case, budget.part("why today cannot be", 0.2 * budget.left())).conflicts
+    return conflicts[0].words.rstrip(".") if conflicts else ""
 
 
 def _variants(case: Case, budget: Budget, questions_share: float) -> tuple[VariantResult, ...]:

@@ -25,7 +25,7 @@ def figure_words(value: float, digits: int = 0, rounding: Rounding = "nearest") 
     """Figure in a sentence with a space between thousands (readable in every country)."""
     scale = 10.0**digits
     scaled = value * scale
-    snapped = round(scaled)
+    snapped = int(math.copysign(math.floor(abs(scaled) * (1 + 1e-15) + 0.5), scaled))  # halves up, as sheets do
     if abs(scaled - snapped) > 1e-6 * max(1.0, abs(scaled) * 1e-6):
         snapped = math.ceil(scaled) if rounding == "up" else math.floor(scaled) if rounding == "down" else snapped
     return f"{snapped / scale:,.{digits}f}".replace(",", NO_BREAK).replace("-", "\u2212")
@@ -37,7 +37,9 @@ _WORD = re.compile(r"[A-Za-z][a-z]{3,}")
 
 def unit_words(amount: float, unit: str) -> str:
     """The unit behind an amount: ``1 pallet``, ``6 pallets``; symbols (kg, m3) stay as they are."""
-    if abs(amount) == 1 or not (_WORD.fullmatch(unit) or unit in _SHORT_WORDS) or unit.endswith("s"):
+    kind, _, word = unit.rpartition(" ")  # a "roll cage" is a word as well, a "pallet of cement" is left alone
+    wordlike = bool(_WORD.fullmatch(word) or word in _SHORT_WORDS) and " " not in kind
+    if abs(amount) == 1 or not wordlike or unit.endswith("s"):
         return unit
     if unit.endswith(("x", "ch", "sh")):
         return f"{unit}es"
