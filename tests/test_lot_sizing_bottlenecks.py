@@ -6,6 +6,7 @@ import numpy as np
 import pytest
 
 from ledgersolve.findings import Answered
+from ledgersolve.lot_sizing.audit import audit
 from ledgersolve.lot_sizing.bottlenecks import bottlenecks
 from ledgersolve.lot_sizing.case import Case, plain_case
 from ledgersolve.lot_sizing.earlier import started_earlier
@@ -99,6 +100,22 @@ def test_an_earlier_start_saves_overtime() -> None:
     assert row(answer, "a tenth more time")[1] == pytest.approx(7)
     assert "1.0 time units of it are used, worth EUR 7.00 each" in str(row(answer, "a tenth more time")[3])
     assert row(answer, "overtime of line allowed")[1] == pytest.approx(0)
+
+
+def test_a_better_plan_of_the_case_as_it_is_is_no_saving_of_more_time() -> None:
+    """Lot for lot where time is plenty: more of it finds the better plan, and claims nothing by that."""
+    case = on_one_line(200.0, 5)
+    best = planned(case)
+    worse = plan_from_made(case, case.demand)
+    cost = audit(case, worse).total
+    assert cost > best.cost + 1
+    case_known = Solved(Verdict.BEST_FOUND, worse, cost, best.cost)
+    rows = bottlenecks(case, case_known, LIMITS.start()).rows
+    assert rows
+    for what, low, high, how in rows:
+        assert low is None or low <= 1e-3, what
+        assert high >= cost - best.cost - 1e-3
+        assert "may be due to more search" in how
 
 
 def test_more_overtime_at_its_price() -> None:

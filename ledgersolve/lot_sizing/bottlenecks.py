@@ -29,6 +29,8 @@ HOURS_SHARE = 0.4
 """Share of the time for hours with the plan's setups; the rest is for re-planning."""
 MORE = 0.1
 """Part of a resource's time that is given to it, or allowed as overtime, in addition."""
+EXACT = 2.5e-6
+"""Width, as a share of the plan's cost, up to which a saving counts as one figure."""
 TINY = 1e-6
 """Savings below this share of the plan's cost are rounding."""
 
@@ -57,7 +59,7 @@ def bottlenecks(case: Case, solved: Solved[Plan], clock: Clock) -> Answered:
         part = "Not asked: the resources that may limit the plan have no limit in some periods."
         words = part if binding(case).any() else enough
         return Answered(question, words, COLUMNS)
-    asker = _Asker(case, solved.plan, solved.cost, solved.prices, clock)
+    asker = _Asker(case, solved.plan, solved.cost, solved.bound, solved.prices, clock)
     hours = [(cell, asker.same_setups(*cell)) for cell in cells[:MOST_PERIODS]
              if clock.left() > (1 - HOURS_SHARE) * clock.limits.seconds]
     paid = [r for r in resources if case.overtime_limit[r] > 0]
@@ -145,6 +147,7 @@ class _Asker:
     case: Case
     plan: Plan
     cost: float
+    bound: float | None
     prices: Floats | None
     clock: Clock
     asks: int = 1
@@ -185,7 +188,11 @@ class _Asker:
         return self.re_planned(self._with_one_more(resource, period))
 
     def re_planned(self, changed: Case, start: Plan | None = None, anyway: float = 0.0) -> _Saving:
-        """Re-solve a changed case, of whose cost a part is paid ``anyway``."""
+        """Re-solve a changed case, of whose cost a part is paid ``anyway``.
+
+        What is saved at least is counted from what every plan of the case as it is costs at least: a plan found
+        on the way that is better than this one may owe that to the search, not to the change.
+        """
         seconds = self.clock.left() / max(self.asks, 1)
         self.asks -= 1
         if seconds <= 0.02:
@@ -194,11 +201,16 @@ class _Asker:
         found = solve(changed, Limits(0.75 * seconds, 1e-6, self.clock.limits.cancelled), begun)
         if found.cost is None and found.bound is None:
             return _Saving(None, None, NOT_ANSWERED)
-        low = None if found.cost is None else max(0.0, self.cost - (found.cost - anyway))
+        own = None if found.cost is None else found.cost - anyway
+        low = None if own is None else 0.0 if self.bound is None else max(0.0, self.bound - own)
         high = None if found.bound is None else max(low or 0.0, self.cost - (found.bound - anyway))
-        exact = low is not None and high is not None and high - low <= 1e-6 * self.cost
+        exact = low is not None and high is not None and high - low <= EXACT * self.cost
         sure = "exact" if exact and found.verdict is Verdict.PROVEN_BEST else "a proven range"
-        return _Saving(low, high, f"all re-planned, {sure}", found.plan)
+        how = f"all re-planned, {sure}"
+        if own is not None and not exact and self.cost - own > TINY * self.cost:
+            less = money(self.case, self.cost - own, "down")
+            how += f"; a plan for {less} less was found, but in part that may be due to more search"
+        return _Saving(low, high, how, found.plan)
 
 
 def _row(what: str, saving: _Saving) -> Row:
@@ -211,7 +223,8 @@ def _best(first: _Saving, second: _Saving) -> _Saving:
         return first
     low = max(first.low or 0.0, second.low)
     highs = [high for high in (first.high, second.high) if high is not None]
-    return _Saving(low, max(low, min(highs)) if highs else None, second.how)
+    how = second.how if second.how.endswith("exact") or second.low >= (first.low or 0.0) else first.how
+    return _Saving(low, max(low, min(highs)) if highs else None, how)
 
 
 def _more_time(case: Case, asker: _Asker, resource: int) -> Iterator[tuple[str, _Saving]]:
