@@ -10,12 +10,13 @@ from ledgersolve.lot_sizing.case import Case
 from ledgersolve.lot_sizing.decompose import solve_decomposed
 from ledgersolve.lot_sizing.elastic import short_of_time, shortfall
 from ledgersolve.lot_sizing.groups import groups
-from ledgersolve.lot_sizing.plan import plan_from_made
+from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.quantities import best_quantities
+from ledgersolve.lot_sizing.responses import first_plan
 from ledgersolve.lot_sizing.start import find_start
 from ledgersolve.lot_sizing.tied import solve_tied
 from ledgersolve.lot_sizing.whole import solve_whole
-from ledgersolve.mip import Limits, Verdict
+from ledgersolve.mip import Limits, Solved, Verdict
 from tests.bench.lot_cases import Recipe, generated
 from tests.lot_textbook import FEATURES, random_case, textbook_cost
 
@@ -60,6 +61,30 @@ def test_the_decomposition_is_sound_on_any_features(seed: int) -> None:
         if answer.plan is not None:
             assert audit(group.case, answer.plan).ok
             assert answer.cost >= wanted * (1 - 1e-6) - 1e-6
+
+
+def test_a_small_group_uses_the_time_its_first_plan_leaves(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A plan that the whole model finds in its first share is improved by windows, and closed from there."""
+    case = generated(Recipe(9, 10, 1, 0.9, overtime=0.5), 5)
+    poor = first_plan(case, Limits(60.0).start(), 60.0)
+    cost = audit(case, poor).total
+    asked = []
+
+    def decomposed(_: Case, limits: Limits, start: Plan | None = None) -> Solved[Plan]:
+        return Solved(Verdict.NONE_FOUND, None, None, 0.0)
+
+    def whole(_: Case, limits: Limits, start: Plan | None = None, floor: float | None = None) -> Solved[Plan]:
+        asked.append((limits.seconds, start))
+        return Solved(Verdict.BEST_FOUND, start or poor, cost if start is None else audit(case, start).total, 0.0)
+
+    monkeypatch.setattr("ledgersolve.lot_sizing.tied.solve_decomposed", decomposed)
+    monkeypatch.setattr("ledgersolve.lot_sizing.tied.solve_whole", whole)
+    answer = solve_tied(case, Limits(40.0))
+    assert asked[0][0] < 40.0
+    assert asked[0][1] is None
+    assert "windows" in [stage.name for stage in answer.stages]
+    assert answer.cost < cost
+    assert len(asked) == 1 or asked[1][1] is answer.plan
 
 
 def test_impossible_by_adding_up() -> None:

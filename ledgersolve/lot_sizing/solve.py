@@ -155,7 +155,7 @@ class _Run:
         if found.prices is not None:
             self.prices[now.group.resources] = found.prices
         self.clock.stages.extend(_named(found.stages, now.group))
-        self.notes.extend(found.notes)
+        self.notes.extend(note for note in found.notes if note not in self.notes)
         if found.verdict is Verdict.NO_PLAN_EXISTS:
             return False
         now.bound = max(now.bound, -math.inf if found.bound is None else found.bound)

@@ -20,9 +20,12 @@ from ledgersolve.mip import Clock, Limits, Progress, Solved, Stage, Verdict, jud
 
 WHOLE_AT_ONCE = 60
 """Setups up to which the whole model needs no help."""
-SMALL, FIRST_SHARE_SMALL, SMALL_START_SHARE = 250, 0.1, 0.6
-"""Setups up to which the whole model has nearly all the time, the decomposition's share of it before, and the share
-of the rest in which the whole model has to find a plan where there is none yet."""
+SMALL, FIRST_SHARE_SMALL = 250, 0.1
+"""Setups up to which the whole model has most of the time, and the decomposition's share of it before."""
+SMALL_SHARE, SMALL_BLIND_SHARE = 0.75, 0.5
+"""Share of the time left for the whole model of a small group, and where no plan is known to it yet."""
+WORTH_CLOSING = 0.3
+"""Time left after windows, as a share of the first run's, from which another run of the whole model is worth it."""
 WHOLE_AFTER, FIRST_SHARE = 400, 0.5
 """Setups up to which the whole model gets what time the decomposition leaves, and the latter's share."""
 WHOLE_AT_LAST = 2000
@@ -55,15 +58,16 @@ def solve_tied(case: Case, limits: Limits, start: Plan | None = None) -> Solved[
 
 
 def _small(case: Case, first: Solved[Plan], clock: Clock) -> Solved[Plan]:
-    """The whole model in one run; the search for the least time missing only where half the time finds no plan."""
-    limits = clock.limits
-    seconds = clock.left() * (SMALL_START_SHARE if first.plan is None else 1.0)
-    first = _after(first, solve_whole(case, replace(limits, seconds=seconds), first.plan, first.bound))
-    if first.verdict is not Verdict.NONE_FOUND or clock.over():
+    """The whole model in one long run, then windows; the search for the least time missing only without a plan."""
+    seconds = max(clock.left() * (SMALL_BLIND_SHARE if first.plan is None else SMALL_SHARE), 1e-3)
+    limits = replace(clock.limits, seconds=seconds)
+    first = _after(first, solve_whole(case, limits, first.plan, first.bound))
+    if first.verdict is Verdict.NONE_FOUND and case.resources and not clock.over():
+        first = _rescued(case, first, clock, RESCUE_SHARE)
+    if first.verdict in (Verdict.NO_PLAN_EXISTS, Verdict.PROVEN_BEST, Verdict.WITHIN_GAP) or clock.over():
         return first
-    if case.resources:
-        first = _rescued(case, first, clock, 1.0)
-    return first if first.plan is None or clock.over() else _closed(case, first, clock)
+    first = _improved(case, first, clock, 1.0)
+    return first if clock.left() < WORTH_CLOSING * limits.seconds else _closed(case, first, clock)
 
 
 def _large(case: Case, first: Solved[Plan], clock: Clock, cells: int) -> Solved[Plan]:
@@ -88,12 +92,12 @@ def _closed(case: Case, found: Solved[Plan], clock: Clock) -> Solved[Plan]:
     return _after(found, solve_whole(case, limits, found.plan, found.bound))
 
 
-def _improved(case: Case, found: Solved[Plan], clock: Clock) -> Solved[Plan]:
+def _improved(case: Case, found: Solved[Plan], clock: Clock, share: float = WINDOWS_SHARE) -> Solved[Plan]:
     """Improve a plan window by window in a share of the time that is left."""
     if found.plan is None or found.cost is None or found.verdict is Verdict.PROVEN_BEST:
         return found
     bound = -np.inf if found.bound is None else found.bound
-    limits = replace(clock.limits, seconds=max(WINDOWS_SHARE * clock.left(), 1e-3))
+    limits = replace(clock.limits, seconds=max(share * clock.left(), 1e-3))
     best, windows = Best(case, found.plan, found.cost), limits.start()
     windows.note("windows", best.cost, bound)
     tried = improve(best, windows)
