@@ -81,7 +81,9 @@ def test_serving_a_folder_once(tmp_path) -> None:
     assert not list((folder / "Inbox").iterdir())
     for name in ("Status.html", ".ledgersolve"):
         assert (folder / name).exists()
-    assert run(["status", str(folder)], tmp_path).returncode == 0
+    told = run(["status", str(folder)], tmp_path)
+    assert told.returncode == 1, "no service looks after it any more"
+    assert "drop" in told.stdout
 
 
 @pytest.mark.slow
