@@ -13,6 +13,7 @@ from ledgersolve.site_selection.binding import today_against_plan, what_binds
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Variant, plain_case
 from ledgersolve.site_selection.counts import how_many
 from ledgersolve.site_selection.firmness import changed, demand_off, how_firm
+from ledgersolve.site_selection.neighbours import cost_neighbours
 from ledgersolve.site_selection.plan import Plan
 from ledgersolve.site_selection.questions import QUESTIONS, answer_questions
 from ledgersolve.site_selection.solve import solve
@@ -46,7 +47,7 @@ def asked(case: Case) -> tuple[Asker, frozenset[int], dict[frozenset[int], float
     solved = solve(case, LIMITS)
     assert solved.plan is not None
     assert solved.cost is not None
-    asker = Asker(case, solved.plan, solved.cost, LIMITS.start())
+    asker = Asker(case, solved.plan, solved.cost, LIMITS.start(), solved.bound)
     return asker, frozenset(np.flatnonzero(solved.plan.open).tolist()), every_set(case)
 
 
@@ -79,6 +80,25 @@ def test_insisting_on_a_site_and_the_fixed_cost_at_which_it_pays(seed) -> None:
             again = every_set(replace(case, fixed_cost=fixed))
             with_it = min(cost for chosen, cost in again.items() if j in chosen)
             assert with_it == pytest.approx(min(again.values()), abs=1e-6)
+
+
+@pytest.mark.parametrize("seed", range(6))
+def test_sets_next_to_the_plan_give_figures_that_no_answer_exceeds(seed) -> None:
+    """With capacities and no time for more than given sites: each figure is a set's cost, and the least of them."""
+    case = replace(random_case(seed), capacity=np.full(5, 30.0), most_sites=3)
+    plan, cost = planned(case)
+    asker = Asker(case, plan, cost, LIMITS.start())
+    free = list(range(case.m))
+    cost_neighbours(asker, free)
+    assert asker.plans
+    for told, other in asker.plans:
+        assert audit(case, other).ok
+        assert audit(case, other).total == pytest.approx(told)
+        assert told >= cost - 1e-6
+    for j in free:
+        high = asker.known_flip(j).high
+        truth = solve(asker.flipped(case, j), LIMITS)
+        assert high is None or high >= truth.cost - 1e-6
 
 
 @pytest.mark.parametrize("seed", range(4))
@@ -136,7 +156,7 @@ def test_the_range_over_which_the_sites_stay_best(seed) -> None:
 def test_a_full_site_is_asked_about() -> None:
     """S1 is full at 10; one more tenth of capacity saves one unit's detour of 5."""
     case = plain_case([0, 0], [[1, 1], [6, 6]], [8, 8], capacity=np.array([10.0, 20.0]))
-    asker = Asker(case, *planned(case), LIMITS.start())
+    asker = Asker(case, *planned(case), LIMITS.start(), planned(case)[1])
     one, tenth = what_binds(asker).rows
     assert (one[0], one[1], tenth[0]) == ("S1 is full", "one unit more", "S1 is full")
     assert one[2] == pytest.approx(5)
@@ -154,8 +174,18 @@ def planned(case: Case) -> tuple[Plan, float]:
 def test_a_count_at_its_limit_is_asked_about() -> None:
     """With one site allowed, a second would save 40 of service for 5."""
     case = plain_case([5, 5], [[1, 41], [41, 1]], [1, 1], most_sites=1)
-    rows = what_binds(Asker(case, *planned(case), LIMITS.start())).rows
+    rows = what_binds(Asker(case, *planned(case), LIMITS.start(), planned(case)[1])).rows
     assert rows[0][2] == pytest.approx(35)
+
+
+def test_what_more_search_saves_is_no_saving_of_a_looser_rule() -> None:
+    """As if the plan cost 82 over a bound of 40: two sites cost 12, so that 28 at least are due to the rule."""
+    case = plain_case([5, 5], [[1, 41], [41, 1]], [1, 1], most_sites=1)
+    poor, _ = planned(replace(case, rule=np.array([OPEN, CLOSED])))
+    row = what_binds(Asker(case, poor, 82.0, LIMITS.start(), 40.0)).rows[0]
+    assert row[2:4] == (pytest.approx(28), pytest.approx(70))
+    unknown = what_binds(Asker(case, poor, 82.0, LIMITS.start())).rows[0]
+    assert unknown[2:4] == (None, pytest.approx(70))
 
 
 @pytest.mark.parametrize("seed", range(6))

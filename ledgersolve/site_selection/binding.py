@@ -6,7 +6,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from ledgersolve.findings import NOT_ANSWERED, Answered, Column
-from ledgersolve.site_selection.asker import Asker, codes, listed, money, site_part
+from ledgersolve.site_selection.asker import Asker, Found, codes, listed, money, site_part
 from ledgersolve.site_selection.case import CLOSED, FREE, OPEN, Case, Floats, Ints
 from ledgersolve.site_selection.extra_cost import MOST_NAMED, Extra, extra
 from ledgersolve.site_selection.plan import Plan
@@ -106,7 +106,9 @@ def what_binds(asker: Asker) -> Answered:
     case = asker.case
     asked = list(_looser(case, asker.base))
     asker.asks = len(asked)
-    told = [_saving(rule, loosened, extra(asker, asker.ask(changed, ("looser", rule, loosened)), within=False))
+    base = extra(asker, Found(None, asker.base_cost, asker.base))
+    told = [_saving(rule, loosened, base.floor,
+                    extra(asker, asker.ask(changed, ("looser", rule, loosened)), within=False))
             for rule, loosened, changed in asked]
     rows: tuple[Row, ...] = tuple((one.rule, one.loosened, one.least, one.most, one.words()) for one in told)
     columns = (Column("What is at its limit"), Column("Loosened to"), Column("Saves at least", "money"),
@@ -143,15 +145,18 @@ class _Saving:
         return NOT_ANSWERED if self.least is None else "at least that; the most is not known yet"
 
 
-def _saving(rule: str, loosened: str, above: Extra) -> _Saving:
-    """Turn a cost above the plan into a saving."""
-    if above.exact:
-        saved = max(0.0, -(above.high or 0.0))
-        return _Saving(rule, loosened, saved, saved)
-    least = None if above.high is None or above.high >= 0 else -above.high
-    if above.low is not None or (above.floor is not None and above.floor >= 0):
+def _saving(rule: str, loosened: str, floor: float | None, above: Extra) -> _Saving:
+    """Turn a cost above the plan into a saving; what a better plan under the rules as they are saves is none.
+
+    ``floor`` is what every plan under the rules as they are costs at least above the plan (0 or less, None =
+    not known).
+    """
+    lowest = above.low if above.low is not None else above.floor
+    if lowest is not None and lowest >= 0:
         return _Saving(rule, loosened, 0.0, 0.0)  # no plan under the looser rule is below the plan's cost
-    return _Saving(rule, loosened, least, None if above.floor is None else -above.floor)
+    beaten = above.high is not None and floor is not None and above.high < floor
+    least = (floor or 0.0) - (above.high or 0.0) if beaten else None
+    return _Saving(rule, loosened, least, None if lowest is None else -lowest)
 
 
 def _binding_words(case: Case, plan: Plan, told: list[_Saving]) -> str:
