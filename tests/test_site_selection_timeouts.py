@@ -271,7 +271,8 @@ def test_what_these_sites_cannot_carry_is_said_first(k: int, how: str, monkeypat
     plan, cost = planned(case)
     monkeypatch.setattr(asker, "solve", Rationed(k, how, np.random.default_rng(k)))
     answers = answer_questions(case, Solved(Verdict.PROVEN_BEST, plan, cost, cost), LIMITS)
-    answer = next(answer for answer in answers if answer.question == "What if demand is off?")
+    answer = answers[0]
+    assert answer.question == "What if demand is off?"  # with today's network and variants, it still is on the page
     unable = [row[0] for row in answer.rows if "cannot carry it" in str(row[4])]
     assert bool(unable) == ("cannot carry it" in answer.words)
     assert not unable or (answer.headline and answer.words.startswith("With demand +"))

@@ -32,15 +32,15 @@ class Question:
 
 
 QUESTIONS = (
+    Question("demand off", demand_off, 1, 1.0),
     Question("why open", why_open, 3, 1.0),
     Question("why closed", why_closed, 5, 1.5),
     Question("how many", how_many, 4, 1.0),
-    Question("demand off", demand_off, 1, 1.0),
     Question("runner-up", runner_up, 6, 0.5),
     Question("how firm", how_firm, 7, 1.5),
     Question("what binds", what_binds, 2, 1.0),
 )
-"""In the order in which the answers are shown."""
+"""In the order in which the answers are shown: what the plan's sites cannot carry must reach the first page."""
 VARIANTS_PART = 0.1
 """Part of the time for keeping the plan's sites under the variants, which are solved beside the questions."""
 
