@@ -1,5 +1,6 @@
 """Load of resources: a period is full when nothing more can be had, overtime included, and not before."""
 
+from dataclasses import replace
 from pathlib import Path
 
 import openpyxl
@@ -89,3 +90,21 @@ def test_formulas_give_the_figures_and_checks_watch_overtime(line, tmp_path: Pat
     rows = reversed(list(values[doctored]["Proof"].iter_rows()))  # live checks stand above the audit's list
     states = {row[0].value: row[5].value for row in rows if row[0].value}
     assert (states["Capacity"], states["Overtime limit"]) == ("BROKEN", "ok")
+
+
+def test_rounding_of_the_machine_is_no_loss(tmp_path: Path) -> None:
+    """A plan that loses 7e-14 units loses none: sheets and ledger show 0, and recalculate to it."""
+    source = books.lot_book(tmp_path / "source.xlsx", [
+        {"Item": "A", "Setup cost": 5.0, "Holding cost": 1.0, "Lost sale cost": 90.0}], [[10.0, 20.0]])
+    given = lot_report(source)
+    plan = given.plan
+    lost = plan.lost.copy()
+    lost[0, 1] = 7.3e-14
+    solved = replace(given.solved, plan=replace(plan, lost=lost))
+    path = returned(source, tmp_path / "out.xlsx", replace(given, solved=solved))
+    book = openpyxl.load_workbook(path, data_only=True)
+    for name in ("Plan lost", "Ledger"):
+        tiny = [cell.coordinate for row in book[name].iter_rows() for cell in row
+                if isinstance(cell.value, float) and 0 < abs(cell.value) < 1e-9]
+        assert tiny == []
+    assert "will never be delivered" not in str(book["Decision"]["A3"].value)

@@ -77,7 +77,8 @@ def plan_stock(at: LotPlaces) -> ResultSheet:
     case, plan = at.report.case, at.report.plan
     sheet = ResultSheet(at.name(names.PLAN_STOCK), tab_colour=style.MOSS, landscape=True)
     table = PeriodTable(at.stock, case.items, case.item_names, case.units, plan.stock, at.quantity_format,
-                        lambda i, t: _stock_formula(at, i, t), side=_stock_columns(at))
+                        lambda i, t: _stock_formula(at, i, t), f"Sum (unit x {case.period_unit})",
+                        side=_stock_columns(at))
     write_periods(at, sheet, table)
     shade(sheet, at.stock, "{cell}<0", ALERT)
     shade(sheet, at.stock, "{cell}>0", SOME)

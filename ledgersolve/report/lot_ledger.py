@@ -9,6 +9,7 @@ from ledgersolve.lot_sizing.case import Flags, Floats
 from ledgersolve.report import names, style
 from ledgersolve.report.ledger import Group, Ledger, Line, Part, group_of_lines, write_ledger
 from ledgersolve.report.lot_places import Block, LotPlaces
+from ledgersolve.report.period_tables import settled
 from ledgersolve.report.site_places import Source
 from ledgersolve.report.tables import Figure
 
@@ -48,12 +49,12 @@ def lot_ledger(at: LotPlaces) -> Ledger:
     kinds = [
         _Kind(SETUP, "Setup cost", case.setup_cost, plan.made, at.made, counted=True),
         _Kind(MAKING, "Unit cost", case.unit_cost, plan.made, at.made),
-        _Kind(HOLDING, "Holding cost", case.holding_cost, plan.stock, at.stock),
+        _Kind(HOLDING, "Holding cost", case.holding_cost, settled(plan.stock), at.stock),
     ]
     if at.may_wait:
-        kinds.append(_Kind(LATE, "Backlog cost", _finite(case.backlog_cost) * every, plan.late, at.late))
+        kinds.append(_Kind(LATE, "Backlog cost", _finite(case.backlog_cost) * every, settled(plan.late), at.late))
     if at.may_lose:
-        kinds.append(_Kind(LOST, "Lost sale cost", _finite(case.lost_cost) * every, plan.lost, at.lost))
+        kinds.append(_Kind(LOST, "Lost sale cost", _finite(case.lost_cost) * every, settled(plan.lost), at.lost))
     parts = [_item_part(at, kind) for kind in kinds]
     parts += [_resource_part(at, OVERTIME, "Overtime cost"), _family_part(at), _resource_part(at, USE, "Use cost")]
     return write_ledger(at.name(names.LEDGER), parts, case.currency, "", "Item or resource", "What")
@@ -144,7 +145,7 @@ def _resource_part(at: LotPlaces, part: str, title: str) -> Part:
     overtime = part == OVERTIME
     costs = case.overtime_cost if overtime else case.use_cost
     block = at.load_block("overtime" if overtime else "in use")
-    amounts = at.report.plan.overtime.sum(axis=1) if overtime else at.used.sum(axis=1)
+    amounts = settled(at.report.plan.overtime).sum(axis=1) if overtime else at.used.sum(axis=1)
     unit = "time units" if overtime else f"{case.period_unit}s in use"
     rate = "per time unit" if overtime else f"per {case.period_unit} in use"
     group = _listed(at, part, "Resources", title, case.resources, costs, amounts, block.total)

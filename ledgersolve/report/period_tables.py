@@ -40,12 +40,18 @@ class PeriodTable:
     code_title: str = "Item"
 
 
+def settled(values: Floats) -> Floats:
+    """Figures without the machine's rounding of what is 0."""
+    return np.where(np.abs(values) < NOISE, 0.0, values)
+
+
 def write_periods(at: LotPlaces, sheet: ResultSheet, table: PeriodTable) -> None:
     """Write titles (in the row above the block) and the table."""
     _titles(at, sheet, table)
     block, look = table.block, style.number(style.without_zeros(table.number_format))
     total = replace(style.number(table.number_format), bold=True, fill=style.SAND)
     last = column_letters(FIRST_PERIOD + block.periods)
+    values = settled(table.values)
     for r, code in enumerate(table.rows):
         row = block.first_row + r
         sheet.put(row, CODE, code, style.CELL)
@@ -53,8 +59,8 @@ def write_periods(at: LotPlaces, sheet: ResultSheet, table: PeriodTable) -> None
         sheet.put(row, UNIT, table.units[r], replace(style.SMALL, align="left", indent=1))
         if table.sum_title:
             formula = f"=SUM({column_letters(FIRST_PERIOD + 1)}{row + 1}:{last}{row + 1})"
-            sheet.put(row, SUM, float(table.values[r].sum()), total, formula=formula)
-        for t, value in enumerate(np.where(np.abs(table.values[r]) < NOISE, 0.0, table.values[r]).tolist()):
+            sheet.put(row, SUM, float(values[r].sum()), total, formula=formula)
+        for t, value in enumerate(values[r].tolist()):
             formula = table.formula(r, t) if table.formula is not None else ""
             sheet.put(row, FIRST_PERIOD + t, value, look, formula=f"={formula}" if formula else "")
         for k, column in enumerate(table.side):
