@@ -2,7 +2,7 @@
 
 A cell whose row was taken out is right: its reference has become an error, which ``ISREF`` tells apart from an
 error that stands in a cell. Runs of cells are asked in one go, so that a thousand cells are one short formula;
-what a run cannot be asked is asked cell by cell, where the cells are few.
+what a run cannot be asked is asked cell by cell, where the cells are few. No IF stands in another one.
 """
 
 import re
@@ -17,6 +17,9 @@ TO_FIX, DONE, DROP_AGAIN = "to fix", "done", "to fix (*)"
 WATCHED_SPANS = 40
 """At most so many runs of cells of one entry are watched."""
 
+SEARCHES = 10
+"""At most so many cells of one entry are each looked for in a whole column."""
+
 LONGEST = 7500
 """Longest formula; programs take 8,192 characters."""
 
@@ -29,18 +32,19 @@ def status(problem: Problem) -> tuple[str, str]:
     if not problem.sheet or not problem.cell or problem.count != len(cells):
         return DROP_AGAIN, ""
     wrong = _of_cells(problem, cells) or _of_spans(problem, cells)
-    return (TO_FIX, f'IF({wrong}=0,"{DONE}","{TO_FIX}")') if wrong else (DROP_AGAIN, "")
+    return (TO_FIX, f'CHOOSE(1+({wrong}>0),"{DONE}","{TO_FIX}")') if wrong else (DROP_AGAIN, "")
 
 
 def _of_cells(problem: Problem, cells: Sequence[str]) -> str:
     """Number of cells that are wrong, each asked by the entry's test; "" where that is not possible."""
-    if not problem.test or len(cells) * len(problem.test) > LONGEST:
+    searches = "SUMPRODUCT" in problem.test
+    if not problem.test or len(cells) * len(problem.test) > LONGEST or (searches and len(cells) > SEARCHES):
         return ""
     own = f"{quoted(problem.sheet)}!"
     terms = []
     for column, row in map(_parts, cells):
         test = asked(problem.test, own, column, row, "$")
-        terms.append(f"IF(ISREF({own}${column}${row}),IF({test},0,1),0)")
+        terms.append(f"ISREF({own}${column}${row})*IFERROR(1-({test}),1)")
     formula = "+".join(terms)
     return formula if len(formula) <= LONGEST else ""
 
@@ -51,7 +55,7 @@ def _of_spans(problem: Problem, cells: Sequence[str]) -> str:
     if len(spans) > WATCHED_SPANS or (problem.recheck == "static" and not problem.tally):
         return ""
     whole = [f"{quoted(problem.sheet)}!{span}" for span in spans]
-    formula = "+".join(f"IF(ISREF({span}),{_wrong(problem, span)},0)" for span in whole)
+    formula = "+".join(f"ISREF({span})*IFERROR({_wrong(problem, span)},1)" for span in whole)
     return formula if len(formula) <= LONGEST else ""
 
 
