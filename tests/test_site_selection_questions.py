@@ -9,6 +9,7 @@ import pytest
 from ledgersolve.mip import Limits, Solved
 from ledgersolve.site_selection.alternatives import promising, runner_up, why_closed, why_open
 from ledgersolve.site_selection.asker import Asker, spoken
+from ledgersolve.site_selection.audit import audit
 from ledgersolve.site_selection.binding import today_against_plan, what_binds
 from ledgersolve.site_selection.case import CLOSED, OPEN, Case, Variant, plain_case
 from ledgersolve.site_selection.counts import how_many

@@ -8,6 +8,7 @@ from ledgersolve.findings import NOT_ANSWERED, Answered, Column
 from ledgersolve.site_selection.asker import Asker, Found, codes, interval, listed, service_part, spoken
 from ledgersolve.site_selection.case import CLOSED, OPEN, Ints
 from ledgersolve.site_selection.extra_cost import Extra, Told, exact_ones, extra, more, not_exact
+from ledgersolve.site_selection.neighbours import cost_neighbours
 from ledgersolve.site_selection.plan import Plan
 
 MOST_LISTED = 200
@@ -38,8 +39,9 @@ def why_open(asker: Asker) -> Answered:
 
 def _flips(asker: Asker, sites: Sequence[int]) -> dict[int, Extra]:
     """Ask about every site; what each costs by all that is known in the end."""
+    cost_neighbours(asker, sites)
     asker.asks = len(sites)
-    for j in sites:
+    for j in sorted(sites, key=lambda j: asker.flip_lows[j]):
         asker.flip(j)
     return {j: extra(asker, asker.known_flip(j)) for j in sites}
 
