@@ -156,7 +156,8 @@ def unknown_code(code: str, near: str | None, known: Codes, *, alone: bool = Fal
     sheet = known.sheet
     remedy = f"Did you mean {quoted(near)}?" if near else f"Correct the code, or add it to {sheet}."
     return Fault("unknown code", f"{quoted(code)}, which is not in {sheet}", f"a code of the sheet {sheet}", remedy,
-                 test=mended.listed(known.cells), tally=mended.count_listed(known.cells, code, near),
+                 test=mended.listed(known.cells),
+                 tally=mended.count_listed(known.cells, code, near) if alone else "",
                  typed=code if alone and len(code) < LONGEST_TYPED and code.isprintable() else "")
 
 

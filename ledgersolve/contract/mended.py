@@ -29,6 +29,9 @@ _SHORT = f"TRIM({CELL})"
 _FILLED = f"LEN({_SHORT})>0"
 _ISO_DAY = f'AND(LEN({_SHORT})=10,MID({_SHORT},5,1)="-",MID({_SHORT},8,1)="-",ISNUMBER(DATEVALUE({_SHORT})))'
 
+_DATES = (f'SUMPRODUCT(ISNUMBER({CELL})+(LEN({_SHORT})=10)*(MID({_SHORT},5,1)="-")*(MID({_SHORT},8,1)="-")'
+          f"*ISNUMBER(DATEVALUE({_SHORT})))")
+
 
 def watched(fault: Fault, entry: Entry) -> Fault:
     """The fault with the way in which a cell of this column shows that it is mended."""
@@ -46,7 +49,7 @@ def watched(fault: Fault, entry: Entry) -> Fault:
         return replace(fault, test=one_of(entry.choices, or_empty=empty), tally=_count_of(entry.choices),
                        may_be_empty=empty)
     if entry.holds is Holds.DATE:
-        return replace(fault, recheck="date", test=date(or_empty=empty), may_be_empty=empty)
+        return replace(fault, recheck="date", test=date(or_empty=empty), tally=_DATES, may_be_empty=empty)
     if entry.holds is Holds.CURRENCY:
         return replace(fault, test=currency())
     return replace(fault, recheck="no error" if empty else "filled")
