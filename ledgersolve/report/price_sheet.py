@@ -184,7 +184,8 @@ def _laid_out(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, shar
         row = COST_ROW + 1 + j
         sheet.put(row, 0, code)
         unit = "for the whole demand" if case.cost_is_whole else f"per {case.demand_unit}"
-        sheet.put(row, 1, f"Lane cost ({case.currency} {unit})", style.SMALL)
+        label = "Lane cost" if certificate.near is None else "Lane cost less price of near"
+        sheet.put(row, 1, f"{label} ({case.currency} {unit})", style.SMALL)
         for i in np.flatnonzero(certificate.usable[j]).tolist():
             figure = _laid_cost(at, certificate, j, i, share_cell)
             sheet.put(row, FIRST_COLUMN + i, figure.value, look, formula=figure.written)
@@ -252,7 +253,7 @@ def _write_prices(at: SitePlaces, sheet: ResultSheet, certificate: Certificate, 
         else:
             sheet.put(WHOLE_ROW, column, price, amounts)
         sheet.widths[column] = 14.0
-    sheet.widths |= {0: 34.0, 1: 26.0}
+    sheet.widths |= {0: 34.0, 1: 26.0 if certificate.near is None else 40.0}
     words = ("One price a customer, and what serving it costs from each site. The sheet Proof adds them up to a "
              "bound that no plan can undercut.")
     if case.n > PRINTED_CUSTOMERS:

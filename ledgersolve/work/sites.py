@@ -1,6 +1,9 @@
 """Site selection from a case to all that its sheets are made of."""
 
 from dataclasses import replace
+from typing import Any
+
+import numpy as np
 
 from ledgersolve.answer import VariantAnswer
 from ledgersolve.contract.reading import Reading
@@ -63,8 +66,23 @@ def _why(case: Case, found: Solved[Plan], budget: Budget) -> str:
     """Which rule today's network cannot keep, in one sentence without a stop; "" where that is not known."""
     if found.verdict is not Verdict.NO_PLAN_EXISTS:
         return ""
-    conflicts = explain(case, budget.part("why today cannot be", 0.2 * budget.left())).conflicts
+    conflicts = explain(_without_others(case), budget.part("why today cannot be", 0.2 * budget.left())).conflicts
     return conflicts[0].words.rstrip(".") if conflicts else ""
+
+
+def _without_others(case: Case) -> Case:
+    """The case as if it knew today's sites only: that others are closed is no reason why today cannot be."""
+    kept = np.flatnonzero(case.today)
+    changes: dict[str, Any] = {name: tuple(getattr(case, name)[j] for j in kept) for name in ("sites", "site_names")}
+    for name in _BY_SITE:
+        figures = getattr(case, name)
+        changes[name] = None if figures is None else figures[kept]
+    return replace(case, **changes)
+
+
+_BY_SITE = ("fixed_cost", "capacity", "least_volume", "handling_cost", "rule", "today", "opening_cost",
+            "closing_cost", "group", "lane_cost", "distance", "lane_most", "site_latitude", "site_longitude")
+"""Fields of a case with a row a site."""
 
 
 def _variants(case: Case, budget: Budget, questions_share: float) -> tuple[VariantResult, ...]:
