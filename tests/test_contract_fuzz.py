@@ -102,3 +102,12 @@ def test_a_mutated_site_workbook_is_answered(tmp_path_factory, data):
 def test_a_mutated_lot_workbook_is_answered(tmp_path_factory, data):
     """Any change of cells, rows and sheets gives an answer."""
     answered(tmp_path_factory, data.draw(mutated(lot_start())))
+
+
+@pytest.mark.long
+@pytest.mark.timeout(3600)
+@settings(max_examples=3000, deadline=None, suppress_health_check=[HealthCheck.too_slow, HealthCheck.data_too_large])
+@given(data=st.data(), start=st.sampled_from([site_start, lot_start]))
+def test_many_mutated_workbooks_are_answered(tmp_path_factory, data, start):
+    """The long form: three thousand of both jobs."""
+    answered(tmp_path_factory, data.draw(mutated(start())))

@@ -204,10 +204,16 @@ def _take_numbers(sheet: str, store: NumberColumn, rows: Ints, checked: CheckedC
 def _take_texts(sheet: str, store: TextColumn, rows: Ints, checked: CheckedColumn, faults: Faults) -> None:
     entry = checked.entry
     meaning: dict[str, str | bool | Fault] = {}
-    for place, text in zip(_places(rows, store.rows).tolist(), store.texts, strict=True):
+    places = _places(rows, store.rows)
+    as_written = entry.holds not in (Holds.CHOICE, Holds.YES_NO)
+    if as_written and np.array_equal(places, np.arange(len(rows))):  # filled in every row, as codes are
+        checked.texts[:] = store.texts
+        checked.good[:] = True
+        return
+    for place, text in zip(places.tolist(), store.texts, strict=True):
         if place < 0:
             continue
-        if entry.holds not in (Holds.CHOICE, Holds.YES_NO):
+        if as_written:
             checked.texts[place] = text
             checked.good[place] = True
             continue

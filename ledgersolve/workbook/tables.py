@@ -196,8 +196,15 @@ def read_list(cells: Iterable[Cell], wanted: Mapping[str, bool], required: Seque
     sums = _take_out_totals(columns, totals())
     every = [np.frombuffer(store.rows, dtype=np.int64) for store in columns.values() if store.rows]
     odd = [cell.row for store in columns.values() for cell in store.others]
-    rows = np.unique(np.concatenate([*every, np.array(odd, dtype=np.int64)]))
-    return RawList(titles, columns, rows, sums)
+    return RawList(titles, columns, _all_rows([*every, np.array(odd, dtype=np.int64)]), sums)
+
+
+def _all_rows(parts: Sequence[Ints]) -> Ints:
+    """The rows of all columns, each once, in order; in a large list the columns mostly fill the same rows."""
+    filled = [part for part in parts if len(part)]
+    if filled and np.all(np.diff(filled[0]) > 0) and all(np.array_equal(filled[0], part) for part in filled[1:]):
+        return filled[0].copy()
+    return np.unique(np.concatenate(parts))
 
 
 def _take_out_totals(columns: Mapping[str, NumberColumn | TextColumn], totals: Sequence[tuple[int, int, int]],
