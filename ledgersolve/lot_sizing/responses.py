@@ -48,20 +48,23 @@ def first_plan(case: Case, clock: Clock, seconds: float) -> Plan | None:
     ascent.climb(_FIRST_STEPS, math.inf, lambda _: clock.over() or clock.elapsed() > half)
     if not math.isfinite(ascent.best.bound) or clock.over():
         return None
-    return settled(case, ascent.best.schedules.made, ascent.best.charges.prices, clock, until - clock.elapsed())
+    made, prices = ascent.best.schedules.made, ascent.best.charges.prices
+    return settled(case, made, prices, clock, until - clock.elapsed(), polish=False)
 
 
-def settled(case: Case, made: Floats, prices: Floats, clock: Clock, seconds: float) -> Plan | None:
+def settled(
+    case: Case, made: Floats, prices: Floats, clock: Clock, seconds: float, *, polish: bool = True
+) -> Plan | None:
     """Make quantities (N, T) fit by responses; give the best plan met that the audit finds sound.
 
-    ``prices`` (R, T) are those of capacity; missing time costs a good deal more. Once nothing is missing every
-    item answers once more, now for cost alone; quantities are re-optimised before and after.
+    ``prices`` (R, T) are those of capacity; missing time costs a good deal more. To ``polish``, every item answers
+    once more when nothing is missing, now for cost alone; quantities are re-optimised before and after.
     """
     until = clock.elapsed() + min(seconds, clock.left())
     responses = Responses(case, made, prices)
     responses.settle(clock, until)
     best = _cheapest(case, responses.made, clock)
-    if best is None or clock.over() or clock.elapsed() > until:
+    if best is None or not polish or clock.over() or clock.elapsed() > until:
         return None if best is None else best[1]
     responses = Responses(case, best[1].made, prices)
     responses.dear *= DEARER**2
