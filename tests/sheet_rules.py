@@ -106,14 +106,15 @@ def inputs_unchanged(book: Returned) -> Iterator[str]:
 
 
 def period_sheets_alike(book: Returned) -> Iterator[str]:
-    """WB-03: every sheet of periods has the same columns."""
+    """WB-03: every sheet of periods has the same columns; the unit of a sum may differ (stock counts by period)."""
     titles = {}
     for name in book.ours:
         if name.startswith(PERIOD_SHEETS):
             row = [cell.value for cell in book.values[name][4]]
             periods = row.index("Resource") if "Resource" in row else row.index("Safety stock (units)") if (
                 "Safety stock (units)" in row) else len(row)
-            titles[name] = [value for value in row[:periods] if value is not None]
+            told = [str(value) for value in row[:periods] if value is not None]
+            titles[name] = [re.sub(r"^Sum \(.*\)$", "Sum", title) for title in told]
     if len({tuple(row) for row in titles.values()}) > 1:
         yield f"WB-03 period sheets differ in their columns: {titles}"
 
