@@ -130,7 +130,7 @@ def test_what_still_clashes_once_a_far_customer_is_let_in_is_told_at_once() -> N
     assert "raise the setting from 50 to 60" in far.remedy
     assert still[0].words == (
         "Even then: 1 site cannot serve all customers under the other rules.")
-    assert still[0].remedy == "Raise Most sites from 1 to 3."
+    assert still[0].remedy == "Raise Most sites from 1 to 3. Any one of these 2 changes is enough."
     alone = explain(replace(case, most_sites=3), LIMITS).conflicts
     assert len(alone) == 1
 

@@ -96,9 +96,11 @@ def _item_conflicts(
     ):
         if amount > 0:
             change = f"{'Raise' if way == 'high' else 'Lower'} {name} of {code} by {figure(amount)}"
+            own = Subject("Items", (code,), name)
+            others = tuple(cell for cell in cells if cell != own)
             yield Conflict(
                 f"{name} of item {code} cannot be kept: at best stock comes out {figure(amount)} too {way}.",
-                f"{change}.{lift}", amount, (Subject("Items", (code,), name), *cells),
+                f"{change}.{lift if others else ''}", amount, (own, *others),
             )
 
 

@@ -23,6 +23,7 @@ from ledgersolve.workbook.figures import unit_words
 MOST_LISTED = 25
 """Customers listed one by one; the rest is counted."""
 STILL = "Even then: "
+ANY_ONE = " Any one of these {} changes is enough."
 TOGETHER = " No single change is enough: these {} rows belong together."
 
 
@@ -41,9 +42,11 @@ def explain(case: Case, limits: Limits) -> Explanation[Plan]:
 def _loosened(case: Case, clock: Clock) -> list[Conflict]:
     """What the elastic model finds, smallest change first."""
     alone = loosen(case, clock)
-    conflicts = [_words(case, part) for part in alone or loosen_all(case, clock)]
-    if not alone and len(conflicts) > 1:
-        conflicts = [replace(one, remedy=f"{one.remedy}{TOGETHER.format(len(conflicts))}") for one in conflicts]
+    parts = alone or loosen_all(case, clock)
+    conflicts = [_words(case, part) for part in parts]
+    if len(conflicts) > 1 and all(part.enough for part in parts):
+        added = (ANY_ONE if alone else TOGETHER).format(len(conflicts))
+        conflicts = [replace(one, remedy=f"{one.remedy}{added}") for one in conflicts]
     return sorted(conflicts, key=lambda conflict: conflict.amount)
 
 
