@@ -135,3 +135,13 @@ def test_slips_in_settings_are_noticed_beside_errors(tmp_path):
     assert [kind for kind, _, _ in errors(reading)] == ["half a rule", "number expected"]
     assert ("percent or fraction", "Settings") in [(kind, sheet) for kind, sheet, _ in notices(reading)]
     assert ("half a rule", "Settings", f"B{len(sheets['Settings'])}") in errors(reading)
+
+
+@pytest.mark.parametrize("measured", [True, False])
+def test_half_a_rule_on_distance_asks_for_distances_too(tmp_path, measured):
+    """Who gives the missing half is not sent back once more for distances that the workbook does not hold."""
+    more = {"distances": [[120]]} if measured else {}
+    sheets = site_sheets([{"Site": "A", "Fixed cost": 1}], [{"Customer": "x", "Demand": 1}], lane_costs=[[1]],
+                         settings={"Share within distance (%)": 90}, **more)
+    half = next(p for p in read_sheets(tmp_path, sheets).problems if p.kind == "half a rule")
+    assert ("and distances" in half.remedy) is not measured

@@ -110,10 +110,19 @@ def report_half(book: Book, given: str, missing: str) -> None:
     empty, place = values.place(missing), values.place(given)
     entry = next(entry for entry in book.contract.settings if entry.title == missing)
     test = mended.number_or_none(entry, mended.at(*place)) if empty and place else ""
-    way = f"Give {missing} here" if empty else f"Give {missing} too"
+    way = f"Give {missing} {'here' if empty else 'too'}"
+    if not _measured(book):
+        way += ", and distances (in Lanes or Distances, or coordinates of both ends)"
     book.faults.add(values.sheet, empty or place, missing if empty else given, Fault(
         "half a rule", f"{given} without {missing}", f"both {given} and {missing}, or neither",
         f"{way}, or clear {given}.", test=test))
+
+
+def _measured(book: Book) -> bool:
+    """Whether the workbook says any distance."""
+    lanes, ends = book.table(c.LANES), [book.table(name) for name in (c.SITES, c.CUSTOMERS)]
+    return (c.DISTANCES in book.matrices or (lanes is not None and bool(lanes.good("Distance").any()))
+            or all(end is not None and bool(end.good("Latitude").any()) for end in ends))
 
 
 def _check_sites(book: Book, sites: CheckedList) -> None:
