@@ -119,7 +119,10 @@ def test_a_value_that_could_not_be_read_is_shown_as_typed(tmp_path):
     """The record of a faulty workbook shows what stands in the cell, never a default that was not asked for."""
     sheets = {"Settings": [["Setting", "Value"], ["Job", "site selection"], ["Currency", "\u20ac"],
                            ["Single sourcing", "ja"], ["Most sites", 2]]}
-    shown = dict(read_sheets(tmp_path, sheets).settings)
+    reading = read_sheets(tmp_path, sheets)
+    shown = dict(reading.settings)
+    assert "Single sourcing" not in [default.title for default in reading.defaults]
+    assert "Demand unit" in [default.title for default in reading.defaults]
     assert shown["Currency"] == "the text \u201c\u20ac\u201d, which could not be read"
     assert shown["Single sourcing"] == "the text \u201cja\u201d, which could not be read"
     assert shown["Most sites"] == "2"

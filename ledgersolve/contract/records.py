@@ -117,23 +117,27 @@ def _list_map(table: CheckedList) -> TableMap:
 
 
 def defaults_of(book: Book) -> tuple[Default, ...]:
-    """Defaults taken: settings not given and empty cells of optional columns, in contract order."""
+    """Defaults taken: settings not given and empty cells of optional columns, in contract order.
+
+    A cell at fault is no empty one: nothing was taken in its place.
+    """
     taken = [
         Default("Settings", entry.title, entry.default_text(), 1)
-        for entry in book.contract.settings if not entry.required and entry.title not in book.settings.given
+        for entry in book.contract.settings
+        if not entry.required and entry.title not in book.settings.given and entry.title not in book.settings.bad
     ]
     for sheet in book.contract.sheets:
         if isinstance(sheet, ListSheet) and sheet.name in book.tables:
             table = book.tables[sheet.name]
             taken += [
-                Default(sheet.name, entry.title, entry.default_text(), int((~table.good(entry.title)).sum()))
+                Default(sheet.name, entry.title, entry.default_text(), int(empty.sum()))
                 for entry in table.contract.entries
-                if not entry.required and not table.good(entry.title).all()
+                if not entry.required and (empty := ~(table.good(entry.title) | table.bad(entry.title))).any()
             ]
         elif sheet.name in book.matrices:
             matrix = book.matrices[sheet.name]
             figure = matrix.contract.figure
-            empty = int(np.isnan(matrix.figures).sum())
-            if empty and figure.default is not None:
-                taken.append(Default(sheet.name, figure.title, figure.default_text(), empty))
+            count = int((np.isnan(matrix.figures) & ~matrix.bad).sum())
+            if count and figure.default is not None:
+                taken.append(Default(sheet.name, figure.title, figure.default_text(), count))
     return tuple(taken)
