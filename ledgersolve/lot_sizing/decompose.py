@@ -16,7 +16,7 @@ from ledgersolve.lot_sizing.bound import Charges, Point, Relaxation
 from ledgersolve.lot_sizing.case import Case, Floats
 from ledgersolve.lot_sizing.columns import Pool, generate, rounded
 from ledgersolve.lot_sizing.couplings import Runs, choose, held
-from ledgersolve.lot_sizing.pick import picks
+from ledgersolve.lot_sizing.pick import mixed, picks
 from ledgersolve.lot_sizing.plan import Plan, plan_from_made
 from ledgersolve.lot_sizing.quantities import best_quantities
 from ledgersolve.lot_sizing.responses import settled
@@ -28,9 +28,7 @@ RESPONSES_SHARE = 0.15
 """Most of the time left that responses to the prices of the ascent may take."""
 ROUNDING_SHARE = 0.4
 """Share of the time for whole choices in which mixes of schedules are rounded, before the wrapper picks."""
-_ROUNDINGS, _FEW_ROUNDINGS = 12, 2
-_MIXED = 1.3
-"""Schedules an item in the mix above which roundings differ enough to draw many."""
+_ROUNDINGS = 12
 _STEPS = 800
 _HELD_STEPS, _HELD_STEP = 60, 0.03
 _HOLDS = 16
@@ -260,7 +258,7 @@ def plan_held(
         return point, None
     clock.end_stage("column generation", f"{pool.items.size} schedules")
     made, until = None, clock.elapsed() + ROUNDING_SHARE * seconds
-    for seed in range(_ROUNDINGS if mix.columns.size > _MIXED * case.n else _FEW_ROUNDINGS):
+    for seed in range(_ROUNDINGS if mixed(mix, case.n) else 0):
         if clock.over() or (seed and clock.elapsed() > until):
             break
         made = rounded(pool, mix, seed)

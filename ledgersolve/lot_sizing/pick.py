@@ -21,8 +21,19 @@ MOST_COLUMNS = 12_000
 ROUNDS = ((8, 0.2), (24, 0.5), (60, 1.0))
 """Schedules an item, and the share of the time left, of each choice: few are chosen from soon, many well."""
 
+MANY_ITEMS_ROUNDS = ((8, 0.1), (60, 1.0))
+"""The same where the mix settles most items already: the time belongs to the one choice from many schedules."""
+
+MIXED = 1.3
+"""Schedules an item in the mix from which on it leaves much open."""
+
 MIXED_SETUPS, MIXED_ITEMS = 1500, 40
 """Items x periods, and items, up to which setups, not schedules, are the whole-number choice."""
+
+
+def mixed(mix: Mix, items: int) -> bool:
+    """Whether the mix leaves much open: with few items against the periods many schedules of an item share."""
+    return mix.columns.size > MIXED * items
 
 
 def picks(
@@ -35,7 +46,7 @@ def picks(
     """
     case, until, before = relaxation.case, clock.elapsed() + seconds, 0
     few = case.n <= MIXED_ITEMS and case.n * case.t <= MIXED_SETUPS and not relaxation.coupled
-    for count, share in ROUNDS:
+    for count, share in ROUNDS if mixed(mix, case.n) else MANY_ITEMS_ROUNDS:
         per_item = min(count, max(MOST_COLUMNS // max(case.n, 1), 3))
         chosen = np.union1d(pool.promising(point.charges, per_item), mix.columns)
         left = min(until - clock.elapsed(), clock.left())
