@@ -195,6 +195,7 @@ class GridProgramme:
     def __init__(self, case: Case, items: Ints) -> None:
         self.items = items
         steps = common_steps(case)
+        steps = np.where(steps > 0, steps, 1.0)
         self.grids = [ItemGrid(case, int(i), float(steps[i])) for i in items]
 
     def schedule(self, setup_cost: Floats, unit_cost: Floats, wanted: Flags | None = None) -> Schedules:
