@@ -94,7 +94,7 @@ def depots_from_coordinates() -> None:
     ]
     plan = settings("site selection", "Depots for the coming year", Demand_unit="pallet", Period_covered="year",
                     Cost_per_unit_and_distance=0.11, Road_factor=1.3, Compare_with_today="yes")
-    plan += [["Time limit (seconds)", 20]]
+    plan += [["Time limit (seconds)", 60], ["Share of time for questions (%)", 30]]
     write("1 depots from coordinates",
           {"Settings": plan, "Sites": sites, "Customers": customers, "Variants": variants})
 
@@ -120,7 +120,8 @@ def depots_from_a_lane_list() -> None:
                 lanes += [[f"{site}-S", code, rate, distance], [f"{site}-L", code, rate, distance]]
     plan = settings("site selection", "Regional halls, one supplier each", Demand_unit="pallet",
                     Period_covered="year", Single_sourcing="yes", Longest_distance=560)
-    plan += [["Share within distance (%)", 60], ["Distance for share", 200], ["Time limit (seconds)", 20]]
+    plan += [["Share within distance (%)", 60], ["Distance for share", 200], ["Time limit (seconds)", 60],
+             ["Share of time for questions (%)", 30]]
     write("2 halls from a lane list",
           {"Settings": plan, "Sites": sites, "Customers": customers, "Lanes": lanes})
 

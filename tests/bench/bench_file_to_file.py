@@ -3,7 +3,7 @@
 Run with ``python -m tests.bench.bench_file_to_file [CASE ...] [--repeats N]``. A CASE is ``capa`` or ``capb``
 (published) or ``like-capc`` (generated); without one, all three. Each measurement is a fresh process that starts,
 reads a workbook with the case as a matrix, solves, audits, and writes the copy with its results; both ways differ in
-the engine alone. Ours is run ``--repeats`` times and its median counts; the whole model, which takes much longer, once.
+the engine alone. Ours is run ``--repeats`` times and its median counts; the whole model, which takes longer, once.
 """
 
 import argparse

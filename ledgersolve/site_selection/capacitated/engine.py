@@ -5,7 +5,6 @@ and bound on the sites; where that is slow, the wrapper looks for a better plan 
 Single sourcing rides on the same bound; lanes are fixed too, and the wrapper closes what is left.
 """
 
-import time
 
 import numpy as np
 
@@ -38,6 +37,9 @@ SWIFT = 0.7
 
 MANY = 200_000
 """Most lanes that the wrapper is handed to find a first plan."""
+
+STEP_SECONDS = 6e-8
+"""What a step of a climb takes for each lane, rounded up, on the machine of DEVELOPERS.md."""
 
 KERNEL_LANES = 8
 """Lanes a customer in the first kernel."""
@@ -160,11 +162,9 @@ class _Engine:
             moves.improve(self.best.plan.open, seconds)
 
     def _affordable(self) -> int:
-        """Steps of a climb that a fifth of the time allows."""
-        began = time.monotonic()
-        self.items.evaluate(self.relaxation.first_prices())
-        a_step = 1.5 * (time.monotonic() - began) + 1e-4
-        return int(np.clip(0.2 * self.clock.left() / a_step, 20, 200))
+        """Steps of a climb that a fifth of the time allows; by size, so that equal runs take equal steps."""
+        a_step = 1e-4 + STEP_SECONDS * self.items.site.size
+        return int(np.clip(0.2 * self.clock.limits.seconds / a_step, 20, 200))
 
     def _close(self, root: Climb) -> None:
         """Branch on the sites; between, the wrapper looks for a better plan in growing kernels."""
