@@ -6,15 +6,17 @@ import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from rich.console import Console
 from rich.markup import escape
-from rich.table import Table
 from rich.text import Text
 
 from ledgersolve.answer import Answer, Outcome
 from ledgersolve.mip import Progress
+
+if TYPE_CHECKING:
+    from rich.table import Table
 
 console = Console()
 errors = Console(stderr=True)
@@ -109,7 +111,9 @@ def _solved_words(answer: Answer) -> str:
     return verdict + cost + bound
 
 
-def _problem_table(answer: Answer) -> Table:
+def _problem_table(answer: Answer) -> "Table":
+    from rich.table import Table
+
     table = Table("", "where", "found", "expected", "what to do", box=None, pad_edge=False)
     for problem in answer.problems:
         told = problem.as_json()

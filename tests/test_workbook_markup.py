@@ -2,7 +2,7 @@
 
 import pytest
 
-from ledgersolve.workbook.markup import MAIN, PrologCheck, feed, parser, walk, whole
+from ledgersolve.workbook.markup import MAIN, PrologCheck, feed, parser, quoted_attribute, walk, whole
 from ledgersolve.workbook.problems import UnreadableWorkbookError
 
 LAUGHS = b'<?xml version="1.0"?><!DOCTYPE x [<!ENTITY a "ha">]><x>&a;</x>'
@@ -65,3 +65,11 @@ def test_a_fault_of_ours_is_not_taken_for_a_broken_file() -> None:
 def test_whole_numbers_in_attributes(text: str | None, number: int) -> None:
     """Only whole numbers of up to nine digits are numbers."""
     assert whole(text, 7) == number
+
+
+@pytest.mark.parametrize("value", ["plain", 'a "b" & <c>', "two\nlines\tand\r", "it's", "größer ≥"])
+def test_a_written_attribute_reads_as_what_it_was(value) -> None:
+    """Quotes, brackets, line ends and tabs outlast writing and reading."""
+    read = []
+    walk("x", [f"<a b={quoted_attribute(value)}/>".encode()], lambda _, attributes: read.append(attributes["b"]))
+    assert read == [value]

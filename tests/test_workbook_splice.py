@@ -49,7 +49,7 @@ def test_edits_touch_only_their_places() -> None:
     edits.set(one, {"a": "2"})
     edits.replace(one.start, one.start, "<zero/>")
     expected = TRICKY.replace("<one a='1'", '<zero/><one a="2"', 1)
-    expected = expected.replace(two.whole(TRICKY), "").replace('<three\tq = "x"\n  />', "<three new='a\"b'/>")
+    expected = expected.replace(two.whole(TRICKY), "").replace('<three\tq = "x"\n  />', '<three new="a&quot;b"/>')
     assert edits.result() == expected
 
 

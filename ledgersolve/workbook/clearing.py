@@ -2,10 +2,10 @@
 
 import re
 from collections.abc import Iterable
-from xml.sax.saxutils import escape
 
 from ledgersolve.workbook import book, marks
 from ledgersolve.workbook.draft import Draft
+from ledgersolve.workbook.markup import escape
 from ledgersolve.workbook.merge_strings import cut_strings
 from ledgersolve.workbook.ownership import FREED_TAB, MARKED_SHEET, OWN_SHEET, quoted, sheets_named
 from ledgersolve.workbook.parts import relations_name

@@ -29,6 +29,17 @@ def whole(text: str | None, default: int = 0) -> int:
     return int(text) if text is not None and len(text) < 10 and text.isdecimal() else default
 
 
+def escape(text: str) -> str:
+    """Text as it stands between tags."""
+    return text.replace("&", "&amp;").replace("<", "&lt;").replace(">", "&gt;")
+
+
+def quoted_attribute(value: str) -> str:
+    """Value of an attribute with its quotes; line ends and tabs outlast the next reading."""
+    safe = escape(value).replace('"', "&quot;")
+    return '"' + safe.replace("\n", "&#10;").replace("\r", "&#13;").replace("\t", "&#9;") + '"'
+
+
 class _RootSeenError(Exception):
     """The root element was reached: nothing before it was a definition."""
 

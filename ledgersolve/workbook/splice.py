@@ -8,7 +8,8 @@ import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from html import unescape
-from xml.sax.saxutils import escape, quoteattr
+
+from ledgersolve.workbook.markup import escape, quoted_attribute
 
 _TAG = re.compile(
     r"""<!--.*?-->|<!\[CDATA\[.*?\]\]>|<\?.*?\?>"""
@@ -95,7 +96,7 @@ def with_attributes(tag: str, values: Mapping[str, str | None]) -> str:
     """A start tag with attributes set, or taken out where the value is None; the rest as it stands."""
     for name, value in values.items():
         match = re.search(rf"""\s+{re.escape(name)}\s*=\s*(?:"[^"]*"|'[^']*')""", tag)
-        written = "" if value is None else f" {name}={quoteattr(value)}"
+        written = "" if value is None else f" {name}={quoted_attribute(value)}"
         if match is not None:
             tag = tag[:match.start()] + written + tag[match.end():]
         elif value is not None:
@@ -146,7 +147,7 @@ def with_content(text: str, element: Element, added: str,
 
 def made(name: str, values: Mapping[str, str], namespace: str, parent: Element, content: str = "") -> str:
     """A new element for a place inside ``parent``, in ``namespace`` whatever prefixes the part uses."""
-    written = "".join(f" {key}={quoteattr(value)}" for key, value in values.items())
+    written = "".join(f" {key}={quoted_attribute(value)}" for key, value in values.items())
     spaced = f' xmlns="{namespace}"' if parent.prefix else ""
     return f"<{name}{spaced}{written}>{content}</{name}>" if content else f"<{name}{spaced}{written}/>"
 

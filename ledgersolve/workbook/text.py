@@ -5,9 +5,6 @@ import re
 import unicodedata
 from collections.abc import Callable, Iterable
 
-from rapidfuzz import fuzz, process
-from rapidfuzz.distance import OSA
-
 from ledgersolve.workbook.cells import Cell, Kind
 
 CLOSE = 80.0
@@ -124,6 +121,9 @@ def nearest(word: str, known: Iterable[str], form: Callable[[str], str] = alike)
     for each, shape in choices.items():
         if shape == wanted or (bare.isdigit() and shape.lstrip("0") == bare):
             return each
+    from rapidfuzz import fuzz, process  # here, because a workbook without slips does not need it
+    from rapidfuzz.distance import OSA
+
     best = process.extractOne(wanted, choices, scorer=fuzz.ratio, score_cutoff=CLOSE)
     if best is not None or len(wanted) < 3:
         return None if best is None else str(best[2])

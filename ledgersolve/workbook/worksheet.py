@@ -7,13 +7,13 @@ sheets use none of those. Written directly, a million cells take a third of the 
 
 import math
 from collections.abc import Callable, Iterator
-from xml.sax.saxutils import escape
 
 from xlsxwriter.format import Format
 from xlsxwriter.worksheet import Worksheet
 
 from ledgersolve.workbook.cells import column_letters
 from ledgersolve.workbook.cleaning import clean_text
+from ledgersolve.workbook.markup import escape
 from ledgersolve.workbook.sheets import ResultSheet, Scalar, Style, Written
 
 MOST_ROWS, MOST_COLUMNS = 1_048_576, 16_384
