@@ -185,7 +185,7 @@ def _comparison(at: SitePlaces, ledger: Ledger) -> list[Today]:
     if before is not None:
         total = float(case.demand.sum())
         rows.append(Today("Customers with another main site (number)", None, moved, style.WHOLE))
-        rows.append(Today("Their part of all demand (%)", None, volume / total if total else 0.0, style.PERCENT))
+        rows.append(Today("Their share of all demand (%)", None, volume / total if total else 0.0, style.PERCENT))
     return rows
 
 
