@@ -7,7 +7,7 @@ from ledgersolve.mip import Limits, Progress
 from tests.bench.lot_cases import Recipe, generated
 
 
-@pytest.mark.parametrize("seed", [1, 2, 3])
+@pytest.mark.parametrize("seed", [3, 4])
 def test_no_bound_of_the_stream_lies_above_the_plan(seed) -> None:
     """The bound of a case whose families are held is none of the whole case, and is not told as one."""
     told: list[Progress] = []
