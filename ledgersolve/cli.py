@@ -12,10 +12,9 @@ from pathlib import Path
 from typing import Annotated, NoReturn
 
 import typer
-from rich.console import Console
-from rich.markup import escape
 
 from ledgersolve import __version__
+from ledgersolve.service.child import FEW_COLLECTIONS
 
 app = typer.Typer(
     name="ledgersolve",
@@ -24,13 +23,8 @@ app = typer.Typer(
     help="Planning workbooks in, decisions out: site selection and lot sizing.",
     context_settings={"help_option_names": ["-h", "--help"]},
 )
-console = Console()
-errors = Console(stderr=True)
 
 JOBS = ("site selection", "lot sizing")
-
-FEW_COLLECTIONS = (100_000, 50, 100)
-"""Thresholds of the garbage collector: a run makes hundreds of thousands of values that live to its end."""
 
 Files = Annotated[
     list[Path],
@@ -121,14 +115,13 @@ def template(
         write_template(Job(job), target)
     except OSError as trouble:
         _wrong(f"{target} cannot be written ({trouble.strerror or trouble}); name another place.")
-    console.print(f"Wrote [bold]{escape(str(target))}[/bold]. Fill it in, then: ledgersolve solve "
-                  f"'{escape(str(target))}'", soft_wrap=True, highlight=False)
+    typer.echo(f"Wrote {_bold(target)}. Fill it in, then: ledgersolve solve '{target}'")
 
 
 def _wrong(*troubles: str) -> NoReturn:
     """Say what is wrong with how the command was used, and end with 2."""
     for trouble in troubles:
-        errors.print(trouble, markup=False, highlight=False, soft_wrap=True)
+        typer.echo(trouble, err=True)
     raise typer.Exit(2)
 
 
@@ -208,20 +201,23 @@ def demo(
     drops = sorted(shipped("inbox_demo").glob("*.xlsx"))
     for drop in drops:
         shutil.copyfile(drop, inbox / drop.name)
-    console.print(f"Dropped {len(drops)} invented workbooks into {inbox}; solving them takes a minute or less.",
-                  markup=False, highlight=False, soft_wrap=True)
+    typer.echo(f"Dropped {len(drops)} invented workbooks into {inbox}; solving them takes a minute or less.")
     with returning(lambda: board.status(served), len(drops)):
         code = serve(served, once=True, cluster=None, settings=settings)
     returned = sorted((served / "Returned").iterdir())
-    console.print(f"The results are in [bold]{escape(str(served / 'Returned'))}[/bold]; open the first one first:",
-                  highlight=False, soft_wrap=True)
+    typer.echo(f"The results are in {_bold(served / 'Returned')}; open the first one first:")
     for each in returned:
-        console.print(f"  {each.name}", markup=False, highlight=False, soft_wrap=True)
+        typer.echo(f"  {each.name}")
     if len(returned) < len(drops):
-        console.print(f"Stopped with {len(returned)} of {len(drops)} back. To go on: "
-                      f"ledgersolve watch '{served}' --once", markup=False, highlight=False, soft_wrap=True)
+        typer.echo(f"Stopped with {len(returned)} of {len(drops)} back. "
+                   f"To go on: ledgersolve watch '{served}' --once")
         code = code or 1
     raise typer.Exit(code)
+
+
+def _bold(path: Path) -> str:
+    """A path to catch the eye; where output is no terminal, the marks are left out."""
+    return typer.style(str(path), bold=True)
 
 
 def _unused(folder: Path) -> Path:
@@ -249,8 +245,7 @@ def _answer_all(files: list[Path], into: Path | None, as_json: bool, *, solving:
             if not as_json:
                 tell(answer, solving=solving)
     except KeyboardInterrupt:
-        errors.print(f"Stopped at {file.name}; {len(answers)} of {len(files)} done, nothing half written.",
-                     markup=False, highlight=False, soft_wrap=True)
+        typer.echo(f"Stopped at {file.name}; {len(answers)} of {len(files)} done, nothing half written.", err=True)
         raise typer.Exit(130) from None
     if as_json:
         told = [answer.as_json() for answer in answers]
