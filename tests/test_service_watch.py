@@ -19,19 +19,12 @@ from tests.service_share import (
     HANDLERS,
     ROOT,
     drop,
-    hasten,
     names,
     quick_settings,
     quick_watcher,
     returned,
     run_until_empty,
 )
-
-
-@pytest.fixture
-def quick(monkeypatch):
-    """No waits and no child processes."""
-    hasten(monkeypatch.setattr)
 
 
 def test_a_folder_is_emptied_once(tmp_path, monkeypatch):

@@ -7,8 +7,6 @@ import threading
 import time
 from pathlib import Path
 
-import pytest
-
 from ledgersolve.service import settle
 from ledgersolve.service.board import status
 from ledgersolve.service.disk import Disk
@@ -21,18 +19,11 @@ from tests.service_share import (
     child_at_once,
     drop,
     faults_after_recovery,
-    hasten,
     names,
     quick_watcher,
     returned,
     run_until_empty,
 )
-
-
-@pytest.fixture
-def quick(monkeypatch):
-    """No waits and no child processes."""
-    hasten(monkeypatch.setattr)
 
 
 def test_names_of_people_all_come_back(tmp_path, quick):

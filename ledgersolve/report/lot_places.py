@@ -1,6 +1,6 @@
 """Where the figures of a lot-sizing plan stand: items and periods in sheet order, the same on every sheet."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -10,7 +10,7 @@ from ledgersolve.lot_sizing.case import Floats
 from ledgersolve.lot_sizing.plan import family_setups, resource_need
 from ledgersolve.report import names, style
 from ledgersolve.report.inputs import LotReport
-from ledgersolve.report.tables import FIRST_ROW, TITLE_ROW, Figure, quoted
+from ledgersolve.report.tables import FIRST_ROW, Figure, quoted
 from ledgersolve.workbook.cells import column_letters
 from ledgersolve.workbook.origins import CellRef
 
@@ -203,11 +203,3 @@ class LotPlaces:
         """Figure of a list sheet's cell, a constant where a formula cannot use it."""
         ref = self.report.workbook.origins.number(sheet, key, title)
         return Figure(value, "" if ref is None else ref.formula)
-
-
-def periods_row(codes: Sequence[str], starts: Sequence[str]) -> list[str]:
-    """Titles of the period columns: the code."""
-    return [code for code, _ in zip(codes, starts or codes, strict=True)]
-
-
-HEADER_ROW = TITLE_ROW

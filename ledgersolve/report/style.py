@@ -34,7 +34,6 @@ SMALL = Style(size=8.0, colour=QUIET)
 SMALL_WRAPPED = Style(size=8.0, colour=QUIET, wrap=True, valign="top")
 BOLD = Style(bold=True)
 TITLE = Style(size=16.0, bold=True, colour=PETROL)
-SUBTITLE = Style(size=10.0, colour=QUIET)
 SECTION = Style(size=11.0, bold=True, colour=PETROL, bottom=1, border_colour=PETROL, valign="bottom")
 HEADER = Style(bold=True, colour=WHITE, fill=PETROL, wrap=True, align="left", indent=1, size=9.0)
 HEADER_RIGHT = replace(HEADER, align="right", indent=0)
@@ -47,7 +46,6 @@ BAD = Style(bold=True, colour=ALARM, fill=ALARM_GROUND)
 FINE = Style(colour=GOOD, fill=GOOD_GROUND)
 
 PERCENT = "0.0%"
-FINE_PERCENT = "0.00%"
 WHOLE = "#,##0"
 DATE = "yyyy-mm-dd"
 DATE_TIME = "yyyy-mm-dd hh:mm"

@@ -92,8 +92,8 @@ def times(reading: Reading, answers: tuple[Answered, ...]) -> tuple[tuple[str, s
     seconds = reading.run.questions_share * reading.run.time_limit
     kept = (f"{100 * reading.run.questions_share:.0f} % of {reading.run.time_limit:g} seconds: {seconds:g} at most, "
             "a part of the step solve")
-    times = [(f"Question: {answer.question}", f"{answer.seconds:.2f} seconds") for answer in answers]
-    return (("Kept for questions", kept), *times)
+    taken = [(f"Question: {answer.question}", f"{answer.seconds:.2f} seconds") for answer in answers]
+    return (("Kept for questions", kept), *taken)
 
 
 def questions_part(reading: Reading, budget: Budget) -> Limits:

@@ -43,8 +43,9 @@ def work(reading: Reading, case: Case, budget: Budget) -> Worked:
     today = None
     if case.compare_today:
         seconds = budget.left() / (2 + len(case.variants))
-        found = solve(case.as_today(), budget.part("today's network", seconds))
-        today = Today(found, confirmed(case.as_today(), found, audit), _why(case.as_today(), found, budget))
+        network = case.as_today()
+        found = solve(network, budget.part("today's network", seconds))
+        today = Today(found, confirmed(network, found, audit), _why(network, found, budget))
     variants = _variants(case, budget, reading.run.questions_share if reading.run.questions else 0.0)
     answers: tuple[Answered, ...] = ()
     if reading.run.questions:
